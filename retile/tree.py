@@ -1,0 +1,118 @@
+"""The loop tree: what a nest is, before and after a transformation.
+
+A tree is a tuple of nodes that run one after the other.  The nest that the user wrote and the variant that will be
+printed are values of this one kind, so that every variant can be judged by the same questions (``questions.py``).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from enum import Enum
+
+from .affine import Affine, AllOf, Bound, Formula, at_least_bound, at_most_bound, equal
+
+
+class Role(Enum):
+    """What a loop does for the source loop it comes from."""
+
+    WHOLE = "whole"      # runs over all of its iterations
+    CHUNK = "chunk"      # steps from chunk to chunk
+    ELEMENT = "element"  # runs over the iterations of one chunk
+
+
+@dataclass(frozen=True)
+class Loop:
+    """All values ``x`` with ``lower <= x <= upper`` and ``x = origin (mod |step|)``, upwards if ``step > 0``.
+
+    The values are those of the C variable; a chunk loop's value is the first one of its chunk on the grid.
+    """
+
+    symbol: str  # the iterator in forms; unique on every path of a tree
+    lower: Bound  # smallest value, inclusive, in outer symbols and parameters
+    upper: Bound  # largest value, inclusive
+    step: int  # signed distance between two iterations, in units of the C variable, never 0
+    origin: Affine  # any value on the grid of the loop; matters only if |step| > 1
+    body: tuple[Node, ...]
+    of: str  # id of the source loop (``i`` or ``i@14``)
+    role: Role = Role.WHOLE
+    level: int = 0  # which of several chunk levels of one source loop, 0 the outermost
+    size: int = 1  # iterations of the source loop that one step covers
+
+    def constraints(self) -> Formula:
+        """Where the symbol's value is one of the loop's iterations."""
+        value = Affine.of(self.symbol)
+        grid = equal((value - self.origin).mod(abs(self.step)), 0)
+        return AllOf((at_least_bound(value, self.lower), at_most_bound(value, self.upper), grid))
+
+
+@dataclass(frozen=True)
+class Guard:
+    """Runs its body where the condition holds; ``condition`` is None for a test of data, judged as possibly true."""
+
+    condition: Formula | None
+    body: tuple[Node, ...]
+    span: tuple[int, int] | None = None  # extent of the condition in the user's text, if it is the user's
+
+
+@dataclass(frozen=True)
+class Leaf:
+    """One statement, executed for the instance whose iterators have the given values (in symbols of the tree)."""
+
+    statement: str
+    instance: tuple[tuple[str, Affine], ...]
+
+
+@dataclass(frozen=True)
+class Verbatim:
+    """A piece of the user's text that moves as a whole; ``content`` says what it executes, in the user's order."""
+
+    span: tuple[int, int]
+    content: tuple[Node, ...]
+
+
+Node = Loop | Guard | Leaf | Verbatim
+
+# One moment's place: list positions and (symbol, direction) pairs in turn, outermost first.
+Moment = int | tuple[str, int]
+
+
+@dataclass(frozen=True)
+class Occurrence:
+    """A leaf with all that surrounds it in a tree."""
+
+    leaf: Leaf
+    loops: tuple[Loop, ...]  # outermost first
+    conditions: tuple[Formula, ...]  # loops and guards with known conditions
+    time: tuple[Moment, ...]
+
+
+def occurrences(tree: tuple[Node, ...]) -> Iterator[Occurrence]:
+    """All leaves of a tree, in list order, each with its loops, conditions and time vector."""
+    yield from _walk(tree, (), (), ())
+
+
+def _walk(nodes: tuple[Node, ...], loops: tuple[Loop, ...], conditions: tuple[Formula, ...],
+          time: tuple[Moment, ...]) -> Iterator[Occurrence]:
+    for position, node in enumerate(nodes):
+        here = (*time, position)
+        if isinstance(node, Leaf):
+            yield Occurrence(node, loops, conditions, here)
+        elif isinstance(node, Loop):
+            direction = 1 if node.step > 0 else -1
+            yield from _walk(node.body, (*loops, node), (*conditions, node.constraints()),
+                             (*here, (node.symbol, direction)))
+        elif isinstance(node, Guard):
+            known = (node.condition,) if node.condition is not None else ()
+            yield from _walk(node.body, loops, (*conditions, *known), (*here, ("", 0)))
+        else:
+            yield from _walk(node.content, loops, conditions, (*here, ("", 0)))
+
+
+def loops_of(nodes: tuple[Node, ...]) -> Iterator[Loop]:
+    """All loops of a tree, outer before inner, in list order."""
+    for node in nodes:
+        if isinstance(node, Loop):
+            yield node
+        if not isinstance(node, Leaf):
+            yield from loops_of(node.content if isinstance(node, Verbatim) else node.body)
