@@ -1,0 +1,5 @@
+"""``python -m retile``."""
+
+from .cli import main
+
+main()

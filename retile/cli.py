@@ -1,0 +1,189 @@
+"""The command line: options, exit statuses and messages.  Each command loads its own module when it is called.
+
+Exit statuses: 0 done; 1 the answer is no; 2 the call is wrong or a file cannot be used, with nothing on standard output;
+130 interrupted.  An error of retile itself ends with 70 (``EX_SOFTWARE`` of the BSD header sysexits.h).
+"""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Callable
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from . import __version__
+
+if TYPE_CHECKING:
+    from .commands.compiling import CompilerOptions
+
+_BUG, _INTERRUPTED, _CLOSED_PIPE = 70, 130, 141
+_TRACEBACK = "RETILE_TRACEBACK"  # set to anything to see where an error of retile itself comes from
+_F = TypeVar("_F", bound=Callable[..., Any])
+
+
+def main() -> None:
+    """The program ``retile``."""
+    sys.exit(_run(sys.argv[1:]))
+
+
+def _run(arguments: list[str]) -> int:
+    """Run one call and give its exit status; the one place where errors become messages."""
+    try:
+        status = retile.main(arguments, prog_name="retile", standalone_mode=False)
+        sys.stdout.flush()
+        return status if isinstance(status, int) else 0
+    except click.ClickException as error:
+        error.show()
+        return 2
+    except (click.Abort, KeyboardInterrupt):
+        print("Interrupted.", file=sys.stderr)
+        return _INTERRUPTED
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())  # nothing is left to flush at exit
+        return _CLOSED_PIPE
+    except Exception as error:
+        return _failed(error)
+
+
+def _failed(error: Exception) -> int:
+    from .model import RetileError
+
+    if isinstance(error, RetileError):
+        print(error, file=sys.stderr)
+        return 2
+    if isinstance(error, OSError):
+        print(f"retile: {error.filename or 'system'}: {error.strerror or error}", file=sys.stderr)
+        return 2
+    if os.environ.get(_TRACEBACK):
+        import traceback
+
+        traceback.print_exception(error)
+    what = "it ran out of memory" if isinstance(error, MemoryError) else f"{type(error).__name__}: {error}"
+    print(f"retile: this is an error in retile, not in your code ({what}).\n"
+          f"No file was changed. Please report it with the command, the C file and what this prints:\n"
+          f"    {_TRACEBACK}=1 retile ...", file=sys.stderr)
+    return _BUG
+
+
+# ---------------------------------------------------------------- shared options
+
+def _compiler_options(command: _F) -> _F:
+    """The options of all commands that read C."""
+    for option in reversed((
+            click.option("-D", "define", multiple=True, metavar="NAME[=VALUE]", help="Define a macro."),
+            click.option("-U", "undefine", multiple=True, metavar="NAME", help="Undefine a macro, also one of -D."),
+            click.option("-I", "folder", multiple=True, metavar="DIR", help="Look for headers here too."),
+            click.option("-include", "include", multiple=True, metavar="FILE", help="Read a header before the file."),
+            click.option("-std", "standard", metavar="STD", help="Language standard, as in -std=c11."),
+            click.option("--cc", metavar="COMMAND", help="C compiler to ask and to measure with (default: cc)."),
+            click.option("-p", "database", metavar="DIR", help="Take flags from DIR/compile_commands.json."))):
+        command = option(command)
+    return command
+
+
+def _compiling(given: dict[str, Any]) -> CompilerOptions:
+    """Take the compiler options out of a command's parameters."""
+    from .commands.compiling import CompilerOptions
+
+    flags = [word for name, flag in (("define", "-D"), ("undefine", "-U"), ("folder", "-I"), ("include", "-include"))
+             for value in given.pop(name) for word in (flag, value)]
+    standard = given.pop("standard")
+    if standard:
+        flags.insert(0, f"-std={standard}")
+    return CompilerOptions(given.pop("cc"), tuple(flags), given.pop("database"))
+
+
+_json = click.option("--json", "as_json", is_flag=True, help="Print one JSON document instead of text.")
+_address = click.argument("address", metavar="FILE:LINE")
+_plan = click.argument("plan", metavar="PLAN")
+_remainder = click.option("--remainder", type=click.Choice(["clamp", "peel"]),
+                          help="How the last, shorter chunk is written where the plan does not say (default: clamp): "
+                               "with a bound on every chunk, or as loops of its own.")
+_trust = click.option("--trust", is_flag=True,
+                      help="Leave out the test of what the verdict assumes, and with it the original loops.")
+
+
+# ---------------------------------------------------------------- commands
+
+@click.group(context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100})
+@click.version_option(__version__, "-V", "--version", message="%(prog)s %(version)s")
+def retile() -> None:
+    """Reorder and tile the loops of a C function: verdict, code, proof of equal results, timings.
+
+    A nest is named by its address, FILE:LINE of its outermost for. A PLAN lists the loops from outermost to innermost:
+    "k:64 i k j" walks over chunks of 64 iterations of k, and in each of them over i, k and j.
+    """
+
+
+@retile.command(short_help="List the loop nests of C files.")
+@click.argument("files", metavar="FILE...", nargs=-1, required=True)
+@click.option("--all", "every", is_flag=True, help="List inner loops under their own address too.")
+@_compiler_options
+@_json
+def nests(files: tuple[str, ...], every: bool, as_json: bool, **given: Any) -> int:
+    """List the loop nests of C files, and for each whether retile can read it or why not."""
+    from .commands import nests
+
+    return nests.run(files, _compiling(given), every=every, as_json=as_json)
+
+
+@retile.command(short_help="Show the dependences of a nest.")
+@_address
+@click.option("--dot", is_flag=True, help="Print the graph in the DOT language of Graphviz.")
+@_compiler_options
+@_json
+def depend(address: str, dot: bool, as_json: bool, **given: Any) -> int:
+    """Show the dependences of a nest: the pairs of statements whose order matters."""
+    from .commands import depend
+
+    if dot and as_json:
+        raise click.UsageError("--dot and --json exclude each other.")
+    return depend.run(address, _compiling(given), dot=dot, as_json=as_json)
+
+
+@retile.command(short_help="Say whether a plan computes the same.")
+@_address
+@_plan
+@_compiler_options
+@_json
+def check(address: str, plan: str, as_json: bool, **given: Any) -> int:
+    """Say whether the nest computes the same in the order of a plan, and if not, show two executions that clash."""
+    from .commands import check
+
+    return check.run(address, plan, _compiling(given), as_json=as_json)
+
+
+@retile.command(short_help="Write the loops of a plan.")
+@_address
+@_plan
+@_remainder
+@_trust
+@click.option("-o", "file", metavar="FILE", help="Write to FILE.")
+@click.option("--diff", "as_diff", is_flag=True, help="Write a patch, for 'git apply' and 'patch -p1'.")
+@click.option("--in-place", is_flag=True, help="Replace the file.")
+@_compiler_options
+@_json
+def rewrite(address: str, plan: str, remainder: str | None, trust: bool, file: str | None, as_diff: bool,
+            in_place: bool, as_json: bool, **given: Any) -> int:
+    """Write the whole file with the nest in the order of a plan; all other text stays as it is."""
+    from .commands import rewrite
+
+    if in_place and (file is not None or as_diff):
+        raise click.UsageError("--in-place excludes -o and --diff.")
+    target = rewrite.Target(file, in_place, as_diff, as_json)
+    return rewrite.run(address, plan, _compiling(given), remainder=remainder, trust=trust, target=target)
+
+
+@retile.command(short_help="Find out about this machine.")
+@_json
+def host(as_json: bool) -> int:
+    """Show what retile found out about this machine: caches, compilers, clock."""
+    from .commands import host
+
+    return host.run(as_json=as_json)
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,60 @@
+"""``retile rewrite``."""
+
+from __future__ import annotations
+
+import sys
+from dataclasses import dataclass
+from pathlib import Path
+
+from ..library import OpenNest
+from ..model import Judgement, Verdict
+from ..report.document import of_rewriting
+from ..report.verdict import verdict_lines
+from .compiling import CompilerOptions
+from .opening import open_nest
+from .output import look_of, print_document, say, write_bytes
+
+
+@dataclass(frozen=True)
+class Target:
+    """Where the variant goes, and in which form."""
+
+    file: str | None = None  # of -o; None for standard output
+    in_place: bool = False
+    as_diff: bool = False
+    as_json: bool = False
+
+
+def run(address: str, plan: str, compiling: CompilerOptions, *, remainder: str | None, trust: bool,
+        target: Target) -> int:
+    """Write the variant of a plan; 1, and nothing written, unless the verdict is legal."""
+    nest = open_nest(address, compiling)
+    parsed = plan if nest.refusals else nest.plan(plan, remainder=remainder)
+    judgement = nest.check(parsed)
+    if judgement.verdict is not Verdict.LEGAL:
+        return _refuse(nest, judgement, target)
+    variant = nest.rewrite(parsed, trust=trust)
+    patch = nest.diff(variant)
+    _deliver(nest, patch if target.as_diff else variant.text, target)
+    if target.as_json:
+        print_document(of_rewriting(nest.address, judgement, variant.text, patch))
+    return 0
+
+
+def _refuse(nest: OpenNest, judgement: Judgement, target: Target) -> int:
+    say("\n".join(verdict_lines(nest.address, judgement, nest.place, look_of(sys.stderr))))
+    if target.as_json:
+        print_document(of_rewriting(nest.address, judgement, None, None))
+    return 1
+
+
+def _deliver(nest: OpenNest, text: str, target: Target) -> None:
+    from ..source import replace_file
+
+    data = nest.source.encode(text)
+    if target.in_place:
+        replace_file(Path(nest.source.path), data)
+    elif target.file is not None and target.file != "-":
+        replace_file(Path(target.file), data)
+    elif not target.as_json:
+        write_bytes(data)

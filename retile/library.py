@@ -1,0 +1,124 @@
+"""An open file and its nests: what the commands do, for programs.
+
+Each question is one method, each answer one of the values of ``model``; the rooms behind are loaded when asked.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from functools import cached_property
+from typing import TYPE_CHECKING
+
+from .model import Address, Judgement, Nest, Plan, Refusal, RetileError, Variant, Verdict
+
+if TYPE_CHECKING:
+    from .dependence import Dependences
+    from .nest import Found
+    from .source import Source
+
+
+@dataclass(frozen=True)
+class OpenFile:
+    """A C file that has been read, preprocessed and parsed."""
+
+    source: Source
+
+    @property
+    def path(self) -> str:
+        """The file's name as it was given."""
+        return self.source.path
+
+    def nests(self) -> tuple[Found, ...]:
+        """Every ``for`` of the file, in text order, ready or refused."""
+        from .nest import read_nests
+
+        return read_nests(self.source)
+
+    def nest(self, line: int, column: int | None = None) -> OpenNest:
+        """The nest whose outermost ``for`` starts on a line; RetileError, naming the nearest ones, if none does."""
+        from .nest import read_nest
+
+        return OpenNest(self.source, read_nest(self.source, line, column))
+
+
+@dataclass(frozen=True)
+class OpenNest:
+    """One ``for`` of an open file and all that is in it."""
+
+    source: Source
+    found: Found
+
+    @property
+    def address(self) -> Address:
+        """Its ``FILE:LINE``."""
+        return self.found.address
+
+    @property
+    def refusals(self) -> tuple[Refusal, ...]:
+        """Why retile does not read it; empty if it does."""
+        return self.found.refusals
+
+    @property
+    def nest(self) -> Nest:
+        """Its loops, statements and accesses; RetileError if retile refuses it."""
+        if self.found.nest is None:
+            raise RetileError("\n".join(self.place(refusal) for refusal in self.refusals))
+        return self.found.nest
+
+    @cached_property
+    def dependences(self) -> Dependences:
+        """The pairs of statements that touch one cell, one of them writing; RetileError if the nest is refused."""
+        from .dependence import analyse
+
+        return analyse(self.nest)
+
+    def place(self, refusal: Refusal) -> str:
+        """A refusal with file, line, source line and caret."""
+        return self.source.complaint(refusal.line, refusal.column, f"{refusal.reason} [{refusal.code}]", "")
+
+    def plan(self, text: str, *, remainder: str | None = None) -> Plan:
+        """The plan that a text describes, ``terms ; options``; ``remainder`` holds if the text does not name one.
+
+        Raises RetileError, with the place in the text marked, if it is no plan for this nest.
+        """
+        from .plan import parse_plan
+
+        plan = parse_plan(text, self.nest)
+        if remainder is None or "remainder" in dict(plan.options):
+            return plan
+        options = (*plan.options, ("remainder", remainder))
+        written = ", ".join(f"{word} {value}" for word, value in options)
+        return replace(plan, text=f"{plan.order_text}; {written}", options=options)
+
+    def check(self, plan: str | Plan) -> Judgement:
+        """The verdict about a plan, with witness and assumptions."""
+        from .plan import judge
+
+        if self.found.nest is None:
+            text = plan.text if isinstance(plan, Plan) else " ".join(plan.split())
+            return Judgement(Verdict.REFUSED, Plan(text, ()), refusals=self.refusals)
+        return judge(self.nest, self.dependences, self._parsed(plan))
+
+    def rewrite(self, plan: str | Plan, *, trust: bool = False) -> Variant:
+        """The file with this nest in the order of the plan.
+
+        ``trust`` leaves out the test of the assumptions, and with it the original loops.  The variant carries its
+        judgement.  Raises RetileError, with the reason, if the verdict is not ``legal``.
+        """
+        from .rewrite import rewrite
+
+        parsed = self._parsed(plan)
+        judgement = self.check(parsed)
+        if judgement.verdict is not Verdict.LEGAL:
+            raise RetileError(f"{self.address}: no variant for plan '{parsed.text}': it is {judgement.verdict.value}.")
+        remainder = dict(parsed.options).get("remainder", "clamp")
+        return rewrite(self.source, self.nest, self.dependences, parsed, judgement, remainder=remainder, trust=trust)
+
+    def diff(self, variant: Variant) -> str:
+        """A patch from the file to a variant, as ``git apply`` and ``patch -p1`` take it."""
+        from .rewrite import diff
+
+        return diff(self.source, variant)
+
+    def _parsed(self, plan: str | Plan) -> Plan:
+        return plan if isinstance(plan, Plan) else self.plan(plan)

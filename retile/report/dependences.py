@@ -1,0 +1,64 @@
+"""The dependences of a nest as a table and as a picture in the DOT language of Graphviz."""
+
+from __future__ import annotations
+
+import json
+from typing import TYPE_CHECKING
+
+from ..model import Nest
+from .document import shared_loops
+from .table import Column, Look, paragraph, table
+
+if TYPE_CHECKING:
+    from ..dependence import Dependences, Edge
+
+_COLUMNS = (Column("kind", whole=True), Column("cell"), Column("from line", whole=True), Column("to line", whole=True),
+            Column("loops", whole=True), Column("distance", whole=True), Column("direction", whole=True),
+            Column("carried by", whole=True))
+
+
+def dependences_lines(nest: Nest, dependences: Dependences, look: Look) -> list[str]:
+    """The statements, the dependences between them, and what these rest on."""
+    lines = [f"{nest.address} in {nest.function}", ""]
+    statements = [(statement.id, statement.text) for statement in nest.statements]
+    lines += table((Column("line", right=True, whole=True), Column("statement")), statements, look)
+    lines.append("")
+    if dependences.edges:
+        lines += table(_COLUMNS, [_row(nest, edge) for edge in dependences.edges], look)
+        lines += ["", *paragraph("distance: how many iterations later the second one comes, outermost loop first; "
+                                 "direction: < later, = same, > earlier, * any.", look)]
+    else:
+        lines.append("No dependences: every order of the iterations is legal.")
+    if dependences.assumptions:
+        lines += ["", "This rests on what the code does not state:"]
+        for assumption in dependences.assumptions:
+            lines += paragraph(f"{assumption.text} [{assumption.code.value}]", look, "  - ", "    ")
+    return lines
+
+
+def _row(nest: Nest, edge: Edge) -> tuple[str, ...]:
+    loops = shared_loops(nest, edge.source, edge.target)
+    return (edge.kind, edge.storage, edge.source, edge.target, " ".join(loops), _distance(edge),
+            " ".join(edge.direction), edge.carried_by or "-")
+
+
+def _distance(edge: Edge) -> str:
+    if edge.distance is None:
+        return "varies"
+    return " ".join("*" if step is None else str(step) for step in edge.distance)
+
+
+def dependences_dot(nest: Nest, dependences: Dependences) -> list[str]:
+    """The graph for Graphviz: statements as nodes, dependences as edges."""
+    lines = ["digraph dependences {", "  node [shape=box, fontname=monospace];"]
+    for statement in nest.statements:
+        lines.append(f"  {_quoted(statement.id)} [label={_quoted(f'{statement.id}: {statement.text}')}];")
+    for edge in dependences.edges:
+        label = f"{edge.kind} {edge.storage}\n{' '.join(edge.direction)}"
+        style = {"flow": "solid", "anti": "dashed"}.get(edge.kind, "dotted")
+        lines.append(f"  {_quoted(edge.source)} -> {_quoted(edge.target)} [label={_quoted(label)}, style={style}];")
+    return [*lines, "}"]
+
+
+def _quoted(text: str) -> str:
+    return json.dumps(text, ensure_ascii=False)
