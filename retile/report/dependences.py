@@ -6,7 +6,6 @@ import json
 from typing import TYPE_CHECKING
 
 from ..model import Nest
-from .document import shared_loops
 from .table import Column, Look, paragraph, table
 
 if TYPE_CHECKING:
@@ -24,9 +23,9 @@ def dependences_lines(nest: Nest, dependences: Dependences, look: Look) -> list[
     lines += table((Column("line", right=True, whole=True), Column("statement")), statements, look)
     lines.append("")
     if dependences.edges:
-        lines += table(_COLUMNS, [_row(nest, edge) for edge in dependences.edges], look)
+        lines += table(_COLUMNS, [_row(edge) for edge in dependences.edges], look)
         lines += ["", *paragraph("distance: how many iterations later the second one comes, outermost loop first; "
-                                 "direction: < later, = same, > earlier, * any.", look)]
+                                 "direction: < later, = same, > earlier, <= same or later, * any.", look)]
     else:
         lines.append("No dependences: every order of the iterations is legal.")
     if dependences.assumptions:
@@ -36,16 +35,10 @@ def dependences_lines(nest: Nest, dependences: Dependences, look: Look) -> list[
     return lines
 
 
-def _row(nest: Nest, edge: Edge) -> tuple[str, ...]:
-    loops = shared_loops(nest, edge.source, edge.target)
-    return (edge.kind, edge.storage, edge.source, edge.target, " ".join(loops), _distance(edge),
-            " ".join(edge.direction), edge.carried_by or "-")
-
-
-def _distance(edge: Edge) -> str:
-    if edge.distance is None:
-        return "varies"
-    return " ".join("*" if step is None else str(step) for step in edge.distance)
+def _row(edge: Edge) -> tuple[str, ...]:
+    distance = "varies" if edge.distance is None else " ".join(map(str, edge.distance))
+    return (edge.kind, edge.storage + ("" if edge.exact else " (any cell)"), edge.source, edge.target,
+            " ".join(edge.common), distance, " ".join(edge.direction), edge.carried_by or "-")
 
 
 def dependences_dot(nest: Nest, dependences: Dependences) -> list[str]:

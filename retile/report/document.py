@@ -62,7 +62,7 @@ def of_dependences(nest: Nest, dependences: Dependences) -> Document:
     return {
         "address": str(nest.address),
         "statements": [of_statement(statement) for statement in nest.statements],
-        "dependences": [of_edge(nest, edge) for edge in dependences.edges],
+        "dependences": [of_edge(edge) for edge in dependences.edges],
         "assumptions": [of_assumption(assumption) for assumption in dependences.assumptions],
         "refusals": [],
     }
@@ -76,28 +76,17 @@ def of_refused_dependences(address: Address, refusals: Iterable[Refusal]) -> Doc
 
 def of_statement(statement: Statement) -> Document:
     """``{"id", "line", "text"}``."""
-    return {"id": statement.id, "line": statement.span.line, "text": statement.text}
+    return {"id": statement.id, "line": statement.line, "text": statement.text}
 
 
-def of_edge(nest: Nest, edge: Edge) -> Document:
+def of_edge(edge: Edge) -> Document:
     """One dependence; distance and direction count the loops that both statements share, outermost first."""
     return {
         "kind": edge.kind, "array": edge.storage, "source": edge.source, "target": edge.target,
         "distance": None if edge.distance is None else list(edge.distance), "direction": list(edge.direction),
-        "loops": list(shared_loops(nest, edge.source, edge.target)), "carried_by": edge.carried_by,
-        "assumptions": [of_assumption(assumption) for assumption in edge.assumptions],
+        "loops": list(edge.common), "carried_by": edge.carried_by,
+        "certain": edge.exact, "assumptions": [of_assumption(assumption) for assumption in edge.assumptions],
     }
-
-
-def shared_loops(nest: Nest, source: str, target: str) -> tuple[str, ...]:
-    """The loops around both statements, outermost first."""
-    pairs = zip(nest.statement(source).loops, nest.statement(target).loops)
-    shared = []
-    for one, other in pairs:
-        if one != other:
-            break
-        shared.append(one)
-    return tuple(shared)
 
 
 # ---------------------------------------------------------------- check

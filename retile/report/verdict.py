@@ -17,6 +17,8 @@ _HARM = {
     "output": "would leave the wrong one of two values in the cell",
 }
 
+_SHOWN = 2  # witnesses that a person reads; one already settles the verdict
+
 # Makes file, line, source line and caret of a refusal; the ``complaint`` of a source.
 Place = Callable[[Refusal], str]
 
@@ -27,8 +29,11 @@ def verdict_lines(address: Address, judgement: Judgement, place: Place, look: Lo
     lines = [f"{word}: {address} with plan {judgement.plan.text!r}".replace("'", '"'), ""]
     if judgement.verdict is Verdict.LEGAL:
         lines += paragraph("Every variant in this order computes the same as the original, for all sizes.", look)
-    for violation in judgement.violations:
+    for violation in judgement.violations[:_SHOWN]:
         lines += _separated(lines, violation_lines(violation, look))
+    if len(judgement.violations) > _SHOWN:
+        more = len(judgement.violations) - _SHOWN
+        lines += ["", f"{more} more of the dependences {'is' if more == 1 else 'are'} reversed; --json shows all."]
     for unproven in judgement.unproven:
         lines += _separated(lines, unproven_lines(unproven, look))
     for refusal in judgement.refusals:
