@@ -149,10 +149,15 @@ class Statement:
     domain: Formula  # which values its iterators take: bounds, strides and known guards
     accesses: tuple[Access, ...]
 
+    @property
+    def line(self) -> int:
+        """The line of its first character."""
+        return self.span.line
+
 
 @dataclass(frozen=True)
 class LoopText:
-    """How the user wrote a loop."""
+    """How the user wrote a loop.  Forms name its iterator by the loop's id."""
 
     id: str  # ``i``, or ``i@14`` where several share the name, or ``i@14:9`` where they also share the line
     iterator: str  # the C variable

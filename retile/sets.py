@@ -33,9 +33,9 @@ class Names:
             self._text_of[identifier] = text
         return self._of_text[text]
 
-    def text(self, identifier: str) -> str:
+    def text(self, identifier: str | None) -> str:
         """The text of an identifier made here."""
-        return self._text_of[identifier]
+        return self._text_of[identifier or ""]
 
 
 _NAMES = Names()

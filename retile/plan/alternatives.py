@@ -1,0 +1,83 @@
+"""A legal plan near one that is not: first with the smallest skew, then in another order, then with fewer chunks."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import replace
+from itertools import combinations, permutations, product
+
+from ..dependence import Dependences
+from ..model import Nest, Plan, Term
+from .grammar import term_text
+from .verdict import is_legal
+
+# The search ends after this many plans: an answer must feel instant, and far-fetched plans help nobody.
+_MOST_PLANS = 48
+_LARGEST_SKEW = 3
+
+
+def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | None:
+    """The text of a legal plan near an illegal one, options kept; None if none was found.
+
+    Rectangular chunks of a loop that carries dependences backwards get skewed by the loops outside it, with the
+    smallest factors that do (Wolf & Lam, "A data locality optimizing algorithm", 1991).
+    """
+    original = tuple(loop.id for loop in nest.loops)
+    seen = {plan.order_text}
+    for terms in _candidates(plan.terms, original):
+        text = " ".join(term_text(term) for term in terms)
+        bare = [term.loop for term in terms if term.chunk is None]
+        changed = len(bare) < len(terms) or bare != [id for id in original if id in bare]
+        if text in seen or not changed:
+            continue
+        seen.add(text)
+        if len(seen) > _MOST_PLANS:
+            return None
+        if is_legal(nest, dependences, replace(plan, terms=terms, places=())):
+            return text + plan.text[len(plan.order_text):]
+    return None
+
+
+def _candidates(terms: tuple[Term, ...], original: tuple[str, ...]) -> Iterator[tuple[Term, ...]]:
+    bare = tuple(term for term in terms if term.chunk is None)
+    in_order = tuple(sorted(bare, key=lambda term: original.index(term.loop)))
+    yield from _skewed(terms, original)
+    yield from _skewed(_with_bare(terms, in_order), original)
+    for order in _by_closeness(bare):
+        yield _with_bare(terms, order)
+    chunked = tuple(term for term in terms if term.chunk is not None)
+    for count in range(len(chunked) - 1, -1, -1):
+        for kept in combinations(chunked, count):
+            fewer = tuple(term for term in terms if term.chunk is None or term in kept)
+            yield fewer
+            yield _with_bare(fewer, in_order)
+
+
+def _with_bare(terms: tuple[Term, ...], bare: tuple[Term, ...]) -> tuple[Term, ...]:
+    """The terms with their bare ones, from left to right, replaced by these."""
+    left = iter(bare)
+    return tuple(next(left) if term.chunk is None else term for term in terms)
+
+
+def _by_closeness(bare: tuple[Term, ...]) -> list[tuple[Term, ...]]:
+    if len(bare) > 5:
+        return []
+    places = {term: at for at, term in enumerate(bare)}
+
+    def inversions(order: tuple[Term, ...]) -> int:
+        return sum(places[a] > places[b] for a, b in combinations(order, 2))
+
+    return sorted(permutations(bare), key=inversions)[1:]
+
+
+def _skewed(terms: tuple[Term, ...], original: tuple[str, ...]) -> Iterator[tuple[Term, ...]]:
+    """The terms with chunks of inner loops skewed by the outermost loop, smallest factors first."""
+    named = {term.loop for term in terms if term.chunk is None}
+    outermost = next(id for id in original if id in named)
+    inner = [at for at, term in enumerate(terms)
+             if term.chunk is not None and len(term.form) == 1 and term.loop != outermost]
+    factors = sorted(product(range(_LARGEST_SKEW + 1), repeat=len(inner)), key=lambda f: (sum(f), max(f, default=0)))
+    for choice in factors[1:_MOST_PLANS]:
+        skew = dict(zip(inner, choice, strict=True))
+        yield tuple(replace(term, form=((outermost, skew[at]), *term.form)) if skew.get(at) else term
+                    for at, term in enumerate(terms))

@@ -1,0 +1,320 @@
+"""From a plan to the loop tree that will be printed.
+
+Going through the terms from the outside in, statements are split into those before, in and after the term's loop, and
+the loop gets the bounds that its statements leave it: the projection of their instances onto the loops placed so far
+(Ancourt & Irigoin, "Scanning polyhedra with DO loops", 1991).  Where the source loop's own bounds, cut by the chunk,
+say the same, they are kept, because a reader knows them.  What bounds cannot say becomes a guard around the statement.
+
+    plan k:64 i k          for k_from = 0, 64, ... < n          Loop(k:64)
+                             for i = 0 ... n-1                    Loop(i)
+                               for k = k_from ... min(k_from+63, n-1)   Loop(k)
+
+The result is not trusted: ``questions.py`` judges it like any other tree.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+
+from ..affine import Affine, AllOf, Bound, Constraint, Extremum, Formula, at_least_bound, at_most, at_most_bound, \
+    bound_names, equal, map_bound
+from ..dependence import defined
+from ..model import LoopText, Nest, Plan, Term
+from ..sets import Region
+from ..tree import Guard, Leaf, Loop, Node, Role, Verbatim, loops_of
+from .grammar import form_text
+from .schedule import AFTER, BEFORE, INSIDE, placed, skewed_coordinate
+
+
+@dataclass(frozen=True)
+class Unit:
+    """Neighbouring nodes of the original that no named loop stands in: they move as one piece of text."""
+
+    nodes: tuple[Node, ...]
+    span: tuple[int, int]
+    loops: tuple[str, ...]  # ids of the named loops around it
+    guards: tuple[Guard, ...]  # moved with it: conditions between the named loops
+    statement: str  # id of one of its statements: all have the same places
+
+
+def build_tree(nest: Nest, plan: Plan) -> tuple[Node, ...]:
+    """The loop tree of a plan, with clamped bounds at the remainders."""
+    plan = plan if plan.places else placed(plan, nest)
+    return _Builder(nest, plan).group(units(nest, plan), 0, Region.where(), ())
+
+
+def moved_conditions(nest: Nest, plan: Plan) -> frozenset[str]:
+    """Ids of the conditions that stand between named loops: the tree evaluates them more often than the original."""
+    named = {term.loop for term in plan.terms if term.chunk is None}
+    found: set[str] = set()
+    _find_conditions(nest.tree, named, found)
+    return frozenset(found)
+
+
+def _find_conditions(nodes: tuple[Node, ...], named: set[str], found: set[str]) -> None:
+    for at, node in enumerate(nodes):
+        if not isinstance(node, Leaf | Verbatim) and _holds_named((node,), named):
+            if isinstance(node, Guard) and at > 0 and isinstance(before := nodes[at - 1], Leaf):
+                found.add(before.statement)
+            _find_conditions(node.body, named, found)
+
+
+def _holds_named(nodes: Iterable[Node], named: set[str]) -> bool:
+    return any(loop.of in named for loop in loops_of(tuple(nodes)))
+
+
+def units(nest: Nest, plan: Plan) -> tuple[Unit, ...]:
+    """The pieces of the nest's text that the plan moves, in text order."""
+    named = {term.loop for term in plan.terms if term.chunk is None}
+    return tuple(_units(nest.tree, nest, named, (), (), moved_conditions(nest, plan)))
+
+
+def _units(nodes: tuple[Node, ...], nest: Nest, named: set[str], loops: tuple[str, ...], guards: tuple[Guard, ...],
+           moved: frozenset[str]) -> Iterable[Unit]:
+    run: list[Node] = []
+    for node in (*nodes, None):
+        if node is not None and not _holds_named((node,), named):
+            if not (isinstance(node, Leaf) and node.statement in moved):
+                run.append(node)
+            continue
+        if run:
+            yield _unit(tuple(run), nest, loops, guards)
+            run = []
+        if isinstance(node, Loop):
+            yield from _units(node.body, nest, named, (*loops, node.of), guards, moved)
+        elif isinstance(node, Guard):
+            yield from _units(node.body, nest, named, loops, (*guards, node), moved)
+
+
+def _unit(nodes: tuple[Node, ...], nest: Nest, loops: tuple[str, ...], guards: tuple[Guard, ...]) -> Unit:
+    spans = [span for node in nodes for span in _extents(node, nest)]
+    ids = list(_statements(nodes))
+    return Unit(nodes, (min(start for start, _ in spans), max(end for _, end in spans)), loops, guards, ids[0])
+
+
+def _extents(node: Node, nest: Nest) -> Iterable[tuple[int, int]]:
+    if isinstance(node, Leaf):
+        span = nest.statement(node.statement).span
+        yield span.start, span.end
+    elif isinstance(node, Loop):
+        span = nest.loop(node.of).span
+        yield span.start, span.end
+    elif isinstance(node, Guard):
+        if node.span is not None:
+            yield node.span
+        for inner in node.body:
+            yield from _extents(inner, nest)
+
+
+def _statements(nodes: Iterable[Node]) -> Iterable[str]:
+    for node in nodes:
+        if isinstance(node, Leaf):
+            yield node.statement
+        else:
+            yield from _statements(node.content if isinstance(node, Verbatim) else node.body)
+
+
+class _Builder:
+    def __init__(self, nest: Nest, plan: Plan) -> None:
+        self._nest = nest
+        self._plan = plan
+        self._context = defined(nest)
+        self._parameters = tuple(parameter.symbol for parameter in nest.parameters)
+        self._points: dict[tuple[int, int], Region] = {}
+
+    def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
+        """The nodes of these units from a term on; ``known``: what the loops around establish."""
+        if not members:
+            return ()
+        if level == len(self._plan.terms):
+            return tuple(self._leaf(unit, known) for unit in members)
+        split: dict[int, list[Unit]] = {BEFORE: [], INSIDE: [], AFTER: []}
+        for unit in members:
+            split[self._plan.places_of(unit.statement)[level].position].append(unit)
+        inside: tuple[Node, ...] = ()
+        if split[INSIDE]:
+            inside = (self._loop(tuple(split[INSIDE]), level, known, outer),)
+        return (*self.group(tuple(split[BEFORE]), level + 1, known, outer), *inside,
+                *self.group(tuple(split[AFTER]), level + 1, known, outer))
+
+    def _leaf(self, unit: Unit, known: Region) -> Node:
+        node: Node = Verbatim(unit.span, unit.nodes)
+        around = known & self._context
+        for guard in reversed(unit.guards):
+            if guard.condition is None or not around.implies(guard.condition):
+                node = Guard(guard.condition, (node,), guard.span)
+        left = self._executed(unit, guarded=False).relative_to(around)
+        return node if around.within(left) else Guard(left.formula(), (node,))
+
+    def _executed(self, unit: Unit, guarded: bool = True) -> Region:
+        """The values of all loop symbols with which a unit runs."""
+        conditions: list[Formula] = [self._source(loop).constraints() for loop in unit.loops]
+        if guarded:
+            conditions += [guard.condition for guard in unit.guards if guard.condition is not None]
+        conditions += [self._chunk_link(term) for term in self._plan.terms if term.chunk is not None
+                       and all(loop in unit.loops for loop, _ in term.form)]
+        return Region.where(*conditions) & self._context
+
+    def _source(self, id: str) -> Loop:
+        return next(loop for loop in loops_of(self._nest.tree) if loop.of == id)
+
+    def _chunk_link(self, term: Term) -> Formula:
+        """How the value of a chunk loop hangs together with the iterators: it is the first value of their chunk."""
+        value, form, length, origin, upward = self._chunk(term)
+        ahead = form - value if upward else value - form
+        return AllOf((at_most(0, ahead), at_most(ahead, length - 1), equal((value - origin).mod(length), 0)))
+
+    def _chunk(self, term: Term) -> tuple[Affine, Affine, int, Affine, bool]:
+        """A chunk loop's value, the form that it cuts, its length in that form, its origin, and its direction."""
+        assert term.chunk is not None
+        value = Affine.of(chunk_symbol(term))
+        if len(term.form) > 1 or term.form[0][1] != 1:
+            return value, skewed_coordinate(term, self._nest), term.chunk, Affine(), True
+        loop = self._nest.loop(term.loop)
+        origin = loop.first if loop.independent and isinstance(loop.first, Affine) else Affine()
+        return value, Affine.of(loop.id), term.chunk * abs(loop.step), origin, loop.step > 0
+
+    def _loop(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> Loop:
+        term = self._plan.terms[level]
+        symbol = chunk_symbol(term) if term.chunk is not None else term.loop
+        visible = (*self._parameters, *(loop.symbol for loop in outer), symbol)
+        values = Region.union(self._executed(unit).only(visible) for unit in members).coalesced()
+        loop = self._bounded(term, symbol, values, known, outer)
+        inner = known & Region.where(loop.constraints())
+        return replace(loop, body=self.group(members, level + 1, inner, (*outer, loop)))
+
+    def _bounded(self, term: Term, symbol: str, values: Region, known: Region, outer: tuple[Loop, ...]) -> Loop:
+        """A loop without a body that runs over the values, or over a few more where bounds cannot say it."""
+        around = known & self._context & values.without([symbol])
+        readable = tuple(self._readable(term, symbol, outer))
+        for loop in readable:
+            own = Region.where(loop.constraints())
+            if (around & own).within(values) and (values & known).within(own):
+                return loop
+        start = [loop for loop in readable if (values & known).within(Region.where(loop.constraints()))][-1:]
+        frame = start[0] if start else self._frame(term, symbol, outer)
+        around = around & Region.where(frame.constraints()) if start else around
+        lower, upper = _bounds(values.relative_to(around).hull(), symbol)
+        if not start and not (lower and upper):
+            full_lower, full_upper = _bounds(values.hull(), symbol)
+            lower, upper = lower or full_lower, upper or full_upper
+        loop = _on_grid(replace(frame, lower=_bound("max", ((frame.lower,) if start else ()) + lower),
+                                upper=_bound("min", ((frame.upper,) if start else ()) + upper)))
+        return _without_idle_bounds(loop, known & self._context)
+
+    def _frame(self, term: Term, symbol: str, outer: tuple[Loop, ...]) -> Loop:
+        """The loop of a term with everything but its bounds and its body."""
+        source = self._nest.loop(term.form[0][0])
+        level = sum(1 for other in self._plan.terms[:self._plan.terms.index(term)]
+                    if other.chunk is not None and any(loop == source.id for loop, _ in other.form))
+        nothing = Affine()
+        if term.chunk is not None:
+            _, _, length, origin, upward = self._chunk(term)
+            return Loop(symbol, nothing, nothing, length if upward else -length, origin, (), source.id, Role.CHUNK,
+                        level, term.chunk)
+        step, origin = source.step, self._source(source.id).origin
+        if not origin.names() <= {*self._parameters, *(loop.symbol for loop in outer)}:
+            step, origin = (1 if step > 0 else -1), nothing
+        role = Role.ELEMENT if level else Role.WHOLE
+        return Loop(symbol, nothing, nothing, step, origin, (), source.id, role, level)
+
+    def _readable(self, term: Term, symbol: str, outer: tuple[Loop, ...]) -> Iterable[Loop]:
+        """Loops with the bounds that a reader expects: the source loop's own, cut by the chunks around."""
+        if len(term.form) > 1 or term.form[0][1] != 1:
+            return
+        source = self._source(term.loop)
+        names = bound_names(source.lower) | bound_names(source.upper)
+        if not names <= {*self._parameters, *(loop.symbol for loop in outer)}:
+            return
+        frame = self._frame(term, symbol, outer)
+        chunks = [loop for loop in outer if loop.role is Role.CHUNK and loop.symbol == f"{term.loop}:{loop.size}"]
+        yield from _cut(frame, source, chunks[-1:])
+        yield from _cut(frame, source, chunks)
+
+
+def chunk_symbol(term: Term) -> str:
+    """The name that forms use for the value of a chunk loop: the term as a plan writes it."""
+    return f"{form_text(term.form)}:{term.chunk}"
+
+
+def _cut(frame: Loop, source: Loop, chunks: list[Loop]) -> Iterable[Loop]:
+    """The frame with the source loop's bounds, cut by these chunks; first without the bound at which chunks start."""
+    upward = source.step > 0
+    starts: tuple[Bound, ...] = tuple(Affine.of(chunk.symbol) for chunk in chunks)
+    ends: tuple[Bound, ...] = tuple(Affine.of(chunk.symbol) + chunk.step - (1 if upward else -1) for chunk in chunks)
+    if frame.role is Role.CHUNK and frame.step * source.step > 0 and not chunks:
+        starts = ()
+    near, far = (source.lower, source.upper) if upward else (source.upper, source.lower)
+    for first in ((starts, (*starts, near)) if starts else ((near,),)):
+        low, high = _bound("max" if upward else "min", first), _bound("min" if upward else "max", (*ends, far))
+        yield replace(frame, lower=low, upper=high) if upward else replace(frame, lower=high, upper=low)
+
+
+def _bound(kind: str, bounds: tuple[Bound, ...]) -> Bound:
+    distinct: list[Bound] = []
+    for bound in bounds:
+        distinct += [part for part in _parts(kind, bound) if part not in distinct]
+    return distinct[0] if len(distinct) == 1 else Extremum(kind, tuple(distinct))
+
+
+def _bounds(values: Region, symbol: str) -> tuple[tuple[Bound, ...], tuple[Bound, ...]]:
+    """The lower and the upper bounds that the constraints of a convex region put on a symbol."""
+    lowers: list[Bound] = []
+    uppers: list[Bound] = []
+    for constraint in _constraints_on(values, symbol):
+        factor = constraint.form.coefficient(symbol)
+        rest = constraint.form - Affine.of(symbol) * factor
+        if symbol in rest.names():
+            continue
+        if factor > 0 or constraint.equality:
+            lowers.append((-rest * (1 if factor > 0 else -1) + abs(factor) - 1).floor_div(abs(factor)))
+        if factor < 0 or constraint.equality:
+            uppers.append((rest * (1 if factor < 0 else -1)).floor_div(abs(factor)))
+    return tuple(lowers), tuple(uppers)
+
+
+def _on_grid(loop: Loop) -> Loop:
+    """The same loop with a constant bound moved to the first value of the grid that it lets in."""
+    step = abs(loop.step)
+    if step == 1 or not loop.origin.is_constant:
+        return loop
+    origin = loop.origin.constant
+
+    def up(bound: Affine) -> Affine:
+        return Affine((), origin - (origin - bound.constant) // step * step) if bound.is_constant else bound
+
+    def down(bound: Affine) -> Affine:
+        return Affine((), origin + (bound.constant - origin) // step * step) if bound.is_constant else bound
+
+    if loop.step > 0:
+        return replace(loop, lower=map_bound(loop.lower, up))
+    return replace(loop, upper=map_bound(loop.upper, down))
+
+
+def _without_idle_bounds(loop: Loop, known: Region) -> Loop:
+    """The same loop without the bounds that the others, with what is known outside, already say."""
+    value = Affine.of(loop.symbol)
+    for kind, limit in (("max", at_least_bound), ("min", at_most_bound)):
+        parts = _parts(kind, loop.lower if kind == "max" else loop.upper)
+        for part in parts:
+            rest = tuple(p for p in parts if p != part)
+            if not rest:
+                break
+            slim = replace(loop, lower=_bound(kind, rest)) if kind == "max" else replace(loop, upper=_bound(kind, rest))
+            if (known & Region.where(slim.constraints())).implies(limit(value, part)):
+                loop, parts = slim, rest
+    return loop
+
+
+def _parts(kind: str, bound: Bound) -> tuple[Bound, ...]:
+    return bound.bounds if isinstance(bound, Extremum) and bound.kind == kind else (bound,)
+
+
+def _constraints_on(values: Region, symbol: str) -> Iterable[Constraint]:
+    for piece in values.pieces():
+        for constraint in piece:
+            if constraint.form.coefficient(symbol):
+                yield constraint
+
+

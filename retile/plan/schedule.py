@@ -1,0 +1,73 @@
+"""What a plan means: the place of every statement, and the moment of every instance.
+
+An instance's moment is a vector compared lexicographically.  Per term it has a list position (before, in or after the
+term's loop) and the loop's value; it ends with the original order, which decides among statements that stand in the
+same named loops.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from ..affine import Affine
+from ..model import LoopText, Nest, Place, Plan, Statement, Term
+
+BEFORE, INSIDE, AFTER = 0, 1, 2
+
+
+def placed(plan: Plan, nest: Nest) -> Plan:
+    """The plan with the default places of all statements of the nest.
+
+    A statement inside the loops of a term takes the loops' own place; one outside stands before the first value or
+    after the last one, as the text has it.
+    """
+    places = tuple((statement.id, tuple(_place(term, statement, nest) for term in plan.terms))
+                   for statement in nest.statements)
+    return replace(plan, places=places)
+
+
+def _place(term: Term, statement: Statement, nest: Nest) -> Place:
+    missing = [loop for loop, _ in term.form if loop not in statement.loops]
+    if not missing:
+        return Place(INSIDE, moment(term, nest))
+    before = statement.span.start < nest.loop(missing[0]).span.start
+    return Place(BEFORE if before else AFTER, None)
+
+
+def moment(term: Term, nest: Nest) -> Affine:
+    """A term's value for an instance, in the instance's iterators (design: bare x, x:S and (…):S)."""
+    loops = [(nest.loop(loop), factor) for loop, factor in term.form]
+    if len(loops) == 1 and loops[0][1] == 1:
+        loop = loops[0][0]
+        if loop.independent:
+            number = iteration_number(loop)
+            return number if term.chunk is None else number.floor_div(term.chunk)
+        upward = Affine.of(loop.id) * (1 if loop.step > 0 else -1)
+        return upward if term.chunk is None else upward.floor_div(term.chunk * abs(loop.step))
+    coordinate = skewed_coordinate(term, nest)
+    return coordinate if term.chunk is None else coordinate.floor_div(term.chunk)
+
+
+def skewed_coordinate(term: Term, nest: Nest) -> Affine:
+    """The value of a skewed sum: loops that count up by one by their value, others by their iteration number."""
+    total = Affine()
+    for id, factor in term.form:
+        loop = nest.loop(id)
+        total = total + (Affine.of(id) if loop.step == 1 else iteration_number(loop)) * factor
+    return total
+
+
+def iteration_number(loop: LoopText) -> Affine:
+    """``(x - first) / step``, exact on the loop's iterations."""
+    if not isinstance(loop.first, Affine):
+        raise TypeError(f"first value of loop {loop.id} is not affine")
+    distance = Affine.of(loop.id) - loop.first
+    return (distance if loop.step > 0 else -distance).floor_div(abs(loop.step))
+
+
+def moments(plan: Plan, statement: str) -> tuple[int | Affine, ...]:
+    """The part of a statement's time vector that the plan gives: positions and values in turn, outermost first."""
+    vector: list[int | Affine] = []
+    for place in plan.places_of(statement):
+        vector += [place.position, place.form if place.form is not None else 0]
+    return tuple(vector)

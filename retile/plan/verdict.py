@@ -1,0 +1,216 @@
+"""The verdict about a plan: is every dependence still kept, for all sizes?
+
+A plan reverses a pair of dependent instances if the target's moment does not come after the source's.  The pairs of
+each edge are exact integer sets, so the plan is legal if and only if no edge has a reversed pair (Bernstein's condition
+on the order of conflicting accesses; the question as in Irigoin & Triolet, "Supernode partitioning", 1988).  A reversed
+pair is a witness: it is shown at the smallest sizes at which it happens.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from ..affine import Affine, AllOf, at_most
+from ..dependence import Dependences, Edge, original_times
+from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan, Refusal, Statement, StorageKind,
+                     Unproven, Verdict, Violation)
+from ..order import Coordinate, first_differences, prime, primed
+from ..sets import Region
+from .schedule import moments, placed
+
+# Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
+_WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
+
+
+def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
+    """The verdict about a plan, with its evidence and the assumptions that it rests on; ``plan.places`` get filled in."""
+    plan = placed(plan, nest)
+    court = _Court(nest, dependences, plan)
+    refusals = tuple(court.refusals())
+    if refusals:
+        return Judgement(Verdict.REFUSED, plan, refusals=refusals)
+    edges = court.binding_edges()
+    violations = tuple(court.violations(edges))
+    unproven = () if violations else tuple(court.unproven(edges))
+    assumptions = tuple(court.needed_assumptions())
+    verdict = Verdict.ILLEGAL if violations else Verdict.UNPROVEN if unproven else Verdict.LEGAL
+    return Judgement(verdict, plan, violations, unproven, (), assumptions)
+
+
+def is_legal(nest: Nest, dependences: Dependences, plan: Plan) -> bool:
+    """The verdict alone, without evidence; stops at the first reversed pair."""
+    court = _Court(nest, dependences, placed(plan, nest))
+    return not any(court.refusals()) and all(assumption.testable for assumption in nest.assumptions) and \
+        all(court.reversed(edge) is None for edge in court.binding_edges())
+
+
+@dataclass(frozen=True)
+class _Reversed:
+    edge: Edge
+    pairs: Region
+
+
+class _Court:
+    def __init__(self, nest: Nest, dependences: Dependences, plan: Plan) -> None:
+        self._nest = nest
+        self._dependences = dependences
+        original = original_times(nest)
+        self._times: dict[str, tuple[Coordinate, ...]] = {
+            statement.id: (*moments(plan, statement.id), *original[statement.id]) for statement in nest.statements}
+        self._plan = plan
+
+    def reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> Region | None:
+        """Those of the pairs whose target the plan does not run after the source; None if there are none."""
+        later = tuple(primed(t, target.loops) if isinstance(t, Affine) else t for t in self._times[target.id])
+        wrong = [found for _, found in first_differences(pairs, later, self._times[source.id])]
+        return Region.union(wrong[1:]) | wrong[0] if wrong else None
+
+    def binding_edges(self) -> tuple[Edge, ...]:
+        """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole."""
+        split = {name for name in {edge.storage for edge in self._dependences.reuse}
+                 if not self._stays_whole(self._nest.storage(name).private_to)}
+        return (*self._dependences.edges, *(edge for edge in self._dependences.reuse if edge.storage in split))
+
+    def _stays_whole(self, loops: tuple[str, ...]) -> bool:
+        """True if one iteration of these loops runs to its end before another one starts.
+
+        It does if no other loop stands in the plan before the last bare term of these: for ``i`` and the plan
+        ``i:8 i k`` it stays whole, with ``i:8 k:8 i k`` it is cut by the chunks of ``k``.
+        """
+        bare = [at for at, term in enumerate(self._plan.terms) if term.chunk is None and term.loop in loops]
+        ahead = self._plan.terms[:max(bare, default=-1) + 1]
+        return all(loop in loops for term in ahead for loop, _ in term.form)
+
+    def refusals(self) -> Iterator[Refusal]:
+        """A declaration whose block the plan takes apart cannot be written down."""
+        for name in sorted({edge.storage for edge in self._dependences.reuse}):
+            storage = self._nest.storage(name)
+            if storage.scope != "block" or self._stays_whole(storage.private_to):
+                continue
+            users = [s for s in self._nest.statements if any(a.storage == name for a in s.accesses)]
+            if len({self._split_of(s) for s in users}) > 1 and not self._reverses_reuse(name):
+                yield Refusal(users[0].line, users[0].span.column, "declaration-split",
+                              f"'{name}' is declared in a block that the plan takes apart; declare it before the nest")
+
+    def _split_of(self, statement: Statement) -> tuple[int, ...]:
+        return tuple(place.position for place in self._plan.places_of(statement.id))
+
+    def _reverses_reuse(self, name: str) -> bool:
+        return any(self.reversed(edge) is not None for edge in self._dependences.reuse if edge.storage == name)
+
+    def reversed(self, edge: Edge) -> _Reversed | None:
+        """The edge with those of its pairs that the plan reverses; None if it keeps all of them."""
+        pairs = self.reversed_pairs(edge.relation, self._nest.statement(edge.source), self._nest.statement(edge.target))
+        return None if pairs is None else _Reversed(edge, pairs)
+
+    def violations(self, edges: tuple[Edge, ...]) -> Iterator[Violation]:
+        """One witness per edge with a reversed pair that surely shares a cell."""
+        for edge in edges:
+            found = self.reversed(edge) if edge.exact else None
+            if found is not None:
+                yield self._witness(found)
+
+    def unproven(self, edges: tuple[Edge, ...]) -> Iterator[Unproven]:
+        """Reversed pairs of accesses that may touch any cell, and assumptions that nobody can test."""
+        for edge in edges:
+            if not edge.exact and self.reversed(edge) is not None:
+                yield Unproven(edge.source, edge.target,
+                               f"a subscript of {edge.storage} is not affine: the access may touch any cell",
+                               f"that the cells of {edge.storage} which line {self._line(edge.source)} and line "
+                               f"{self._line(edge.target)} touch are different ones")
+        for assumption in self._nest.assumptions:
+            if not assumption.testable:
+                first = self._nest.statements[0].id
+                yield Unproven(first, first, "the code does not state a fact that the verdict needs", assumption.text)
+
+    def needed_assumptions(self) -> Iterator[Assumption]:
+        """The assumptions without which the plan could reverse a pair of accesses, or the loops could run otherwise."""
+        reorders: dict[tuple[str, str], bool] = {}
+        for assumption in self._nest.assumptions:
+            if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
+                if self._could_reverse(assumption.storages[0], assumption.storages[1], reorders):
+                    yield assumption
+            elif assumption.code is AssumptionCode.ROW_BOUND:
+                if any(self._could_reverse(name, name, reorders) for name in self._flattened()):
+                    yield assumption
+            elif not self.is_identity():
+                yield assumption
+
+    def _flattened(self) -> tuple[str, ...]:
+        return tuple(storage.name for storage in self._nest.storages
+                     if storage.kind is not StorageKind.SCALAR and storage.strides)
+
+    def is_identity(self) -> bool:
+        """True if the plan is the original order, loop for loop."""
+        return all(term.chunk is None for term in self._plan.terms) and \
+            [term.loop for term in self._plan.terms] == \
+            [loop.id for loop in self._nest.loops if loop.id in {term.loop for term in self._plan.terms}]
+
+    def _could_reverse(self, one: str, other: str, known: dict[tuple[str, str], bool]) -> bool:
+        """True if some accesses to the two, one of them writing, could change order if they met at any cell."""
+        for source in self._nest.statements:
+            for target in self._nest.statements:
+                touched = _touch(source, target, one, other)
+                if not touched:
+                    continue
+                if (source.id, target.id) not in known:
+                    known[source.id, target.id] = self._swaps(source, target)
+                if known[source.id, target.id]:
+                    return True
+        return False
+
+    def _swaps(self, source: Statement, target: Statement) -> bool:
+        domain = self._dependences.domains[source.id]
+        pairs = domain & self._dependences.domains[target.id].renamed({loop: prime(loop) for loop in target.loops})
+        if pairs.is_empty():
+            return False
+        original = original_times(self._nest)
+        later = tuple(primed(t, target.loops) if isinstance(t, Affine) else t for t in original[target.id])
+        strict = min(len(later), len(original[source.id]))
+        return any(self.reversed_pairs(found, source, target) is not None
+                   for level, found in first_differences(pairs, original[source.id], later) if level < strict)
+
+    def _line(self, statement: str) -> int:
+        return self._nest.statement(statement).line
+
+    def _witness(self, found: _Reversed) -> Violation:
+        source, target = (self._nest.statement(id) for id in (found.edge.source, found.edge.target))
+        parameters = [p.symbol for p in self._nest.parameters]
+        order = (*parameters, *source.loops, *map(prime, target.loops))
+        point = _smallest(found.pairs, order)
+        outer = tuple((p.symbol, point[p.symbol]) for p in self._nest.parameters if p.kind == "outer iterator")
+        access = next(a for a in source.accesses if a.storage == found.edge.storage
+                      and a.write == (found.edge.kind != "anti"))
+        cell = None if access.subscripts is None else tuple(s.evaluate(point) for s in access.subscripts)
+        sizes = tuple((p.symbol, point[p.symbol]) for p in self._nest.parameters if p.kind != "outer iterator")
+        return Violation(found.edge.kind, found.edge.storage, sizes,
+                         _instance(source, outer, point, prime_names=False),
+                         _instance(target, outer, point, prime_names=True), cell)
+
+
+def _touch(source: Statement, target: Statement, one: str, other: str) -> bool:
+    return any(a.storage == x and b.storage == y and (a.write or b.write)
+               for x, y in {(one, other), (other, one)} for a in source.accesses for b in target.accesses)
+
+
+def _instance(statement: Statement, outer: tuple[tuple[str, int], ...], point: dict[str, int],
+              prime_names: bool) -> Instance:
+    own = tuple((loop, point[prime(loop) if prime_names else loop]) for loop in statement.loops)
+    return Instance(statement.id, statement.line, (*outer, *own))
+
+
+def _smallest(pairs: Region, order: tuple[str, ...]) -> dict[str, int]:
+    """A point of the region with small values, non-negative if possible, sizes smallest first."""
+    for bound in _WITNESS_BOUNDS:
+        for low in (0, -bound):
+            box = Region.where(AllOf(tuple(
+                part for name in order for part in (at_most(low, Affine.of(name)), at_most(Affine.of(name), bound)))))
+            point = (pairs & box).first(order)
+            if point is not None:
+                return point
+    sample = pairs.sample(order)
+    if sample is None:
+        raise ValueError("no pair to show")
+    return sample
+

@@ -1,0 +1,132 @@
+"""The two exact questions that every finished tree must pass, whatever steps made it.
+
+1. The same instances: each statement's instances in the tree are the original's, each exactly once, for all sizes.
+2. The same order where it matters: the source of every dependence runs strictly before its target.
+
+Both are answered on integer sets.  A tree that passes computes what the original computes, since it runs the same
+instances and keeps every pair of conflicting accesses in order (Bernstein, "Analysis of programs for parallel
+processing", 1966).  Statements that only read what the nest never writes (conditions that a transformation evaluates more
+often) may be named as ``repeatable``: they are left out of the first question.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass
+
+from .affine import Affine, AnyOf, equal, less
+from .dependence import Dependences, Edge
+from .model import Nest
+from .order import Coordinate, first_differences
+from .sets import Region
+from .tree import Node, Occurrence, occurrences
+
+
+@dataclass(frozen=True)
+class Flaw:
+    """Why a tree is not the nest: never the user's fault."""
+
+    statement: str
+    text: str
+    example: tuple[tuple[str, int], ...] = ()
+
+    def __str__(self) -> str:
+        at = ", ".join(f"{name} = {value}" for name, value in self.example)
+        return f"statement {self.statement}: {self.text}" + (f" (for example {at})" if at else "")
+
+
+class _Runs:
+    """One leaf of a tree: its executions as a region, under names that no other leaf uses."""
+
+    def __init__(self, occurrence: Occurrence, context: Region, number: int) -> None:
+        names = {loop.symbol: f"{loop.symbol}~{number}" for loop in occurrence.loops}
+        self._own = {name: Affine.of(own) for name, own in names.items()}
+        self.symbols = tuple(names.values())
+        self.instance = tuple((name, form.substitute(self._own)) for name, form in occurrence.leaf.instance)
+        self.region = (Region.where(*occurrence.conditions) & context).renamed(names)
+        self.time: tuple[Coordinate, ...] = tuple(self._coordinate(moment) for moment in occurrence.time)
+
+    def _coordinate(self, moment: int | tuple[str, int]) -> Coordinate:
+        if isinstance(moment, int):
+            return moment
+        return self._own[moment[0]] * moment[1] if moment[1] else 0
+
+    def as_instances(self, suffix: str = "") -> Region:
+        """Executions tied to the instances that they stand for, under the original's names with a suffix."""
+        return self.region & Region.where(*(equal(Affine.of(name + suffix), form) for name, form in self.instance))
+
+
+def _runs(tree: tuple[Node, ...], context: Region) -> dict[str, list[_Runs]]:
+    runs: dict[str, list[_Runs]] = defaultdict(list)
+    for number, occurrence in enumerate(occurrences(tree)):
+        runs[occurrence.leaf.statement].append(_Runs(occurrence, context, number))
+    return runs
+
+
+def same_instances(tree: tuple[Node, ...], nest: Nest, context: Region, repeatable: Iterable[str] = ()) -> list[Flaw]:
+    """Question 1: what is missing, too much or repeated; an empty list if nothing is.
+
+    ``context``: the parameters' values that count (``Dependences.context``).
+    """
+    runs = _runs(tree, context)
+    flaws: list[Flaw] = []
+    for statement in nest.statements:
+        if statement.id in set(repeatable):
+            continue
+        wanted = Region.where(statement.domain) & context
+        given = [run.as_instances().without(run.symbols) for run in runs[statement.id]]
+        flaws += _difference(statement.id, wanted, Region.union(given))
+        flaws += _repeated(statement.id, runs[statement.id], given)
+    return flaws
+
+
+def _difference(statement: str, wanted: Region, given: Region) -> Iterator[Flaw]:
+    for region, text in ((wanted - given, "an instance is missing"), (given - wanted, "an instance is too much")):
+        point = region.sample()
+        if point is not None:
+            yield Flaw(statement, text, tuple(sorted(point.items())))
+
+
+def _repeated(statement: str, runs: list[_Runs], given: list[Region]) -> Iterator[Flaw]:
+    for at, run in enumerate(runs):
+        for other in given[:at]:
+            if not (given[at] & other).is_empty():
+                yield Flaw(statement, "an instance runs in two places")
+        twin = run.region.renamed({name: name + "^" for name in run.symbols})
+        same = [equal(form, form.substitute({name: Affine.of(name + "^") for name in run.symbols}))
+                for _, form in run.instance]
+        differ = AnyOf(tuple(less(Affine.of(x), Affine.of(y)) for name in run.symbols
+                             for x, y in ((name, name + "^"), (name + "^", name))))
+        if not (run.region & twin & Region.where(*same, differ)).is_empty():
+            yield Flaw(statement, "an instance runs twice in one place")
+
+
+def order_kept(tree: tuple[Node, ...], dependences: Dependences, edges: Iterable[Edge] | None = None) \
+        -> list[Flaw]:
+    """Question 2: the dependences whose source does not run strictly first; an empty list if all are kept.
+
+    ``edges``: those that the tree must keep; all value-carrying ones of ``dependences`` if left out.
+    """
+    runs = _runs(tree, dependences.context)
+    flaws: list[Flaw] = []
+    for edge in dependences.edges if edges is None else edges:
+        for source in runs[edge.source]:
+            for target in runs[edge.target]:
+                flaws += _disorder(edge, source, target)
+    return flaws
+
+
+def _disorder(edge: Edge, source: _Runs, target: _Runs) -> Iterator[Flaw]:
+    # A leaf that is both ends runs at two moments: its second set of names carries a mark.
+    names = {name: name + "^" for name in target.symbols} if source is target else {}
+    pairs = edge.relation & source.as_instances() & target.as_instances("'").renamed(names)
+    if pairs.is_empty():
+        return
+    marked = {name: Affine.of(other) for name, other in names.items()}
+    later = tuple(c.substitute(marked) if isinstance(c, Affine) else c for c in target.time)
+    for _, wrong in first_differences(pairs, later, source.time):
+        point = wrong.sample() or {}
+        shown = tuple(sorted((name, value) for name, value in point.items() if "~" not in name))
+        yield Flaw(edge.source, f"its {edge.kind} dependence to {edge.target} on {edge.storage} is reversed", shown)
+        return
