@@ -1,0 +1,119 @@
+"""Plans: their text, their meaning, the verdict about them and the trees built from them."""
+
+from __future__ import annotations
+
+import pytest
+from hand_nests import BACKWARD, DOWN, DRIFT, PRODUCT, TRIANGLE
+from walk import Run, runs
+
+from retile.dependence import analyse
+from retile.model import Nest, RetileError, Verdict
+from retile.plan import build_tree, is_legal, judge, nearest_legal, parse_plan, placed
+from retile.questions import order_kept, same_instances
+
+
+@pytest.mark.parametrize("text, start, length, part", [
+    ("t q", 2, 1, "no loop 'q'"),
+    ("i", 0, 1, "'t' is outside 'i'"),
+    ("i:0 t i", 2, 1, "covers nothing"),
+    ("i:-3 t i", 2, 2, "not a chunk"),
+    ("i:x t i", 2, 1, "not a chunk"),
+    ("t i i:4", 4, 3, "inside its single iterations"),
+    ("t:4 t:8 t i", 4, 3, "does not fall"),
+    ("t:8 t:8 t i", 4, 3, "does not fall"),
+    ("t i t", 4, 1, "stands twice"),
+    ("(t+i) t i", 0, 5, "needs a chunk"),
+    ("(t+):4 t i", 2, 1, "not a sum"),
+    ("(t-t):4 t i", 1, 3, "always 0"),
+    ("t i; unroll", 5, 6, "not an option"),
+    ("t i; remainder peel, remainder clamp", 21, 15, "stands twice"),
+    ("", 0, 1, "names no loop"),
+])
+def test_wrong_plan_is_marked(text: str, start: int, length: int, part: str) -> None:
+    with pytest.raises(RetileError) as caught:
+        parse_plan(text, DRIFT)
+    message = str(caught.value).splitlines()
+    assert part in message[0]
+    assert message[1] == f"    {text}"
+    assert message[2] == "    " + " " * start + "^" * length
+    assert len(message) == 4
+
+
+def test_plan_is_read() -> None:
+    plan = parse_plan("  t:4   (2*t+i):8 t i ; remainder peel ", DRIFT)
+    assert plan.text == "t:4 (2*t+i):8 t i; remainder peel"
+    assert [(term.form, term.chunk) for term in plan.terms] == [
+        ((("t", 1),), 4), ((("t", 2), ("i", 1)), 8), ((("t", 1),), None), ((("i", 1),), None)]
+    assert plan.options == (("remainder", "peel"),)
+
+
+# What a moment is, written down again with Python integers: p = (x - first) / step, floor(p / S); where first depends
+# on another loop x itself (-x when counting down) and floor of it over S * |step|.
+def moment(nest: Nest, plan_text: str, run: Run, sizes: dict[str, int]) -> tuple[int, ...]:
+    values = {**sizes, **dict(run[1])}
+    vector = []
+    for term in parse_plan(plan_text, nest).terms:
+        loops = [nest.loop(id) for id, _ in term.form]
+        if len(loops) == 1 and not loops[0].independent:
+            placed_by, unit = values[loops[0].id] * (1 if loops[0].step > 0 else -1), abs(loops[0].step)
+        else:
+            placed_by, unit = 0, 1
+            for loop, (_, factor) in zip(loops, term.form, strict=True):
+                number = (values[loop.id] - loop.first.evaluate(values)) // loop.step
+                placed_by += factor * (values[loop.id] if len(loops) > 1 and loop.step == 1 else number)
+        vector.append(placed_by if term.chunk is None else placed_by // (term.chunk * unit))
+    return tuple(vector)
+
+
+PLANS = [
+    (PRODUCT, ["i j k", "k:4 j:3 i k j", "i:6 j:4 k:2 i:3 j:2 k j i", "k:5 i:5 k:2 j k i"]),
+    (BACKWARD, ["i j", "i:3 j:3 i j", "j i", "(i+j):3 i j", "(2*i+j):5 j:2 i j"]),
+    (TRIANGLE, ["j i", "i:3 j:2 i j", "j:3 i j", "j:5 i:3 j:2 i j", "(i+j):4 j i"]),
+    (DOWN, ["j i", "i:2 j:3 i j", "j:2 i:2 j i"]),
+    (DRIFT, ["i:3 t i", "(i+t):4 t i", "t:2 (i+t):3 t i", "(2*t+i):4 i t"]),
+]
+
+
+@pytest.mark.parametrize("nest, text", [(nest, text) for nest, texts in PLANS for text in texts])
+def test_tree_runs_the_instances_in_the_order_of_the_plan(nest: Nest, text: str) -> None:
+    plan = placed(parse_plan(text, nest), nest)
+    tree = build_tree(nest, plan)
+    for size in (0, 1, 2, 3, 5, 7, 8):
+        sizes = {p.symbol: size + at for at, p in enumerate(nest.parameters)}
+        original = list(runs(nest.tree, sizes))
+        got = list(runs(tree, sizes))
+        assert sorted(got) == sorted(original)
+        assert got == sorted(got, key=lambda run: moment(nest, text, run, sizes))
+
+
+@pytest.mark.parametrize("nest, text", [(nest, text) for nest, texts in PLANS for text in texts])
+def test_verdict_and_questions_agree(nest: Nest, text: str) -> None:
+    dependences = analyse(nest)
+    judgement = judge(nest, dependences, parse_plan(text, nest))
+    tree = build_tree(nest, judgement.plan)
+    assert same_instances(tree, nest, dependences.context) == []
+    assert bool(order_kept(tree, dependences)) == (judgement.verdict is Verdict.ILLEGAL)
+    assert is_legal(nest, dependences, judgement.plan) == (judgement.verdict is Verdict.LEGAL)
+
+
+def test_witness_is_the_smallest() -> None:
+    judgement = judge(BACKWARD, analyse(BACKWARD), parse_plan("j i", BACKWARD))
+    assert judgement.verdict is Verdict.ILLEGAL
+    (violation,) = judgement.violations
+    assert (violation.kind, violation.array, violation.parameters, violation.cell) == ("flow", "a", (("n", 3),), (1, 1))
+    assert violation.source.iterators == (("i", 1), ("j", 1))
+    assert violation.target.iterators == (("i", 2), ("j", 0))
+
+
+@pytest.mark.parametrize("nest, text, instead", [
+    (DRIFT, "i:8 t i", "(t+i):8 t i"),  # distance (1, -1) needs a skew of one: the smallest that is legal
+    (DRIFT, "t:4 i:8 t i", "t:4 (t+i):8 t i"),
+    (BACKWARD, "i:8 j:8 i j", "i:8 (i+j):8 i j"),
+    (BACKWARD, "j i", None),
+])
+def test_nearest_legal_plan(nest: Nest, text: str, instead: str | None) -> None:
+    dependences = analyse(nest)
+    found = nearest_legal(nest, dependences, parse_plan(text, nest))
+    assert found == instead
+    if found:
+        assert judge(nest, dependences, parse_plan(found, nest)).verdict is Verdict.LEGAL
