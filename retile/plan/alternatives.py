@@ -4,15 +4,17 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import replace
-from itertools import combinations, permutations, product
+from itertools import combinations, islice, permutations, product
 
 from ..dependence import Dependences
 from ..model import Nest, Plan, Term
 from .grammar import term_text
 from .verdict import is_legal
 
-# The search ends after this many plans: an answer must feel instant, and far-fetched plans help nobody.
-_MOST_PLANS = 48
+# How many plans of each kind are tried: an answer must feel instant, and far-fetched plans help nobody.
+_MOST_SKEWED = 20
+_MOST_ORDERS = 12
+_MOST_FEWER = 24
 _LARGEST_SKEW = 3
 
 
@@ -31,8 +33,6 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
         if text in seen or not changed:
             continue
         seen.add(text)
-        if len(seen) > _MOST_PLANS:
-            return None
         if is_legal(nest, dependences, replace(plan, terms=terms, places=())):
             return text + plan.text[len(plan.order_text):]
     return None
@@ -41,10 +41,14 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
 def _candidates(terms: tuple[Term, ...], original: tuple[str, ...]) -> Iterator[tuple[Term, ...]]:
     bare = tuple(term for term in terms if term.chunk is None)
     in_order = tuple(sorted(bare, key=lambda term: original.index(term.loop)))
-    yield from _skewed(terms, original)
-    yield from _skewed(_with_bare(terms, in_order), original)
-    for order in _by_closeness(bare):
-        yield _with_bare(terms, order)
+    yield from islice(_skewed(terms, original), _MOST_SKEWED)
+    yield from islice(_skewed(_with_bare(terms, in_order), original), _MOST_SKEWED)
+    yield from (_with_bare(terms, order) for order in islice(_by_closeness(bare), _MOST_ORDERS))
+    yield from islice(_fewer(terms, in_order), _MOST_FEWER)
+
+
+def _fewer(terms: tuple[Term, ...], in_order: tuple[Term, ...]) -> Iterator[tuple[Term, ...]]:
+    """The terms with some chunks left out, as few as possible, in the plan's order and in the original one."""
     chunked = tuple(term for term in terms if term.chunk is not None)
     for count in range(len(chunked) - 1, -1, -1):
         for kept in combinations(chunked, count):
@@ -77,7 +81,7 @@ def _skewed(terms: tuple[Term, ...], original: tuple[str, ...]) -> Iterator[tupl
     inner = [at for at, term in enumerate(terms)
              if term.chunk is not None and len(term.form) == 1 and term.loop != outermost]
     factors = sorted(product(range(_LARGEST_SKEW + 1), repeat=len(inner)), key=lambda f: (sum(f), max(f, default=0)))
-    for choice in factors[1:_MOST_PLANS]:
+    for choice in factors[1:]:
         skew = dict(zip(inner, choice, strict=True))
         yield tuple(replace(term, form=((outermost, skew[at]), *term.form)) if skew.get(at) else term
                     for at, term in enumerate(terms))
