@@ -1,0 +1,281 @@
+"""Brute force: what a nest does at given small sizes, and what a plan does to that order.
+
+``verdict_at`` numbers the statement instances of a real execution by the plan's definition and looks at every pair that
+shares a cell; ``final_tags`` and ``compare`` judge a rewritten text against the original by what it computes.  No
+dependence theory, and nothing of the program under test.
+"""
+
+from __future__ import annotations
+
+import functools
+import math
+import re
+from collections.abc import Iterable
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from oracle_run import Program
+from oracle_text import Undefined, Unsupported
+from oracle_values import Instance, LoopAt, Machine, TooLong, cell_name, tag_of
+
+__all__ = ["Clash", "Outcome", "Run", "Undefined", "Unsupported", "TooLong", "compare", "final_tags", "observe",
+           "parse_terms", "times_of", "verdict_at"]
+
+
+# ---------------------------------------------------------------- plans
+
+
+@dataclass(frozen=True)
+class Term:
+    """One term of a plan: coefficients of loops, and the chunk."""
+
+    loops: tuple[tuple[str, int], ...]
+    chunk: int | None
+    skewed: bool
+
+
+_LOOP = r"[A-Za-z_]\w*(?:@\d+)?"
+_TERM = re.compile(rf"(?:({_LOOP})|\(([^()]*)\))(?::(\d+))?")
+
+
+def parse_terms(plan: str) -> tuple[Term, ...]:
+    """The terms of a plan's text, options left out."""
+    terms = []
+    for text in plan.split(";")[0].split():
+        match = _TERM.fullmatch(text)
+        if match is None:
+            raise Unsupported(f"term {text}")
+        name, form, chunk = match.groups()
+        size = int(chunk) if chunk else None
+        terms.append(Term(((name, 1),), size, False) if name else Term(_form(form), size, True))
+    return tuple(terms)
+
+
+def _form(text: str) -> tuple[tuple[str, int], ...]:
+    found = []
+    for part in re.finditer(rf"([+-]?)(?:(\d+)\*)?({_LOOP})", text):
+        sign, factor, name = part.groups()
+        found.append((name, (-1 if sign == "-" else 1) * int(factor or 1)))
+    return tuple(found)
+
+
+# ---------------------------------------------------------------- time
+
+
+def _is(loop: LoopAt, name: str) -> bool:
+    base, _, line = name.partition("@")
+    return loop.name == base and (not line or loop.line == int(line))
+
+
+def _coordinate(loop: LoopAt, skewed: bool) -> int:
+    """Where an iteration of a loop stands, for a bare term or inside a skewed one."""
+    if skewed:
+        return loop.value if loop.step == 1 else loop.iteration
+    if loop.dependent:
+        return loop.value if (loop.step or 1) > 0 else -loop.value
+    return loop.iteration
+
+
+def _moment(term: Term, instance: Instance, starts: dict[str, tuple[int, int]]) -> float:
+    """The instance's place with regard to one term; before or after the loop for a statement outside it."""
+    total = 0
+    for name, factor in term.loops:
+        loop = next((loop for loop in instance.loops if _is(loop, name)), None)
+        if loop is None:
+            return -math.inf if (instance.line, instance.column) < starts[name] else math.inf
+        total += factor * _coordinate(loop, term.skewed)
+    if term.chunk is None:
+        return total
+    loop = next(loop for loop in instance.loops if _is(loop, term.loops[0][0]))
+    unit = term.chunk * (abs(loop.step) if loop.dependent and not term.skewed and loop.step else 1)
+    return total // unit
+
+
+def loop_starts(terms: Iterable[Term], instances: Iterable[Instance]) -> dict[str, tuple[int, int]]:
+    """(line, column) of every loop that the terms name."""
+    names = {name for term in terms for name, _ in term.loops}
+    found: dict[str, tuple[int, int]] = {}
+    for instance in instances:
+        for loop in instance.loops:
+            for name in names - found.keys():
+                if _is(loop, name):
+                    found[name] = (loop.line, loop.column)
+        if len(found) == len(names):
+            break
+    return found
+
+
+def times_of(instances: list[Instance], plan: str) -> list[tuple[float, ...]]:
+    """The time vector of every instance under a plan."""
+    terms = parse_terms(plan)
+    starts = loop_starts(terms, instances)
+    for name in {name for term in terms for name, _ in term.loops} - starts.keys():
+        starts[name] = (10**9, 0)  # a loop that never ran: everything that ran stands before it
+    return [tuple(_moment(term, instance, starts) for term in terms) for instance in instances]
+
+
+# ---------------------------------------------------------------- observation
+
+
+@functools.lru_cache(maxsize=64)
+def _program(text: str, line: int | None, directory: Path | None) -> Program:
+    return Program(text, line, directory)
+
+
+@dataclass
+class Run:
+    """What one call did."""
+
+    machine: Machine
+
+    @property
+    def instances(self) -> list[Instance]:
+        return self.machine.instances
+
+
+def observe(text: str, function: str, line: int, sizes: dict[str, int], *, may: bool = False, steps: int = 100_000,
+            directory: Path | None = None) -> list[Instance]:
+    """The statement instances of the nest at ``line``, in order; raises Undefined if the call is undefined in C."""
+    machine = _program(text, line, directory).run(function, sizes, may=may, steps=steps)
+    return machine.instances
+
+
+@dataclass(frozen=True)
+class Clash:
+    """Two instances that share a cell and that a plan puts in the other order."""
+
+    cell: str
+    first: Instance
+    second: Instance
+    private: bool  # the cell is a scalar of the function or of the nest
+
+
+@dataclass
+class Outcome:
+    """What a plan does to one execution."""
+
+    instances: list[Instance]
+    clashes: list[Clash] = field(default_factory=list)  # at most one per cell
+    stale: list[Clash] = field(default_factory=list)  # reads that see another write when the plan's order is replayed
+
+    @property
+    def contradicts_legal(self) -> bool:
+        """True if a verdict ``legal`` would be wrong.
+
+        A reversed pair on memory of the caller or on an array is wrong.  A reversed pair on a scalar of the function is
+        only wrong if some read then sees another value, because a scalar that every iteration writes anew may be reused.
+        """
+        return bool(self.stale) or any(not clash.private for clash in self.clashes)
+
+
+def verdict_at(text: str, function: str, line: int, plan: str, sizes: dict[str, int], *, may: bool = False,
+               steps: int = 100_000, directory: Path | None = None) -> Outcome:
+    """All clashes of a plan at given sizes; pairs within one execution of the nest only."""
+    instances = observe(text, function, line, sizes, may=may, steps=steps, directory=directory)
+    outcome = Outcome(instances)
+    for run in sorted({instance.run for instance in instances}):
+        part = [instance for instance in instances if instance.run == run]
+        times = times_of(part, plan)
+        outcome.clashes += _reversed_pairs(part, times)
+        outcome.stale += _stale_reads(part, times)
+    return outcome
+
+
+def _key(access: tuple) -> tuple:
+    obj, offset, _ = access
+    return (obj.kind, obj.declared, offset)
+
+
+def _is_scalar(obj: object) -> bool:
+    return obj.kind in ("local", "block") and getattr(obj.type, "of", None) is None and hasattr(obj.type, "floating")
+
+
+def _reversed_pairs(instances: list[Instance], times: list[tuple]) -> list[Clash]:
+    latest_write: dict = {}
+    latest: dict = {}
+    found: dict = {}
+    for at, instance in enumerate(instances):
+        for access in instance.accesses:
+            key, writes = _key(access), access[2]
+            before = latest.get(key) if writes else latest_write.get(key)
+            if before is not None and times[before] > times[at] and key not in found:
+                private = _is_scalar(access[0])
+                found[key] = Clash(cell_name(access[0], access[1]), instances[before], instance, private)
+            for record in (latest, latest_write) if writes else (latest,):
+                if key not in record or times[record[key]] < times[at]:
+                    record[key] = at
+    return list(found.values())
+
+
+def _replay(instances: list[Instance], order: list[int]) -> tuple[dict, dict]:
+    """Who wrote what each read sees, and the last write of each cell."""
+    writer: dict = {}
+    seen: dict = {}
+    for at in order:
+        for number, access in enumerate(instances[at].accesses):
+            key = _key(access)
+            if access[2]:
+                writer[key] = (at, number, access[0])
+            else:
+                seen[at, number] = writer.get(key)
+    return seen, writer
+
+
+def _stale_reads(instances: list[Instance], times: list[tuple]) -> list[Clash]:
+    original = list(range(len(instances)))
+    seen, last = _replay(instances, original)
+    seen_now, last_now = _replay(instances, sorted(original, key=lambda at: (times[at], at)))
+    found = []
+    for (at, number), writer in seen.items():
+        if seen_now[at, number] != writer:
+            obj, offset, _ = instances[at].accesses[number]
+            found.append(Clash(cell_name(obj, offset), instances[writer[0]] if writer else instances[at], instances[at],
+                               _is_scalar(obj)))
+    for key, (at, _, obj) in last.items():
+        if last_now[key][:2] != last[key][:2] and not _is_scalar(obj):
+            found.append(Clash(str(key), instances[last_now[key][0]], instances[at], False))
+    return found
+
+
+# ---------------------------------------------------------------- tags
+
+
+@dataclass(frozen=True)
+class Tags:
+    """What a call leaves behind: a tag for every cell that it wrote, and the cells of the caller that it touched."""
+
+    values: dict[str, int]
+    touched: frozenset
+    result: int | None
+
+
+def final_tags(text: str, function: str, sizes: dict[str, int], *, steps: int = 200_000,
+               directory: Path | None = None) -> Tags:
+    """Run a function; the tags of all cells that outlive it (see oracle_values)."""
+    machine = _program(text, None, directory).run(function, sizes, steps=steps)
+    values = {}
+    for obj in machine.objects:
+        for offset, value in obj.cells.items():
+            if (obj.name, offset) in machine.written:
+                values[f"{obj.name}+{offset}"] = tag_of(value)
+    result = None if machine.result is None else tag_of(machine.result)
+    return Tags(values, frozenset(machine.read | machine.written), result)
+
+
+def compare(original: str, variant: str, function: str, sizes: dict[str, int], *, steps: int = 200_000,
+            directory: Path | None = None) -> list[str]:
+    """What is wrong with the variant at these sizes; empty if nothing.  Raises Undefined if the original is."""
+    before = final_tags(original, function, sizes, steps=steps, directory=directory)
+    try:
+        after = final_tags(variant, function, sizes, steps=4 * steps, directory=directory)
+    except Undefined as problem:
+        return [f"the variant is undefined: {problem}"]
+    except TooLong:
+        return ["the variant does not end"]
+    wrong = [f"{cell} is written by only one of them" for cell in sorted(before.values.keys() ^ after.values.keys())]
+    wrong += [f"{cell} gets another value" for cell in sorted(before.values.keys() & after.values.keys())
+              if before.values[cell] != after.values[cell]]
+    wrong += [f"the variant touches {cell}" for cell in sorted(after.touched - before.touched)]
+    if before.result != after.result:
+        wrong.append("the function returns another value")
+    return wrong
