@@ -14,7 +14,8 @@ from retile.questions import order_kept, same_instances
 
 @pytest.mark.parametrize("text, start, length, part", [
     ("t q", 2, 1, "no loop 'q'"),
-    ("i", 0, 1, "'t' is outside 'i'"),
+    ("i", 0, 1, "'t' stands around"),
+    ("t:4 i t:2", 0, 3, "'t' has no bare term"),
     ("i:0 t i", 2, 1, "covers nothing"),
     ("i:-3 t i", 2, 2, "not a chunk"),
     ("i:x t i", 2, 1, "not a chunk"),
@@ -22,7 +23,9 @@ from retile.questions import order_kept, same_instances
     ("t:4 t:8 t i", 4, 3, "does not fall"),
     ("t:8 t:8 t i", 4, 3, "does not fall"),
     ("t i t", 4, 1, "stands twice"),
-    ("(t+i) t i", 0, 5, "needs a chunk"),
+    ("(t+i) t i", 8, 1, "3 bare terms for 2 loops"),
+    ("(2*t+i) i", 0, 9, "do not determine"),
+    ("(t+i)", 0, 5, "do not determine"),
     ("(t+):4 t i", 2, 1, "not a sum"),
     ("(t-t):4 t i", 1, 3, "always 0"),
     ("t i; unroll", 5, 6, "not an option"),
@@ -67,10 +70,10 @@ def moment(nest: Nest, plan_text: str, run: Run, sizes: dict[str, int]) -> tuple
 
 PLANS = [
     (PRODUCT, ["i j k", "k:4 j:3 i k j", "i:6 j:4 k:2 i:3 j:2 k j i", "k:5 i:5 k:2 j k i"]),
-    (BACKWARD, ["i j", "i:3 j:3 i j", "j i", "(i+j):3 i j", "(2*i+j):5 j:2 i j"]),
+    (BACKWARD, ["i j", "i:3 j:3 i j", "j i", "(i+j):3 i j", "(2*i+j):5 j:2 i j", "(i+j) i", "i (i+j)", "(-i) j"]),
     (TRIANGLE, ["j i", "i:3 j:2 i j", "j:3 i j", "j:5 i:3 j:2 i j", "(i+j):4 j i"]),
     (DOWN, ["j i", "i:2 j:3 i j", "j:2 i:2 j i"]),
-    (DRIFT, ["i:3 t i", "(i+t):4 t i", "t:2 (i+t):3 t i", "(2*t+i):4 i t"]),
+    (DRIFT, ["i:3 t i", "(i+t):4 t i", "t:2 (i+t):3 t i", "(2*t+i):4 i t", "t (t+i)", "(2*t+i) t", "(t+i):4 (2*t+i) t"]),
 ]
 
 

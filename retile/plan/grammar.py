@@ -12,6 +12,7 @@ A wrong plan is a wrong call: one message, with the place in the plan marked.
 from __future__ import annotations
 
 import re
+from dataclasses import replace
 
 from ..model import Nest, Plan, RetileError, Term
 
@@ -58,6 +59,7 @@ def parse_plan(text: str, nest: Nest) -> Plan:
     if not terms:
         raise plan.complaint(0, 1, "it names no loop", f"Loops here: {_loop_names(nest)}.")
     _check_terms(plan, terms, nest)
+    terms = _executed(terms)
     options = _options(plan, len(order) + 1, rest) if semicolon else ()
     written = " ".join(order.split())
     if options:
@@ -123,42 +125,63 @@ def _sum(plan: _PlanText, start: int, text: str, ids: set[str], nest: Nest) -> t
 
 
 def _check_terms(plan: _PlanText, terms: tuple[Term, ...], nest: Nest) -> None:
-    bare: dict[str, Term] = {}
+    bare: dict[tuple[tuple[str, int], ...], Term] = {}
     chunks: dict[tuple[tuple[str, int], ...], Term] = {}
     for term in terms:
-        if term.chunk is None:
-            _check_bare(plan, term, bare)
-            bare[term.loop] = term
-            continue
+        if term.form in bare:
+            what = "the chunks of '{}' stand inside its single iterations" if term.chunk else "'{}' stands twice"
+            raise plan.complaint(term.start, term.end, what.format(form_text(term.form)),
+                                 "Put chunks to the left of the bare term, and every bare term there once.")
         coarser = chunks.get(term.form)
-        if len(term.form) == 1 and term.loop in bare:
-            raise plan.complaint(term.start, term.end, f"the chunks of '{term.loop}' stand inside its single iterations",
-                                 f"Put this term to the left of the bare {term.loop}.")
-        if coarser is not None and coarser.chunk is not None and term.chunk >= coarser.chunk:
+        if term.chunk is None:
+            bare[term.form] = term
+        elif coarser is not None and coarser.chunk is not None and term.chunk >= coarser.chunk:
             raise plan.complaint(term.start, term.end, f"chunks of one loop must fall from left to right, and "
                                  f"{term.chunk} does not fall from {coarser.chunk}",
                                  "Put the larger chunk first, or leave one of them out.")
-        chunks[term.form] = term
+        else:
+            chunks[term.form] = term
+    _check_moved(plan, terms, tuple(bare.values()), nest)
+
+
+def _check_moved(plan: _PlanText, terms: tuple[Term, ...], bare: tuple[Term, ...], nest: Nest) -> None:
+    """The bare terms must determine every loop that the plan moves, and no loop around one of these may be missing."""
+    placed = {loop for term in bare for loop, _ in term.form}
     for term in terms:
-        _check_named(plan, term, bare, nest)
+        for loop in (needed for loop, _ in term.form for needed in (*nest.loop(loop).outer, loop)):
+            if loop not in placed:
+                own = loop in dict(term.form)
+                what = f"loop '{loop}' has no bare term" if own else f"loop '{loop}' stands around these and is not named"
+                raise plan.complaint(term.start, term.end, what, f"Add the bare term {loop} to the plan.")
+    loops = sorted(placed)
+    if len(bare) > len(loops):
+        raise plan.complaint(bare[-1].start, bare[-1].end, f"there are {len(bare)} bare terms for {len(loops)} loops",
+                             "A bare skewed term takes the place of one bare loop: leave that one out.")
+    matrix = [[dict(term.form).get(loop, 0) for loop in loops] for term in bare]
+    if len(bare) < len(loops) or abs(_determinant(matrix)) != 1:
+        raise plan.complaint(bare[0].start, bare[-1].end, "the bare terms do not determine all iterators",
+                             "They must be as many as the moved loops, with determinant 1 or -1.")
 
 
-def _check_bare(plan: _PlanText, term: Term, bare: dict[str, Term]) -> None:
-    if len(term.form) > 1 or term.form[0][1] != 1:
-        raise plan.complaint(term.start, term.end, "a skewed term needs a chunk",
-                             "Write it like (i+t):64 beside the bare loops.")
-    if term.loop in bare:
-        raise plan.complaint(term.start, term.end, f"loop '{term.loop}' stands twice", "Leave one of the two out.")
+def _determinant(matrix: list[list[int]]) -> int:
+    """The determinant, by expansion along the first row: plans have few loops."""
+    if not matrix:
+        return 1
+    return sum((-1) ** at * factor * _determinant([row[:at] + row[at + 1:] for row in matrix[1:]])
+               for at, factor in enumerate(matrix[0]) if factor)
 
 
-def _check_named(plan: _PlanText, term: Term, bare: dict[str, Term], nest: Nest) -> None:
-    for loop, _ in term.form:
-        for needed in (*nest.loop(loop).outer, loop):
-            if needed in bare:
-                continue
-            what = f"loop '{needed}' has no term of its own" if needed == loop else \
-                f"loop '{needed}' is outside '{loop}' and is not named"
-            raise plan.complaint(term.start, term.end, what, f"Add the bare term {needed} to the plan.")
+def _executed(terms: tuple[Term, ...]) -> tuple[Term, ...]:
+    """The terms as loops: a bare skewed sum is a loop of chunks of 1, inside which the replaced loops run once each."""
+    plain = {term.loop for term in terms if term.chunk is None and _is_plain(term)}
+    moved = dict.fromkeys(loop for term in terms for loop, _ in term.form)
+    end = terms[-1].end
+    return (*(term if term.chunk is not None or _is_plain(term) else replace(term, chunk=1) for term in terms),
+            *(Term(((loop, 1),), None, end, end) for loop in moved if loop not in plain))
+
+
+def _is_plain(term: Term) -> bool:
+    return len(term.form) == 1 and term.form[0][1] == 1
 
 
 def _options(plan: _PlanText, start: int, text: str) -> tuple[tuple[str, str], ...]:
