@@ -1,0 +1,82 @@
+"""Regions against plain enumeration: every operation, on formulas made at random."""
+
+from __future__ import annotations
+
+from itertools import product
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from walk import holds
+
+from retile.affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, equal, less, negate
+from retile.sets import Region
+
+A = Affine.of
+RANGE = range(-4, 5)
+BOX = AllOf(tuple(part for name in "ijn" for part in (at_most(-4, A(name)), at_most(A(name), 4))))
+
+forms = st.builds(
+    lambda a, b, c, constant, divisor, cut: Affine.build({"i": a, "j": b, "n": c}, constant)
+    + (A("i") + A("j") + cut).floor_div(divisor),
+    *[st.integers(-2, 2)] * 4, st.integers(1, 3), st.integers(-2, 2))
+constraints = st.builds(Constraint, forms, st.booleans())
+formulas = st.recursive(constraints, lambda inner: st.one_of(
+    st.builds(lambda parts: AllOf(tuple(parts)), st.lists(inner, min_size=1, max_size=3)),
+    st.builds(lambda parts: AnyOf(tuple(parts)), st.lists(inner, min_size=1, max_size=3))), max_leaves=4)
+
+
+def points(formula: Formula) -> set[tuple[int, int, int]]:
+    return {(i, j, n) for i, j, n in product(RANGE, repeat=3) if holds(formula, {"i": i, "j": j, "n": n})}
+
+
+def of(region: Region) -> set[tuple[int, int, int]]:
+    return {(i, j, n) for i, j, n in (region & Region.where(BOX)).points("ijn")}
+
+
+@settings(max_examples=60, deadline=None)
+@given(formulas, formulas)
+def test_algebra(one: Formula, other: Formula) -> None:
+    a, b, pa, pb = Region.where(one), Region.where(other), points(one), points(other)
+    assert of(a) == pa
+    assert of(a & b) == pa & pb
+    assert of(a | b) == pa | pb
+    assert of(a - b) == pa - pb
+    assert of(Region.where(negate(one))) == points(AllOf()) - pa
+    box = Region.where(BOX)
+    assert ((a & box).is_empty()) == (not pa)
+    assert (a & box).within(b) == (pa <= pb)
+    assert of(a.relative_to(b) & b) == pa & pb
+
+
+@settings(max_examples=60, deadline=None)
+@given(formulas)
+def test_projection_pieces_and_extremes(formula: Formula) -> None:
+    region, inside = Region.where(formula, BOX), points(formula)
+    assert set(region.without("j").points("in")) == {(i, n) for i, _, n in inside}
+    assert set(region.only("j").points("j")) == {(j,) for _, j, _ in inside}
+    assert of(Region.where(region.formula())) == inside
+    assert inside <= of(region.hull())
+    assert set(region.renamed({"i": "x"}).points("xjn")) == inside
+    assert {(i, j) for i, j, n in inside if n == 2} == set(region.at({"n": 2}).points("ij"))
+    for largest, pick in ((True, max), (False, min)):
+        assert region.extreme(A("i") * 2 - "j", largest) == (pick(2 * i - j for i, j, _ in inside) if inside else None)
+    first, some = region.first("ijn"), region.sample("ijn")
+    assert (first and tuple(first[x] for x in "ijn")) == (min(inside) if inside else None)
+    assert (some is None) if not inside else (some["i"], some["j"], some["n"]) in inside
+
+
+def test_unbounded_has_no_extreme() -> None:
+    assert Region.where(less(A("i"), A("n"))).extreme(A("i"), largest=True) is None
+    assert Region.where(equal(A("i"), 3)).extreme(A("i"), largest=True) == 3
+
+
+def test_names_are_free_text() -> None:
+    region = Region.where(less(A("k"), A("grid->n cells"))).at({"grid->n cells": 2})
+    assert region.names() == ("k",)
+    assert region.extreme(A("k"), largest=True) == 1
+
+
+def test_a_name_without_a_place_is_an_error() -> None:
+    with pytest.raises(ValueError, match="without a place"):
+        Region.where(less(A("i"), A("n"))).points("i")
