@@ -248,7 +248,7 @@ class Term:
     """One loop of a plan: ``i``, ``i:64`` or, skewed, ``(2*t+i):64``."""
 
     form: tuple[tuple[str, int], ...]  # (loop id, coefficient): one pair with coefficient 1 unless skewed
-    chunk: int | None  # iterations of a chunk; None for a bare term
+    chunk: int | str | None  # iterations of a chunk, or the name of the constant that says; None for a bare term
     start: int  # where it stands in the plan's text
     end: int
 
@@ -263,7 +263,9 @@ class Place:
     """Where a statement stands with regard to one term of a plan."""
 
     position: int  # in the list at this level; the text's order among those before, in and after the term's loop
-    form: Affine | None  # its moment in the term's loop, in its iterators and parameters; None outside the loop
+    # Its moment in the term's loop, in its iterators and parameters; None outside the loop.  For a chunk of unknown
+    # size the form that is cut.
+    form: Affine | None
 
 
 @dataclass(frozen=True)

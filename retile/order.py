@@ -5,12 +5,24 @@ A relation between instances is a Region over the names of the source and, with 
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
 
-from .affine import Affine, Formula, equal, less, map_formula
+from .affine import Affine, AllOf, AnyOf, Formula, at_most, equal, less
 from .sets import Region
 
-Coordinate = int | Affine
+
+@dataclass(frozen=True)
+class Cut:
+    """The number of the run that a value lies in, of any cut of the integers into consecutive runs.
+
+    Run numbers never fall; two different values may or may not share a run.
+    """
+
+    form: Affine
+
+
+Coordinate = int | Affine | Cut
 
 
 def prime(name: str) -> str:
@@ -23,10 +35,22 @@ def primed(form: Affine, names: Iterable[str]) -> Affine:
     return form.substitute({name: Affine.of(prime(name)) for name in names})
 
 
-def primed_formula(formula: Formula, names: Iterable[str]) -> Formula:
-    """The formula with these names standing for the target's."""
-    names = tuple(names)
-    return map_formula(formula, lambda form: primed(form, names))
+def substituted(vector: Iterable[Coordinate], values: Mapping[str, Affine]) -> tuple[Coordinate, ...]:
+    """A time vector with names replaced by forms."""
+    return tuple(c if isinstance(c, int) else c.substitute(values) if isinstance(c, Affine)
+                 else Cut(c.form.substitute(values)) for c in vector)
+
+
+def primed_vector(vector: Iterable[Coordinate], names: Iterable[str]) -> tuple[Coordinate, ...]:
+    """A time vector with these names standing for the target's."""
+    return substituted(vector, {name: Affine.of(prime(name)) for name in names})
+
+
+def same_cut(value: Affine, run: Affine, other_value: Affine, other_run: Affine) -> Formula:
+    """What holds of two values and of what marks their runs in one cut: the marks rise with the values, if at all."""
+    return AnyOf((AllOf((less(value, other_value), at_most(run, other_run))),
+                  AllOf((equal(value, other_value), equal(run, other_run))),
+                  AllOf((less(other_value, value), at_most(other_run, run)))))
 
 
 def first_differences(pairs: Region, earlier: Sequence[Coordinate], later: Sequence[Coordinate]) \
@@ -45,6 +69,12 @@ def first_differences(pairs: Region, earlier: Sequence[Coordinate], later: Seque
             if a < b:
                 yield level, remaining
             return
+        if isinstance(a, Cut) or isinstance(b, Cut):
+            # Any cut: a smaller value may lie in an earlier run, and any two values may share one.
+            before = remaining & Region.where(less(_inside(a), _inside(b)))
+            if not before.is_empty():
+                yield level, before
+            continue
         before = remaining & Region.where(less(Affine.of(a), b))
         if not before.is_empty():
             yield level, before
@@ -52,3 +82,7 @@ def first_differences(pairs: Region, earlier: Sequence[Coordinate], later: Seque
         if remaining.is_empty():
             return
     yield min(len(earlier), len(later)), remaining
+
+
+def _inside(coordinate: Coordinate) -> Affine:
+    return coordinate.form if isinstance(coordinate, Cut) else Affine.of(coordinate)

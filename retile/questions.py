@@ -12,15 +12,15 @@ often) may be named as ``repeatable``: they are left out of the first question.
 from __future__ import annotations
 
 from collections import defaultdict
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 
-from .affine import Affine, AnyOf, equal, less
+from .affine import Affine, AnyOf, Formula, at_most, equal, less
 from .dependence import Dependences, Edge
 from .model import Nest
-from .order import Coordinate, first_differences
+from .order import Coordinate, first_differences, same_cut, substituted
 from .sets import Region
-from .tree import Node, Occurrence, occurrences
+from .tree import Node, Occurrence, loops_of, occurrences
 
 
 @dataclass(frozen=True)
@@ -46,6 +46,9 @@ class _Runs:
         self.instance = tuple((name, form.substitute(self._own)) for name, form in occurrence.leaf.instance)
         self.region = (Region.where(*occurrence.conditions) & context).renamed(names)
         self.time: tuple[Coordinate, ...] = tuple(self._coordinate(moment) for moment in occurrence.time)
+        # Per chunk loop of unknown size: its symbol in the tree, its value here, and the value here of what it cuts.
+        self.cuts = {loop.symbol: (self._own[loop.symbol], loop.cut.substitute(self._own))
+                     for loop in occurrence.loops if loop.named is not None and loop.cut is not None}
 
     def _coordinate(self, moment: int | tuple[str, int]) -> Coordinate:
         if isinstance(moment, int):
@@ -55,6 +58,13 @@ class _Runs:
     def as_instances(self, suffix: str = "") -> Region:
         """Executions tied to the instances that they stand for, under the original's names with a suffix."""
         return self.region & Region.where(*(equal(Affine.of(name + suffix), form) for name, form in self.instance))
+
+
+def _given(one: _Runs, other: _Runs, values: Mapping[str, Affine]) -> list[Formula]:
+    """What is given of the chunks of unknown size around both; ``values`` renames the names of the other."""
+    return [same_cut(value, run, other_value.substitute(values), other_run.substitute(values))
+            for symbol, (run, value) in one.cuts.items() if symbol in other.cuts
+            for other_run, other_value in (other.cuts[symbol],)]
 
 
 def _runs(tree: tuple[Node, ...], context: Region) -> dict[str, list[_Runs]]:
@@ -69,6 +79,7 @@ def same_instances(tree: tuple[Node, ...], nest: Nest, context: Region, repeatab
 
     ``context``: the parameters' values that count (``Dependences.context``).
     """
+    context = context & _named_sizes(tree)
     runs = _runs(tree, context)
     flaws: list[Flaw] = []
     for statement in nest.statements:
@@ -79,6 +90,12 @@ def same_instances(tree: tuple[Node, ...], nest: Nest, context: Region, repeatab
         flaws += _difference(statement.id, wanted, Region.union(given))
         flaws += _repeated(statement.id, runs[statement.id], given)
     return flaws
+
+
+def _named_sizes(tree: tuple[Node, ...]) -> Region:
+    """A chunk has at least one iteration, whatever constant says how many."""
+    names = sorted({loop.named for loop in loops_of(tree) if loop.named is not None})
+    return Region.where(*(at_most(1, Affine.of(name)) for name in names))
 
 
 def _difference(statement: str, wanted: Region, given: Region) -> Iterator[Flaw]:
@@ -94,8 +111,9 @@ def _repeated(statement: str, runs: list[_Runs], given: list[Region]) -> Iterato
             if not (given[at] & other).is_empty():
                 yield Flaw(statement, "an instance runs in two places")
         twin = run.region.renamed({name: name + "^" for name in run.symbols})
-        same = [equal(form, form.substitute({name: Affine.of(name + "^") for name in run.symbols}))
-                for _, form in run.instance]
+        marked = {name: Affine.of(name + "^") for name in run.symbols}
+        same: list[Formula] = [equal(form, form.substitute(marked)) for _, form in run.instance]
+        same += _given(run, run, marked)
         differ = AnyOf(tuple(less(Affine.of(x), Affine.of(y)) for name in run.symbols
                              for x, y in ((name, name + "^"), (name + "^", name))))
         if not (run.region & twin & Region.where(*same, differ)).is_empty():
@@ -121,10 +139,12 @@ def _disorder(edge: Edge, source: _Runs, target: _Runs) -> Iterator[Flaw]:
     # A leaf that is both ends runs at two moments: its second set of names carries a mark.
     names = {name: name + "^" for name in target.symbols} if source is target else {}
     pairs = edge.relation & source.as_instances() & target.as_instances("'").renamed(names)
+    marked = {name: Affine.of(other) for name, other in names.items()}
+    given = _given(source, target, marked)
+    pairs = pairs & Region.where(*given) if given else pairs
     if pairs.is_empty():
         return
-    marked = {name: Affine.of(other) for name, other in names.items()}
-    later = tuple(c.substitute(marked) if isinstance(c, Affine) else c for c in target.time)
+    later = substituted(target.time, marked)
     for _, wrong in first_differences(pairs, later, source.time):
         point = wrong.sample() or {}
         shown = tuple(sorted((name, value) for name, value in point.items() if "~" not in name))

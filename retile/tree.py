@@ -38,6 +38,15 @@ class Loop:
     role: Role = Role.WHOLE
     level: int = 0  # which of several chunk levels of one source loop, 0 the outermost
     size: int = 1  # iterations of the source loop that one step covers
+    # A chunk loop whose size is a constant of the program, not a number: its name.  ``step`` is then that of the source
+    # loop; the loop cuts the values of ``cut`` into consecutive runs, which is given, not derived.
+    named: str | None = None
+    cut: Affine | None = None
+
+    @property
+    def length(self) -> Affine:
+        """How far one step moves, in units of the C variable."""
+        return Affine.of(self.named) * abs(self.step) if self.named else Affine((), abs(self.step))
 
     def constraints(self) -> Formula:
         """Where the symbol's value is one of the loop's iterations."""

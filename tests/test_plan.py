@@ -18,7 +18,7 @@ from retile.questions import order_kept, same_instances
     ("t:4 i t:2", 0, 3, "'t' has no bare term"),
     ("i:0 t i", 2, 1, "covers nothing"),
     ("i:-3 t i", 2, 2, "not a chunk"),
-    ("i:x t i", 2, 1, "not a chunk"),
+    ("i:8x t i", 2, 2, "not a chunk"),
     ("t i i:4", 4, 3, "inside its single iterations"),
     ("t:4 t:8 t i", 4, 3, "does not fall"),
     ("t:8 t:8 t i", 4, 3, "does not fall"),
@@ -64,16 +64,17 @@ def moment(nest: Nest, plan_text: str, run: Run, sizes: dict[str, int]) -> tuple
             for loop, (_, factor) in zip(loops, term.form, strict=True):
                 number = (values[loop.id] - loop.first.evaluate(values)) // loop.step
                 placed_by += factor * (values[loop.id] if len(loops) > 1 and loop.step == 1 else number)
-        vector.append(placed_by if term.chunk is None else placed_by // (term.chunk * unit))
+        chunk = sizes[term.chunk] if isinstance(term.chunk, str) else term.chunk
+        vector.append(placed_by if chunk is None else placed_by // (chunk * unit))
     return tuple(vector)
 
 
 PLANS = [
-    (PRODUCT, ["i j k", "k:4 j:3 i k j", "i:6 j:4 k:2 i:3 j:2 k j i", "k:5 i:5 k:2 j k i"]),
+    (PRODUCT, ["i j k", "k:4 j:3 i k j", "i:6 j:4 k:2 i:3 j:2 k j i", "k:5 i:5 k:2 j k i", "k:K_CHUNK i:6 j:J_CHUNK i k j"]),
     (BACKWARD, ["i j", "i:3 j:3 i j", "j i", "(i+j):3 i j", "(2*i+j):5 j:2 i j", "(i+j) i", "i (i+j)", "(-i) j"]),
-    (TRIANGLE, ["j i", "i:3 j:2 i j", "j:3 i j", "j:5 i:3 j:2 i j", "(i+j):4 j i"]),
-    (DOWN, ["j i", "i:2 j:3 i j", "j:2 i:2 j i"]),
-    (DRIFT, ["i:3 t i", "(i+t):4 t i", "t:2 (i+t):3 t i", "(2*t+i):4 i t", "t (t+i)", "(2*t+i) t", "(t+i):4 (2*t+i) t"]),
+    (TRIANGLE, ["j i", "i:3 j:2 i j", "j:3 i j", "j:5 i:3 j:2 i j", "(i+j):4 j i", "j:J_CHUNK i j"]),
+    (DOWN, ["j i", "i:2 j:3 i j", "j:2 i:2 j i", "i:I_CHUNK j:J_CHUNK i j"]),
+    (DRIFT, ["i:3 t i", "(i+t):4 t i", "t:2 (i+t):3 t i", "(2*t+i):4 i t", "t (t+i)", "(2*t+i) t", "(t+i):4 (2*t+i) t", "(t+i):I_CHUNK t i", "i:I_CHUNK t i"]),
 ]
 
 
@@ -83,6 +84,7 @@ def test_tree_runs_the_instances_in_the_order_of_the_plan(nest: Nest, text: str)
     tree = build_tree(nest, plan)
     for size in (0, 1, 2, 3, 5, 7, 8):
         sizes = {p.symbol: size + at for at, p in enumerate(nest.parameters)}
+        sizes |= {"I_CHUNK": 2, "J_CHUNK": 3, "K_CHUNK": 4}
         original = list(runs(nest.tree, sizes))
         got = list(runs(tree, sizes))
         assert sorted(got) == sorted(original)

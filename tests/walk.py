@@ -40,5 +40,5 @@ def runs(nodes: tuple[Node, ...], values: Mapping[str, int]) -> Iterator[Run]:
 
 def iterations(loop: Loop, values: Mapping[str, int]) -> list[int]:
     low, high, origin = value(loop.lower, values), value(loop.upper, values), loop.origin.evaluate(values)
-    found = [x for x in range(low, high + 1) if (x - origin) % abs(loop.step) == 0]
+    found = [x for x in range(low, high + 1) if (x - origin) % loop.length.evaluate(values) == 0]
     return found if loop.step > 0 else found[::-1]

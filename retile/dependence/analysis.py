@@ -16,7 +16,7 @@ from dataclasses import dataclass
 
 from ..affine import Affine, AnyOf, Formula, at_most, equal, less
 from ..model import Access, LoopText, Nest, ScalarClass, Statement, Storage
-from ..order import Coordinate, first_differences, prime, primed
+from ..order import Coordinate, first_differences, prime, primed, primed_vector
 from ..sets import Region
 from ..tree import occurrences
 from .edges import Dependences, Edge
@@ -124,7 +124,7 @@ class _Analysis:
     def _by_level(self, source: Statement, target: Statement, pairs: Region) -> Iterator[tuple[str | None, Region]]:
         if pairs.is_empty():
             return
-        earlier, later = self._times[source.id], _primed_times(self._times[target.id], target.loops)
+        earlier, later = self._times[source.id], primed_vector(self._times[target.id], target.loops)
         strict = min(len(earlier), len(later))
         for level, relation in first_differences(pairs, earlier, later):
             if level == strict:  # the same instance of the same statement: no order to keep
@@ -176,10 +176,6 @@ def _kind(source: Access, target: Access) -> str:
     if source.write:
         return "output" if target.write else "flow"
     return "anti"
-
-
-def _primed_times(times: tuple[Coordinate, ...], names: tuple[str, ...]) -> tuple[Coordinate, ...]:
-    return tuple(primed(t, names) if isinstance(t, Affine) else t for t in times)
 
 
 def _advance(loop: LoopText) -> Affine:

@@ -18,7 +18,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, Bound, Constraint, Extremum, Formula, at_least_bound, at_most, at_most_bound, \
-    bound_names, equal, map_bound
+    bound_names, equal, less, map_bound
 from ..dependence import defined
 from ..model import LoopText, Nest, Plan, Term
 from ..sets import Region
@@ -121,7 +121,7 @@ class _Builder:
         self._plan = plan
         self._context = defined(nest)
         self._parameters = tuple(parameter.symbol for parameter in nest.parameters)
-        self._points: dict[tuple[int, int], Region] = {}
+        self._constants = tuple(term.chunk for term in plan.terms if isinstance(term.chunk, str))
 
     def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
         """The nodes of these units from a term on; ``known``: what the loops around establish."""
@@ -161,24 +161,34 @@ class _Builder:
 
     def _chunk_link(self, term: Term) -> Formula:
         """How the value of a chunk loop hangs together with the iterators: it is the first value of their chunk."""
-        value, form, length, origin, upward = self._chunk(term)
-        ahead = form - value if upward else value - form
-        return AllOf((at_most(0, ahead), at_most(ahead, length - 1), equal((value - origin).mod(length), 0)))
+        loop, value = self._chunk(term), Affine.of(chunk_symbol(term))
+        assert loop.cut is not None
+        sign = 1 if loop.step > 0 else -1
+        ahead = (loop.cut - value) * sign
+        conditions = [at_most(0, ahead), less(ahead, loop.length),
+                      equal((value - loop.origin).mod(abs(loop.step)), 0)]
+        if loop.cut == Affine.of(loop.of) and self._nest.loop(loop.of).independent:
+            conditions.append(at_most(0, (value - loop.origin) * sign))
+        if loop.named is not None:
+            conditions.append(at_most(1, Affine.of(loop.named)))
+        return AllOf(tuple(conditions))
 
-    def _chunk(self, term: Term) -> tuple[Affine, Affine, int, Affine, bool]:
-        """A chunk loop's value, the form that it cuts, its length in that form, its origin, and its direction."""
-        assert term.chunk is not None
-        value = Affine.of(chunk_symbol(term))
+    def _chunk(self, term: Term) -> Loop:
+        """The chunk loop of a term, without bounds, body and level."""
+        nothing, of = Affine(), term.form[0][0]
+        name, size = (term.chunk, 1) if isinstance(term.chunk, str) else (None, term.chunk or 1)
         if len(term.form) > 1 or term.form[0][1] != 1:
-            return value, skewed_coordinate(term, self._nest), term.chunk, Affine(), True
-        loop = self._nest.loop(term.loop)
-        origin = loop.first if loop.independent and isinstance(loop.first, Affine) else Affine()
-        return value, Affine.of(loop.id), term.chunk * abs(loop.step), origin, loop.step > 0
+            cut = skewed_coordinate(term, self._nest)
+            return Loop(chunk_symbol(term), nothing, nothing, size, nothing, (), of, Role.CHUNK, 0, size, name, cut)
+        loop = self._nest.loop(of)
+        origin = loop.first if loop.independent and isinstance(loop.first, Affine) else nothing
+        return Loop(chunk_symbol(term), nothing, nothing, size * loop.step, origin, (), of, Role.CHUNK, 0, size, name,
+                    Affine.of(of))
 
     def _loop(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> Loop:
         term = self._plan.terms[level]
         symbol = chunk_symbol(term) if term.chunk is not None else term.loop
-        visible = (*self._parameters, *(loop.symbol for loop in outer), symbol)
+        visible = (*self._parameters, *self._constants, *(loop.symbol for loop in outer), symbol)
         values = Region.union(self._executed(unit).only(visible) for unit in members).coalesced()
         loop = self._bounded(term, symbol, values, known, outer)
         inner = known & Region.where(loop.constraints())
@@ -210,9 +220,7 @@ class _Builder:
                     if other.chunk is not None and any(loop == source.id for loop, _ in other.form))
         nothing = Affine()
         if term.chunk is not None:
-            _, _, length, origin, upward = self._chunk(term)
-            return Loop(symbol, nothing, nothing, length if upward else -length, origin, (), source.id, Role.CHUNK,
-                        level, term.chunk)
+            return replace(self._chunk(term), level=level)
         step, origin = source.step, self._source(source.id).origin
         if not origin.names() <= {*self._parameters, *(loop.symbol for loop in outer)}:
             step, origin = (1 if step > 0 else -1), nothing
@@ -228,7 +236,7 @@ class _Builder:
         if not names <= {*self._parameters, *(loop.symbol for loop in outer)}:
             return
         frame = self._frame(term, symbol, outer)
-        chunks = [loop for loop in outer if loop.role is Role.CHUNK and loop.symbol == f"{term.loop}:{loop.size}"]
+        chunks = [loop for loop in outer if loop.role is Role.CHUNK and loop.cut == Affine.of(term.loop)]
         yield from _cut(frame, source, chunks[-1:])
         yield from _cut(frame, source, chunks)
 
@@ -242,7 +250,8 @@ def _cut(frame: Loop, source: Loop, chunks: list[Loop]) -> Iterable[Loop]:
     """The frame with the source loop's bounds, cut by these chunks; first without the bound at which chunks start."""
     upward = source.step > 0
     starts: tuple[Bound, ...] = tuple(Affine.of(chunk.symbol) for chunk in chunks)
-    ends: tuple[Bound, ...] = tuple(Affine.of(chunk.symbol) + chunk.step - (1 if upward else -1) for chunk in chunks)
+    ends: tuple[Bound, ...] = tuple(Affine.of(chunk.symbol) + (chunk.length - 1) * (1 if upward else -1)
+                                    for chunk in chunks)
     if frame.role is Role.CHUNK and frame.step * source.step > 0 and not chunks:
         starts = ()
     near, far = (source.lower, source.upper) if upward else (source.upper, source.lower)

@@ -4,6 +4,7 @@
     term    = ( loop | "(" sum ")" ) [ ":" chunk ]
     sum     = [ "-" ] product { ("+" | "-") product }
     product = [ integer "*" ] loop
+    chunk   = integer | identifier
     option  = word blank value
 
 A wrong plan is a wrong call: one message, with the place in the plan marked.
@@ -79,14 +80,16 @@ def _term(plan: _PlanText, start: int, text: str, nest: Nest) -> Term:
     head, colon, size = text.rpartition(":")
     if not colon or head.count("(") != head.count(")"):
         head, size = text, ""
-    chunk = _chunk(plan, end - len(size), size) if colon and head != text else None
+    chunk = _chunk(plan, end - len(size), size, ids) if colon and head != text else None
     if head.startswith("(") and head.endswith(")"):
         return Term(_sum(plan, start + 1, head[1:-1], ids, nest), chunk, start, end)
     return Term(((_loop(plan, start, head, ids, nest), 1),), chunk, start, end)
 
 
-def _chunk(plan: _PlanText, start: int, size: str) -> int:
-    remedy = "A chunk is the number of iterations of one step: a whole number of at least 1, as in i:64."
+def _chunk(plan: _PlanText, start: int, size: str, ids: set[str]) -> int | str:
+    remedy = "A chunk is a whole number of at least 1, as in i:64, or the name of a constant, as in i:I_CHUNK."
+    if size.isidentifier() and size.isascii() and size not in ids:
+        return size
     if not size.isdecimal():
         raise plan.complaint(start, start + len(size), f"'{size}' is not a chunk", remedy)
     if int(size) < 1:
@@ -135,13 +138,19 @@ def _check_terms(plan: _PlanText, terms: tuple[Term, ...], nest: Nest) -> None:
         coarser = chunks.get(term.form)
         if term.chunk is None:
             bare[term.form] = term
-        elif coarser is not None and coarser.chunk is not None and term.chunk >= coarser.chunk:
+        elif coarser is not None and not _falls(coarser.chunk, term.chunk):
             raise plan.complaint(term.start, term.end, f"chunks of one loop must fall from left to right, and "
                                  f"{term.chunk} does not fall from {coarser.chunk}",
                                  "Put the larger chunk first, or leave one of them out.")
         else:
             chunks[term.form] = term
     _check_moved(plan, terms, tuple(bare.values()), nest)
+
+
+def _falls(coarser: int | str | None, finer: int | str) -> bool:
+    if isinstance(coarser, int) and isinstance(finer, int):
+        return finer < coarser
+    return finer != coarser  # of a name nothing is known, but one constant does not cut a loop twice
 
 
 def _check_moved(plan: _PlanText, terms: tuple[Term, ...], bare: tuple[Term, ...], nest: Nest) -> None:

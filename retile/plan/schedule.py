@@ -11,6 +11,7 @@ from dataclasses import replace
 
 from ..affine import Affine
 from ..model import LoopText, Nest, Place, Plan, Statement, Term
+from ..order import Coordinate, Cut
 
 BEFORE, INSIDE, AFTER = 0, 1, 2
 
@@ -35,17 +36,17 @@ def _place(term: Term, statement: Statement, nest: Nest) -> Place:
 
 
 def moment(term: Term, nest: Nest) -> Affine:
-    """A term's value for an instance, in the instance's iterators (design: bare x, x:S and (…):S)."""
+    """A term's value for an instance, in its iterators; for a chunk of unknown size the value that is cut."""
     loops = [(nest.loop(loop), factor) for loop, factor in term.form]
     if len(loops) == 1 and loops[0][1] == 1:
         loop = loops[0][0]
         if loop.independent:
             number = iteration_number(loop)
-            return number if term.chunk is None else number.floor_div(term.chunk)
+            return number.floor_div(term.chunk) if isinstance(term.chunk, int) else number
         upward = Affine.of(loop.id) * (1 if loop.step > 0 else -1)
-        return upward if term.chunk is None else upward.floor_div(term.chunk * abs(loop.step))
+        return upward.floor_div(term.chunk * abs(loop.step)) if isinstance(term.chunk, int) else upward
     coordinate = skewed_coordinate(term, nest)
-    return coordinate if term.chunk is None else coordinate.floor_div(term.chunk)
+    return coordinate.floor_div(term.chunk) if isinstance(term.chunk, int) else coordinate
 
 
 def skewed_coordinate(term: Term, nest: Nest) -> Affine:
@@ -65,9 +66,10 @@ def iteration_number(loop: LoopText) -> Affine:
     return (distance if loop.step > 0 else -distance).floor_div(abs(loop.step))
 
 
-def moments(plan: Plan, statement: str) -> tuple[int | Affine, ...]:
+def moments(plan: Plan, statement: str) -> tuple[Coordinate, ...]:
     """The part of a statement's time vector that the plan gives: positions and values in turn, outermost first."""
-    vector: list[int | Affine] = []
-    for place in plan.places_of(statement):
-        vector += [place.position, place.form if place.form is not None else 0]
+    vector: list[Coordinate] = []
+    for term, place in zip(plan.terms, plan.places_of(statement), strict=True):
+        value: Coordinate = place.form if place.form is not None else 0
+        vector += [place.position, Cut(value) if isinstance(term.chunk, str) and isinstance(value, Affine) else value]
     return tuple(vector)

@@ -15,7 +15,7 @@ from ..affine import Affine, AllOf, at_most
 from ..dependence import Dependences, Edge, original_times
 from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan, Refusal, Statement, StorageKind,
                      Unproven, Verdict, Violation)
-from ..order import Coordinate, first_differences, prime, primed
+from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
 from .schedule import moments, placed
 
@@ -62,7 +62,7 @@ class _Court:
 
     def reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> Region | None:
         """Those of the pairs whose target the plan does not run after the source; None if there are none."""
-        later = tuple(primed(t, target.loops) if isinstance(t, Affine) else t for t in self._times[target.id])
+        later = primed_vector(self._times[target.id], target.loops)
         wrong = [found for _, found in first_differences(pairs, later, self._times[source.id])]
         return Region.union(wrong[1:]) | wrong[0] if wrong else None
 
@@ -166,7 +166,7 @@ class _Court:
         if pairs.is_empty():
             return False
         original = original_times(self._nest)
-        later = tuple(primed(t, target.loops) if isinstance(t, Affine) else t for t in original[target.id])
+        later = primed_vector(original[target.id], target.loops)
         strict = min(len(later), len(original[source.id]))
         return any(self.reversed_pairs(found, source, target) is not None
                    for level, found in first_differences(pairs, original[source.id], later) if level < strict)
