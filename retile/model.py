@@ -351,3 +351,5 @@ class Variant:
     text: str  # the whole file
     judgement: Judgement
     tree: tuple[Loop, ...] = field(default=())  # what it executes, as judged
+    nest_text: str = ""  # what stands in place of the nest's span
+    includes: tuple[str, ...] = ()  # headers that it needs beyond those of the file, e.g. ``<stdint.h>``
