@@ -1,0 +1,126 @@
+"""Compiling kernels and the program that runs them, without a shell, in a folder of our own."""
+
+from __future__ import annotations
+
+import atexit
+import os
+import re
+import shutil
+import subprocess
+import tempfile
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import cache
+from pathlib import Path
+
+from ..model import RetileError
+from ..templating import environment
+
+_SANITIZERS = ("-fsanitize=address,undefined", "-fno-sanitize-recover=all")
+# Size zero belongs to the domain, also where a variable-length array may formally not have it.
+_SANITIZE = (*_SANITIZERS, "-fno-sanitize=vla-bound", "-fno-omit-frame-pointer", "-g1")
+_RELAXES = re.compile(r"-O\w*|-ffast-math|-funsafe-math-optimizations|-fassociative-math|-freciprocal-math|"
+                      r"-ffp-contract=\w+|-ffinite-math-only|-fno-signed-zeros|-flto\S*|-fsanitize\S*")
+_SECONDS = 120  # for one call of the compiler
+
+
+@dataclass(frozen=True)
+class Built:
+    """A kernel ready to load, or what the compiler said."""
+
+    path: Path | None
+    complaint: str | None = None
+
+
+@dataclass(frozen=True)
+class Workshop:
+    """A folder, a compiler and the flags of the user's file."""
+
+    folder: Path
+    cc: str
+    unit_flags: tuple[str, ...]  # -D, -I, -std of the file
+    beside: str  # folder of the user's file, where its quoted includes are looked for
+
+    def kernel(self, name: str, text: bytes, flags: Sequence[str]) -> Built:
+        """Compile a kernel's text to a library that can be loaded beside others."""
+        source, target = self.folder / f"{name}.c", self.folder / f"{name}.so"
+        source.write_bytes(text)
+        threads = ("-fopenmp",) if re.search(rb"^\s*#\s*pragma\s+omp\b", text, re.MULTILINE) else ()
+        said = run([self.cc, *self.unit_flags, *flags, *threads, "-w", "-fPIC", "-shared", "-fvisibility=hidden",
+                    "-iquote", self.beside, "-o", str(target), str(source), "-lm"])
+        return Built(target) if said is None else Built(None, said)
+
+
+def strict_flags(flags: Sequence[str], sanitize: bool) -> list[str]:
+    """The flags of a verification build: the user's without optimization levels and relaxed arithmetic.
+
+    >>> strict_flags(["-O3", "-march=native", "-ffast-math"], sanitize=False)
+    ['-march=native', '-O1', '-ffp-contract=off']
+    """
+    kept = [flag for flag in flags if not _RELAXES.fullmatch(flag)]
+    return [*kept, "-O1", *(_SANITIZE if sanitize else ()), "-ffp-contract=off"]
+
+
+def run(command: Sequence[str]) -> str | None:
+    """Run a compiler; None if all went well, else what it said (its first lines)."""
+    try:
+        done = subprocess.run(list(command), capture_output=True, text=True, errors="replace", timeout=_SECONDS,
+                              stdin=subprocess.DEVNULL, env={**os.environ, "LC_ALL": "C"})
+    except FileNotFoundError:
+        raise RetileError(f"the compiler {command[0]} is not there; name another with --cc") from None
+    except subprocess.TimeoutExpired:
+        return f"the compiler took longer than {_SECONDS} s"
+    except OSError as problem:
+        raise RetileError(f"the compiler {command[0]} cannot be run: {problem.strerror}") from None
+    if done.returncode == 0:
+        return None
+    lines = [line for line in (done.stderr or done.stdout).splitlines() if line.strip()]
+    return "\n".join(lines[:12]) or f"the compiler ended with status {done.returncode}"
+
+
+@cache
+def harness(cc: str, sanitize: bool, prefix: str) -> Path:
+    """The program that runs kernels, built once per process; RetileError if it cannot be built."""
+    folder = _shared_folder()
+    stem = f"harness{len(list(folder.glob('*.c')))}"
+    source, target = folder / f"{stem}.c", folder / stem
+    source.write_text(environment().get_template("trial_harness.c.j2").render(p=prefix), encoding="utf-8")
+    flags = ("-fsanitize=address,undefined", "-O1") if sanitize else ("-O2",)
+    said = run([cc, "-std=c11", "-w", *flags, "-o", str(target), str(source), "-ldl", "-lm"])
+    if said is not None:
+        raise RetileError(f"{cc} cannot build the program that runs the trials:\n{said}")
+    return target
+
+
+@cache
+def can_sanitize(cc: str) -> bool:
+    """True if programs built with the address and undefined-behaviour sanitizers run here."""
+    try:
+        program = harness(cc, True, "trial")
+        done = subprocess.run([str(program)], capture_output=True, text=True, timeout=20, stdin=subprocess.DEVNULL,
+                              env=sanitizer_environment())
+    except (RetileError, OSError, subprocess.SubprocessError):
+        return False
+    return done.stdout == "failed call\n"
+
+
+def sanitizer_environment() -> dict[str, str]:
+    """The environment in which kernels run: what the sanitizers find ends the program."""
+    return {**os.environ, "LC_ALL": "C",
+            "ASAN_OPTIONS": "detect_leaks=0:halt_on_error=1:allocator_may_return_null=1:color=never",
+            "UBSAN_OPTIONS": "halt_on_error=1:print_stacktrace=0:color=never"}
+
+
+@cache
+def compiler_version(cc: str) -> str | None:
+    """The first line of what the compiler says about itself."""
+    from ..host import compilers
+    found = compilers([cc])
+    return found[0].version if found else None
+
+
+@cache
+def _shared_folder() -> Path:
+    folder = Path(tempfile.mkdtemp(prefix="retile-harness-"))
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    return folder

@@ -1,0 +1,310 @@
+"""The driver: take a nest out of its file, build it and its variants, verify them, time them, keep the records."""
+
+from __future__ import annotations
+
+import hashlib
+import os
+import shutil
+import signal
+import tempfile
+import threading
+from collections.abc import Iterator, Mapping, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass, field, replace
+from datetime import UTC, datetime
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from .. import host
+from ..model import Nest, RetileError, Variant
+from .build import Workshop, compiler_version, harness
+from .kernel import kernel_of
+from .layout import Bench, job, unknown_fills
+from .memory import plain
+from .records import FILLS, Campaign, Difference, Event, Progress, Settings, Trial, Verification
+from .run import Run, run
+from .sizes import checked
+from .verification import Case, Fill, Verifier, bytes_of, difference_of
+
+if TYPE_CHECKING:
+    from ..source import Source
+
+_COPIES = 3  # the arrays themselves, what they held first, what the original leaves
+
+
+class Stopped(KeyboardInterrupt):
+    """The process was asked to end (SIGTERM)."""
+
+
+@contextmanager
+def stoppable() -> Iterator[None]:
+    """Turn SIGTERM into an exception while trials run, so that children end and folders go."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+
+    def stop(number: int, frame: Any) -> None:
+        raise Stopped
+
+    before = signal.signal(signal.SIGTERM, stop)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)
+
+
+@contextmanager
+def workshop(source: Source, settings: Settings) -> Iterator[Workshop]:
+    """A scratch folder with a compiler; the folder is gone afterwards, whatever happens."""
+    folder = Path(tempfile.mkdtemp(prefix="retile-trial-"))
+    try:
+        cc = settings.cc or source.call.cc
+        if shutil.which(cc) is None:
+            raise RetileError(f"the compiler {cc} is not there; name another with --cc")
+        beside = os.path.dirname(os.path.abspath(source.path))
+        yield Workshop(folder, cc, tuple(source.call.flags), beside)
+    finally:
+        shutil.rmtree(folder, ignore_errors=True)
+
+
+def verify(source: Source, nest: Nest, variant: Variant, settings: Settings = Settings()) -> Verification:
+    """Whether one variant leaves the same bytes as the original; see ``verify_all``."""
+    return verify_all(source, nest, [variant], settings)[0]
+
+
+def verify_all(source: Source, nest: Nest, variants: Sequence[Variant],
+               settings: Settings = Settings()) -> list[Verification]:
+    """Verify variants of one nest, which share the original's build and runs.
+
+    Both sides are compiled without contraction, with the sanitizers where the compiler has them, and run at awkward
+    sizes.  A variant that does not compile, stops or differs is a Verification that says so.  Raises RetileError if the
+    nest cannot be run on its own or there is no compiler.
+    """
+    _check(settings)
+    with workshop(source, settings) as shop, stoppable():
+        bench = _bench(source, nest, variants, settings)
+        original, texts = _texts(bench, variants)
+        pairs = [(variant.plan, text) for variant, text in zip(variants, texts)]
+        return Verifier(bench, shop, settings).verify(pairs, original, lambda text: None)
+
+
+def measure(source: Source, nest: Nest, variants: Sequence[Variant], sizes: Mapping[str, int],
+            settings: Settings = Settings(), on_progress: Progress | None = None, command: str = "retile measure") -> Campaign:
+    """Verify variants and time them against the original at the given sizes, round by round in one process.
+
+    ``sizes`` are by name as the nest's parameters are shown; ``command`` is what the user typed, for the message that
+    names a missing size.  Ctrl-C and SIGTERM end the campaign early; what was measured so far is returned with
+    ``interrupted`` set.  Raises RetileError for sizes that are missing, unknown or undefined, for arrays that do not
+    fit into memory, and where ``verify_all`` does.
+    """
+    _check(settings)
+    with workshop(source, settings) as shop, stoppable():
+        bench = _bench(source, nest, variants, settings)
+        chosen = checked(bench, sizes, command)
+        case = Case(chosen, bench.layout(chosen))
+        _check_memory(nest, bytes_of(bench, case.layout))
+        state = _State(bench, shop, settings, case, list(variants), on_progress)
+        try:
+            state.run()
+        except KeyboardInterrupt:
+            state.interrupted = True
+        return state.campaign(source)
+
+
+def _check(settings: Settings) -> None:
+    for name, way in settings.fills:
+        if way not in FILLS:
+            raise RetileError(f"{name} cannot be filled {way!r}; ways of filling are {', '.join(FILLS)}")
+    if not settings.seconds > 0:
+        raise RetileError("the time for measuring must be more than 0 seconds")
+
+
+def _bench(source: Source, nest: Nest, variants: Sequence[Variant], settings: Settings) -> Bench:
+    bench = Bench(kernel_of(source, nest, [variant.nest_text for variant in variants]))
+    unknown = unknown_fills(bench, dict(settings.fills))
+    if unknown:
+        names = sorted({cell.name for cell in bench.kernel.memory.cells})
+        raise RetileError(f"{nest.address}: the nest has nothing named {', '.join(unknown)} to fill; "
+                          f"it has {', '.join(names)}")
+    return bench
+
+
+def _texts(bench: Bench, variants: Sequence[Variant]) -> tuple[bytes, list[bytes]]:
+    kernel = bench.kernel
+    return kernel.text(), [kernel.text(variant.nest_text, variant.includes) for variant in variants]
+
+
+def _check_memory(nest: Nest, needed: int) -> None:
+    """The arrays must fit, with their copies."""
+    try:
+        text = Path("/proc/meminfo").read_text(encoding="ascii")
+        free = next(int(line.split()[1]) * 1024 for line in text.splitlines() if line.startswith("MemAvailable"))
+    except (OSError, StopIteration, ValueError):
+        return
+    if _COPIES * needed > free:
+        raise RetileError(f"{nest.address}: the arrays take about {needed >> 20} MiB, {_COPIES} copies are kept and only "
+                          f"{free >> 20} MiB are free; choose smaller sizes")
+
+
+@dataclass
+class _State:
+    """A campaign on its way; whatever happens, ``campaign`` gives what is there."""
+
+    bench: Bench
+    shop: Workshop
+    settings: Settings
+    case: Case
+    variants: list[Variant]
+    on_progress: Progress | None
+    trials: list[Trial] = field(default_factory=list)
+    fill: Fill = Fill("random")
+    clocked: list[int] = field(default_factory=list)  # trial numbers of the kernels that are timed, in their order
+    clock: Run = field(default_factory=Run)
+    interrupted: bool = False
+    notes: list[str] = field(default_factory=list)
+
+    def __post_init__(self) -> None:
+        self.trials = [Trial(variant.plan.order_text, options_text(variant), None) for variant in self.variants]
+
+    def run(self) -> None:
+        original, texts = _texts(self.bench, self.variants)
+        if self.settings.verify:
+            self._verify(original, texts)
+        self._time(original, texts)
+
+    def tell(self, stage: str, done: int, total: int, text: str) -> None:
+        """Report progress, if anybody listens."""
+        if self.on_progress is not None:
+            self.on_progress(Event(stage, done, total, text))
+
+    def _verify(self, original: bytes, texts: list[bytes]) -> None:
+        steps = iter(range(1_000_000))
+        verifier = Verifier(self.bench, self.shop, self.settings)
+        pairs = [(variant.plan, text) for variant, text in zip(self.variants, texts)]
+        results = verifier.verify(pairs, original, lambda text: self.tell("verify", next(steps), len(texts) + 1, text))
+        self.trials = [replace(trial, verification=result, failure=result.failure or _differs(result.difference))
+                       for trial, result in zip(self.trials, results)]
+
+    def _time(self, original: bytes, texts: list[bytes]) -> None:
+        baseline = self.shop.kernel("timed0", original, self.settings.flags)
+        if baseline.path is None:
+            raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
+        paths = [baseline.path]
+        for number, (trial, text) in enumerate(zip(self.trials, texts)):
+            if trial.failure is not None:
+                continue
+            self.tell("build", number, len(texts), trial.plan)
+            built = self.shop.kernel(f"timed{number + 1}", text, self.settings.flags)
+            if built.path is None:
+                self.trials[number] = replace(trial, failure=built.complaint)
+                continue
+            paths.append(built.path)
+            self.clocked.append(number)
+        self._clock(paths)
+
+    def _clock(self, paths: list[Path]) -> None:
+        prefix = self.bench.kernel.prefix
+        program = harness(self.shop.cc, False, prefix)
+        fills = {plain(name): way for name, way in self.settings.fills}
+        verifier = Verifier(self.bench, self.shop, replace(self.settings, sanitize=False))
+        self.fill = verifier.choose_fill(paths[0], program, self.case)
+        self.notes += self.fill.notes
+        fewest, most = self.settings.rounds
+        while True:
+            self.tell("time", 0, len(paths), f"{self.settings.seconds:g} s for {len(paths)} kernels")
+            text = (job(self.case.layout, self.bench, fills, self.fill.way) +
+                    f"prepare {self.settings.seed}\nverify 0 {len(paths) - 1}\n"
+                    f"clock {self.settings.seconds} {fewest} {most}\n")
+            self.clock = Run()
+            limit = self.settings.limit + self.settings.seconds
+            run(program, prefix, paths, text, limit, self.clock)
+            if self.clock.finished or self.clock.late:
+                break
+            self._drop(paths)
+        if self.clock.late:
+            self.notes.append(f"clocking was ended after {limit:g} s")
+
+    def _drop(self, paths: list[Path]) -> None:
+        """Leave out the kernel that ended a run."""
+        unloadable = next(self.clock.of("unloadable"), None)
+        kernel = int(unloadable[0]) if unloadable else self.clock.last_kernel()
+        reason = self.clock.reason()
+        outside = next(self.clock.of("outside"), None)
+        if outside:
+            reason = f"it writes outside {self.bench.kernel.memory.blocks[int(outside[1])].name}"
+        if not kernel:
+            raise RetileError(f"{self.bench.nest.address}: the original does not run at these sizes: {reason}")
+        number = self.clocked.pop(kernel - 1)
+        paths.pop(kernel)
+        self.trials[number] = replace(self.trials[number], failure=f"the timed build stops: {reason}")
+
+    # ------------------------------------------------------------ records
+
+    def campaign(self, source: Source) -> Campaign:
+        """What is known so far."""
+        rounds = self._rounds()
+        baseline = tuple(times[0] for times in rounds)
+        for kernel, number in enumerate(self.clocked, 1):
+            samples = tuple(times[kernel] for times in rounds)
+            self.trials[number] = self._compared(replace(self.trials[number], samples=samples, baseline_samples=baseline),
+                                                 kernel)
+        self._warn(baseline)
+        nest, settings = self.bench.nest, self.settings
+        return Campaign(
+            address=str(nest.address), host=host.describe().as_json(), sizes=tuple(self.case.sizes.items()),
+            baseline_samples=baseline, trials=tuple(self.trials), compiler=self.shop.cc,
+            compiler_version=compiler_version(self.shop.cc), flags=(*self.shop.unit_flags, *settings.flags),
+            seed=settings.seed, fills=settings.fills, fill=self.fill.way,
+            source_sha256=hashlib.sha256(source.encode(source.text)).hexdigest(),
+            measured_at=datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ"), interrupted=self.interrupted,
+            notes=tuple(dict.fromkeys(self.notes)))
+
+    def _rounds(self) -> list[list[float]]:
+        """The times of all complete rounds, by kernel; a time of 0 counts as one tick of a nanosecond."""
+        kernels = len(self.clocked) + 1
+        times: dict[int, dict[int, float]] = {}
+        for number, kernel, seconds in self.clock.of("time"):
+            times.setdefault(int(number), {})[int(kernel)] = max(float(seconds), 1e-9)
+        return [[times[number][kernel] for kernel in range(kernels)]
+                for number in sorted(times) if len(times[number]) == kernels]
+
+    def _compared(self, trial: Trial, kernel: int) -> Trial:
+        """Add how the timed build's outputs compare with the baseline's."""
+        if any(int(answer[0]) == kernel for answer in self.clock.of("same")):
+            return replace(trial, identical=True)
+        for answer in self.clock.of("wrong"):
+            if int(answer[0]) == kernel:
+                return replace(trial, identical=False, largest_difference=float(answer[2]),
+                               largest_relative=float(answer[3]), cause=self._cause(trial))
+        return trial
+
+    def _cause(self, trial: Trial) -> str:
+        found = {answer[0]: answer for answer in ([str(int(a[0])), *a[1:]] for a in self.clock.of("differs"))}
+        place = ""
+        for kernel, number in enumerate(self.clocked, 1):
+            if self.trials[number].plan == trial.plan and str(kernel) in found:
+                place = f"; first at {difference_of(self.bench, self.case, found[str(kernel)][1:])}"
+        if any(flag in self.settings.flags for flag in ("-ffast-math", "-Ofast", "-fassociative-math")):
+            return f"the flags let the compiler reassociate floating-point operations{place}"
+        if trial.verified:
+            return ("without contraction both leave the same bytes: with these flags the compiler fuses multiplications "
+                    f"and additions in one and not in the other (-ffp-contract=off prevents it){place}")
+        return f"not known{place}"
+
+    def _warn(self, baseline: tuple[float, ...]) -> None:
+        step = host.timer_step().value
+        if baseline and isinstance(step, float) and min(baseline) < 100 * step:
+            self.notes.append(f"one call takes {min(baseline):.3g} s and the clock steps by {step:.3g} s; "
+                              "choose larger sizes for times that can be told apart")
+        if baseline and len(baseline) < 6:
+            self.notes.append(f"{len(baseline)} rounds are too few for an interval (6 are needed); give more --seconds")
+
+
+def _differs(difference: Difference | None) -> str | None:
+    return f"it leaves other results than the original: {difference}" if difference else None
+
+
+def options_text(variant: Variant) -> str:
+    """The options of a variant's plan as they are typed after the ``;``."""
+    _, _, options = variant.plan.text.partition(";")
+    return options.strip()

@@ -1,0 +1,216 @@
+"""Do variants leave the same bytes as the original?  Both are built without contraction and run at awkward sizes."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from ..model import Plan, RetileError
+from .build import Built, Workshop, can_sanitize, harness, strict_flags
+from .layout import Bench, Layout, job
+from .memory import plain
+from .records import Difference, Settings, Verification
+from .run import Run, run
+from .sizes import uncovered, verification_sizes
+
+_FILLS = ("random", "diagonal-dominant", "positive")
+_MOST_BYTES = 1 << 28  # of one case's arrays
+
+
+@dataclass(frozen=True)
+class Case:
+    """One set of sizes to verify at."""
+
+    sizes: dict[str, int]
+    layout: Layout
+
+
+@dataclass
+class _Candidate:
+    """A variant on its way through the cases."""
+
+    built: Built
+    plan: Plan
+    passed: list[Case] = field(default_factory=list)
+    difference: Difference | None = None
+    failure: str | None = None
+
+    @property
+    def open(self) -> bool:
+        return self.difference is None and self.failure is None
+
+
+@dataclass(frozen=True)
+class Fill:
+    """How arrays are filled, and what was noticed about it."""
+
+    way: str
+    notes: tuple[str, ...] = ()
+
+
+def bytes_of(bench: Bench, layout: Layout) -> int:
+    """About how many bytes the arrays of a layout take (elements counted as 8 bytes)."""
+    return sum(8 * extent.count for extent in layout.extents.values())
+
+
+class Verifier:
+    """Verifies the variants of one nest together."""
+
+    def __init__(self, bench: Bench, workshop: Workshop, settings: Settings) -> None:
+        self.bench, self.workshop, self.settings = bench, workshop, settings
+        self.sanitize = settings.sanitize and can_sanitize(workshop.cc)
+        self.prefix = bench.kernel.prefix
+        self.program = harness(workshop.cc, self.sanitize, self.prefix)
+        self.flags = strict_flags(settings.flags, self.sanitize)
+        self.fills = {plain(name): way for name, way in settings.fills}
+        self.notes: list[str] = []
+
+    def cases(self, plans: Sequence[Plan]) -> list[Case]:
+        """The sizes to verify at, each with its layout; RetileError if there is no case at all."""
+        found: list[Case] = []
+        problem = "no sizes satisfy what the nest needs"
+        for sizes in verification_sizes(self.bench, plans):
+            try:
+                layout = self.bench.layout(sizes)
+            except RetileError as reason:
+                problem = str(reason)
+                continue
+            if bytes_of(self.bench, layout) <= _MOST_BYTES:
+                found.append(Case(sizes, layout))
+        if not found:
+            raise RetileError(f"{self.bench.nest.address}: there is nothing to verify at: {problem}")
+        return found
+
+    def verify(self, texts: Sequence[tuple[Plan, bytes]], original: bytes,
+               step: Callable[[str], None]) -> list[Verification]:
+        """One verification for each variant's text; ``step`` is told what is done next."""
+        baseline = self.workshop.kernel("strict0", original, self.flags)
+        if baseline.path is None:
+            raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
+        candidates = []
+        for number, (plan, text) in enumerate(texts, 1):
+            step(f"build {plan.text}")
+            candidates.append(_Candidate(self.workshop.kernel(f"strict{number}", text, self.flags), plan))
+        for candidate in candidates:
+            candidate.failure = candidate.built.complaint
+        cases = self.cases([plan for plan, _ in texts])
+        fill = self.choose_fill(baseline.path, self.program, max(cases, key=lambda case: self.bench.work(case.sizes)))
+        self._run_all(baseline.path, candidates, cases, fill, step)
+        return [self._result(candidate, fill) for candidate in candidates]
+
+    def choose_fill(self, baseline: Path, program: Path, case: Case) -> Fill:
+        """The first way of filling after which the original leaves changed and finite outputs at these sizes."""
+        tried: list[tuple[str, int, int]] = []
+        stopped = ""
+        for way in _FILLS:
+            found = self._original(baseline, program, case, way)
+            counts = next(found.of("changed"), None)
+            if counts is None:
+                stopped = found.reason()
+                continue
+            changed, finite = int(counts[0]), int(counts[1])
+            if changed and finite == changed:
+                note = () if not tried and not stopped else (
+                    f"arrays are filled {way}: {_FILLS[0]} values " +
+                    ("stop the original" if not tried else "give infinite results or none at all"),)
+                return Fill(way, note)
+            tried.append((way, changed, finite))
+        if not tried:
+            raise RetileError(f"{self.bench.nest.address}: the original does not run on its own at "
+                              f"{_sizes_text(case)}: {stopped}")
+        way, changed, finite = max(tried, key=lambda entry: (entry[2], entry[1]))
+        what = "no output changes" if not changed else f"{changed - finite} of {changed} changed outputs are not finite"
+        return Fill(way, (f"arrays are filled {way}, which proves little: {what}; choose with --fill",))
+
+    def _original(self, baseline: Path, program: Path, case: Case, way: str) -> Run:
+        text = job(case.layout, self.bench, self.fills, way) + f"prepare {self.settings.seed}\nverify 0 0\n"
+        return run(program, self.prefix, [baseline], text, self.settings.limit)
+
+    def _run_all(self, baseline: Path, candidates: list[_Candidate], cases: list[Case], fill: Fill,
+                 step: Callable[[str], None]) -> None:
+        """Run all cases; after a crash the rest goes on in a new process without the one that crashed."""
+        left = list(cases)
+        while left and any(candidate.open for candidate in candidates):
+            running = [candidate for candidate in candidates if candidate.open]
+            step(f"run {len(left)} sizes")
+            paths = [baseline, *(candidate.built.path for candidate in running if candidate.built.path)]
+            found = run(self.program, self.prefix, paths, self._job(left, len(running), fill), self.settings.limit)
+            done = self._understand(found, running, left)
+            if found.finished:
+                return
+            original_failed = self._blame(found, running, left[done])
+            left = left[done + 1:] if original_failed else left[done:]
+
+    def _job(self, cases: Sequence[Case], count: int, fill: Fill) -> str:
+        parts = []
+        for number, case in enumerate(cases):
+            parts.append(f"case {number}\n{job(case.layout, self.bench, self.fills, fill.way)}"
+                         f"prepare {self.settings.seed}\nverify 0 {count}\n")
+        return "".join(parts)
+
+    def _understand(self, found: Run, running: list[_Candidate], cases: list[Case]) -> int:
+        """Note what was compared; the number of the last case that began."""
+        at = 0
+        for answer in found.answers:
+            if answer[0] == "case":
+                at = int(answer[1])
+            elif answer[0] == "same":
+                candidate = running[int(answer[1]) - 1]
+                if cases[at] not in candidate.passed:
+                    candidate.passed.append(cases[at])
+            elif answer[0] == "differs":
+                candidate = running[int(answer[1]) - 1]
+                candidate.difference = candidate.difference or difference_of(self.bench, cases[at], answer[2:])
+            elif answer[0] == "moved":
+                running[int(answer[1]) - 1].failure = "it changes a pointer that the original leaves alone"
+        return at
+
+    def _blame(self, found: Run, running: list[_Candidate], case: Case) -> bool:
+        """Note who ended a run; True if it was the original, which is then no witness at these sizes."""
+        reason = found.reason() + f" at {_sizes_text(case)}"
+        outside, unloadable = next(found.of("outside"), None), next(found.of("unloadable"), None)
+        kernel = int(unloadable[0]) if unloadable else found.last_kernel()
+        if outside:
+            name = self.bench.kernel.memory.blocks[int(outside[1])].name
+            reason = f"it writes outside {name} at {_sizes_text(case)}"
+        if kernel is None or (unloadable and kernel == 0):
+            raise RetileError(f"{self.bench.nest.address}: the nest cannot be run on its own: {found.reason()}")
+        if kernel == 0:
+            self.notes.append(f"the original itself stops: {reason}")
+        else:
+            running[kernel - 1].failure = found.reason() if unloadable else reason
+        return kernel == 0
+
+    def _result(self, candidate: _Candidate, fill: Fill) -> Verification:
+        cases = [case.sizes for case in candidate.passed]
+        notes = [*fill.notes, *self.notes, *uncovered(self.bench.nest, [candidate.plan], cases)]
+        if self.settings.sanitize and not self.sanitize:
+            notes.append(f"{self.workshop.cc} has no sanitizers here; only the borders of arrays were watched")
+        failure = candidate.failure
+        if candidate.open and not cases:
+            failure = "the original ran at none of the sizes"
+        return Verification(verified=candidate.open and bool(cases), cases=tuple(tuple(case.items()) for case in cases),
+                            sanitized=self.sanitize, fill=fill.way, difference=candidate.difference, failure=failure,
+                            notes=tuple(notes))
+
+
+def difference_of(bench: Bench, case: Case | None, words: Sequence[str]) -> Difference:
+    """The harness's words ``cell space number kind expected found`` as a difference."""
+    cell = bench.kernel.memory.cells[int(words[0])]
+    block = bench.kernel.memory.blocks[cell.block]
+    space, number = int(words[1]), int(words[2])
+    extent = case.layout.extents.get(cell.block) if case else None
+    index: tuple[int, ...] = (number - extent.before if extent else number,)
+    if extent and len([level for level in block.levels if level]) > 1:
+        index = (space, *index)
+    elif extent and extent.row > 0 and extent.before == 0:
+        index = divmod(number, extent.row)
+    elif block.argument >= 0 and not block.dims:
+        index = ()
+    values = [float(word) if words[3] == "f" else int(word) for word in words[4:6]]
+    return Difference(cell.name, index, values[0], values[1], tuple(case.sizes.items()) if case else ())
+
+
+def _sizes_text(case: Case) -> str:
+    return ", ".join(f"{name} = {value}" for name, value in case.sizes.items()) or "its fixed sizes"
