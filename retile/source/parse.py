@@ -69,11 +69,17 @@ class Parsed(NamedTuple):
 
 
 def parse_unit(
-    text: ParserText, place: Callable[[int], Place], make_body: Callable[[External, c_ast.FuncDef], c_ast.Compound]
+    text: ParserText,
+    place: Callable[[int], Place],
+    make_body: Callable[[External, c_ast.FuncDef], c_ast.Compound],
+    wanted: Callable[[External], bool] = lambda part: True,
 ) -> Parsed:
-    """The tree without function bodies, which ``make_body`` makes when they are wanted; SyntaxProblem if it fails."""
+    """The tree without function bodies, which ``make_body`` makes when they are wanted; SyntaxProblem if it fails.
+
+    What ``wanted`` says no to is left out.
+    """
     try:
-        parts = externals(text.text)
+        parts = [part for part in externals(text.text) if wanted(part)]
     except Malformed:
         _parse(text.text, range(len(text.text)), (), place)  # says where it is wrong
         raise SyntaxProblem("the brackets of this file do not pair", None) from None

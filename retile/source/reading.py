@@ -40,7 +40,7 @@ class Reading:
         version = self.macros.get("__STDC_VERSION__", Macro("", " 0")).definition.strip().rstrip("L")
         self.c23 = version.isdigit() and int(version) > 201710
         self.text: ParserText = for_parser(self.unit, c23=self.c23)
-        self.parsed: Parsed = parse_unit(self.text, self.place, body)
+        self.parsed: Parsed = parse_unit(self.text, self.place, body, self._is_wanted)
         self.spans: dict[int, Span | None] = {}
         self.shapes: dict[int, tuple[Any, Shape]] = {}
         self.bodies: list[Any] = []  # keeps the nodes of ``spans`` and ``shapes`` alive
@@ -49,6 +49,23 @@ class Reading:
     def alignment(self) -> Alignment:
         """The two texts side by side."""
         return align(self.tokens, self.unit)
+
+    def _is_wanted(self, part: External) -> bool:
+        """False for a function of a system header that the user's files do not mention."""
+        words, tokens, first = self.text.text, self.unit.tokens, self.text.first
+        if tokens[first[part.start]].file not in self.unit.system or words[part.start] == "typedef":
+            return True
+        for index in range(part.start, part.end + 1):
+            if words[index] == "(":
+                return words[index - 1] in self._user_words or words[index + 1] == "*"
+            if words[index] in ("{", "=", "[", ","):
+                return True
+        return True
+
+    @cached_property
+    def _user_words(self) -> frozenset[str]:
+        system = self.unit.system
+        return frozenset(token.text for token in self.unit.tokens if token.kind == "word" and token.file not in system)
 
     def is_own(self, part: External) -> bool:
         """True if the function's ``{`` comes from the user's file."""

@@ -1,0 +1,44 @@
+/* Macros of <float.h> (C17 5.2.4.2.2), from the compiler's predefined macros. */
+#ifndef RETILE_FLOAT_H
+#define RETILE_FLOAT_H
+#define FLT_ROUNDS 1
+#define FLT_EVAL_METHOD __FLT_EVAL_METHOD__
+#define FLT_RADIX __FLT_RADIX__
+#define DECIMAL_DIG __DECIMAL_DIG__
+#define FLT_MANT_DIG __FLT_MANT_DIG__
+#define FLT_DIG __FLT_DIG__
+#define FLT_MIN_EXP __FLT_MIN_EXP__
+#define FLT_MIN_10_EXP __FLT_MIN_10_EXP__
+#define FLT_MAX_EXP __FLT_MAX_EXP__
+#define FLT_MAX_10_EXP __FLT_MAX_10_EXP__
+#define FLT_MAX __FLT_MAX__
+#define FLT_EPSILON __FLT_EPSILON__
+#define FLT_MIN __FLT_MIN__
+#define FLT_DECIMAL_DIG __FLT_DECIMAL_DIG__
+#define FLT_HAS_SUBNORM 1
+#define FLT_TRUE_MIN __FLT_DENORM_MIN__
+#define DBL_MANT_DIG __DBL_MANT_DIG__
+#define DBL_DIG __DBL_DIG__
+#define DBL_MIN_EXP __DBL_MIN_EXP__
+#define DBL_MIN_10_EXP __DBL_MIN_10_EXP__
+#define DBL_MAX_EXP __DBL_MAX_EXP__
+#define DBL_MAX_10_EXP __DBL_MAX_10_EXP__
+#define DBL_MAX __DBL_MAX__
+#define DBL_EPSILON __DBL_EPSILON__
+#define DBL_MIN __DBL_MIN__
+#define DBL_DECIMAL_DIG __DBL_DECIMAL_DIG__
+#define DBL_HAS_SUBNORM 1
+#define DBL_TRUE_MIN __DBL_DENORM_MIN__
+#define LDBL_MANT_DIG __LDBL_MANT_DIG__
+#define LDBL_DIG __LDBL_DIG__
+#define LDBL_MIN_EXP __LDBL_MIN_EXP__
+#define LDBL_MIN_10_EXP __LDBL_MIN_10_EXP__
+#define LDBL_MAX_EXP __LDBL_MAX_EXP__
+#define LDBL_MAX_10_EXP __LDBL_MAX_10_EXP__
+#define LDBL_MAX __LDBL_MAX__
+#define LDBL_EPSILON __LDBL_EPSILON__
+#define LDBL_MIN __LDBL_MIN__
+#define LDBL_DECIMAL_DIG __LDBL_DECIMAL_DIG__
+#define LDBL_HAS_SUBNORM 1
+#define LDBL_TRUE_MIN __LDBL_DENORM_MIN__
+#endif

@@ -1,0 +1,5 @@
+/* <nmmintrin.h>: the types are those of <immintrin.h>. */
+#ifndef RETILE_NMMINTRIN_H
+#define RETILE_NMMINTRIN_H
+#include <immintrin.h>
+#endif

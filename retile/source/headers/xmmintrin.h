@@ -1,0 +1,5 @@
+/* <xmmintrin.h>: the types are those of <immintrin.h>. */
+#ifndef RETILE_XMMINTRIN_H
+#define RETILE_XMMINTRIN_H
+#include <immintrin.h>
+#endif
