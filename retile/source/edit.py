@@ -1,0 +1,87 @@
+"""Text back into files: whole or not at all."""
+
+from __future__ import annotations
+
+import os
+import stat
+import tempfile
+from collections.abc import Iterable
+
+from ..model import RetileError
+
+
+def splice(text: str, edits: Iterable[tuple[int, int, str]]) -> str:
+    """The text with ``text[start:end]`` replaced by a new text, for each of the edits; all else stays.
+
+    The edits may come in any order and must not overlap (ValueError); several at one empty place keep their order.
+    """
+    pieces, position = [], 0
+    for start, end, new in sorted(edits, key=lambda edit: (edit[0], edit[1])):
+        if not position <= start <= end <= len(text):
+            raise ValueError(f"edits overlap or lie outside the text at offset {start}")
+        pieces += [text[position:start], new]
+        position = end
+    pieces.append(text[position:])
+    return "".join(pieces)
+
+
+def replace_file(path: str, data: bytes) -> None:
+    """Put ``data`` into the file at ``path``: afterwards it holds all of it, or what it held before.
+
+    The new text is written beside the file and takes its place in one step (rename, IEEE 1003.1).  The mode is kept and
+    a symbolic link is followed.  A file that does not exist is made.  RetileError says why it is not possible.
+    """
+    target = os.path.realpath(path)
+    try:
+        if os.path.exists(target) and not os.path.isfile(target):
+            raise RetileError(f"{path}: this is not a regular file and cannot be replaced")
+        if os.path.exists(target) and not os.access(target, os.W_OK):
+            raise RetileError(f"{path}: the file is write-protected; nothing was changed")
+        _replace(target, data)
+    except OSError as error:
+        reason = error.strerror or str(error)
+        raise RetileError(f"{path}: the file cannot be written: {reason}; nothing was changed") from None
+    except ValueError:
+        raise RetileError(f"{path!r}: this cannot be the name of a file") from None
+
+
+def _replace(target: str, data: bytes) -> None:
+    mode = _mode(target)
+    handle, beside = tempfile.mkstemp(prefix=".retile-", dir=os.path.dirname(target))
+    try:
+        with os.fdopen(handle, "wb") as file:
+            file.write(data)
+            file.flush()
+            os.fchmod(file.fileno(), mode)
+            os.fsync(file.fileno())
+        os.replace(beside, target)
+    except BaseException:
+        try:
+            os.unlink(beside)
+        except OSError:
+            pass
+        raise
+    _sync_directory(os.path.dirname(target))
+
+
+def _mode(target: str) -> int:
+    try:
+        return stat.S_IMODE(os.stat(target).st_mode)
+    except FileNotFoundError:
+        mask = os.umask(0)
+        os.umask(mask)
+        return 0o666 & ~mask
+
+
+def _sync_directory(directory: str) -> None:
+    """Make the rename itself lasting, where the system lets us."""
+    try:
+        handle = os.open(directory, os.O_RDONLY)
+    except OSError:
+        return
+    try:
+        os.fsync(handle)
+    except OSError:
+        pass
+    finally:
+        os.close(handle)
