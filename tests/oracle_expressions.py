@@ -16,6 +16,7 @@ from oracle_types import Code, Types
 from oracle_values import (COMPARE, Machine, Object, Tagged, address_of, calculate, compare, integer_operation,
                            narrowed, plain, tag_of, target_of, to_float, to_integer, truth, word, wrapped)
 
+FAR = 1 << 24  # larger than any array of the tests: what a wrapped unsigned subscript reaches
 _MATH = {
     "sqrt": math.sqrt, "fabs": abs, "sin": math.sin, "cos": math.cos, "exp": math.exp, "log": math.log,
     "floor": math.floor, "ceil": math.ceil, "pow": math.pow, "atan2": math.atan2, "hypot": math.hypot,
@@ -87,6 +88,8 @@ class Expressions(Types):
             if type(at) is not int:
                 at = at.v
             end = limit(env)
+            if end is None and abs(at) > FAR:
+                raise Undefined(f"subscript {at} of {obj.name} is far outside any object of a test")
             if end is not None and not 0 <= at < end:
                 raise Undefined(f"subscript {at} of {obj.name} is outside 0..{end}-1")
             return obj, offset + at * (size if type(size) is int else size(env))
