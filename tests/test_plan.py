@@ -110,6 +110,17 @@ def test_witness_is_the_smallest() -> None:
     assert violation.target.iterators == (("i", 2), ("j", 0))
 
 
+def test_witness_names_a_chunk_that_shows_it() -> None:
+    judgement = judge(DRIFT, analyse(DRIFT), parse_plan("t:T_CHUNK i:I_CHUNK t i", DRIFT))
+    for violation in judgement.violations:
+        sizes = dict(violation.parameters)
+        plan = f"t:{sizes['T_CHUNK']} i:{sizes['I_CHUNK']} t i"
+        assert sizes["I_CHUNK"] == 1  # apart in i
+        assert sizes["T_CHUNK"] > 1  # together in t
+        before, after = (moment(DRIFT, plan, ("20", run.iterators), sizes) for run in (violation.target, violation.source))
+        assert before < after
+
+
 @pytest.mark.parametrize("nest, text, instead", [
     (DRIFT, "i:8 t i", "(t+i):8 t i"),  # distance (1, -1) needs a skew of one: the smallest that is legal
     (DRIFT, "t:4 i:8 t i", "t:4 (t+i):8 t i"),

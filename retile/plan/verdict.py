@@ -49,6 +49,7 @@ def is_legal(nest: Nest, dependences: Dependences, plan: Plan) -> bool:
 class _Reversed:
     edge: Edge
     pairs: Region
+    level: int  # of the time vector, that decides
 
 
 class _Court:
@@ -60,11 +61,10 @@ class _Court:
             statement.id: (*moments(plan, statement.id), *original[statement.id]) for statement in nest.statements}
         self._plan = plan
 
-    def reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> Region | None:
-        """Those of the pairs whose target the plan does not run after the source; None if there are none."""
+    def _reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> tuple[int, Region] | None:
+        """Pairs whose target the plan does not run after the source, with the level that decides; None if there are none."""
         later = primed_vector(self._times[target.id], target.loops)
-        wrong = [found for _, found in first_differences(pairs, later, self._times[source.id])]
-        return Region.union(wrong[1:]) | wrong[0] if wrong else None
+        return next(first_differences(pairs, later, self._times[source.id]), None)
 
     def binding_edges(self) -> tuple[Edge, ...]:
         """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole."""
@@ -101,20 +101,26 @@ class _Court:
 
     def reversed(self, edge: Edge) -> _Reversed | None:
         """The edge with those of its pairs that the plan reverses; None if it keeps all of them."""
-        pairs = self.reversed_pairs(edge.relation, self._nest.statement(edge.source), self._nest.statement(edge.target))
-        return None if pairs is None else _Reversed(edge, pairs)
+        found = self._reversed_pairs(edge.relation, self._nest.statement(edge.source), self._nest.statement(edge.target))
+        return None if found is None else _Reversed(edge, found[1], found[0])
 
     def violations(self, edges: tuple[Edge, ...]) -> Iterator[Violation]:
         """One witness per edge with a reversed pair that surely shares a cell."""
         for edge in edges:
             found = self.reversed(edge) if edge.exact else None
-            if found is not None:
+            if found is not None and self._separable(found.level):
                 yield self._witness(found)
 
     def unproven(self, edges: tuple[Edge, ...]) -> Iterator[Unproven]:
         """Reversed pairs of accesses that may touch any cell, and assumptions that nobody can test."""
         for edge in edges:
-            if not edge.exact and self.reversed(edge) is not None:
+            found = self.reversed(edge)
+            if found is None:
+                continue
+            if not self._separable(found.level):
+                yield Unproven(edge.source, edge.target, "one constant is the chunk of several loops: whether a pair can "
+                               "be reversed depends on how their chunks hang together", "a constant of its own for each loop")
+            elif not edge.exact:
                 yield Unproven(edge.source, edge.target,
                                f"a subscript of {edge.storage} is not affine: the access may touch any cell",
                                f"that the cells of {edge.storage} which line {self._line(edge.source)} and line "
@@ -168,8 +174,25 @@ class _Court:
         original = original_times(self._nest)
         later = primed_vector(original[target.id], target.loops)
         strict = min(len(later), len(original[source.id]))
-        return any(self.reversed_pairs(found, source, target) is not None
+        return any(self._reversed_pairs(found, source, target) is not None
                    for level, found in first_differences(pairs, original[source.id], later) if level < strict)
+
+    def _named_chunks(self, level: int) -> Iterator[tuple[str, bool]]:
+        """The constants that are chunks; True if the two instances must share a chunk for this level to decide."""
+        for at, term in enumerate(self._plan.terms):
+            if isinstance(term.chunk, str):
+                yield term.chunk, 2 * at + 1 < level
+
+    def _separable(self, level: int) -> bool:
+        """False if one constant would have to keep two instances together in one loop and apart in another."""
+        chunks = set(self._named_chunks(level))
+        return len({name for name, _ in chunks}) == len(chunks) or \
+            2 * len(self._plan.terms) <= level
+
+    def _chunk_sizes(self, level: int, point: dict[str, int]) -> dict[str, int]:
+        """For each constant a chunk with which the pair is reversed: all iterations together, or each one alone."""
+        reach = 1 + max(abs(value) for value in point.values())
+        return {name: 2 * reach if together else 1 for name, together in self._named_chunks(level)}
 
     def _line(self, statement: str) -> int:
         return self._nest.statement(statement).line
@@ -184,6 +207,7 @@ class _Court:
                       and a.write == (found.edge.kind != "anti"))
         cell = None if access.subscripts is None else tuple(s.evaluate(point) for s in access.subscripts)
         sizes = tuple((p.symbol, point[p.symbol]) for p in self._nest.parameters if p.kind != "outer iterator")
+        sizes += tuple(self._chunk_sizes(found.level, point).items())
         return Violation(found.edge.kind, found.edge.storage, sizes,
                          _instance(source, outer, point, prime_names=False),
                          _instance(target, outer, point, prime_names=True), cell)
