@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import os
 import shlex
 from typing import Any
@@ -38,6 +37,8 @@ def flags_from_compile_commands(directory: str, file: str) -> CompilerCall:
 
 
 def _entries(path: str) -> list[dict[str, Any]]:
+    import json
+
     try:
         with open(path, encoding="utf-8") as file:
             entries = json.load(file)

@@ -5,17 +5,15 @@ from __future__ import annotations
 import os
 import selectors
 import shlex
-import shutil
 import signal
 import subprocess
 import time
 from dataclasses import dataclass
-from pathlib import Path
 from typing import IO
 
 from ..model import RetileError
 
-HEADERS = Path(__file__).parent / "headers"
+HEADERS = os.path.join(os.path.dirname(os.path.abspath(__file__)), "headers")
 SECONDS = 30.0  # for one run of the preprocessor
 LARGEST_OUTPUT = 64 * 2**20  # bytes
 
@@ -61,7 +59,7 @@ def preprocess(call: CompilerCall, path: str, *, stubs: bool, text: bytes | None
     """
     command = [*call.command, *call.flags, "-E", "-dD", "-w", "-x", "c"]
     if stubs:
-        command += ["-isystem", str(HEADERS)]
+        command += ["-isystem", HEADERS]
     name = os.path.join(".", path) if path.startswith("-") else _from(call.directory, path)
     if text is not None:
         command += ["-iquote", os.path.dirname(os.path.abspath(path)), "-"]
@@ -112,7 +110,7 @@ def _run(command: list[str], call: CompilerCall, text: bytes | None) -> tuple[by
 def _cannot_start(program: str, call: CompilerCall, error: Exception) -> str:
     if call.directory and not os.path.isdir(call.directory):
         return f"{call.directory}: the directory in which the file is compiled does not exist"
-    if shutil.which(program) is None:
+    if isinstance(error, FileNotFoundError):
         return f"the compiler {program!r} was not found; install one, or name yours with --cc, for example --cc gcc"
     return f"the compiler {program!r} cannot be started: {error}; name another one with --cc, for example --cc gcc"
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import os
 import stat
-import tempfile
 from collections.abc import Iterable
 
 from ..model import RetileError
@@ -46,6 +45,8 @@ def replace_file(path: str, data: bytes) -> None:
 
 
 def _replace(target: str, data: bytes) -> None:
+    import tempfile  # costs 10 ms, and only a file that is written needs it
+
     mode = _mode(target)
     handle, beside = tempfile.mkstemp(prefix=".retile-", dir=os.path.dirname(target))
     try:

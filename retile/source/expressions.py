@@ -111,18 +111,20 @@ class Expressions:
             owner = declared.node.decl if isinstance(declared.node, c_ast.FuncDef) else declared.node
             return self._types.qualifiers(owner, scope)
         if isinstance(node, c_ast.StructRef):
-            base = self.value_type(node.name, scope)
-            outer = self.lvalue_quals(node.name, scope) if node.type == "." else frozenset()
-            if node.type == "->" and isinstance(base, PointerTo):
-                base, outer = base.target, base.target_quals
+            base, outer = self.value_type(node.name, scope), frozenset[str]()
+            if node.type == ".":
+                outer = self.lvalue_quals(node.name, scope)
+            elif isinstance(base, PointerTo):
+                outer = base.target_quals
+                base = base.target
             member = self._types.member(base, node.field.name) if isinstance(base, StructType) else None
             return outer | (member.quals if member else frozenset())
         if isinstance(node, (c_ast.ArrayRef, c_ast.UnaryOp)):
             inner = node.name if isinstance(node, c_ast.ArrayRef) else node.expr
-            base = self.type(inner, scope)
-            if isinstance(base, ArrayOf):
-                return base.element_quals | self.lvalue_quals(inner, scope)
-            return base.target_quals if isinstance(base, PointerTo) else frozenset()
+            whole = self.type(inner, scope)
+            if isinstance(whole, ArrayOf):
+                return whole.element_quals | self.lvalue_quals(inner, scope)
+            return whole.target_quals if isinstance(whole, PointerTo) else frozenset()
         return frozenset()
 
     def _type_BinaryOp(self, node: c_ast.BinaryOp, scope: Scope) -> Type:

@@ -31,7 +31,7 @@ def shapes_of(node: Any, shape: Shape) -> dict[int, tuple[Any, Shape]]:
 
 def _match(node: Any, shape: Shape, found: dict[int, tuple[Any, Shape]]) -> None:
     place = getattr(node, "coord", None)
-    if place is not None and not shape.start <= place.index <= shape.end:
+    if place is not None and not shape.start <= place.number <= shape.end:
         return
     if _KINDS.get(type(node), "simple") != shape.kind:
         return
@@ -70,8 +70,8 @@ def _match_items(items: Iterator[Any], shapes: Iterator[Shape], found: dict[int,
     position = 0
     for shape in shapes:
         inside = []
-        while position < len(placed) and placed[position].coord.index <= shape.end:
-            if placed[position].coord.index >= shape.start:
+        while position < len(placed) and placed[position].coord.number <= shape.end:
+            if placed[position].coord.number >= shape.start:
                 inside.append(placed[position])
             position += 1
         declarations = all(isinstance(item, (c_ast.Decl, c_ast.Typedef)) for item in inside)

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterator, Sequence
+from functools import partial
 from typing import Any, NamedTuple
 
 from pycparser import CParser, c_ast
@@ -24,7 +25,7 @@ class Place(NamedTuple):
     line: int  # of the file
     column: int | None  # None if the token comes out of a header or is not known
     offset: int | None  # in the user's text: of the token, or of the macro call that it comes from
-    index: int  # number of the token in the parser's text
+    number: int  # of the token in the parser's text
 
     def __str__(self) -> str:
         return f"{self.file}:{self.line}" + (f":{self.column}" if self.column is not None else "")
@@ -95,11 +96,11 @@ def parse_unit(
     functions = []
     for position, node in enumerate(ast.ext):
         if isinstance(node, c_ast.FuncDef):
-            part = bodies.get(node.body.coord.index)
-            if part is None:
+            definition = bodies.get(node.body.coord.number)
+            if definition is None:
                 raise SyntaxProblem("this function definition cannot be read", node.coord)
-            lazy = FuncDef(node, lambda part=part, node=node: make_body(part, node))  # type: ignore[misc]
-            functions.append((lazy, part))
+            lazy = FuncDef(node, partial(make_body, definition, node))
+            functions.append((lazy, definition))
             ast.ext[position] = lazy
     return Parsed(ast, tuple(functions), tuple(parts))
 
@@ -137,7 +138,7 @@ def _parse(
 ) -> c_ast.FileAST:
     last = 0
 
-    class Watching(CLexer):  # type: ignore[misc]
+    class Watching(CLexer):
         """Some messages of the parser name no place: that of the last token read is near enough."""
 
         def token(self) -> Any:

@@ -351,16 +351,10 @@ class Types:
         """True if one of these attributes fell away in the same declaration (or function) at file scope."""
         if not self._reading.text.dropped or node.coord is None:
             return False
-        index = node.coord.index
-        bounds = self._bounds
-        position = bisect_right(bounds, index) - 1
-        first = bounds[position] if position >= 0 else 0
-        last = bounds[position + 1] if position + 1 < len(bounds) else len(self._reading.text.text)
-        return any(first <= place <= last and word in words for place, word in self._reading.text.dropped)
-
-    @cached_property
-    def _bounds(self) -> list[int]:
-        return [part.start for part in self._reading.parsed.parts]
+        parts = self._reading.parsed.parts
+        part = parts[max(0, bisect_right(parts, node.coord.number, key=lambda part: part.start) - 1)]
+        dropped = self._reading.text.dropped
+        return any(part.start <= place <= part.end and word in words for place, word in dropped)
 
 
 def _kind(node: Any) -> str:
