@@ -263,8 +263,8 @@ class Place:
     """Where a statement stands with regard to one term of a plan."""
 
     position: int  # in the list at this level; the text's order among those before, in and after the term's loop
-    # Its moment in the term's loop, in its iterators and parameters; None outside the loop.  For a chunk of unknown
-    # size the form that is cut.
+    # Its moment in the term's loop, in its iterators and parameters; None outside the loop, or in every iteration for a
+    # copied statement.  For a chunk of unknown size the form that is cut.
     form: Affine | None
 
 
@@ -276,10 +276,18 @@ class Plan:
     terms: tuple[Term, ...]  # outermost first
     options: tuple[tuple[str, str], ...] = ()  # after the ``;``: (word, value)
     places: tuple[tuple[str, tuple[Place, ...]], ...] = ()  # per statement id, one place per term
+    # (statement, loop, value): a statement outside a loop that stands where the loop has this value
+    aligned: tuple[tuple[str, str, Affine], ...] = ()
+    copied: tuple[str, ...] = ()  # statements that run again wherever their value is needed
 
     def places_of(self, statement: str) -> tuple[Place, ...]:
         """The places of one statement; KeyError if the plan has none for it."""
         return dict(self.places)[statement]
+
+    @property
+    def moved(self) -> tuple[str, ...]:
+        """The ids of all loops that the plan names, in its order."""
+        return tuple(dict.fromkeys(loop for term in self.terms for loop, _ in term.form))
 
     @property
     def order_text(self) -> str:

@@ -150,3 +150,33 @@ def _disorder(edge: Edge, source: _Runs, target: _Runs) -> Iterator[Flaw]:
         shown = tuple(sorted((name, value) for name, value in point.items() if "~" not in name))
         yield Flaw(edge.source, f"its {edge.kind} dependence to {edge.target} on {edge.storage} is reversed", shown)
         return
+
+
+def values_arrive(tree: tuple[Node, ...], nest: Nest, context: Region, copied: Iterable[str]) -> list[Flaw]:
+    """Of statements that run more than once: the readers of their scalar that no copy runs just before.
+
+    A copy serves a reader if it stands earlier in the same iteration of all loops around it, these are all the loops that
+    its own instance depends on, and it runs whenever the reader does.
+    """
+    runs = [(occurrence, _Runs(occurrence, context, 0)) for occurrence in occurrences(tree)]
+    flaws: list[Flaw] = []
+    for id in copied:
+        written = {a.storage for a in nest.statement(id).accesses if a.write}
+        copies = [run for run in runs if run[0].leaf.statement == id]
+        for reader in runs:
+            statement = nest.statement(reader[0].leaf.statement)
+            uses = statement.id != id and any(a.storage in written for a in statement.accesses)
+            if uses and not any(_serves(copy, reader, nest.statement(id).loops) for copy in copies):
+                flaws.append(Flaw(statement.id, f"the value that statement {id} computes does not arrive"))
+    return flaws
+
+
+def _serves(copy: tuple[Occurrence, _Runs], reader: tuple[Occurrence, _Runs], loops: tuple[str, ...]) -> bool:
+    (early, copy_runs), (late, reader_runs) = copy, reader
+    shared = early.loops == late.loops[:len(early.loops)] and set(loops) <= {loop.symbol for loop in early.loops}
+    difference = [at for at, (a, b) in enumerate(zip(early.time, late.time, strict=False)) if a != b]
+    if not shared or not difference:
+        return False
+    a, b = early.time[difference[0]], late.time[difference[0]]
+    return isinstance(a, int) and isinstance(b, int) and a < b and \
+        reader_runs.region.within(copy_runs.region)

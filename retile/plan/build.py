@@ -67,24 +67,28 @@ def _holds_named(nodes: Iterable[Node], named: set[str]) -> bool:
 def units(nest: Nest, plan: Plan) -> tuple[Unit, ...]:
     """The pieces of the nest's text that the plan moves, in text order."""
     named = {term.loop for term in plan.terms if term.chunk is None}
-    return tuple(_units(nest.tree, nest, named, (), (), moved_conditions(nest, plan)))
+    apart = dict.fromkeys(plan.copied, False) | dict.fromkeys(moved_conditions(nest, plan), True)
+    return tuple(_units(nest.tree, nest, named, (), (), apart))
 
 
 def _units(nodes: tuple[Node, ...], nest: Nest, named: set[str], loops: tuple[str, ...], guards: tuple[Guard, ...],
-           moved: frozenset[str]) -> Iterable[Unit]:
+           apart: dict[str, bool]) -> Iterable[Unit]:
+    """``apart``: statements that do not share a unit with their neighbours; True for those left out altogether."""
     run: list[Node] = []
     for node in (*nodes, None):
-        if node is not None and not _holds_named((node,), named):
-            if not (isinstance(node, Leaf) and node.statement in moved):
-                run.append(node)
+        alone = isinstance(node, Leaf) and node.statement in apart
+        if node is not None and not alone and not _holds_named((node,), named):
+            run.append(node)
             continue
         if run:
             yield _unit(tuple(run), nest, loops, guards)
             run = []
-        if isinstance(node, Loop):
-            yield from _units(node.body, nest, named, (*loops, node.of), guards, moved)
+        if isinstance(node, Leaf) and not apart[node.statement]:
+            yield _unit((node,), nest, loops, guards)
+        elif isinstance(node, Loop):
+            yield from _units(node.body, nest, named, (*loops, node.of), guards, apart)
         elif isinstance(node, Guard):
-            yield from _units(node.body, nest, named, loops, (*guards, node), moved)
+            yield from _units(node.body, nest, named, loops, (*guards, node), apart)
 
 
 def _unit(nodes: tuple[Node, ...], nest: Nest, loops: tuple[str, ...], guards: tuple[Guard, ...]) -> Unit:
@@ -121,6 +125,9 @@ class _Builder:
         self._plan = plan
         self._context = defined(nest)
         self._parameters = tuple(parameter.symbol for parameter in nest.parameters)
+        self._aligned: dict[str, dict[str, Affine]] = {}
+        for statement, loop, value in plan.aligned:
+            self._aligned.setdefault(statement, {})[loop] = value
         self._constants = tuple(term.chunk for term in plan.terms if isinstance(term.chunk, str))
 
     def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
@@ -129,14 +136,34 @@ class _Builder:
             return ()
         if level == len(self._plan.terms):
             return tuple(self._leaf(unit, known) for unit in members)
-        split: dict[int, list[Unit]] = {BEFORE: [], INSIDE: [], AFTER: []}
-        for unit in members:
-            split[self._plan.places_of(unit.statement)[level].position].append(unit)
+        split = self._split(members, level)
         inside: tuple[Node, ...] = ()
-        if split[INSIDE]:
+        if split[INSIDE] and not self._idle(level, split[INSIDE]):
             inside = (self._loop(tuple(split[INSIDE]), level, known, outer),)
+        else:
+            inside = self.group(tuple(split[INSIDE]), level + 1, known, outer)
         return (*self.group(tuple(split[BEFORE]), level + 1, known, outer), *inside,
                 *self.group(tuple(split[AFTER]), level + 1, known, outer))
+
+    def _split(self, members: tuple[Unit, ...], level: int) -> dict[int, list[Unit]]:
+        """The units before, in and after a term's loop; copies go wherever their value is needed."""
+        places = {unit: self._plan.places_of(unit.statement)[level] for unit in members}
+        copies = {unit for unit, place in places.items() if place.position == INSIDE and place.form is None}
+        split: dict[int, list[Unit]] = {}
+        for position in (BEFORE, INSIDE, AFTER):
+            own = [unit for unit, place in places.items() if unit not in copies and place.position == position]
+            needed = [copy for copy in copies if any(self._uses(unit, copy) for unit in own)]
+            split[position] = [unit for unit in members if unit in own or unit in needed]
+        return split
+
+    def _uses(self, unit: Unit, copy: Unit) -> bool:
+        written = {a.storage for a in self._nest.statement(copy.statement).accesses if a.write}
+        return any(a.storage in written for id in _statements(unit.nodes) for a in self._nest.statement(id).accesses)
+
+    def _idle(self, level: int, members: list[Unit]) -> bool:
+        """True if a loop over single iterations would run just once, for statements that only stand at its value."""
+        term = self._plan.terms[level]
+        return term.chunk is None and all(term.loop not in unit.loops for unit in members)
 
     def _leaf(self, unit: Unit, known: Region) -> Node:
         node: Node = Verbatim(unit.span, unit.nodes)
@@ -152,8 +179,10 @@ class _Builder:
         conditions: list[Formula] = [self._source(loop).constraints() for loop in unit.loops]
         if guarded:
             conditions += [guard.condition for guard in unit.guards if guard.condition is not None]
+        present = {*unit.loops, *self._aligned.get(unit.statement, {})}
+        conditions += [equal(Affine.of(loop), value) for loop, value in self._aligned.get(unit.statement, {}).items()]
         conditions += [self._chunk_link(term) for term in self._plan.terms if term.chunk is not None
-                       and all(loop in unit.loops for loop, _ in term.form)]
+                       and all(loop in present for loop, _ in term.form)]
         return Region.where(*conditions) & self._context
 
     def _source(self, id: str) -> Loop:
@@ -189,7 +218,9 @@ class _Builder:
         term = self._plan.terms[level]
         symbol = chunk_symbol(term) if term.chunk is not None else term.loop
         visible = (*self._parameters, *self._constants, *(loop.symbol for loop in outer), symbol)
-        values = Region.union(self._executed(unit).only(visible) for unit in members).coalesced()
+        # Copies follow those that need them: they add no iterations.
+        own = [unit for unit in members if unit.statement not in self._plan.copied]
+        values = Region.union(self._executed(unit).only(visible) for unit in own).coalesced()
         loop = self._bounded(term, symbol, values, known, outer)
         inner = known & Region.where(loop.constraints())
         return replace(loop, body=self.group(members, level + 1, inner, (*outer, loop)))

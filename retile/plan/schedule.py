@@ -17,20 +17,41 @@ BEFORE, INSIDE, AFTER = 0, 1, 2
 
 
 def placed(plan: Plan, nest: Nest) -> Plan:
-    """The plan with the default places of all statements of the nest.
+    """The plan with the places of all statements of the nest.
 
-    A statement inside the loops of a term takes the loops' own place; one outside stands before the first value or
-    after the last one, as the text has it.
+    A statement inside the loops of a term takes the loops' own place, and so does one that the plan aligns with them;
+    any other stands before the first value or after the last one, as the text has it.
     """
-    places = tuple((statement.id, tuple(_place(term, statement, nest) for term in plan.terms))
-                   for statement in nest.statements)
+    aligned: dict[str, dict[str, Affine]] = {}
+    for statement, loop, value in plan.aligned:
+        aligned.setdefault(statement, {})[loop] = value
+    places = tuple((statement.id, tuple(_place(term, statement, nest, aligned.get(statement.id, {}))
+                                        for term in plan.terms)) for statement in nest.statements)
+    for id in plan.copied:
+        last = last_bare(plan, nest.statement(id).loops)
+        places = tuple((name, tuple(Place(INSIDE, None) if at < last and place.form is None else place
+                                    for at, place in enumerate(own)) if name == id else own) for name, own in places)
     return replace(plan, places=places)
 
 
-def _place(term: Term, statement: Statement, nest: Nest) -> Place:
-    missing = [loop for loop, _ in term.form if loop not in statement.loops]
+def last_bare(plan: Plan, loops: tuple[str, ...]) -> int:
+    """The position in the plan of the last bare term of these loops; -1 if it has none."""
+    return max((at for at, term in enumerate(plan.terms) if term.chunk is None and term.loop in loops), default=-1)
+
+
+def stays_whole(plan: Plan, loops: tuple[str, ...]) -> bool:
+    """True if one iteration of these loops runs to its end before another one starts.
+
+    It does if no other loop stands in the plan before the last bare term of these: for ``i`` and the plan
+    ``i:8 i k`` it stays whole, with ``i:8 k:8 i k`` it is cut by the chunks of ``k``.
+    """
+    return all(loop in loops for term in plan.terms[:last_bare(plan, loops) + 1] for loop, _ in term.form)
+
+
+def _place(term: Term, statement: Statement, nest: Nest, aligned: dict[str, Affine]) -> Place:
+    missing = [loop for loop, _ in term.form if loop not in statement.loops and loop not in aligned]
     if not missing:
-        return Place(INSIDE, moment(term, nest))
+        return Place(INSIDE, moment(term, nest).substitute(aligned))
     before = statement.span.start < nest.loop(missing[0]).span.start
     return Place(BEFORE if before else AFTER, None)
 

@@ -9,7 +9,7 @@ pair is a witness: it is shown at the smallest sizes at which it happens.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, at_most
 from ..dependence import Dependences, Edge, original_times
@@ -17,7 +17,9 @@ from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan
                      Unproven, Verdict, Violation)
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
-from .schedule import moments, placed
+from .alignment import settled
+from .copies import copied, copied_scalars
+from .schedule import moments, placed, stays_whole
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
 _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
@@ -25,8 +27,8 @@ _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
 
 def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
     """The verdict about a plan, with its evidence and the assumptions that it rests on; ``plan.places`` get filled in."""
-    plan = placed(plan, nest)
-    court = _Court(nest, dependences, plan)
+    court = _settled_court(nest, dependences, plan)
+    plan = court.plan
     refusals = tuple(court.refusals())
     if refusals:
         return Judgement(Verdict.REFUSED, plan, refusals=refusals)
@@ -40,9 +42,18 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
 
 def is_legal(nest: Nest, dependences: Dependences, plan: Plan) -> bool:
     """The verdict alone, without evidence; stops at the first reversed pair."""
-    court = _Court(nest, dependences, placed(plan, nest))
+    court = _settled_court(nest, dependences, plan)
     return not any(court.refusals()) and all(assumption.testable for assumption in nest.assumptions) and \
         all(court.reversed(edge) is None for edge in court.binding_edges())
+
+
+def _settled_court(nest: Nest, dependences: Dependences, plan: Plan) -> _Court:
+    """The court on a plan with default places or, where these reverse something, with places that do not, if found."""
+    court = _Court(nest, dependences, placed(replace(plan, copied=copied(nest, plan)), nest))
+    if all(set(court.plan.moved) <= set(statement.loops) for statement in nest.statements):
+        return court
+    better = settled(court.plan, nest, lambda trial: _Court(nest, dependences, trial).cost())
+    return court if better is None else _Court(nest, dependences, better)
 
 
 @dataclass(frozen=True)
@@ -59,7 +70,16 @@ class _Court:
         original = original_times(nest)
         self._times: dict[str, tuple[Coordinate, ...]] = {
             statement.id: (*moments(plan, statement.id), *original[statement.id]) for statement in nest.statements}
-        self._plan = plan
+        self.plan = plan
+        self._copied = copied_scalars(nest, plan)
+        # Private scalars whose iterations the plan takes apart: their storage is not theirs alone.
+        self._split = {name for name in {edge.storage for edge in dependences.reuse} - self._copied
+                       if not stays_whole(plan, nest.storage(name).private_to)}
+
+    def cost(self) -> tuple[int, frozenset[str]]:
+        """How many edges the plan reverses, and the statements at their ends."""
+        wrong = [edge for edge in self.binding_edges() if self.reversed(edge) is not None]
+        return len(wrong), frozenset(end for edge in wrong for end in (edge.source, edge.target))
 
     def _reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> tuple[int, Region] | None:
         """Pairs whose target the plan does not run after the source, with the level that decides; None if there are none."""
@@ -68,25 +88,13 @@ class _Court:
 
     def binding_edges(self) -> tuple[Edge, ...]:
         """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole."""
-        split = {name for name in {edge.storage for edge in self._dependences.reuse}
-                 if not self._stays_whole(self._nest.storage(name).private_to)}
-        return (*self._dependences.edges, *(edge for edge in self._dependences.reuse if edge.storage in split))
-
-    def _stays_whole(self, loops: tuple[str, ...]) -> bool:
-        """True if one iteration of these loops runs to its end before another one starts.
-
-        It does if no other loop stands in the plan before the last bare term of these: for ``i`` and the plan
-        ``i:8 i k`` it stays whole, with ``i:8 k:8 i k`` it is cut by the chunks of ``k``.
-        """
-        bare = [at for at, term in enumerate(self._plan.terms) if term.chunk is None and term.loop in loops]
-        ahead = self._plan.terms[:max(bare, default=-1) + 1]
-        return all(loop in loops for term in ahead for loop, _ in term.form)
+        edges = tuple(edge for edge in self._dependences.edges if edge.storage not in self._copied)
+        return (*edges, *(edge for edge in self._dependences.reuse if edge.storage in self._split))
 
     def refusals(self) -> Iterator[Refusal]:
         """A declaration whose block the plan takes apart cannot be written down."""
-        for name in sorted({edge.storage for edge in self._dependences.reuse}):
-            storage = self._nest.storage(name)
-            if storage.scope != "block" or self._stays_whole(storage.private_to):
+        for name in sorted(self._split):
+            if self._nest.storage(name).scope != "block":
                 continue
             users = [s for s in self._nest.statements if any(a.storage == name for a in s.accesses)]
             if len({self._split_of(s) for s in users}) > 1 and not self._reverses_reuse(name):
@@ -94,7 +102,7 @@ class _Court:
                               f"'{name}' is declared in a block that the plan takes apart; declare it before the nest")
 
     def _split_of(self, statement: Statement) -> tuple[int, ...]:
-        return tuple(place.position for place in self._plan.places_of(statement.id))
+        return tuple(place.position for place in self.plan.places_of(statement.id))
 
     def _reverses_reuse(self, name: str) -> bool:
         return any(self.reversed(edge) is not None for edge in self._dependences.reuse if edge.storage == name)
@@ -149,9 +157,9 @@ class _Court:
 
     def is_identity(self) -> bool:
         """True if the plan is the original order, loop for loop."""
-        return all(term.chunk is None for term in self._plan.terms) and \
-            [term.loop for term in self._plan.terms] == \
-            [loop.id for loop in self._nest.loops if loop.id in {term.loop for term in self._plan.terms}]
+        return all(term.chunk is None for term in self.plan.terms) and \
+            [term.loop for term in self.plan.terms] == \
+            [loop.id for loop in self._nest.loops if loop.id in {term.loop for term in self.plan.terms}]
 
     def _could_reverse(self, one: str, other: str, known: dict[tuple[str, str], bool]) -> bool:
         """True if some accesses to the two, one of them writing, could change order if they met at any cell."""
@@ -179,7 +187,7 @@ class _Court:
 
     def _named_chunks(self, level: int) -> Iterator[tuple[str, bool]]:
         """The constants that are chunks; True if the two instances must share a chunk for this level to decide."""
-        for at, term in enumerate(self._plan.terms):
+        for at, term in enumerate(self.plan.terms):
             if isinstance(term.chunk, str):
                 yield term.chunk, 2 * at + 1 < level
 
@@ -187,7 +195,7 @@ class _Court:
         """False if one constant would have to keep two instances together in one loop and apart in another."""
         chunks = set(self._named_chunks(level))
         return len({name for name, _ in chunks}) == len(chunks) or \
-            2 * len(self._plan.terms) <= level
+            2 * len(self.plan.terms) <= level
 
     def _chunk_sizes(self, level: int, point: dict[str, int]) -> dict[str, int]:
         """For each constant a chunk with which the pair is reversed: all iterations together, or each one alone."""

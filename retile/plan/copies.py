@@ -1,0 +1,45 @@
+"""Values that travel: a scalar computed between two loops, computed again wherever a plan needs it.
+
+    for (i) { t = w[i] * gain;  for (j) c[i][j] += t * b[j]; }        plan  j:64 i j
+
+The chunks of ``j`` take the iterations of ``i`` apart, so ``t`` is computed again for each chunk:
+
+    for (j_from) for (i) { t = w[i] * gain;  for (j) ... }
+
+That is safe if nothing in the nest writes what the statement reads, it writes nothing but the scalar, and nobody looks at
+the scalar afterwards (rematerialization: Briggs, Cooper & Torczon, "Rematerialization", 1992).
+"""
+
+from __future__ import annotations
+
+from ..model import Nest, Plan, ScalarClass, Statement, Storage
+from .schedule import stays_whole
+
+
+def copied(nest: Nest, plan: Plan) -> tuple[str, ...]:
+    """Ids of the statements that the plan runs more than once, because it takes apart the iterations they belong to."""
+    return tuple(statement.id for storage in nest.storages
+                 if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
+                 for statement in (_only_writer(storage, nest),) if statement is not None)
+
+
+def copied_scalars(nest: Nest, plan: Plan) -> frozenset[str]:
+    """Names of the scalars that these statements compute."""
+    return frozenset(access.storage for id in plan.copied for access in nest.statement(id).accesses if access.write)
+
+
+def _only_writer(storage: Storage, nest: Nest) -> Statement | None:
+    """The statement that computes a scalar for all its readers and may do so again; None if there is no such one."""
+    if storage.live_after:
+        return None
+    users = [s for s in nest.statements if any(a.storage == storage.name for a in s.accesses)]
+    writers = [s for s in users if any(a.storage == storage.name and a.write for a in s.accesses)]
+    if len(writers) != 1:
+        return None
+    writer = writers[0]
+    written = {a.storage for s in nest.statements for a in s.accesses if a.write}
+    pure = all(a.certain and ((a.storage == storage.name) if a.write else (a.storage not in written))
+               for a in writer.accesses)
+    surrounds = writer.loops == storage.private_to and all(
+        s.span.start > writer.span.start and s.loops[:len(writer.loops)] == writer.loops for s in users if s != writer)
+    return writer if pure and surrounds else None
