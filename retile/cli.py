@@ -176,6 +176,31 @@ def rewrite(address: str, plan: str, remainder: str | None, trust: bool, file: s
     return rewrite.run(address, plan, _compiling(given), remainder=remainder, trust=trust, target=target)
 
 
+@retile.command(short_help="Build, verify and time the variants of plans.")
+@_address
+@click.argument("plans", metavar="PLAN...", nargs=-1)
+@click.option("--set", "sizes", multiple=True, metavar="NAME=VALUE", help="A size, such as n=1000 (repeatable).")
+@click.option("--fill", "fills", multiple=True, metavar="ARRAY=WAY",
+              help="What an array holds at first: random, positive, diagonal-dominant or zero (repeatable).")
+@click.option("--seconds", type=click.FloatRange(min=0, min_open=True), default=10.0, show_default=True,
+              help="Time for the clocking of all variants together.")
+@click.option("--seed", type=int, default=1, show_default=True, help="Of the random contents.")
+@click.option("--flags", metavar="TEXT", help="Flags of the timed builds (default: '-O3 -march=native').")
+@click.option("-o", "result", metavar="FILE", help="Where to keep all samples (default: a new file here).")
+@_remainder
+@_trust
+@_compiler_options
+@_json
+def measure(address: str, plans: tuple[str, ...], as_json: bool, sizes: tuple[str, ...], fills: tuple[str, ...],
+            seconds: float, seed: int, flags: str | None, result: str | None, remainder: str | None, trust: bool,
+            **given: Any) -> int:
+    """Build the original and the variants of plans, verify that they compute the same, and time them on this host."""
+    from .commands import measure
+
+    measuring = measure.Measuring(sizes, fills, seconds, seed, flags, remainder, trust, result)
+    return measure.run(address, plans, _compiling(given), measuring, as_json=as_json)
+
+
 @retile.command(short_help="Find out about this machine.")
 @_json
 def host(as_json: bool) -> int:

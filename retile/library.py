@@ -5,6 +5,7 @@ Each question is one method, each answer one of the values of ``model``; the roo
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import TYPE_CHECKING
@@ -15,6 +16,8 @@ if TYPE_CHECKING:
     from .dependence import Dependences
     from .nest import Found
     from .source import Source
+    from .trial import Campaign, Settings
+    from .trial.records import Progress
 
 
 @dataclass(frozen=True)
@@ -119,6 +122,19 @@ class OpenNest:
         from .rewrite import diff
 
         return diff(self.source, variant)
+
+    def measure(self, plans: Sequence[str | Plan], sizes: Mapping[str, int], settings: Settings | None = None, *,
+                on_progress: Progress | None = None, command: str = "retile measure") -> Campaign:
+        """Verify the variants of legal plans and time them against the original, round by round in one process.
+
+        ``sizes`` give the nest's parameters by name.  Interrupted, it returns what was measured until then.  Raises
+        RetileError if a plan is not legal, a size is missing, or the nest cannot be run on its own.
+        """
+        from .trial import Settings, measure
+
+        settings = settings or Settings()
+        variants = [self.rewrite(plan, trust=settings.trust) for plan in plans]
+        return measure(self.source, self.nest, variants, sizes, settings, on_progress, command)
 
     def _parsed(self, plan: str | Plan) -> Plan:
         return plan if isinstance(plan, Plan) else self.plan(plan)

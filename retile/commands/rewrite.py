@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import sys
 from dataclasses import dataclass
-from pathlib import Path
 
 from ..library import OpenNest
 from ..model import Judgement, Verdict
@@ -53,8 +52,8 @@ def _deliver(nest: OpenNest, text: str, target: Target) -> None:
 
     data = nest.source.encode(text)
     if target.in_place:
-        replace_file(Path(nest.source.path), data)
+        replace_file(nest.source.path, data)
     elif target.file is not None and target.file != "-":
-        replace_file(Path(target.file), data)
+        replace_file(target.file, data)
     elif not target.as_json:
         write_bytes(data)

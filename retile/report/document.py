@@ -5,7 +5,7 @@ Every function takes values of ``model`` and gives plain dictionaries and lists 
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from typing import TYPE_CHECKING, Any
 
 from ..model import Address, Assumption, Instance, Judgement, Nest, Plan, Refusal, Statement, Violation
@@ -98,10 +98,17 @@ def of_judgement(address: Address, judgement: Judgement) -> Document:
         "violations": [of_violation(violation) for violation in judgement.violations],
         "unproven": [{"source": u.source, "target": u.target, "reason": u.reason, "needs": u.needs}
                      for u in judgement.unproven],
-        "instead": judgement.instead,
+        "instead": judgement.instead, **of_places(judgement.plan),
         "refusals": [of_refusal(refusal) for refusal in judgement.refusals],
         "assumptions": [of_assumption(assumption) for assumption in judgement.assumptions],
     }
+
+
+def of_places(plan: Plan) -> Document:
+    """Where statements stand that the text has outside a loop of the plan: at which value, or again in every iteration."""
+    return {"places": [{"statement": statement, "loop": loop, "value": str(value)}
+                       for statement, loop, value in plan.aligned],
+            "repeated": list(plan.copied)}
 
 
 def of_violation(violation: Violation) -> Document:
@@ -125,3 +132,15 @@ def of_rewriting(address: Address, judgement: Judgement, text: str | None, diff:
     judged = of_judgement(address, judgement)
     return {"address": judged.pop("address"), "plan": judged.pop("plan"), "options": judged.pop("options"),
             "verdict": judged.pop("verdict"), "text": text, "diff": diff, **judged}
+
+
+# ---------------------------------------------------------------- measure
+
+def of_measure_refused(address: Address, sizes: Mapping[str, int], plans: Iterable[tuple[Plan, Judgement | None]],
+                       refusals: Iterable[Refusal]) -> Document:
+    """The document of ``retile measure`` when nothing was measured: a plan was not legal, or the nest is refused."""
+    trials = [{**of_plan(plan), "verdict": "legal" if judgement is None else judgement.verdict.value,
+               "violations": [of_violation(violation) for violation in judgement.violations] if judgement else [],
+               "verified": False, "identical": False, "seconds": None, "speedup": None} for plan, judgement in plans]
+    return {"address": str(address), "host": None, "sizes": dict(sizes), "baseline": None, "trials": trials, "best": None,
+            "refusals": [of_refusal(refusal) for refusal in refusals]}

@@ -5,7 +5,7 @@ from __future__ import annotations
 import shlex
 from collections.abc import Callable, Iterable
 
-from ..model import Address, Assumption, Instance, Judgement, Refusal, Unproven, Verdict, Violation
+from ..model import Address, Assumption, Instance, Judgement, Plan, Refusal, Unproven, Verdict, Violation
 from .table import Look, coloured, paragraph
 
 _STYLE = {Verdict.LEGAL: "good", Verdict.ILLEGAL: "bad", Verdict.UNPROVEN: "doubtful", Verdict.REFUSED: "bad"}
@@ -38,6 +38,8 @@ def verdict_lines(address: Address, judgement: Judgement, place: Place, look: Lo
         lines += _separated(lines, unproven_lines(unproven, look))
     for refusal in judgement.refusals:
         lines += _separated(lines, place(refusal).splitlines())
+    if judgement.plan.aligned or judgement.plan.copied:
+        lines += _separated(lines, place_lines(judgement.plan, look))
     if judgement.assumptions:
         lines += _separated(lines, assumption_lines(judgement.assumptions, look))
     return lines + _separated(lines, next_lines(address, judgement, look))
@@ -81,6 +83,16 @@ def unproven_lines(unproven: Unproven, look: Look) -> list[str]:
         else f"lines {unproven.source} and {unproven.target}"
     lines = paragraph(f"Not decided for {pair}: {unproven.reason}", look)
     return lines + (paragraph(f"It would be settled by: {unproven.needs}", look, "  ") if unproven.needs else [])
+
+
+def place_lines(plan: Plan, look: Look) -> list[str]:
+    """Where statements went that the text has outside a loop of the plan."""
+    lines = []
+    for statement, loop, value in plan.aligned:
+        lines += paragraph(f"Line {statement}, outside the loop over {loop}, runs where {loop} = {value}.", look)
+    for statement in plan.copied:
+        lines += paragraph(f"Line {statement} runs again wherever its value is needed.", look)
+    return lines
 
 
 def assumption_lines(assumptions: Iterable[Assumption], look: Look) -> list[str]:

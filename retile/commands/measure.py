@@ -1,0 +1,132 @@
+"""``retile measure``."""
+
+from __future__ import annotations
+
+import shlex
+import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from ..library import OpenNest
+from ..model import Judgement, Plan, RetileError, Verdict
+from ..report.document import of_measure_refused
+from ..report.trials import campaign_lines
+from ..report.verdict import verdict_lines
+from .compiling import CompilerOptions
+from .opening import open_nest
+from .output import look_of, print_document, print_lines, say
+
+if TYPE_CHECKING:
+    from ..trial import Campaign, Event, Settings
+    from ..trial.records import Progress
+
+_INTERRUPTED = 130
+_STAGES = {"verify": "verifying", "build": "building", "time": "timing"}
+
+
+@dataclass(frozen=True)
+class Measuring:
+    """What the user said about measuring."""
+
+    sizes: tuple[str, ...]  # NAME=VALUE
+    fills: tuple[str, ...]  # ARRAY=WAY
+    seconds: float
+    seed: int
+    flags: str | None  # of the timed builds, as one word of a shell line
+    remainder: str | None
+    trust: bool
+    result: str | None  # file for the records; None for one named after the time
+
+
+def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measuring: Measuring, *, as_json: bool) -> int:
+    """Verify and time the variants of plans; 1 if a plan is not legal or a variant is not verified."""
+    if not plans:
+        raise RetileError("measure needs at least one PLAN, for example 'i j' for the original order of two loops.")
+    sizes = {name: _whole(value, name) for name, value in map(_pair, measuring.sizes)}
+    settings = _settings(measuring, compiling)
+    nest = open_nest(address, compiling)
+    parsed = [plan if nest.refusals else nest.plan(plan, remainder=measuring.remainder) for plan in plans]
+    refused = [judgement for judgement in map(nest.check, parsed) if judgement.verdict is not Verdict.LEGAL]
+    if refused:
+        return _refuse(nest, refused, parsed, sizes, as_json)
+    with _progress() as on_progress:
+        campaign = nest.measure(parsed, sizes, settings, on_progress=on_progress, command=_command(address, plans))
+    return _report(campaign, measuring, as_json)
+
+
+def _settings(measuring: Measuring, compiling: CompilerOptions) -> Settings:
+    from ..trial import Settings
+
+    try:
+        flags = Settings().flags if measuring.flags is None else tuple(shlex.split(measuring.flags))
+    except ValueError as error:
+        raise RetileError(f"--flags {measuring.flags!r} cannot be split into words: {error}.") from None
+    return Settings(cc=compiling.cc, flags=flags, fills=tuple(map(_pair, measuring.fills)), seed=measuring.seed,
+                    seconds=measuring.seconds, trust=measuring.trust)
+
+
+def _pair(text: str) -> tuple[str, str]:
+    name, equals, value = text.partition("=")
+    if not (name.strip() and equals and value.strip()):
+        raise RetileError(f"'{text}' is not of the form NAME=VALUE.")
+    return name.strip(), value.strip()
+
+
+def _whole(text: str, name: str) -> int:
+    try:
+        return int(text)
+    except ValueError:
+        raise RetileError(f"--set {name}={text}: '{text}' is not a whole number.") from None
+
+
+def _command(address: str, plans: tuple[str, ...]) -> str:
+    return " ".join(shlex.quote(word) for word in ("retile", "measure", address, *plans))
+
+
+def _refuse(nest: OpenNest, judgements: list[Judgement], plans: list[Any], sizes: dict[str, int], as_json: bool) -> int:
+    """Nothing is measured unless every plan is legal: a slip should not cost the time of the others."""
+    look = look_of(sys.stderr)
+    for judgement in judgements:
+        say("\n".join([*verdict_lines(nest.address, judgement, nest.place, look), ""]))
+    say("Nothing was measured.")
+    if as_json:
+        known = {judgement.plan.text: judgement for judgement in judgements}
+        pairs = [(plan, known.get(plan.text)) for plan in plans if isinstance(plan, Plan)]
+        print_document(of_measure_refused(nest.address, sizes, pairs, nest.refusals))
+    return 1
+
+
+def _report(campaign: Campaign, measuring: Measuring, as_json: bool) -> int:
+    import json
+
+    from ..trial import as_text, write_result
+
+    file = write_result(campaign, measuring.result)
+    if as_json:
+        print_document({**json.loads(as_text(campaign)), "result": file})
+    else:
+        print_lines([*campaign_lines(campaign, look_of(sys.stdout)), "", f"All samples are in {file}"])
+    if campaign.interrupted:
+        say("Interrupted; what was measured so far is kept.")
+        return _INTERRUPTED
+    return 0 if campaign.all_verified else 1
+
+
+@contextmanager
+def _progress() -> Iterator[Progress | None]:
+    """A line that says what goes on, on a terminal only."""
+    if not sys.stderr.isatty():
+        yield None
+        return
+    from rich.console import Console
+
+    look = look_of(sys.stderr)
+    console = Console(stderr=True, no_color=not look.colour)
+    with console.status("reading") as status:
+        def show(event: Event) -> None:
+            count = f" {event.done + 1} of {event.total}" if event.stage != "time" else ""
+            status.update(f"{_STAGES.get(event.stage, event.stage)}{count}: {event.text}".replace("[", "\\["))
+
+        yield show
