@@ -97,7 +97,7 @@ class _Reader:
             self.depth = max(0, self.depth - 1)
         self.file = self.files.setdefault(name, len(self.files))
         self.line = line
-        if "3" in flags:
+        if "3" in flags and "1" in flags:  # without 1 it marks what a macro of a system header gave
             self.system.add(self.file)
         if self.file == 0 and self.depth == 0:
             self._settle(line - 1 if self.started else 0)
