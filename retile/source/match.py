@@ -39,12 +39,9 @@ def _match(node: Any, shape: Shape, found: dict[int, tuple[Any, Shape]]) -> None
     if shape.kind == "compound":
         _match_items(_items(node.block_items or ()), _children(shape.children), found)
         return
-    if shape.kind == "switch":
-        _match(node.stmt, shape.children[0], found)
-        return
     inner = [node.iftrue, node.iffalse] if shape.kind == "if" else [getattr(node, "stmt", None)]
     for child, child_shape in zip((item for item in inner if item is not None), shape.children):
-        _match(child, child_shape, found)
+        _match_items(_items((child,)), _children((child_shape,)), found)
 
 
 def _items(items: Any) -> Iterator[Any]:

@@ -58,7 +58,7 @@ def _decoded(data: bytes) -> tuple[str, str]:
 class Source:
     """A C file with its tokens, its syntax tree and the extents of its statements."""
 
-    def __init__(self, path: str, text: str, encoding: str, call: CompilerCall) -> None:
+    def __init__(self, path: str, text: str, encoding: str, call: CompilerCall, *, stubs: bool = True) -> None:
         self.path = path  # as the user typed it
         self.text = text  # line endings and byte order mark kept
         self.encoding = encoding
@@ -66,7 +66,7 @@ class Source:
         self.lines = Lines(text)
         self.tokens: tuple[Token, ...] = tokenize(text, self.lines)
         self._readings: list[Reading] = []
-        self._read(stubs=True)
+        self._read(stubs)
 
     # ---------------------------------------------------------------- reading
 
@@ -275,7 +275,7 @@ class Source:
     def _solid_ends(self) -> list[int]:
         """Ends of the tokens that give C."""
         alignment = self._reading.alignment
-        silent = {n for o in alignment.origins if o.pragma and o.pfirst == o.pstop for n in range(o.first, o.stop)}
+        silent = {n for o in alignment.origins if o.pfirst == o.pstop for n in range(o.first, o.stop)}
         return [token.end for number, token in enumerate(alignment.live) if number not in silent]
 
     # ---------------------------------------------------------------- text
