@@ -10,6 +10,7 @@
 
 from __future__ import annotations
 
+import functools
 import re
 from collections import Counter
 from dataclasses import dataclass, field
@@ -17,9 +18,9 @@ from dataclasses import dataclass, field
 from asked import Answer, ask
 from random_nests import Case
 
-from oracle import TooLong, Undefined, Unsupported, compare, observe, times_of, verdict_at
+from oracle import Aligned, TooLong, Undefined, Unsupported, compare, observe, times_of, verdict_at
 from oracle_values import Instance
-from retile.affine import AllOf, AnyOf, Constraint, Formula
+from retile.affine import Affine, AllOf, AnyOf, Constraint, Formula
 from retile.model import Assumption, Judgement, RetileError, Violation
 
 STEPS = 6000
@@ -58,12 +59,23 @@ def examine(case: Case, seed: int = 0) -> Finding:
         _examine_legal(case, judgement, answer, sizes_of(case, seed), finding)
     elif finding.verdict == "illegal":
         for violation in judgement.violations:
-            finding.problems += witness_problems(case, violation, finding.notes)
+            finding.problems += witness_problems(case, judgement, violation, finding.notes)
     elif finding.verdict == "refused":
         finding.notes.update(f"plan refused: {refusal.code}" for refusal in judgement.refusals)
     else:
         finding.notes.update(f"unproven: {_short(unproven.reason)}" for unproven in judgement.unproven)
     return finding
+
+
+def aligned_of(judgement: Judgement, sizes: dict[str, int]) -> Aligned:
+    """Where the plan puts statements among the iterations of loops they are not in, for the oracle."""
+    return [(int(re.match(r"\d+", statement).group()), loop, functools.partial(_value_of, form, sizes))
+            for statement, loop, form in judgement.plan.aligned]
+
+
+def _value_of(form: Affine, sizes: dict[str, int], iterators: dict[str, int]) -> int:
+    by_symbol = {name: iterators[name.partition("@")[0]] for name in form.names() if name not in sizes}
+    return form.evaluate({**sizes, **by_symbol})
 
 
 def _short(text: str) -> str:
@@ -78,15 +90,17 @@ def _examine_legal(case: Case, judgement: Judgement, answer: Answer, chosen: lis
     for sizes in chosen:
         try:
             held = assumptions_hold(judgement.assumptions, sizes)
-            outcomes = [verdict_at(case.text, case.function, case.line, case.plan, sizes, may=may, steps=STEPS)
-                        for may in (False, True)]
+            aligned = aligned_of(judgement, sizes)
+            outcomes = [verdict_at(case.text, case.function, case.line, case.plan, sizes, may=may, steps=STEPS,
+                                   aligned=aligned) for may in (False, True)]
         except (Undefined, TooLong) as reason:
             finding.notes[f"no ground: {type(reason).__name__}"] += 1
             continue
         if held is None:
             finding.notes["assumption not decided"] += 1
         elif held:
-            clashes = [c for o in outcomes for c in o.clashes if not c.private] + outcomes[0].stale
+            stale = [] if judgement.plan.copied else outcomes[0].stale  # copies are judged by the tags below
+            clashes = [c for o in outcomes for c in o.clashes if not c.private] + stale
             finding.problems += [f"false legal at {sizes}: {clash}" for clash in clashes[:1]]
             finding.notes["compared"] += 1
     for remainder in ("clamp", "peel"):
@@ -139,7 +153,7 @@ def holds(formula: Formula, values: dict[str, int]) -> bool:
 # ---------------------------------------------------------------- illegal
 
 
-def witness_problems(case: Case, violation: Violation, notes: Counter) -> list[str]:
+def witness_problems(case: Case, judgement: Judgement, violation: Violation, notes: Counter) -> list[str]:
     """What is wrong with a witness; empty if it happens just as told."""
     told = dict(violation.parameters)
     if any(value > 40 for value in told.values()):
@@ -156,15 +170,15 @@ def witness_problems(case: Case, violation: Violation, notes: Counter) -> list[s
         except Undefined as reason:
             problem = [f"the witness lies outside the domain at {sizes}: {reason}: {violation}"]
             continue
-        problem = _replayed(case, violation, instances, sizes)
+        times = times_of(instances, case.plan, aligned_of(judgement, sizes))
+        problem = _replayed(times, violation, instances, sizes)
         if not problem:
             notes["witness replayed"] += 1
             return []
     return problem
 
 
-def _replayed(case: Case, violation: Violation, instances: list[Instance], sizes: dict[str, int]) -> list[str]:
-    times = times_of(instances, case.plan)
+def _replayed(times: list[tuple], violation: Violation, instances: list[Instance], sizes: dict[str, int]) -> list[str]:
     sources = [k for k, x in enumerate(instances) if _is(x, violation.source)]
     targets = [k for k, x in enumerate(instances) if _is(x, violation.target)]
     pairs = [(a, b) for a in sources for b in targets if instances[a].run == instances[b].run]

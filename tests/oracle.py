@@ -10,15 +10,15 @@ from __future__ import annotations
 import functools
 import math
 import re
-from collections.abc import Iterable
-from dataclasses import dataclass, field
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 from oracle_run import Program
 from oracle_text import Undefined, Unsupported
 from oracle_values import Instance, LoopAt, Machine, TooLong, cell_name, tag_of
 
-__all__ = ["Clash", "Outcome", "Run", "Undefined", "Unsupported", "TooLong", "compare", "final_tags", "observe",
+__all__ = ["Aligned", "Clash", "Outcome", "Undefined", "Unsupported", "TooLong", "compare", "final_tags", "observe",
            "parse_terms", "times_of", "verdict_at"]
 
 
@@ -76,42 +76,61 @@ def _coordinate(loop: LoopAt, skewed: bool) -> int:
     return loop.iteration
 
 
-def _moment(term: Term, instance: Instance, starts: dict[str, tuple[int, int]]) -> float:
+# (line, loop, value): the statements of the line stand where the loop, which is not around them, has this value.
+Aligned = Sequence[tuple[int, str, Callable[[dict[str, int]], int]]]
+
+
+@dataclass
+class _Loops:
+    """The loops that a plan names, as they ran."""
+
+    starts: dict[str, tuple[int, int]]
+    seen: dict[str, LoopAt]
+
+    @staticmethod
+    def of(terms: Iterable[Term], instances: list[Instance]) -> _Loops:
+        names = {name for term in terms for name, _ in term.loops}
+        seen: dict[str, LoopAt] = {}
+        for instance in instances:
+            for loop in instance.loops:
+                for name in names - seen.keys():
+                    if _is(loop, name):
+                        seen[name] = loop
+            if len(seen) == len(names):
+                break
+        # a loop that never ran: everything that ran stands before it
+        starts = {name: (seen[name].line, seen[name].column) if name in seen else (10**9, 0) for name in names}
+        return _Loops(starts, seen)
+
+    def around(self, instance: Instance, name: str, aligned: Aligned) -> LoopAt | None:
+        """The loop at the instance; one that is not around it if the plan says at which of its values it stands."""
+        found = next((loop for loop in instance.loops if _is(loop, name)), None)
+        if found is None:
+            for line, loop, value in aligned:
+                if line == instance.line and loop == name:
+                    like = self.seen.get(name, LoopAt(name, 0, 0, 0, 0, 1, True))
+                    return replace(like, value=value(instance.iterators))
+        return found
+
+
+def _moment(term: Term, instance: Instance, loops: _Loops, aligned: Aligned) -> float:
     """The instance's place with regard to one term; before or after the loop for a statement outside it."""
-    total = 0
-    for name, factor in term.loops:
-        loop = next((loop for loop in instance.loops if _is(loop, name)), None)
+    total, around = 0, [loops.around(instance, name, aligned) for name, _ in term.loops]
+    for (name, factor), loop in zip(term.loops, around, strict=True):
         if loop is None:
-            return -math.inf if (instance.line, instance.column) < starts[name] else math.inf
+            return -math.inf if (instance.line, instance.column) < loops.starts[name] else math.inf
         total += factor * _coordinate(loop, term.skewed)
     if term.chunk is None:
         return total
-    loop = next(loop for loop in instance.loops if _is(loop, term.loops[0][0]))
-    unit = term.chunk * (abs(loop.step) if loop.dependent and not term.skewed and loop.step else 1)
+    unit = term.chunk * (abs(around[0].step) if around[0].dependent and not term.skewed else 1)
     return total // unit
 
 
-def loop_starts(terms: Iterable[Term], instances: Iterable[Instance]) -> dict[str, tuple[int, int]]:
-    """(line, column) of every loop that the terms name."""
-    names = {name for term in terms for name, _ in term.loops}
-    found: dict[str, tuple[int, int]] = {}
-    for instance in instances:
-        for loop in instance.loops:
-            for name in names - found.keys():
-                if _is(loop, name):
-                    found[name] = (loop.line, loop.column)
-        if len(found) == len(names):
-            break
-    return found
-
-
-def times_of(instances: list[Instance], plan: str) -> list[tuple[float, ...]]:
+def times_of(instances: list[Instance], plan: str, aligned: Aligned = ()) -> list[tuple[float, ...]]:
     """The time vector of every instance under a plan."""
     terms = parse_terms(plan)
-    starts = loop_starts(terms, instances)
-    for name in {name for term in terms for name, _ in term.loops} - starts.keys():
-        starts[name] = (10**9, 0)  # a loop that never ran: everything that ran stands before it
-    return [tuple(_moment(term, instance, starts) for term in terms) for instance in instances]
+    loops = _Loops.of(terms, instances)
+    return [tuple(_moment(term, instance, loops, aligned) for term in terms) for instance in instances]
 
 
 # ---------------------------------------------------------------- observation
@@ -120,17 +139,6 @@ def times_of(instances: list[Instance], plan: str) -> list[tuple[float, ...]]:
 @functools.lru_cache(maxsize=64)
 def _program(text: str, line: int | None, directory: Path | None) -> Program:
     return Program(text, line, directory)
-
-
-@dataclass
-class Run:
-    """What one call did."""
-
-    machine: Machine
-
-    @property
-    def instances(self) -> list[Instance]:
-        return self.machine.instances
 
 
 def observe(text: str, function: str, line: int, sizes: dict[str, int], *, may: bool = False, steps: int = 100_000,
@@ -169,13 +177,13 @@ class Outcome:
 
 
 def verdict_at(text: str, function: str, line: int, plan: str, sizes: dict[str, int], *, may: bool = False,
-               steps: int = 100_000, directory: Path | None = None) -> Outcome:
+               aligned: Aligned = (), steps: int = 100_000, directory: Path | None = None) -> Outcome:
     """All clashes of a plan at given sizes; pairs within one execution of the nest only."""
     instances = observe(text, function, line, sizes, may=may, steps=steps, directory=directory)
     outcome = Outcome(instances)
     for run in sorted({instance.run for instance in instances}):
         part = [instance for instance in instances if instance.run == run]
-        times = times_of(part, plan)
+        times = times_of(part, plan, aligned)
         outcome.clashes += _reversed_pairs(part, times)
         outcome.stale += _stale_reads(part, times)
     return outcome

@@ -12,6 +12,7 @@ from dataclasses import dataclass
 
 import pytest
 from asked import ask
+from examination import aligned_of
 
 from oracle import TooLong, Undefined, verdict_at
 
@@ -25,11 +26,12 @@ def survey(parameters: str, nest: str) -> str:
 
 def contradicted(text: str, plan: str, names: str, largest: int = 6) -> bool:
     """True if some small sizes show that the plan changes a result."""
-    values = range(largest + 1)
+    values, judgement = range(largest + 1), ask(text, LINE).check(plan)
     names_of = names.split()
     for sizes in itertools.product(values, repeat=len(names_of)):
+        named = dict(zip(names_of, sizes, strict=True))
         try:
-            outcome = verdict_at(text, "survey", LINE, plan, dict(zip(names_of, sizes, strict=True)), steps=4000)
+            outcome = verdict_at(text, "survey", LINE, plan, named, steps=4000, aligned=aligned_of(judgement, named))
         except (Undefined, TooLong):
             continue
         if outcome.contradicts_legal:
