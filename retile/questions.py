@@ -47,7 +47,8 @@ class _Runs:
         self.region = (Region.where(*occurrence.conditions) & context).renamed(names)
         self.time: tuple[Coordinate, ...] = tuple(self._coordinate(moment) for moment in occurrence.time)
         # Per chunk loop of unknown size: its symbol in the tree, its value here, and the value here of what it cuts.
-        self.cuts = {loop.symbol: (self._own[loop.symbol], loop.cut.substitute(self._own))
+        standing = {name: form.substitute(self._own) for name, form in occurrence.leaf.aligned}
+        self.cuts = {loop.symbol: (self._own[loop.symbol], loop.cut.substitute(standing | self._own))
                      for loop in occurrence.loops if loop.named is not None and loop.cut is not None}
 
     def _coordinate(self, moment: int | tuple[str, int]) -> Coordinate:

@@ -70,6 +70,7 @@ class Leaf:
 
     statement: str
     instance: tuple[tuple[str, Affine], ...]
+    aligned: tuple[tuple[str, Affine], ...] = ()  # source loops that it is not in, with the values where it stands
 
 
 @dataclass(frozen=True)

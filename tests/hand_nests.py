@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
-from retile.affine import Affine, AllOf, Bound, bound_names
-from retile.model import (Access, Address, CType, LoopText, Nest, Parameter, Span, Statement, Storage, StorageKind)
+from dataclasses import replace
+
+from retile.affine import Affine, AllOf, Bound, Formula, bound_names
+from retile.model import (Access, Address, CType, LoopText, Nest, Parameter, ScalarClass, Span, Statement, Storage,
+                          StorageKind)
 from retile.tree import Leaf, Loop, Node
 
 INT = CType("int", 32, True)
@@ -15,37 +18,58 @@ def span(start: int, end: int, line: int) -> Span:
     return Span(start, end, line, 1)
 
 
-def chain(loops: list[tuple[str, Bound, Bound, int]], statements: list[list[tuple[str, bool, tuple]]],
-          parameters: str = "n", first_line: int = 20) -> Nest:
+Accesses = list[tuple[str, bool, tuple]]
+Step = tuple[str, Bound, Bound, int]
+
+
+def chain(loops: list[Step], statements: list[Accesses], parameters: str = "n") -> Nest:
     """A perfect nest: (id, first, last, step) from the outside in, and per statement its (array, write, subscripts)."""
-    ids = tuple(loop[0] for loop in loops)
-    texts = tuple(_loop_text(loops, at) for at in range(len(loops)))
-    lines = [str(first_line + at) for at in range(len(statements))]
-    body: tuple[Node, ...] = tuple(Leaf(line, tuple((id, A(id)) for id in ids)) for line in lines)
-    domain = []
-    for id, first, last, step in reversed(loops):
-        lower, upper = (first, last) if step > 0 else (last, first)
-        loop = Loop(id, lower, upper, step, first if isinstance(first, Affine) else A(0), body, id)
-        domain.append(loop.constraints())
-        body = (loop,)
-    made = tuple(
-        Statement(line, line, span(500 + at, 501 + at, first_line + at), ids, AllOf(tuple(domain)),
-                  tuple(Access(array, write, tuple(A(s) for s in subscripts), True, span(0, 1, 1))
-                        for array, write, subscripts in accesses))
-        for at, (line, accesses) in enumerate(zip(lines, statements, strict=True)))
-    arrays = dict.fromkeys(array for accesses in statements for array, _, _ in accesses)
-    storages = tuple(Storage(a, a, StorageKind.ARRAY, DOUBLE, 8, ()) for a in arrays)
-    return Nest(Address("survey.c", 10), "survey", span(0, 1000, 10), body, texts, made,
+    body: list = list(statements)
+    for loop in reversed(loops):
+        body = [(loop, body)]
+    return nest(body[0], parameters)
+
+
+def nest(outermost: tuple[Step, list], parameters: str = "n", scalars: dict[str, tuple[str, ...]] | None = None) -> Nest:
+    """A nest of (loop, body) pairs and statements; ``scalars``: private ones with the loops they are private to."""
+    made = _Maker()
+    tree = made.node(outermost, (), ())
+    arrays = dict.fromkeys(access.storage for statement in made.statements for access in statement.accesses)
+    private = scalars or {}
+    storages = tuple(
+        Storage(a, a, StorageKind.SCALAR, DOUBLE, 8, (), scope="block", scalar=ScalarClass.PRIVATE, private_to=private[a],
+                live_after=False) if a in private else Storage(a, a, StorageKind.ARRAY, DOUBLE, 8, ()) for a in arrays)
+    return Nest(Address("survey.c", 10), "survey", span(0, 1000, 10), (tree,), tuple(made.loops), tuple(made.statements),
                 tuple(Parameter(p, p, INT, "argument") for p in parameters.split()), storages, (), (), frozenset())
 
 
-def _loop_text(loops: list[tuple[str, Bound, Bound, int]], at: int) -> LoopText:
-    id, first, last, step = loops[at]
-    outer = tuple(loop[0] for loop in loops[:at])
-    here = span(10 * at, 1000 - at, 10 + at)
-    return LoopText(id, id, INT, True, first, last, step, here, span(10 * at, 10 * at + 5, 10 + at),
-                    span(10 * at + 5, 1000 - at, 10 + at), "", "", "<", outer, False,
-                    not (bound_names(first) | bound_names(last)) & set(outer))
+class _Maker:
+    """Gives every node a place in a text that does not exist: one line and ten characters per statement or header."""
+
+    def __init__(self) -> None:
+        self.line = 20
+        self.loops: list[LoopText] = []
+        self.statements: list[Statement] = []
+
+    def node(self, what: tuple | list, loops: tuple[str, ...], domain: tuple[Formula, ...]) -> Node:
+        here = span(10 * self.line, 10 * self.line + 9, self.line)
+        self.line += 1
+        if isinstance(what, list):
+            id = str(here.line)
+            accesses = tuple(Access(a, write, tuple(A(s) for s in subscripts), True, here) for a, write, subscripts in what)
+            self.statements.append(Statement(id, id, here, loops, AllOf(domain), accesses))
+            return Leaf(id, tuple((loop, A(loop)) for loop in loops))
+        (id, first, last, step), body = what
+        lower, upper = (first, last) if step > 0 else (last, first)
+        loop = Loop(id, lower, upper, step, first if isinstance(first, Affine) else A(0), (), id)
+        text = LoopText(id, id.split("@")[0], INT, True, first, last, step, here, here, here, "", "", "<", loops, False,
+                        not (bound_names(first) | bound_names(last)) & set(loops))
+        at = len(self.loops)
+        self.loops.append(text)
+        inner = tuple(self.node(part, (*loops, id), (*domain, loop.constraints())) for part in body)
+        whole = span(here.start, 10 * self.line, here.line)
+        self.loops[at] = replace(text, span=whole, body=span(here.end, whole.end, here.line))
+        return replace(loop, body=inner)
 
 
 i, j, k, m, n, t = (A(name) for name in "ijkmnt")
@@ -60,3 +84,19 @@ TRIANGLE = chain([("i", ZERO, n - 1, 1), ("j", i, n - 1, 1)], [[("a", True, (i, 
 DOWN = chain([("i", n - 1, ZERO, -3), ("j", i, n - 1, 2)], [[("a", True, (i, j)), ("a", False, (i, j))]])
 DRIFT = chain([("t", ZERO, m - 1, 1), ("i", A(1), n - 2, 1)],
               [[("a", True, (i,)), ("a", False, (i - 1,)), ("a", False, (i,)), ("a", False, (i + 1,))]], "n m")
+
+# for k { for i = k+1 .. : a[i][k] /= a[k][k];  for i, j = k+1 .. : a[i][j] -= a[i][k] * a[k][j]; }
+FACTORISATION = nest((("k", ZERO, n - 1, 1), [
+    (("i@21", k + 1, n - 1, 1), [[("a", True, (A("i@21"), k)), ("a", False, (A("i@21"), k)), ("a", False, (k, k))]]),
+    (("i@23", k + 1, n - 1, 1), [
+        (("j", k + 1, n - 1, 1), [[("a", True, (A("i@23"), j)), ("a", False, (A("i@23"), j)), ("a", False, (A("i@23"), k)),
+                                   ("a", False, (k, j))]])])]))
+# for i, k { t = a[i][k]; for j: c[i][j] += t * b[k][j]; }
+SCALED = nest((("i", ZERO, n - 1, 1), [(("k", ZERO, n - 1, 1), [
+    [("t", True, ()), ("a", False, (i, k))],
+    (("j", ZERO, n - 1, 1), [[("c", True, (i, j)), ("c", False, (i, j)), ("t", False, ()), ("b", False, (k, j))]])])]),
+    scalars={"t": ("i", "k")})
+# for i, j { c[i][j] = 0; for k: c[i][j] += a[i][k] * b[k][j]; }
+CLEARED = nest((("i", ZERO, n - 1, 1), [(("j", ZERO, n - 1, 1), [
+    [("c", True, (i, j))],
+    (("k", ZERO, n - 1, 1), [[("c", True, (i, j)), ("c", False, (i, j)), ("a", False, (i, k)), ("b", False, (k, j))]])])]))

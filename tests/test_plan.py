@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import pytest
-from hand_nests import BACKWARD, DOWN, DRIFT, PRODUCT, TRIANGLE
+from hand_nests import BACKWARD, CLEARED, DOWN, DRIFT, FACTORISATION, PRODUCT, SCALED, TRIANGLE
 from walk import Run, runs
 
 from retile.dependence import analyse
 from retile.model import Nest, RetileError, Verdict
-from retile.plan import build_tree, is_legal, judge, nearest_legal, parse_plan, placed
-from retile.questions import order_kept, same_instances
+from retile.plan import build_tree, copied_scalars, is_legal, judge, nearest_legal, parse_plan, placed
+from retile.questions import order_kept, same_instances, values_arrive
+from retile.tree import Loop, Node
 
 
 @pytest.mark.parametrize("text, start, length, part", [
@@ -99,6 +102,64 @@ def test_verdict_and_questions_agree(nest: Nest, text: str) -> None:
     assert same_instances(tree, nest, dependences.context) == []
     assert bool(order_kept(tree, dependences)) == (judgement.verdict is Verdict.ILLEGAL)
     assert is_legal(nest, dependences, judgement.plan) == (judgement.verdict is Verdict.LEGAL)
+
+
+IMPERFECT = [
+    (CLEARED, ["k:3 i j k", "i:2 j:3 k:4 i k j", "k i j", "j i k"]),
+    (SCALED, ["j:3 i k j", "k:2 j:3 i k j", "j:2 k i j", "j i k", "k:K_CHUNK i:2 k i j"]),
+    (FACTORISATION, ["j:3 k i@21 i@23 j", "k i@21 j i@23", "k:2 j:3 k i@21 i@23 j", "j k i@21 i@23",
+                     "j:J_CHUNK k i@21 i@23 j"]),
+]
+
+
+@pytest.mark.parametrize("nest, text", [(nest, text) for nest, texts in IMPERFECT for text in texts])
+def test_imperfect_nest_runs_every_instance_with_its_dependences_kept(nest: Nest, text: str) -> None:
+    dependences = analyse(nest)
+    judgement = judge(nest, dependences, parse_plan(text, nest))
+    assert judgement.verdict is Verdict.LEGAL
+    plan = judgement.plan
+    tree = build_tree(nest, plan)
+    scalars = copied_scalars(nest, plan)
+    assert same_instances(tree, nest, dependences.context, plan.copied) == []
+    assert order_kept(tree, dependences, [edge for edge in dependences.edges if edge.storage not in scalars]) == []
+    assert values_arrive(tree, nest, dependences.context, plan.copied) == []
+    for size in (0, 1, 2, 3, 5, 7):
+        sizes = {"n": size, "J_CHUNK": 2, "K_CHUNK": 3}
+        assert final_values(nest, list(runs(tree, sizes))) == final_values(nest, list(runs(nest.tree, sizes)))
+
+
+def final_values(nest: Nest, order: list[Run]) -> dict[tuple, object]:
+    """What the cells hold after a run, each value named by how it was computed."""
+    memory: dict[tuple, object] = {}
+    for id, iterators in order:
+        values, result = dict(iterators), []
+        for access in nest.statement(id).accesses:
+            cell = (access.storage, *(subscript.evaluate(values) for subscript in access.subscripts or ()))
+            if not access.write:
+                result.append(memory.get(cell, cell))
+        for access in nest.statement(id).accesses:
+            if access.write:
+                cell = (access.storage, *(subscript.evaluate(values) for subscript in access.subscripts or ()))
+                memory[cell] = hash((id, *result))
+    return {cell: value for cell, value in memory.items() if cell[0] != "t"}
+
+
+def test_pivot_statement_waits_for_its_column() -> None:
+    plan = judge(FACTORISATION, analyse(FACTORISATION), parse_plan("j:3 k i@21 i@23 j", FACTORISATION)).plan
+    assert [(id, loop, str(value)) for id, loop, value in plan.aligned] == [("22", "j", "k")]
+
+
+def test_a_value_that_does_not_arrive_is_noticed() -> None:
+    dependences = analyse(SCALED)
+    plan = judge(SCALED, dependences, parse_plan("j:3 i k j", SCALED)).plan
+    assert plan.copied == ("22",)
+    tree = build_tree(SCALED, plan)
+
+    def moved(nodes: tuple[Node, ...]) -> tuple[Node, ...]:
+        """The tree with the statements of every list in reverse."""
+        return tuple(replace(node, body=moved(node.body)) if isinstance(node, Loop) else node for node in nodes[::-1])
+
+    assert values_arrive(moved(tree), SCALED, dependences.context, plan.copied)
 
 
 def test_witness_is_the_smallest() -> None:

@@ -15,108 +15,23 @@ The result is not trusted: ``questions.py`` judges it like any other tree.
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
-from ..affine import Affine, AllOf, Bound, Constraint, Extremum, Formula, at_least_bound, at_most, at_most_bound, \
-    bound_names, equal, less, map_bound
+from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal, less
 from ..dependence import defined
-from ..model import LoopText, Nest, Plan, Term
+from ..model import Nest, Plan, Term
 from ..sets import Region
 from ..tree import Guard, Leaf, Loop, Node, Role, Verbatim, loops_of
+from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
 from .grammar import form_text
 from .schedule import AFTER, BEFORE, INSIDE, placed, skewed_coordinate
-
-
-@dataclass(frozen=True)
-class Unit:
-    """Neighbouring nodes of the original that no named loop stands in: they move as one piece of text."""
-
-    nodes: tuple[Node, ...]
-    span: tuple[int, int]
-    loops: tuple[str, ...]  # ids of the named loops around it
-    guards: tuple[Guard, ...]  # moved with it: conditions between the named loops
-    statement: str  # id of one of its statements: all have the same places
+from .units import Unit, statements_in, units
 
 
 def build_tree(nest: Nest, plan: Plan) -> tuple[Node, ...]:
     """The loop tree of a plan, with clamped bounds at the remainders."""
     plan = plan if plan.places else placed(plan, nest)
     return _Builder(nest, plan).group(units(nest, plan), 0, Region.where(), ())
-
-
-def moved_conditions(nest: Nest, plan: Plan) -> frozenset[str]:
-    """Ids of the conditions that stand between named loops: the tree evaluates them more often than the original."""
-    named = {term.loop for term in plan.terms if term.chunk is None}
-    found: set[str] = set()
-    _find_conditions(nest.tree, named, found)
-    return frozenset(found)
-
-
-def _find_conditions(nodes: tuple[Node, ...], named: set[str], found: set[str]) -> None:
-    for at, node in enumerate(nodes):
-        if not isinstance(node, Leaf | Verbatim) and _holds_named((node,), named):
-            if isinstance(node, Guard) and at > 0 and isinstance(before := nodes[at - 1], Leaf):
-                found.add(before.statement)
-            _find_conditions(node.body, named, found)
-
-
-def _holds_named(nodes: Iterable[Node], named: set[str]) -> bool:
-    return any(loop.of in named for loop in loops_of(tuple(nodes)))
-
-
-def units(nest: Nest, plan: Plan) -> tuple[Unit, ...]:
-    """The pieces of the nest's text that the plan moves, in text order."""
-    named = {term.loop for term in plan.terms if term.chunk is None}
-    apart = dict.fromkeys(plan.copied, False) | dict.fromkeys(moved_conditions(nest, plan), True)
-    return tuple(_units(nest.tree, nest, named, (), (), apart))
-
-
-def _units(nodes: tuple[Node, ...], nest: Nest, named: set[str], loops: tuple[str, ...], guards: tuple[Guard, ...],
-           apart: dict[str, bool]) -> Iterable[Unit]:
-    """``apart``: statements that do not share a unit with their neighbours; True for those left out altogether."""
-    run: list[Node] = []
-    for node in (*nodes, None):
-        alone = isinstance(node, Leaf) and node.statement in apart
-        if node is not None and not alone and not _holds_named((node,), named):
-            run.append(node)
-            continue
-        if run:
-            yield _unit(tuple(run), nest, loops, guards)
-            run = []
-        if isinstance(node, Leaf) and not apart[node.statement]:
-            yield _unit((node,), nest, loops, guards)
-        elif isinstance(node, Loop):
-            yield from _units(node.body, nest, named, (*loops, node.of), guards, apart)
-        elif isinstance(node, Guard):
-            yield from _units(node.body, nest, named, loops, (*guards, node), apart)
-
-
-def _unit(nodes: tuple[Node, ...], nest: Nest, loops: tuple[str, ...], guards: tuple[Guard, ...]) -> Unit:
-    spans = [span for node in nodes for span in _extents(node, nest)]
-    ids = list(_statements(nodes))
-    return Unit(nodes, (min(start for start, _ in spans), max(end for _, end in spans)), loops, guards, ids[0])
-
-
-def _extents(node: Node, nest: Nest) -> Iterable[tuple[int, int]]:
-    if isinstance(node, Leaf):
-        span = nest.statement(node.statement).span
-        yield span.start, span.end
-    elif isinstance(node, Loop):
-        span = nest.loop(node.of).span
-        yield span.start, span.end
-    elif isinstance(node, Guard):
-        if node.span is not None:
-            yield node.span
-        for inner in node.body:
-            yield from _extents(inner, nest)
-
-
-def _statements(nodes: Iterable[Node]) -> Iterable[str]:
-    for node in nodes:
-        if isinstance(node, Leaf):
-            yield node.statement
-        else:
-            yield from _statements(node.content if isinstance(node, Verbatim) else node.body)
 
 
 class _Builder:
@@ -132,46 +47,60 @@ class _Builder:
 
     def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
         """The nodes of these units from a term on; ``known``: what the loops around establish."""
-        if not members:
-            return ()
         if level == len(self._plan.terms):
-            return tuple(self._leaf(unit, known) for unit in members)
+            return tuple(self._leaf(unit, known, outer) for unit in members)
         split = self._split(members, level)
-        inside: tuple[Node, ...] = ()
-        if split[INSIDE] and not self._idle(level, split[INSIDE]):
-            inside = (self._loop(tuple(split[INSIDE]), level, known, outer),)
-        else:
-            inside = self.group(tuple(split[INSIDE]), level + 1, known, outer)
-        return (*self.group(tuple(split[BEFORE]), level + 1, known, outer), *inside,
-                *self.group(tuple(split[AFTER]), level + 1, known, outer))
+        return tuple(node for position, part in split.items()
+                     for node in self._part(part, level, known, outer, position == INSIDE and not self._idle(level, part)))
 
-    def _split(self, members: tuple[Unit, ...], level: int) -> dict[int, list[Unit]]:
+    def _part(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...],
+              in_loop: bool) -> tuple[Node, ...]:
+        """The nodes of units that part from others here: what their loops cannot say is tested first, if that settles it."""
+        def made(known: Region) -> tuple[Node, ...]:
+            return (self._loop(members, level, known, outer),) if in_loop else \
+                self.group(members, level + 1, known, outer)
+
+        nodes = made(known)
+        if not any(_is_tested(node) for node in nodes):
+            return nodes
+        around = known & self._context
+        left = Region.union(self._visible(unit, outer) for unit in members).relative_to(around)
+        early = nodes if around.within(left) else made(known & left)
+        return nodes if any(_is_tested(node) for node in early) else (Guard(left.formula(), early),)
+
+    def _visible(self, unit: Unit, outer: tuple[Loop, ...], guarded: bool = True) -> Region:
+        """The values of parameters and of the loops around with which a unit runs."""
+        names = (*self._parameters, *self._constants, *(loop.symbol for loop in outer))
+        return self._executed(unit, guarded).only(names)
+
+    def _split(self, members: tuple[Unit, ...], level: int) -> dict[int, tuple[Unit, ...]]:
         """The units before, in and after a term's loop; copies go wherever their value is needed."""
         places = {unit: self._plan.places_of(unit.statement)[level] for unit in members}
         copies = {unit for unit, place in places.items() if place.position == INSIDE and place.form is None}
-        split: dict[int, list[Unit]] = {}
+        split: dict[int, tuple[Unit, ...]] = {}
         for position in (BEFORE, INSIDE, AFTER):
             own = [unit for unit, place in places.items() if unit not in copies and place.position == position]
             needed = [copy for copy in copies if any(self._uses(unit, copy) for unit in own)]
-            split[position] = [unit for unit in members if unit in own or unit in needed]
+            if own:
+                split[position] = tuple(unit for unit in members if unit in own or unit in needed)
         return split
 
     def _uses(self, unit: Unit, copy: Unit) -> bool:
         written = {a.storage for a in self._nest.statement(copy.statement).accesses if a.write}
-        return any(a.storage in written for id in _statements(unit.nodes) for a in self._nest.statement(id).accesses)
+        return any(a.storage in written for id in statements_in(unit.nodes) for a in self._nest.statement(id).accesses)
 
-    def _idle(self, level: int, members: list[Unit]) -> bool:
+    def _idle(self, level: int, members: tuple[Unit, ...]) -> bool:
         """True if a loop over single iterations would run just once, for statements that only stand at its value."""
         term = self._plan.terms[level]
         return term.chunk is None and all(term.loop not in unit.loops for unit in members)
 
-    def _leaf(self, unit: Unit, known: Region) -> Node:
-        node: Node = Verbatim(unit.span, unit.nodes)
+    def _leaf(self, unit: Unit, known: Region, outer: tuple[Loop, ...]) -> Node:
+        node: Node = Verbatim(unit.span, _standing(unit.nodes, self._aligned))
         around = known & self._context
         for guard in reversed(unit.guards):
             if guard.condition is None or not around.implies(guard.condition):
                 node = Guard(guard.condition, (node,), guard.span)
-        left = self._executed(unit, guarded=False).relative_to(around)
+        left = self._visible(unit, outer, guarded=False).relative_to(around)
         return node if around.within(left) else Guard(left.formula(), (node,))
 
     def _executed(self, unit: Unit, guarded: bool = True) -> Region:
@@ -236,13 +165,13 @@ class _Builder:
         start = [loop for loop in readable if (values & known).within(Region.where(loop.constraints()))][-1:]
         frame = start[0] if start else self._frame(term, symbol, outer)
         around = around & Region.where(frame.constraints()) if start else around
-        lower, upper = _bounds(values.relative_to(around).hull(), symbol)
+        lower, upper = bounds_on(values.relative_to(around).hull(), symbol)
         if not start and not (lower and upper):
-            full_lower, full_upper = _bounds(values.hull(), symbol)
+            full_lower, full_upper = bounds_on(values.hull(), symbol)
             lower, upper = lower or full_lower, upper or full_upper
-        loop = _on_grid(replace(frame, lower=_bound("max", ((frame.lower,) if start else ()) + lower),
-                                upper=_bound("min", ((frame.upper,) if start else ()) + upper)))
-        return _without_idle_bounds(loop, known & self._context)
+        loop = on_grid(replace(frame, lower=tightest("max", ((frame.lower,) if start else ()) + lower),
+                                upper=tightest("min", ((frame.upper,) if start else ()) + upper)))
+        return without_idle_bounds(loop, known & self._context)
 
     def _frame(self, term: Term, symbol: str, outer: tuple[Loop, ...]) -> Loop:
         """The loop of a term with everything but its bounds and its body."""
@@ -272,6 +201,22 @@ class _Builder:
         yield from _cut(frame, source, chunks)
 
 
+def _standing(nodes: tuple[Node, ...], aligned: dict[str, dict[str, Affine]]) -> tuple[Node, ...]:
+    """The nodes with the values at which their statements stand noted in the leaves."""
+    if not aligned:
+        return nodes
+    return tuple(replace(node, aligned=tuple(aligned.get(node.statement, {}).items())) if isinstance(node, Leaf)
+                 else replace(node, body=_standing(node.body, aligned)) if isinstance(node, Loop | Guard)
+                 else node for node in nodes)
+
+
+def _is_tested(node: Node) -> bool:
+    """True if a guard that is not the user's stands in the node."""
+    if isinstance(node, Guard) and node.span is None:
+        return True
+    return isinstance(node, Loop | Guard) and any(_is_tested(inner) for inner in node.body)
+
+
 def chunk_symbol(term: Term) -> str:
     """The name that forms use for the value of a chunk loop: the term as a plan writes it."""
     return f"{form_text(term.form)}:{term.chunk}"
@@ -287,74 +232,5 @@ def _cut(frame: Loop, source: Loop, chunks: list[Loop]) -> Iterable[Loop]:
         starts = ()
     near, far = (source.lower, source.upper) if upward else (source.upper, source.lower)
     for first in ((starts, (*starts, near)) if starts else ((near,),)):
-        low, high = _bound("max" if upward else "min", first), _bound("min" if upward else "max", (*ends, far))
+        low, high = tightest("max" if upward else "min", first), tightest("min" if upward else "max", (*ends, far))
         yield replace(frame, lower=low, upper=high) if upward else replace(frame, lower=high, upper=low)
-
-
-def _bound(kind: str, bounds: tuple[Bound, ...]) -> Bound:
-    distinct: list[Bound] = []
-    for bound in bounds:
-        distinct += [part for part in _parts(kind, bound) if part not in distinct]
-    return distinct[0] if len(distinct) == 1 else Extremum(kind, tuple(distinct))
-
-
-def _bounds(values: Region, symbol: str) -> tuple[tuple[Bound, ...], tuple[Bound, ...]]:
-    """The lower and the upper bounds that the constraints of a convex region put on a symbol."""
-    lowers: list[Bound] = []
-    uppers: list[Bound] = []
-    for constraint in _constraints_on(values, symbol):
-        factor = constraint.form.coefficient(symbol)
-        rest = constraint.form - Affine.of(symbol) * factor
-        if symbol in rest.names():
-            continue
-        if factor > 0 or constraint.equality:
-            lowers.append((-rest * (1 if factor > 0 else -1) + abs(factor) - 1).floor_div(abs(factor)))
-        if factor < 0 or constraint.equality:
-            uppers.append((rest * (1 if factor < 0 else -1)).floor_div(abs(factor)))
-    return tuple(lowers), tuple(uppers)
-
-
-def _on_grid(loop: Loop) -> Loop:
-    """The same loop with a constant bound moved to the first value of the grid that it lets in."""
-    step = abs(loop.step)
-    if step == 1 or not loop.origin.is_constant:
-        return loop
-    origin = loop.origin.constant
-
-    def up(bound: Affine) -> Affine:
-        return Affine((), origin - (origin - bound.constant) // step * step) if bound.is_constant else bound
-
-    def down(bound: Affine) -> Affine:
-        return Affine((), origin + (bound.constant - origin) // step * step) if bound.is_constant else bound
-
-    if loop.step > 0:
-        return replace(loop, lower=map_bound(loop.lower, up))
-    return replace(loop, upper=map_bound(loop.upper, down))
-
-
-def _without_idle_bounds(loop: Loop, known: Region) -> Loop:
-    """The same loop without the bounds that the others, with what is known outside, already say."""
-    value = Affine.of(loop.symbol)
-    for kind, limit in (("max", at_least_bound), ("min", at_most_bound)):
-        parts = _parts(kind, loop.lower if kind == "max" else loop.upper)
-        for part in parts:
-            rest = tuple(p for p in parts if p != part)
-            if not rest:
-                break
-            slim = replace(loop, lower=_bound(kind, rest)) if kind == "max" else replace(loop, upper=_bound(kind, rest))
-            if (known & Region.where(slim.constraints())).implies(limit(value, part)):
-                loop, parts = slim, rest
-    return loop
-
-
-def _parts(kind: str, bound: Bound) -> tuple[Bound, ...]:
-    return bound.bounds if isinstance(bound, Extremum) and bound.kind == kind else (bound,)
-
-
-def _constraints_on(values: Region, symbol: str) -> Iterable[Constraint]:
-    for piece in values.pieces():
-        for constraint in piece:
-            if constraint.form.coefficient(symbol):
-                yield constraint
-
-

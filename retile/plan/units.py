@@ -1,0 +1,96 @@
+"""The pieces of a nest that a plan moves as a whole: text between the loops that it names."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+
+from ..model import Nest, Plan
+from ..tree import Guard, Leaf, Loop, Node, Verbatim, loops_of
+
+
+@dataclass(frozen=True)
+class Unit:
+    """Neighbouring nodes of the original that no named loop stands in: they move as one piece of text."""
+
+    nodes: tuple[Node, ...]
+    span: tuple[int, int]
+    loops: tuple[str, ...]  # ids of the named loops around it
+    guards: tuple[Guard, ...]  # moved with it: conditions between the named loops
+    statement: str  # id of one of its statements: all have the same places
+
+
+def moved_conditions(nest: Nest, plan: Plan) -> frozenset[str]:
+    """Ids of the conditions that stand between named loops: the tree evaluates them more often than the original."""
+    named = {term.loop for term in plan.terms if term.chunk is None}
+    found: set[str] = set()
+    _find_conditions(nest.tree, named, found)
+    return frozenset(found)
+
+
+def _find_conditions(nodes: tuple[Node, ...], named: set[str], found: set[str]) -> None:
+    for at, node in enumerate(nodes):
+        if not isinstance(node, Leaf | Verbatim) and _holds_named((node,), named):
+            if isinstance(node, Guard) and at > 0 and isinstance(before := nodes[at - 1], Leaf):
+                found.add(before.statement)
+            _find_conditions(node.body, named, found)
+
+
+def _holds_named(nodes: Iterable[Node], named: set[str]) -> bool:
+    return any(loop.of in named for loop in loops_of(tuple(nodes)))
+
+
+def units(nest: Nest, plan: Plan) -> tuple[Unit, ...]:
+    """The pieces of the nest's text that the plan moves, in text order."""
+    named = {term.loop for term in plan.terms if term.chunk is None}
+    apart = dict.fromkeys(plan.copied, False) | dict.fromkeys(moved_conditions(nest, plan), True)
+    return tuple(_units(nest.tree, nest, named, (), (), apart))
+
+
+def _units(nodes: tuple[Node, ...], nest: Nest, named: set[str], loops: tuple[str, ...], guards: tuple[Guard, ...],
+           apart: dict[str, bool]) -> Iterable[Unit]:
+    """``apart``: statements that do not share a unit with their neighbours; True for those left out altogether."""
+    run: list[Node] = []
+    for node in (*nodes, None):
+        alone = isinstance(node, Leaf) and node.statement in apart
+        if node is not None and not alone and not _holds_named((node,), named):
+            run.append(node)
+            continue
+        if run:
+            yield _unit(tuple(run), nest, loops, guards)
+            run = []
+        if isinstance(node, Leaf) and not apart[node.statement]:
+            yield _unit((node,), nest, loops, guards)
+        elif isinstance(node, Loop):
+            yield from _units(node.body, nest, named, (*loops, node.of), guards, apart)
+        elif isinstance(node, Guard):
+            yield from _units(node.body, nest, named, loops, (*guards, node), apart)
+
+
+def _unit(nodes: tuple[Node, ...], nest: Nest, loops: tuple[str, ...], guards: tuple[Guard, ...]) -> Unit:
+    spans = [span for node in nodes for span in _extents(node, nest)]
+    ids = list(statements_in(nodes))
+    return Unit(nodes, (min(start for start, _ in spans), max(end for _, end in spans)), loops, guards, ids[0])
+
+
+def _extents(node: Node, nest: Nest) -> Iterable[tuple[int, int]]:
+    if isinstance(node, Leaf):
+        span = nest.statement(node.statement).span
+        yield span.start, span.end
+    elif isinstance(node, Loop):
+        span = nest.loop(node.of).span
+        yield span.start, span.end
+    elif isinstance(node, Guard):
+        if node.span is not None:
+            yield node.span
+        for inner in node.body:
+            yield from _extents(inner, nest)
+
+
+def statements_in(nodes: Iterable[Node]) -> Iterable[str]:
+    """Ids of all statements of some nodes, in text order."""
+    for node in nodes:
+        if isinstance(node, Leaf):
+            yield node.statement
+        else:
+            yield from statements_in(node.content if isinstance(node, Verbatim) else node.body)
