@@ -139,25 +139,44 @@ class _Aligner:
             return index
         if macro is not None and macro.parameters is None:
             return index + 1
-        if index + 1 >= len(self.live) or self.live[index + 1].text != "(":
-            return index
+        return self._group_end(index + 1) if self._text(index + 1) == "(" else index
+
+    def _text(self, index: int) -> str:
+        return self.live[index].text if index < len(self.live) else ""
+
+    def _group_end(self, index: int) -> int | None:
+        """After the ``)`` of the ``(`` at ``index``."""
         depth = 0
-        for stop in range(index + 1, len(self.live)):
+        for stop in range(index, len(self.live)):
             text = self.live[stop].text
             depth += (text == "(") - (text == ")")
             if depth == 0:
                 return stop + 1
         return None
 
+    def _expanded(self, index: int, stop: int) -> tuple[list[Piece], int] | None:
+        """The expansion of the call at ``index``, and where it ends: an expansion may take its arguments from behind."""
+        for _ in range(8):
+            try:
+                expansion = self.expander.expand_call(
+                    [Piece(token.kind, token.spelling) for token in self.live[index:stop]]
+                )
+            except (CannotExpand, RecursionError):
+                return None
+            if not (expansion and self._text(stop) == "(" and self._takes_arguments(expansion[-1])):
+                return expansion, stop
+            longer = self._group_end(stop)
+            if longer is None:
+                return None
+            stop = longer
+        return None
+
     def _call(self, index: int, stop: int, position: int) -> Origin | None:
-        pieces = [Piece(token.kind, token.spelling) for token in self.live[index:stop]]
-        try:
-            expansion = self.expander.expand_call(pieces)
-        except (CannotExpand, RecursionError):
+        found = self._expanded(index, stop)
+        if found is None:
             return None
-        following = self.live[stop].text if stop < len(self.live) else ""
-        if expansion and following == "(" and self._takes_arguments(expansion[-1]):
-            return None  # the expansion goes on with the text after the call
+        expansion, stop = found
+        pieces = [Piece(token.kind, token.spelling) for token in self.live[index:stop]]
         places = self.own[position : position + len(expansion)]
         if len(places) < len(expansion) or (places and places[-1] - places[0] >= len(places)):
             return None
