@@ -84,7 +84,7 @@ def verify_all(source: Source, nest: Nest, variants: Sequence[Variant],
     with workshop(source, settings) as shop, stoppable():
         bench = _bench(source, nest, variants, settings)
         original, texts = _texts(bench, variants)
-        pairs = [(variant.plan, text) for variant, text in zip(variants, texts)]
+        pairs = list(zip(variants, texts))
         return Verifier(bench, shop, settings).verify(pairs, original, lambda text: None)
 
 
@@ -180,8 +180,7 @@ class _State:
     def _verify(self, original: bytes, texts: list[bytes]) -> None:
         steps = iter(range(1_000_000))
         verifier = Verifier(self.bench, self.shop, self.settings)
-        pairs = [(variant.plan, text) for variant, text in zip(self.variants, texts)]
-        results = verifier.verify(pairs, original, lambda text: self.tell("verify", next(steps), len(texts) + 1, text))
+        results = verifier.verify(list(zip(self.variants, texts)), original, lambda text: self.tell("verify", next(steps), len(texts) + 1, text))
         self.trials = [replace(trial, verification=result, failure=result.failure or _differs(result.difference))
                        for trial, result in zip(self.trials, results)]
 

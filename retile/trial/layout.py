@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from math import prod
 from typing import Any
@@ -38,6 +38,7 @@ class Layout:
     values: dict[str, int]  # integers that have one value, by plain name of their cell
     extents: dict[int, Extent]  # by number of the block
     ranges: dict[str, tuple[int, int]]  # of integers that are used as subscripts
+    alias: tuple[int, int, int] | None = None  # this block lies in that one, so many elements from its begin
 
 
 @dataclass
@@ -308,6 +309,7 @@ def job(layout: Layout, bench: Bench, fills: Mapping[str, str], default: str) ->
     Ways of filling: ``random``, ``zero``, ``diagonal-dominant``, ``positive``.
     """
     lines = [f"block {number} {extent.before} {extent.count} {extent.row}" for number, extent in layout.extents.items()]
+    lines.append("alias {} {} {}".format(*(layout.alias or (-1, -1, 0))))
     memory = bench.kernel.memory
     outs = {variable.name for variable in bench.kernel.outs}
     for cell in memory.cells:
@@ -324,6 +326,27 @@ def job(layout: Layout, bench: Bench, fills: Mapping[str, str], default: str) ->
             mode = "k"
         lines.append(f"cell {cell.number} {mode} {low} {high} {seen}")
     return "\n".join(lines) + "\n"
+
+
+def overlapping(layout: Layout, bench: Bench, first: str, second: str, shift: int) -> Layout | None:
+    """The layout with the memory of one storage laid into that of another, ``shift`` elements from its begin.
+
+    None if they are of different types, or more than plain pointers to elements.
+    """
+    memory = bench.kernel.memory
+    blocks = [memory.blocks[cell.block] for name in (first, second) for cell in memory.cells_of(name)[:1]]
+    if len(blocks) != 2 or blocks[0].number == blocks[1].number or blocks[0].type != blocks[1].type:
+        return None
+    holder, inside = sorted(blocks, key=lambda block: block.number)
+    targets = {link.target for link in memory.links}
+    if any(block.number not in targets or block.number in {link.holder for link in memory.links} or
+           len(block.levels) > 3 or block.count != "0" or sum(block.levels[:-1]) for block in blocks):
+        return None
+    room, needed = layout.extents[holder.number], layout.extents[inside.number]
+    before = max(room.before, needed.before)
+    after = max(room.count - room.before, needed.count - needed.before + shift)
+    extents = {**layout.extents, holder.number: Extent(before, before + after, room.row)}
+    return replace(layout, extents=extents, alias=(inside.number, holder.number, shift))
 
 
 def unknown_fills(bench: Bench, fills: Mapping[str, str]) -> list[str]:

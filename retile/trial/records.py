@@ -27,6 +27,7 @@ class Settings:
     rounds: tuple[int, int] = (6, 1000)  # fewest (six give a 95 % interval) and most
     verify: bool = True
     sanitize: bool = True  # verification builds use the sanitizers where the compiler has them
+    trust: bool = False  # variants are only called where their assumptions hold; do not try others
     limit: int = 600  # seconds after which a hanging run is ended
 
 

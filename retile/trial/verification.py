@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
-from ..model import Plan, RetileError
+from ..model import AssumptionCode, Plan, RetileError, Variant
 from .build import Built, Workshop, can_sanitize, harness, strict_flags
-from .layout import Bench, Layout, job
+from .layout import Bench, Layout, job, overlapping
 from .memory import plain
 from .records import Difference, Settings, Verification
 from .run import Run, run
@@ -24,6 +24,7 @@ class Case:
 
     sizes: dict[str, int]
     layout: Layout
+    overlap: str = ""  # which pointers overlap, in words
 
 
 @dataclass
@@ -66,11 +67,11 @@ class Verifier:
         self.fills = {plain(name): way for name, way in settings.fills}
         self.notes: list[str] = []
 
-    def cases(self, plans: Sequence[Plan]) -> list[Case]:
+    def cases(self, variants: Sequence[Variant]) -> list[Case]:
         """The sizes to verify at, each with its layout; RetileError if there is no case at all."""
         found: list[Case] = []
         problem = "no sizes satisfy what the nest needs"
-        for sizes in verification_sizes(self.bench, plans):
+        for sizes in verification_sizes(self.bench, [variant.plan for variant in variants], self.settings.trust):
             try:
                 layout = self.bench.layout(sizes)
             except RetileError as reason:
@@ -80,21 +81,36 @@ class Verifier:
                 found.append(Case(sizes, layout))
         if not found:
             raise RetileError(f"{self.bench.nest.address}: there is nothing to verify at: {problem}")
+        return found if self.settings.trust else found + self._overlapping(found, variants)
+
+    def _overlapping(self, cases: Sequence[Case], variants: Sequence[Variant]) -> list[Case]:
+        """Cases in which pointers overlap that the variants assume do not: they must notice."""
+        pairs = {assumption.storages for variant in variants if variant.judgement is not None
+                 for assumption in variant.judgement.assumptions
+                 if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2}
+        found = []
+        some = [case for case in cases if self.bench.work(case.sizes) > 0][-2:]
+        for first, second in sorted(pairs):
+            for case in some:
+                for shift in (0, 1):
+                    layout = overlapping(case.layout, self.bench, first, second, shift)
+                    if layout is not None:
+                        found.append(replace(case, layout=layout, overlap=f"{first} and {second} overlap"))
         return found
 
-    def verify(self, texts: Sequence[tuple[Plan, bytes]], original: bytes,
+    def verify(self, texts: Sequence[tuple[Variant, bytes]], original: bytes,
                step: Callable[[str], None]) -> list[Verification]:
         """One verification for each variant's text; ``step`` is told what is done next."""
         baseline = self.workshop.kernel("strict0", original, self.flags)
         if baseline.path is None:
             raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
         candidates = []
-        for number, (plan, text) in enumerate(texts, 1):
-            step(f"build {plan.text}")
-            candidates.append(_Candidate(self.workshop.kernel(f"strict{number}", text, self.flags), plan))
+        for number, (variant, text) in enumerate(texts, 1):
+            step(f"build {variant.plan.text}")
+            candidates.append(_Candidate(self.workshop.kernel(f"strict{number}", text, self.flags), variant.plan))
         for candidate in candidates:
             candidate.failure = candidate.built.complaint
-        cases = self.cases([plan for plan, _ in texts])
+        cases = self.cases([variant for variant, _ in texts])
         fill = self.choose_fill(baseline.path, self.program, max(cases, key=lambda case: self.bench.work(case.sizes)))
         self._run_all(baseline.path, candidates, cases, fill, step)
         return [self._result(candidate, fill) for candidate in candidates]
@@ -184,7 +200,9 @@ class Verifier:
 
     def _result(self, candidate: _Candidate, fill: Fill) -> Verification:
         cases = [case.sizes for case in candidate.passed]
-        notes = [*fill.notes, *self.notes, *uncovered(self.bench.nest, [candidate.plan], cases)]
+        notes = [*fill.notes, *self.notes]
+        if candidate.open:
+            notes += uncovered(self.bench.nest, [candidate.plan], cases)
         if self.settings.sanitize and not self.sanitize:
             notes.append(f"{self.workshop.cc} has no sanitizers here; only the borders of arrays were watched")
         failure = candidate.failure
@@ -213,4 +231,5 @@ def difference_of(bench: Bench, case: Case | None, words: Sequence[str]) -> Diff
 
 
 def _sizes_text(case: Case) -> str:
-    return ", ".join(f"{name} = {value}" for name, value in case.sizes.items()) or "its fixed sizes"
+    sizes = ", ".join(f"{name} = {value}" for name, value in case.sizes.items()) or "its fixed sizes"
+    return f"{sizes}, where {case.overlap}" if case.overlap else sizes
