@@ -204,7 +204,7 @@ class Expressions:
         if node.op == "sizeof":
             typed = isinstance(node.expr, c_ast.Typename)
             type = self._types.of(node.expr, scope) if typed else self.type(node.expr, scope)
-            size = self._string_size(node.expr) or self._types.size_of(type, scope)
+            size = string_size(node.expr) or self._types.size_of(type, scope)
             return None if size is None else (size, self._types.arithmetic.size_type)
         if node.op not in ("+", "-", "~", "!"):
             return None
@@ -215,11 +215,6 @@ class Expressions:
             return int(inner[0] == 0), self._types.arithmetic.int
         type = self._types.promoted(inner[1])
         return _in_range({"+": inner[0], "-": -inner[0], "~": ~inner[0]}[node.op], type)
-
-    @staticmethod
-    def _string_size(node: Any) -> int | None:
-        plain = isinstance(node, c_ast.Constant) and re.fullmatch(r'"[^\\"]*"', node.value, re.ASCII)
-        return len(node.value) - 1 if plain else None
 
     def _constant_BinaryOp(self, node: c_ast.BinaryOp, scope: Scope) -> Value | None:
         left = self.constant(node.left, scope)
@@ -288,6 +283,12 @@ def decayed(type: Type) -> Type:
     if isinstance(type, ArrayOf):
         return PointerTo(type.element, type.element_quals)
     return PointerTo(type) if isinstance(type, FunctionType) else type
+
+
+def string_size(node: Any) -> int | None:
+    """Bytes of a plain string literal with its final zero; None for other nodes and for strings with escapes."""
+    plain = isinstance(node, c_ast.Constant) and re.fullmatch(r'"[^\\"]*"', node.value)
+    return len(node.value) - 1 if plain and node.value.isascii() else None
 
 
 def _converted(value: int, type: CType) -> int:

@@ -13,7 +13,7 @@ from pycparser import c_ast
 from ..model import CType
 from .basic import Arithmetic
 from .dialect import EXTRA_TYPES, LAYOUT_WORDS, TYPE_WORDS
-from .expressions import Expressions
+from .expressions import Expressions, string_size
 from .kinds import ArrayOf, Declared, FunctionType, Member, PointerTo, Scope, StructType, Type, UnknownType, Void
 from .layout import Layout
 from .parse import parse_expression
@@ -198,7 +198,9 @@ class Types:
 
     @staticmethod
     def _completed(type: ArrayOf, init: Any) -> ArrayOf:
-        """``int a[] = {1, 2, 3}`` has three elements."""
+        """``int a[] = {1, 2, 3}`` has three elements, ``char a[] = "abc"`` four."""
+        if isinstance(init, c_ast.Constant) and (size := string_size(init)) is not None:
+            return replace(type, extent=c_ast.Constant("int", str(size), init.coord))
         if not isinstance(init, c_ast.InitList) or any(isinstance(e, c_ast.NamedInitializer) for e in init.exprs):
             return type
         return replace(type, extent=c_ast.Constant("int", str(len(init.exprs)), init.coord))

@@ -20,32 +20,22 @@ typedef __INT16_TYPE__ int16_t;
 typedef __UINT16_TYPE__ uint16_t;
 typedef __INT_LEAST16_TYPE__ int_least16_t;
 typedef __UINT_LEAST16_TYPE__ uint_least16_t;
-typedef __INT_FAST16_TYPE__ int_fast16_t;
-typedef __UINT_FAST16_TYPE__ uint_fast16_t;
 #define INT16_MAX __INT16_MAX__
 #define INT16_MIN (-__INT16_MAX__ - 1)
 #define UINT16_MAX __UINT16_MAX__
 #define INT_LEAST16_MAX __INT_LEAST16_MAX__
 #define INT_LEAST16_MIN (-__INT_LEAST16_MAX__ - 1)
 #define UINT_LEAST16_MAX __UINT_LEAST16_MAX__
-#define INT_FAST16_MAX __INT_FAST16_MAX__
-#define INT_FAST16_MIN (-__INT_FAST16_MAX__ - 1)
-#define UINT_FAST16_MAX __UINT_FAST16_MAX__
 typedef __INT32_TYPE__ int32_t;
 typedef __UINT32_TYPE__ uint32_t;
 typedef __INT_LEAST32_TYPE__ int_least32_t;
 typedef __UINT_LEAST32_TYPE__ uint_least32_t;
-typedef __INT_FAST32_TYPE__ int_fast32_t;
-typedef __UINT_FAST32_TYPE__ uint_fast32_t;
 #define INT32_MAX __INT32_MAX__
 #define INT32_MIN (-__INT32_MAX__ - 1)
 #define UINT32_MAX __UINT32_MAX__
 #define INT_LEAST32_MAX __INT_LEAST32_MAX__
 #define INT_LEAST32_MIN (-__INT_LEAST32_MAX__ - 1)
 #define UINT_LEAST32_MAX __UINT_LEAST32_MAX__
-#define INT_FAST32_MAX __INT_FAST32_MAX__
-#define INT_FAST32_MIN (-__INT_FAST32_MAX__ - 1)
-#define UINT_FAST32_MAX __UINT_FAST32_MAX__
 typedef __INT64_TYPE__ int64_t;
 typedef __UINT64_TYPE__ uint64_t;
 typedef __INT_LEAST64_TYPE__ int_least64_t;
@@ -67,6 +57,30 @@ typedef __UINT_FAST64_TYPE__ uint_fast64_t;
 #define UINT16_C(c) c
 #define INT32_C(c) c
 #define UINT32_C(c) c##U
+/* Clang's macros for the fast types differ from the C library's choice on GNU/Linux: a machine word. */
+#if defined(__clang__) && defined(__gnu_linux__)
+typedef __INTPTR_TYPE__ int_fast16_t;
+typedef __UINTPTR_TYPE__ uint_fast16_t;
+#define INT_FAST16_MAX __INTPTR_MAX__
+#define INT_FAST16_MIN (-__INTPTR_MAX__ - 1)
+#define UINT_FAST16_MAX __UINTPTR_MAX__
+typedef __INTPTR_TYPE__ int_fast32_t;
+typedef __UINTPTR_TYPE__ uint_fast32_t;
+#define INT_FAST32_MAX __INTPTR_MAX__
+#define INT_FAST32_MIN (-__INTPTR_MAX__ - 1)
+#define UINT_FAST32_MAX __UINTPTR_MAX__
+#else
+typedef __INT_FAST16_TYPE__ int_fast16_t;
+typedef __UINT_FAST16_TYPE__ uint_fast16_t;
+#define INT_FAST16_MAX __INT_FAST16_MAX__
+#define INT_FAST16_MIN (-__INT_FAST16_MAX__ - 1)
+#define UINT_FAST16_MAX __UINT_FAST16_MAX__
+typedef __INT_FAST32_TYPE__ int_fast32_t;
+typedef __UINT_FAST32_TYPE__ uint_fast32_t;
+#define INT_FAST32_MAX __INT_FAST32_MAX__
+#define INT_FAST32_MIN (-__INT_FAST32_MAX__ - 1)
+#define UINT_FAST32_MAX __UINT_FAST32_MAX__
+#endif
 typedef __INTPTR_TYPE__ intptr_t;
 typedef __UINTPTR_TYPE__ uintptr_t;
 typedef __INTMAX_TYPE__ intmax_t;
