@@ -102,16 +102,16 @@ class Types:
         while stack:
             node, scope, block = stack.pop()
             table[id(node)] = scope
-            if isinstance(node, (c_ast.Compound, c_ast.For, c_ast.Case, c_ast.Default)):
-                block = node if isinstance(node, (c_ast.Compound, c_ast.For)) else block
+            if isinstance(node, (c_ast.Compound, c_ast.For)):
                 inner = scope
-                for _, child in node.children():
-                    for item in child.decls if isinstance(child, c_ast.DeclList) else (child,):
-                        if isinstance(item, (c_ast.Decl, c_ast.Typedef)):
-                            for key, entry in self._entries(item, inner, "block", block):
-                                inner = inner.with_name(key, entry)
-                        stack.append((item, inner, block))
-                    table[id(child)] = inner
+                for item in _in_order(node):
+                    if isinstance(item, (c_ast.Decl, c_ast.Typedef)):
+                        for key, entry in self._entries(item, inner, "block", node):
+                            inner = inner.with_name(key, entry)
+                    if isinstance(item, _TRANSPARENT):
+                        table[id(item)] = inner
+                    else:
+                        stack.append((item, inner, node))
             else:
                 stack.extend((child, scope, block) for _, child in node.children())
         return scope
@@ -357,6 +357,17 @@ class Types:
         part = parts[max(0, bisect_right(parts, node.coord.number, key=lambda part: part.start) - 1)]
         dropped = self._reading.text.dropped
         return any(part.start <= place <= part.end and word in words for place, word in dropped)
+
+
+_TRANSPARENT = (c_ast.DeclList, c_ast.Case, c_ast.Default)
+
+
+def _in_order(block: Any) -> Iterator[Any]:
+    """The parts of a block in text order; what the parser groups without making a scope comes before its own parts."""
+    for _, child in block.children():
+        yield child
+        if isinstance(child, _TRANSPARENT):
+            yield from _in_order(child)
 
 
 def _kind(node: Any) -> str:
