@@ -1,0 +1,278 @@
+"""Where things stand in the user's nest: headers in their parts, pieces that move, and the comments between them.
+
+Every comment of the nest is either inside a piece of text that moves as a whole, or belongs to a loop: before its
+header, behind its header on the same line, or behind its end.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, field
+
+from ..model import LoopText, Nest
+from ..source.lex import SKIPPED, Token, tokenize
+from ..source.structure import Malformed, Shape, compound
+from ..tree import Guard, Loop, Node, Verbatim
+
+
+class InternalError(Exception):
+    """retile contradicts itself: a defect of retile, never of the user's program.  Nothing has been written."""
+
+
+@dataclass(frozen=True)
+class Header:
+    """The text of a ``for`` header, cut into its parts."""
+
+    opening: str  # ``for (``, with the user's blanks
+    first: str  # ``int i = 0``
+    condition: str
+    advance: str
+    closing: str  # ``)``, with the user's blanks before it
+
+    @property
+    def variable(self) -> str:
+        """What stands before the ``=`` of the first part: ``int i`` or ``i``."""
+        return self.first.partition("=")[0].rstrip()
+
+
+@dataclass
+class Remarks:
+    """The extents of the comments that belong to one loop."""
+
+    before: list[tuple[int, int]] = field(default_factory=list)
+    behind: list[tuple[int, int]] = field(default_factory=list)  # on the line of the header
+    after: list[tuple[int, int]] = field(default_factory=list)  # behind the end of the loop
+
+
+class NestText:
+    """The user's text of a nest and its structure."""
+
+    def __init__(self, text: str, nest: Nest, tree: tuple[Node, ...]) -> None:
+        self.text = text
+        self._nest = nest
+        offset = nest.span.start
+        shifted = (token._replace(start=token.start + offset, end=token.end + offset)
+                   for token in tokenize(text[offset:nest.span.end]))
+        self._tokens: tuple[Token, ...] = tuple(shifted)
+        self._solid = tuple(token for token in self._tokens if token.kind not in SKIPPED)
+        try:
+            self._root = compound([token.spelling for token in self._solid], 0)
+        except Malformed as error:
+            raise InternalError(f"{nest.address}: the text of the nest is not one statement") from error
+        self._shapes = {self._start(shape): shape for shape in _shapes(self._root) if shape.kind == "for"}
+        named = {node.symbol for node in _nodes(tree) if isinstance(node, Loop)}
+        self._named = {loop.span.start for loop in nest.loops if loop.id in named}
+        guards = {node.span[0] for node in _nodes(tree) if isinstance(node, Guard) and node.span is not None}
+        self._guards = guards
+        self._spans = {node.span for node in _nodes(tree) if isinstance(node, Verbatim)}
+        self._pieces = {span: self._widened(span) for span in self._spans}
+
+    # ---------------------------------------------------------------- extents
+
+    def _start(self, shape: Shape) -> int:
+        return self._solid[shape.start].start
+
+    def _end(self, shape: Shape) -> int:
+        return self._solid[shape.end].end
+
+    def loop_shape(self, loop: LoopText) -> Shape:
+        """The shape of a loop of the nest."""
+        return self._shapes[loop.span.start]
+
+    def header(self, loop: LoopText) -> Header:
+        """A loop's header in its parts."""
+        _, opening, first, second, end = self.loop_shape(loop).marks
+        init, condition, advance = (self.between(left, right) for left, right in
+                                    ((opening, first), (first, second), (second, end)))
+        start = self._solid[opening].end
+        inner = self.text[start:self._solid[end].start]
+        left = " " if inner.startswith(" ") else ""
+        right = " " if inner.endswith(" ") and advance else ""
+        return Header(self.text[loop.span.start:start] + left, init, condition, advance, right + ")")
+
+    def between(self, before: int, after: int) -> str:
+        """The text between two solid tokens, without comments and blanks at the ends."""
+        inside = range(before + 1, after)
+        if not inside:
+            return ""
+        return self.text[self._solid[inside[0]].start:self._solid[inside[-1]].end]
+
+    def braced(self, loop: LoopText) -> bool:
+        """True if the user put the loop's body in braces."""
+        return self.loop_shape(loop).children[0].kind == "compound"
+
+    def piece(self, node: Verbatim) -> tuple[int, int]:
+        """The extent of the whole statements that a piece stands for, with the comments that go with them."""
+        return self._pieces[node.span]
+
+    def statement_count(self, node: Verbatim) -> int:
+        """How many statements a piece has; a comment before the first one counts as one, so that braces show it."""
+        start, end = self.piece(node)
+        siblings, _, _ = self._siblings(node.span)
+        inside = [shape for shape in siblings if start <= self._start(shape) < end]
+        return len(inside) + (self._start(inside[0]) > start)
+
+    def _widened(self, span: tuple[int, int]) -> tuple[int, int]:
+        siblings, opening, closing = self._siblings(span)
+        inside = [shape for shape in siblings if self._end(shape) > span[0] and self._start(shape) < span[1]]
+        if not inside:
+            raise InternalError(f"{self._nest.address}: a piece of the nest is not made of whole statements")
+        first, last = siblings.index(inside[0]), siblings.index(inside[-1])
+        # statements that no piece names (declarations, empty ones) go with the piece behind them, or else before them
+        while first > 0 and not self._taken(siblings[first - 1]):
+            first -= 1
+        if not self._followed(siblings, last + 1):
+            last += self._free(siblings, last + 1)
+        start, end = self._start(siblings[first]), self._end(siblings[last])
+        if opening is not None and closing is not None:
+            before = self._end(siblings[first - 1]) if first else self._solid[opening].end
+            after = self._start(siblings[last + 1]) if last + 1 < len(siblings) else self._solid[closing].start
+            start, end = self._with_comments(start, end, before, after, last + 1 == len(siblings))
+        return start, end
+
+    def _taken(self, shape: Shape) -> bool:
+        """True if a loop of the plan or a piece of text stands in a statement."""
+        return self._holds_named(shape) or any(self._start(shape) <= start < self._end(shape) for start, _ in self._spans)
+
+    def _free(self, siblings: tuple[Shape, ...], at: int) -> int:
+        """How many statements from a place on belong to no piece."""
+        taken = [number for number in range(at, len(siblings)) if self._taken(siblings[number])]
+        return (taken[0] if taken else len(siblings)) - at
+
+    def _followed(self, siblings: tuple[Shape, ...], at: int) -> bool:
+        """True if the next statement that is taken is a piece, which takes the free ones before it along."""
+        at += self._free(siblings, at)
+        return at < len(siblings) and not self._holds_named(siblings[at])
+
+    def _siblings(self, span: tuple[int, int]) -> tuple[tuple[Shape, ...], int | None, int | None]:
+        """The statements of the innermost block of the nest that moves and holds the span, with its braces."""
+        shape = self._root
+        while True:
+            if shape.kind == "compound":
+                inner = next((child for child in shape.children if self._covers(child, span)
+                              and self._holds_named(child)), None)
+                if inner is None:
+                    return shape.children, shape.start, shape.end
+            elif shape.kind in ("for", "if") and self._moves(shape):
+                inner = next((child for child in shape.children if self._covers(child, span)), None)
+                if inner is None:
+                    return (shape,), None, None
+            else:
+                return (shape,), None, None
+            shape = inner
+
+    def _covers(self, shape: Shape, span: tuple[int, int]) -> bool:
+        return self._start(shape) <= span[0] and span[1] <= self._end(shape)
+
+    def _moves(self, shape: Shape) -> bool:
+        if shape.kind == "for":
+            return self._start(shape) in self._named
+        return self._solid[shape.marks[1] + 1].start in self._guards or self._holds_named(shape)
+
+    def _holds_named(self, shape: Shape) -> bool:
+        return any(self._start(inner) in self._named for inner in _shapes(shape) if inner.kind == "for")
+
+    def _with_comments(self, start: int, end: int, before: int, after: int, at_end: bool) -> tuple[int, int]:
+        """A piece with the comments before it, but not those on the line of the brace, and those behind it."""
+        for token in reversed(self._comments(before, start)):
+            if "\n" in self.text[before:token.start]:
+                start = token.start
+        for token in self._comments(end, after):
+            if at_end or "\n" not in self.text[end:token.start]:
+                end = token.end
+        return start, end
+
+    # ---------------------------------------------------------------- comments
+
+    def _comments(self, start: int, end: int) -> list[Token]:
+        return [token for token in self._tokens if token.kind == "comment" and start <= token.start < end]
+
+    def remarks(self, kept_headers: Iterable[str]) -> dict[str, Remarks]:
+        """The comments outside all pieces, by the id of the loop that they belong to.
+
+        ``kept_headers``: ids of the loops whose headers are printed with the comments in them.
+        """
+        kept = [(loop.header.start, loop.header.end) for loop in self._nest.loops if loop.id in set(kept_headers)]
+        covered = [*self._pieces.values(), *kept]
+        found: dict[str, Remarks] = defaultdict(Remarks)
+        for token in self._tokens:
+            if token.kind in ("comment", "directive") and not any(a <= token.start < b for a, b in covered):
+                if token.kind == "directive":
+                    raise InternalError(f"{self._nest.address}: a directive stands between the loops")
+                self._assign(token, found)
+        return found
+
+    def _assign(self, token: Token, found: dict[str, Remarks]) -> None:
+        extent = (token.start, token.end)
+        loops = [loop for loop in self._nest.loops if loop.span.start in self._named]
+        ended = [loop for loop in loops if loop.span.end <= token.start]
+        holding = [loop for loop in loops if loop.span.start <= token.start < loop.span.end]
+        owner = holding[-1] if holding else loops[0]
+        following = next((loop for loop in loops if loop.span.start >= token.start), None)
+        last = max(ended, key=lambda loop: loop.span.end, default=None)
+        if last is not None and "\n" not in self.text[last.span.end:token.start]:
+            found[last.id].after.append(extent)
+        elif owner.header.end <= token.start and "\n" not in self.text[owner.header.end:token.start] \
+                or token.start < owner.header.end:
+            found[owner.id].behind.append(extent)
+        elif following is not None and following.span.end <= owner.span.end:
+            found[following.id].before.append(extent)
+        elif last is not None and last.span.start >= owner.span.start:
+            found[last.id].after.append(extent)
+        else:
+            found[owner.id].behind.append(extent)
+
+    # ---------------------------------------------------------------- moving
+
+    def indentation(self, offset: int) -> str:
+        """The blanks at the start of the line of an offset."""
+        line = self.text[self.text.rfind("\n", 0, offset) + 1:offset]
+        return line[:len(line) - len(line.lstrip(" \t"))]
+
+    def moved(self, extent: tuple[int, int], indent: str) -> str:
+        """A piece of text with its lines moved to another indentation, its first line without any.
+
+        Lines inside string literals and directives stay where they are; a comment moves as a whole or not at all.
+        """
+        start, end = extent
+        old = self.indentation(start)
+        text = self.text[start:end]
+        if old == indent or "\n" not in text:
+            return text
+        fixed = self._fixed_lines(start, end, old)
+        lines: list[str] = []
+        offset = start
+        for line in text.split("\n"):
+            movable = offset > start and offset not in fixed and line.startswith(old) and line.strip()
+            lines.append(indent + line[len(old):] if movable else line)
+            offset += len(line) + 1
+        return "\n".join(lines)
+
+    def _fixed_lines(self, start: int, end: int, old: str) -> set[int]:
+        """Offsets of the starts of lines that must not be moved."""
+        fixed: set[int] = set()
+        for token in self._tokens:
+            if not start <= token.start < end or token.kind == "blank":
+                continue
+            starts = [token.start + at + 1 for at, character in enumerate(token.text) if character == "\n"]
+            lines = [self.text[at:token.end] for at in starts]
+            if token.kind == "directive":
+                fixed.add(self.text.rfind("\n", 0, token.start) + 1)
+            if token.kind != "comment" or not all(line.startswith(old) for line in lines if line.strip()):
+                fixed.update(starts)
+        return fixed
+
+
+def _shapes(shape: Shape) -> Iterator[Shape]:
+    yield shape
+    for child in shape.children:
+        yield from _shapes(child)
+
+
+def _nodes(nodes: Iterable[Node]) -> Iterator[Node]:
+    """The nodes of a tree, without what is inside pieces of text."""
+    for node in nodes:
+        yield node
+        if isinstance(node, Loop | Guard):
+            yield from _nodes(node.body)

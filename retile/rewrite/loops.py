@@ -1,0 +1,551 @@
+"""Loop headers in C: the user's own where nothing changed, chunk loops and cut loops in the user's way of writing.
+
+    for (int k = 0; k < n; k++)                       the user's
+    for (long long k_from = 0; k_from < n; k_from += 64) {
+        const int k_to = k_from + 64 < n ? (int)(k_from + 64) : n;
+        for (int k = (int)k_from; k < k_to; k++)
+
+A chunk loop's variable has the user's type if its last step is sure to fit, else a wider one.  Where there is none, the
+step goes to the next chunk's first value, which is computed from what is left and cannot wrap:
+
+    for (size_t k_from = 0, k_to; k_from < n; k_from = k_to) {
+        k_to = n - k_from > 64 ? k_from + 64 : n;
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+
+from ..affine import Affine, AllOf, AnyOf, Bound, Formula, at_most, equal, less, map_bound
+from ..model import CType, LoopText, Nest
+from ..tree import Loop, Role, loops_of
+from .bounds import Limit, extremum_of, far_bound, half_open, members, named, near_bound, needed, on_grid
+from .expression import (CHOICE, INT, LONG_LONG, SUM, Expression, NoRoom, Scope, common, comparison, converted, express,
+                         promoted, same_values, written)
+from .layout import NestText
+from .names import Names
+
+
+@dataclass(frozen=True)
+class Place:
+    """A place in the variant: what is known there, which local constants there are, which loops stand around."""
+
+    scope: Scope
+    limits: tuple[Limit, ...] = ()
+    around: frozenset[str] = frozenset()  # ids of the source loops whose iterators have their values here
+
+
+@dataclass(frozen=True)
+class Opened:
+    """A loop ready to be printed, but for its body."""
+
+    before: tuple[str, ...]  # declarations ahead of it
+    header: str
+    first: tuple[str, ...]  # declarations at the start of its body
+    outside: Place  # after it: the declarations ahead of it stay
+    inside: Place
+    kept: bool = False  # the header is the user's, byte for byte
+
+
+@dataclass
+class Locals:
+    """Declarations under way."""
+
+    place: Place
+    lines: list[str] = field(default_factory=list)
+
+
+def step_of(loop: Loop) -> Affine:
+    """The signed distance between two iterations, in units of the C variable."""
+    return loop.length if loop.step > 0 else -loop.length
+
+
+class Loops:
+    """Writes the headers of one variant."""
+
+    def __init__(self, nest: Nest, layout: NestText, names: Names, tree: tuple) -> None:
+        self._nest = nest
+        self._layout = layout
+        self._names = names
+        self._chosen: dict[object, str] = {}
+        self._ids = {loop.id for loop in nest.loops}
+        self._source = {loop.of: loop for loop in loops_of(nest.tree)}
+        self._deepest: dict[str, int] = {}
+        for loop in loops_of(tree):
+            if loop.role is Role.CHUNK:
+                base = self._base(loop)
+                self._deepest[base] = max(loop.level, self._deepest.get(base, 0))
+
+    # ---------------------------------------------------------------- names
+
+    def _base(self, loop: Loop) -> str:
+        """What a loop's names are made of: the user's iterator, or those of a skewed sum."""
+        form = loop.symbol.rpartition(":")[0] if loop.role is Role.CHUNK else loop.symbol
+        words = re.findall(r"[A-Za-z_$][\w$]*(?:@\d+(?::\d+)?)?", form)
+        ids = [word for word in words if word in self._ids] or [loop.of]
+        return "_".join(self._nest.loop(id).iterator for id in ids)
+
+    def _name(self, key: object, wanted: str) -> str:
+        if key not in self._chosen:
+            self._chosen[key] = self._names.fresh(wanted)
+        return self._chosen[key]
+
+    def _chunk_name(self, loop: Loop, word: str) -> str:
+        return self._name((loop.symbol, word), self._wanted(loop, word))
+
+    def _wanted(self, loop: Loop, word: str) -> str:
+        """``k_from``; the outer ones of several levels carry their size: ``k_from_96``."""
+        base = self._base(loop)
+        outer = loop.role is Role.CHUNK and loop.level < self._deepest[base]
+        return f"{base}_{word}" + (f"_{loop.named or loop.size}" if outer else "")
+
+    def _limit_name(self, loop: Loop, ends: frozenset[Affine], chunk: Loop | None, word: str) -> str:
+        owner = chunk or loop
+        return self._name((owner.symbol, word, ends), self._wanted(owner, word))
+
+    # ---------------------------------------------------------------- which way
+
+    def open(self, loop: Loop, place: Place) -> Opened:
+        """A loop's header and the declarations around it; raises NoRoom."""
+        place = self._reached(loop, place)
+        if loop.role is Role.CHUNK:
+            return self._chunk(loop, place)
+        if loop.symbol in self._ids:
+            source = self._nest.loop(loop.symbol)
+            if self.unchanged(loop):
+                inside = self._entered(loop, place, Expression(source.iterator, source.type))
+                text = self._layout.text[source.header.start:source.header.end]
+                return Opened((), text, (), place, inside, kept=True)
+            return self._element(loop, source, place)
+        return self._sum(loop, place)
+
+    def unchanged(self, loop: Loop) -> bool:
+        """True if a tree loop is a source loop with its own bounds: the header stays byte for byte."""
+        own = self._source[loop.symbol]
+        return (loop.lower, loop.upper, loop.step) == (own.lower, own.upper, own.step) and \
+            (abs(loop.step) == 1 or loop.origin == own.origin)
+
+    def _entered(self, loop: Loop, place: Place, variable: Expression) -> Place:
+        scope = place.scope.naming(loop.symbol, variable, loop.constraints())
+        around = place.around | {loop.symbol} if loop.symbol in self._ids else place.around
+        return Place(scope, place.limits, around)
+
+    def _reached(self, loop: Loop, place: Place) -> Place:
+        """Where the original runs this loop too, the value with which it ends fits its variable."""
+        source = self._nest.loop(loop.of)
+        if not set(source.outer) <= place.around or source.relation not in ("<=", ">=") or abs(source.step) != 1:
+            return place
+        if not isinstance(source.last, Affine) or not isinstance(source.first, Affine):
+            return place
+        if source.step > 0:
+            fact = AnyOf((less(source.last, source.type.largest), less(source.last, source.first)))
+        else:
+            fact = AnyOf((less(Affine((), source.type.smallest), source.last), less(source.first, source.last)))
+        return replace(place, scope=place.scope.knowing(fact))
+
+    # ---------------------------------------------------------------- what the user wrote
+
+    def _shift(self, source: LoopText) -> int:
+        return 1 if source.relation == "-->" else 0
+
+    def _user_text(self, source: LoopText, form: Affine, text: str, place: Place) -> Expression | None:
+        """The user's text for a form where evaluating it is as safe as it was; its type is that of its operands."""
+        if not form.is_constant and not place.scope.sees(form.names()):
+            return None
+        type = self._text_type(form, source, place.scope)
+        expression = written(text, type)
+        if set(source.outer) <= place.around or re.fullmatch(r"\w+", text):
+            return expression
+        try:
+            express(form, place.scope, wide=False)
+        except NoRoom:
+            return None
+        return expression
+
+    def _text_type(self, form: Affine, source: LoopText, scope: Scope) -> CType:
+        type = source.type if form.is_constant else INT
+        for name in form.names():
+            if name in scope.operands:
+                type = common(type, scope.operands[name].type)
+        return type
+
+    def _aliases(self, source: LoopText, place: Place) -> dict[Affine, Expression]:
+        """How the user writes the end of a loop, half-open or not as the user's comparison has it."""
+        if not isinstance(source.last, Affine) or not source.bound_text:
+            return {}
+        exact = source.relation in ("<=", ">=")
+        form = source.last if exact else half_open(source.last, source.step > 0, self._shift(source))
+        text = self._user_text(source, form, source.bound_text, place)
+        return {} if text is None else {form: text}
+
+    def _first_text(self, source: LoopText, form: Affine, place: Place, type: CType) -> Expression:
+        """The first value, in terms of the C variable: the user's text if it is the source loop's own."""
+        own = source.first + self._shift(source) if isinstance(source.first, Affine) else None
+        text = self._layout.header(source).first.partition("=")[2].strip()
+        if own == form and text and (found := self._user_text(source, form, text, place)) is not None:
+            return found if same_values(type, source.type) else self._as(found, type, form, place.scope)
+        return self.in_type(form, type, place.scope)
+
+    def _as(self, expression: Expression, type: CType, form: Affine, scope: Scope) -> Expression:
+        """An initializer may widen by itself."""
+        wider = promoted(type).bits >= promoted(expression.type).bits
+        return replace(expression, type=type) if wider else converted(expression, type)
+
+    def in_type(self, form: Affine, type: CType, scope: Scope) -> Expression:
+        """A form computed in a type where that is safe, so that compilers see distances; else converted to it."""
+        if scope.fits(form, type):
+            cast = {name: converted(e, type) if scope.fits(Affine.of(name), type) and e.type.bits > type.bits else e
+                    for name, e in scope.operands.items()}
+            for operands in (scope.operands, cast):
+                try:
+                    inner = Scope(scope.region, operands, scope.meanings)
+                    found = express(form, inner, wide=False)
+                except NoRoom:
+                    continue
+                if same_values(promoted(found.type), promoted(type)):
+                    return found
+        return converted(express(form, scope), type)
+
+    # ---------------------------------------------------------------- bounds
+
+    def _forms(self, bounds: tuple[Bound, ...], loop: Loop, work: Locals, type: CType) -> tuple[Affine, ...]:
+        """The bounds as forms; a min among maxima, or the reverse, gets a local of its own."""
+        forms: list[Affine] = []
+        for bound in bounds:
+            if isinstance(bound, Affine):
+                forms.append(bound)
+                continue
+            inner = self._forms(members(bound, bound.kind), loop, work, type)
+            inner = needed(inner, bound.kind, work.place.scope)
+            forms.append(self._local(loop, inner, bound.kind, work, type, "bound"))
+        return tuple(forms)
+
+    def _local(self, loop: Loop, forms: tuple[Affine, ...], kind: str, work: Locals, type: CType, word: str,
+               chunk: Loop | None = None, aliases: Mapping[Affine, Expression] | None = None) -> Affine:
+        """The min or max of forms, as a local constant if they are several."""
+        if len(forms) == 1:
+            return forms[0]
+        limit = Limit("", kind == "min", frozenset(forms))
+        name = self._limit_name(loop, limit.ends, chunk, word)
+        limit = replace(limit, symbol=f"= {name}")
+        scope = work.place.scope.naming(limit.symbol, Expression(name, type), limit.definition())
+        value = Affine.of(limit.symbol)
+        if not scope.fits(value, type) and not (chunk is not None or word == "to"):
+            type = LONG_LONG
+            if not scope.fits(value, type):
+                raise NoRoom(name)
+            scope = work.place.scope.naming(limit.symbol, Expression(name, type), limit.definition())
+        work.lines += self._declared(name, forms, kind, work.place.scope, type, aliases or {})
+        work.place = Place(scope, (*work.place.limits, limit), work.place.around)
+        return value
+
+    def _declared(self, name: str, forms: tuple[Affine, ...], kind: str, scope: Scope, type: CType,
+                  aliases: Mapping[Affine, Expression]) -> list[str]:
+        """The declaration of the min or max of two or more forms."""
+        text = self._chosen_of(forms[0], forms[1], kind, scope, type, aliases)
+        if len(forms) == 2:
+            return [f"const {type.spelling} {name} = {text.text};"]
+        lines = [f"{type.spelling} {name} = {text.text};"]
+        so_far = extremum_of(f"= {name}", kind, forms[:2])
+        scope = scope.naming(f"= {name}", Expression(name, type), so_far)
+        value = Affine.of(f"= {name}")
+        for form in forms[2:]:
+            better = comparison(form, "<" if kind == "min" else ">", value, scope, aliases)
+            lines += [f"if ({better.text})", f"\x01{name} = {self._branch(form, scope, type, aliases).text};"]
+            known = extremum_of(f"= {name}", kind, forms[:forms.index(form) + 1])
+            scope = scope.forgetting(f"= {name}").naming(f"= {name}", Expression(name, type), known)
+        return lines
+
+    def _chosen_of(self, a: Affine, b: Affine, kind: str, scope: Scope, type: CType,
+                   aliases: Mapping[Affine, Expression]) -> Expression:
+        """``a < b ? a : b`` in a type."""
+        sign = "<" if kind == "min" else ">"
+        test = comparison(a, sign, b, scope, aliases)
+        taken = less(a, b) if kind == "min" else less(b, a)
+        left = self._branch(a, scope.knowing(taken), type, aliases)
+        right = self._branch(b, scope.knowing(at_most(b, a) if kind == "min" else at_most(a, b)), type, aliases)
+        return Expression(f"{test.text} ? {left.at(CHOICE + 1)} : {right.at(CHOICE)}", type, CHOICE)
+
+    def _branch(self, form: Affine, scope: Scope, type: CType, aliases: Mapping[Affine, Expression]) -> Expression:
+        alias = aliases.get(form)
+        return converted(alias, type) if alias is not None else self.in_type(form, type, scope)
+
+    # ---------------------------------------------------------------- elements
+
+    def _element(self, loop: Loop, source: LoopText, place: Place) -> Opened:
+        """A source loop with bounds of its own, in the user's variable and style."""
+        upward, shift = loop.step > 0, self._shift(source)
+        work = Locals(place)
+        header = self._layout.header(source)
+        near = self._near(loop, work, source.type)
+        end = self._end(loop, source, work, upward, shift)
+        start = self._start_text(loop, source, near, work, shift)
+        test = self._test(source, end, loop, work.place, upward)
+        inside = self._entered(loop, work.place, Expression(source.iterator, source.type))
+        advance = header.advance if abs(loop.step) == abs(source.step) else \
+            f"{source.iterator} {'+' if upward else '-'}= {abs(loop.step)}"
+        text = f"{header.opening}{header.variable} = {start.text}; {test}; {advance}{header.closing}"
+        return Opened(tuple(work.lines), text, (), work.place, inside)
+
+    def _near(self, loop: Loop, work: Locals, type: CType) -> tuple[Affine, ...]:
+        kind = "max" if loop.step > 0 else "min"
+        bounds = self._forms(members(near_bound(loop), kind), loop, work, type)
+        scope = work.place.scope
+        return needed(tuple(on_grid(form, loop, scope) for form in bounds), kind, scope)
+
+    def _start_text(self, loop: Loop, source: LoopText, near: tuple[Affine, ...], work: Locals, shift: int) -> Expression:
+        """The first value; two candidates are compared in place, more get a local."""
+        kind = "max" if loop.step > 0 else "min"
+        moved = tuple(form + shift for form in near)
+        if len(moved) == 1:
+            return self._first_text(source, moved[0], work.place, source.type)
+        if len(moved) == 2:
+            return self._chosen_of(moved[0], moved[1], kind, work.place.scope, source.type, {})
+        form = self._local(loop, moved, kind, work, source.type, "first")
+        return self.in_type(form, source.type, work.place.scope)
+
+    def _end(self, loop: Loop, source: LoopText, work: Locals, upward: bool, shift: int) -> Affine:
+        """The half-open end as one form, with a local constant where there are several."""
+        kind = "min" if upward else "max"
+        bounds = self._forms(members(far_bound(loop), kind), loop, work, source.type)
+        ends = tuple(half_open(form, upward, shift) for form in bounds)
+        ends = needed(named(ends, work.place.limits, upward), kind, work.place.scope)
+        return self._local(loop, ends, kind, work, source.type, "to", aliases=self._ends_written(source, work.place))
+
+    def _ends_written(self, source: LoopText, place: Place) -> dict[Affine, Expression]:
+        return {form: text for form, text in self._aliases(source, place).items()
+                if source.relation not in ("<=", ">=")}
+
+    def _test(self, source: LoopText, end: Affine, loop: Loop, place: Place, upward: bool) -> str:
+        """The comparison that lets the loop go on."""
+        scope = self._entered(loop, place, Expression(source.iterator, source.type)).scope
+        variable = Expression(source.iterator, source.type)
+        aliases = self._aliases(source, place)
+        inclusive = end - 1 if upward else end + 1
+        if source.relation in ("<=", ">=") and (inclusive in aliases or not self._is_limit(end, place)):
+            right = aliases.get(inclusive) or self._in_type_or_wider(inclusive, source.type, place.scope)
+            return f"{source.iterator} {source.relation} {self._matching(right, variable, inclusive, scope).at(SUM)}"
+        right = aliases.get(end) or self._in_type_or_wider(end, source.type, place.scope)
+        sign = "<" if upward else ">"
+        left = f"{source.iterator}--" if source.relation == "-->" else source.iterator
+        return f"{left} {sign} {self._matching(right, variable, end, scope).at(SUM)}"
+
+    def _is_limit(self, form: Affine, place: Place) -> bool:
+        return any(form.coefficient(limit.symbol) for limit in place.limits)
+
+    def _in_type_or_wider(self, form: Affine, type: CType, scope: Scope) -> Expression:
+        return self.in_type(form, type, scope) if scope.fits(form, type) else express(form, scope)
+
+    def _matching(self, side: Expression, variable: Expression, form: Affine, scope: Scope) -> Expression:
+        """A side of a comparison with the variable, converted where signs would clash."""
+        a, b = promoted(side.type), promoted(variable.type)
+        if a.signed == b.signed or common(a, b).signed or side.text.isdigit():
+            return side
+        return converted(side, variable.type)
+
+    def _sum(self, loop: Loop, place: Place) -> Opened:
+        """A loop over a skewed sum, which has no variable in the user's text."""
+        work = Locals(place)
+        source = self._nest.loop(loop.of)
+        name = self._name(loop.symbol, self._base(loop))
+        kind = "max" if loop.step > 0 else "min"
+        near = self._near(loop, work, LONG_LONG)
+        type = self._wide_enough(loop, place.scope, source.type, near, 0)
+        start = self._local(loop, near, kind, work, type, "first")
+        upward = loop.step > 0
+        far = self._forms(members(far_bound(loop), "min" if upward else "max"), loop, work, type)
+        ends = tuple(half_open(form, upward, 0) for form in far)
+        ends = needed(named(ends, work.place.limits, upward), "min" if upward else "max", work.place.scope)
+        end = self._local(loop, ends, "min" if upward else "max", work, type, "end")
+        variable = Expression(name, type)
+        inside = self._entered(loop, work.place, variable)
+        test = comparison(Affine.of(loop.symbol), "<" if upward else ">", end, inside.scope)
+        step = self._step(name, loop)
+        first = self.in_type(start, type, work.place.scope).text
+        opening = self._layout.header(source).opening
+        return Opened(tuple(work.lines), f"{opening}{type.spelling} {name} = {first}; {test.text}; {step})", (),
+                      work.place, inside)
+
+    @staticmethod
+    def _step(name: str, loop: Loop) -> str:
+        if loop.length == Affine((), 1):
+            return f"{name}{'++' if loop.step > 0 else '--'}"
+        length = str(abs(loop.step)) if loop.named is None else loop.named
+        if loop.named is not None and abs(loop.step) != 1:
+            length = f"{abs(loop.step)} * {loop.named}"
+        return f"{name} {'+' if loop.step > 0 else '-'}= {length}"
+
+    def _wide_enough(self, loop: Loop, scope: Scope, type: CType, starts: tuple[Affine, ...], shift: int) -> CType:
+        """The user's type, or a wider one, for a variable that also holds the value after the last; raises NoRoom."""
+        inside = scope.naming(loop.symbol, Expression("", type), loop.constraints())
+        value = Affine.of(loop.symbol) + shift
+        for candidate in (*([type] if type.bits >= INT.bits else [type, INT]), LONG_LONG):
+            if all(inside.fits(form, candidate) for form in (value, value + step_of(loop))) and \
+                    all(scope.fits(form + shift, candidate) for form in starts):
+                return candidate
+        raise NoRoom(str(value + step_of(loop)))
+
+    # ---------------------------------------------------------------- chunks
+
+    def _chunk(self, loop: Loop, place: Place) -> Opened:
+        """A loop from chunk to chunk, with the end of the chunk where the loops inside want it."""
+        source = self._nest.loop(loop.of)
+        skewed = "(" in loop.symbol
+        shift = 0 if skewed else self._shift(source)
+        work = Locals(place)
+        near = self._near(loop, work, LONG_LONG if skewed else source.type)
+        upward, kind = loop.step > 0, "min" if loop.step > 0 else "max"
+        far = self._forms(members(far_bound(loop), kind), loop, work, source.type)
+        ends = tuple(half_open(form, upward, shift) for form in far)
+        ends = needed(named(ends, work.place.limits, upward), kind, work.place.scope)
+        aliases = {} if skewed else self._ends_written(source, work.place)
+        end = self._local(loop, ends, kind, work, source.type, "end", aliases=aliases)
+        making = _Chunk(loop, source, near, end, shift, skewed, work)
+        if shift or not self._has_room(making):
+            advancing = self._advancing(making)
+            if advancing is not None:
+                return advancing
+        return self._stepping(making)
+
+    def _has_room(self, making: _Chunk) -> bool:
+        try:
+            self._wide_enough(making.loop, making.work.place.scope, making.source.type, making.near, making.shift)
+        except NoRoom:
+            return False
+        return True
+
+    def _stepping(self, making: _Chunk) -> Opened:
+        """``for (long long k_from = 0; k_from < n; k_from += 64)``; raises NoRoom."""
+        loop, source, work = making.loop, making.source, making.work
+        type = self._wide_enough(loop, work.place.scope, source.type, making.near, making.shift)
+        name = self._chunk_name(loop, "from")
+        inside = self._with_variable(making, Expression(name, type), loop.constraints())
+        start = self._chunk_start(making, type)
+        test = self._chunk_test(making, Expression(name, type), loop.length)
+        header = f"{self._layout.header(source).opening}{type.spelling} {name} = {start}; {test}; " \
+                 f"{self._step(name, loop)})"
+        body = Locals(inside)
+        self._end_of_chunk(making, body)
+        return Opened(tuple(work.lines), header, tuple(body.lines), work.place, body.place)
+
+    def _advancing(self, making: _Chunk) -> Opened | None:
+        """``for (size_t k_from = 0, k_to; k_from < n; k_from = k_to)``; None if the chunk's end is not known here."""
+        loop, source, work = making.loop, making.source, making.work
+        type = self._advancing_type(making)
+        if type is None:
+            return None
+        name = self._chunk_name(loop, "from")
+        inside = self._with_variable(making, Expression(name, type), loop.constraints())
+        chunk_end = Affine.of(loop.symbol) + step_of(loop) + making.shift
+        inner, ends = self._next_ends(making, inside)
+        upward = loop.step > 0
+        kind = "min" if upward else "max"
+        if inner is None or not inside.scope.knowing(extremum_of("~", kind, (chunk_end, making.end))).implies(
+                extremum_of("~", kind, ends)):
+            return None
+        limit = Limit("", upward, frozenset(ends))
+        to = self._limit_name(inner, limit.ends, loop, "to")
+        limit = replace(limit, symbol=f"= {to}")
+        aliases = self._ends_written(source, inside)
+        value = self._chosen_of(chunk_end, making.end, kind, inside.scope, type, aliases)
+        start, test = self._chunk_start(making, type), self._chunk_test(making, Expression(name, type), None)
+        scope = inside.scope.naming(limit.symbol, Expression(to, type), limit.definition())
+        header = f"{self._layout.header(source).opening}{type.spelling} {name} = {start}, {to}; {test}; {name} = {to})"
+        return Opened(tuple(work.lines), header, (f"{to} = {value.text};",), work.place,
+                      Place(scope, (*inside.limits, limit), inside.around))
+
+    def _advancing_type(self, making: _Chunk) -> CType | None:
+        scope = making.work.place.scope
+        try:
+            bound = express(making.end, scope, wide=False).type
+        except NoRoom:
+            bound = making.source.type
+        inside = scope.naming(making.loop.symbol, Expression("", bound), making.loop.constraints())
+        value = Affine.of(making.loop.symbol) + making.shift
+        for type in (making.source.type, bound):
+            if inside.fits(value, type) and inside.fits(making.end, type) and \
+                    all(scope.fits(form + making.shift, type) for form in making.near):
+                return type
+        return None
+
+    def _with_variable(self, making: _Chunk, variable: Expression, *facts: Formula) -> Place:
+        """The place with the chunk's C variable, which may be one ahead of the first value of the chunk."""
+        place, symbol = making.work.place, making.loop.symbol
+        if not making.shift:
+            return replace(place, scope=place.scope.naming(symbol, variable, *facts))
+        ahead = f"+ {symbol}"
+        scope = place.scope.naming(ahead, variable).meaning(symbol, Affine.of(ahead) - making.shift, *facts)
+        return replace(place, scope=scope)
+
+    def _chunk_start(self, making: _Chunk, type: CType) -> str:
+        kind, work = "max" if making.loop.step > 0 else "min", making.work
+        forms = tuple(form + making.shift for form in making.near)
+        if len(forms) == 1 and not making.skewed:
+            return self._first_text(making.source, forms[0], work.place, type).text
+        if len(forms) == 2:
+            return self._chosen_of(forms[0], forms[1], kind, work.place.scope, type, {}).text
+        form = self._local(making.loop, forms, kind, work, type, "first")
+        return self.in_type(form, type, work.place.scope).text
+
+    def _chunk_test(self, making: _Chunk, variable: Expression, reach: Affine | None) -> str:
+        """The comparison that lets the chunk loop go on; ``reach``: how far
+        beyond its last value the variable gets; None: just to the end."""
+        loop, source, place = making.loop, making.source, making.work.place
+        upward = loop.step > 0
+        value = Affine.of(loop.symbol)
+        starts = [equal(value, form) for form in making.near]
+        if reach is None:
+            further = loop
+            starts.append(equal(value + making.shift, making.end))
+        elif upward:
+            further = replace(loop, upper=map_bound(loop.upper, lambda form: form + reach))
+        else:
+            further = replace(loop, lower=map_bound(loop.lower, lambda form: form - reach))
+        scope = self._with_variable(making, variable, AnyOf((further.constraints(), *starts))).scope
+        aliases = {} if making.skewed else self._aliases(source, place)
+        left = value + making.shift
+        inclusive = making.end - 1 if upward else making.end + 1
+        if source.relation in ("<=", ">=") and inclusive in aliases:
+            return comparison(left, "<=" if upward else ">=", inclusive, scope, aliases).text
+        return comparison(left, "<" if upward else ">", making.end, scope, aliases).text
+
+    def _next_ends(self, making: _Chunk, inside: Place) -> tuple[Loop | None, tuple[Affine, ...]]:
+        """The loop inside that this chunk cuts, and its half-open ends if they can be computed here and are several."""
+        loop, upward = making.loop, making.loop.step > 0
+        kind = "min" if upward else "max"
+        for inner in loops_of(loop.body):
+            if inner.of != loop.of or inner is loop or (inner.role is Role.WHOLE) or making.skewed:
+                continue
+            bounds = members(far_bound(inner), kind)
+            forms = [bound for bound in bounds if isinstance(bound, Affine)]
+            if len(forms) < len(bounds) or not all(inside.scope.sees(form.names()) for form in forms):
+                continue
+            ends = named(tuple(half_open(form, upward, making.shift) for form in forms), inside.limits, upward)
+            ends = needed(ends, kind, inside.scope)
+            if len(ends) > 1:
+                return inner, tuple(sorted(ends, key=lambda end: not end.coefficient(loop.symbol)))
+        return None, ()
+
+    def _end_of_chunk(self, making: _Chunk, body: Locals) -> None:
+        """Declare where the chunk ends, if the loop inside can use it."""
+        inner, ends = self._next_ends(making, body.place)
+        if inner is None:
+            return
+        aliases = self._ends_written(making.source, body.place)
+        kind = "min" if making.loop.step > 0 else "max"
+        self._local(inner, ends, kind, body, making.source.type, "to", making.loop, aliases)
+
+
+@dataclass(frozen=True)
+class _Chunk:
+    """A chunk loop under way."""
+
+    loop: Loop
+    source: LoopText
+    near: tuple[Affine, ...]
+    end: Affine
+    shift: int
+    skewed: bool
+    work: Locals

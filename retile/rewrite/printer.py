@@ -1,0 +1,149 @@
+"""A loop tree as C text: headers written anew where they must be, the user's statements moved by whole lines.
+
+The tree is taken as it is; nothing here decides what runs when.  Positions, braces, indentation and comments are the
+user's (``layout``, ``style``), headers come from ``loops``.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import replace
+
+from ..affine import Affine, equal, negate
+from ..model import Nest
+from ..tree import Guard, Leaf, Loop, Node, Verbatim
+from .expression import Expression, condition
+from .layout import InternalError, NestText, Remarks
+from .loops import Loops, Opened, Place
+from .style import Style
+
+
+class Printer:
+    """Prints one tree; remarks that found no place are left in ``homeless``."""
+
+    def __init__(self, nest: Nest, layout: NestText, style: Style, loops: Loops, kept: frozenset[str]) -> None:
+        self._nest = nest
+        self._layout = layout
+        self._style = style
+        self._loops = loops
+        self._ids = {loop.id for loop in nest.loops}
+        self._remarks = layout.remarks(kept)
+
+    @property
+    def homeless(self) -> list[str]:
+        """The comments that no printed loop carried."""
+        return [self._layout.text[start:end] for remarks in self._remarks.values()
+                for start, end in (*remarks.before, *remarks.behind, *remarks.after)]
+
+    def nodes(self, nodes: tuple[Node, ...], place: Place, indent: str) -> list[str]:
+        """The lines of some nodes that run one after the other."""
+        lines: list[str] = []
+        at = 0
+        while at < len(nodes):
+            node = nodes[at]
+            if isinstance(node, Loop):
+                printed, place = self._loop(node, place, indent)
+                lines += printed
+            elif isinstance(node, Guard):
+                both = at + 1 < len(nodes) and self._opposite(node, nodes[at + 1])
+                lines += self._guard(node, nodes[at + 1] if both else None, place, indent)
+                at += both
+            elif isinstance(node, Verbatim):
+                lines.append(indent + self._layout.moved(self._layout.piece(node), indent))
+            else:
+                raise InternalError(f"{self._nest.address}: statement {node.statement} has no text of its own")
+            at += 1
+        return lines
+
+    # ---------------------------------------------------------------- loops
+
+    def _loop(self, loop: Loop, place: Place, indent: str) -> tuple[list[str], Place]:
+        opened = self._loops.open(loop, place)
+        remarks = self._take(loop)
+        lines = [indent + self._layout.moved(extent, indent) for extent in remarks.before]
+        lines += self._indented(opened.before, indent)
+        behind = "".join(" " + self._layout.moved(extent, indent) for extent in remarks.behind)
+        lines += self._body(loop, opened, indent, behind)
+        after = [self._layout.moved(extent, indent) for extent in remarks.after]
+        if after:
+            lines[-1] += " " + after[0]
+            lines += [indent + text for text in after[1:]]
+        return lines, opened.outside
+
+    def _take(self, loop: Loop) -> Remarks:
+        """The comments of a source loop, for the first tree loop that runs over its iterations one by one."""
+        return self._remarks.pop(loop.symbol, Remarks()) if loop.symbol in self._ids else Remarks()
+
+    def _indented(self, lines: tuple[str, ...], indent: str) -> list[str]:
+        """Generated lines; a mark at the start asks for one more level."""
+        return [indent + line.replace("\x01", self._style.step) for line in lines]
+
+    def _body(self, loop: Loop, opened: Opened, indent: str, behind: str) -> list[str]:
+        inner = indent + self._style.step
+        given, place = self._given(loop, opened.inside)
+        body = self._indented((*opened.first, *given), inner) + self.nodes(loop.body, place, inner)
+        source = self._nest.loop(loop.of)
+        braced = self._layout.braced(source) or len(loop.body) != 1 or bool(opened.first or given) or \
+            self._needs_braces(loop.body[0], body)
+        return self._style.block(opened.header, body, indent, braced, behind)
+
+    def _needs_braces(self, node: Node, body: list[str]) -> bool:
+        """True for a body of more than one statement, or one that a reader could take for it."""
+        if isinstance(node, Loop):
+            first = body[0].lstrip()
+            return not first.startswith("for")
+        if isinstance(node, Verbatim):
+            return self._layout.statement_count(node) != 1
+        return False
+
+    def _given(self, loop: Loop, place: Place) -> tuple[list[str], Place]:
+        """The user's iterators that a skewed sum took the place of, as soon as their values are known."""
+        lines: list[str] = []
+        wanted = dict(_instances(loop.body))
+        for name, form in wanted.items():
+            source = self._nest.loop(name)
+            if name in place.around or form == Affine.of(name) or not place.scope.sees(form.names()):
+                continue
+            value = self._loops.in_type(form, source.type, place.scope)
+            declared = f"const {source.type.spelling} " if source.declared_in_for else ""
+            lines.append(f"{declared}{source.iterator} = {value.text};")
+            variable = Expression(source.iterator, source.type)
+            place = Place(place.scope.naming(name, variable, equal(Affine.of(name), form)), place.limits, place.around | {name})
+        return lines, place
+
+    # ---------------------------------------------------------------- guards
+
+    def _opposite(self, node: Guard, following: Node) -> bool:
+        return isinstance(following, Guard) and node.span is None and following.span is None and \
+            node.condition is not None and following.condition == negate(node.condition)
+
+    def _guard(self, guard: Guard, otherwise: Node | None, place: Place, indent: str) -> list[str]:
+        inside = place
+        if guard.condition is not None:
+            inside = replace(place, scope=place.scope.knowing(guard.condition))
+        if guard.span is not None:
+            text = self._layout.moved(guard.span, indent)
+        elif guard.condition is not None:
+            text = condition(guard.condition, place.scope).text
+        else:
+            raise InternalError(f"{self._nest.address}: a condition has no text")
+        inner = indent + self._style.step
+        body = self.nodes(guard.body, inside, inner)
+        # always in braces: an else of the user's further out must not find this if
+        lines = self._style.block(f"if ({text})", body, indent)
+        if isinstance(otherwise, Guard):
+            assert otherwise.condition is not None
+            apart = replace(place, scope=place.scope.knowing(otherwise.condition))
+            lines = self._style.otherwise(lines, self.nodes(otherwise.body, apart, inner), indent)
+        return lines
+
+
+def _instances(nodes: tuple[Node, ...]) -> Iterator[tuple[str, Affine]]:
+    """The iterators and their values of the instances that pieces of text in these nodes stand for."""
+    for node in nodes:
+        if isinstance(node, Leaf):
+            yield from node.instance
+        elif isinstance(node, Verbatim):
+            yield from _instances(node.content)
+        else:
+            yield from _instances(node.body)

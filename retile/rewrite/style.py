@@ -1,0 +1,102 @@
+"""The user's way of writing: indentation, braces, line ends, comments, read off the nest and, failing that, the file."""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+
+from ..model import Nest
+from .layout import NestText
+
+
+@dataclass(frozen=True)
+class Style:
+    """How loops are laid out."""
+
+    eol: str
+    step: str  # what a body is indented by
+    brace: str  # ``end``: on the header's line; ``own``: on a line of its own
+    brace_step: str  # what a brace on a line of its own is indented by
+    line_comments: bool  # remarks are written with ``//``
+
+    def remark(self, lines: list[str], indent: str) -> list[str]:
+        """A comment of these lines, every line with its indentation."""
+        lines = [line.replace("*/", "* /").replace("/*", "/ *").rstrip("\\") for line in lines]
+        if self.line_comments:
+            return [f"{indent}// {line}" for line in lines]
+        start = [f"{indent}/* {lines[0]}", *(f"{indent}   {line}" for line in lines[1:])]
+        return [*start[:-1], start[-1] + " */"]
+
+    def block(self, header: str, body: list[str], indent: str, braced: bool = True, behind: str = "") -> list[str]:
+        """A header with its body, whose lines are indented already; ``behind`` follows the header on its line."""
+        if not braced:
+            return [indent + header + behind, *body]
+        if self.brace == "end":
+            return [f"{indent}{header} {{{behind}", *body, indent + "}"]
+        inner = indent + self.brace_step
+        return [indent + header + behind, inner + "{", *body, inner + "}"]
+
+    def otherwise(self, lines: list[str], body: list[str], indent: str) -> list[str]:
+        """A braced block with an ``else`` behind it."""
+        if self.brace == "end":
+            return [*lines[:-1], indent + "} else {", *body, indent + "}"]
+        inner = indent + self.brace_step
+        return [*lines, indent + "else", inner + "{", *body, inner + "}"]
+
+
+def read_style(text: str, nest: Nest, layout: NestText) -> Style:
+    """The style of a nest in its file."""
+    brace, brace_step = _braces(text, nest, layout)
+    start = nest.span.start
+    crlf = text.count("\r\n")
+    return Style("\r\n" if crlf and crlf * 2 > text.count("\n") else "\n", _step(nest, layout, brace_step), brace, brace_step,
+                 _line_comments(text, start))
+
+
+def _step(nest: Nest, layout: NestText, brace_step: str) -> str:
+    """The indentation of a body against its header."""
+    for loop in nest.loops:
+        outer = layout.indentation(loop.span.start)
+        spans = (*(inner.span for inner in nest.loops), *(statement.span for statement in nest.statements))
+        for span in spans:
+            if span.start < loop.body.start or span.end > loop.span.end or span.line == loop.span.line:
+                continue
+            indent = layout.indentation(span.start)
+            if indent.startswith(outer) and len(indent) > len(outer):
+                return indent[len(outer):]
+            break
+    own = layout.indentation(nest.span.start)
+    return "\t" if own.startswith("\t") else " " * (min(len(own), 8) or 4)
+
+
+_BRACE = re.compile(r"\)[ \t]*(\r?\n([ \t]*))?\{")
+
+
+def _braces(text: str, nest: Nest, layout: NestText) -> tuple[str, str]:
+    """Where an opening brace goes, and how far it is indented on a line of its own."""
+    for loop in nest.loops:
+        if layout.braced(loop):
+            gap = text[loop.header.end:loop.body.start]
+            if "\n" not in gap:
+                return "end", ""
+            return "own", _beyond(layout.indentation(loop.body.start), layout.indentation(loop.span.start))
+    after = [match for match in re.finditer(r"\b(?:for|if|while)\b[^;{}\n]*(?:;[^;{}\n]*;[^;{}\n]*)?" + _BRACE.pattern,
+                                            text)]
+    if after:
+        match = after[0]
+        if match[1] is None:
+            return "end", ""
+        return "own", _beyond(match[2], layout.indentation(match.start()))
+    # no braced statement in the file: the body of a function shows the style least, since many put its brace apart
+    return "end", ""
+
+
+def _beyond(indent: str, outer: str) -> str:
+    return indent[len(outer):] if indent.startswith(outer) else ""
+
+
+def _line_comments(text: str, start: int) -> bool:
+    """True if the file's own comments are ``//`` ones for the most part."""
+    lines = len(re.findall(r"^[ \t]*//", text, re.MULTILINE))
+    blocks = len(re.findall(r"^[ \t]*/\*", text, re.MULTILINE))
+    return lines > blocks

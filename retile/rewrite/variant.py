@@ -1,0 +1,257 @@
+"""From a legal plan to the file with the variant in place of the nest.
+
+The driver reads as the way goes: the tree of the plan, its remainder style, both questions, the text, the file.
+Nothing of the file changes but the nest's span and, where the tests of assumptions need them, ``#include`` lines.
+"""
+
+from __future__ import annotations
+
+import os
+import shlex
+from collections.abc import Iterable
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
+
+from ..affine import Affine, AllOf, Formula, at_most
+from ..model import Assumption, AssumptionCode, Judgement, LoopText, Nest, Plan, Variant
+from ..sets import Region
+from ..tree import Guard, Leaf, Loop, Node, Verbatim, loops_of
+from .after import restored
+from .assumed import Tests, tests_of
+from .expression import INT, Expression, NoRoom, Scope, written
+from .includes import insertion, missing
+from .layout import InternalError, NestText
+from .loops import Loops, Place
+from .names import Names
+from .patch import unified
+from .peel import peeled
+from .printer import Printer
+from .style import Style, read_style
+
+if TYPE_CHECKING:
+    from ..dependence import Dependences
+    from ..source import Source
+
+# Sizes up to here leave room for every sum of a few of them in 64 bits.
+_ROOM = 10 ** 12
+
+
+def rewrite(source: Source, nest: Nest, dependences: Dependences, plan: Plan, judgement: Judgement, *,
+            remainder: str = "clamp", trust: bool = False) -> Variant:
+    """The variant of a plan whose verdict is ``legal``.
+
+    ``remainder``: ``clamp`` or ``peel``, unless the plan says.  ``trust``: leave out the tests of assumptions and the
+    original loops.  Raises InternalError if the finished tree fails one of the two questions, and RetileError if an
+    assumption cannot be tested.
+    """
+    original = source.text[nest.span.start:nest.span.end]
+    remainder = dict(plan.options).get("remainder", remainder)
+    if is_original_order(nest, plan):
+        return Variant(plan, source.text, judgement, nest.tree, original)
+    tree = finished_tree(nest, dependences, judgement.plan, remainder)
+    order = _Order(source, nest, plan, judgement, tree, remainder, trust)
+    nest_text, headers = order.text()
+    includes = missing(source.text, headers)
+    text = _whole_file(source.text, nest, nest_text, includes, order.style.eol)
+    return Variant(plan, text, judgement, tree, nest_text, includes)  # type: ignore[arg-type]
+
+
+def diff(source: Source, variant: Variant) -> str:
+    """A patch from the file to the variant that ``git apply`` and ``patch -p1`` take; empty if nothing changes."""
+    return unified(source.path, source.text, variant.text)
+
+
+def is_original_order(nest: Nest, plan: Plan) -> bool:
+    """True if the plan names loops in the order in which they stand, and cuts none."""
+    names = [term.loop for term in plan.terms if len(term.form) == 1 and term.chunk is None and term.form[0][1] == 1]
+    if len(names) < len(plan.terms):
+        return False
+    order = {loop.id: at for at, loop in enumerate(nest.loops)}
+    return [order[name] for name in names] == sorted(order[name] for name in names)
+
+
+def finished_tree(nest: Nest, dependences: Dependences, plan: Plan, remainder: str) -> tuple[Node, ...]:
+    """The tree that will be printed; raises InternalError if it does not do what the nest does."""
+    from ..plan import build_tree
+
+    tree = build_tree(nest, plan)
+    if remainder == "peel":
+        tree = peeled(tree, dependences.context)
+    check(tree, nest, dependences, plan)
+    return tree
+
+
+def check(tree: tuple[Node, ...], nest: Nest, dependences: Dependences, plan: Plan) -> None:
+    """Ask the questions of a finished tree; InternalError, with the first flaw, if the answer to one is no."""
+    from ..plan import moved_conditions
+    from ..questions import order_kept, same_instances, values_arrive
+
+    context = dependences.context
+    repeatable = moved_conditions(nest, plan) | set(plan.copied)
+    flaws = [*same_instances(tree, nest, context, repeatable), *order_kept(tree, dependences),
+             *values_arrive(tree, nest, context, plan.copied)]
+    if flaws:
+        raise InternalError(f"{nest.address}: the loops made for this plan are wrong, so nothing was written: {flaws[0]}.\n"
+                            "This is a defect of retile; please report it with the nest and the plan.")
+
+
+def _whole_file(text: str, nest: Nest, nest_text: str, includes: tuple[str, ...], eol: str) -> str:
+    changed = text[:nest.span.start] + nest_text + text[nest.span.end:]
+    if not includes:
+        return changed
+    at = insertion(text)
+    lines = "".join(f"#include {header}{eol}" for header in includes)
+    if at and text[at - 1] != "\n":
+        lines = eol + lines
+    return changed[:at] + lines + changed[at:]
+
+
+@dataclass(frozen=True)
+class _Order:
+    """A plan on its way to text."""
+
+    source: Source
+    nest: Nest
+    plan: Plan
+    judgement: Judgement
+    tree: tuple[Node, ...]
+    remainder: str
+    trust: bool
+
+    @property
+    def layout(self) -> NestText:
+        return NestText(self.source.text, self.nest, self.tree)
+
+    @property
+    def style(self) -> Style:
+        return read_style(self.source.text, self.nest, self.layout)
+
+    def text(self) -> tuple[str, tuple[str, ...]]:
+        """The variant's text and the headers that it needs; asks for smaller sizes if arithmetic has no room."""
+        try:
+            return self._text(())
+        except NoRoom:
+            pass
+        try:
+            return self._text(room_assumptions(self.nest))
+        except NoRoom as error:
+            raise InternalError(f"{self.nest.address}: no integer type of C is wide enough for {error}") from error
+
+    def _text(self, room: tuple[Assumption, ...]) -> tuple[str, tuple[str, ...]]:
+        assumptions = (*self._assumptions(), *room)
+        layout, style = self.layout, self.style
+        names = Names(self.nest.names_in_scope | {"uintptr_t", "size_t"})
+        before = outer_scope(self.nest, self.tree)
+        facts = tuple(a.condition for a in assumptions if a.condition is not None)
+        indent = layout.indentation(self.nest.span.start)
+        tests = Tests((), ()) if self.trust else tests_of(self.nest, assumptions, before, names)
+        inner = indent + style.step if tests.conditions else indent
+        scope = before.knowing(*facts) if facts else before
+        lines, homeless = self._loops(layout, style, names, scope, inner)
+        lines += restored(self.nest, layout, style, scope, inner)
+        remark = style.remark(self._remark(assumptions, bool(tests.conditions)), indent)
+        remark += [indent + text for text in homeless]
+        if tests.conditions:
+            lines = self._guarded(tests, lines, style, indent)
+        return self._joined(remark, lines, style, indent), (("<stdint.h>",) if tests.declarations else ())
+
+    def _loops(self, layout: NestText, style: Style, names: Names, scope: Scope, indent: str) \
+            -> tuple[list[str], list[str]]:
+        loops = Loops(self.nest, layout, names, self.tree)
+        kept = frozenset(loop.symbol for loop in _printed(self.tree)
+                         if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
+        printer = Printer(self.nest, layout, style, loops, kept)
+        lines = printer.nodes(self.tree, Place(scope), indent)
+        return lines, printer.homeless
+
+    def _assumptions(self) -> tuple[Assumption, ...]:
+        """What the verdict rests on, and what the loops' bounds were worked out under."""
+        needed = self.judgement.assumptions
+        other = [a for a in self.nest.assumptions if a.condition is not None and a not in needed
+                 and a.code is not AssumptionCode.ROW_BOUND]
+        return (*needed, *other)
+
+    def _guarded(self, tests: Tests, lines: list[str], style: Style, indent: str) -> list[str]:
+        """The variant where the tests hold, else the original, byte for byte."""
+        original = self.source.text[self.nest.span.start:self.nest.span.end]
+        head = f"{style.eol}{indent}{style.step}&& ".join(tests.conditions)
+        return [*(indent + line for line in tests.declarations),
+                *style.otherwise(style.block(f"if ({head})", lines, indent), [indent + original], indent)]
+
+    def _joined(self, remark: list[str], lines: list[str], style: Style, indent: str) -> str:
+        """One text in place of the nest: a block of its own where the nest is not one statement among others."""
+        if not self._among_statements() and self._several(lines, indent):
+            lines = [indent + "{", *(style.step + line if line else line for line in lines), indent + "}"]
+        return style.eol.join([*remark, *lines])[len(indent):]
+
+    def _among_statements(self) -> bool:
+        before = [token for token in self.source.tokens if token.end <= self.nest.span.start
+                  and token.kind not in ("blank", "comment", "directive")]
+        return bool(before) and before[-1].text in ("{", "}", ";")
+
+    def _several(self, lines: list[str], indent: str) -> bool:
+        """True if the lines are more than one statement: one whose first word is no ``for`` or ``if``, or two heads."""
+        heads = [line for line in lines if line.startswith(indent) and not line[len(indent):len(indent) + 1].isspace()]
+        words = [head.strip().split("(")[0].strip() for head in heads]
+        return sum(word not in ("{", "}", "} else {", "else") for word in words) != 1
+
+    def _remark(self, assumptions: tuple[Assumption, ...], tested: bool) -> list[str]:
+        """The comment above the variant: plan, options, assumptions, and how to make it again."""
+        options = [f"remainder {self.remainder}"] if self.remainder != "clamp" else []
+        lines = [f"Loops reordered by retile: {'; '.join([self.plan.order_text, *options])}"]
+        if assumptions:
+            word = "Tested here" if tested else "Assumed"
+            lines.append(f"{word}: {'; '.join(dict.fromkeys(a.text.rstrip('.') for a in assumptions))}")
+        return [*lines, f"Made by: {self._command()}"]
+
+    def _command(self) -> str:
+        file = self.nest.address.file
+        if os.path.isabs(file) or file.startswith(".."):
+            file = os.path.basename(file)
+        words = ["retile", "rewrite", str(replace(self.nest.address, file=file)), self.plan.order_text]
+        if self.remainder != "clamp":
+            words += ["--remainder", self.remainder]
+        if self.trust:
+            words.append("--trust")
+        return shlex.join([*words, *self.source.call.flags])
+
+
+def _printed(nodes: tuple[Node, ...]) -> Iterable[Loop]:
+    """The loops whose headers are printed."""
+    for node in nodes:
+        if isinstance(node, Loop):
+            yield node
+        if isinstance(node, Loop | Guard):
+            yield from _printed(node.body)
+
+
+def outer_scope(nest: Nest, tree: tuple[Node, ...]) -> Scope:
+    """What is known ahead of the nest: its parameters, their types' ranges, and its facts."""
+    operands: dict[str, Expression] = {}
+    facts: list[Formula] = list(nest.facts)
+    for parameter in nest.parameters:
+        operands[parameter.symbol] = written(parameter.text, parameter.type)
+        facts += _in_range(parameter.symbol, parameter.type.smallest, parameter.type.largest)
+    for loop in loops_of(tree):
+        if loop.named is not None and loop.named not in operands:
+            operands[loop.named] = Expression(loop.named, INT)
+            facts += _in_range(loop.named, 1, INT.largest)
+    return Scope(Region.where(*facts), operands)
+
+
+def _in_range(symbol: str, low: int, high: int) -> list[Formula]:
+    return [at_most(low, Affine.of(symbol)), at_most(Affine.of(symbol), high)]
+
+
+def room_assumptions(nest: Nest) -> tuple[Assumption, ...]:
+    """That sizes of 64 bits are small enough for sums of them: nobody has larger ones, but a test says it."""
+    found = []
+    for parameter in nest.parameters:
+        if parameter.type.bits >= 64:
+            low = -_ROOM if parameter.type.signed else 0
+            found.append(Assumption(AssumptionCode.RELATION, f"{parameter.text} is at most {_ROOM}",
+                                    AllOf(tuple(_in_range(parameter.symbol, low, _ROOM)))))
+    return tuple(found)
+
+
+__all__ = ["InternalError", "diff", "rewrite"]
