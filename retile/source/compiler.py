@@ -70,10 +70,13 @@ def preprocess(call: CompilerCall, path: str, *, stubs: bool, text: bytes | None
 
 
 def check_syntax(call: CompilerCall, path: str) -> str:
-    """What the compiler says of a file that cannot be parsed; empty if it finds nothing wrong."""
+    """What the compiler says of a file that cannot be parsed; empty if it finds nothing wrong.
+
+    Columns are to count characters, a tab as one.
+    """
     name = os.path.join(".", path) if path.startswith("-") else _from(call.directory, path)
     try:
-        _, errors, status = _run([*call.command, *call.flags, "-fsyntax-only", "-w", "-x", "c", name], call, None)
+        _, errors, status = _run([*call.command, *call.flags, "-fsyntax-only", "-w", "-ftabstop=1", "-x", "c", name], call, None)
     except RetileError:
         return ""
     return errors.decode("utf-8", "replace") if status else ""

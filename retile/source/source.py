@@ -108,8 +108,7 @@ class Source:
 
     def _syntax_error(self, problem: SyntaxProblem, reading: Reading | None = None) -> str:
         """What the compiler says of it, if it also finds an error; else what the parser says."""
-        said = check_syntax(self.call, self.path)
-        if said and (message := self._compiler_said(said)):
+        if message := self._first_error(check_syntax(self.call, self.path)):
             return message
         remedy = "retile reads C11 with the usual GNU extensions; this construct is not among them."
         place = problem.place
@@ -120,7 +119,14 @@ class Source:
         return self.complaint(place.line, place.column, problem.what, remedy)
 
     def _compiler_said(self, errors: str) -> str:
-        """The first error in the compiler's own words, with the source line and our remedy."""
+        """Why the preprocessor failed."""
+        said = errors.strip().splitlines()[0] if errors.strip() else "it gave no reason"
+        return self._first_error(errors) or (
+            f"{self.path}: the compiler {self.call.cc!r} could not preprocess the file: {said}"
+        )
+
+    def _first_error(self, errors: str) -> str | None:
+        """The first error with a place in the compiler's own words, with the source line and our remedy."""
         for row in errors.splitlines():
             match = re.match(r"(.+?):(\d+):(?:(\d+):)? (?:fatal )?error: (.*)", row)
             if match is None:
@@ -134,8 +140,7 @@ class Source:
                 else "The compiler itself refuses this file; are flags such as -D, -I or -std missing?"
             )
             return complaint(self.path if file == "<stdin>" else file, line, column, text, what, remedy)
-        said = errors.strip().splitlines()[0] if errors.strip() else "it gave no reason"
-        return f"{self.path}: the compiler {self.call.cc!r} could not preprocess the file: {said}"
+        return None
 
     # ---------------------------------------------------------------- tree
 

@@ -96,8 +96,8 @@ class Types:
                 found.append((name, node))
         return tuple(found)
 
-    def _walk(self, node: Any, scope: Scope, block: Any, table: dict[int, Scope]) -> Scope:
-        """Note the scope of every node below; give the scope after it."""
+    def _walk(self, node: Any, scope: Scope, block: Any, table: dict[int, Scope]) -> None:
+        """Note the scope of every node below."""
         stack = [(node, scope, block)]
         while stack:
             node, scope, block = stack.pop()
@@ -114,7 +114,6 @@ class Types:
                         stack.append((item, inner, node))
             else:
                 stack.extend((child, scope, block) for _, child in node.children())
-        return scope
 
     def _entries(self, node: Any, scope: Scope, where: str, block: Any) -> Iterator[tuple[str, Any]]:
         """The names that a declaration adds, tags and enumeration constants first."""
@@ -126,7 +125,7 @@ class Types:
             yield node.name, Declared(node.name, kind, where, node, block)
 
     def _tags(self, node: Any, scope: Scope, where: str, block: Any) -> Iterator[tuple[str, Any]]:
-        """Structures, unions and enumerations that a declaration defines, also inside others and in its initializer."""
+        """Structures, unions and enumerations that a declaration defines, also inside others."""
         stack = [getattr(node, "type", node)]
         while stack:
             part = stack.pop()
