@@ -47,12 +47,14 @@ def replace_file(path: str, data: bytes) -> None:
 def _replace(target: str, data: bytes) -> None:
     import tempfile  # costs 10 ms, and only a file that is written needs it
 
-    mode = _mode(target)
+    mode, owner = _mode_and_owner(target)
     handle, beside = tempfile.mkstemp(prefix=".retile-", dir=os.path.dirname(target))
     try:
         with os.fdopen(handle, "wb") as file:
             file.write(data)
             file.flush()
+            if owner is not None and owner != (os.geteuid(), os.getegid()):
+                _give_to(file.fileno(), owner)
             os.fchmod(file.fileno(), mode)
             os.fsync(file.fileno())
         os.replace(beside, target)
@@ -65,13 +67,22 @@ def _replace(target: str, data: bytes) -> None:
     _sync_directory(os.path.dirname(target))
 
 
-def _mode(target: str) -> int:
+def _mode_and_owner(target: str) -> tuple[int, tuple[int, int] | None]:
     try:
-        return stat.S_IMODE(os.stat(target).st_mode)
+        found = os.stat(target)
+        return stat.S_IMODE(found.st_mode), (found.st_uid, found.st_gid)
     except FileNotFoundError:
         mask = os.umask(0)
         os.umask(mask)
-        return 0o666 & ~mask
+        return 0o666 & ~mask, None
+
+
+def _give_to(handle: int, owner: tuple[int, int]) -> None:
+    """Keep the owner where the system lets us."""
+    try:
+        os.fchown(handle, *owner)
+    except OSError:
+        pass
 
 
 def _sync_directory(directory: str) -> None:
