@@ -1,0 +1,282 @@
+"""What an expression reads and writes, in the order of its text."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+from pycparser import c_ast
+
+from ..model import CType
+from ..source.kinds import ArrayOf, FunctionType, PointerTo, StructType
+from .calls import called_name, is_pure_call
+from .conditions import Conditions
+from .context import Context
+from .places import Member, Place
+from .refusals import refused
+from .setting import Setting, c_text
+
+
+@dataclass(frozen=True)
+class Touch:
+    """One read or write of a cell, before rows and columns are told apart."""
+
+    place: Place
+    write: bool
+    context: Context
+    node: Any
+    update: str = ""  # ``+`` for the read and write of ``x += e``, ``x = x + e``, ``x++``; the operator of the family
+
+
+class Effects:
+    """Collects the touches of one statement."""
+
+    def __init__(self, setting: Setting, conditions: Conditions) -> None:
+        self._setting = setting
+        self._conditions = conditions
+        self._found: list[Touch] = []
+
+    def of(self, node: Any, context: Context) -> tuple[Touch, ...]:
+        """The touches of an expression statement."""
+        self._found = []
+        self._visit(node, context)
+        return tuple(self._found)
+
+    def of_declaration(self, decl: Any, context: Context) -> tuple[Touch, ...]:
+        """The touches of a declaration with an initialiser."""
+        self._found = []
+        name = c_ast.ID(decl.name, decl.coord)
+        place = self._setting.places.declared(decl)
+        if isinstance(decl.init, c_ast.InitList):
+            self._initialise(decl, place, context)
+        else:
+            self._visit(decl.init, context)
+            self._found.append(Touch(place, True, context, name))
+        return tuple(self._found)
+
+    def of_pointer(self, value: Any, binding: Any, context: Context, node: Any) -> tuple[Touch, ...]:
+        """The touches of giving a pointer its value."""
+        self._found = []
+        self._base(value, context)
+        self._found.append(Touch(self._setting.places.variable(binding), True, context, node))
+        return tuple(self._found)
+
+    def _initialise(self, decl: Any, place: Place, context: Context) -> None:
+        if not isinstance(place.type, ArrayOf):
+            raise refused(decl, "unsupported", f"`{decl.name}` is initialised with a list; assign its parts one by one.")
+        for part in decl.init.exprs:
+            self._visit(part.expr if isinstance(part, c_ast.NamedInitializer) else part, context)
+        for cell in self._setting.places.cells(place, decl):
+            self._found.append(Touch(cell, True, context, decl))
+
+    def _visit(self, node: Any, context: Context) -> None:
+        match node:
+            case None | c_ast.Constant() | c_ast.Typename():
+                return
+            case c_ast.ID() | c_ast.ArrayRef() | c_ast.StructRef():
+                self._read(node, context)
+            case c_ast.Assignment():
+                self._assign(node, context)
+            case c_ast.UnaryOp():
+                self._unary(node, context)
+            case c_ast.BinaryOp(op="&&") | c_ast.BinaryOp(op="||"):
+                self._visit(node.left, context)
+                self._visit(node.right, context.uncertain().block(node.right))
+            case c_ast.BinaryOp():
+                self._visit(node.left, context)
+                self._visit(node.right, context)
+            case c_ast.TernaryOp():
+                self._ternary(node, context)
+            case c_ast.Cast():
+                self._visit(node.expr, context)
+            case c_ast.ExprList():
+                for part in node.exprs:
+                    self._visit(part, context)
+            case c_ast.FuncCall():
+                self._call(node, context)
+            case _:
+                raise refused(node, "unsupported", f"retile does not read `{c_text(node)}`; write it with plain operators.")
+
+    def _ternary(self, node: Any, context: Context) -> None:
+        self._visit(node.cond, context)
+        condition = self._conditions.known(node.cond, context)
+        yes, no = (context, context) if condition is None else \
+            (context.where(condition), context.where(self._conditions.opposite(condition)))
+        self._visit(node.iftrue, yes.uncertain().block(node.iftrue))
+        self._visit(node.iffalse, no.uncertain().block(node.iffalse))
+
+    def _call(self, node: Any, context: Context) -> None:
+        if not is_pure_call(node, self._setting):
+            name = called_name(node)
+            shown = f"`{name}`" if name else "a function through a pointer"
+            if name == "__asm__":
+                raise refused(node, "asm", "inline assembly may change anything; it would have to leave the nest.")
+            if name == "__statement_expression__":
+                raise refused(node, "statement-expression", "a statement expression stands here; "
+                                                            "use a plain expression or a static function.")
+            raise refused(node, "call", f"the call of {shown} may read or change anything; only functions that are seen "
+                                        "to compute a value from their arguments may stand in the nest.")
+        for argument in node.args.exprs if node.args else ():
+            if not isinstance(self._setting.type_of(argument), CType):
+                raise refused(argument, "call", f"`{c_text(argument)}` is passed as a pointer; retile cannot tell what "
+                                                "is read through it.")
+            self._visit(argument, context)
+
+    # ------------------------------------------------------------ reads and writes
+
+    def _unary(self, node: Any, context: Context) -> None:
+        if node.op in ("sizeof", "_Alignof"):
+            return
+        if node.op == "*":
+            self._read(node, context)
+        elif node.op in ("++", "--", "p++", "p--"):
+            self._update(node.expr, context, "+")
+        elif node.op == "&":
+            raise refused(node, "address", f"the address `{c_text(node)}` is taken inside the nest; "
+                                           "use the object itself there.")
+        else:
+            self._visit(node.expr, context)
+
+    def _read(self, node: Any, context: Context) -> None:
+        if isinstance(node, c_ast.ID):
+            binding = self._setting.names.of(node)
+            if binding is not None and (binding.kind == "enumerator" or context.iterator(binding) is not None):
+                return
+            self._not_outside(node, binding)
+            if self._is_plain_size(binding):
+                return
+        self._beneath(node, context)
+        place = self._scalar_place(node, context)
+        self._found.append(Touch(place, False, context, node))
+
+    def _is_plain_size(self, binding: Any) -> bool:
+        """True for an integer that nothing can change while the nest runs: it is a parameter, not memory."""
+        if binding is None or not self._setting.is_frozen(binding) or self._setting.reachable(binding):
+            return False
+        type_ = self._setting.type_of_binding(binding)
+        return isinstance(type_, CType) and not type_.floating
+
+    def _not_outside(self, node: Any, binding: Any) -> None:
+        if binding is not None and self._setting.is_iterator(binding):
+            raise refused(node, "iterator-outside", f"the iterator `{binding.name}` is used outside its loop, but inside the "
+                                                    "nest; use a variable of its own there.")
+
+    def _scalar_place(self, node: Any, context: Context) -> Place:
+        place = self._setting.places.place(node, context)
+        if isinstance(place.type, StructType):
+            raise refused(node, "struct-assignment", f"the whole structure `{c_text(node)}` is copied; "
+                                                     "copy its members one by one.")
+        if isinstance(place.type, (PointerTo, ArrayOf, FunctionType)):
+            raise refused(node, "pointer", f"the address `{c_text(node)}` is used as a value inside the nest; "
+                                           "use the elements it leads to.")
+        return place
+
+    def _beneath(self, node: Any, context: Context) -> None:
+        """What is read to find the cell: subscripts, and pointers in memory."""
+        match node:
+            case c_ast.ArrayRef():
+                self._base(node.name, context)
+                self._base(node.subscript, context)
+            case c_ast.StructRef():
+                self._base(node.name, context)
+            case c_ast.UnaryOp(op="*"):
+                self._base(node.expr, context)
+
+    def _base(self, node: Any, context: Context) -> None:
+        """The reads of an expression of which only the address or value is wanted."""
+        type_ = self._setting.type_of(node)
+        if isinstance(type_, CType):
+            self._visit(node, context)
+            return
+        match node:
+            case c_ast.ID():
+                self._pointer_definition(node, context)
+            case c_ast.BinaryOp():
+                self._base(node.left, context)
+                self._base(node.right, context)
+            case c_ast.Cast() | c_ast.UnaryOp(op="&"):
+                self._base(node.expr, context)
+            case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
+                self._beneath(node, context)
+                if isinstance(type_, PointerTo):
+                    self._pointer_cell(node, context)
+
+    def _pointer_definition(self, node: Any, context: Context) -> None:
+        """A pointer that was computed inside the nest is a value of the iteration like any other."""
+        binding = self._setting.names.of(node)
+        if binding is not None and isinstance(self._setting.type_of_binding(binding), PointerTo) and \
+                self._setting.definition(binding, context) is not None:
+            self._found.append(Touch(self._setting.places.variable(binding), False, context, node))
+
+    def _pointer_cell(self, node: Any, context: Context) -> None:
+        cell = self._setting.places.place(node, context)
+        if not cell.is_fixed(self._setting.loop_ids) or any(one.poly.constant != 0 for one in cell.indices):
+            self._found.append(Touch(cell, False, context, node))
+
+    def _write(self, node: Any, context: Context, update: str = "") -> None:
+        place = self._scalar_place(node, context)
+        if any(isinstance(step, Member) and step.bits is not None for step in place.steps):
+            raise refused(node, "bit-field", f"`{c_text(node)}` is a bit-field, which shares its bytes with others; "
+                                             "use a plain member.")
+        self._found.append(Touch(place, True, context, node, update))
+
+    def _update(self, node: Any, context: Context, family: str) -> None:
+        self._not_an_iterator(node, context)
+        self._beneath(node, context)
+        place = self._scalar_place(node, context)
+        self._found.append(Touch(place, False, context, node, family))
+        self._write(node, context, family)
+
+    def _assign(self, node: Any, context: Context) -> None:
+        self._not_an_iterator(node.lvalue, context)
+        target = node.lvalue
+        if isinstance(self._setting.type_of(target), PointerTo):
+            self._assign_pointer(node, context)
+            return
+        if node.op != "=":
+            self._visit(node.rvalue, context)
+            self._update(target, context, _family(node.op[:-1]))
+            return
+        family = self._accumulates(node)
+        before = len(self._found)
+        self._visit(node.rvalue, context)
+        if family:
+            self._mark_own_read(before, target, context, family)
+        self._beneath(target, context)
+        self._write(target, context, family)
+
+    def _assign_pointer(self, node: Any, context: Context) -> None:
+        binding = self._setting.names.of(node.lvalue) if isinstance(node.lvalue, c_ast.ID) else None
+        if node.op != "=" or binding is None or self._setting.definition(binding, context) is None:
+            raise refused(node, "pointer-assigned", f"the pointer `{c_text(node.lvalue)}` gets another value inside the "
+                                                    "nest; use subscripts from a pointer that stays.")
+        self._base(node.rvalue, context)
+        self._found.append(Touch(self._setting.places.variable(binding), True, context, node))
+
+    def _not_an_iterator(self, node: Any, context: Context) -> None:
+        binding = self._setting.names.of(node) if isinstance(node, c_ast.ID) else None
+        if binding is not None and context.iterator(binding) is not None:
+            raise refused(node, "iterator-changed", f"the iterator `{binding.name}` is changed inside its loop; "
+                                                    "only the loop's header may do that.")
+        self._not_outside(node, binding)
+
+    def _accumulates(self, node: Any) -> str:
+        """The family of ``x = x op e`` or ``x = e op x`` with a commutative operator; empty for any other."""
+        value, target = node.rvalue, c_text(node.lvalue)
+        if not isinstance(value, c_ast.BinaryOp) or value.op not in ("+", "-", "*", "&", "|", "^"):
+            return ""
+        left, right = c_text(value.left) == target, c_text(value.right) == target
+        return _family(value.op) if left or (right and value.op != "-") else ""
+
+    def _mark_own_read(self, since: int, target: Any, context: Context, family: str) -> None:
+        """Mark the read of ``x`` in ``x = x op e``, if it is the only one."""
+        text = c_text(target)
+        own = [at for at in range(since, len(self._found)) if c_text(self._found[at].node) == text]
+        if len(own) == 1:
+            touch = self._found[own[0]]
+            self._found[own[0]] = Touch(touch.place, False, touch.context, touch.node, family)
+
+
+def _family(op: str) -> str:
+    """Additions and subtractions accumulate into one sum."""
+    return "+" if op in ("+", "-") else op if op in ("*", "&", "|", "^") else ""

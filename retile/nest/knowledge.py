@@ -1,0 +1,111 @@
+"""What is known of the parameters, and what has to be: facts, proofs, and assumptions where a proof fails.
+
+An obligation is a formula that must hold at every point of a domain.  The parameter values at which some point of the
+domain violates it are a projection; nothing left means proven, else the complement is the condition of an assumption.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+from ..affine import AllOf, AnyOf, Affine, Constraint, Formula, at_most, formula_names
+from ..model import Assumption, AssumptionCode, CType, Parameter
+from ..sets import Region
+from .readable import formula_text
+
+
+@dataclass(frozen=True)
+class Obligation:
+    """A formula that must hold throughout a domain for the nest to be read as it is."""
+
+    code: AssumptionCode
+    formula: Formula
+    domain: Formula
+    iterators: tuple[str, ...]
+    node: Any  # where it comes from, for a refusal
+    storages: tuple[str, ...] = ()
+
+
+@dataclass
+class Knowledge:
+    """Parameters and facts, as they become known during the reading."""
+
+    parameters: dict[str, Parameter] = field(default_factory=dict)
+    iterator_types: dict[str, CType] = field(default_factory=dict)
+    facts: dict[Formula, None] = field(default_factory=dict)
+    _ranges: dict[str, Formula] = field(default_factory=dict)
+
+    def add_fact(self, fact: Formula) -> None:
+        """Note a fact; trivial ones are dropped."""
+        if not (isinstance(fact, AllOf) and not fact.parts):
+            self.facts.setdefault(fact)
+
+    def add_parameter(self, parameter: Parameter) -> str:
+        """Note a parameter and the facts of its type; gives its symbol."""
+        if parameter.symbol not in self.parameters:
+            self.parameters[parameter.symbol] = parameter
+            if not parameter.type.signed:
+                self.add_fact(Constraint(Affine.of(parameter.symbol)))
+            if parameter.type.bits < 32:
+                self.add_fact(type_range(parameter.symbol, parameter.type))
+        return parameter.symbol
+
+    def ranges(self, names: Iterable[str]) -> Formula:
+        """The ranges of the types of these parameters and iterators."""
+        return AllOf(tuple(self._range(name) for name in sorted(names)))
+
+    def _range(self, name: str) -> Formula:
+        if name not in self._ranges:
+            type_ = self.parameters[name].type if name in self.parameters else self.iterator_types.get(name)
+            if type_ is None:
+                return AllOf()
+            self._ranges[name] = type_range(name, type_)
+        return self._ranges[name]
+
+    def region(self, *formulas: Formula) -> Region:
+        """All that is known, and these formulas."""
+        both = AllOf((*self.facts, *formulas))
+        return Region.where(both, self.ranges(formula_names(both)))
+
+    def proves(self, domain: Formula, formula: Formula) -> bool:
+        """True if the formula holds at every point of the domain."""
+        names = formula_names(formula)
+        return self.region(domain, self.ranges(names)).implies(formula)
+
+    def condition(self, obligation: Obligation) -> Formula | None:
+        """What must hold of the parameters; None if it always does, false (an empty ``AnyOf``) if it never can."""
+        names = formula_names(obligation.formula)
+        known = self.region(obligation.domain, self.ranges(names))
+        bad = (known - Region.where(obligation.formula)).without(obligation.iterators)
+        if bad.is_empty():
+            return None
+        # Only sizes at which the domain has points count; elsewhere the shorter condition may say no needlessly.
+        bad = bad.relative_to(known.without(obligation.iterators))
+        context = self.region(self.ranges(bad.names()))
+        good = (Region.where() - bad).relative_to(context)
+        return AnyOf() if (good & context).is_empty() else good.formula()
+
+
+    def exact_condition(self, obligation: Obligation) -> Formula | None:
+        """As ``condition``, but not a word more than is needed: for what is taken as a fact."""
+        names = formula_names(obligation.formula)
+        known = self.region(obligation.domain, self.ranges(names))
+        bad = (known - Region.where(obligation.formula)).without(obligation.iterators)
+        if bad.is_empty():
+            return None
+        context = self.region(self.ranges(bad.names()))
+        good = (context - bad).relative_to(context)
+        return AnyOf() if (context - bad).is_empty() else good.formula()
+
+
+def type_range(name: str, type_: CType) -> Formula:
+    """Where a symbol lies by its type."""
+    value = Affine.of(name)
+    return AllOf((at_most(type_.smallest, value), at_most(value, type_.largest)))
+
+
+def assumption(obligation: Obligation, condition: Formula, texts: Mapping[str, str]) -> Assumption:
+    """The assumption that the condition holds, in words."""
+    return Assumption(obligation.code, formula_text(condition, texts), condition, obligation.storages)

@@ -1,0 +1,175 @@
+"""Which storages may share bytes, and the assumptions that they do not.
+
+Two declared objects never overlap.  What a pointer leads to may be any object whose address is known outside, unless the
+pointer is ``restrict`` and the other is not derived from it (ISO/IEC 9899:2018, 6.7.3.1).  Types say nothing here: strict
+aliasing is not relied on, since many programs are built without it.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+from pycparser import c_ast
+
+from ..model import Assumption, AssumptionCode, ScalarClass, Storage, StorageKind
+from ..source.kinds import PointerTo
+from .places import Place, Root
+from .refusals import refusal
+from .scopes import Binding
+from .setting import Setting
+from .storages import Stored
+
+
+def overlap_assumptions(setting: Setting, stored: Stored, nodes: dict[str, Any]) -> None:
+    """Add the assumptions, and storages for what bounds and pointers are read from, to what is stored.
+
+    ``nodes`` has the syntax node of a store to each written storage.
+    """
+    _Overlaps(setting, stored, nodes).add()
+
+
+@dataclass(frozen=True)
+class _Held:
+    """Memory that must keep its value while the nest runs: a bound or a pointer."""
+
+    text: str  # of the bound or pointer
+    root: Root
+    storage: Storage
+    cell: str = ""  # the key of the cell, to recognise a direct store
+
+
+class _Overlaps:
+    def __init__(self, setting: Setting, stored: Stored, nodes: dict[str, Any]) -> None:
+        self._setting, self._stored, self._nodes = setting, stored, nodes
+        self._written = {access.storage for access in stored.accesses.values() if access.write}
+
+    def add(self) -> None:
+        stored = self._stored
+        names = [storage for storage in stored.storages]
+        for at, one in enumerate(names):
+            for other in names[at + 1:]:
+                if {one.name, other.name} & self._written and self._may_overlap(one, other):
+                    self._assume(AssumptionCode.NO_OVERLAP, one.name, other.name,
+                                 f"{one.name} and {other.name} do not overlap")
+            if one.name in self._written and one.name.endswith("[]"):
+                stored.assumptions.append(Assumption(
+                    AssumptionCode.OTHER, f"the rows that {one.name.removesuffix('[]')} points to do not overlap each other",
+                    None, (one.name,)))
+        self._hold(self._held())
+
+    def _assume(self, code: AssumptionCode, one: str, other: str, text: str) -> None:
+        self._stored.assumptions.append(Assumption(code, text, None, (one, other)))
+
+    # ------------------------------------------------------------ bounds and pointers in memory
+
+    def _held(self) -> list[_Held]:
+        found = []
+        for text, place in self._setting.held.items():
+            found.append(_Held(text, place.root, self._storage_of(text, place), place.key))
+        for binding in self._setting.held_variables:
+            type_ = self._setting.type_of_binding(binding)
+            pointer = isinstance(type_, PointerTo)
+            name = f"&{binding.name}" if pointer else binding.name
+            root = Root(binding.name, StorageKind.SCALAR, binding, f"&{binding.name}", True)
+            storage = Storage(name, name, StorageKind.SCALAR, "void *" if pointer else type_,
+                              self._setting.types.size_of(type_), (), (), False, binding.kind,
+                              ScalarClass.PARAMETER, (), True, f"&{binding.name}")
+            found.append(_Held(binding.name, root, storage, name))
+        return found
+
+    def _storage_of(self, text: str, place: Place) -> Storage:
+        """The structure, or the single cell, that a bound or pointer is read from."""
+        root, types = place.root, self._setting.types
+        scope = root.binding.kind if root.binding is not None else "argument"
+        if place.members and root.kind is StorageKind.POINTER and root.text:
+            size = types.size_of(place.step_type) if len(place.indices) == 1 else None
+            kind = getattr(place.step_type, "kind", "struct")
+            spelling = f"{kind} {getattr(place.step_type, 'tag', None) or ''}".strip()
+            return Storage(f"*{root.key}", root.key, StorageKind.POINTER, spelling, size, (), (), root.restrict, scope,
+                           None, (), True, root.text)
+        element = place.type if not isinstance(place.type, PointerTo) else "void *"
+        return Storage(text, root.key, StorageKind.POINTER, element, types.size_of(place.type), (), (), root.restrict,
+                       scope, None, (), True, f"&{text}")
+
+    def _hold(self, held: list[_Held]) -> None:
+        """No store of the nest may change what must keep its value."""
+        known = {storage.name for storage in self._stored.storages}
+        for one in held:
+            for name in [s.name for s in self._stored.storages if s.name in self._written]:
+                root = self._stored.roots.get(name)
+                if root is None or name == one.storage.name and one.storage.name in known and root.direct and \
+                        root.kind is StorageKind.SCALAR:
+                    continue
+                if root.key == one.root.key and root.kind is one.root.kind:
+                    self._direct(one, name)
+                elif self._roots_meet(root, one.root):
+                    self._need(one, name, known)
+
+    def _need(self, one: _Held, name: str, known: set[str]) -> None:
+        if one.storage.name not in known:
+            known.add(one.storage.name)
+            self._stored.storages.append(one.storage)
+            self._stored.roots[one.storage.name] = one.root
+        text = f"the stores to {name} do not change {one.text}"
+        if not any(a.storages == (one.storage.name, name) for a in self._stored.assumptions):
+            self._assume(AssumptionCode.UNCHANGED, one.storage.name, name, text)
+
+    def _direct(self, one: _Held, name: str) -> None:
+        """A store to the same object: harmless if it is another member, which other indices do not change."""
+        shown = name.replace("->", ".", 1)
+        if shown != one.cell:
+            return
+        node = self._nodes.get(name)
+        self._stored.refusals.append(refusal(
+            node, "bound-changed", f"the nest stores to {name}, from which it also reads `{one.text}` as a bound or pointer; "
+                                   "copy that to a variable of its own before the nest."))
+
+    # ------------------------------------------------------------ may two overlap?
+
+    def _may_overlap(self, one: Storage, other: Storage) -> bool:
+        if one.object == other.object:
+            return False
+        return self._roots_meet(self._stored.roots[one.name], self._stored.roots[other.name])
+
+    def _roots_meet(self, one: Root, other: Root) -> bool:
+        a, b = one.kind is StorageKind.POINTER, other.kind is StorageKind.POINTER
+        if not a and not b:
+            return False
+        if a and b:
+            return not (self._excludes(one, other) or self._excludes(other, one))
+        pointer, declared = (one, other) if a else (other, one)
+        if declared.binding is None or not self._setting.reachable(declared.binding):
+            return False
+        if declared.binding.automatic and self._is_untouched_argument(pointer):
+            return False
+        return not self._excludes(pointer, declared)
+
+    def _is_untouched_argument(self, root: Root) -> bool:
+        """A pointer parameter as the caller gave it: it cannot lead to a local of this call, nor derive from another."""
+        binding = root.binding
+        return root.direct and binding is not None and binding.kind == "argument" and \
+            not self._setting.names.assignments.get(binding) and not self._setting.names.address_taken(binding)
+
+    def _excludes(self, restricted: Root, other: Root) -> bool:
+        """True if one is restrict and the other surely not derived from it."""
+        if not restricted.restrict or restricted.binding is None:
+            return False
+        if self._is_untouched_argument(other) or other.kind is not StorageKind.POINTER:
+            return True
+        return not self._leaks(restricted.binding)
+
+    def _leaks(self, binding: Binding) -> bool:
+        """True if the pointer is used for more than reaching elements, so that others may derive from it."""
+        return any(not self._only_reached_through(use) for use in binding.uses)
+
+    def _only_reached_through(self, node: Any) -> bool:
+        names = self._setting.names
+        parent = names.parent(node)
+        while isinstance(parent, c_ast.BinaryOp) and parent.op in "+-":
+            node, parent = parent, names.parent(parent)
+        reached = isinstance(parent, c_ast.ArrayRef) and parent.name is node or \
+            isinstance(parent, c_ast.StructRef) or isinstance(parent, c_ast.UnaryOp) and parent.op == "*"
+        while isinstance(parent, (c_ast.ArrayRef, c_ast.StructRef)):
+            parent = names.parent(parent)
+        return reached and not (isinstance(parent, c_ast.UnaryOp) and parent.op == "&")

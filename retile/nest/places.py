@@ -1,0 +1,347 @@
+"""From C designators to cells: which object, which member, which subscripts.
+
+A pointer that is only computed from another one (``double *row = a + i*n``) is followed to it.  A pointer read from memory
+is told by its text if it is one and the same throughout the nest (``g->depth``), else its targets are the rows of a
+table (``rows[]``), with the subscripts of the table first.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+from pycparser import c_ast
+
+from ..model import CType, StorageKind
+from ..source.kinds import ArrayOf, PointerTo, StructType, UnknownType, Void
+from .context import Context
+from .polynomial import Poly
+from .refusals import Refused, refused
+from .scopes import Binding
+from .setting import Setting, c_text
+
+
+@dataclass(frozen=True)
+class Root:
+    """An object, or what a pointer leads to."""
+
+    key: str  # ``a``, ``g->depth``, ``rows[]``
+    kind: StorageKind
+    binding: Binding | None  # the variable at the bottom: the object itself, or where the pointer comes from
+    text: str  # C text of the address of its first cell; empty for rows, which have no common first cell
+    direct: bool  # the object itself, or the target of the variable itself, not of a pointer in memory
+    restrict: bool = False
+
+
+@dataclass(frozen=True)
+class Index:
+    """One subscript."""
+
+    poly: Poly | None  # None: any value
+    extent: Any = None  # expression of the declared length; None where there is none
+    loose: bool = False  # reached by pointer arithmetic: may run past its row
+
+    @property
+    def key(self) -> str:
+        """Its part of a storage's name."""
+        return ""
+
+
+@dataclass(frozen=True)
+class Member:
+    """One member of a structure."""
+
+    name: str
+    bits: int | None = None
+
+    @property
+    def key(self) -> str:
+        """Its part of a storage's name."""
+        return "." + self.name
+
+
+@dataclass(frozen=True)
+class Place:
+    """A cell, or an array or structure of cells."""
+
+    root: Root
+    steps: tuple[Index | Member, ...]
+    type: Any
+    quals: frozenset[str] = frozenset()
+    step_type: Any = None  # what the last subscript counts
+
+    @property
+    def key(self) -> str:
+        """The same for all cells that differ only in subscripts."""
+        return self.root.key + "".join(step.key for step in self.steps)
+
+    @property
+    def indices(self) -> tuple[Index, ...]:
+        """The subscripts, outermost first."""
+        return tuple(step for step in self.steps if isinstance(step, Index))
+
+    @property
+    def members(self) -> tuple[str, ...]:
+        """The members on the way."""
+        return tuple(step.name for step in self.steps if isinstance(step, Member))
+
+    def is_fixed(self, loop_ids: set[str]) -> bool:
+        """True if it is one and the same cell throughout the nest."""
+        return all(one.poly is not None and not one.poly.names() & loop_ids for one in self.indices)
+
+
+class Places:
+    """Reads designators and pointer expressions in one setting."""
+
+    def __init__(self, setting: Setting) -> None:
+        self._setting = setting
+        self._keys: dict[str, Binding] = {}
+
+    # ------------------------------------------------------------ designators
+
+    def attempt(self, node: Any, context: Context) -> Place | None:
+        """As ``place``, but None instead of a refusal."""
+        try:
+            return self.place(node, context)
+        except Refused:
+            return None
+
+    def place(self, node: Any, context: Context) -> Place:
+        """The cell that a designator names; Refused if that cannot be told."""
+        match node:
+            case c_ast.ID():
+                return self._variable(node)
+            case c_ast.ArrayRef():
+                return self._element(node, context)
+            case c_ast.UnaryOp(op="*"):
+                return self.pointer(node.expr, context)
+            case c_ast.StructRef():
+                return self._member(node, context)
+            case c_ast.Cast():
+                return self.place(node.expr, context)
+        raise refused(node, "unsupported", f"retile cannot tell which memory `{c_text(node)}` is; "
+                                           "name the array or structure directly.")
+
+    def _variable(self, node: Any) -> Place:
+        binding = self._setting.names.of(node)
+        if binding is None or not binding.is_object:
+            raise refused(node, "unsupported", f"`{node.name}` is no variable that retile can see.")
+        type_ = self._setting.type_of_binding(binding)
+        self._check(node, type_, frozenset())
+        kind = StorageKind.ARRAY if isinstance(type_, (ArrayOf, StructType)) else StorageKind.SCALAR
+        key = self.key_of(binding)
+        quals = self._setting.types.qualifiers(binding.decl) if binding.decl is not None else frozenset()
+        self._check(node, type_, quals)
+        text = binding.name if isinstance(type_, ArrayOf) else f"&{binding.name}"
+        return Place(Root(key, kind, binding, text, True), (), type_, quals)
+
+    def variable(self, binding: Binding) -> Place:
+        """The cell of a scalar or pointer variable itself."""
+        type_ = self._setting.type_of_binding(binding)
+        return Place(Root(self.key_of(binding), StorageKind.SCALAR, binding, f"&{binding.name}", True), (), type_)
+
+    def declared(self, decl: Any) -> Place:
+        """The object of a declaration."""
+        binding = self._setting.names.of(decl)
+        assert binding is not None
+        type_ = self._setting.type_of_binding(binding)
+        self._check(decl, type_, self._setting.types.qualifiers(decl))
+        kind = StorageKind.ARRAY if isinstance(type_, (ArrayOf, StructType)) else StorageKind.SCALAR
+        text = binding.name if isinstance(type_, ArrayOf) else f"&{binding.name}"
+        return Place(Root(self.key_of(binding), kind, binding, text, True), (), type_)
+
+    def cells(self, place: Place, node: Any) -> list[Place]:
+        """All cells of a small array with constant extents."""
+        found = [place]
+        while found and isinstance(found[0].type, ArrayOf):
+            extent = self._setting.types.constant(found[0].type.extent) if found[0].type.extent is not None else None
+            if extent is None or extent * len(found) > 256:
+                raise refused(node, "unsupported", "an array is initialised inside the nest whose length is not a small "
+                                                   "constant; assign its elements in a loop.")
+            found = [self._into(one, Index(Poly.of(at), one.type.extent), node) for one in found for at in range(extent)]
+        return found
+
+    def key_of(self, binding: Binding) -> str:
+        """A name for an object, with its line where another object of the nest has the same name."""
+        for key in (binding.name, f"{binding.name}@{_line(binding.decl)}", f"{binding.name}@{id(binding.decl)}"):
+            if self._keys.setdefault(key, binding) is binding:
+                return key
+        return binding.name
+
+    def _element(self, node: Any, context: Context) -> Place:
+        base, subscript = node.name, node.subscript
+        if isinstance(self._setting.type_of(base), CType):  # 3[a] is a[3]
+            base, subscript = subscript, base
+        index = self._setting.expressions.subscript(subscript, context)
+        if isinstance(self._setting.type_of(base), ArrayOf):
+            array = self.place(base, context)
+            return self._into(array, Index(index, array.type.extent), node)
+        return self._moved(self.pointer(base, context), index, node)
+
+    def _into(self, array: Place, index: Index, node: Any) -> Place:
+        self._check(node, array.type.element, array.type.element_quals)
+        return replace(array, steps=(*array.steps, index), type=array.type.element, quals=array.type.element_quals,
+                       step_type=array.type.element)
+
+    def _member(self, node: Any, context: Context) -> Place:
+        whole = self.pointer(node.name, context) if node.type == "->" else self.place(node.name, context)
+        if not isinstance(whole.type, StructType):
+            raise refused(node, "unsupported", f"retile cannot read the type of `{c_text(node.name)}`.")
+        if whole.type.kind == "union" or self._in_union(whole.type, node.field.name):
+            raise refused(node, "union", f"`{c_text(node)}` is a member of a union, whose members share memory; "
+                                         "use a plain variable in the nest.")
+        member = self._setting.types.member(whole.type, node.field.name)
+        if member is None:
+            raise refused(node, "unsupported", f"the structure with the member `{node.field.name}` is not known here.")
+        self._check(node, member.type, member.quals)
+        return Place(whole.root, (*whole.steps, Member(node.field.name, member.bits)), member.type,
+                     member.quals | whole.quals, whole.step_type)
+
+    def _in_union(self, type_: StructType, name: str) -> bool:
+        for member in self._setting.types.members(type_) or ():
+            if member.name is None and isinstance(member.type, StructType) and \
+                    self._setting.types.member(member.type, name) is not None:
+                return member.type.kind == "union" or self._in_union(member.type, name)
+        return False
+
+    def _check(self, node: Any, type_: Any, quals: frozenset[str]) -> None:
+        if isinstance(type_, UnknownType):
+            raise refused(node, "unsupported", f"retile cannot read the type of `{c_text(node)}`: {type_.reason}.")
+        pointer = type_.quals if isinstance(type_, PointerTo) else frozenset()
+        for word, code in (("volatile", "volatile"), ("_Atomic", "atomic")):
+            if word in quals | pointer:
+                raise refused(node, code, f"`{c_text(node)}` is {word}: every access to it must stay where it is; "
+                                          "copy it to a plain variable before the nest.")
+
+    # ------------------------------------------------------------ pointers
+
+    def pointer(self, node: Any, context: Context) -> Place:
+        """The cell that a pointer expression points to; Refused if that cannot be told."""
+        type_ = self._setting.type_of(node)
+        if isinstance(type_, ArrayOf):
+            array = self.place(node, context)
+            return self._into(array, Index(Poly(), array.type.extent), node)
+        match node:
+            case c_ast.ID():
+                return self._pointer_variable(node, context)
+            case c_ast.BinaryOp(op="+") | c_ast.BinaryOp(op="-"):
+                return self._sum(node, context)
+            case c_ast.UnaryOp(op="&"):
+                return self.place(node.expr, context)
+            case c_ast.Cast():
+                return self._cast(node, context)
+            case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
+                return self._loaded(node, context)
+        raise self._unknown(node)
+
+    def _unknown(self, node: Any) -> Refused:
+        return refused(node, "pointer", f"retile cannot tell where `{c_text(node)}` points; "
+                                        "name the array that is meant.")
+
+    def _sum(self, node: Any, context: Context) -> Place:
+        base, offset = node.left, node.right
+        if isinstance(self._setting.type_of(base), CType) and node.op == "+":
+            base, offset = offset, base
+        index = self._setting.expressions.subscript(offset, context)
+        return self._moved(self.pointer(base, context), -index if index is not None and node.op == "-" else index, node)
+
+    def _moved(self, place: Place, by: Poly | None, node: Any) -> Place:
+        """The cell ``by`` elements further on."""
+        if by is not None and by.constant == 0:
+            return place
+        last = place.steps[-1] if place.steps else None
+        if not isinstance(last, Index):
+            raise refused(node, "pointer", f"`{c_text(node)}` moves a pointer to a single object; name an array.")
+        poly = None if by is None or last.poly is None else last.poly + by
+        moved = Index(poly, last.extent, last.loose or len(place.indices) > 1)
+        return replace(place, steps=(*place.steps[:-1], moved))
+
+    def _cast(self, node: Any, context: Context) -> Place:
+        to, inner = self._setting.types.of(node.to_type), self._setting.type_of(node.expr)
+        place = self.pointer(node.expr, context) if isinstance(inner, (PointerTo, ArrayOf)) else None
+        if place is None or not isinstance(to, PointerTo) or _bare(to.target) != _bare(place.type):
+            raise self._unknown(node)
+        return place
+
+    def _pointer_variable(self, node: Any, context: Context) -> Place:
+        setting, binding = self._setting, self._setting.names.of(node)
+        if binding is None or not binding.is_object:
+            raise self._unknown(node)
+        type_ = setting.type_of_binding(binding)
+        if not isinstance(type_, PointerTo):
+            raise self._unknown(node)
+        self._check(node, type_, frozenset())
+        definition = setting.definition(binding, context)
+        if definition is not None:
+            return self.pointer(definition.expression, definition.context)
+        if not setting.is_frozen(binding):
+            raise refused(node, "pointer-assigned", f"the pointer `{binding.name}` gets another value inside the nest; "
+                                                    "use subscripts from a pointer that stays.")
+        origin = self._origin(binding)
+        if origin is not None:
+            return origin
+        if setting.reachable(binding):
+            setting.held_variables[binding] = None
+        root = Root(self.key_of(binding), StorageKind.POINTER, binding, binding.name, True, type_.restrict)
+        return self._target(root, (Index(Poly()),), type_, node)
+
+    def _origin(self, binding: Binding) -> Place | None:
+        """Where a local pointer comes from that got its only value before the nest, from pointers that stay too."""
+        nodes = self._setting.names.assignments.get(binding, [])
+        if binding.kind != "local" or len(nodes) != 1 or not isinstance(nodes[0], c_ast.Decl):
+            return None
+        if self._setting.names.address_taken(binding) or not self._constant_since(nodes[0].init):
+            return None
+        try:
+            return self.pointer(nodes[0].init, Context())
+        except Refused:
+            return None
+
+    def _constant_since(self, node: Any) -> bool:
+        """True for sums of variables that have one value in the whole function, or in the loop around the nest."""
+        match node:
+            case c_ast.Constant():
+                return True
+            case c_ast.ID():
+                binding = self._setting.names.of(node)
+                if binding is None or not binding.is_object or self._setting.reachable(binding):
+                    return binding is not None and isinstance(self._setting.type_of(node), ArrayOf)
+                nodes = self._setting.names.assignments.get(binding, [])
+                return not nodes if binding.kind == "argument" else \
+                    len(nodes) == 1 and isinstance(nodes[0], c_ast.Decl) and binding.kind == "local" and \
+                    not _is_for_init(nodes[0], self._setting)
+            case c_ast.BinaryOp() if node.op in "+-*":
+                return self._constant_since(node.left) and self._constant_since(node.right)
+        return False
+
+    def _target(self, root: Root, steps: tuple[Index | Member, ...], pointer: PointerTo, node: Any) -> Place:
+        if isinstance(pointer.target, Void):
+            raise self._unknown(node)
+        self._check(node, pointer.target, pointer.target_quals)
+        return Place(root, steps, pointer.target, pointer.target_quals, pointer.target)
+
+    def _loaded(self, node: Any, context: Context) -> Place:
+        """What a pointer in memory leads to."""
+        cell = self.place(node, context)
+        if not isinstance(cell.type, PointerTo):
+            raise self._unknown(node)
+        if cell.is_fixed(self._setting.loop_ids) and all(one.poly == Poly() for one in cell.indices):
+            if not self._setting.strict:
+                self._setting.held[c_text(node)] = cell
+            root = Root(c_text(node), StorageKind.POINTER, cell.root.binding, c_text(node), False)
+            return self._target(root, (Index(Poly()),), cell.type, node)
+        root = Root(cell.key + "[]", StorageKind.POINTER, cell.root.binding, "", False)
+        return self._target(root, (*cell.indices, Index(Poly())), cell.type, node)
+
+
+def _bare(type_: Any) -> Any:
+    """A type for comparison: arithmetic ones by width and kind, others as they are."""
+    return (type_.bits, type_.signed, type_.floating) if isinstance(type_, CType) else type_
+
+
+def _line(node: Any) -> int:
+    return getattr(getattr(node, "coord", None), "line", 0)
+
+
+def _is_for_init(decl: Any, setting: Setting) -> bool:
+    return any(isinstance(one, (c_ast.For, c_ast.DeclList)) for one in [setting.names.parent(decl)])

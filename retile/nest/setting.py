@@ -1,0 +1,279 @@
+"""What the readers of one nest share: names, types, parameters, definitions and obligations.
+
+The one mutable object of the room.  It lives while one nest is read, and what it has gathered becomes the nest.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+from pycparser import c_ast, c_generator
+
+from ..affine import Affine, Formula
+from ..model import AssumptionCode, CType, Parameter
+from .calls import is_pure_call
+from .context import Context
+from .knowledge import Knowledge, Obligation
+from .polynomial import Monomial, Poly, symbol_names
+from .scopes import Binding, FunctionNames, descendants
+from .unit import Unit
+
+if TYPE_CHECKING:
+    from .expressions import Expressions
+    from .places import Place, Places
+
+
+@dataclass(frozen=True)
+class Definition:
+    """The one expression that gives a local its value, and where it stands."""
+
+    expression: Any
+    context: Context
+
+
+def c_text(node: Any) -> str:
+    """An expression as C text, macros expanded."""
+    return str(c_generator.CGenerator().visit(node))
+
+
+class Setting:
+    """Everything that depends on which piece of the function is being read.
+
+    ``within`` is the piece during which parameters must not change.  A strict setting proves or gives up; one that is
+    not strict turns what it cannot prove into obligations, to be settled when all facts are known.
+    """
+
+    expressions: Expressions
+    places: Places
+
+    def __init__(self, unit: Unit, names: FunctionNames, within: Any, knowledge: Knowledge, strict: bool) -> None:
+        self.unit, self.names, self.within, self.knowledge, self.strict = unit, names, within, knowledge, strict
+        self.types = unit.types
+        self.obligations: dict[Obligation, None] = {}
+        self.definitions: dict[Binding, Definition] = {}
+        self.held: dict[str, Place] = {}  # cells in memory that must keep their values, by C text
+        self.held_variables: dict[Binding, None] = {}  # variables that must, and that a pointer might reach
+        self.factors: dict[str, Poly] = {}  # sums of parameters kept whole, such as the ``m + 1`` of a row
+        self.narrow: list[tuple[Poly, CType, Context, Any]] = []  # products in fewer bits than an address has
+        self.loop_ids: set[str] = set()
+        self.loop_iterators: set[Binding] = set()
+        self.outer_iterators: dict[Binding, str] = {}
+        inside = {id(node) for node in descendants(within)}
+        self._assigned = {binding: [node for node in nodes if id(node) in inside]
+                          for binding, nodes in names.assignments.items()}
+
+    # ------------------------------------------------------------ objects
+
+    def type_of(self, node: Any) -> Any:
+        """The C type of an expression."""
+        return self.names.type_of(node)
+
+    def type_of_binding(self, binding: Binding) -> Any:
+        """The C type of a declared object."""
+        return self.names.type_of_binding(binding)
+
+    def assigned(self, binding: Binding) -> list[Any]:
+        """The nodes inside the piece that give the object a value."""
+        return self._assigned.get(binding, [])
+
+    def is_frozen(self, binding: Binding) -> bool:
+        """True if no statement of the piece names the object as its target."""
+        return binding.is_object and not self.assigned(binding)
+
+    def is_iterator(self, binding: Binding) -> bool:
+        """True if some loop of the nest runs over the variable."""
+        return binding in self.loop_iterators
+
+    def reachable(self, binding: Binding) -> bool:
+        """True if some pointer may lead to the object."""
+        if binding.kind == "global" and not binding.file_static:
+            return True
+        if binding.file_static or binding.kind == "global":
+            return self.unit.address_taken_in_file(binding)
+        return self.names.address_taken(binding)
+
+    def define(self, binding: Binding, expression: Any, context: Context) -> None:
+        """Note that this is the only assignment to a local inside the nest."""
+        if len(self.assigned(binding)) == 1 and binding.automatic and not self.names.address_taken(binding):
+            self.definitions[binding] = Definition(expression, context)
+
+    def definition(self, binding: Binding, context: Context) -> Definition | None:
+        """The definition that every use here sees; None if there is no such."""
+        found = self.definitions.get(binding)
+        return found if found is not None and found.context.covers(context) else None
+
+    # ------------------------------------------------------------ parameters
+
+    def parameter_of(self, binding: Binding, type_: CType) -> str:
+        """The parameter for an integer variable that keeps its value."""
+        if not self.strict and self.reachable(binding):
+            self.held_variables[binding] = None
+        kind = "outer iterator" if binding in self.outer_iterators else binding.kind
+        kind = {"static": "local", "global": "global"}.get(kind, kind)
+        return self.knowledge.add_parameter(Parameter(binding.name, binding.name, type_, kind))
+
+    def frozen_load(self, node: Any, type_: CType, context: Context) -> str | None:
+        """The parameter for an integer in memory that keeps its value; None if it is none."""
+        if self.strict:
+            return None
+        place = self.places.attempt(node, context)
+        if place is None or not place.is_fixed(self.loop_ids):
+            return None
+        text = c_text(node)
+        self.held[text] = place
+        return self.knowledge.add_parameter(Parameter(text, text, type_, "member" if "." in text or "->" in text
+                                                      else "expression"))
+
+    def expression_parameter(self, text: str, type_: CType) -> str:
+        """The parameter for an expression that keeps its value."""
+        plain = text if text.replace("_", "a").isalnum() else f"({text})"
+        return self.knowledge.add_parameter(Parameter(text, plain, type_, "expression"))
+
+    def frozen_expression(self, node: Any, context: Context) -> bool:
+        """True if nothing in the expression changes while the piece runs; notes the memory that it reads."""
+        match node:
+            case c_ast.Constant():
+                return True
+            case c_ast.ID():
+                return self._frozen_name(node, context)
+            case c_ast.UnaryOp() if node.op == "sizeof":
+                return self.types.constant(node) is not None
+            case c_ast.UnaryOp() if node.op in ("+", "-", "~", "!"):
+                return self.frozen_expression(node.expr, context)
+            case c_ast.BinaryOp():
+                return self.frozen_expression(node.left, context) and self.frozen_expression(node.right, context)
+            case c_ast.TernaryOp():
+                return all(self.frozen_expression(part, context) for part in (node.cond, node.iftrue, node.iffalse))
+            case c_ast.Cast():
+                return isinstance(self.types.of(node.to_type), CType) and self.frozen_expression(node.expr, context)
+            case c_ast.FuncCall():
+                return is_pure_call(node, self) and all(
+                    self.frozen_expression(one, context) for one in (node.args.exprs if node.args else ()))
+            case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
+                return self._frozen_memory(node, context)
+        return False
+
+    def _frozen_name(self, node: Any, context: Context) -> bool:
+        binding = self.names.of(node)
+        if binding is None or context.iterator(binding) is not None:
+            return False
+        if binding.kind == "enumerator":
+            return True
+        if not self.is_frozen(binding) or not isinstance(self.type_of(node), CType):
+            return False
+        if not self.strict and self.reachable(binding):
+            self.held_variables[binding] = None
+        return not (self.strict and self.reachable(binding))
+
+    def _frozen_memory(self, node: Any, context: Context) -> bool:
+        if self.strict or not isinstance(self.type_of(node), CType):
+            return False
+        place = self.places.attempt(node, context)
+        if place is None or not place.is_fixed(self.loop_ids):
+            return False
+        self.held[c_text(node)] = place
+        return True
+
+    # ------------------------------------------------------------ polynomials
+
+    def is_parameter_poly(self, poly: Poly) -> bool:
+        """True if no iterator of the nest occurs."""
+        return not poly.names() & self.loop_ids
+
+    def product(self, left: Poly, right: Poly) -> Poly:
+        """The product; a sum of parameters that multiplies something else stays whole, as the length of a row does."""
+        return self._whole(left, right) * self._whole(right, left)
+
+    def _whole(self, poly: Poly, other: Poly) -> Poly:
+        if len(poly.terms) < 2 or other.constant is not None or not self.is_parameter_poly(poly):
+            return poly
+        symbol = f"({self.poly_text(poly)})"
+        self.factors[symbol] = poly
+        return Poly.of(symbol)
+
+    def expanded(self, poly: Poly) -> Poly:
+        """The polynomial with all sums that were kept whole multiplied out."""
+        while any(name in self.factors for name in poly.names()):
+            poly = poly.replace(dict(self.factors))
+        return poly
+
+    def affine(self, poly: Poly) -> Affine | None:
+        """The polynomial as an affine form; products of parameters become parameters; None if iterators multiply."""
+        total = Poly()
+        for factors, coefficient in self.expanded(poly).terms:
+            if len(factors) > 1:
+                if any(symbol_names(factor) & self.loop_ids for factor in factors):
+                    return None
+                factors = (self.product_parameter(factors),)
+            total = total + Poly(((factors, coefficient),))
+        return total.affine()
+
+    def product_parameter(self, factors: Monomial) -> str:
+        """The parameter for a product of parameters, computed in a wide type."""
+        texts = [self.poly_text(Poly.of(factor)) for factor in factors]
+        types = [self.knowledge.parameters[f].type for f in factors if isinstance(f, str)]
+        wide = self.types.arithmetic.named(("long", "long"))
+        if any(t.bits == 64 for t in types):
+            wide, cast = next(t for t in types if t.bits == 64), ""
+        else:
+            cast = "(long long)"
+        symbol = " * ".join(texts)
+        return self.knowledge.add_parameter(Parameter(symbol, f"({cast}{symbol})", wide, "expression"))
+
+    def wide_parameter(self, symbol: str, text: str, type_: CType) -> str:
+        """A parameter with a text of its own."""
+        return self.knowledge.add_parameter(Parameter(symbol, text, type_, "expression"))
+
+    def stable_form(self, node: Any) -> Affine | None:
+        """An expression of variables that have one value in the whole call, as extents of parameters are read."""
+        for one in descendants(node):
+            binding = self.names.of(one) if isinstance(one, c_ast.ID) else None
+            if isinstance(one, c_ast.ID) and binding is None:
+                return None
+            if binding is not None and binding.is_object and (
+                    not binding.automatic or self.names.address_taken(binding) or
+                    len(self.names.assignments.get(binding, ())) > (binding.kind == "local")):
+                return None
+        strict, self.strict = self.strict, True
+        try:
+            return self.expressions.affine(node, Context())
+        finally:
+            self.strict = strict
+
+    def poly_text(self, poly: Poly) -> str:
+        """A polynomial as C text."""
+        from .readable import form_text
+
+        parts = []
+        for factors, coefficient in sorted(poly.terms, key=lambda term: (term[1] < 0, len(term[0]) == 0)):
+            texts = [form_text(Affine.of(f), self.texts()) for f in factors]
+            if abs(coefficient) != 1 or not texts:
+                texts.insert(0, str(abs(coefficient)))
+            parts.append(("- " if coefficient < 0 else "+ ") + " * ".join(texts))
+        text = " ".join(parts) or "0"
+        return text[2:] if text.startswith("+ ") else text.replace("- ", "-", 1)
+
+    def texts(self) -> dict[str, str]:
+        """The C text of each parameter and each sum that was kept whole."""
+        known = {symbol: parameter.text for symbol, parameter in self.knowledge.parameters.items()}
+        return known | {symbol: symbol for symbol in self.factors}
+
+    # ------------------------------------------------------------ obligations
+
+    def require(self, code: AssumptionCode, formula: Formula, context: Context, node: Any,
+                storages: tuple[str, ...] = ()) -> bool:
+        """Note that a formula must hold here; False if that is hopeless."""
+        if self.strict:
+            return self.knowledge.proves(context.formula, formula)
+        self.obligations.setdefault(
+            Obligation(code, formula, context.formula, context.loops, node, storages))
+        return True
+
+    def narrow_product(self, poly: Poly, type_: CType, context: Context, node: Any) -> Poly | None:
+        """A product that may wrap in fewer bits than an address has: kept, if the wrapping can be excluded later."""
+        if self.strict:
+            return None
+        self.narrow.append((poly, type_, context, node))
+        return poly
+

@@ -1,0 +1,238 @@
+"""From touches to storages and accesses: shapes, strides, roles of variables."""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from dataclasses import dataclass, field
+from typing import Any
+
+from ..affine import Affine, AllOf, at_most, less
+from ..model import Access, Assumption, AssumptionCode, CType, Refusal, ScalarClass, Storage, StorageKind
+from ..source.kinds import ArrayOf, PointerTo
+from .effects import Touch
+from .knowledge import Obligation
+from .liveness import live_after
+from .places import Index, Member, Place, Root
+from .polynomial import Poly
+from .refusals import refusal
+from .scalars import Numbered, Web, webs
+from .setting import Setting, c_text
+from .shapes import Grid, Stride, Subscript, grid_of, needs_grid, product_bound, stride_texts
+from .walk import Walk
+
+
+@dataclass
+class Stored:
+    """The storages of a nest, and which access each touch became."""
+
+    storages: list[Storage] = field(default_factory=list)
+    roots: dict[str, Root] = field(default_factory=dict)  # by storage name
+    accesses: dict[tuple[int, int], Access] = field(default_factory=dict)  # by statement and touch number
+    refusals: list[Refusal] = field(default_factory=list)
+    obligations: list[Obligation] = field(default_factory=list)
+    assumptions: list[Assumption] = field(default_factory=list)
+
+
+def store(setting: Setting, walk: Walk, nest: Any) -> Stored:
+    """Give every touch of the nest its storage and subscripts."""
+    return _Builder(setting, walk, nest).stored
+
+
+class _Builder:
+    def __init__(self, setting: Setting, walk: Walk, nest: Any) -> None:
+        self._setting, self._walk, self._nest = setting, walk, nest
+        self.stored = Stored()
+        groups: dict[str, list[Numbered]] = defaultdict(list)
+        for number, statement in enumerate(walk.statements):
+            for place, touch in enumerate(statement.touches):
+                groups[touch.place.key].append(((number, place), touch))
+        for key, touches in groups.items():
+            if touches[0][1].place.root.kind is StorageKind.SCALAR:
+                self._variable(key, touches)
+            else:
+                self._array(key, touches)
+
+    def _span(self, order: tuple[int, int]) -> Any:
+        return self._walk.statements[order[0]].span
+
+    # ------------------------------------------------------------ variables
+
+    def _variable(self, key: str, touches: list[Numbered]) -> None:
+        binding = touches[0][1].place.root.binding
+        assert binding is not None
+        declared = self._walk.block_declared.get(binding)
+        if declared is not None and any(touch.write for _, touch in touches):
+            lives: tuple[Web, ...] = (Web(tuple(touches), ScalarClass.PRIVATE, declared),)
+        else:
+            lives = webs(touches, self._walk.branches)
+        live = declared is None and live_after(binding, self._nest, self._setting.names)
+        for number, web in enumerate(lives):
+            name = key if number == 0 else f"{key}@{self._span(web.touches[0][0]).line}"
+            if any(one.name == name for one in self.stored.storages):
+                name = f"{name}:{self._span(web.touches[0][0]).column}"
+            self._add_variable(name, web, live)
+
+    def _add_variable(self, name: str, web: Web, live: bool) -> None:
+        place = web.touches[0][1].place
+        binding = place.root.binding
+        assert binding is not None
+        scope = "block" if binding in self._walk.block_declared else binding.kind
+        self.stored.storages.append(Storage(
+            name, place.root.key, StorageKind.SCALAR, self._element(place.type), self._bytes(place), (), (), False, scope,
+            web.role, web.private_to, live, place.root.text, "const" in place.quals))
+        self.stored.roots[name] = place.root
+        for order, touch in web.touches:
+            self.stored.accesses[order] = Access(name, touch.write, (), touch.context.certain, self._span(order))
+
+    def _element(self, type_: Any) -> CType | str:
+        if isinstance(type_, CType):
+            return type_
+        return f"{self._spelling(type_.target)} *" if isinstance(type_, PointerTo) else self._spelling(type_)
+
+    def _spelling(self, type_: Any) -> str:
+        if isinstance(type_, CType):
+            return type_.spelling
+        if isinstance(type_, PointerTo):
+            return f"{self._spelling(type_.target)} *"
+        if isinstance(type_, ArrayOf):
+            return f"{self._spelling(type_.element)} []"
+        tag = getattr(type_, "tag", None)
+        return f"{type_.kind} {tag}" if tag else type(type_).__name__.lower()
+
+    def _bytes(self, place: Place) -> int | None:
+        counted = place.step_type if place.step_type is not None else place.type
+        return self._setting.types.size_of(counted)
+
+    # ------------------------------------------------------------ arrays
+
+    def _array(self, key: str, touches: list[Numbered]) -> None:
+        place = touches[0][1].place
+        columns: list[list[tuple[Affine, ...] | None]] = [[] for _ in touches]
+        shape: list[Affine | None] = []
+        strides: tuple[str, ...] = ()
+        for dimension, index in enumerate(place.indices):
+            grid = self._dimension(key, touches, dimension)
+            for column, subscripts in zip(columns, grid.subscripts, strict=True):
+                column.append(subscripts)
+            width = len(grid.strides)
+            shape += [self._extent(place, dimension, index)] if width == 1 else [None] * width
+            if width > 1 and len(place.indices) == 1:
+                strides = stride_texts(self._setting, grid.strides)
+            self.stored.obligations += grid.obligations
+        self._loose(key, touches)
+        self._add_array(key, touches, shape, strides, columns)
+
+    def _add_array(self, key: str, touches: list[Numbered], shape: list[Affine | None], strides: tuple[str, ...],
+                   columns: list[list[tuple[Affine, ...] | None]]) -> None:
+        place, root = touches[0][1].place, touches[0][1].place.root
+        name = _shown(key, [touch.place for _, touch in touches])
+        binding = root.binding
+        block = binding in self._walk.block_declared and root.direct and root.kind is StorageKind.ARRAY
+        scope = "block" if block else binding.kind if binding is not None else "argument"
+        private = self._walk.block_declared[binding] if block and binding is not None else ()
+        live = not block and (root.kind is StorageKind.POINTER or binding is None or
+                              live_after(binding, self._nest, self._setting.names))
+        self.stored.storages.append(Storage(
+            name, root.key, root.kind, self._element(place.type), self._bytes(place), tuple(shape), strides, root.restrict,
+            scope, None, private, live, self._address(place), "const" in place.quals))
+        self.stored.roots[name] = root
+        for (order, touch), column in zip(touches, columns, strict=True):
+            known = [part for part in column if part is not None]
+            subscripts = tuple(form for part in known for form in part) if len(known) == len(column) else None
+            if subscripts is None and touch.write:
+                self._refuse_write(touch)
+            self.stored.accesses[order] = Access(name, touch.write, subscripts, touch.context.certain, self._span(order))
+
+    def _refuse_write(self, touch: Touch) -> None:
+        indirect = any(one.poly is None for one in touch.place.indices)
+        why = "the subscript comes from data or is no linear form of iterators and sizes" if indirect else \
+            "its subscripts do not fall into rows of one length"
+        self.stored.refusals.append(refusal(
+            touch.node, "nonaffine-write", f"which cell `{c_text(touch.node)}` writes cannot be told: {why}."))
+
+    def _address(self, place: Place) -> str:
+        """C text of the address of the first cell."""
+        if not place.members:
+            return place.root.text
+        if not place.root.text:
+            return ""
+        text, pointer = place.root.text, True
+        if place.root.kind is not StorageKind.POINTER:
+            text, pointer = place.root.text.removeprefix("&"), not place.root.text.startswith("&")
+        for step in place.steps:
+            if isinstance(step, Member):
+                text, pointer = f"{text}{'->' if pointer else '.'}{step.name}", False
+            elif not pointer:
+                text, pointer = text, True
+        return text if pointer else f"&{text}"
+
+    def _extent(self, place: Place, dimension: int, index: Index) -> Affine | None:
+        """A declared extent; None where the code states none or cannot be held to it."""
+        if index.extent is None:
+            return None
+        constant = self._setting.types.constant(index.extent)
+        last = dimension == len(place.indices) - 1
+        if constant is not None:  # a last member of one element may stand for more of them
+            return None if constant <= 1 and last and place.members else Affine.of(constant)
+        return self._setting.stable_form(index.extent)
+
+    # ------------------------------------------------------------ one dimension
+
+    def _dimension(self, key: str, touches: list[Numbered], dimension: int) -> Grid:
+        """The subscripts of one dimension: as they stand, or as a grid."""
+        polys = [touch.place.indices[dimension].poly for _, touch in touches]
+        known = [(at, poly) for at, poly in enumerate(polys) if poly is not None]
+        if not any(needs_grid(self._setting, poly) for _, poly in known):
+            forms = [None if poly is None else self._setting.affine(poly) for poly in polys]
+            return Grid(((1, ()),), tuple(None if form is None else (form,) for form in forms), ())
+        accesses = [Subscript(poly, touches[at][1].context, touches[at][1].node) for at, poly in known]
+        grid = grid_of(self._setting, accesses, _shown(key, [touch.place for _, touch in touches]))
+        if grid is None:
+            return Grid(((1, ()),), tuple(None for _ in polys), ())
+        found: list[tuple[Affine, ...] | None] = [None] * len(polys)
+        for (at, poly), subscripts in zip(known, grid.subscripts, strict=True):
+            found[at] = subscripts
+            if subscripts is not None and not self._fits_in_type(touches[at][1], poly, subscripts, grid.strides[0]):
+                found[at] = None
+        return Grid(grid.strides, tuple(found), grid.obligations)
+
+    def _fits_in_type(self, touch: Touch, poly: Poly, subscripts: tuple[Affine, ...], stride: Stride) -> bool:
+        """Exclude that a product of 32-bit unsigned numbers wraps, where it matters."""
+        for narrow, type_, context, node in self._setting.narrow:
+            if narrow != poly or context.loops != touch.context.loops:
+                continue
+            row = subscripts[0]
+            bound = product_bound(self._setting, row, stride, context, type_.largest)
+            if bound is None:
+                return False
+            for formula in (at_most(0, row), bound):
+                self.stored.obligations.append(
+                    Obligation(AssumptionCode.NO_WRAP, formula, context.formula, context.loops, node))
+        return True
+
+    def _loose(self, key: str, touches: list[Numbered]) -> None:
+        """Subscripts reached by pointer arithmetic must stay in the rows of the array that they point into."""
+        key = _shown(key, [touch.place for _, touch in touches])
+        for _, touch in touches:
+            for dimension, index in enumerate(touch.place.indices):
+                if not index.loose or index.extent is None or index.poly is None or dimension == 0:
+                    continue
+                extent = self._extent(touch.place, dimension, index)
+                form = self._setting.affine(index.poly)
+                if extent is None or form is None:
+                    self.stored.refusals.append(refusal(
+                        touch.node, "pointer", f"`{c_text(touch.node)}` walks through an array of arrays by a pointer; "
+                                               "use its subscripts."))
+                    continue
+                inside = AllOf((at_most(0, form), less(form, extent)))
+                self.stored.obligations.append(Obligation(
+                    AssumptionCode.ROW_BOUND, inside, touch.context.formula, touch.context.loops, touch.node, (key,)))
+
+
+def _shown(key: str, places: list[Place]) -> str:
+    """``g->total`` for a member of the one structure that a pointer leads to, ``g.total`` for one of many."""
+    first = places[0]
+    if first.root.kind is StorageKind.POINTER and first.members and isinstance(first.steps[0], Index) and \
+            all(isinstance(place.steps[0], Index) and place.steps[0].poly == Poly() for place in places):
+        return first.root.key + "->" + key[len(first.root.key) + 1:]
+    return key

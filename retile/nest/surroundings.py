@@ -1,0 +1,124 @@
+"""What the text around a nest says about its parameters: guards, outer loops, early returns.
+
+Only what surely still holds when the nest runs is taken: every variable in such a condition keeps its value from there to
+the end of the nest.  Nothing here may rest on an assumption; what cannot be proven is left out.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import Any
+
+from pycparser import c_ast
+
+from ..affine import Affine, Formula, negate
+from ..model import CType
+from .bounds import Bounds
+from .conditions import Conditions
+from .context import Context
+from .expressions import Expressions
+from .headers import origin_of
+from .knowledge import Knowledge
+from .loops import Loops
+from .places import Places
+from .refusals import Refused
+from .scopes import Binding, FunctionNames
+from .setting import Setting
+from .unit import Unit
+
+
+def outer_loops(nest: Any, names: FunctionNames) -> dict[Binding, Any]:
+    """The iterators of the ``for`` loops around a nest that only their headers change, innermost first."""
+    found: dict[Binding, Any] = {}
+    for node in names.ancestors(nest):
+        if isinstance(node, c_ast.For) and (binding := _iterator(node, names)) is not None:
+            found.setdefault(binding, node)
+    return found
+
+
+def _iterator(loop: Any, names: FunctionNames) -> Binding | None:
+    init = loop.init
+    target = init.decls[0] if isinstance(init, c_ast.DeclList) else getattr(init, "lvalue", None)
+    return names.of(target) if target is not None else None
+
+
+def facts_around(nest: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) -> None:
+    """Add to what is known the conditions under which the nest is reached."""
+    node = nest
+    for parent in names.ancestors(nest):
+        if isinstance(parent, c_ast.If) and node is not parent.cond:
+            _condition(parent.cond, parent, node is parent.iftrue, unit, names, knowledge)
+        elif isinstance(parent, c_ast.For) and node is parent.stmt:
+            _outer(parent, unit, names, knowledge)
+        elif isinstance(parent, c_ast.Compound):
+            for sibling in _before(parent, node):
+                if isinstance(sibling, c_ast.If) and sibling.iffalse is None and _leaves(sibling.iftrue):
+                    _condition(sibling.cond, names.function.body, False, unit, names, knowledge)
+        node = parent
+
+
+def _before(block: Any, node: Any) -> Iterator[Any]:
+    for item in block.block_items or ():
+        if item is node:
+            return
+        yield item
+
+
+def _leaves(node: Any) -> bool:
+    """True for a ``return``, alone or as the end of a block."""
+    if isinstance(node, c_ast.Compound) and node.block_items:
+        node = node.block_items[-1]
+    return isinstance(node, c_ast.Return)
+
+
+def _setting(within: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) -> Setting:
+    setting = Setting(unit, names, within, knowledge, strict=True)
+    setting.expressions, setting.places = Expressions(setting), Places(setting)
+    return setting
+
+
+def _condition(node: Any, within: Any, holds: bool, unit: Unit, names: FunctionNames, knowledge: Knowledge) -> None:
+    """A condition that was tested before; ``within`` is the piece in which its variables may not change."""
+    setting = _setting(within, unit, names, knowledge)
+    for part in _conjuncts(node, holds):
+        try:
+            formula = Conditions(setting).known(part, Context())
+        except Refused:
+            continue
+        if formula is not None:
+            knowledge.add_fact(formula if holds else negate(formula))
+
+
+def _conjuncts(node: Any, holds: bool) -> Iterator[Any]:
+    """The parts of ``a && b`` where it holds, of ``a || b`` where it does not."""
+    if isinstance(node, c_ast.BinaryOp) and node.op == ("&&" if holds else "||"):
+        yield from _conjuncts(node.left, holds)
+        yield from _conjuncts(node.right, holds)
+    else:
+        yield node
+
+
+def _outer(loop: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) -> None:
+    """The bounds of a loop around the nest."""
+    binding = _iterator(loop, names)
+    if binding is None:
+        return
+    setting = _setting(loop.stmt, unit, names, knowledge)
+    type_ = setting.type_of_binding(binding)
+    if not isinstance(type_, CType) or type_.floating or setting.assigned(binding) or setting.reachable(binding):
+        return
+    fact = _loop_fact(loop, binding, setting)
+    if fact is not None:
+        knowledge.add_fact(fact)
+
+
+def _loop_fact(loop: Any, binding: Binding, setting: Setting) -> Formula | None:
+    whole = Setting(setting.unit, setting.names, loop, setting.knowledge, strict=True)
+    whole.expressions, whole.places = Expressions(whole), Places(whole)
+    whole.loop_ids.add(binding.name)
+    conditions = Conditions(whole)
+    try:
+        header = Loops(whole, conditions, Bounds(whole, conditions)).header(loop, binding.name, Context())
+        return header.constraint(binding.name, origin_of(header) if isinstance(header.first, Affine) else None)
+    except Refused:
+        return None

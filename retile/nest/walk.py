@@ -1,0 +1,288 @@
+"""From the syntax tree of a nest to its loop tree and its statements, in one walk in text order."""
+
+from __future__ import annotations
+
+from collections import Counter
+from dataclasses import dataclass
+from typing import Any
+
+from pycparser import c_ast
+
+from ..affine import Affine, Formula, negate
+from ..model import Refusal, Span
+from ..source.kinds import ArrayOf, PointerTo
+from ..tree import Guard, Leaf, Loop, Node
+from .bounds import Bounds
+from .conditions import Conditions
+from .context import Context
+from .effects import Effects, Touch
+from .headers import origin_of, spans_of
+from .loops import Header, Loops
+from .refusals import Refused, refusal, refused
+from .scopes import Binding, descendants
+from .setting import Setting
+
+_FORBIDDEN = {
+    c_ast.While: ("while", "a `while` loop runs an unknown number of times; write it as a `for` with a bound."),
+    c_ast.DoWhile: ("while", "a `do` loop runs an unknown number of times; write it as a `for` with a bound."),
+    c_ast.Switch: ("switch", "a `switch` chooses by data; write it with `if`."),
+    c_ast.Break: ("break", "`break` ends the loop early, so how often it runs depends on data; "
+                           "let the bound say where the loop ends."),
+    c_ast.Continue: ("continue", "`continue` skips the rest of the iteration; put the rest into an `if`."),
+    c_ast.Goto: ("goto", "`goto` leaves the order of the loops; write it with loops and `if`."),
+    c_ast.Label: ("label", "a label can be jumped to from elsewhere; write the nest without `goto`."),
+    c_ast.Return: ("return", "`return` leaves the nest early, so how often it runs depends on data; "
+                             "return after the nest."),
+    c_ast.Case: ("switch", "a `case` stands inside the nest; write it with `if`."),
+    c_ast.Default: ("switch", "a `default` stands inside the nest; write it with `if`."),
+    c_ast.Pragma: ("directive", "a pragma inside the nest speaks of loops as they stand; take it out first."),
+}
+_EXPRESSIONS = (c_ast.Assignment, c_ast.UnaryOp, c_ast.BinaryOp, c_ast.FuncCall, c_ast.ExprList, c_ast.Cast,
+                c_ast.TernaryOp, c_ast.ID, c_ast.Constant, c_ast.ArrayRef, c_ast.StructRef)
+
+
+@dataclass(frozen=True)
+class RawLoop:
+    """A loop as it was read."""
+
+    id: str
+    node: Any
+    header: Header
+    spans: tuple[Span, Span, Span]
+    context: Context  # around the loop
+
+
+@dataclass(frozen=True)
+class RawStatement:
+    """A statement as it was read; its accesses are still touches."""
+
+    id: str
+    span: Span
+    text: str
+    context: Context
+    touches: tuple[Touch, ...]
+    node: Any
+
+
+class Walk:
+    """Reads one nest.  What it finds stands in its public fields afterwards."""
+
+    def __init__(self, setting: Setting, nest: Any) -> None:
+        self.setting = setting
+        self.loops: list[RawLoop] = []
+        self.statements: list[RawStatement] = []
+        self.refusals: list[Refusal] = []
+        self.block_declared: dict[Binding, tuple[str, ...]] = {}  # loops around the declaration
+        self.ids = loop_ids(nest, setting)
+        setting.loop_ids.update(self.ids.values())
+        self._source = setting.unit.source
+        self.branches: list[tuple[Context, int, int, int]] = []  # around an if, both branches, statements up to its end
+        self._per_line: Counter[int] = Counter()
+        conditions = Conditions(setting)
+        self._conditions = conditions
+        self._headers = Loops(setting, conditions, Bounds(setting, conditions))
+        self._effects = Effects(setting, conditions)
+        self.tree = self._node(nest, Context())
+
+    # ------------------------------------------------------------ statements
+
+    def _node(self, node: Any, context: Context) -> tuple[Node, ...]:
+        """The tree of one statement; a refusal is noted and the reading goes on."""
+        try:
+            return self._statement(node, context)
+        except Refused as problem:
+            self.refusals.append(problem.refusal)
+            return ()
+        except RecursionError:
+            self.refusals.append(refusal(node, "unsupported", "an expression or statement here is nested too deep."))
+            return ()
+
+    def _statement(self, node: Any, context: Context) -> tuple[Node, ...]:
+        for kind, (code, reason) in _FORBIDDEN.items():
+            if isinstance(node, kind):
+                raise refused(node, code, reason)
+        match node:
+            case None | c_ast.EmptyStatement() | c_ast.Typedef() | c_ast.StaticAssert():
+                return ()
+            case c_ast.Compound():
+                return self._sequence(node.block_items or (), context)
+            case c_ast.For():
+                return (self._loop(node, context),)
+            case c_ast.If():
+                return self._branch(node, context)
+            case c_ast.Decl():
+                return self._declarations([node], context)
+        if isinstance(node, _EXPRESSIONS):
+            return self._expression(node, context)
+        raise refused(node, "unsupported", "retile does not read this statement; "
+                                           "write it with assignments, `if` and `for`.")
+
+    def _sequence(self, items: Any, context: Context) -> tuple[Node, ...]:
+        nodes: list[Node] = []
+        group: list[Any] = []
+        for item in (*items, None):
+            if isinstance(item, c_ast.Decl) and (not group or self._together(group[0], item)):
+                group.append(item)
+                continue
+            if group:
+                nodes += self._guarded_declarations(group, context)
+                group = []
+            if isinstance(item, c_ast.Decl):
+                group.append(item)
+            elif item is not None:
+                nodes += self._node(item, context)
+        return tuple(nodes)
+
+    def _together(self, first: Any, second: Any) -> bool:
+        """True for the declarators of one declaration."""
+        span = self._source.span(first)
+        return span is not None and span == self._source.span(second)
+
+    def _guarded_declarations(self, decls: list[Any], context: Context) -> tuple[Node, ...]:
+        try:
+            return self._declarations(decls, context)
+        except Refused as problem:
+            self.refusals.append(problem.refusal)
+            return ()
+
+    def _declarations(self, decls: list[Any], context: Context) -> tuple[Node, ...]:
+        touches: list[Touch] = []
+        for decl in decls:
+            touches += self._declaration(decl, context)
+        if not touches:
+            return ()
+        return (self._leaf(decls[0], self._span(decls[0]), tuple(touches), context),)
+
+    def _declaration(self, decl: Any, context: Context) -> tuple[Touch, ...]:
+        setting, binding = self.setting, self.setting.names.of(decl)
+        if binding is None or isinstance(decl.type, c_ast.FuncDecl):
+            return ()
+        if binding.kind == "local":
+            self.block_declared[binding] = context.loops
+        type_ = setting.type_of_binding(binding)
+        if isinstance(type_, ArrayOf) and setting.types.size_of(type_) is None:
+            raise refused(decl, "vla", f"the array `{decl.name}`, whose length is no constant, is made anew in every "
+                                       "iteration; declare it before the nest.")
+        if decl.init is None or binding.kind == "static":
+            return ()
+        if isinstance(type_, PointerTo):
+            setting.define(binding, decl.init, context)
+            return self._effects.of_pointer(decl.init, binding, context, decl)
+        touches = self._effects.of_declaration(decl, context)
+        setting.define(binding, decl.init, context)
+        return touches
+
+    def _expression(self, node: Any, context: Context) -> tuple[Node, ...]:
+        setting = self.setting
+        binding = None
+        if isinstance(node, c_ast.Assignment) and node.op == "=" and isinstance(node.lvalue, c_ast.ID):
+            binding = setting.names.of(node.lvalue)
+        pointer = binding is not None and binding.is_object and isinstance(setting.type_of_binding(binding), PointerTo)
+        if binding is not None and pointer:
+            setting.define(binding, node.rvalue, context)
+        touches = self._effects.of(node, context)
+        if binding is not None and not pointer:
+            setting.define(binding, node.rvalue, context)
+        return (self._leaf(node, self._span(node), touches, context),)
+
+    def _span(self, node: Any) -> Span:
+        span = self._source.span(node)
+        if span is None:
+            raise refused(node, "macro", "the statement comes out of a macro in part, so it has no text of its own; "
+                                         "write the statement out.")
+        return span
+
+    def _leaf(self, node: Any, span: Span, touches: tuple[Touch, ...], context: Context) -> Leaf:
+        id = self._statement_id(span.line)
+        text = " ".join(self._source.slice(span).split())
+        self.statements.append(RawStatement(id, span, text, context, touches, node))
+        return Leaf(id, tuple((loop, Affine.of(loop)) for loop in context.loops))
+
+    def _statement_id(self, line: int) -> str:
+        self._per_line[line] += 1
+        number = self._per_line[line]
+        return f"{line}{_letters(number)}"
+
+    # ------------------------------------------------------------ if
+
+    def _branch(self, node: Any, context: Context) -> tuple[Node, ...]:
+        span = self._source.condition_span(node)
+        if span is None:
+            raise refused(node, "macro", "the `if` comes out of a macro, so it has no text of its own; write it out.")
+        condition = self._conditions.known(node.cond, context)
+        nodes: list[Node] = []
+        if condition is None:
+            touches = self._effects.of(node.cond, context)
+            if any(touch.write for touch in touches):
+                raise refused(node.cond, "condition", "the condition of an `if` changes something; do that before it.")
+            nodes.append(self._leaf(node, span, touches, context))
+        yes, no = (context.uncertain(), context.uncertain()) if condition is None else \
+            (context.where(condition), context.where(negate(condition)))
+        nodes += self._guard(condition, node.iftrue, yes, span)
+        nodes += self._guard(None if condition is None else negate(condition), node.iffalse, no, span)
+        self.branches.append((context, id(node.iftrue), id(node.iffalse), len(self.statements)))
+        return tuple(nodes)
+
+    def _guard(self, condition: Formula | None, body: Any, context: Context, span: Span) -> list[Node]:
+        if body is None:
+            return []
+        inner = self._node(body, context.block(body))
+        return [Guard(condition, inner, (span.start, span.end))] if inner else []
+
+    # ------------------------------------------------------------ loops
+
+    def _loop(self, node: Any, context: Context) -> Loop:
+        id = self.ids[built(node)]
+        spans = spans_of(self._source, node)
+        header = self._headers.header(node, id, context)
+        if context.iterator(header.binding) is not None:
+            raise refused(node, "iterator-changed", f"the iterator `{header.binding.name}` of an outer loop is used again "
+                                                    "for an inner one; give the inner loop its own.")
+        origin = origin_of(header)
+        self.loops.append(RawLoop(id, node, header, spans, context))
+        inside = context.inside(id, header.binding, header.constraint(id, origin))
+        body = self._node(node.stmt, inside.block(node.stmt))
+        lower, upper = (header.first, header.last) if header.step > 0 else (header.last, header.first)
+        return Loop(id, lower, upper, header.step, origin, body, id)
+
+
+def _letters(number: int) -> str:
+    """Nothing for the first statement of a line, ``b`` for the second, ``z`` for the 26th, ``ba`` for the 27th."""
+    text, number = "", number - 1
+    while number:
+        text, number = chr(ord("a") + number % 26) + text, number // 26
+    return text
+
+
+def built(node: Any) -> int:
+    """The identity of a tree node."""
+    return id(node)
+
+
+def loop_ids(nest: Any, setting: Setting) -> dict[int, str]:
+    """An id for each loop of the nest, by the identity of its node; notes all iterators."""
+    loops = [node for node in descendants(nest) if isinstance(node, c_ast.For)]
+    for loop in loops:
+        target = _iterator(loop)
+        binding = None if target is None else setting.names.of(target)
+        if binding is not None:
+            setting.loop_iterators.add(binding)
+    return {built(loop): id for loop, id in zip(loops, iterator_names(nest), strict=True)}
+
+
+def iterator_names(nest: Any) -> tuple[str, ...]:
+    """The ids of a nest's loops: the iterator's name, with line and column where that is not unique."""
+    loops = [node for node in descendants(nest) if isinstance(node, c_ast.For)]
+    names = [getattr(_iterator(loop), "name", None) or "?" for loop in loops]
+    ids = list(names)
+    for form in ("{name}@{line}", "{name}@{line}:{column}"):
+        count = Counter(ids)
+        ids = [id if count[id] == 1 else form.format(name=name, line=loop.coord.line, column=loop.coord.column)
+               for id, name, loop in zip(ids, names, loops, strict=True)]
+    return tuple(ids)
+
+
+def _iterator(loop: Any) -> Any:
+    """The declaration or name that the header starts with."""
+    init = loop.init
+    return init.decls[0] if isinstance(init, c_ast.DeclList) else getattr(init, "lvalue", None)
