@@ -9,6 +9,7 @@ import shutil
 import subprocess
 import tempfile
 from collections.abc import Sequence
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
@@ -49,6 +50,12 @@ class Workshop:
         said = run([self.cc, *self.unit_flags, *flags, *threads, "-w", "-fPIC", "-shared", "-fvisibility=hidden",
                     "-iquote", self.beside, "-o", str(target), str(source), "-lm"])
         return Built(target) if said is None else Built(None, said)
+
+
+    def kernels(self, stem: str, texts: Sequence[bytes], flags: Sequence[str]) -> list[Built]:
+        """Compile several, as many at a time as there are processors."""
+        with ThreadPoolExecutor(max_workers=os.cpu_count() or 1) as pool:
+            return list(pool.map(lambda pair: self.kernel(f"{stem}{pair[0]}", pair[1], flags), enumerate(texts)))
 
 
 def strict_flags(flags: Sequence[str], sanitize: bool) -> list[str]:

@@ -185,20 +185,18 @@ class _State:
                        for trial, result in zip(self.trials, results)]
 
     def _time(self, original: bytes, texts: list[bytes]) -> None:
-        baseline = self.shop.kernel("timed0", original, self.settings.flags)
+        good = [number for number, trial in enumerate(self.trials) if trial.failure is None]
+        self.tell("build", 0, 1, f"{len(good) + 1} kernels")
+        baseline, *built = self.shop.kernels("timed", [original, *(texts[number] for number in good)], self.settings.flags)
         if baseline.path is None:
             raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
         paths = [baseline.path]
-        for number, (trial, text) in enumerate(zip(self.trials, texts)):
-            if trial.failure is not None:
-                continue
-            self.tell("build", number, len(texts), trial.plan)
-            built = self.shop.kernel(f"timed{number + 1}", text, self.settings.flags)
-            if built.path is None:
-                self.trials[number] = replace(trial, failure=built.complaint)
-                continue
-            paths.append(built.path)
-            self.clocked.append(number)
+        for number, kernel in zip(good, built):
+            if kernel.path is None:
+                self.trials[number] = replace(self.trials[number], failure=kernel.complaint)
+            else:
+                paths.append(kernel.path)
+                self.clocked.append(number)
         self._clock(paths)
 
     def _clock(self, paths: list[Path]) -> None:

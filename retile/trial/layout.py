@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from functools import cached_property
@@ -84,6 +85,24 @@ class Bench:
             for stride in storage.strides:
                 wanted |= objects_in(expression(stride, self.scope), self.scope)
         return tuple(sorted(wanted - shown))
+
+    def constant(self, name: str) -> int | None:
+        """The value of a named constant: an enumerator, or a macro of the file or of the flags; None if not found."""
+        if name in self.scope.constants:
+            return value_of(self.scope.constants[name], self.scope, {})
+        given = next((flag[len(name) + 3:] for flag in reversed(self.kernel.source.call.flags)
+                      if flag.startswith(f"-D{name}=")), None)
+        defined = re.compile(rf"#\s*define\s+{re.escape(name)}\s+(.+)")
+        texts = [match.group(1) for token in self.kernel.source.tokens
+                 if token.kind == "directive" and (match := defined.match(token.text))]
+        try:
+            return value_of(expression((given and [given] or texts)[0], self.scope), self.scope, {})
+        except (IndexError, RetileError):
+            return None
+
+    def shown(self, name: str) -> str:
+        """The name of a cell or block as the nest's storages show it: ``g->depth`` for ``g.depth``."""
+        return next((storage.name for storage in self.nest.storages if plain(storage.name) == name), name)
 
     def values(self, sizes: Mapping[str, int]) -> tuple[dict[str, int], dict[str, int]]:
         """Values by plain name of the cells, and by symbol of the parameters, for sizes by symbol or name."""

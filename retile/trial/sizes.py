@@ -24,7 +24,7 @@ def verification_sizes(bench: Bench, plans: Iterable[Plan], trust: bool = False)
     chunk plus one, once with all sizes alike and once with the others different.  What would take too long is left out.
     Unless variants are trusted to be called only where their assumptions hold, a few sizes break the assumptions.
     """
-    chunks = chunks_of_sizes(bench.nest, plans)
+    chunks = chunks_of_sizes(bench, plans)
     good = defined_region(bench.nest)
     chosen: dict[tuple[tuple[str, int], ...], int] = {}  # sizes -> work
     _take(bench, good, _wishes(bench, chunks), _CASES, chosen)
@@ -47,24 +47,26 @@ def _take(bench: Bench, region: Region, wishes: Iterable[Mapping[str, int]], mos
             taken += 1
 
 
-def chunks_of_sizes(nest: Nest, plans: Iterable[Plan]) -> dict[str, tuple[int, ...]]:
+def chunks_of_sizes(bench: Bench, plans: Iterable[Plan]) -> dict[str, tuple[int, ...]]:
     """For each parameter that bounds a chunked loop, the chunks of those loops, falling."""
+    nest = bench.nest
     found: dict[str, set[int]] = {}
     for plan in plans:
         for term in plan.terms:
-            for loop_id, _ in term.form if isinstance(term.chunk, int) else ():
+            chunk = bench.constant(term.chunk) if isinstance(term.chunk, str) else term.chunk
+            for loop_id, _ in term.form if chunk else ():
                 loop = nest.loop(loop_id)
                 step = max(1, abs(loop.step))
                 for name in bound_names(loop.first) | bound_names(loop.last):
-                    found.setdefault(name, set()).add(int(term.chunk or 1) * step)
+                    found.setdefault(name, set()).add((chunk or 1) * step)
     symbols = {parameter.symbol for parameter in nest.parameters}
     return {name: tuple(sorted(sizes, reverse=True)) for name, sizes in found.items() if name in symbols}
 
 
-def uncovered(nest: Nest, plans: Iterable[Plan], cases: Sequence[Mapping[str, int]]) -> list[str]:
+def uncovered(bench: Bench, plans: Iterable[Plan], cases: Sequence[Mapping[str, int]]) -> list[str]:
     """Chunks that no case exceeds, in words; empty if every chunked loop was cut at least once."""
     missing = []
-    for name, sizes in chunks_of_sizes(nest, plans).items():
+    for name, sizes in chunks_of_sizes(bench, plans).items():
         largest = max((case.get(name, 0) for case in cases), default=0)
         missing += [f"no verified {name} exceeds the chunk of {size}" for size in sizes if largest <= size]
     return missing

@@ -9,7 +9,7 @@ from pathlib import Path
 from ..model import AssumptionCode, Plan, RetileError, Variant
 from .build import Built, Workshop, can_sanitize, harness, strict_flags
 from .layout import Bench, Layout, job, overlapping
-from .memory import plain
+from .memory import Block, plain, value_of
 from .records import Difference, Settings, Verification
 from .run import Run, run
 from .sizes import uncovered, verification_sizes
@@ -51,8 +51,10 @@ class Fill:
 
 
 def bytes_of(bench: Bench, layout: Layout) -> int:
-    """About how many bytes the arrays of a layout take (elements counted as 8 bytes)."""
-    return sum(8 * extent.count for extent in layout.extents.values())
+    """About how many bytes the arrays of a layout take (elements of unknown size counted as 8 bytes)."""
+    widths = {plain(storage.object): storage.element_bytes for storage in bench.nest.storages}
+    blocks = bench.kernel.memory.blocks
+    return sum((widths.get(blocks[number].name) or 8) * extent.count for number, extent in layout.extents.items())
 
 
 class Verifier:
@@ -101,15 +103,12 @@ class Verifier:
     def verify(self, texts: Sequence[tuple[Variant, bytes]], original: bytes,
                step: Callable[[str], None]) -> list[Verification]:
         """One verification for each variant's text; ``step`` is told what is done next."""
-        baseline = self.workshop.kernel("strict0", original, self.flags)
+        step(f"build {len(texts) + 1} kernels")
+        baseline, *built = self.workshop.kernels("strict", [original, *(text for _, text in texts)], self.flags)
         if baseline.path is None:
             raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
-        candidates = []
-        for number, (variant, text) in enumerate(texts, 1):
-            step(f"build {variant.plan.text}")
-            candidates.append(_Candidate(self.workshop.kernel(f"strict{number}", text, self.flags), variant.plan))
-        for candidate in candidates:
-            candidate.failure = candidate.built.complaint
+        candidates = [_Candidate(kernel, variant.plan, failure=kernel.complaint)
+                      for kernel, (variant, _) in zip(built, texts)]
         cases = self.cases([variant for variant, _ in texts])
         fill = self.choose_fill(baseline.path, self.program, max(cases, key=lambda case: self.bench.work(case.sizes)))
         self._run_all(baseline.path, candidates, cases, fill, step)
@@ -188,7 +187,7 @@ class Verifier:
         outside, unloadable = next(found.of("outside"), None), next(found.of("unloadable"), None)
         kernel = int(unloadable[0]) if unloadable else found.last_kernel()
         if outside:
-            name = self.bench.kernel.memory.blocks[int(outside[1])].name
+            name = self.bench.shown(self.bench.kernel.memory.blocks[int(outside[1])].name)
             reason = f"it writes outside {name} at {_sizes_text(case)}"
         if kernel is None or (unloadable and kernel == 0):
             raise RetileError(f"{self.bench.nest.address}: the nest cannot be run on its own: {found.reason()}")
@@ -202,7 +201,7 @@ class Verifier:
         cases = [case.sizes for case in candidate.passed]
         notes = [*fill.notes, *self.notes]
         if candidate.open:
-            notes += uncovered(self.bench.nest, [candidate.plan], cases)
+            notes += uncovered(self.bench, [candidate.plan], cases)
         if self.settings.sanitize and not self.sanitize:
             notes.append(f"{self.workshop.cc} has no sanitizers here; only the borders of arrays were watched")
         failure = candidate.failure
@@ -213,21 +212,31 @@ class Verifier:
                             notes=tuple(notes))
 
 
-def difference_of(bench: Bench, case: Case | None, words: Sequence[str]) -> Difference:
+def difference_of(bench: Bench, case: Case, words: Sequence[str]) -> Difference:
     """The harness's words ``cell space number kind expected found`` as a difference."""
     cell = bench.kernel.memory.cells[int(words[0])]
-    block = bench.kernel.memory.blocks[cell.block]
-    space, number = int(words[1]), int(words[2])
-    extent = case.layout.extents.get(cell.block) if case else None
-    index: tuple[int, ...] = (number - extent.before if extent else number,)
-    if extent and len([level for level in block.levels if level]) > 1:
-        index = (space, *index)
-    elif extent and extent.row > 0 and extent.before == 0:
-        index = divmod(number, extent.row)
-    elif block.argument >= 0 and not block.dims:
-        index = ()
     values = [float(word) if words[3] == "f" else int(word) for word in words[4:6]]
-    return Difference(cell.name, index, values[0], values[1], tuple(case.sizes.items()) if case else ())
+    index = _index(bench, case, bench.kernel.memory.blocks[cell.block], int(words[1]), int(words[2]))
+    return Difference(bench.shown(cell.name), index, values[0], values[1], tuple(case.sizes.items()))
+
+
+def _index(bench: Bench, case: Case, block: Block, space: int, number: int) -> tuple[int, ...]:
+    """The subscripts of an element, as far as rows are known."""
+    extent = case.layout.extents.get(block.number)
+    if len([level for level in block.levels if level]) > 1:
+        return space, number
+    if not block.levels or block.levels[-1] == 0:
+        return ()
+    if len(block.dims) > 1:
+        index: tuple[int, ...] = ()
+        for dim in reversed(block.dims[1:]):
+            length = max(1, value_of(dim, bench.scope, case.layout.values))
+            number, place = divmod(number, length)
+            index = (place, *index)
+        return number, *index
+    if extent and extent.row > 0 and extent.before == 0:
+        return divmod(number, extent.row)
+    return (number - extent.before if extent else number,)
 
 
 def _sizes_text(case: Case) -> str:

@@ -1,0 +1,188 @@
+"""Verification: right variants pass, and each kind of wrong one is caught and named."""
+
+from dataclasses import replace
+
+import pytest
+from trial_case import FAST, case, of_file
+
+from retile.model import Assumption, AssumptionCode, Judgement, RetileError, Verdict
+from retile.trial import Settings, verify_all
+from retile.trial.build import can_sanitize, strict_flags
+
+STRICT = Settings()
+COPY = """\
+void mirror(int n, int m, double to[n][m], double from[m][n]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[i][j] = from[j][i];
+}
+"""
+CHUNKED = """\
+for (int i_from = 0; i_from < n; i_from += 16)
+        for (int j = 0; j < m; j++)
+            for (int i = i_from; i < (i_from + 16 < n ? i_from + 16 : n); i++)
+                to[i][j] = from[j][i];"""
+PLAN = "i:16 j i"
+
+
+@pytest.fixture
+def mirror(tmp_path):
+    return case(tmp_path, COPY)
+
+
+def test_a_right_variant_passes_under_the_sanitizers(mirror):
+    found = mirror.accepts(mirror.variant(CHUNKED, PLAN), STRICT)
+    assert found.sanitized == can_sanitize("cc")
+    assert found.difference is None and found.failure is None
+
+
+def test_sizes_go_round_the_chunk_and_are_unequal(mirror):
+    found = mirror.accepts(mirror.variant(CHUNKED, PLAN))
+    cases = [dict(sizes) for sizes in found.cases]
+    assert {0, 1, 15, 16, 17, 33} <= {sizes["n"] for sizes in cases}
+    assert any(sizes["n"] > 16 and sizes["n"] != sizes["m"] for sizes in cases)
+    assert any(sizes["n"] % 16 and sizes["n"] > 16 for sizes in cases)
+
+
+WRONG = {
+    "a remainder that is left out": ("i_from < n; i_from += 16", "i_from + 16 <= n; i_from += 16"),
+    "a chunk that is one short": ("(i_from + 16 < n ? i_from + 16 : n)", "(i_from + 15 < n ? i_from + 15 : n)"),
+    "a loop that runs once too often": ("j < m", "j < m + (n == 17 && j == m)"),
+    "a value that is nearly right": ("= from[j][i]", "= from[j][i] * (i == 33 ? 1 + 0x1p-52 : 1)"),
+    "a sign of zero": ("= from[j][i]", "= (from[j][i] = from[j][i], i == 16 ? -0.0 * from[j][i] : from[j][i])"),
+    "an input that is overwritten": ("= from[j][i];", "= from[j][i], from[j][i] = 0;"),
+}
+
+
+@pytest.mark.parametrize("what", WRONG)
+def test_wrong_results_are_found_without_sanitizers(mirror, what):
+    old, new = WRONG[what]
+    assert old in CHUNKED
+    found = mirror.tells_apart(mirror.variant(CHUNKED.replace(old, new), PLAN))
+    assert found.difference is not None or "outside" in found.failure
+
+
+def test_the_first_difference_names_array_place_values_and_sizes(mirror):
+    text = CHUNKED.replace("= from[j][i]", "= (i == 2 && j == 1) ? 1234.5 : from[j][i]")
+    difference = mirror.tells_apart(mirror.variant(text, PLAN)).difference
+    assert (difference.array, difference.index, difference.found) == ("to", (2, 1), 1234.5)
+    assert dict(difference.sizes)["n"] >= 3
+    assert str(difference).startswith("to[2][1] is 1234.5, the original leaves ")
+
+
+needs_sanitizers = pytest.mark.skipif(not can_sanitize("cc"), reason="this compiler has no sanitizers")
+
+
+@needs_sanitizers
+def test_reads_outside_an_array_are_found(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] = w[i];\n}\n")
+    text = "double s = 0; for (int i = 0; i <= n; i++) { double v = w[i]; s += v; if (i < n) z[i] = v; } if (s == 42) z[0] = s;"
+    found = one.verify(one.variant(text), STRICT)
+    assert not found.verified and "AddressSanitizer" in found.failure and "n = " in found.failure
+
+
+@needs_sanitizers
+def test_signed_overflow_is_found(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  z[i] *= 2;\n}\n")
+    text = "int far = 0x7fffffff; for (int i = 0; i < n; i++) { if (far + n < 0) far = 0; z[i] *= 2; }"
+    found = one.verify(one.variant(text), STRICT)
+    assert not found.verified and "signed integer overflow" in found.failure
+
+
+def test_writes_beside_an_array_are_found_without_sanitizers(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  z[i] *= 2;\n}\n")
+    found = one.verify(one.variant("for (int i = 0; i <= n; i++) z[i] = i < n ? z[i] * 2 : 1;"))
+    assert not found.verified and "it writes outside z" in found.failure
+
+
+def test_a_crash_a_hang_and_bad_c_fail_alone(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  z[i] *= 2;\n}\n")
+    texts = ["*(volatile int *)0 = 1;", "for (volatile int on = 1; on; ) ;", "for (;", "undeclared_function(z);", one.text]
+    found = verify_all(one.source, one.nest, [one.variant(text) for text in texts], replace(FAST, limit=2))
+    assert [result.verified for result in found] == [False, False, False, False, True]
+    assert "SIGSEGV" in found[0].failure
+    assert "time limit" in found[1].failure
+    assert "survey.c:2" in found[2].failure
+    assert "undeclared_function" in found[3].failure
+    assert len(found[4].cases) >= 5
+
+
+def test_an_original_that_stops_is_no_witness(tmp_path):
+    """Dividing by n is undefined for n = 0; the other sizes still count."""
+    one = case(tmp_path, "void f(int n, int m, int *z) {\n for (int i = 0; i < m; i++)\n  z[i] = z[i] / n;\n}\n")
+    found = one.accepts(one.variant(one.text), STRICT)
+    assert all(dict(sizes)["n"] or not dict(sizes)["m"] for sizes in found.cases)
+    assert any("the original itself stops" in note for note in found.notes)
+
+
+def test_an_output_that_never_changes_proves_little_and_is_said(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  if (z[i] > 1e30)\n   z[i] = 0;\n}\n")
+    found = one.verify(one.variant(one.text))
+    assert any("no output changes" in note for note in found.notes)
+
+
+def test_fill_as_asked(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] += w[i] * w[i];\n}\n")
+    wrong = one.replaced("w[i] * w[i]", "w[i]")
+    assert one.verify(wrong, replace(FAST, fills=(("w", "zero"),))).verified
+    one.tells_apart(wrong)
+    with pytest.raises(RetileError, match="nothing named q"):
+        one.verify(wrong, replace(FAST, fills=(("q", "zero"),)))
+    with pytest.raises(RetileError, match="ways of filling"):
+        one.verify(wrong, replace(FAST, fills=(("w", "sideways"),)))
+
+
+def test_a_factorization_is_given_a_matrix_that_it_can_factor(tmp_path):
+    """Golub & Van Loan, "Matrix Computations", 4th ed., section 4.1: LU without pivoting of a diagonally dominant matrix
+    has bounded growth; a random one may meet a pivot near zero, and sqrt of a negative number is no number."""
+    one = of_file("samples_c/tidal_factor.c", skip=4)
+    found = one.accepts(one.variant(one.text))
+    assert found.fill == "diagonal-dominant"
+
+
+def test_tables_of_indices_hold_indices_in_range(tmp_path):
+    one = of_file("samples_c/swath_mosaic.c", skip=2)
+    one.accepts(one.variant(one.text), STRICT)
+    one.tells_apart(one.replaced("mosaic[cell[r * cols + c]]", "mosaic[cell[r * cols + c] / 2]"))
+    wide = case(tmp_path, "double table[6];\nvoid f(int n, double *z, const unsigned char *at) {\n"
+                          " for (int i = 0; i < n; i++)\n  z[i] = table[at[i] + 1];\n}\n")
+    wide.accepts(wide.variant(wide.text), STRICT)
+
+
+def test_arrays_must_be_left_as_they_are_where_only_one_side_writes(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z, int *seen) {\n for (int i = 0; i < n; i++)\n  z[i] += seen[i];\n}\n")
+    found = one.tells_apart(one.replaced("seen[i]", "seen[i]++"))
+    assert found.difference.array == "seen"
+
+
+def test_iterators_that_nobody_reads_afterwards_may_end_anywhere(tmp_path):
+    text = "void f(int n, double *z) {\n int i, j;\n for (i = 0; i < n; i++)\n  for (j = 0; j < n; j++)\n   z[i * n + j] *= 2;\n}\n"
+    one = case(tmp_path, text)
+    one.accepts(one.variant("for (j = 0; j < n; j++) for (i = 0; i < n; i++) z[i * n + j] *= 2; i = 77;"))
+
+
+def _assuming(variant, *assumptions):
+    return replace(variant, judgement=Judgement(Verdict.LEGAL, variant.plan, assumptions=assumptions))
+
+
+def test_variants_must_notice_pointers_that_overlap(tmp_path):
+    one = case(tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] = w[i] + 1;\n}\n")
+    down = "for (int i = n - 1; i >= 0; i--) z[i] = w[i] + 1;"
+    apart = Assumption(AssumptionCode.NO_OVERLAP, "z and w do not overlap", None, ("w", "z"))
+    careless = _assuming(one.variant(down), apart)
+    assert one.verify(one.variant(down)).verified
+    found = one.verify(careless)
+    assert not found.verified and found.difference is not None
+    assert one.verify(careless, replace(FAST, trust=True)).verified
+    careful = one.variant(f"if (z + n <= w || w + n <= z) {{ {down} }} else {{ {one.text} }}")
+    assert one.verify(_assuming(careful, apart)).verified
+
+
+def test_strict_flags_take_away_what_relaxes_arithmetic():
+    assert strict_flags(["-O3", "-march=native", "-ffast-math", "-fno-math-errno"], False) == \
+        ["-march=native", "-fno-math-errno", "-O1", "-ffp-contract=off"]
+
+
+def test_a_missing_compiler_is_said(mirror):
+    with pytest.raises(RetileError, match="no-such-cc"):
+        mirror.verify(mirror.variant(CHUNKED), replace(FAST, cc="no-such-cc"))
