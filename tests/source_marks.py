@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shutil
 from pathlib import Path
 from typing import Any
 
@@ -10,6 +11,7 @@ from pycparser import c_ast
 from retile.source import CompilerCall, Source, open_source
 from retile.source.parse import nodes
 
+COMPILERS = [cc for cc in ("gcc", "clang") if shutil.which(cc)]
 OPEN, CLOSE = "⟦", "⟧"
 
 
@@ -27,11 +29,11 @@ def unmarked(marked: str) -> tuple[str, set[tuple[int, int]]]:
     return text, extents
 
 
-def opened(folder: Path, text: str | bytes, flags: tuple[str, ...] = (), name: str = "survey.c") -> Source:
+def opened(folder: Path, text: str | bytes, flags: tuple[str, ...] = (), *, cc: str = "cc") -> Source:
     """A source with this text."""
-    path = folder / name
+    path = folder / "survey.c"
     path.write_bytes(text if isinstance(text, bytes) else text.encode())
-    return open_source(str(path), CompilerCall(flags=flags))
+    return open_source(str(path), CompilerCall(cc, flags))
 
 
 def statements(source: Source, kinds: Any = (c_ast.For, c_ast.While, c_ast.DoWhile, c_ast.If, c_ast.Switch)) -> list[Any]:

@@ -9,7 +9,7 @@ from pycparser import c_ast
 
 from retile.source import Source, splice
 
-from source_marks import extents, opened, statements, unmarked
+from source_marks import COMPILERS, extents, opened, statements, unmarked
 
 STYLES = {
     "knr": """
@@ -121,10 +121,11 @@ static __inline__ void f(int n, double *__restrict__ a, const double *__restrict
 
 @pytest.mark.parametrize("style", STYLES)
 @pytest.mark.parametrize("ends", ["\n", "\r\n"])
-def test_extents_in_every_style(tmp_path: Path, style: str, ends: str) -> None:
+@pytest.mark.parametrize("cc", COMPILERS)
+def test_extents_in_every_style(tmp_path: Path, style: str, ends: str, cc: str) -> None:
     marked = STYLES[style].replace("\n", ends)
     text, expected = unmarked(marked)
-    source = opened(tmp_path, text)
+    source = opened(tmp_path, text, cc=cc)
     assert source.text == text
     assert {source.text[a:b] for a, b in extents(source)} == {text[a:b] for a, b in expected}
     assert extents(source) == expected
@@ -230,9 +231,10 @@ void f(int64_t n, double *a) {
 
 @pytest.mark.parametrize("case", MACROS)
 @pytest.mark.parametrize("compiler_headers", [False, True])
-def test_extents_beside_macros(tmp_path: Path, case: str, compiler_headers: bool) -> None:
+@pytest.mark.parametrize("cc", COMPILERS)
+def test_extents_beside_macros(tmp_path: Path, case: str, compiler_headers: bool, cc: str) -> None:
     text, expected = unmarked(MACROS[case])
-    source = opened(tmp_path, text)
+    source = opened(tmp_path, text, cc=cc)
     if compiler_headers:
         source = Source(source.path, source.text, source.encoding, source.call, stubs=False)
     assert {source.text[a:b] for a, b in extents(source)} == {text[a:b] for a, b in expected}
@@ -259,10 +261,11 @@ void f(int n, double *a) {
 """
 
 
-def test_only_active_branches_have_extents(tmp_path: Path) -> None:
+@pytest.mark.parametrize("cc", COMPILERS)
+def test_only_active_branches_have_extents(tmp_path: Path, cc: str) -> None:
     for flags, loop, gone in (((), "i++", "i += 2"), (("-DFAST=2",), "i += 2", "i++"), (("-DFAST",), "i += 2", "i++")):
         text = BRANCHES.replace("⟦", "").replace("⟧", "")
-        source = opened(tmp_path, text, flags)
+        source = opened(tmp_path, text, flags, cc=cc)
         (outer,) = statements(source, c_ast.For)
         span = source.span(outer)
         assert span is not None
@@ -309,7 +312,8 @@ def test_simple_statements_and_shared_declarations(tmp_path: Path) -> None:
     assert span is not None and source.slice(span) == text.strip()
 
 
-def test_pragmas_stand_beside_extents(tmp_path: Path) -> None:
+@pytest.mark.parametrize("cc", COMPILERS)
+def test_pragmas_stand_beside_extents(tmp_path: Path, cc: str) -> None:
     source = opened(
         tmp_path,
         "#define HINT(x) _Pragma(#x)\n#define PLAIN\nvoid f(int n, double *a) {\n"
@@ -318,6 +322,7 @@ def test_pragmas_stand_beside_extents(tmp_path: Path) -> None:
         "    HINT(omp simd) PLAIN for (int j = 0; j < n; j++) a[j] += i;\n"
         '    _Pragma("unroll") for (int j = 0; j < n; j++) a[j] += i;\n'
         "  }\n  PLAIN\n  for (int i = 0; i < n; i++) ;\n}\n",
+        cc=cc,
     )
     loops = statements(source, c_ast.For)
     spans = [source.span(loop) for loop in loops]

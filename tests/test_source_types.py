@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import shutil
 import subprocess
 from pathlib import Path
 from typing import Any
@@ -14,9 +13,7 @@ from retile.model import CType
 from retile.source import ArrayOf, FunctionType, PointerTo, Source, StructType, UnknownType, Void
 from retile.source.parse import nodes
 
-from source_marks import opened
-
-COMPILERS = [cc for cc in ("gcc", "clang") if shutil.which(cc)]
+from source_marks import COMPILERS, opened
 
 DECLARATIONS = """
 #include <stddef.h>
