@@ -23,6 +23,13 @@ class Conditions:
 
     def known(self, node: Any, context: Context) -> Formula | None:
         """The condition as a formula over iterators and parameters; None if it depends on data."""
+        mark = self._setting.mark()
+        found = self._known(node, context)
+        if found is None:
+            self._setting.rewind(mark)
+        return found
+
+    def _known(self, node: Any, context: Context) -> Formula | None:
         match node:
             case c_ast.BinaryOp(op="&&") | c_ast.BinaryOp(op="||"):
                 return self._joined(node, context)

@@ -45,8 +45,14 @@ class Expressions:
 
     def value(self, node: Any, context: Context) -> Value | None:
         """The value of an integer expression; None if it is no polynomial and may change."""
+        mark = self._setting.mark()
         found = self._value(node, context)
-        return found if found is not None else self._opaque(node, context)
+        if found is None:
+            self._setting.rewind(mark)
+            found = self._opaque(node, context)
+        if found is None:
+            self._setting.rewind(mark)
+        return found
 
     def exact(self, node: Any, context: Context, type_: CType | None = None) -> Poly | None:
         """The value itself, after conversion to ``type_``; what it needs becomes an obligation."""
@@ -57,8 +63,12 @@ class Expressions:
 
     def affine(self, node: Any, context: Context, type_: CType | None = None) -> Affine | None:
         """As ``exact``, as an affine form; products of parameters become parameters of their own."""
+        mark = self._setting.mark()
         poly = self.exact(node, context, type_)
-        return None if poly is None else self._setting.affine(poly)
+        form = None if poly is None else self._setting.affine(poly)
+        if form is None:
+            self._setting.rewind(mark)
+        return form
 
     def subscript(self, node: Any, context: Context) -> Poly | None:
         """The value as an offset of a pointer: a 64-bit wrap is harmless there, addresses wrap with it."""

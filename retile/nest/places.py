@@ -17,7 +17,7 @@ from ..source.kinds import ArrayOf, PointerTo, StructType, UnknownType, Void
 from .context import Context
 from .polynomial import Poly
 from .refusals import Refused, refused
-from .scopes import Binding
+from .scopes import Binding, assigned_target
 from .setting import Setting, c_text
 
 
@@ -232,6 +232,9 @@ class Places:
                 return self._cast(node, context)
             case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
                 return self._loaded(node, context)
+            case c_ast.UnaryOp() | c_ast.Assignment() if assigned_target(node) is not None:
+                raise refused(node, "pointer-assigned", f"`{c_text(node)}` moves a pointer inside the nest; "
+                                                        "use subscripts from a pointer that stays.")
         raise self._unknown(node)
 
     def _unknown(self, node: Any) -> Refused:

@@ -54,20 +54,21 @@ def bound_text(bound: Bound, texts: Mapping[str, str] | None = None) -> str:
 
 
 def constraint_text(constraint: Constraint, texts: Mapping[str, str] | None = None) -> str:
-    """``n - m >= 0`` as ``n >= m``: negative terms change sides."""
+    """``n - m >= 0`` as ``m <= n``: negative terms change sides."""
     form = constraint.form
-    left = Affine.build({s: c for s, c in form.terms if c > 0}, 0)
-    right = Affine.build({s: -c for s, c in form.terms if c < 0}, 0)
-    relation = "==" if constraint.equality else ">="
-    if not left.terms:  # -m + 3 >= 0: m <= 3
-        left, right, relation = right, Affine.of(form.constant), "==" if constraint.equality else "<="
-    elif right.terms and form.constant == -1 and not constraint.equality:
-        relation = ">"
-    elif form.constant < 0:
-        right = right + -form.constant
-    else:
-        left, right = (left + form.constant, right) if right.terms else (left, right - form.constant)
-    return f"{form_text(left, texts)} {relation} {form_text(right, texts)}"
+    large = Affine.build({s: c for s, c in form.terms if c > 0})
+    small = Affine.build({s: -c for s, c in form.terms if c < 0})
+    if constraint.equality:
+        return f"{form_text(large, texts)} == {form_text(small - form.constant, texts)}"
+    if not small.terms:  # n - 1 >= 0
+        return f"{form_text(large, texts)} >= {-form.constant}"
+    if not large.terms:  # 3 - n >= 0
+        return f"{form_text(small, texts)} <= {form.constant}"
+    if form.constant == -1:
+        return f"{form_text(small, texts)} < {form_text(large, texts)}"
+    if form.constant < 0:
+        return f"{form_text(small - form.constant, texts)} <= {form_text(large, texts)}"
+    return f"{form_text(small, texts)} <= {form_text(large + form.constant, texts)}"
 
 
 def formula_text(formula: Formula, texts: Mapping[str, str] | None = None) -> str:

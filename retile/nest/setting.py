@@ -55,7 +55,8 @@ class Setting:
         self.held: dict[str, Place] = {}  # cells in memory that must keep their values, by C text
         self.held_variables: dict[Binding, None] = {}  # variables that must, and that a pointer might reach
         self.factors: dict[str, Poly] = {}  # sums of parameters kept whole, such as the ``m + 1`` of a row
-        self.narrow: list[tuple[Poly, CType, Context, Any]] = []  # products in fewer bits than an address has
+        # Products in fewer bits than an address has, with their types and where they stand.
+        self.narrow: dict[tuple[Poly, CType, Context, Any], None] = {}
         self.loop_ids: set[str] = set()
         self.loop_iterators: set[Binding] = set()
         self.outer_iterators: dict[Binding, str] = {}
@@ -213,11 +214,12 @@ class Setting:
         """The parameter for a product of parameters, computed in a wide type."""
         texts = [self.poly_text(Poly.of(factor)) for factor in factors]
         types = [self.knowledge.parameters[f].type for f in factors if isinstance(f, str)]
-        wide = self.types.arithmetic.named(("long", "long"))
-        if any(t.bits == 64 for t in types):
-            wide, cast = next(t for t in types if t.bits == 64), ""
-        else:
-            cast = "(long long)"
+        wide = next((t for t in types if t.bits >= 64), None)
+        cast = ""
+        if wide is None:  # narrower factors are multiplied in 64 bits
+            unsigned = types and not any(t.signed for t in types)
+            wide = self.types.arithmetic.named(("unsigned", "long", "long") if unsigned else ("long", "long"))
+            cast = "(unsigned long long)" if unsigned else "(long long)"
         symbol = " * ".join(texts)
         return self.knowledge.add_parameter(Parameter(symbol, f"({cast}{symbol})", wide, "expression"))
 
@@ -259,6 +261,22 @@ class Setting:
         known = {symbol: parameter.text for symbol, parameter in self.knowledge.parameters.items()}
         return known | {symbol: symbol for symbol in self.factors}
 
+    # ------------------------------------------------------------ trying
+
+    def mark(self) -> tuple[int, ...]:
+        """How much has been gathered; for ``rewind``."""
+        return tuple(len(part) for part in self._gathered())
+
+    def rewind(self, mark: tuple[int, ...]) -> None:
+        """Forget what was gathered since a mark, because what it was for came to nothing."""
+        for part, length in zip(self._gathered(), mark, strict=True):
+            while len(part) > length:
+                part.popitem()
+
+    def _gathered(self) -> tuple[dict[Any, Any], ...]:
+        knowledge = self.knowledge
+        return (self.obligations, self.held, self.held_variables, self.narrow, knowledge.parameters, knowledge.facts)
+
     # ------------------------------------------------------------ obligations
 
     def require(self, code: AssumptionCode, formula: Formula, context: Context, node: Any,
@@ -274,6 +292,6 @@ class Setting:
         """A product that may wrap in fewer bits than an address has: kept, if the wrapping can be excluded later."""
         if self.strict:
             return None
-        self.narrow.append((poly, type_, context, node))
+        self.narrow[poly, type_, context, node] = None
         return poly
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from pycparser import c_ast
@@ -20,7 +20,7 @@ from .headers import origin_of, spans_of
 from .loops import Header, Loops
 from .refusals import Refused, refusal, refused
 from .scopes import Binding, descendants
-from .setting import Setting
+from .setting import Setting, c_text
 
 _FORBIDDEN = {
     c_ast.While: ("while", "a `while` loop runs an unknown number of times; write it as a `for` with a bound."),
@@ -83,6 +83,7 @@ class Walk:
         self._headers = Loops(setting, conditions, Bounds(setting, conditions))
         self._effects = Effects(setting, conditions)
         self.tree = self._node(nest, Context())
+        self.statements = [self._without_sizes(statement) for statement in self.statements]
 
     # ------------------------------------------------------------ statements
 
@@ -202,6 +203,15 @@ class Walk:
         self._per_line[line] += 1
         number = self._per_line[line]
         return f"{line}{_letters(number)}"
+
+    def _without_sizes(self, statement: RawStatement) -> RawStatement:
+        """Reads of integers in memory that serve as parameters are no reads of data: they must not change at all."""
+        kept = tuple(touch for touch in statement.touches if touch.write or not self._is_held(touch))
+        return replace(statement, touches=kept)
+
+    def _is_held(self, touch: Touch) -> bool:
+        held = self.setting.held.get(c_text(touch.node))
+        return held is not None and held.key == touch.place.key and held.steps == touch.place.steps
 
     # ------------------------------------------------------------ if
 
