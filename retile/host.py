@@ -89,7 +89,8 @@ class Host:
 
     def as_json(self) -> dict[str, Any]:
         """Plain dictionaries and lists, ready for ``json.dumps``."""
-        return asdict(self)
+        found = asdict(self)
+        return {name: list(value) if isinstance(value, tuple) else value for name, value in found.items()}
 
 
 def describe() -> Host:

@@ -68,8 +68,8 @@ ACCEPTED = {
         "static double quarter(double x) { return half(half(x)); }\n"
         "void f(int n, double *z) {\n for (int i = 0; i < n; i++) z[i] = quarter(z[i]);\n}\n", "quarter(z[i])", "half(z[i])"),
     "types inside the function": (
-        "void f(int n, double *z) {\n typedef double depth;\n struct pair { depth a, b; };\n enum { TWO = 2 };\n"
-        " struct pair p = {1, 2};\n for (int i = 0; i < n; i++) { z[i] = z[i] * TWO + p.a; }\n}\n", "* TWO", "/ TWO"),
+        "void f(int n, double *z) {\n typedef double depth;\n struct pair { double a, b; };\n enum { TWO = 2 };\n"
+        " struct pair p = {1, 2}; depth q = 3;\n for (int i = 0; i < n; i++) { z[i] = z[i] * TWO + p.a + q; }\n}\n", "* TWO", "/ TWO"),
     "a local array of variable length": (
         "double f(int n, int m) {\n double z[n][m];\n for (int i = 0; i < n; i++)\n  for (int j = 0; j < m; j++)\n"
         "   z[i][j] = i - 2 * j;\n return z[0][0];\n}\n", "i - 2 * j", "i - 3 * j"),

@@ -19,7 +19,7 @@ from .. import host
 from ..model import Nest, RetileError, Variant
 from .build import Workshop, compiler_version, harness
 from .kernel import kernel_of
-from .layout import Bench, job, unknown_fills
+from .layout import Bench, Layout, job, unknown_fills
 from .memory import plain
 from .records import FILLS, Campaign, Difference, Event, Progress, Settings, Trial, Verification
 from .run import Run, run
@@ -101,7 +101,7 @@ def measure(source: Source, nest: Nest, variants: Sequence[Variant], sizes: Mapp
     with workshop(source, settings) as shop, stoppable():
         bench = _bench(source, nest, variants, settings)
         chosen = checked(bench, sizes, command)
-        case = Case(chosen, bench.layout(chosen))
+        case = Case(chosen, _layout(bench, chosen))
         _check_memory(nest, bytes_of(bench, case.layout))
         state = _State(bench, shop, settings, case, list(variants), on_progress)
         try:
@@ -132,6 +132,14 @@ def _bench(source: Source, nest: Nest, variants: Sequence[Variant], settings: Se
 def _texts(bench: Bench, variants: Sequence[Variant]) -> tuple[bytes, list[bytes]]:
     kernel = bench.kernel
     return kernel.text(), [kernel.text(variant.nest_text, variant.includes) for variant in variants]
+
+
+def _layout(bench: Bench, sizes: dict[str, int]) -> Layout:
+    try:
+        return bench.layout(sizes)
+    except RetileError as problem:
+        shown = ", ".join(f"{name} = {value}" for name, value in sizes.items())
+        raise RetileError(f"{bench.nest.address}: {problem}; the sizes are {shown or 'fixed'}") from None
 
 
 def _check_memory(nest: Nest, needed: int) -> None:

@@ -28,7 +28,7 @@ class Pointer:
     """A pointer to an object."""
 
     target: Type
-    text: str
+    text: str = "void *"  # all pointers to objects have one size here; the true type may use names of the function
 
 
 @dataclass(frozen=True)
@@ -87,7 +87,7 @@ class Scope:
         if isinstance(node, c_ast.PtrDecl):
             if isinstance(node.type, c_ast.FuncDecl):
                 return Opaque(type_text(node))
-            return Pointer(self.type_of(node.type), type_text(node))
+            return Pointer(self.type_of(node.type))
         if isinstance(node, c_ast.ArrayDecl):
             return Array(self.type_of(node.type), node.dim)
         if isinstance(node, c_ast.Enum):

@@ -376,5 +376,12 @@ def unknown_fills(bench: Bench, fills: Mapping[str, str]) -> list[str]:
 
 
 def names_needed(bench: Bench) -> tuple[str, ...]:
-    """The names of all integers that must be given a size, as the user writes them."""
-    return (*(parameter.symbol for parameter in bench.direct), *bench.hidden)
+    """The names of all integers that must be given a size, as the user writes them, in the order of declaration."""
+    order = list(bench.scope.variables)
+    names = (*(parameter.symbol for parameter in bench.direct), *bench.hidden)
+
+    def place(name: str) -> int:
+        root = re.match(r"\w*", plain(name))
+        return order.index(root.group()) if root and root.group() in order else len(order)
+
+    return tuple(sorted(names, key=place))

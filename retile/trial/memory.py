@@ -159,7 +159,7 @@ def declared_type(scope: Scope, variable: Variable) -> Type:
     """The type of a variable; an array argument is the pointer that C makes of it."""
     found = scope.type_of(variable.node)
     if variable.place == "argument" and isinstance(found, Array):
-        return Pointer(found.element, "void *")
+        return Pointer(found.element)
     return found
 
 

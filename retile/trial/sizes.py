@@ -157,7 +157,7 @@ def checked(bench: Bench, sizes: Mapping[str, int], command: str) -> dict[str, i
     for parameter in bench.direct:  # the name as typed may differ from the symbol
         if parameter.text in given and parameter.symbol not in given:
             given[parameter.symbol] = given.pop(parameter.text)
-    strange = [name for name in given if name not in names]
+    strange = [name for name in given if name not in names and bench.kernel.memory.cell(name) is None]
     if strange:
         raise RetileError(f"{bench.nest.address}: the nest has no size {', '.join(strange)}; "
                           f"it has {', '.join(names) or 'none'}")
@@ -171,4 +171,4 @@ def checked(bench: Bench, sizes: Mapping[str, int], command: str) -> dict[str, i
     if Region.where(*bench.nest.facts).at(symbols).is_empty():
         raise RetileError(f"{bench.nest.address}: the original is not defined at these sizes "
                           f"({', '.join(f'{name} = {given[name]}' for name in names)}); choose others")
-    return {name: given[name] for name in names}
+    return {**{name: given[name] for name in names}, **given}
