@@ -6,11 +6,13 @@ The chunks of ``j`` take the iterations of ``i`` apart, so ``t`` is computed aga
 
     for (j_from) for (i) { t = w[i] * gain;  for (j) ... }
 
-That is safe if nothing in the nest writes what the statement reads, it writes nothing but the scalar, and nobody looks at
+That is safe if nothing in the nest writes what the statement reads, it writes nothing but scalars like this, and nobody looks at
 the scalar afterwards (rematerialization: Briggs, Cooper & Torczon, "Rematerialization", 1992).
 """
 
 from __future__ import annotations
+
+from collections import Counter
 
 from ..model import Nest, Plan, ScalarClass, Statement, Storage
 from .schedule import stays_whole
@@ -18,9 +20,11 @@ from .schedule import stays_whole
 
 def copied(nest: Nest, plan: Plan) -> tuple[str, ...]:
     """Ids of the statements that the plan runs more than once, because it takes apart the iterations they belong to."""
-    return tuple(statement.id for storage in nest.storages
-                 if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
-                 for statement in (_only_writer(storage, nest),) if statement is not None)
+    found = Counter(statement.id for storage in nest.storages
+                    if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
+                    for statement in (_only_writer(storage, nest),) if statement is not None)
+    # Each scalar that it writes must be free to be written again.
+    return tuple(id for id, count in found.items() if count == sum(a.write for a in nest.statement(id).accesses))
 
 
 def copied_scalars(nest: Nest, plan: Plan) -> frozenset[str]:
@@ -38,8 +42,13 @@ def _only_writer(storage: Storage, nest: Nest) -> Statement | None:
         return None
     writer = writers[0]
     written = {a.storage for s in nest.statements for a in s.accesses if a.write}
-    pure = all(a.certain and ((a.storage == storage.name) if a.write else (a.storage not in written))
+    pure = all(a.certain and (_is_its_own(nest.storage(a.storage), storage) if a.write else a.storage not in written)
                for a in writer.accesses)
     surrounds = writer.loops == storage.private_to and all(
         s.span.start > writer.span.start and s.loops[:len(writer.loops)] == writer.loops for s in users if s != writer)
     return writer if pure and surrounds else None
+
+
+def _is_its_own(written: Storage, storage: Storage) -> bool:
+    """True if the statement may compute this scalar again too: ``double *up = ..., *down = ...`` is one statement."""
+    return written.scalar is ScalarClass.PRIVATE and not written.live_after and written.private_to == storage.private_to
