@@ -6,6 +6,6 @@ from .copies import copied_scalars
 from .grammar import parse_plan
 from .schedule import placed
 from .units import moved_conditions
-from .verdict import is_legal, judge
+from .verdict import binding_edges, is_legal, judge
 
-__all__ = ["build_tree", "copied_scalars", "is_legal", "judge", "moved_conditions", "nearest_legal", "parse_plan", "placed"]
+__all__ = ["binding_edges", "build_tree", "copied_scalars", "is_legal", "judge", "moved_conditions", "nearest_legal", "parse_plan", "placed"]

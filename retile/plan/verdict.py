@@ -47,6 +47,11 @@ def is_legal(nest: Nest, dependences: Dependences, plan: Plan) -> bool:
         all(court.reversed(edge) is None for edge in court.binding_edges())
 
 
+def binding_edges(nest: Nest, dependences: Dependences, plan: Plan) -> tuple[Edge, ...]:
+    """The edges that the tree of a placed plan must keep: without those on values that are computed again."""
+    return _Court(nest, dependences, plan).binding_edges()
+
+
 def _settled_court(nest: Nest, dependences: Dependences, plan: Plan) -> _Court:
     """The court on a plan with default places or, where these reverse something, with places that do not, if found."""
     court = _Court(nest, dependences, placed(replace(plan, copied=copied(nest, plan)), nest))
