@@ -108,8 +108,8 @@ def _difference(statement: str, wanted: Region, given: Region) -> Iterator[Flaw]
 
 def _repeated(statement: str, runs: list[_Runs], given: list[Region]) -> Iterator[Flaw]:
     for at, run in enumerate(runs):
-        for other in given[:at]:
-            if not (given[at] & other).is_empty():
+        for other, elsewhere in zip(runs[:at], given, strict=False):
+            if not (given[at] & elsewhere).is_empty() and not _never_both(run, other):
                 yield Flaw(statement, "an instance runs in two places")
         twin = run.region.renamed({name: name + "^" for name in run.symbols})
         marked = {name: Affine.of(name + "^") for name in run.symbols}
@@ -119,6 +119,12 @@ def _repeated(statement: str, runs: list[_Runs], given: list[Region]) -> Iterato
                              for x, y in ((name, name + "^"), (name + "^", name))))
         if not (run.region & twin & Region.where(*same, differ)).is_empty():
             yield Flaw(statement, "an instance runs twice in one place")
+
+
+def _never_both(one: _Runs, other: _Runs) -> bool:
+    """True if the cuts around both, whatever they are, let no instance run in both places."""
+    cuts = _given(one, other, {})
+    return bool(cuts) and (one.as_instances() & other.as_instances() & Region.where(*cuts)).is_empty()
 
 
 def order_kept(tree: tuple[Node, ...], dependences: Dependences, edges: Iterable[Edge] | None = None) \
