@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from ..affine import Affine, AllOf, AnyOf, Bound, Constraint, Formula, at_most, equal
+from ..affine import Affine, AllOf, AnyOf, Bound, Constraint, Floor, Formula, at_most, equal
 from ..tree import Loop
 from .expression import Scope
 
@@ -104,3 +104,17 @@ def _scaled_to(forms: tuple[Affine, ...], limit: Limit) -> tuple[Affine, frozens
         if used <= set(forms):
             return Affine.of(limit.symbol) * scale + moved, used
     return None
+
+
+def without_alignment(a: Affine, b: Affine) -> tuple[Affine, Affine]:
+    """Two forms that compare as ``a`` and ``b`` do, as far as a choice between them goes.
+
+    With ``a = s*floor(e/s)`` and ``b`` a multiple of ``s``, ``e`` may be asked instead: ``e < b`` gives ``a < b``, and
+    ``e > b`` gives ``a >= b``.
+    """
+    floor, factor = a.terms[0] if len(a.terms) == 1 and not a.constant else ("", 0)
+    if isinstance(floor, Floor):
+        aligned = b.constant % floor.divisor == 0 and all(c % floor.divisor == 0 for _, c in b.terms)
+        if factor == floor.divisor and aligned:
+            return floor.numerator, b
+    return a, b

@@ -173,7 +173,9 @@ def _pieces(form: Affine, scope: Scope, wide: CType | None) -> Iterator[_Piece |
     summands: list[tuple[Symbol | tuple[Affine, int] | None, int]] = [*rests, *form.terms]
     if form.constant or not summands:
         summands.append((None, form.constant))
-    for symbol, factor in sorted(summands, key=lambda summand: summand[1] < 0):
+    # names in capitals, constants of the program, stand behind variables
+    for symbol, factor in sorted(summands, key=lambda one: (one[1] < 0, isinstance(one[0], str) and one[0].isupper(),
+                                                            one[0] is None)):
         size = abs(factor)
         if symbol is None:
             yield _Piece(factor < 0, Affine((), size), Expression(str(size), _literal_type(size)))
@@ -311,18 +313,26 @@ def comparison(left: Affine, relation: str, right: Affine, scope: Scope,
     """
     aliases = aliases or {}
     left, right = left.substitute(scope.meanings), right.substitute(scope.meanings)
+    if left not in aliases and right not in aliases:
+        shared = _shared(left, right)
+        left, right = left - shared, right - shared
     rest = left - left.constant
-    arrangements = [(left, relation, right)]
+    sides = [(left, relation, right)]
     if left.constant and rest.terms:
-        arrangements += [(rest, relation, right - left.constant), (right - rest, FLIPPED[relation],
-                                                                   Affine((), left.constant))]
-    arrangements.append((left - right.constant, relation, right - right.constant))
-    for wide in (False, True):
+        sides.append((rest, relation, right - left.constant))
+    sides.append((left - right.constant, relation, right - right.constant))
+    distance = [(right - rest, FLIPPED[relation], Affine((), left.constant))] if left.constant and rest.terms else []
+    for wide, arrangements in ((False, sides), (True, sides[:1]), (False, distance), (True, [*sides, *distance])):
         for a, sign, b in arrangements:
             found = _compared(a, sign, b, scope, aliases, wide)
             if found is not None:
                 return found
     raise NoRoom(f"{left} {relation} {right}")
+
+
+def _shared(a: Affine, b: Affine) -> Affine:
+    """The terms that stand on both sides with the same sign."""
+    return Affine.build({s: min(c, b.coefficient(s), key=abs) for s, c in a.terms if c * b.coefficient(s) > 0})
 
 
 def _compared(left: Affine, relation: str, right: Affine, scope: Scope, aliases: Mapping[Affine, Expression],

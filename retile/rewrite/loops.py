@@ -18,14 +18,19 @@ import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
-from ..affine import Affine, AllOf, AnyOf, Bound, Formula, at_most, equal, less, map_bound
+from ..affine import Affine, AllOf, AnyOf, Bound, Formula, equal, less, map_bound, negate
 from ..model import CType, LoopText, Nest
 from ..tree import Loop, Role, loops_of
-from .bounds import Limit, extremum_of, far_bound, half_open, members, named, near_bound, needed, on_grid
+from .bounds import (Limit, extremum_of, far_bound, half_open, members, named, near_bound, needed, on_grid,
+                     without_alignment)
 from .expression import (CHOICE, INT, LONG_LONG, SUM, Expression, NoRoom, Scope, common, comparison, converted, express,
                          promoted, same_values, written)
 from .layout import NestText
 from .names import Names
+
+
+# The longest choice between two first values that stands in a header.
+_INLINE = 60
 
 
 @dataclass(frozen=True)
@@ -55,6 +60,11 @@ class Locals:
 
     place: Place
     lines: list[str] = field(default_factory=list)
+
+
+def _widens(narrow: CType, wide: CType) -> bool:
+    """True if a value changes to the wider type by itself, without a change of sign that compilers warn of."""
+    return promoted(narrow).bits < wide.bits and (wide.signed or not promoted(narrow).signed)
 
 
 def step_of(loop: Loop) -> Affine:
@@ -196,17 +206,21 @@ class Loops:
     def in_type(self, form: Affine, type: CType, scope: Scope) -> Expression:
         """A form computed in a type where that is safe, so that compilers see distances; else converted to it."""
         if scope.fits(form, type):
+            plain = self._plain(form, scope)
+            if plain is not None and (same_values(promoted(plain.type), promoted(type)) or _widens(plain.type, type)):
+                return replace(plain, type=type)
             cast = {name: converted(e, type) if scope.fits(Affine.of(name), type) and e.type.bits > type.bits else e
                     for name, e in scope.operands.items()}
-            for operands in (scope.operands, cast):
-                try:
-                    inner = Scope(scope.region, operands, scope.meanings)
-                    found = express(form, inner, wide=False)
-                except NoRoom:
-                    continue
-                if same_values(promoted(found.type), promoted(type)):
-                    return found
+            found = self._plain(form, Scope(scope.region, cast, scope.meanings))
+            if found is not None and same_values(promoted(found.type), promoted(type)):
+                return found
         return converted(express(form, scope), type)
+
+    def _plain(self, form: Affine, scope: Scope) -> Expression | None:
+        try:
+            return express(form, scope, wide=False)
+        except NoRoom:
+            return None
 
     # ---------------------------------------------------------------- bounds
 
@@ -262,10 +276,11 @@ class Loops:
                    aliases: Mapping[Affine, Expression]) -> Expression:
         """``a < b ? a : b`` in a type."""
         sign = "<" if kind == "min" else ">"
-        test = comparison(a, sign, b, scope, aliases)
-        taken = less(a, b) if kind == "min" else less(b, a)
+        asked, other = without_alignment(a, b)
+        test = comparison(asked, sign, other, scope, aliases)
+        taken = less(asked, other) if kind == "min" else less(other, asked)
         left = self._branch(a, scope.knowing(taken), type, aliases)
-        right = self._branch(b, scope.knowing(at_most(b, a) if kind == "min" else at_most(a, b)), type, aliases)
+        right = self._branch(b, scope.knowing(negate(taken)), type, aliases)
         return Expression(f"{test.text} ? {left.at(CHOICE + 1)} : {right.at(CHOICE)}", type, CHOICE)
 
     def _branch(self, form: Affine, scope: Scope, type: CType, aliases: Mapping[Affine, Expression]) -> Expression:
@@ -293,7 +308,8 @@ class Loops:
         kind = "max" if loop.step > 0 else "min"
         bounds = self._forms(members(near_bound(loop), kind), loop, work, type)
         scope = work.place.scope
-        return needed(tuple(on_grid(form, loop, scope) for form in bounds), kind, scope)
+        found = needed(tuple(on_grid(form, loop, scope) for form in bounds), kind, scope)
+        return tuple(sorted(found, key=lambda form: form.is_constant))
 
     def _start_text(self, loop: Loop, source: LoopText, near: tuple[Affine, ...], work: Locals, shift: int) -> Expression:
         """The first value; two candidates are compared in place, more get a local."""
@@ -302,7 +318,9 @@ class Loops:
         if len(moved) == 1:
             return self._first_text(source, moved[0], work.place, source.type)
         if len(moved) == 2:
-            return self._chosen_of(moved[0], moved[1], kind, work.place.scope, source.type, {})
+            chosen = self._chosen_of(moved[0], moved[1], kind, work.place.scope, source.type, {})
+            if len(chosen.text) <= _INLINE:
+                return chosen
         form = self._local(loop, moved, kind, work, source.type, "first")
         return self.in_type(form, source.type, work.place.scope)
 
@@ -324,16 +342,13 @@ class Loops:
         variable = Expression(source.iterator, source.type)
         aliases = self._aliases(source, place)
         inclusive = end - 1 if upward else end + 1
-        if source.relation in ("<=", ">=") and (inclusive in aliases or not self._is_limit(end, place)):
+        if source.relation in ("<=", ">=") and (inclusive in aliases or end.constant and not inclusive.constant):
             right = aliases.get(inclusive) or self._in_type_or_wider(inclusive, source.type, place.scope)
             return f"{source.iterator} {source.relation} {self._matching(right, variable, inclusive, scope).at(SUM)}"
         right = aliases.get(end) or self._in_type_or_wider(end, source.type, place.scope)
         sign = "<" if upward else ">"
         left = f"{source.iterator}--" if source.relation == "-->" else source.iterator
         return f"{left} {sign} {self._matching(right, variable, end, scope).at(SUM)}"
-
-    def _is_limit(self, form: Affine, place: Place) -> bool:
-        return any(form.coefficient(limit.symbol) for limit in place.limits)
 
     def _in_type_or_wider(self, form: Affine, type: CType, scope: Scope) -> Expression:
         return self.in_type(form, type, scope) if scope.fits(form, type) else express(form, scope)
@@ -485,7 +500,9 @@ class Loops:
         if len(forms) == 1 and not making.skewed:
             return self._first_text(making.source, forms[0], work.place, type).text
         if len(forms) == 2:
-            return self._chosen_of(forms[0], forms[1], kind, work.place.scope, type, {}).text
+            text = self._chosen_of(forms[0], forms[1], kind, work.place.scope, type, {}).text
+            if len(text) <= _INLINE:
+                return text
         form = self._local(making.loop, forms, kind, work, type, "first")
         return self.in_type(form, type, work.place.scope).text
 
@@ -516,7 +533,7 @@ class Loops:
         loop, upward = making.loop, making.loop.step > 0
         kind = "min" if upward else "max"
         for inner in loops_of(loop.body):
-            if inner.of != loop.of or inner is loop or (inner.role is Role.WHOLE) or making.skewed:
+            if inner.of != loop.of or inner.role is Role.WHOLE or making.skewed or "(" in inner.symbol:
                 continue
             bounds = members(far_bound(inner), kind)
             forms = [bound for bound in bounds if isinstance(bound, Affine)]

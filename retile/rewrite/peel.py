@@ -52,8 +52,9 @@ def _apart(body: tuple[Node, ...], known: Region, constants: frozenset[str]) -> 
     """A region with its full chunks in front, under a condition, and as it was where the condition fails."""
     full = _Full(constants)
     copy = tuple(full.node(node, {}) for node in body)
-    conditions = tuple(c for c in dict.fromkeys(full.conditions) if not known.implies(c))
-    if copy == body or not all(c.form.names() <= _outside(known, body) for c in conditions):
+    conditions = _needed(tuple(dict.fromkeys(full.conditions)), known)
+    inner = {loop.symbol for loop in loops_of(body)}
+    if copy == body or any(c.form.names() & inner for c in conditions):
         return body
     condition: Formula = conditions[0] if len(conditions) == 1 else AllOf(conditions)
     if not conditions:
@@ -63,8 +64,13 @@ def _apart(body: tuple[Node, ...], known: Region, constants: frozenset[str]) -> 
     return Guard(condition, copy), Guard(negate(condition), body)
 
 
-def _outside(known: Region, body: tuple[Node, ...]) -> frozenset[str]:
-    return frozenset(known.names()) - {loop.symbol for loop in loops_of(body)}
+def _needed(conditions: tuple[Constraint, ...], known: Region) -> tuple[Constraint, ...]:
+    """The conditions without those that the others and what is known imply."""
+    for condition in conditions:
+        others = tuple(other for other in conditions if other != condition)
+        if (known & Region.where(*others)).implies(condition):
+            conditions = others
+    return conditions
 
 
 @dataclass(frozen=True)

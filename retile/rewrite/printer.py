@@ -78,12 +78,35 @@ class Printer:
         """Generated lines; a mark at the start asks for one more level."""
         return [indent + line.replace("\x01", self._style.step) for line in lines]
 
+    def _single(self, loop: Loop) -> bool:
+        """True for a loop of exactly one iteration: a value that follows from the loops around."""
+        return loop.symbol in self._ids and isinstance(loop.lower, Affine) and loop.lower == loop.upper and \
+            abs(loop.step) == 1
+
+    def _assigned(self, loop: Loop, place: Place, indent: str) -> list[str]:
+        """The one iteration of a loop, its iterator set before it."""
+        source = self._nest.loop(loop.symbol)
+        remarks = self._take(loop)
+        value = self._loops.in_type(Affine.of(loop.lower), source.type, place.scope) \
+            if isinstance(loop.lower, Affine) else None
+        assert value is not None
+        declared = f"const {source.type.spelling} " if source.declared_in_for else ""
+        lines = [indent + self._layout.moved(extent, indent)
+                 for extent in (*remarks.before, *remarks.behind, *remarks.after)]
+        lines.append(f"{indent}{declared}{source.iterator} = {value.text};")
+        scope = place.scope.naming(loop.symbol, Expression(source.iterator, source.type), loop.constraints())
+        return lines + self.nodes(loop.body, Place(scope, place.limits, place.around | {loop.symbol}), indent)
+
     def _body(self, loop: Loop, opened: Opened, indent: str, behind: str) -> list[str]:
         inner = indent + self._style.step
         given, place = self._given(loop, opened.inside)
-        body = self._indented((*opened.first, *given), inner) + self.nodes(loop.body, place, inner)
+        only = loop.body[0] if len(loop.body) == 1 else None
+        body = self._indented((*opened.first, *given), inner)
+        single = isinstance(only, Loop) and self._single(only)
+        body += self._assigned(only, place, inner) if isinstance(only, Loop) and single else \
+            self.nodes(loop.body, place, inner)
         source = self._nest.loop(loop.of)
-        braced = self._layout.braced(source) or len(loop.body) != 1 or bool(opened.first or given) or \
+        braced = self._layout.braced(source) or len(loop.body) != 1 or bool(opened.first or given) or single or \
             self._needs_braces(loop.body[0], body)
         return self._style.block(opened.header, body, indent, braced, behind)
 
@@ -124,7 +147,7 @@ class Printer:
         if guard.span is not None:
             text = self._layout.moved(guard.span, indent)
         elif guard.condition is not None:
-            text = condition(guard.condition, place.scope).text
+            text = self._style.wrapped(condition(guard.condition, place.scope), indent + "if (")
         else:
             raise InternalError(f"{self._nest.address}: a condition has no text")
         inner = indent + self._style.step

@@ -6,7 +6,11 @@ import re
 from dataclasses import dataclass
 
 from ..model import Nest
+from .expression import AND, Expression
 from .layout import NestText
+
+# Generated conditions are broken beyond this many columns.
+_WIDTH = 100
 
 
 @dataclass(frozen=True)
@@ -26,6 +30,13 @@ class Style:
             return [f"{indent}// {line}" for line in lines]
         start = [f"{indent}/* {lines[0]}", *(f"{indent}   {line}" for line in lines[1:])]
         return [*start[:-1], start[-1] + " */"]
+
+    def wrapped(self, condition: Expression, before: str) -> str:
+        """A condition behind this text, in several lines if one would be too long."""
+        if len(before) + len(condition.text) <= _WIDTH or condition.level != AND:
+            return condition.text
+        indent = before[:len(before) - len(before.lstrip())] + self.step
+        return condition.text.replace(" && ", f"{self.eol}{indent}&& ")
 
     def block(self, header: str, body: list[str], indent: str, braced: bool = True, behind: str = "") -> list[str]:
         """A header with its body, whose lines are indented already; ``behind`` follows the header on its line."""

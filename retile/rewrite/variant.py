@@ -12,7 +12,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
-from ..affine import Affine, AllOf, Formula, at_most
+from ..affine import Affine, AllOf, Formula, at_most, bound_names
 from ..model import Assumption, AssumptionCode, Judgement, LoopText, Nest, Plan, Variant
 from ..sets import Region
 from ..tree import Guard, Leaf, Loop, Node, Verbatim, loops_of
@@ -83,12 +83,13 @@ def finished_tree(nest: Nest, dependences: Dependences, plan: Plan, remainder: s
 
 def check(tree: tuple[Node, ...], nest: Nest, dependences: Dependences, plan: Plan) -> None:
     """Ask the questions of a finished tree; InternalError, with the first flaw, if the answer to one is no."""
-    from ..plan import moved_conditions
+    from ..plan import binding_edges, moved_conditions
     from ..questions import order_kept, same_instances, values_arrive
 
     context = dependences.context
     repeatable = moved_conditions(nest, plan) | set(plan.copied)
-    flaws = [*same_instances(tree, nest, context, repeatable), *order_kept(tree, dependences),
+    flaws = [*same_instances(tree, nest, context, repeatable),
+             *order_kept(tree, dependences, binding_edges(nest, dependences, plan)),
              *values_arrive(tree, nest, context, plan.copied)]
     if flaws:
         raise InternalError(f"{nest.address}: the loops made for this plan are wrong, so nothing was written: {flaws[0]}.\n"
@@ -133,7 +134,7 @@ class _Order:
         except NoRoom:
             pass
         try:
-            return self._text(room_assumptions(self.nest))
+            return self._text(room_assumptions(self.nest, self.tree))
         except NoRoom as error:
             raise InternalError(f"{self.nest.address}: no integer type of C is wide enough for {error}") from error
 
@@ -243,11 +244,12 @@ def _in_range(symbol: str, low: int, high: int) -> list[Formula]:
     return [at_most(low, Affine.of(symbol)), at_most(Affine.of(symbol), high)]
 
 
-def room_assumptions(nest: Nest) -> tuple[Assumption, ...]:
-    """That sizes of 64 bits are small enough for sums of them: nobody has larger ones, but a test says it."""
+def room_assumptions(nest: Nest, tree: tuple[Node, ...]) -> tuple[Assumption, ...]:
+    """That bounds of 64 bits are small enough for sums of them: nobody has larger ones, but a test says it."""
+    names = frozenset().union(*(bound_names(bound) for loop in loops_of(tree) for bound in (loop.lower, loop.upper)))
     found = []
     for parameter in nest.parameters:
-        if parameter.type.bits >= 64:
+        if parameter.type.bits >= 64 and parameter.symbol in names:
             low = -_ROOM if parameter.type.signed else 0
             found.append(Assumption(AssumptionCode.RELATION, f"{parameter.text} is at most {_ROOM}",
                                     AllOf(tuple(_in_range(parameter.symbol, low, _ROOM)))))
