@@ -3,7 +3,7 @@
     import retile
 
     code = retile.open_file("samples_c/beamform.c")
-    nest = code.nest(16)
+    nest = code.nest(14)
     judgement = nest.check("k:64 i k j")
     if judgement.verdict.value == "legal":
         print(nest.diff(nest.rewrite("k:64 i k j")))

@@ -40,16 +40,16 @@ def _run(arguments: list[str]) -> int:
     except (click.Abort, KeyboardInterrupt):
         print("Interrupted.", file=sys.stderr)
         return _INTERRUPTED
-    except BrokenPipeError:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())  # nothing is left to flush at exit
-        return _CLOSED_PIPE
     except Exception as error:
         return _failed(error)
 
 
 def _failed(error: Exception) -> int:
+    from .commands.output import ClosedPipe
     from .model import RetileError
 
+    if isinstance(error, ClosedPipe):
+        return _CLOSED_PIPE
     if isinstance(error, RetileError):
         print(error, file=sys.stderr)
         return 2

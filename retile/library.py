@@ -94,13 +94,16 @@ class OpenNest:
         return replace(plan, text=f"{plan.order_text}; {written}", options=options)
 
     def check(self, plan: str | Plan) -> Judgement:
-        """The verdict about a plan, with witness and assumptions."""
-        from .plan import judge
+        """The verdict about a plan, with witness, assumptions and, if there is one, a legal plan near it."""
+        from .plan import judge, nearest_legal
 
         if self.found.nest is None:
             text = plan.text if isinstance(plan, Plan) else " ".join(plan.split())
             return Judgement(Verdict.REFUSED, Plan(text, ()), refusals=self.refusals)
-        return judge(self.nest, self.dependences, self._parsed(plan))
+        judgement = judge(self.nest, self.dependences, self._parsed(plan))
+        if judgement.verdict is not Verdict.ILLEGAL or judgement.instead is not None:
+            return judgement
+        return replace(judgement, instead=nearest_legal(self.nest, self.dependences, judgement.plan))
 
     def rewrite(self, plan: str | Plan, *, trust: bool = False) -> Variant:
         """The file with this nest in the order of the plan.

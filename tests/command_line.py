@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import subprocess
 import sys
 from dataclasses import dataclass
@@ -31,8 +32,8 @@ def retile(*arguments: str | Path, cwd: Path = ROOT, seconds: float = 60, **envi
                  done.stderr.decode("utf-8", "surrogateescape"))
 
 
-def line_of(sample: str, function: str, text: str = "for") -> int:
-    """The line of the first such text behind a function's name, so that edits of a sample do not break tests."""
+def line_of(sample: str, function: str, text: str = r"\bfor\b") -> int:
+    """The line of the first match of a pattern behind a function's name, so that edits of a sample do not break tests."""
     lines = (SAMPLES / sample).read_text(encoding="utf-8").splitlines()
     start = next(number for number, line in enumerate(lines) if f"{function}(" in line or f"{function} (" in line)
-    return next(number for number, line in enumerate(lines[start:], start + 1) if text in line.split("/*")[0])
+    return next(number for number, line in enumerate(lines[start:], start + 1) if re.search(text, line.split("/*")[0]))

@@ -35,10 +35,18 @@ def print_document(document: dict[str, Any]) -> None:
     write_bytes((json.dumps(document, indent=2) + "\n").encode("ascii"))
 
 
+class ClosedPipe(Exception):
+    """Nobody reads standard output any more."""
+
+
 def write_bytes(data: bytes) -> None:
     """Bytes to standard output, as they are."""
-    sys.stdout.buffer.write(data)
-    sys.stdout.buffer.flush()
+    try:
+        sys.stdout.buffer.write(data)
+        sys.stdout.buffer.flush()
+    except BrokenPipeError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())  # what is left to flush at exit goes nowhere
+        raise ClosedPipe from None
 
 
 def say(message: str) -> None:

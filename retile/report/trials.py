@@ -30,8 +30,7 @@ def campaign_lines(campaign: Campaign, look: Look) -> list[str]:
     lines += ["", *paragraph("Medians with their 95 % intervals. verified: built without contraction of floating-point "
                              "operations, all outputs are the same, bit for bit, at every size tried. identical: so are "
                              "those of the builds that were timed.", look)]
-    for trial in campaign.trials:
-        lines += _remarks(trial, look)
+    lines += _remarks(campaign, look)
     for note in campaign.notes:
         lines += paragraph(note, look, "Note: ", "      ")
     if campaign.interrupted:
@@ -41,13 +40,9 @@ def campaign_lines(campaign: Campaign, look: Look) -> list[str]:
 
 def _row(trial: Trial, is_best: bool) -> tuple[str, ...]:
     plan = trial.plan + (f"; {trial.options}" if trial.options else "")
-    checked = "not asked" if trial.verification is None else _yes(trial.verified)
-    identical = "" if trial.identical is None else _yes(trial.identical)
+    checked = "not asked" if trial.verification is None else "yes" if trial.verified else "NO"
+    identical = "" if trial.identical is None else "yes" if trial.identical else "no"
     return plan, duration(trial.seconds), ratio(trial.speedup), checked, identical, "best" if is_best else ""
-
-
-def _yes(answer: bool) -> str:
-    return "yes" if answer else "NO"
 
 
 def duration(time: Estimate | None) -> str:
@@ -55,30 +50,43 @@ def duration(time: Estimate | None) -> str:
     if time is None:
         return "-"
     factor, unit = next((pair for pair in _UNITS if time.median >= pair[0]), _UNITS[-1])
-    return f"{time.median / factor:.3g} {unit}" + _interval(time, factor)
+    return f"{_digits(time.median / factor)} {unit}" + _interval(time, factor)
 
 
 def ratio(times: Estimate | None) -> str:
     """A ratio: ``3.21 [3.1, 3.4]``; a dash if there is none."""
-    return "-" if times is None else f"{times.median:.3g}" + _interval(times, 1.0)
+    return "-" if times is None else _digits(times.median) + _interval(times, 1.0)
+
+
+def _digits(number: float) -> str:
+    """Three digits, or all those before the point."""
+    return f"{number:.0f}" if number >= 1000 else f"{number:.3g}"
 
 
 def _interval(value: Estimate, factor: float) -> str:
     if value.low is None or value.high is None:
         return ""
-    return f" [{value.low / factor:.3g}, {value.high / factor:.3g}]"
+    return f" [{_digits(value.low / factor)}, {_digits(value.high / factor)}]"
 
 
-def _remarks(trial: Trial, look: Look) -> list[str]:
-    """What went wrong with a variant, or differs."""
+def _remarks(campaign: Campaign, look: Look) -> list[str]:
+    """What went wrong with variants, or differs; the same of several is said once."""
+    plans: dict[str, list[str]] = {}
+    for trial in campaign.trials:
+        for text in _faults(trial):
+            plans.setdefault(text, []).append(f'"{trial.plan}"')
+    return [line for text, names in plans.items() for line in paragraph(f"{', '.join(names)}: {text}", look, "", "  ")]
+
+
+def _faults(trial: Trial) -> list[str]:
     found = []
     verification = trial.verification
     if verification is not None and not verification.verified:
         reason = str(verification.difference) if verification.difference else verification.failure
-        found.append(f"it is NOT verified: {reason or 'no reason was recorded'}")
-    if trial.failure:
-        found.append(f"it was not timed: {trial.failure}")
+        found.append(f"NOT verified: {reason or 'no reason was recorded'}")
+    elif trial.failure:
+        found.append(f"not timed: {trial.failure}")
     if trial.identical is False:
-        amount = f" by up to {trial.largest_difference:g}" if trial.largest_difference is not None else ""
+        amount = f" by up to {trial.largest_difference:.3g}" if trial.largest_difference is not None else ""
         found.append(f"the timed builds differ{amount}" + (f": {trial.cause}" if trial.cause else ""))
-    return [line for text in found for line in paragraph(f'"{trial.plan}": {text}', look, "", "  ")]
+    return found
