@@ -52,8 +52,8 @@ class Reading:
 
     def _is_wanted(self, part: External) -> bool:
         """False for a function of a system header that the user's files do not mention."""
-        words, tokens, first = self.text.text, self.unit.tokens, self.text.first
-        if tokens[first[part.start]].file not in self.unit.system or words[part.start] == "typedef":
+        words, tokens, first, system = self.text.text, self.unit.tokens, self.text.first, self.unit.system
+        if any(tokens[first[place]].file not in system for place in (part.start, part.end)) or words[part.start] == "typedef":
             return True
         for index in range(part.start, part.end + 1):
             if words[index] == "(":

@@ -1,6 +1,7 @@
 /* Declarations of <complex.h> (C17 7.3). */
 #ifndef RETILE_COMPLEX_H
 #define RETILE_COMPLEX_H
+#include <retile_features.h>
 #define complex _Complex
 #define _Complex_I ((float _Complex)1.0F)
 #define I ((float _Complex)1.0F)

@@ -1,6 +1,7 @@
 /* Declarations of <ctype.h> (C17 7.4). */
 #ifndef RETILE_CTYPE_H
 #define RETILE_CTYPE_H
+#include <retile_features.h>
 int isalnum(int);
 int isalpha(int);
 int isblank(int);

@@ -1,6 +1,7 @@
 /* Macros of <errno.h> (C17 7.5) and the usual numbers. */
 #ifndef RETILE_ERRNO_H
 #define RETILE_ERRNO_H
+#include <retile_features.h>
 extern int errno;
 #define EPERM 1
 #define ENOENT 2

@@ -1,6 +1,7 @@
 /* Macros of <inttypes.h> (C17 7.8); the formats are only read, never used. */
 #ifndef RETILE_INTTYPES_H
 #define RETILE_INTTYPES_H
+#include <retile_features.h>
 #include <stdint.h>
 #include <stddef.h>
 #define PRId8 "d"

@@ -1,6 +1,7 @@
 /* Macros of <limits.h> (C17 5.2.4.2.1), from the compiler's predefined macros. */
 #ifndef RETILE_LIMITS_H
 #define RETILE_LIMITS_H
+#include <retile_features.h>
 #define CHAR_BIT __CHAR_BIT__
 #define SCHAR_MAX __SCHAR_MAX__
 #define SCHAR_MIN (-SCHAR_MAX - 1)

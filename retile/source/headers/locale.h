@@ -1,6 +1,7 @@
 /* Declarations of <locale.h> (C17 7.11). */
 #ifndef RETILE_LOCALE_H
 #define RETILE_LOCALE_H
+#include <retile_features.h>
 #define LC_ALL 6
 #define LC_COLLATE 3
 #define LC_CTYPE 0

@@ -1,6 +1,7 @@
 /* Declarations of <math.h> (C17 7.12) and some of POSIX. */
 #ifndef RETILE_MATH_H
 #define RETILE_MATH_H
+#include <retile_features.h>
 typedef float float_t;
 typedef double double_t;
 #define HUGE_VAL __DBL_MAX__

@@ -1,6 +1,7 @@
 /* Types and macros of <stdint.h> (C17 7.20), from the compiler's predefined macros. */
 #ifndef RETILE_STDINT_H
 #define RETILE_STDINT_H
+#include <retile_features.h>
 typedef __INT8_TYPE__ int8_t;
 typedef __UINT8_TYPE__ uint8_t;
 typedef __INT_LEAST8_TYPE__ int_least8_t;

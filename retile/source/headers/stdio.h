@@ -1,6 +1,7 @@
 /* Declarations of <stdio.h> (C17 7.21) and some of POSIX. */
 #ifndef RETILE_STDIO_H
 #define RETILE_STDIO_H
+#include <retile_features.h>
 #include <stddef.h>
 #include <stdarg.h>
 typedef struct __file__ FILE;

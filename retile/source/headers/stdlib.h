@@ -1,6 +1,7 @@
 /* Declarations of <stdlib.h> (C17 7.22) and some of POSIX. */
 #ifndef RETILE_STDLIB_H
 #define RETILE_STDLIB_H
+#include <retile_features.h>
 #include <stddef.h>
 typedef struct { int quot, rem; } div_t;
 typedef struct { long quot, rem; } ldiv_t;

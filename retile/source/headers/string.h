@@ -1,6 +1,7 @@
 /* Declarations of <string.h> (C17 7.24) and some of POSIX. */
 #ifndef RETILE_STRING_H
 #define RETILE_STRING_H
+#include <retile_features.h>
 #include <stddef.h>
 void *memcpy(void *restrict, const void *restrict, size_t);
 void *memmove(void *, const void *, size_t);

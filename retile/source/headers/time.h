@@ -1,6 +1,7 @@
 /* Declarations of <time.h> (C17 7.27) and some of POSIX. */
 #ifndef RETILE_TIME_H
 #define RETILE_TIME_H
+#include <retile_features.h>
 #include <stddef.h>
 typedef long time_t;
 typedef long clock_t;
