@@ -57,7 +57,7 @@ class _File:
         """All loops of the file, in text order."""
         found = []
         for function in self.source.functions:
-            inner = set()
+            inner: set[int] = set()
             for node in descendants(function.body):
                 if isinstance(node, c_ast.For):
                     found.append(_For(function, node, id(node) not in inner))

@@ -210,7 +210,7 @@ class Effects:
 
     def _pointer_cell(self, node: Any, context: Context) -> None:
         cell = self._setting.places.place(node, context)
-        if not cell.is_fixed(self._setting.loop_ids) or any(one.poly.constant != 0 for one in cell.indices):
+        if not cell.is_fixed(self._setting.loop_ids) or any(one.poly is None or one.poly.constant != 0 for one in cell.indices):
             self._found.append(Touch(cell, False, context, node))
 
     def _write(self, node: Any, context: Context, update: str = "") -> None:

@@ -127,7 +127,7 @@ class Expressions:
             case c_ast.UnaryOp():
                 return self._unary(node, context)
             case c_ast.Cast():
-                to = self._setting.types.of(node.to_type)
+                to = self._setting.written_type(node.to_type)
                 value = self.value(node.expr, context)
                 return self.convert(value, to, context, node) if value is not None and isinstance(to, CType) else None
             case c_ast.ArrayRef() | c_ast.StructRef():
@@ -135,7 +135,7 @@ class Expressions:
         return None
 
     def _constant(self, node: Any) -> Value | None:
-        value = self._setting.types.constant(node)
+        value = self._setting.constant(node)
         type_ = self._setting.type_of(node)
         if value is None or not isinstance(type_, CType) or type_.floating:
             return None
@@ -150,8 +150,8 @@ class Expressions:
         if not isinstance(type_, CType) or type_.floating or type_.spelling == "_Bool":
             return None
         if binding.kind == "enumerator":
-            value = setting.types.constant(node)
-            return None if value is None else Value(Poly.of(value), type_, True)
+            constant = setting.constant(node)
+            return None if constant is None else Value(Poly.of(constant), type_, True)
         iterator = context.iterator(binding)
         if iterator is not None:
             return Value(Poly.of(iterator), type_, True)
@@ -174,7 +174,7 @@ class Expressions:
 
     def _unary(self, node: Any, context: Context) -> Value | None:
         if node.op == "sizeof":
-            size = self._setting.types.constant(node)
+            size = self._setting.constant(node)
             return None if size is None else Value(Poly.of(size), self._arithmetic.size_type, True)
         if node.op == "*":
             return self._load(node, context)

@@ -132,7 +132,7 @@ class Loops:
         if self._setting.names.address_taken(binding):
             raise refused(loop, "iterator-address", f"the address of the iterator `{binding.name}` is taken, so a store "
                                                     "may change it; use a variable of its own for the loop.")
-        quals = self._setting.types.qualifiers(binding.decl) if binding.decl is not None else frozenset()
+        quals = self._setting.qualifiers(binding)
         for word, code in (("volatile", "volatile"), ("_Atomic", "atomic")):
             if word in quals:
                 raise refused(loop, code, f"the iterator `{binding.name}` is {word}; use a plain variable.")
@@ -211,7 +211,8 @@ class Loops:
         if not self._mentions(mine, binding, context):
             relation, mine, other = _MIRRORED[relation], other, mine
         if not self._mentions(mine, binding, context):
-            return self._unrelated(node, binding, context, loop)
+            self._unrelated(node, binding, context)
+            return None
         left_type, right_type = self._setting.type_of(mine), self._setting.type_of(other)
         if not all(isinstance(t, CType) and not t.floating for t in (left_type, right_type)):
             raise self._condition_refused(node, loop, binding)
@@ -224,7 +225,8 @@ class Loops:
             raise self._condition_refused(node, loop, binding)
         found = self._solved(relation, tested, bound, symbol, step)
         if found is None:
-            return self._wrong_way(relation, tested, bound, symbol, node, context, binding)
+            self._wrong_way(relation, tested, bound, node, context, binding)
+            return None
         return _Part(relation, found, other if self._is(mine, binding) else None)
 
     def _mentions(self, node: Any, binding: Binding, context: Context) -> bool:
@@ -263,7 +265,7 @@ class Loops:
             return scaled(_minus(other, Affine.of(1 if relation == "<" else 0)), factor, 0)
         return scaled(_minus(other, Affine.of(-1 if relation == ">" else 0)), factor, factor - 1)
 
-    def _wrong_way(self, relation: str, tested: Affine, bound: Bound, symbol: str, node: Any, context: Context,
+    def _wrong_way(self, relation: str, tested: Affine, bound: Bound, node: Any, context: Context,
                    binding: Binding) -> None:
         """A comparison against the direction of the step: harmless if it always holds, else the loop is not read."""
         holds = at_most_bound(tested, bound) if relation in ("<", "<=") else at_least_bound(tested, bound)
@@ -276,7 +278,7 @@ class Loops:
         raise refused(node, "loop-direction", f"`{c_text(node)}` bounds `{binding.name}` against the direction of its "
                                               "step; the loop may run for ever or wrap around.")
 
-    def _unrelated(self, node: Any, binding: Binding, context: Context, loop: Any) -> None:
+    def _unrelated(self, node: Any, binding: Binding, context: Context) -> None:
         condition = self._conditions.known(node, context)
         if condition is not None and self._setting.knowledge.proves(context.formula, condition):
             return None

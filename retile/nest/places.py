@@ -130,7 +130,7 @@ class Places:
         self._check(node, type_, frozenset())
         kind = StorageKind.ARRAY if isinstance(type_, (ArrayOf, StructType)) else StorageKind.SCALAR
         key = self.key_of(binding)
-        quals = self._setting.types.qualifiers(binding.decl) if binding.decl is not None else frozenset()
+        quals = self._setting.qualifiers(binding)
         self._check(node, type_, quals)
         text = binding.name if isinstance(type_, ArrayOf) else f"&{binding.name}"
         return Place(Root(key, kind, binding, text, True), (), type_, quals)
@@ -145,7 +145,7 @@ class Places:
         binding = self._setting.names.of(decl)
         assert binding is not None
         type_ = self._setting.type_of_binding(binding)
-        self._check(decl, type_, self._setting.types.qualifiers(decl))
+        self._check(decl, type_, self._setting.qualifiers(binding))
         kind = StorageKind.ARRAY if isinstance(type_, (ArrayOf, StructType)) else StorageKind.SCALAR
         text = binding.name if isinstance(type_, ArrayOf) else f"&{binding.name}"
         return Place(Root(self.key_of(binding), kind, binding, text, True), (), type_)
@@ -154,7 +154,7 @@ class Places:
         """All cells of a small array with constant extents."""
         found = [place]
         while found and isinstance(found[0].type, ArrayOf):
-            extent = self._setting.types.constant(found[0].type.extent) if found[0].type.extent is not None else None
+            extent = self._setting.constant(found[0].type.extent) if found[0].type.extent is not None else None
             if extent is None or extent * len(found) > 256:
                 raise refused(node, "unsupported", "an array is initialised inside the nest whose length is not a small "
                                                    "constant; assign its elements in a loop.")
@@ -260,7 +260,7 @@ class Places:
         return replace(place, steps=(*place.steps[:-1], moved))
 
     def _cast(self, node: Any, context: Context) -> Place:
-        to, inner = self._setting.types.of(node.to_type), self._setting.type_of(node.expr)
+        to, inner = self._setting.written_type(node.to_type), self._setting.type_of(node.expr)
         place = self.pointer(node.expr, context) if isinstance(inner, (PointerTo, ArrayOf)) else None
         if place is None or not isinstance(to, PointerTo) or _bare(to.target) != _bare(place.type):
             raise self._unknown(node)

@@ -44,14 +44,16 @@ class NestReader:
         self.loop_names = tuple(walk.ids.values())
         refusals = [*walk.refusals, *self._directives()]
         if not walk.tree:
-            return self._refuse(refusals)
+            self._refuse(refusals)
+            return None
         self._facts_around(knowledge)
         stored = store(setting, walk, self._nest)
         overlap_assumptions(setting, stored, self._stores(walk, stored))
         assumptions, unprovable = self._settle(setting, [*setting.obligations, *stored.obligations])
         refusals += stored.refusals + unprovable
         if refusals:
-            return self._refuse(refusals)
+            self._refuse(refusals)
+            return None
         return self._nest_of(setting, walk, stored, (*assumptions, *stored.assumptions))
 
     def _refuse(self, refusals: list[Refusal]) -> None:

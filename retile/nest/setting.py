@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast, c_generator
 
-from ..affine import Affine, Formula
+from ..affine import Affine, Formula, Symbol
 from ..model import AssumptionCode, CType, Parameter
 from .calls import is_pure_call
 from .context import Context
@@ -54,7 +54,7 @@ class Setting:
         self.definitions: dict[Binding, Definition] = {}
         self.held: dict[str, Place] = {}  # cells in memory that must keep their values, by C text
         self.held_variables: dict[Binding, None] = {}  # variables that must, and that a pointer might reach
-        self.factors: dict[str, Poly] = {}  # sums of parameters kept whole, such as the ``m + 1`` of a row
+        self.factors: dict[Symbol, Poly] = {}  # sums of parameters kept whole, such as the ``m + 1`` of a row
         # Products in fewer bits than an address has, with their types and where they stand.
         self.narrow: dict[tuple[Poly, CType, Context, Any], None] = {}
         self.loop_ids: set[str] = set()
@@ -69,6 +69,24 @@ class Setting:
     def type_of(self, node: Any) -> Any:
         """The C type of an expression."""
         return self.names.type_of(node)
+
+    def constant(self, node: Any) -> int | None:
+        """The value of a constant expression; None if it is none."""
+        return self.types.constant(node, self.types.scope(self.names.function, node))
+
+    def written_type(self, node: Any) -> Any:
+        """The type that a type name in the function stands for."""
+        return self.types.of(node, self.types.scope(self.names.function, node))
+
+    def qualifiers(self, binding: Binding) -> frozenset[str]:
+        """The qualifiers of a declared object."""
+        if binding.decl is None:
+            return frozenset()
+        return self.types.qualifiers(binding.decl, self.types.scope(self.names.function, binding.decl))
+
+    def size_of(self, type_: Any) -> int | None:
+        """Bytes of a type, whose extents may name what the function declares; None if it is not known."""
+        return self.types.size_of(type_, self.types.scope(self.names.function))
 
     def type_of_binding(self, binding: Binding) -> Any:
         """The C type of a declared object."""
@@ -139,7 +157,7 @@ class Setting:
             case c_ast.ID():
                 return self._frozen_name(node, context)
             case c_ast.UnaryOp() if node.op == "sizeof":
-                return self.types.constant(node) is not None
+                return self.constant(node) is not None
             case c_ast.UnaryOp() if node.op in ("+", "-", "~", "!"):
                 return self.frozen_expression(node.expr, context)
             case c_ast.BinaryOp():
@@ -147,7 +165,7 @@ class Setting:
             case c_ast.TernaryOp():
                 return all(self.frozen_expression(part, context) for part in (node.cond, node.iftrue, node.iffalse))
             case c_ast.Cast():
-                return isinstance(self.types.of(node.to_type), CType) and self.frozen_expression(node.expr, context)
+                return isinstance(self.written_type(node.to_type), CType) and self.frozen_expression(node.expr, context)
             case c_ast.FuncCall():
                 return is_pure_call(node, self) and all(
                     self.frozen_expression(one, context) for one in (node.args.exprs if node.args else ()))
@@ -196,7 +214,7 @@ class Setting:
     def expanded(self, poly: Poly) -> Poly:
         """The polynomial with all sums that were kept whole multiplied out."""
         while any(name in self.factors for name in poly.names()):
-            poly = poly.replace(dict(self.factors))
+            poly = poly.replace({**self.factors})
         return poly
 
     def affine(self, poly: Poly) -> Affine | None:
@@ -219,6 +237,7 @@ class Setting:
         if wide is None:  # narrower factors are multiplied in 64 bits
             unsigned = types and not any(t.signed for t in types)
             wide = self.types.arithmetic.named(("unsigned", "long", "long") if unsigned else ("long", "long"))
+            assert wide is not None
             cast = "(unsigned long long)" if unsigned else "(long long)"
         symbol = " * ".join(texts)
         return self.knowledge.add_parameter(Parameter(symbol, f"({cast}{symbol})", wide, "expression"))
@@ -259,7 +278,7 @@ class Setting:
     def texts(self) -> dict[str, str]:
         """The C text of each parameter and each sum that was kept whole."""
         known = {symbol: parameter.text for symbol, parameter in self.knowledge.parameters.items()}
-        return known | {symbol: symbol for symbol in self.factors}
+        return known | {symbol: symbol for symbol in self.factors if isinstance(symbol, str)}
 
     # ------------------------------------------------------------ trying
 

@@ -197,6 +197,7 @@ def product_bound(setting: Setting, row: Affine, stride: Stride, context: Contex
     symbol = f"({setting.poly_text(Poly.of(top))})" if len(top.terms) > 1 or top.constant else \
         setting.poly_text(Poly.of(top))
     wide = setting.types.arithmetic.named(("unsigned", "long", "long"))
+    assert wide is not None
     factor, product = stride
     pieces = [setting.poly_text(Poly.of(s)) for s in product] + ([str(factor)] if factor != 1 else [])
     conditions: list[Formula] = []

@@ -101,7 +101,7 @@ class _Builder:
 
     def _bytes(self, place: Place) -> int | None:
         counted = place.step_type if place.step_type is not None else place.type
-        return self._setting.types.size_of(counted)
+        return self._setting.size_of(counted)
 
     # ------------------------------------------------------------ arrays
 
@@ -170,7 +170,7 @@ class _Builder:
         """A declared extent; None where the code states none or cannot be held to it."""
         if index.extent is None:
             return None
-        constant = self._setting.types.constant(index.extent)
+        constant = self._setting.constant(index.extent)
         last = dimension == len(place.indices) - 1
         if constant is not None:  # a last member of one element may stand for more of them
             return None if constant <= 1 and last and place.members else Affine.of(constant)

@@ -161,7 +161,7 @@ class Walk:
         if binding.kind == "local":
             self.block_declared[binding] = context.loops
         type_ = setting.type_of_binding(binding)
-        if isinstance(type_, ArrayOf) and setting.types.size_of(type_) is None:
+        if isinstance(type_, ArrayOf) and setting.size_of(type_) is None:
             raise refused(decl, "vla", f"the array `{decl.name}`, whose length is no constant, is made anew in every "
                                        "iteration; declare it before the nest.")
         if decl.init is None or binding.kind == "static":
