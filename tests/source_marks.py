@@ -36,13 +36,17 @@ def opened(folder: Path, text: str | bytes, flags: tuple[str, ...] = (), *, cc: 
     return open_source(str(path), CompilerCall(cc, flags))
 
 
-def statements(source: Source, kinds: Any = (c_ast.For, c_ast.While, c_ast.DoWhile, c_ast.If, c_ast.Switch)) -> list[Any]:
+def statements(
+    source: Source, kinds: Any = (c_ast.For, c_ast.While, c_ast.DoWhile, c_ast.If, c_ast.Switch)
+) -> list[Any]:
     """All nodes of some kinds in the functions of the file, in text order."""
     found = [node for function in source.functions for node in nodes(function.body) if isinstance(node, kinds)]
     return sorted(found, key=lambda node: node.coord.number)
 
 
-def extents(source: Source, kinds: Any = (c_ast.For, c_ast.While, c_ast.DoWhile, c_ast.If, c_ast.Switch)) -> set[tuple[int, int]]:
+def extents(
+    source: Source, kinds: Any = (c_ast.For, c_ast.While, c_ast.DoWhile, c_ast.If, c_ast.Switch)
+) -> set[tuple[int, int]]:
     """The known extents of these nodes, after checking that all extents of the file nest properly."""
     for function in source.functions:
         check_nesting(source, function.body, source.function_span(function))

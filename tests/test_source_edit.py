@@ -100,19 +100,21 @@ def test_flags_of_a_command(tmp_path: Path) -> None:
     (tmp_path / "include").mkdir()
     (tmp_path / "include" / "depth.h").write_text("#define LIMIT 7\n")
     source = tmp_path / "src" / "survey.c"
-    source.write_text('#include <depth.h>\nint f(void) { return LIMIT + EXTRA + sizeof NAME; }\n')
+    source.write_text("#include <depth.h>\nint f(void) { return LIMIT + EXTRA + sizeof NAME; }\n")
     build = tmp_path / "build"
     build.mkdir()
     database(
         build,
         {"directory": str(build), "file": "../src/other.c", "command": "cc -c ../src/other.c"},
         {"directory": str(build), "file": "../src/survey.c",
-         "command": "ccache cc -I../include -I .. -DEXTRA=3 -D 'NAME=\"a b\"' -Wall -O2 -g -MD -MF x.d -std=c11 -isystem../sys -c "
+         "command": "ccache cc -I../include -I .. -DEXTRA=3 -D 'NAME=\"a b\"' -Wall -O2 -g -MD -MF x.d "
+         "-std=c11 -isystem../sys -c "
                     "-o survey.o ../src/survey.c"},
     )  # fmt: skip
     call = flags_from_compile_commands(str(build), str(source))
     assert call.cc == "cc"
-    assert call.flags == (f"-I{tmp_path}/include", "-I", f"{tmp_path}", "-DEXTRA=3", "-D", 'NAME="a b"', "-O2", "-std=c11",
+    assert call.flags == (f"-I{tmp_path}/include", "-I", f"{tmp_path}", "-DEXTRA=3", "-D", 'NAME="a b"', "-O2",
+    "-std=c11",
                           f"-isystem{tmp_path}/sys")  # fmt: skip
     opened = open_source(str(source), call)
     assert opened.types.constant(opened.functions[0].body.block_items[0].expr) == 14
@@ -120,7 +122,10 @@ def test_flags_of_a_command(tmp_path: Path) -> None:
 
 def test_flags_as_a_list_and_a_relative_directory(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     (tmp_path / "a.c").write_text("int x;")
-    database(tmp_path, {"directory": ".", "file": "a.c", "arguments": ["./tools/cc x", "-U", "B", "-include", "pre.h", "a.c"]})
+    database(
+        tmp_path,
+        {"directory": ".", "file": "a.c", "arguments": ["./tools/cc x", "-U", "B", "-include", "pre.h", "a.c"]},
+    )
     (tmp_path / "pre.h").write_text("")
     monkeypatch.chdir(tmp_path)
     call = flags_from_compile_commands(".", "a.c")

@@ -7,11 +7,10 @@ import random
 from pathlib import Path
 
 import pytest
+from source_marks import opened
 
 from retile.model import RetileError
 from retile.source import CompilerCall, complaint, open_source
-
-from source_marks import opened
 
 
 def message(path: str | Path, call: CompilerCall = CompilerCall(), bodies: bool = False) -> str:
@@ -114,7 +113,7 @@ def test_syntax_errors_name_their_line(tmp_path: Path, text: str, line: int | No
 
 
 def test_what_only_the_parser_does_not_read(tmp_path: Path) -> None:
-    """Nested functions are an extension of GCC: the compiler finds nothing wrong, retile says that it does not read them."""
+    """Nested functions are an extension of GCC: the compiler finds nothing wrong, retile does not read them."""
     path = written(tmp_path, "int f(int n) {\n  int half(int m) { return m / 2; }\n  return half(n);\n}\n")
     said = message(path, CompilerCall("gcc"), bodies=True)
     assert said.startswith(f"{path}:2:") and "    int half(int m) { return m / 2; }" in said.replace("      ", "    ")
@@ -133,7 +132,8 @@ def test_types_that_only_the_real_header_has(tmp_path: Path) -> None:
     source = opened(
         tmp_path,
         "#define _GNU_SOURCE\n#include <stdio.h>\n#include <stdlib.h>\n"
-        "int f(int n) { cookie_io_functions_t hooks = { 0 }; for (int i = 0; i < n; i++) n += hooks.read != 0; return n; }\n"
+        "int f(int n) { cookie_io_functions_t hooks = { 0 }; for (int i = 0; i < n; i++) n += hooks.read != "
+        "0; return n; }\n"
         "int g(drand48_dummy) int drand48_dummy; { struct drand48_data d; return sizeof d > 3; }\n",
     )
     loop = source.functions[0].body.block_items[1]
@@ -150,9 +150,12 @@ def test_the_form_of_a_complaint() -> None:
     assert "\x1b" not in complaint("a.c", 1, 1, "\x1b[31mred\udc80", "no", "")
 
 
-FUZZ_PIECES = ["for(", ";", ")", "{", "}", "int ", "x", "=", "1", "\n", "#if 1\n", "#else\n", "#endif\n", "#define x ", "\\\n", '"',
-               "'", "/*", "*/", "//", "typedef ", "struct ", "if(", "else ", "case ", ":", "(", "[", "]", "*", "&&", "...", "?", "x(",
-               "while(", "do ", "switch(", "#line 3\n", "__attribute__((", "asm(", "typeof(", "enum ", "\0", "\xff", "0x", "1e+",
+FUZZ_PIECES = ["for(", ";", ")", "{", "}", "int ", "x", "=", "1", "\n", "#if 1\n", "#else\n", "#endif\n",
+    "#define x ", "\\\n", '"',
+               "'", "/*", "*/", "//", "typedef ", "struct ", "if(", "else ", "case ", ":", "(", "[", "]", "*",
+               "&&", "...", "?", "x(",
+               "while(", "do ", "switch(", "#line 3\n", "__attribute__((", "asm(", "typeof(", "enum ", "\0",
+               "\xff", "0x", "1e+",
                "_Pragma(", "#pragma x\n", "## ", "# ", "return ", "goto ", "void f(int n)", "\f", "\r\n"]  # fmt: skip
 
 

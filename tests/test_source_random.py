@@ -6,7 +6,6 @@ import random
 from pathlib import Path
 
 import pytest
-
 from source_marks import COMPILERS, extents, opened, unmarked
 
 HEAD = """\
@@ -33,7 +32,9 @@ class Writer:
         self.chance = random.Random(seed)
 
     def gap(self) -> str:
-        return self.chance.choice([" ", " ", " ", "\n", "\t", "  ", " /* ; } */ ", " // { for (\n", " \\\n ", "\r\n", "\f "])
+        return self.chance.choice(
+            [" ", " ", " ", "\n", "\t", "  ", " /* ; } */ ", " // { for (\n", " \\\n ", "\r\n", "\f "]
+        )
 
     def join(self, *parts: str) -> str:
         return self.gap().join(parts)
@@ -46,7 +47,8 @@ class Writer:
         other = self.expression(depth + 1)
         return self.chance.choice(
             [*simple, self.join(inner, "+", other), self.join("AT", f"(a, {inner})"), f"AT(a,{self.gap()}{inner})",
-             self.join("(", inner, ")"), f"PICK({inner},{self.gap()}{other}, {inner}{self.gap()})", f"LIST({inner}, {other})",
+             self.join("(", inner, ")"), f"PICK({inner},{self.gap()}{other}, {inner}{self.gap()})",
+             f"LIST({inner}, {other})",
              "EMPTY " + inner, f"EMPTY_CALL({other}){self.gap()}{inner}", f"LIST({inner})"]
         )  # fmt: skip
 
@@ -76,19 +78,30 @@ class Writer:
             case 11:
                 return "⟦" + self.join("if", f"({e()})", "{", body, "}") + "⟧"
             case 12:
-                return "⟦" + self.join("switch", "(k)", "{", "case 1:", body, "default:", self.statement(depth + 1), "}") + "⟧"
-        return self.join("{", body, *(self.statement(depth + 1) for _ in range(self.chance.randrange(3))), self.branch(), "}")
+                return (
+                    "⟦"
+                    + self.join("switch", "(k)", "{", "case 1:", body, "default:", self.statement(depth + 1), "}")
+                    + "⟧"
+                )
+        return self.join(
+            "{", body, *(self.statement(depth + 1) for _ in range(self.chance.randrange(3))), self.branch(), "}"
+        )
 
     def branch(self) -> str:
         live = self.statement(3)
-        junk = self.chance.choice(["for (;;) }", "if (x) {", "k = AT(;", "it's", self.statement(3).replace("⟦", "").replace("⟧", "")])
-        one, other = self.chance.choice([("#if ONE", "#else"), ("#ifdef ONE", "#elif TWO"), ("#if 0\n#elif 1", "#else")])
+        junk = self.chance.choice(
+            ["for (;;) }", "if (x) {", "k = AT(;", "it's", self.statement(3).replace("⟦", "").replace("⟧", "")]
+        )
+        one, other = self.chance.choice(
+            [("#if ONE", "#else"), ("#ifdef ONE", "#elif TWO"), ("#if 0\n#elif 1", "#else")]
+        )
         redefine = self.chance.choice(["", "\n#undef TWO\n#define TWO 1 \\\n + ONE\n"])
         return f"\n{one}\nk++; {live}\n{other}\n{junk if other == '#else' else 'k--; }'}\n#endif\n{redefine}"
 
     def program(self) -> str:
         functions = [
-            f"int f{number}(int n, int *a) {{ int k = 0;\n{self.statement()}\n{self.statement()}\nreturn k; }}\n" for number in range(3)
+            f"int f{number}(int n, int *a) {{ int k = 0;\n{self.statement()}\n{self.statement()}\nreturn k; }}\n"
+            for number in range(3)
         ]
         return HEAD + "\n".join(functions)
 

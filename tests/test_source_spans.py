@@ -6,10 +6,9 @@ from pathlib import Path
 
 import pytest
 from pycparser import c_ast
+from source_marks import COMPILERS, extents, opened, statements, unmarked
 
 from retile.source import Source, splice
-
-from source_marks import COMPILERS, extents, opened, statements, unmarked
 
 STYLES = {
     "knr": """
@@ -302,7 +301,10 @@ def test_parts_of_a_header(tmp_path: Path) -> None:
 
 
 def test_simple_statements_and_shared_declarations(tmp_path: Path) -> None:
-    text = "int f(int n, int *a) {\n  static int x = 1, *y = 0, z[2] = { 1, 2 };\n  a [ 0 ] = n , n ++ ;\n  ;\n  return (n);\n}\n"
+    text = (
+        "int f(int n, int *a) {\n  static int x = 1, *y = 0, z[2] = { 1, 2 };\n"
+        "  a [ 0 ] = n , n ++ ;\n  ;\n  return (n);\n}\n"
+    )
     source = opened(tmp_path, text)
     items = source.functions[0].body.block_items
     assert [source.slice(source.span(item)) for item in items] == [  # type: ignore[arg-type]

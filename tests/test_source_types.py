@@ -8,30 +8,35 @@ from typing import Any
 
 import pytest
 from pycparser import c_ast
+from source_marks import COMPILERS, opened
 
 from retile.model import CType
 from retile.source import ArrayOf, FunctionType, PointerTo, Source, StructType, UnknownType, Void
 from retile.source.parse import nodes
-
-from source_marks import COMPILERS, opened
 
 DECLARATIONS = """
 #include <stddef.h>
 #include <stdint.h>
 #include <stdbool.h>
 typedef unsigned long word; typedef word words[3]; typedef const volatile short sample_t;
-enum gain { LOW = -3, MID, HIGH = MID + 10, TOP = 1 << 4 | 1 }; enum plain { ZERO, ONE }; enum wide { FAR = 0x80000000u };
+enum gain { LOW = -3, MID, HIGH = MID + 10, TOP = 1 << 4 | 1 }; enum plain { ZERO, ONE }; enum wide { FAR =
+0x80000000u };
 struct inner { char tag; double value; };
 struct fields { unsigned a : 3, b : 7; int c : 23; char d; unsigned : 0; short e; long long f : 40; char g; };
-struct sounding { char c; struct inner in; short s[3]; struct { int x; union { float f; char raw[6]; }; }; float tail[]; };
+struct sounding { char c; struct inner in; short s[3]; struct { int x; union { float f; char raw[6]; }; }; float
+tail[]; };
 union any { char c[5]; double d; int i; };
 struct node { struct node *next; enum gain gain; bool flag; long double ld; };
 static double grid[4][TOP]; static unsigned char bytes[sizeof(struct sounding) + 1];
-static char c0; static signed char c1; static unsigned char c2; static short s0; static unsigned short s1; static unsigned u;
-static int i; static long l; static unsigned long ul; static long long ll; static unsigned long long ull; static float f;
+static char c0; static signed char c1; static unsigned char c2; static short s0; static unsigned short s1; static
+unsigned u;
+static int i; static long l; static unsigned long ul; static long long ll; static unsigned long long ull; static
+float f;
 static double d; static long double ld; static size_t z; static ptrdiff_t p; static int8_t i8; static uint16_t u16;
-static int64_t i64; static uint_fast16_t fast; static enum gain g; static enum plain e; static bool b; static sample_t sample;
-static words w; static struct sounding one, *many; static union any un; static struct node nd; static double (*rows)[TOP];
+static int64_t i64; static uint_fast16_t fast; static enum gain g; static enum plain e; static bool b; static
+sample_t sample;
+static words w; static struct sounding one, *many; static union any un; static struct node nd; static double
+(*rows)[TOP];
 static int (*hook)(const char *, int); static int call(int, double *); static wchar_t wide; static intptr_t ip;
 static float _Complex fc; static double _Complex dc; static int list[] = { 1, 2, 3, 4 }; static char name[] = "survey";
 static enum wide far;
@@ -40,24 +45,31 @@ static enum wide far;
 ARITHMETIC = """
 c0 c1 c2 s0 s1 u i l ul ll ull f d ld z p i8 u16 i64 fast g e b sample w[1] one.in.value one.x one.f many->s[2]
 many[1].in.tag un.d nd.gain nd.next->flag rows[2][3] (*rows)[1] *many->tail hook("a",1) call(1,&d) bytes[3] wide ip
-c0+c1 s0*s1 u+i u+l ul+ll ull-ll u16<<1 u16>>ul z-1 i-z i8+i64 fast*2 g+1 e+1 b+b f*i f*d d+ld -c0 ~u16 !d +s1 -u i<d c0&&d
-sizeof(int) &grid[1][2]-&grid[0][0] 1 1u 1l 1ul 1ll 0x7fffffff 0x80000000 0xffffffff 2147483648 4294967296 0x8000000000000000
-'a' '\\n' 1.0 1.0f 1.0L 1e3 1.f LOW (char)1 (word)i (sample_t)2 i?c0:s0 i?u:l i?f:i i,l (i=c0) (s0+=d) c0++ --s1 sizeof(list)
+c0+c1 s0*s1 u+i u+l ul+ll ull-ll u16<<1 u16>>ul z-1 i-z i8+i64 fast*2 g+1 e+1 b+b f*i f*d d+ld -c0 ~u16 !d +s1 -u i<d
+c0&&d
+sizeof(int) &grid[1][2]-&grid[0][0] 1 1u 1l 1ul 1ll 0x7fffffff 0x80000000 0xffffffff 2147483648 4294967296
+0x8000000000000000
+'a' '\\n' 1.0 1.0f 1.0L 1e3 1.f LOW (char)1 (word)i (sample_t)2 i?c0:s0 i?u:l i?f:i i,l (i=c0) (s0+=d) c0++ --s1
+sizeof(list)
 fc*2 dc+fc fc*d far far+1
 """.split()  # noqa: SIM905
 
 CONSTANTS = [
     text.strip()
     for text in r"""
-1+2*3; -7/2; -7%3; 7%-3; 1<<10; -1>>1; 0xffu&~0xfu; 5>3; 5==3; 1?2:3; 0&&1/0; 1||1/0; !0; !5; ~0; ~0u; LOW; MID; HIGH; TOP;
+1+2*3; -7/2; -7%3; 7%-3; 1<<10; -1>>1; 0xffu&~0xfu; 5>3; 5==3; 1?2:3; 0&&1/0; 1||1/0; !0; !5; ~0; ~0u; LOW; MID;
+HIGH; TOP;
 ONE; FAR; sizeof(int); sizeof(struct fields); sizeof(struct sounding); sizeof(struct node); sizeof(union any);
 sizeof(words); sizeof grid; sizeof(grid[0]); sizeof bytes; sizeof list/sizeof list[0]; sizeof one.s; sizeof(char(*)[9]);
 sizeof *rows; sizeof many; sizeof *many; offsetof(struct sounding,s); offsetof(struct sounding,x); sizeof "abc";
 offsetof(struct sounding,raw); offsetof(struct sounding,tail); offsetof(struct fields,e); offsetof(struct fields,g);
-offsetof(struct node,ld); (unsigned char)300; (char)200; (_Bool)7; (short)0x18000; (int)2.9; -1<0u; -1<0; 'a'; '\0'; '\x41';
-'\101'; '\''; '\xff'; 4294967295u+1u; 10u-11u; (1ull<<63)-1; sizeof(enum gain); 3-4?5:6; 1?-1:1u; sizeof name; 0b101; 0777;
+offsetof(struct node,ld); (unsigned char)300; (char)200; (_Bool)7; (short)0x18000; (int)2.9; -1<0u; -1<0; 'a'; '\0';
+'\x41';
+'\101'; '\''; '\xff'; 4294967295u+1u; 10u-11u; (1ull<<63)-1; sizeof(enum gain); 3-4?5:6; 1?-1:1u; sizeof name;
+0b101; 0777;
 sizeof(1+1L); sizeof(c0+c1); sizeof(dc); sizeof(int[TOP][2]); (long)LOW*2; 0x7fffffff+1LL; (bool)2; -2147483647-1;
-0x7fffffffffffffff; -5L/2; -5%2; (sample_t)70000; sizeof(sample); sizeof(struct inner[2]); sizeof(int*); sizeof(void(*)(int))
+0x7fffffffffffffff; -5L/2; -5%2; (sample_t)70000; sizeof(sample); sizeof(struct inner[2]); sizeof(int*);
+sizeof(void(*)(int))
 """.split(";")
 ]
 
@@ -118,7 +130,21 @@ def test_constants_are_the_compilers(tmp_path: Path, cc: str) -> None:
 
 
 def test_undefined_and_variable_expressions_are_no_constants(tmp_path: Path) -> None:
-    texts = ["1/0", "5%0", "1<<40", "1<<-1", "0x7fffffff+1", "i", "i*0", "call(1,&d)", "d", "1.5", '"a"', "-1<<1", "i?1:1"]
+    texts = [
+        "1/0",
+        "5%0",
+        "1<<40",
+        "1<<-1",
+        "0x7fffffff+1",
+        "i",
+        "i*0",
+        "call(1,&d)",
+        "d",
+        "1.5",
+        '"a"',
+        "-1<<1",
+        "i?1:1",
+    ]
     source, items = expression_source(tmp_path, "cc", texts)
     scope = source.types.scope(source.functions[0])
     assert [source.types.constant(item, scope) for item in items] == [None] * len(texts)
@@ -141,7 +167,8 @@ def test_member_offsets_are_the_compilers(tmp_path: Path, cc: str) -> None:
 def test_layouts_that_attributes_change_are_unknown(tmp_path: Path) -> None:
     source = opened(
         tmp_path,
-        "struct __attribute__((packed)) a { char c; int i; };\nstruct b { char c; int i; } __attribute__((aligned(64)));\n"
+        "struct __attribute__((packed)) a { char c; int i; };\nstruct b { char c; int i; } "
+        "__attribute__((aligned(64)));\n"
         "struct c { char c; _Alignas(16) int i; };\nstruct d { char c; int i; };\n"
         "typedef float quad __attribute__((vector_size(16)));\nquad q; float x;\n"
         "void f(void) { sizeof(struct a); sizeof(struct b); sizeof(struct c); sizeof(struct d); q; x; }\n",
@@ -165,8 +192,10 @@ def test_qualifiers_survive_every_spelling(tmp_path: Path) -> None:
     source = opened(
         tmp_path,
         "typedef double *restrict alone; typedef volatile int port; typedef const float *ro;\n"
-        "void f(double *restrict a, double *__restrict b, const double *__restrict__ c, alone d, port *e, __volatile__ int *g,\n"
-        "       _Atomic int *h, _Atomic(int) *k, ro m, double n[restrict static 4], const double o[3][4], char *const *p) {}\n",
+        "void f(double *restrict a, double *__restrict b, const double *__restrict__ c, alone d, port *e, "
+        "__volatile__ int *g,\n"
+        "       _Atomic int *h, _Atomic(int) *k, ro m, double n[restrict static 4], const double o[3][4], "
+        "char *const *p) {}\n",
     )
     types = parameters(source)
     assert {name for name, type in types.items() if type.restrict} == {"a", "b", "c", "d", "n"}
@@ -180,7 +209,8 @@ def test_shapes_of_declarators(tmp_path: Path) -> None:
     source = opened(
         tmp_path,
         "#include <stddef.h>\nstruct grid { int rows; double *depth; };\n"
-        "double f(size_t n, double a[n][n + 1], struct grid *g, double **rows, int (*op)(int), int arr(void), struct later *s) {\n"
+        "double f(size_t n, double a[n][n + 1], struct grid *g, double **rows, int (*op)(int), int "
+        "arr(void), struct later *s) {\n"
         "  return 0; }\n",
     )
     types = parameters(source)
@@ -224,7 +254,8 @@ def test_names_mean_what_their_place_says(tmp_path: Path) -> None:
             found.append((node.name, type.spelling, source.types.constant(node, scope)))
     assert found == [
         ("n", "depth", None), ("n", "float", None), ("x", "depth", None), ("HERE", "int", 5),
-        *[("n", "long", None)] * 3, ("m", "long", None), ("n", "depth", None), ("x", "double", None), ("HERE", "int", 4), ("x", "unsigned int", None),
+        *[("n", "long", None)] * 3, ("m", "long", None), ("n", "depth", None), ("x", "double", None), ("HERE",
+        "int", 4), ("x", "unsigned int", None),
         ("x", "short", None), ("x", "char", None), ("x", "char", None), ("x", "unsigned int", None),
     ]  # fmt: skip
     block = source.functions[0].body.block_items[1]
@@ -239,7 +270,8 @@ def test_names_mean_what_their_place_says(tmp_path: Path) -> None:
 def test_typeof_and_unknown_types(tmp_path: Path) -> None:
     source = opened(
         tmp_path,
-        "double d; void f(int n) { __typeof__(d) a; typeof(short) b; __auto_type c = d; __int128 e; _Float128 g; __builtin_va_list h;\n"
+        "double d; void f(int n) { __typeof__(d) a; typeof(short) b; __auto_type c = d; __int128 e; "
+        "_Float128 g; __builtin_va_list h;\n"
         "a; b; c; e; g; h; ({ n++; n; }); &&end; end: ; }\n",
     )
     function = source.functions[0]
@@ -261,10 +293,22 @@ def test_identifiers_hold_every_word(tmp_path: Path) -> None:
     (tmp_path / "near.h").write_text("#define HIDDEN(a) inner_##a\nstruct near_tag { int near_member; };\n")
     source = opened(
         tmp_path,
-        '#include "near.h"\n#if 0\nint inactive;\n#endif\n#define OWN expansion\nint HIDDEN(x); int f(void) { return 1; }\n',
+        '#include "near.h"\n#if 0\nint inactive;\n#endif\n#define OWN expansion\nint HIDDEN(x); int f(void) '
+        '{ return 1; }\n',
         ("-DGIVEN=given_value",),
     )
-    for word in ("HIDDEN", "inner_x", "near_tag", "near_member", "inactive", "OWN", "expansion", "GIVEN", "f", "return"):
+    for word in (
+        "HIDDEN",
+        "inner_x",
+        "near_tag",
+        "near_member",
+        "inactive",
+        "OWN",
+        "expansion",
+        "GIVEN",
+        "f",
+        "return",
+    ):
         assert word in source.identifiers, word
 
 

@@ -1,6 +1,7 @@
 """Which piece of the user's text became which tokens of the preprocessed text.
 
-The tokens of the user's file that the compiler saw (comments, directives and inactive ``#if`` branches left out) and the
+The tokens of the user's file that the compiler saw (comments, directives and inactive ``#if`` branches left out) and
+the
 tokens it gave for that file run in the same order: a token that is no macro stands for itself, a macro call for its
 expansion, which we work out with the macros that the compiler reports.  Where the two do not agree, all up to the next
 line on which they surely meet is left without an origin: the answer there is "unknown", never a guess.
@@ -155,7 +156,7 @@ class _Aligner:
         return None
 
     def _expanded(self, index: int, stop: int) -> tuple[list[Piece], int] | None:
-        """The expansion of the call at ``index``, and where it ends: an expansion may take its arguments from behind."""
+        """The expansion of the call at ``index`` and its end: an expansion may take its arguments from behind."""
         for _ in range(8):
             try:
                 expansion = self.expander.expand_call(

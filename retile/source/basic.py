@@ -1,4 +1,4 @@
-"""The arithmetic types of the user's compiler, and the conversions between them (ISO/IEC 9899:2018, 6.2.5 and 6.3.1)."""
+"""The arithmetic types of the user's compiler and their conversions (ISO/IEC 9899:2018, 6.2.5 and 6.3.1)."""
 
 from __future__ import annotations
 
@@ -42,7 +42,10 @@ class Arithmetic:
         for name, width in floats.items():
             self._types[name] = CType(name, width * bits, True, True)
             self._types[name + " _Complex"] = CType(name + " _Complex", 2 * width * bits, True, True)
-        self._types["__int128_t"], self._types["__uint128_t"] = self._types["__int128"], self._types["unsigned __int128"]
+        self._types["__int128_t"], self._types["__uint128_t"] = (
+            self._types["__int128"],
+            self._types["unsigned __int128"],
+        )
         self.int = self._types["int"]
         self.double = self._types["double"]
         self.size_type = self.predefined("__SIZE_TYPE__", "unsigned long", "size_t")

@@ -96,7 +96,9 @@ def _reading_flags(words: list[str], place: str) -> list[str]:
                 flags += [name, _absolute(name, words[index + 1], place)]
             index += 2
             continue
-        attached = next((flag for flag in ("-D", "-U", "-I", "-isystem", "-iquote", "-idirafter") if word.startswith(flag)), None)
+        attached = next(
+            (flag for flag in ("-D", "-U", "-I", "-isystem", "-iquote", "-idirafter") if word.startswith(flag)), None
+        )
         if attached is not None:
             flags.append(attached + _absolute(attached, word[len(attached) :], place))
         elif word.startswith(_STARTS) and not word.startswith(("-fsyntax-only", "-fplugin", "-MF")):

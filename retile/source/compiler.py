@@ -76,7 +76,9 @@ def check_syntax(call: CompilerCall, path: str) -> str:
     """
     name = os.path.join(".", path) if path.startswith("-") else _from(call.directory, path)
     try:
-        _, errors, status = _run([*call.command, *call.flags, "-fsyntax-only", "-w", "-ftabstop=1", "-x", "c", name], call, None)
+        _, errors, status = _run(
+            [*call.command, *call.flags, "-fsyntax-only", "-w", "-ftabstop=1", "-x", "c", name], call, None
+        )
     except RetileError:
         return ""
     return errors.decode("utf-8", "replace") if status else ""

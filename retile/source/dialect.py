@@ -1,6 +1,7 @@
 """GNU and C23 spellings made palatable to a parser of C11, token by token, so that every place survives.
 
-Spellings with a standard twin get it (``__restrict`` is ``restrict``); what says nothing about values and order falls away
+Spellings with a standard twin get it (``__restrict`` is ``restrict``); what says nothing about values and order
+falls away
 (attributes, alignment, ``__extension__``).  What the parser cannot read but may matter becomes something that stays
 visible as unknown: a call of a function (``__asm__``, ``__statement_expression__``) or a type of its own
 (``__typeof_3__``).  Nothing is changed that could make a meaning look simpler than it is.
@@ -61,9 +62,7 @@ _TWINS_C23 = {
 _DROPPED = frozenset(
     {"__extension__", "_Noreturn", "_Nonnull", "_Nullable", "_Null_unspecified", "__cdecl", "__stdcall", "__fastcall"}
 )
-_DROPPED_WITH_GROUP = frozenset(
-    {"__attribute__", "__attribute", "__declspec", "_Alignas", "_Pragma", "_Static_assert"}
-)
+_DROPPED_WITH_GROUP = frozenset({"__attribute__", "__attribute", "__declspec", "_Alignas", "_Pragma", "_Static_assert"})
 _UNKNOWN_WITH_GROUP = frozenset(
     {"__builtin_types_compatible_p", "__builtin_va_arg", "__builtin_choose_expr", "_Alignof", "__alignof__",
      "__alignof", "__builtin_has_attribute", "__builtin_convertvector"}

@@ -1,6 +1,7 @@
 """Sizes and offsets of objects, as the common ABIs for C lay them out.
 
-Members in order, each at a multiple of its alignment; bit-fields share a unit of their declared type and do not cross its
+Members in order, each at a multiple of its alignment; bit-fields share a unit of their declared type and do not
+cross its
 border (System V ABI, "Bit-Fields").  Where an attribute or ``#pragma pack`` may change that, the answer is "unknown".
 """
 

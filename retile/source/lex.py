@@ -1,6 +1,7 @@
 """Tokens of C text with exact extents: every character of the text belongs to exactly one token.
 
-A lexer of preprocessing tokens (ISO/IEC 9899:2018, 6.4) that also keeps what a compiler drops in translation phases 1 to
+A lexer of preprocessing tokens (ISO/IEC 9899:2018, 6.4) that also keeps what a compiler drops in translation phases
+1 to
 4: blanks, comments and whole directives.  A backslash before a line end joins two lines (phase 2) wherever it stands,
 also inside a word; such a token keeps its original text, and ``spelling`` is the text without the joints.
 """

@@ -1,7 +1,8 @@
 """What a macro call turns into: expansion as the C standard has it, to find out which tokens of the preprocessed text
 stand for which piece of the user's text.
 
-The algorithm is Dave Prosser's (X3J11/86-196, also in "The C Preprocessor", GCC internals): every token carries the set of
+The algorithm is Dave Prosser's (X3J11/86-196, also in "The C Preprocessor", GCC internals): every token carries the
+set of
 macros it must not be taken for again.  The result is only ever compared with what the compiler wrote; where spacing
 matters (``#``) or the place (``__LINE__``) a token is ANY, which equals whatever stands there.
 """
@@ -165,8 +166,10 @@ class Expander:
         if left is ANY or pieces[0] is ANY:
             joined = [ANY]
         else:
-            joined = [Piece(kind, text, left.hidden & pieces[0].hidden)
-                      for kind, text in spellings(left.text + pieces[0].text)]
+            joined = [
+                Piece(kind, text, left.hidden & pieces[0].hidden)
+                for kind, text in spellings(left.text + pieces[0].text)
+            ]
         if len(joined) != 1:
             raise CannotExpand
         result.extend(joined)

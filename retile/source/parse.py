@@ -1,6 +1,7 @@
 """The syntax tree of the preprocessed text, by pycparser, with places in the user's text.
 
-The parser gets one token per line, so that the line of a node's coordinate is the number of a token.  Bodies of functions
+The parser gets one token per line, so that the line of a node's coordinate is the number of a token.  Bodies of
+functions
 are parsed when somebody looks at them: a file has many functions and a command needs one.
 """
 
@@ -178,9 +179,7 @@ def nodes(root: c_ast.Node) -> Iterator[Any]:
         stack.extend(child for _, child in node.children())
 
 
-def _problem(
-    error: Exception, last: int, kept: Sequence[int], place: Callable[[int], Place | None]
-) -> SyntaxProblem:
+def _problem(error: Exception, last: int, kept: Sequence[int], place: Callable[[int], Place | None]) -> SyntaxProblem:
     match = _ERROR.match(str(error))
     line = int(match[1]) if match else last
     what = match[2] if match else str(error).removeprefix("tokens").lstrip(": ")

@@ -61,7 +61,9 @@ class _Reader:
         self.packs = False
         self.tokens: list[PToken] = []
         self.events: list[MacroEvent] = []
-        self.included: list[tuple[str, str | None]] = []  # events of headers, until it is known which line included them
+        self.included: list[
+            tuple[str, str | None]
+        ] = []  # events of headers, until it is known which line included them
 
     def read(self, output: str) -> Unit:
         for row in output.split("\n"):

@@ -16,7 +16,7 @@ from .dialect import ParserText, for_parser
 from .lex import Token
 from .macros import Macro
 from .match import shapes_of
-from .parse import FuncDef, Parsed, Place, SyntaxProblem, parse_function, parse_unit
+from .parse import FuncDef, Parsed, Place, parse_function, parse_unit
 from .preprocessed import Unit, read_preprocessed
 from .structure import External, Malformed, Shape, compound
 
@@ -53,7 +53,10 @@ class Reading:
     def _is_wanted(self, part: External) -> bool:
         """False for a function of a system header that the user's files do not mention."""
         words, tokens, first, system = self.text.text, self.unit.tokens, self.text.first, self.unit.system
-        if any(tokens[first[place]].file not in system for place in (part.start, part.end)) or words[part.start] == "typedef":
+        if (
+            any(tokens[first[place]].file not in system for place in (part.start, part.end))
+            or words[part.start] == "typedef"
+        ):
             return True
         for index in range(part.start, part.end + 1):
             if words[index] == "(":
@@ -171,5 +174,3 @@ def _predefined(unit: Unit) -> dict[str, Macro]:
         if event.definition is not None:
             macros[event.name] = Macro(event.name, event.definition)
     return macros
-
-

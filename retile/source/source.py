@@ -176,7 +176,7 @@ class Source:
     def span(self, node: Any) -> Span | None:
         """The extent of a statement inside a function of this file; None if it is not sure.
 
-        It is unknown for what comes out of a macro, wholly or in part.  The declarators of one declaration share a span.
+        It is unknown for what comes out of a macro, wholly or in part.  Declarators of one declaration share a span.
         """
         for reading in self._readings:
             if id(node) in reading.spans:
@@ -185,7 +185,7 @@ class Source:
 
     def function_span(self, function: c_ast.FuncDef) -> Span | None:
         """From the first specifier of a function definition to its closing brace."""
-        for position, (own, part) in enumerate(self._readings[0].own_functions):
+        for own, part in self._readings[0].own_functions:
             if own is function:
                 return self._readings[0].piece(part.start, part.end)
         return None
