@@ -186,3 +186,9 @@ def test_strict_flags_take_away_what_relaxes_arithmetic():
 def test_a_missing_compiler_is_said(mirror):
     with pytest.raises(RetileError, match="no-such-cc"):
         mirror.verify(mirror.variant(CHUNKED), replace(FAST, cc="no-such-cc"))
+
+
+def test_large_fixed_sizes_are_verified_once(tmp_path):
+    one = case(tmp_path, "float z[3000][9000];\nvoid f(void) {\n for (int j = 0; j < 9000; j++)\n  for (int i = 0; i < 3000; i++)\n"
+                         "   z[i][j] *= 2;\n}\n")
+    assert len(one.accepts(one.variant(one.text)).cases) == 1

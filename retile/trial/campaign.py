@@ -29,6 +29,7 @@ from .verification import Case, Fill, Verifier, bytes_of, difference_of
 if TYPE_CHECKING:
     from ..source import Source
 
+_BUSY = 1.15  # elapsed over computing time from which other programs are suspected
 _COPIES = 3  # the arrays themselves, what they held first, what the original leaves
 
 
@@ -268,7 +269,7 @@ class _State:
         """The times of all complete rounds, by kernel; a time of 0 counts as one tick of a nanosecond."""
         kernels = len(self.clocked) + 1
         times: dict[int, dict[int, float]] = {}
-        for number, kernel, seconds in self.clock.of("time"):
+        for number, kernel, seconds, _ in self.clock.of("time"):
             times.setdefault(int(number), {})[int(kernel)] = max(float(seconds), 1e-9)
         return [[times[number][kernel] for kernel in range(kernels)]
                 for number in sorted(times) if len(times[number]) == kernels]
@@ -301,6 +302,10 @@ class _State:
         if baseline and isinstance(step, float) and min(baseline) < 100 * step:
             self.notes.append(f"one call takes {min(baseline):.3g} s and the clock steps by {step:.3g} s; "
                               "choose larger sizes for times that can be told apart")
+        elapsed, used = (sum(float(answer[at]) for answer in self.clock.of("time")) for at in (2, 3))
+        if elapsed > _BUSY * used and elapsed > 0.05:
+            self.notes.append(f"the processor was shared: {elapsed:.3g} s went by for {used:.3g} s of computing; "
+                              "measure again on a quiet machine")
         if baseline and len(baseline) < 6:
             self.notes.append(f"{len(baseline)} rounds are too few for an interval (6 are needed); give more --seconds")
 

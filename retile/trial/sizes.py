@@ -28,6 +28,10 @@ def verification_sizes(bench: Bench, plans: Iterable[Plan], trust: bool = False)
     good = defined_region(bench.nest)
     chosen: dict[tuple[tuple[str, int], ...], int] = {}  # sizes -> work
     _take(bench, good, _wishes(bench, chunks), _CASES, chosen)
+    if not chosen:  # fixed sizes can be large; one case there must be
+        wishes = (fitted(bench, good, wish) for wish in _wishes(bench, {}))
+        dear = {tuple(sizes.items()): bench.work(sizes) for sizes in wishes if sizes is not None}
+        chosen |= {sizes: dear[sizes] for sizes in sorted(dear, key=lambda sizes: dear[sizes])[:1]}
     if not trust:
         _take(bench, Region.where(*bench.nest.facts) - good, _wishes(bench, {}), _BREAKING, chosen)
     return [dict(sizes) for sizes in sorted(chosen, key=lambda sizes: chosen[sizes])]
