@@ -14,7 +14,7 @@ from dataclasses import dataclass
 from ..affine import Affine, AllOf, Constraint, Floor, equal
 from ..model import Access, Assumption, AssumptionCode, CType, Nest, RetileError, Statement, Storage, StorageKind
 from ..sets import Region
-from .expression import ATOM, EQUALITY, PRODUCT, SUM, UNARY, Expression, NoRoom, Scope, condition, express, written
+from .expression import PRODUCT, UNARY, Expression, NoRoom, Scope, condition, express, written
 from .names import Names
 
 ADDRESS = CType("uintptr_t", 64, False)
@@ -39,7 +39,7 @@ def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, name
             parts = assumption.condition.parts if isinstance(assumption.condition, AllOf) else (assumption.condition,)
             for part in parts:
                 if not scope.implies(part):
-                    conditions.append(condition(part, scope).at(EQUALITY))
+                    conditions.append(condition(part, scope).text)
                     scope = scope.knowing(part)
     return Tests(tuple(ranges.declarations), (*ranges.signs, *dict.fromkeys(conditions)))
 
@@ -56,7 +56,7 @@ class _Ranges:
     def apart(self, one: str, other: str, assumption: Assumption) -> str:
         """The condition that two storages' touched bytes lie apart."""
         first, second = self._range(one, assumption), self._range(other, assumption)
-        return f"({first[1]} <= {second[0]} || {second[1]} <= {first[0]})"
+        return f"{first[1]} <= {second[0]} || {second[1]} <= {first[0]}"
 
     def _range(self, name: str, assumption: Assumption) -> tuple[str, str]:
         """The names of the addresses of a storage's first touched byte and of the one behind its last."""
@@ -69,7 +69,7 @@ class _Ranges:
             size = self._size(storage)
             start = base if low == "0" else f"{base} + {self._times(low, size)}"
             self.declarations += [f"const uintptr_t {begin} = {start};",
-                                  f"const uintptr_t {end} = {base} + {self._times(high, size)};"]
+                                  f"const uintptr_t {end} = {begin if low == '0' else base} + {self._times(high, size)};"]
             self._named[name] = (begin, end)
         return self._named[name]
 
@@ -77,22 +77,24 @@ class _Ranges:
     def _times(count: str, size: str) -> str:
         if count == "1":
             return size
-        return f"{count} * {size}" if re.fullmatch(r"\w+|\(uintptr_t\)\w+", count) else f"({count}) * {size}"
+        return f"({count}) * {size}" if " + " in count or " - " in count else f"{count} * {size}"
 
     @staticmethod
     def _size(storage: Storage) -> str:
         if isinstance(storage.element, CType) and storage.element_bytes in (None, storage.element.bits // 8):
             return f"sizeof({storage.element.spelling})"
+        if isinstance(storage.element, str) and re.fullmatch(r"(?:(?:struct|union|enum) )?[A-Za-z_]\w*", storage.element):
+            return f"sizeof({storage.element})"
         return str(storage.element_bytes)
 
     def _extent(self, storage: Storage, assumption: Assumption) -> tuple[str, str]:
         """First touched element and the one behind the last, as sums of uintptr_t."""
-        if storage.kind is StorageKind.SCALAR and not storage.shape:
-            return "0", "1"
         if storage.element_bytes is None and not isinstance(storage.element, CType):
             raise self._untestable(storage, assumption)
         uses = [(statement, access) for statement in self._nest.statements for access in statement.accesses
                 if access.storage == storage.name]
+        if not storage.shape and all(access.subscripts == () for _, access in uses):
+            return "0", "1"
         if any(access.subscripts is None for _, access in uses) or not uses:
             return "0", self._whole(storage, assumption)
         dimensions = len(uses[0][1].subscripts or ())
@@ -105,7 +107,13 @@ class _Ranges:
             highs.append(high)
         strides = self._strides(storage, dimensions, assumption)
         highs[-1] = highs[-1] + 1
+        if dimensions > 1 and self._is_extent(highs[-1], strides[-2]):  # whole rows: (n - 1) * m + m
+            highs[-2:] = [highs[-2] + 1, Affine()]
         return self._linear(lows, strides), self._linear(highs, strides)
+
+    def _is_extent(self, form: Affine, stride: Expression | None) -> bool:
+        """True if a form is the row length that a stride's text says."""
+        return stride is not None and len(form.terms) == 1 and self._sum(form) == stride.text
 
     def _untestable(self, storage: Storage, assumption: Assumption) -> RetileError:
         return RetileError(f"{self._nest.address}: which cells of '{storage.name}' the nest touches is not known, so that "
@@ -115,7 +123,7 @@ class _Ranges:
     def _whole(self, storage: Storage, assumption: Assumption) -> str:
         if not storage.shape or any(extent is None for extent in storage.shape):
             raise self._untestable(storage, assumption)
-        return " * ".join(self._modular(extent).at(PRODUCT) for extent in storage.shape if extent is not None)
+        return " * ".join(self._modular(extent) for extent in storage.shape if extent is not None)
 
     def _span(self, uses: list[tuple[Statement, Access]], dimension: int) -> tuple[Affine | None, Affine | None]:
         """A lower and an upper bound of a subscript over all instances, in parameters."""
@@ -142,12 +150,13 @@ class _Ranges:
             return [self._stride(text) for text in storage.strides]
         extents = storage.shape[len(storage.shape) - dimensions + 1:] if dimensions > 1 else ()
         strides: list[Expression | None] = [None]
-        factor = ""
+        factors: list[str] = []
         for extent in reversed(extents):
             if extent is None:
                 raise self._untestable(storage, assumption)
-            factor = self._modular(extent).at(PRODUCT) + (f" * {factor}" if factor else "")
-            strides.insert(0, Expression(factor, ADDRESS, PRODUCT))
+            text = self._sum(extent)
+            factors.insert(0, text if len(extent.terms) + bool(extent.constant) == 1 else f"(uintptr_t)({text})")
+            strides.insert(0, Expression(" * ".join(factors), ADDRESS, PRODUCT if len(factors) > 1 else UNARY))
         return strides
 
     def _stride(self, text: str) -> Expression | None:
@@ -159,43 +168,55 @@ class _Ranges:
             sign = f"{text} >= 0"
             if sign not in self.signs:
                 self.signs.append(sign)
+        sum_of = re.fullmatch(r"(.+?)\s*([+-])\s*(\d+)", text)
+        if sum_of is not None and sum_of[1] in {p.text for p in self._nest.parameters}:
+            return Expression(f"(uintptr_t){sum_of[1]} {sum_of[2]} {sum_of[3]}", ADDRESS, PRODUCT)
         return written(text, ADDRESS)
 
     def _linear(self, subscripts: list[Affine], strides: list[Expression | None]) -> str:
-        parts = []
+        """``sum(subscript * stride)``; its first operand is converted, so that all of it is unsigned."""
+        parts: list[str] = []
         for subscript, stride in zip(subscripts, strides, strict=True):
             if subscript == Affine():
                 continue
-            value = self._modular(subscript)
-            parts.append(value if stride is None else
-                         Expression(f"{value.at(PRODUCT)} * {stride.at(UNARY)}", ADDRESS, PRODUCT))
-        if not parts:
-            return "0"
-        return " + ".join(part.at(SUM) for part in parts)
+            if stride is not None and subscript == Affine((), 1):
+                parts.append(stride.text if stride.text.startswith("(uintptr_t)") else f"(uintptr_t){stride.at(UNARY)}")
+            elif stride is not None:
+                value = self._modular(subscript)
+                parts.append(f"{value} * {stride.at(UNARY)}")
+            else:
+                parts.append(self._sum(subscript) if parts else self._modular(subscript).removeprefix("(")
+                             .removesuffix(")") if self._modular(subscript).startswith("((") else self._modular(subscript))
+        return " + ".join(parts) if parts else "0"
 
-    def _modular(self, form: Affine) -> Expression:
-        """A form in arithmetic modulo the address space, which nothing can overflow."""
+    def _modular(self, form: Affine) -> str:
+        """A form in arithmetic modulo the address space, which nothing can overflow; it binds like a factor."""
+        text = self._sum(form)
+        if form.is_constant and form.constant >= 0:
+            return f"(uintptr_t){text}"
+        return f"((uintptr_t){text})" if " " in text else f"(uintptr_t){text}"
+
+    def _sum(self, form: Affine) -> str:
+        """A form as a sum whose first operand decides its type."""
         form = form.substitute(self._scope.meanings)
-        if form.is_constant:
-            return Expression(str(form.constant), ADDRESS) if form.constant >= 0 else \
-                Expression(f"(uintptr_t){form.constant}", ADDRESS, UNARY)
         if any(isinstance(symbol, Floor) for symbol, _ in form.terms):
-            try:
-                return Expression(f"(uintptr_t){express(form, self._scope).at(UNARY)}", ADDRESS, UNARY)
-            except NoRoom:
-                raise RetileError(f"{self._nest.address}: the addresses that the nest touches cannot be computed without "
-                                  "overflow; give --trust, or declare the pointers 'restrict'.") from None
+            return f"({self._exact(form)})"
         text = ""
         for symbol, factor in sorted(form.terms, key=lambda term: term[1] < 0):
             assert isinstance(symbol, str)
-            operand = f"(uintptr_t){self._scope.operands[symbol].at(UNARY)}"
-            product = operand if abs(factor) == 1 else f"{abs(factor)} * {operand}"
-            text += (" - " if factor < 0 else " + ") + product if text else \
-                (product if factor > 0 else f"0 - {product}")
-        if form.constant:
-            text += f" {'-' if form.constant < 0 else '+'} {abs(form.constant)}"
-        level = SUM if " + " in text or " - " in text else PRODUCT if " * " in text else UNARY
-        return Expression(text, ADDRESS, level if level != ATOM else UNARY)
+            operand = self._scope.operands[symbol].at(UNARY)
+            product = operand if abs(factor) == 1 else f"{operand} * {abs(factor)}"
+            text += (" - " if factor < 0 else " + ") + product if text else (product if factor > 0 else f"0 - {product}")
+        if form.constant or not text:
+            text += f" {'-' if form.constant < 0 else '+'} {abs(form.constant)}" if text else str(form.constant)
+        return text
+
+    def _exact(self, form: Affine) -> str:
+        try:
+            return express(form, self._scope).text
+        except NoRoom:
+            raise RetileError(f"{self._nest.address}: the addresses that the nest touches cannot be computed without "
+                              "overflow; give --trust, or declare the pointers 'restrict'.") from None
 
 
 def _divided(form: Affine, by: int, up: bool) -> Affine:

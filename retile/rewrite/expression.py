@@ -27,7 +27,8 @@ UNSIGNED_LONG_LONG = CType("unsigned long long", 64, False)
 CHOICE, OR, AND, EQUALITY, RELATION, SUM, PRODUCT, UNARY, ATOM = range(9)
 
 _ATOM = re.compile(r"(?:\w+|\w+(?:(?:->|\.)\w+)+|\([^()]*\))\Z")
-_SIMPLE_SUM = re.compile(r"\w+(?:\s*[-+*]\s*\w+)*\Z")
+_NAME = r"\w+(?:(?:->|\.)\w+)*"
+_SIMPLE_SUM = re.compile(rf"{_NAME}(?:\s*[-+*]\s*{_NAME})*\Z")
 
 
 class NoRoom(Exception):
@@ -318,9 +319,11 @@ def comparison(left: Affine, relation: str, right: Affine, scope: Scope,
         left, right = left - shared, right - shared
     rest = left - left.constant
     sides = [(left, relation, right)]
+    if right.terms and (relation, right.constant) in (("<", 1), (">", -1)):
+        sides.insert(0, (left, relation + "=", right - right.constant))
+    sides.append((left - right.constant, relation, right - right.constant))
     if left.constant and rest.terms:
         sides.append((rest, relation, right - left.constant))
-    sides.append((left - right.constant, relation, right - right.constant))
     distance = [(right - rest, FLIPPED[relation], Affine((), left.constant))] if left.constant and rest.terms else []
     for wide, arrangements in ((False, sides), (True, sides[:1]), (False, distance), (True, [*sides, *distance])):
         for a, sign, b in arrangements:

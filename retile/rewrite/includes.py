@@ -16,32 +16,42 @@ def missing(text: str, wanted: tuple[str, ...]) -> tuple[str, ...]:
 
 
 def insertion(text: str) -> int:
-    """Where a further ``#include`` goes: behind the last one outside conditionals, else before the first C token."""
+    """Where a further ``#include`` goes: behind the last one outside conditionals, else above the first C token.
+
+    ``text``: the file up to the place that needs the header.
+    """
     ends = [end for _, depth, end in _includes(text) if depth == 0]
     if ends:
         return _next_line(text, ends[-1])
+    head = re.match(r"\ufeff?", text)
+    start = end = head.end() if head else 0
     for token in tokenize(text):
-        if token.kind == "directive" or token.kind not in ("blank", "comment"):
-            return text.rfind("\n", 0, token.start) + 1 if not text[text.rfind("\n", 0, token.start) + 1:token.start] \
-                .strip() else token.start
-    return len(text)
+        if token.kind == "comment" and not text[end:token.start].strip("\ufeff \t\r\n") and \
+                text.count("\n", end, token.start) < 2:
+            end = token.end
+        elif token.kind != "blank":
+            break
+    # the comment at the top is the file's if an empty line follows, else it speaks of what comes next
+    return _next_line(text, end) if end > start and re.match(r"[ \t]*\r?\n[ \t]*\r?\n", text[end:]) else start
 
 
 def _includes(text: str) -> list[tuple[re.Match[str], int, int]]:
-    """Every ``#include`` with the depth of conditionals that it stands in, and where it ends."""
-    found, depth = [], 0
+    """Every ``#include`` between declarations, with the depth of conditionals that it stands in, and where it ends."""
+    found, depth, braces, last = [], 0, 0, ";"
     for token in tokenize(text):
-        if token.kind != "directive":
-            continue
-        word = re.match(r"(?:#|%:)[ \t]*(\w+)", token.spelling)
+        if token.kind == "punct":
+            braces += (token.text in "([{") - (token.text in ")]}")
+        if token.kind not in ("directive", "blank", "comment"):
+            last = token.text
+        word = re.match(r"(?:#|%:)[ \t]*(\w+)", token.spelling) if token.kind == "directive" else None
         if word is None:
             continue
         depth += word[1] in ("if", "ifdef", "ifndef")
         depth -= word[1] == "endif"
         match = _INCLUDE.match(token.spelling)
-        if match is not None:
+        if match is not None and not braces and last in (";", "}"):
             found.append((match, depth, token.end))
-    return found if depth == 0 else []
+    return found
 
 
 def _next_line(text: str, offset: int) -> int:

@@ -10,7 +10,7 @@ from .expression import AND, Expression
 from .layout import NestText
 
 # Generated conditions are broken beyond this many columns.
-_WIDTH = 100
+WIDTH = 100
 
 
 @dataclass(frozen=True)
@@ -33,7 +33,7 @@ class Style:
 
     def wrapped(self, condition: Expression, before: str) -> str:
         """A condition behind this text, in several lines if one would be too long."""
-        if len(before) + len(condition.text) <= _WIDTH or condition.level != AND:
+        if len(before) + len(condition.text) <= WIDTH or condition.level != AND:
             return condition.text
         indent = before[:len(before) - len(before.lstrip())] + self.step
         return condition.text.replace(" && ", f"{self.eol}{indent}&& ")

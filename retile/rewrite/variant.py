@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import os
 import shlex
+import textwrap
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
@@ -26,7 +27,7 @@ from .names import Names
 from .patch import unified
 from .peel import peeled
 from .printer import Printer
-from .style import Style, read_style
+from .style import WIDTH, Style, read_style
 
 if TYPE_CHECKING:
     from ..dependence import Dependences
@@ -51,7 +52,7 @@ def rewrite(source: Source, nest: Nest, dependences: Dependences, plan: Plan, ju
     tree = finished_tree(nest, dependences, judgement.plan, remainder)
     order = _Order(source, nest, plan, judgement, tree, remainder, trust)
     nest_text, headers = order.text()
-    includes = missing(source.text, headers)
+    includes = missing(source.text[:nest.span.start], headers)
     text = _whole_file(source.text, nest, nest_text, includes, order.style.eol)
     return Variant(plan, text, judgement, tree, nest_text, includes)  # type: ignore[arg-type]
 
@@ -100,7 +101,7 @@ def _whole_file(text: str, nest: Nest, nest_text: str, includes: tuple[str, ...]
     changed = text[:nest.span.start] + nest_text + text[nest.span.end:]
     if not includes:
         return changed
-    at = insertion(text)
+    at = insertion(text[:nest.span.start])
     lines = "".join(f"#include {header}{eol}" for header in includes)
     if at and text[at - 1] != "\n":
         lines = eol + lines
@@ -175,7 +176,10 @@ class _Order:
     def _guarded(self, tests: Tests, lines: list[str], style: Style, indent: str) -> list[str]:
         """The variant where the tests hold, else the original, byte for byte."""
         original = self.source.text[self.nest.span.start:self.nest.span.end]
-        head = f"{style.eol}{indent}{style.step}&& ".join(tests.conditions)
+        parts = [f"({part})" if " || " in part and len(tests.conditions) > 1 else part for part in tests.conditions]
+        head = " && ".join(parts)
+        if len(indent) + len(head) > WIDTH:
+            head = f"{style.eol}{indent}{style.step}&& ".join(parts)
         return [*(indent + line for line in tests.declarations),
                 *style.otherwise(style.block(f"if ({head})", lines, indent), [indent + original], indent)]
 
@@ -202,7 +206,8 @@ class _Order:
         lines = [f"Loops reordered by retile: {'; '.join([self.plan.order_text, *options])}"]
         if assumptions:
             word = "Tested here" if tested else "Assumed"
-            lines.append(f"{word}: {'; '.join(dict.fromkeys(a.text.rstrip('.') for a in assumptions))}")
+            facts = "; ".join(dict.fromkeys(assumption.text.rstrip(".") for assumption in assumptions))
+            lines += textwrap.wrap(f"{word}: {facts}.", WIDTH, break_long_words=False, break_on_hyphens=False)
         return [*lines, f"Made by: {self._command()}"]
 
     def _command(self) -> str:
