@@ -194,8 +194,10 @@ class Effects:
             case c_ast.BinaryOp():
                 self._base(node.left, context)
                 self._base(node.right, context)
-            case c_ast.Cast() | c_ast.UnaryOp(op="&"):
+            case c_ast.Cast():
                 self._base(node.expr, context)
+            case c_ast.UnaryOp(op="&"):
+                self._beneath(node.expr, context)
             case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
                 self._beneath(node, context)
                 if isinstance(type_, PointerTo):

@@ -158,9 +158,7 @@ class Expressions:
         definition = setting.definition(binding, context)
         if definition is not None:
             value = self.value(definition.expression, definition.context)
-            value = None if value is None else self.convert(value, type_, definition.context, node)
-            seen = None if value is None else self.observe(value, definition.context, node)
-            return None if seen is None else Value(seen, type_, True)
+            return None if value is None else self.convert(value, type_, definition.context, node)
         if setting.is_frozen(binding):
             return Value(Poly.of(setting.parameter_of(binding, type_)), type_, True)
         return None

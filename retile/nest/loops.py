@@ -69,6 +69,7 @@ class Loops:
         self._setting = setting
         self._conditions = conditions
         self._bounds = bounds
+        self._always_true = False  # the header being read has a condition that holds as long as nothing wraps
         self._at_first: Formula = AllOf()  # where the iterator of the header being read has its first value
 
     def header(self, loop: Any, symbol: str, context: Context) -> Header:
@@ -86,16 +87,28 @@ class Loops:
         step = self._step(loop.next, binding, context)
         if abs(step) > type_.largest:
             raise refused(loop, "step", f"the step of `{binding.name}` is larger than the iterator can hold.")
+        self._always_true = False
         at = Affine.of(symbol)
         self._at_first = AllOf((at_least_bound(at, first), at_most_bound(at, first)))
         inside = context.inside(symbol, binding, self._from_first(symbol, first, step))
         parts = self._parts(loop.cond, binding, symbol, step, inside, loop)
+        if not parts:
+            return self._until_wrap(loop, binding, type_, declared, first, first_node, step)
         last, relation, bound_node = self._together(parts, step)
         if relation == "!=":
             self._must_meet(first, last, step, type_, context, loop)
         header = Header(binding, type_, declared, first, last, step, relation, first_node, bound_node, False)
         self._must_end(header, context, loop)
         return header
+
+    def _until_wrap(self, loop: Any, binding: Binding, type_: CType, declared: bool, first: Bound, first_node: Any,
+                    step: int) -> Header:
+        """``for (i = n - 1; i < n; i--)`` with an unsigned i: down to zero, where the next value is too large."""
+        wide = type_.bits >= self._setting.types.arithmetic.int.bits
+        if step == -1 and not type_.signed and wide and isinstance(first, Affine) and loop.cond.op in ("<", ">"):
+            return Header(binding, type_, declared, first, Affine(), step, "-->", first_node, None, True)
+        raise refused(loop, "infinite-loop", "the loop's condition always holds within its bounds, so the loop ends only by "
+                                             "wrapping around, if at all; compare against the end that it runs towards.")
 
     def _from_first(self, symbol: str, first: Bound, step: int) -> Formula:
         value = Affine.of(symbol)
@@ -274,14 +287,15 @@ class Loops:
         elif relation not in ("<=", ">="):
             holds = AnyOf()
         if self._setting.knowledge.proves(context.formula, holds):
-            return None
+            self._always_true = True
+            return
         raise refused(node, "loop-direction", f"`{c_text(node)}` bounds `{binding.name}` against the direction of its "
                                               "step; the loop may run for ever or wrap around.")
 
     def _unrelated(self, node: Any, binding: Binding, context: Context) -> None:
         condition = self._conditions.known(node, context)
         if condition is not None and self._setting.knowledge.proves(context.formula, condition):
-            return None
+            return
         raise refused(node, "loop-condition", f"the loop's condition `{c_text(node)}` does not compare `{binding.name}` "
                                               "with a bound; put it into an `if` around the loop.")
 
@@ -309,8 +323,6 @@ class Loops:
         return ""
 
     def _together(self, parts: list[_Part], step: int) -> tuple[Bound, str, Any]:
-        if not parts:
-            raise AssertionError("a loop without a bound was not refused")
         last = flat("min" if step > 0 else "max", *(part.bound for part in parts))
         if len(parts) == 1 and parts[0].node is not None:
             return last, parts[0].relation, parts[0].node
@@ -344,7 +356,7 @@ class Loops:
         if self._setting.knowledge.proves(context.where(runs).formula, inside):
             return
         narrow = type_.bits < self._setting.types.arithmetic.int.bits
-        if abs(step) == 1 or (type_.signed and not narrow):
+        if (abs(step) == 1 and not self._always_true) or (type_.signed and not narrow):
             self._fact(inside, context.where(runs), loop)
         elif not self._setting.require(AssumptionCode.NO_WRAP, inside, context.where(runs), loop):
             raise refused(loop, "bound", "the loop's iterator may wrap around.")
@@ -377,9 +389,8 @@ class Loops:
         bound: Bound | None = Affine() if node is None else self._bounds.read(node, context, common)
         if bound is None or not isinstance(first, Affine):
             raise self._condition_refused(loop.cond, loop, binding)
-        if node is None and not self._setting.require(
-                AssumptionCode.RELATION, at_most(0, first), context, loop):
-            raise refused(loop, "bound", "the loop may count down past zero.")
+        if node is None:  # from below zero it would run into the overflow of its iterator
+            self._fact(at_most(0, first), context, loop)
         header = Header(binding, type_, declared, first - 1, bound, -1, "-->", first_node, node, True)
         self._countdown_ends(header, first, bound, strict, common, context, loop)
         return header

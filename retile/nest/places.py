@@ -17,7 +17,7 @@ from ..source.kinds import ArrayOf, PointerTo, StructType, UnknownType, Void
 from .context import Context
 from .polynomial import Poly
 from .refusals import Refused, refused
-from .scopes import Binding, assigned_target
+from .scopes import Binding, assigned_target, descendants
 from .setting import Setting, c_text
 
 
@@ -293,29 +293,47 @@ class Places:
         nodes = self._setting.names.assignments.get(binding, [])
         if binding.kind != "local" or len(nodes) != 1 or not isinstance(nodes[0], c_ast.Decl):
             return None
-        if self._setting.names.address_taken(binding) or not self._constant_since(nodes[0].init):
+        if self._setting.names.has_jumps or self._setting.names.address_taken(binding) or not self._constant_since(nodes[0].init, nodes[0]):
             return None
         try:
             return self.pointer(nodes[0].init, Context())
         except Refused:
             return None
 
-    def _constant_since(self, node: Any) -> bool:
-        """True for sums of variables that have one value in the whole function, or in the loop around the nest."""
+    def _constant_since(self, node: Any, decl: Any) -> bool:
+        """True for sums of variables that keep their values from a declaration before the nest to its end."""
         match node:
             case c_ast.Constant():
                 return True
             case c_ast.ID():
-                binding = self._setting.names.of(node)
-                if binding is None or not binding.is_object or self._setting.reachable(binding):
-                    return binding is not None and isinstance(self._setting.type_of(node), ArrayOf)
-                nodes = self._setting.names.assignments.get(binding, [])
-                return not nodes if binding.kind == "argument" else \
-                    len(nodes) == 1 and isinstance(nodes[0], c_ast.Decl) and binding.kind == "local" and \
-                    not _is_for_init(nodes[0], self._setting)
+                return self._variable_since(node, decl)
             case c_ast.BinaryOp() if node.op in "+-*":
-                return self._constant_since(node.left) and self._constant_since(node.right)
+                return self._constant_since(node.left, decl) and self._constant_since(node.right, decl)
+            case c_ast.ArrayRef() if isinstance(self._setting.type_of(node), ArrayOf):
+                return self._constant_since(node.name, decl) and self._constant_since(node.subscript, decl)
+            case c_ast.UnaryOp(op="&") if isinstance(node.expr, c_ast.ArrayRef):
+                return self._constant_since(node.expr.name, decl) and self._constant_since(node.expr.subscript, decl)
+            case c_ast.Cast():
+                return self._constant_since(node.expr, decl)
         return False
+
+    def _variable_since(self, node: Any, decl: Any) -> bool:
+        """One value in the whole call, or the iterator of a loop around declaration and nest."""
+        names, binding = self._setting.names, self._setting.names.of(node)
+        if binding is None or not binding.is_object:
+            return binding is not None and binding.kind == "enumerator"
+        if isinstance(self._setting.type_of(node), ArrayOf):
+            return True
+        if self._setting.reachable(binding):
+            return False
+        nodes = names.assignments.get(binding, [])
+        if binding.kind == "argument" and not nodes:
+            return True
+        loop = self._setting.outer_iterators.get(binding)
+        if loop is not None:
+            body = {id(one) for one in descendants(loop.stmt)}
+            return id(decl) in body and not any(id(one) in body for one in nodes)
+        return binding.kind == "local" and len(nodes) == 1 and isinstance(nodes[0], c_ast.Decl)
 
     def _target(self, root: Root, steps: tuple[Index | Member, ...], pointer: PointerTo, node: Any) -> Place:
         if isinstance(pointer.target, Void):
@@ -345,6 +363,3 @@ def _bare(type_: Any) -> Any:
 def _line(node: Any) -> int:
     return getattr(getattr(node, "coord", None), "line", 0)
 
-
-def _is_for_init(decl: Any, setting: Setting) -> bool:
-    return any(isinstance(one, (c_ast.For, c_ast.DeclList)) for one in [setting.names.parent(decl)])

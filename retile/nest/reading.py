@@ -39,7 +39,7 @@ class NestReader:
         knowledge = Knowledge()
         setting = Setting(self._unit, self._names, self._nest, knowledge, strict=False)
         setting.expressions, setting.places = Expressions(setting), Places(setting)
-        setting.outer_iterators = {binding: binding.name for binding in outer_loops(self._nest, self._names)}
+        setting.outer_iterators = outer_loops(self._nest, self._names)
         walk = Walk(setting, self._nest)
         self.loop_names = tuple(walk.ids.values())
         refusals = [*walk.refusals, *self._directives()]

@@ -43,15 +43,23 @@ def webs(touches: list[Numbered], branches: list[Branch]) -> tuple[Web, ...]:
 
 
 def _private(touches: list[Numbered], branches: list[Branch]) -> tuple[Web, ...]:
-    """The webs if all of them are private; none otherwise."""
+    """The webs if all of them are private; none otherwise.  Lives as short as possible: they bind the order least."""
     common = _common([touch.context.loops for _, touch in touches])
+    shorter = _split(touches, branches, len(common))
+    if shorter:
+        return shorter
     if common and all(touch.write or _covered(order, touch.context, touches, branches) for order, touch in touches):
         return (Web(tuple(touches), ScalarClass.PRIVATE, common),)
+    return ()
+
+
+def _split(touches: list[Numbered], branches: list[Branch], depth: int) -> tuple[Web, ...]:
+    """One or more webs for each of the sibling loops that hold all touches; none if that does not work."""
     parts: dict[str, list[Numbered]] = {}
     for order, touch in touches:
-        if len(touch.context.loops) == len(common):
+        if len(touch.context.loops) == depth:
             return ()
-        parts.setdefault(touch.context.loops[len(common)], []).append((order, touch))
+        parts.setdefault(touch.context.loops[depth], []).append((order, touch))
     if len(parts) < 2:
         return ()
     found: list[Web] = []

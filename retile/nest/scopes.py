@@ -152,6 +152,11 @@ class FunctionNames:
         return self._types.of_expression(node, self._types.scope(self.function, node))
 
     @cached_property
+    def has_jumps(self) -> bool:
+        """True if the function has a label, so that its text does not run in order."""
+        return any(isinstance(node, (c_ast.Goto, c_ast.Label)) for node in self.nodes)
+
+    @cached_property
     def assignments(self) -> dict[Binding, list[Any]]:
         """Per binding: the nodes that give it a value: Decl with initialiser, Assignment, ++ and --."""
         found: dict[Binding, list[Any]] = defaultdict(list)

@@ -59,7 +59,7 @@ class Setting:
         self.narrow: dict[tuple[Poly, CType, Context, Any], None] = {}
         self.loop_ids: set[str] = set()
         self.loop_iterators: set[Binding] = set()
-        self.outer_iterators: dict[Binding, str] = {}
+        self.outer_iterators: dict[Binding, Any] = {}  # iterators of the loops around the nest, with these loops
         inside = {id(node) for node in descendants(within)}
         self._assigned = {binding: [node for node in nodes if id(node) in inside]
                           for binding, nodes in names.assignments.items()}
@@ -98,7 +98,8 @@ class Setting:
 
     def is_frozen(self, binding: Binding) -> bool:
         """True if no statement of the piece names the object as its target."""
-        return binding.is_object and not self.assigned(binding)
+        return binding.is_object and not self.assigned(binding) and \
+            not self.qualifiers(binding) & {"volatile", "_Atomic"}
 
     def is_iterator(self, binding: Binding) -> bool:
         """True if some loop of the nest runs over the variable."""

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from ..affine import Affine, AllOf, at_most, less
@@ -106,6 +106,8 @@ class _Builder:
     # ------------------------------------------------------------ arrays
 
     def _array(self, key: str, touches: list[Numbered]) -> None:
+        if any(self._leaves_row(touch) for _, touch in touches):
+            touches = self._flattened(touches) or touches
         place = touches[0][1].place
         columns: list[list[tuple[Affine, ...] | None]] = [[] for _ in touches]
         shape: list[Affine | None] = []
@@ -209,6 +211,29 @@ class _Builder:
                 self.stored.obligations.append(
                     Obligation(AssumptionCode.NO_WRAP, formula, context.formula, context.loops, node))
         return True
+
+    def _leaves_row(self, touch: Touch) -> bool:
+        """True if a pointer may run from one row of an array of arrays into the next."""
+        for dimension, index in enumerate(touch.place.indices):
+            if dimension and index.loose and index.extent is not None and index.poly is not None:
+                form, extent = self._setting.affine(index.poly), self._extent(touch.place, dimension, index)
+                if form is None or extent is None or not self._setting.knowledge.proves(
+                        touch.context.formula, AllOf((at_most(0, form), less(form, extent)))):
+                    return True
+        return False
+
+    def _flattened(self, touches: list[Numbered]) -> list[Numbered] | None:
+        """The touches with one subscript that counts elements through all rows; None if a length is not known."""
+        found: list[Numbered] = []
+        for order, touch in touches:
+            total: Poly | None = Poly()
+            for dimension, index in enumerate(touch.place.indices):
+                extent = self._extent(touch.place, dimension, index) if dimension else Affine.of(1)
+                if touch.place.members or extent is None or index.poly is None or total is None:
+                    return None
+                total = self._setting.product(total, Poly.of(extent)) + index.poly
+            found.append((order, replace(touch, place=replace(touch.place, steps=(Index(total),)))))
+        return found
 
     def _loose(self, key: str, touches: list[Numbered]) -> None:
         """Subscripts reached by pointer arithmetic must stay in the rows of the array that they point into."""

@@ -44,6 +44,8 @@ def _iterator(loop: Any, names: FunctionNames) -> Binding | None:
 
 def facts_around(nest: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) -> None:
     """Add to what is known the conditions under which the nest is reached."""
+    if names.has_jumps:
+        return
     node = nest
     for parent in names.ancestors(nest):
         if isinstance(parent, c_ast.If) and node is not parent.cond:
