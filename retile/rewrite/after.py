@@ -9,7 +9,17 @@ from __future__ import annotations
 
 from ..affine import Affine, Constraint, less
 from ..model import LoopText, Nest, RetileError
-from .expression import (CHOICE, Expression, NoRoom, Scope, comparison, converted, express, promoted, same_values)
+from .expression import (
+    CHOICE,
+    Expression,
+    NoRoom,
+    Scope,
+    comparison,
+    converted,
+    express,
+    promoted,
+    same_values,
+)
 from .layout import NestText
 from .style import Style
 

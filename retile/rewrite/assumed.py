@@ -12,9 +12,27 @@ import re
 from dataclasses import dataclass
 
 from ..affine import Affine, AllOf, Constraint, Floor, equal
-from ..model import Access, Assumption, AssumptionCode, CType, Nest, RetileError, Statement, Storage, StorageKind
+from ..model import (
+    Access,
+    Assumption,
+    AssumptionCode,
+    CType,
+    Nest,
+    RetileError,
+    Statement,
+    Storage,
+)
 from ..sets import Region
-from .expression import PRODUCT, UNARY, Expression, NoRoom, Scope, condition, express, written
+from .expression import (
+    PRODUCT,
+    UNARY,
+    Expression,
+    NoRoom,
+    Scope,
+    condition,
+    express,
+    written,
+)
 from .names import Names
 
 ADDRESS = CType("uintptr_t", 64, False)

@@ -9,9 +9,20 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from ..affine import Affine, AllOf, AnyOf, Bound, Constraint, Floor, Formula, at_most, equal
+from ..affine import (
+    Affine,
+    AllOf,
+    AnyOf,
+    Bound,
+    Constraint,
+    Floor,
+    Formula,
+    at_most,
+    equal,
+)
+from ..model import CType
 from ..tree import Loop
-from .expression import Scope
+from .expression import Expression, Scope
 
 
 @dataclass(frozen=True)
@@ -22,9 +33,10 @@ class Limit:
     upward: bool
     ends: frozenset[Affine]
 
-    def definition(self) -> Formula:
-        """What the local's value is."""
-        return extremum_of(self.symbol, "min" if self.upward else "max", tuple(self.ends))
+    def named_in(self, scope: Scope, name: str, type: CType) -> Scope:
+        """The scope behind the declaration of the local."""
+        return with_extremum(scope, self.symbol, Expression(name, type), "min" if self.upward else "max",
+                             tuple(self.ends))
 
 
 def extremum_of(symbol: str, kind: str, forms: tuple[Affine, ...]) -> Formula:
@@ -32,6 +44,22 @@ def extremum_of(symbol: str, kind: str, forms: tuple[Affine, ...]) -> Formula:
     value = Affine.of(symbol)
     sides = tuple(at_most(value, form) if kind == "min" else at_most(form, value) for form in forms)
     return AllOf((*sides, AnyOf(tuple(equal(value, form) for form in forms))))
+
+
+def with_extremum(scope: Scope, symbol: str, variable: Expression, kind: str, forms: tuple[Affine, ...]) -> Scope:
+    """The scope with a variable for the min or max of forms.
+
+    Only what costs nothing later is remembered of its value: that it lies on one side of all forms, and its range.
+    """
+    value = Affine.of(symbol)
+    sides = tuple(at_most(value, form) if kind == "min" else at_most(form, value) for form in forms)
+    choose = min if kind == "min" else max
+    ranges = [scope.best_range(form) for form in forms]
+    lows, highs = [low for low, _ in ranges], [high for _, high in ranges]
+    interval = (None if None in lows else choose(low for low in lows if low is not None),
+                None if None in highs else choose(high for high in highs if high is not None))
+    limits = tuple(at_most(low, value) for low in interval[:1] if low is not None)
+    return scope.naming(symbol, variable, *sides, *limits, interval=interval)
 
 
 def members(bound: Bound, kind: str) -> tuple[Bound, ...]:
@@ -118,3 +146,11 @@ def without_alignment(a: Affine, b: Affine) -> tuple[Affine, Affine]:
         if factor == floor.divisor and aligned:
             return floor.numerator, b
     return a, b
+
+
+def interval_of(loop: Loop, scope: Scope) -> tuple[int | None, int | None]:
+    """A range of the loop's values, from the ranges of its bounds alone."""
+    lows = [scope.rough_range(bound)[0] for bound in members(loop.lower, "max") if isinstance(bound, Affine)]
+    highs = [scope.rough_range(bound)[1] for bound in members(loop.upper, "min") if isinstance(bound, Affine)]
+    return (max((low for low in lows if low is not None), default=None),
+            min((high for high in highs if high is not None), default=None))

@@ -83,39 +83,49 @@ def converted(expression: Expression, to: CType) -> Expression:
     return Expression(f"({to.spelling}){expression.at(UNARY)}", to, UNARY)
 
 
+Interval = tuple[int | None, int | None]
+
+
 class Scope:
     """What is known at a place of the program: the values that names can have there, and how they are written."""
 
-    def __init__(self, region: Region, operands: Mapping[str, Expression], meanings: Mapping[str, Affine] | None = None) \
-            -> None:
+    def __init__(self, region: Region, operands: Mapping[str, Expression], meanings: Mapping[str, Affine] | None = None,
+                 intervals: Mapping[str, Interval] | None = None) -> None:
         self.region = region
         self.operands = dict(operands)
         self.meanings = dict(meanings or {})
-        self._ranges: dict[Affine, tuple[int | None, int | None]] = {}
+        # Per name a range that holds here, perhaps found further out where less is known.
+        self._intervals: dict[str, Interval] = dict(intervals or {})
+        self._ranges: dict[Affine, Interval] = {}
         self._empty: bool | None = None
 
     def knowing(self, *facts: Formula) -> Scope:
         """The same place with more facts."""
-        return Scope(self.region & Region.where(*facts), self.operands, self.meanings)
+        return Scope(self.region & Region.where(*facts), self.operands, self.meanings, self._intervals)
 
-    def naming(self, symbol: str, expression: Expression, *facts: Formula) -> Scope:
-        """The same place with one more symbol that has a C name."""
-        return Scope(self.region & Region.where(*facts), {**self.operands, symbol: expression}, self.meanings)
+    def naming(self, symbol: str, expression: Expression, *facts: Formula, interval: Interval = (None, None)) -> Scope:
+        """The same place with one more symbol that has a C name; ``interval``: a range that its values have."""
+        known = {symbol: interval} if None not in interval else {}
+        return Scope(self.region & Region.where(*facts) if facts else self.region,
+                     {**self.operands, symbol: expression}, self.meanings, {**self._intervals, **known})
 
     def meaning(self, symbol: str, form: Affine, *facts: Formula) -> Scope:
         """The same place with one more symbol that is a form of others."""
         known = equal(Affine.of(symbol), form)
-        return Scope(self.region & Region.where(known, *facts), self.operands, {**self.meanings, symbol: form})
+        return Scope(self.region & Region.where(known, *facts), self.operands, {**self.meanings, symbol: form},
+                     self._intervals)
 
-    def forgetting(self, symbol: str) -> Scope:
-        """The same place without what is known about one symbol."""
-        return Scope(self.region.without([symbol]), self.operands, self.meanings)
+    def written_otherwise(self, operands: Mapping[str, Expression]) -> Scope:
+        """The same place with some names written in another way."""
+        scope = Scope(self.region, {**self.operands, **operands}, self.meanings, self._intervals)
+        scope._ranges = self._ranges
+        return scope
 
     def sees(self, names: frozenset[str]) -> bool:
         """True if every one of the names can be written here."""
         return all(name in self.operands or name in self.meanings for name in names)
 
-    def range(self, form: Affine) -> tuple[int | None, int | None]:
+    def range(self, form: Affine) -> Interval:
         """The smallest and the largest value that the form can have; None where there is no limit."""
         if form.is_constant:
             return form.constant, form.constant
@@ -128,12 +138,35 @@ class Scope:
 
     def fits(self, form: Affine, type: CType) -> bool:
         """True if the form's value always lies in the type."""
-        low, high = self.range(form)
-        return low is not None and high is not None and type.smallest <= low and high <= type.largest
+        return _inside(self.rough_range(form), type) or _inside(self.range(form), type)
+
+    def rough_range(self, form: Affine) -> Interval:
+        """A range found term by term: cheap, and often enough."""
+        low: int | None = form.constant
+        high: int | None = form.constant
+        for symbol, factor in form.terms:
+            if not isinstance(symbol, str):
+                return None, None
+            if symbol not in self._intervals:
+                self._intervals[symbol] = self.range(Affine.of(symbol))
+            ends = self._intervals[symbol] if factor > 0 else self._intervals[symbol][::-1]
+            low = None if low is None or ends[0] is None else low + factor * ends[0]
+            high = None if high is None or ends[1] is None else high + factor * ends[1]
+        return low, high
+
+    def best_range(self, form: Affine) -> Interval:
+        """The range term by term if it has both ends, else the exact one."""
+        rough = self.rough_range(form)
+        return self.range(form) if None in rough else rough
 
     def implies(self, fact: Formula) -> bool:
         """True if the fact holds here whatever the values."""
         return self.region.implies(fact)
+
+
+def _inside(interval: Interval, type: CType) -> bool:
+    low, high = interval
+    return low is not None and high is not None and type.smallest <= low and high <= type.largest
 
 
 @dataclass(frozen=True)

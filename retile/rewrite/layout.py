@@ -13,7 +13,7 @@ from dataclasses import dataclass, field
 from ..model import LoopText, Nest
 from ..source.lex import SKIPPED, Token, tokenize
 from ..source.structure import Malformed, Shape, compound
-from ..tree import Guard, Loop, Node, Verbatim
+from ..tree import Guard, Loop, Node, Verbatim, children
 
 
 class InternalError(Exception):
@@ -274,5 +274,5 @@ def _nodes(nodes: Iterable[Node]) -> Iterator[Node]:
     """The nodes of a tree, without what is inside pieces of text."""
     for node in nodes:
         yield node
-        if isinstance(node, Loop | Guard):
-            yield from _nodes(node.body)
+        if not isinstance(node, Verbatim):
+            yield from _nodes(children(node))

@@ -18,16 +18,50 @@ import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
-from ..affine import Affine, AllOf, AnyOf, Bound, Formula, equal, less, map_bound, negate
+from ..affine import (
+    Affine,
+    AnyOf,
+    Bound,
+    Formula,
+    equal,
+    less,
+    map_bound,
+    negate,
+)
 from ..model import CType, LoopText, Nest
 from ..tree import Loop, Role, loops_of
-from .bounds import (Limit, extremum_of, far_bound, half_open, members, named, near_bound, needed, on_grid,
-                     without_alignment)
-from .expression import (CHOICE, INT, LONG_LONG, SUM, Expression, NoRoom, Scope, common, comparison, converted, express,
-                         promoted, same_values, written)
+from .bounds import (
+    Limit,
+    extremum_of,
+    far_bound,
+    half_open,
+    interval_of,
+    members,
+    named,
+    near_bound,
+    needed,
+    on_grid,
+    with_extremum,
+    without_alignment,
+)
+from .expression import (
+    CHOICE,
+    INT,
+    LONG_LONG,
+    SUM,
+    Expression,
+    NoRoom,
+    Scope,
+    common,
+    comparison,
+    converted,
+    express,
+    promoted,
+    same_values,
+    written,
+)
 from .layout import NestText
 from .names import Names
-
 
 # The longest choice between two first values that stands in a header.
 _INLINE = 60
@@ -97,13 +131,14 @@ class Loops:
         ids = [word for word in words if word in self._ids] or [loop.of]
         return "_".join(self._nest.loop(id).iterator for id in ids)
 
-    def _name(self, key: object, wanted: str) -> str:
+    def name(self, key: object, wanted: str) -> str:
+        """A new name, the same one for the same key."""
         if key not in self._chosen:
             self._chosen[key] = self._names.fresh(wanted)
         return self._chosen[key]
 
     def _chunk_name(self, loop: Loop, word: str) -> str:
-        return self._name((loop.symbol, word), self._wanted(loop, word))
+        return self.name((loop.symbol, word), self._wanted(loop, word))
 
     def _wanted(self, loop: Loop, word: str) -> str:
         """``k_from``; the outer ones of several levels carry their size: ``k_from_96``."""
@@ -113,7 +148,7 @@ class Loops:
 
     def _limit_name(self, loop: Loop, ends: frozenset[Affine], chunk: Loop | None, word: str) -> str:
         owner = chunk or loop
-        return self._name((owner.symbol, word, ends), self._wanted(owner, word))
+        return self.name((owner.symbol, word, ends), self._wanted(owner, word))
 
     # ---------------------------------------------------------------- which way
 
@@ -138,7 +173,7 @@ class Loops:
             (abs(loop.step) == 1 or loop.origin == own.origin)
 
     def _entered(self, loop: Loop, place: Place, variable: Expression) -> Place:
-        scope = place.scope.naming(loop.symbol, variable, loop.constraints())
+        scope = place.scope.naming(loop.symbol, variable, loop.constraints(), interval=interval_of(loop, place.scope))
         around = place.around | {loop.symbol} if loop.symbol in self._ids else place.around
         return Place(scope, place.limits, around)
 
@@ -209,9 +244,9 @@ class Loops:
             plain = self._plain(form, scope)
             if plain is not None and (same_values(promoted(plain.type), promoted(type)) or _widens(plain.type, type)):
                 return replace(plain, type=type)
-            cast = {name: converted(e, type) if scope.fits(Affine.of(name), type) and e.type.bits > type.bits else e
-                    for name, e in scope.operands.items()}
-            found = self._plain(form, Scope(scope.region, cast, scope.meanings))
+            cast = {name: converted(scope.operands[name], type) for name in form.substitute(scope.meanings).names()
+                    if scope.operands[name].type.bits > type.bits and scope.fits(Affine.of(name), type)}
+            found = self._plain(form, scope.written_otherwise(cast)) if cast else None
             if found is not None and same_values(promoted(found.type), promoted(type)):
                 return found
         return converted(express(form, scope), type)
@@ -244,13 +279,13 @@ class Loops:
         limit = Limit("", kind == "min", frozenset(forms))
         name = self._limit_name(loop, limit.ends, chunk, word)
         limit = replace(limit, symbol=f"= {name}")
-        scope = work.place.scope.naming(limit.symbol, Expression(name, type), limit.definition())
+        scope = limit.named_in(work.place.scope, name, type)
         value = Affine.of(limit.symbol)
         if not scope.fits(value, type) and not (chunk is not None or word == "to"):
             type = LONG_LONG
             if not scope.fits(value, type):
                 raise NoRoom(name)
-            scope = work.place.scope.naming(limit.symbol, Expression(name, type), limit.definition())
+            scope = limit.named_in(work.place.scope, name, type)
         work.lines += self._declared(name, forms, kind, work.place.scope, type, aliases or {})
         work.place = Place(scope, (*work.place.limits, limit), work.place.around)
         return value
@@ -262,14 +297,13 @@ class Loops:
         if len(forms) == 2:
             return [f"const {type.spelling} {name} = {text.text};"]
         lines = [f"{type.spelling} {name} = {text.text};"]
-        so_far = extremum_of(f"= {name}", kind, forms[:2])
-        scope = scope.naming(f"= {name}", Expression(name, type), so_far)
+        outer, variable = scope, Expression(name, type)
+        scope = with_extremum(outer, f"= {name}", variable, kind, forms[:2])
         value = Affine.of(f"= {name}")
         for form in forms[2:]:
             better = comparison(form, "<" if kind == "min" else ">", value, scope, aliases)
             lines += [f"if ({better.text})", f"\x01{name} = {self._branch(form, scope, type, aliases).text};"]
-            known = extremum_of(f"= {name}", kind, forms[:forms.index(form) + 1])
-            scope = scope.forgetting(f"= {name}").naming(f"= {name}", Expression(name, type), known)
+            scope = with_extremum(outer, f"= {name}", variable, kind, forms[:forms.index(form) + 1])
         return lines
 
     def _chosen_of(self, a: Affine, b: Affine, kind: str, scope: Scope, type: CType,
@@ -364,7 +398,7 @@ class Loops:
         """A loop over a skewed sum, which has no variable in the user's text."""
         work = Locals(place)
         source = self._nest.loop(loop.of)
-        name = self._name(loop.symbol, self._base(loop))
+        name = self.name(loop.symbol, self._base(loop))
         kind = "max" if loop.step > 0 else "min"
         near = self._near(loop, work, LONG_LONG)
         type = self._wide_enough(loop, place.scope, source.type, near, 0)
@@ -394,7 +428,7 @@ class Loops:
 
     def _wide_enough(self, loop: Loop, scope: Scope, type: CType, starts: tuple[Affine, ...], shift: int) -> CType:
         """The user's type, or a wider one, for a variable that also holds the value after the last; raises NoRoom."""
-        inside = scope.naming(loop.symbol, Expression("", type), loop.constraints())
+        inside = scope.naming(loop.symbol, Expression("", type), loop.constraints(), interval=interval_of(loop, scope))
         value = Affine.of(loop.symbol) + shift
         for candidate in (*([type] if type.bits >= INT.bits else [type, INT]), LONG_LONG):
             if all(inside.fits(form, candidate) for form in (value, value + step_of(loop))) and \
@@ -466,7 +500,7 @@ class Loops:
         aliases = self._ends_written(source, inside)
         value = self._chosen_of(chunk_end, making.end, kind, inside.scope, type, aliases)
         start, test = self._chunk_start(making, type), self._chunk_test(making, Expression(name, type), None)
-        scope = inside.scope.naming(limit.symbol, Expression(to, type), limit.definition())
+        scope = limit.named_in(inside.scope, to, type)
         header = f"{self._layout.header(source).opening}{type.spelling} {name} = {start}, {to}; {test}; {name} = {to})"
         return Opened(tuple(work.lines), header, (f"{to} = {value.text};",), work.place,
                       Place(scope, (*inside.limits, limit), inside.around))
@@ -489,7 +523,8 @@ class Loops:
         """The place with the chunk's C variable, which may be one ahead of the first value of the chunk."""
         place, symbol = making.work.place, making.loop.symbol
         if not making.shift:
-            return replace(place, scope=place.scope.naming(symbol, variable, *facts))
+            interval = interval_of(making.loop, place.scope) if facts == (making.loop.constraints(),) else (None, None)
+            return replace(place, scope=place.scope.naming(symbol, variable, *facts, interval=interval))
         ahead = f"+ {symbol}"
         scope = place.scope.naming(ahead, variable).meaning(symbol, Affine.of(ahead) - making.shift, *facts)
         return replace(place, scope=scope)

@@ -25,7 +25,7 @@ from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, Constraint, Floor, Formula, at_most, negate
 from ..sets import Region
-from ..tree import Guard, Loop, Node, Role, loops_of
+from ..tree import Guard, Kept, Loop, Node, Role, loops_of
 from .bounds import members
 
 
@@ -39,6 +39,8 @@ def _peeled(node: Node, known: Region, constants: frozenset[str]) -> Node:
     if isinstance(node, Guard):
         inner = known if node.condition is None else known & Region.where(node.condition)
         return replace(node, body=tuple(_peeled(part, inner, constants) for part in node.body))
+    if isinstance(node, Kept):
+        return replace(node, body=tuple(_peeled(part, known, constants) for part in node.body))
     if not isinstance(node, Loop):
         return node
     inside = known & Region.where(node.constraints())
@@ -88,7 +90,7 @@ class _Full:
 
     def node(self, node: Node, box: Mapping[str, _Range]) -> Node:
         """The node with the loops in it over full chunks; ``box``: the range of the loops of the region around."""
-        if isinstance(node, Guard):
+        if isinstance(node, Guard | Kept):
             return replace(node, body=tuple(self.node(part, box) for part in node.body))
         if not isinstance(node, Loop) or node.role is Role.CHUNK:
             return node
@@ -116,7 +118,7 @@ class _Full:
 
 def _range_of(loop: Loop) -> _Range | None:
     lowers, uppers = members(loop.lower, "max"), members(loop.upper, "min")
-    if isinstance(lowers[0], Affine) and isinstance(uppers[0], Affine):
+    if lowers and uppers and isinstance(lowers[0], Affine) and isinstance(uppers[0], Affine):
         return _Range(lowers[0], uppers[0])
     return None
 

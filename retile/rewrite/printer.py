@@ -11,8 +11,8 @@ from dataclasses import replace
 
 from ..affine import Affine, equal, negate
 from ..model import Nest
-from ..tree import Guard, Leaf, Loop, Node, Verbatim
-from .expression import Expression, condition
+from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Verbatim, children
+from .expression import Expression, condition, express
 from .layout import InternalError, NestText, Remarks
 from .loops import Loops, Opened, Place
 from .style import Style
@@ -50,6 +50,12 @@ class Printer:
                 at += both
             elif isinstance(node, Verbatim):
                 lines.append(indent + self._layout.moved(self._layout.piece(node), indent))
+            elif isinstance(node, Kept):
+                lines.append(f"{indent}{self._declaration(node.scalar)} {self._cells(node.scalar)}"
+                             f"{''.join(f'[{extent}]' for extent in node.shape)};")
+                lines += self.nodes(node.body, place, indent)
+            elif isinstance(node, Copy):
+                lines.append(indent + self._copy(node, place))
             else:
                 raise InternalError(f"{self._nest.address}: statement {node.statement} has no text of its own")
             at += 1
@@ -115,6 +121,8 @@ class Printer:
         if isinstance(node, Loop):
             first = body[0].lstrip()
             return not first.startswith("for")
+        if isinstance(node, Kept):
+            return True
         if isinstance(node, Verbatim):
             return self._layout.statement_count(node) != 1
         return False
@@ -133,6 +141,27 @@ class Printer:
             variable = Expression(source.iterator, source.type)
             place = Place(place.scope.naming(name, variable, equal(Affine.of(name), form)), place.limits, place.around | {name})
         return lines, place
+
+    # ---------------------------------------------------------------- kept values
+
+    def _declaration(self, scalar: str) -> str:
+        element = self._nest.storage(scalar).element
+        return element if isinstance(element, str) else element.spelling
+
+    def _cells(self, scalar: str) -> str:
+        """The name of the array in which a scalar's values wait."""
+        return self._loops.name(("kept", scalar), f"{self._variable(scalar)}_kept")
+
+    def _variable(self, scalar: str) -> str:
+        return self._nest.storage(scalar).pointer_text.removeprefix("&") or scalar
+
+    def _copy(self, copy: Copy, place: Place) -> str:
+        """``sum_kept[i - i_from] = sum;`` or the other way round."""
+        index = "".join(f"[{express(form, place.scope).text}]" for form in copy.index)
+        cell, scalar = self._cells(copy.scalar) + index, self._variable(copy.scalar)
+        if copy.store:
+            return f"{cell} = {scalar};"
+        return f"{self._declaration(copy.scalar)} {scalar} = {cell};" if copy.declares else f"{scalar} = {cell};"
 
     # ---------------------------------------------------------------- guards
 
@@ -166,7 +195,5 @@ def _instances(nodes: tuple[Node, ...]) -> Iterator[tuple[str, Affine]]:
     for node in nodes:
         if isinstance(node, Leaf):
             yield from node.instance
-        elif isinstance(node, Verbatim):
-            yield from _instances(node.content)
         else:
-            yield from _instances(node.body)
+            yield from _instances(children(node))

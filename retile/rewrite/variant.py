@@ -14,9 +14,9 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from ..affine import Affine, AllOf, Formula, at_most, bound_names
-from ..model import Assumption, AssumptionCode, Judgement, LoopText, Nest, Plan, Variant
+from ..model import Assumption, AssumptionCode, Judgement, Nest, Plan, Variant
 from ..sets import Region
-from ..tree import Guard, Leaf, Loop, Node, Verbatim, loops_of
+from ..tree import Loop, Node, Verbatim, children, loops_of
 from .after import restored
 from .assumed import Tests, tests_of
 from .expression import INT, Expression, NoRoom, Scope, written
@@ -227,8 +227,8 @@ def _printed(nodes: tuple[Node, ...]) -> Iterable[Loop]:
     for node in nodes:
         if isinstance(node, Loop):
             yield node
-        if isinstance(node, Loop | Guard):
-            yield from _printed(node.body)
+        if not isinstance(node, Verbatim):
+            yield from _printed(children(node))
 
 
 def outer_scope(nest: Nest, tree: tuple[Node, ...]) -> Scope:
