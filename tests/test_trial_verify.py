@@ -1,5 +1,6 @@
 """Verification: right variants pass, and each kind of wrong one is caught and named."""
 
+import shutil
 from dataclasses import replace
 
 import pytest
@@ -188,7 +189,27 @@ def test_a_missing_compiler_is_said(mirror):
         mirror.verify(mirror.variant(CHUNKED), replace(FAST, cc="no-such-cc"))
 
 
-def test_large_fixed_sizes_are_verified_once(tmp_path):
-    one = case(tmp_path, "float z[3000][9000];\nvoid f(void) {\n for (int j = 0; j < 9000; j++)\n  for (int i = 0; i < 3000; i++)\n"
+def test_fixed_sizes_that_take_long_are_verified_once(tmp_path, monkeypatch):
+    monkeypatch.setattr("retile.trial.sizes._WORK_OF_ONE", 1000)
+    one = case(tmp_path, "float z[30][90];\nvoid f(void) {\n for (int j = 0; j < 90; j++)\n  for (int i = 0; i < 30; i++)\n"
                          "   z[i][j] *= 2;\n}\n")
     assert len(one.accepts(one.variant(one.text)).cases) == 1
+
+
+def test_rows_also_lie_apart(tmp_path):
+    one = of_file("samples_c/tidal_factor.c", skip=0)
+    cases = [dict(sizes) for sizes in one.accepts(one.variant(one.text)).cases]
+    assert any(sizes["ld"] > sizes["n"] > 0 for sizes in cases)
+
+
+def test_without_sanitizers_it_is_said(mirror, monkeypatch):
+    monkeypatch.setattr("retile.trial.verification.can_sanitize", lambda cc: False)
+    found = mirror.accepts(mirror.variant(CHUNKED, PLAN), STRICT)
+    assert not found.sanitized and any("no sanitizers" in note for note in found.notes)
+
+
+@pytest.mark.skipif(shutil.which("clang") is None, reason="there is no clang here")
+def test_another_compiler(mirror):
+    clang = replace(STRICT, cc="clang")
+    mirror.accepts(mirror.variant(CHUNKED, PLAN), clang)
+    mirror.tells_apart(mirror.variant(CHUNKED.replace("? i_from + 16", "? i_from + 15"), PLAN), clang)

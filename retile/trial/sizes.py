@@ -99,8 +99,9 @@ def _wishes(bench: Bench, chunks: Mapping[str, Sequence[int]]) -> Iterator[dict[
     every = sorted({chunk for sizes in chunks.values() for chunk in sizes}, reverse=True)
 
     def completed(wish: Mapping[str, int], turn: int) -> dict[str, int]:
-        """Names outside all loop bounds are no sizes: small values in turn."""
-        return {name: wish[name] if name in bounds or name in bench.hidden else turn % 3 for name in names}
+        """Names outside all loop bounds are no sizes: small values in turn, and one that leaves gaps between rows."""
+        other = (0, 1, 2, max(wish.values(), default=0) + 3)[turn % 4]
+        return {name: wish[name] if name in bounds or name in bench.hidden else other for name in names}
 
     turn = 0
     unequal = {name: _UNEQUAL[at % len(_UNEQUAL)] for at, name in enumerate(names)}
