@@ -279,6 +279,7 @@ class Plan:
     # (statement, loop, value): a statement outside a loop that stands where the loop has this value
     aligned: tuple[tuple[str, str, Affine], ...] = ()
     copied: tuple[str, ...] = ()  # statements that run again wherever their value is needed
+    kept: tuple[str, ...] = ()  # private scalars whose values wait in a small array of the variant's own
 
     def places_of(self, statement: str) -> tuple[Place, ...]:
         """The places of one statement; KeyError if the plan has none for it."""

@@ -81,7 +81,26 @@ class Verbatim:
     content: tuple[Node, ...]
 
 
-Node = Loop | Guard | Leaf | Verbatim
+@dataclass(frozen=True)
+class Kept:
+    """Gives a private scalar an array of the variant's own while its body runs, a cell for each value that waits."""
+
+    scalar: str  # name of the storage
+    shape: tuple[int, ...]
+    body: tuple[Node, ...]
+
+
+@dataclass(frozen=True)
+class Copy:
+    """Moves a scalar's value into its cell of the ``Kept`` around, or back."""
+
+    scalar: str
+    index: tuple[Affine, ...]  # of the cell, in symbols of the tree
+    store: bool  # scalar to cell; else cell to scalar
+    declares: bool = False  # the scalar is declared here: its own declaration stands in another piece
+
+
+Node = Loop | Guard | Leaf | Verbatim | Kept | Copy
 
 # One moment's place: list positions and (symbol, direction) pairs in turn, outermost first.
 Moment = int | tuple[str, int]
@@ -115,8 +134,9 @@ def _walk(nodes: tuple[Node, ...], loops: tuple[Loop, ...], conditions: tuple[Fo
         elif isinstance(node, Guard):
             known = (node.condition,) if node.condition is not None else ()
             yield from _walk(node.body, loops, (*conditions, *known), (*here, ("", 0)))
-        else:
-            yield from _walk(node.content, loops, conditions, (*here, ("", 0)))
+        elif not isinstance(node, Copy):
+            inner = node.content if isinstance(node, Verbatim) else node.body
+            yield from _walk(inner, loops, conditions, (*here, ("", 0)))
 
 
 def loops_of(nodes: tuple[Node, ...]) -> Iterator[Loop]:
@@ -124,5 +144,11 @@ def loops_of(nodes: tuple[Node, ...]) -> Iterator[Loop]:
     for node in nodes:
         if isinstance(node, Loop):
             yield node
-        if not isinstance(node, Leaf):
-            yield from loops_of(node.content if isinstance(node, Verbatim) else node.body)
+        yield from loops_of(children(node))
+
+
+def children(node: Node) -> tuple[Node, ...]:
+    """The nodes inside a node."""
+    if isinstance(node, Leaf | Copy):
+        return ()
+    return node.content if isinstance(node, Verbatim) else node.body

@@ -100,3 +100,8 @@ SCALED = nest((("i", ZERO, n - 1, 1), [(("k", ZERO, n - 1, 1), [
 CLEARED = nest((("i", ZERO, n - 1, 1), [(("j", ZERO, n - 1, 1), [
     [("c", True, (i, j))],
     (("k", ZERO, n - 1, 1), [[("c", True, (i, j)), ("c", False, (i, j)), ("a", False, (i, k)), ("b", False, (k, j))]])])]))
+# for i, j { s = 0; for k: s += a[i][k] * b[j][k]; c[i][j] = s; }
+SUMMED = nest((("i", ZERO, n - 1, 1), [(("j", ZERO, n - 1, 1), [
+    [("s", True, ())],
+    (("k", ZERO, n - 1, 1), [[("s", True, ()), ("s", False, ()), ("a", False, (i, k)), ("b", False, (j, k))]]),
+    [("c", True, (i, j)), ("s", False, ())]])]), scalars={"s": ("i", "j")})

@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 import pytest
-from hand_nests import BACKWARD, CLEARED, DOWN, DRIFT, FACTORISATION, PRODUCT, SCALED, TRIANGLE
+from hand_nests import BACKWARD, CLEARED, DOWN, DRIFT, FACTORISATION, PRODUCT, SCALED, SUMMED, TRIANGLE
 from walk import Run, runs
 
 from retile.dependence import analyse
@@ -109,6 +109,7 @@ IMPERFECT = [
     (SCALED, ["j:3 i k j", "k:2 j:3 i k j", "j:2 k i j", "j i k", "k:K_CHUNK i:2 k i j"]),
     (FACTORISATION, ["j:3 k i@21 i@23 j", "k i@21 j i@23", "k:2 j:3 k i@21 i@23 j", "j k i@21 i@23",
                      "j:J_CHUNK k i@21 i@23 j"]),
+    (SUMMED, ["i:2 j:3 k:2 i j k", "i:3 j:2 k:2 k i j", "i j:2 k:2 j k", "i:3 j:2 j k i"]),
 ]
 
 
@@ -133,6 +134,10 @@ def final_values(nest: Nest, order: list[Run]) -> dict[tuple, object]:
     memory: dict[tuple, object] = {}
     for id, iterators in order:
         values, result = dict(iterators), []
+        if id in ("store", "fetch"):
+            scalar, cell = (iterators[0][0],), ("kept", *iterators)
+            memory[cell if id == "store" else scalar] = memory.get(scalar if id == "store" else cell)
+            continue
         for access in nest.statement(id).accesses:
             cell = (access.storage, *(subscript.evaluate(values) for subscript in access.subscripts or ()))
             if not access.write:
@@ -141,12 +146,18 @@ def final_values(nest: Nest, order: list[Run]) -> dict[tuple, object]:
             if access.write:
                 cell = (access.storage, *(subscript.evaluate(values) for subscript in access.subscripts or ()))
                 memory[cell] = hash((id, *result))
-    return {cell: value for cell, value in memory.items() if cell[0] != "t"}
+    return {cell: value for cell, value in memory.items() if cell[0] in "abc"}
 
 
 def test_pivot_statement_waits_for_its_column() -> None:
     plan = judge(FACTORISATION, analyse(FACTORISATION), parse_plan("j:3 k i@21 i@23 j", FACTORISATION)).plan
     assert [(id, loop, str(value)) for id, loop, value in plan.aligned] == [("22", "j", "k")]
+
+
+@pytest.mark.parametrize("text", ["k:2 i j k", "i:2 k:2 i j k", "i:200 j:300 k:2 i j k"])
+def test_no_array_keeps_values_without_bound(text: str) -> None:
+    judgement = judge(SUMMED, analyse(SUMMED), parse_plan(text, SUMMED))
+    assert (judgement.verdict, judgement.plan.kept) == (Verdict.ILLEGAL, ())
 
 
 def test_a_value_that_does_not_arrive_is_noticed() -> None:
@@ -194,3 +205,9 @@ def test_nearest_legal_plan(nest: Nest, text: str, instead: str | None) -> None:
     assert found == instead
     if found:
         assert judge(nest, dependences, parse_plan(found, nest)).verdict is Verdict.LEGAL
+
+
+def test_chunks_that_bound_what_waits_are_proposed() -> None:
+    dependences = analyse(SUMMED)
+    assert nearest_legal(SUMMED, dependences, parse_plan("k:64 i j k", SUMMED)) == "i:32 j:32 k:64 i j k"
+    assert nearest_legal(SUMMED, dependences, parse_plan("k:64 j:16 i j k", SUMMED)) == "i:32 j:16 k:64 i j k"

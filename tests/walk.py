@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 
 from retile.affine import Affine, AllOf, Bound, Constraint, Formula
-from retile.tree import Guard, Leaf, Loop, Node
+from retile.tree import Copy, Guard, Leaf, Loop, Node, Verbatim
 
 Run = tuple[str, tuple[tuple[str, int], ...]]
 
@@ -24,7 +24,10 @@ def holds(formula: Formula, values: Mapping[str, int]) -> bool:
 
 
 def runs(nodes: tuple[Node, ...], values: Mapping[str, int]) -> Iterator[Run]:
-    """The instances that a tree executes, in order; guards on data count as true."""
+    """The instances that a tree executes, in order; guards on data count as true.
+
+    Copies of kept scalars are runs of the statements ``store`` and ``fetch``, with the scalar's name and the cell.
+    """
     for node in nodes:
         if isinstance(node, Leaf):
             yield node.statement, tuple((name, form.evaluate(values)) for name, form in node.instance)
@@ -34,8 +37,11 @@ def runs(nodes: tuple[Node, ...], values: Mapping[str, int]) -> Iterator[Run]:
         elif isinstance(node, Guard):
             if node.condition is None or holds(node.condition, values):
                 yield from runs(node.body, values)
+        elif isinstance(node, Copy):
+            yield "store" if node.store else "fetch", ((node.scalar, 0), *(
+                (str(at), form.evaluate(values)) for at, form in enumerate(node.index)))
         else:
-            yield from runs(node.content, values)
+            yield from runs(node.content if isinstance(node, Verbatim) else node.body, values)
 
 
 def iterations(loop: Loop, values: Mapping[str, int]) -> list[int]:

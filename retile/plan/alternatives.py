@@ -7,8 +7,9 @@ from dataclasses import replace
 from itertools import combinations, islice, permutations, product
 
 from ..dependence import Dependences
-from ..model import Nest, Plan, Term
+from ..model import Nest, Plan, ScalarClass, Term
 from .grammar import term_text
+from .schedule import stays_whole
 from .verdict import is_legal
 
 # How many plans of each kind are tried: an answer must feel instant, and far-fetched plans help nobody.
@@ -16,6 +17,8 @@ _MOST_SKEWED = 20
 _MOST_ORDERS = 12
 _MOST_FEWER = 24
 _LARGEST_SKEW = 3
+# Iterations per loop of which each has a value of a scalar waiting: two loops of them fill half a small first cache.
+_WAITING = 32
 
 
 def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | None:
@@ -26,7 +29,7 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
     """
     original = tuple(loop.id for loop in nest.loops)
     seen = {plan.order_text}
-    for terms in _candidates(plan.terms, original):
+    for terms in (*_bounded(nest, plan), *_candidates(plan.terms, original)):
         text = " ".join(term_text(term) for term in terms)
         bare = [term.loop for term in terms if term.chunk is None]
         changed = len(bare) < len(terms) or bare != [id for id in original if id in bare]
@@ -36,6 +39,17 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
         if is_legal(nest, dependences, replace(plan, terms=terms, places=())):
             return text + plan.text[len(plan.order_text):]
     return None
+
+
+def _bounded(nest: Nest, plan: Plan) -> Iterator[tuple[Term, ...]]:
+    """The terms with chunks in front that bound how many values of the interrupted scalars wait at a time."""
+    loops = dict.fromkeys(loop for storage in nest.storages
+                          if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
+                          for loop in storage.private_to)
+    own = {loop: next((term for term in plan.terms if term.chunk is not None and term.form == ((loop, 1),)),
+                      Term(((loop, 1),), _WAITING, 0, 0)) for loop in loops}
+    if own:
+        yield (*own.values(), *(term for term in plan.terms if term not in own.values()))
 
 
 def _candidates(terms: tuple[Term, ...], original: tuple[str, ...]) -> Iterator[tuple[Term, ...]]:

@@ -21,9 +21,10 @@ from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal,
 from ..dependence import defined
 from ..model import Nest, Plan, Term
 from ..sets import Region
-from ..tree import Guard, Leaf, Loop, Node, Role, Verbatim, loops_of
+from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Role, Verbatim, loops_of
 from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
 from .grammar import form_text
+from .kept import Keeping, keeping
 from .schedule import AFTER, BEFORE, INSIDE, placed, skewed_coordinate
 from .units import Unit, statements_in, units
 
@@ -43,10 +44,43 @@ class _Builder:
         self._aligned: dict[str, dict[str, Affine]] = {}
         for statement, loop, value in plan.aligned:
             self._aligned.setdefault(statement, {})[loop] = value
+        kept = (keeping(nest, plan, nest.storage(name)) for name in plan.kept)
+        self._kept = tuple(keep for keep in kept if keep is not None)
         self._constants = tuple(term.chunk for term in plan.terms if isinstance(term.chunk, str))
 
     def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
         """The nodes of these units from a term on; ``known``: what the loops around establish."""
+        owned = [keep for keep in self._kept if keep.level == level and self._users(keep, members)]
+        nodes = self._copying(self._parts(members, level, known, outer), level, members)
+        for keep in owned:
+            nodes = (Kept(keep.scalar, keep.shape, nodes),)
+        return nodes
+
+    def _copying(self, nodes: tuple[Node, ...], level: int, members: tuple[Unit, ...]) -> tuple[Node, ...]:
+        """The nodes with the values that they use fetched before and put back after them."""
+        for keep in self._kept:
+            users = self._users(keep, members) if keep.ready == level else ()
+            if not users:
+                continue
+            block = self._nest.storage(keep.scalar).scope == "block"
+            fetch = () if self._starts_value(users[0], keep) else (Copy(keep.scalar, keep.index, False, block),)
+            changed = any(a.write and a.storage == keep.scalar for id in users for a in self._nest.statement(id).accesses)
+            nodes = (*fetch, *nodes, *((Copy(keep.scalar, keep.index, True),) if changed else ()))
+        return nodes
+
+    def _users(self, keep: Keeping, members: tuple[Unit, ...]) -> tuple[str, ...]:
+        """The statements of these units that use a kept scalar, in text order."""
+        return tuple(id for unit in members for id in statements_in(unit.nodes)
+                     if any(a.storage == keep.scalar for a in self._nest.statement(id).accesses))
+
+    def _starts_value(self, statement: str, keep: Keeping) -> bool:
+        """True if a statement surely gives the scalar a new value without looking at the old one."""
+        first = self._nest.statement(statement)
+        uses = [access for access in first.accesses if access.storage == keep.scalar]
+        return all(access.write and access.certain for access in uses) and \
+            first.loops == self._nest.storage(keep.scalar).private_to
+
+    def _parts(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
         if level == len(self._plan.terms):
             return tuple(self._leaf(unit, known, outer) for unit in members)
         split = self._split(members, level)

@@ -6,7 +6,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 
 from ..model import Nest, Plan
-from ..tree import Guard, Leaf, Loop, Node, Verbatim, loops_of
+from ..tree import Guard, Leaf, Loop, Node, Verbatim, children, loops_of
 
 
 @dataclass(frozen=True)
@@ -30,7 +30,7 @@ def moved_conditions(nest: Nest, plan: Plan) -> frozenset[str]:
 
 def _find_conditions(nodes: tuple[Node, ...], named: set[str], found: set[str]) -> None:
     for at, node in enumerate(nodes):
-        if not isinstance(node, Leaf | Verbatim) and _holds_named((node,), named):
+        if isinstance(node, Loop | Guard) and _holds_named((node,), named):
             if isinstance(node, Guard) and at > 0 and isinstance(before := nodes[at - 1], Leaf):
                 found.add(before.statement)
             _find_conditions(node.body, named, found)
@@ -93,4 +93,4 @@ def statements_in(nodes: Iterable[Node]) -> Iterable[str]:
         if isinstance(node, Leaf):
             yield node.statement
         else:
-            yield from statements_in(node.content if isinstance(node, Verbatim) else node.body)
+            yield from statements_in(children(node))

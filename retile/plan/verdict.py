@@ -19,6 +19,7 @@ from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
 from .alignment import settled
 from .copies import copied, copied_scalars
+from .kept import keepable
 from .schedule import moments, placed, stays_whole
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
@@ -53,12 +54,19 @@ def binding_edges(nest: Nest, dependences: Dependences, plan: Plan) -> tuple[Edg
 
 
 def _settled_court(nest: Nest, dependences: Dependences, plan: Plan) -> _Court:
-    """The court on a plan with default places or, where these reverse something, with places that do not, if found."""
-    court = _Court(nest, dependences, placed(replace(plan, copied=copied(nest, plan)), nest))
-    if all(set(court.plan.moved) <= set(statement.loops) for statement in nest.statements):
-        return court
+    """The court on a plan as it stands or, where that reverses something, with what would settle it, if found.
+
+    Tried in turn: values computed again (``copies.py``), values kept in arrays (``kept.py``), statements aligned with
+    loops that they are not in (``alignment.py``).
+    """
+    first = _Court(nest, dependences, placed(replace(plan, copied=copied(nest, plan)), nest))
+    court = first
+    if first.reuses_reversed():
+        court = _Court(nest, dependences, replace(first.plan, kept=keepable(nest, first.plan)))
+    if all(set(plan.moved) <= set(statement.loops) for statement in nest.statements) or not court.cost()[0]:
+        return court if not court.cost()[0] else first
     better = settled(court.plan, nest, lambda trial: _Court(nest, dependences, trial).cost())
-    return court if better is None else _Court(nest, dependences, better)
+    return first if better is None else _Court(nest, dependences, better)
 
 
 @dataclass(frozen=True)
@@ -76,9 +84,10 @@ class _Court:
         self._times: dict[str, tuple[Coordinate, ...]] = {
             statement.id: (*moments(plan, statement.id), *original[statement.id]) for statement in nest.statements}
         self.plan = plan
+        self._found: dict[int, _Reversed | None] = {}
         self._copied = copied_scalars(nest, plan)
         # Private scalars whose iterations the plan takes apart: their storage is not theirs alone.
-        self._split = {name for name in {edge.storage for edge in dependences.reuse} - self._copied
+        self._split = {name for name in {edge.storage for edge in dependences.reuse} - self._copied - set(plan.kept)
                        if not stays_whole(plan, nest.storage(name).private_to)}
 
     def cost(self) -> tuple[int, frozenset[str]]:
@@ -109,13 +118,20 @@ class _Court:
     def _split_of(self, statement: Statement) -> tuple[int, ...]:
         return tuple(place.position for place in self.plan.places_of(statement.id))
 
+    def reuses_reversed(self) -> bool:
+        """True if the plan takes private scalars apart so that one value would overwrite another."""
+        return any(self._reverses_reuse(name) for name in self._split)
+
     def _reverses_reuse(self, name: str) -> bool:
         return any(self.reversed(edge) is not None for edge in self._dependences.reuse if edge.storage == name)
 
     def reversed(self, edge: Edge) -> _Reversed | None:
         """The edge with those of its pairs that the plan reverses; None if it keeps all of them."""
-        found = self._reversed_pairs(edge.relation, self._nest.statement(edge.source), self._nest.statement(edge.target))
-        return None if found is None else _Reversed(edge, found[1], found[0])
+        if id(edge) not in self._found:
+            ends = self._nest.statement(edge.source), self._nest.statement(edge.target)
+            found = self._reversed_pairs(edge.relation, *ends)
+            self._found[id(edge)] = None if found is None else _Reversed(edge, found[1], found[0])
+        return self._found[id(edge)]
 
     def violations(self, edges: tuple[Edge, ...]) -> Iterator[Violation]:
         """One witness per edge with a reversed pair that surely shares a cell."""
