@@ -174,7 +174,7 @@ class LoopText:
     relation: str  # the comparison with the iterator on the left: ``<``, ``<=``, ``>``, ``>=``, ``!=``, ``-->`` for i-- > b
     outer: tuple[str, ...]  # ids of the loops around it
     iterator_live_after: bool  # the iterator's value after the nest can be seen
-    # True if first and last depend on no other loop of the nest: chunks count from the first value
+    # True if the first value depends on no other loop of the nest: chunks count from it
     independent: bool
 
 
@@ -196,7 +196,8 @@ class Assumption:
     code: AssumptionCode
     text: str  # one sentence, e.g. ``a and c do not overlap``
     condition: Formula | None = None  # the fact over parameters, for all codes but no-overlap, unchanged and other
-    storages: tuple[str, ...] = ()  # the two that must not overlap, for no-overlap and unchanged
+    storages: tuple[str, ...] = ()  # the two that must not overlap, for no-overlap and unchanged; the one whose rows must not
+    given: bool = False  # the user vouches for it
 
     @property
     def testable(self) -> bool:

@@ -44,7 +44,7 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
 def is_legal(nest: Nest, dependences: Dependences, plan: Plan) -> bool:
     """The verdict alone, without evidence; stops at the first reversed pair."""
     court = _settled_court(nest, dependences, plan)
-    return not any(court.refusals()) and all(assumption.testable for assumption in nest.assumptions) and \
+    return not any(court.refusals()) and all(a.testable or a.given for a in nest.assumptions) and \
         all(court.reversed(edge) is None for edge in court.binding_edges())
 
 
@@ -155,7 +155,7 @@ class _Court:
                                f"that the cells of {edge.storage} which line {self._line(edge.source)} and line "
                                f"{self._line(edge.target)} touch are different ones")
         for assumption in self._nest.assumptions:
-            if not assumption.testable:
+            if not assumption.testable and not assumption.given:
                 first = self._nest.statements[0].id
                 yield Unproven(first, first, "the code does not state a fact that the verdict needs", assumption.text)
 
