@@ -63,7 +63,7 @@ class _Maker:
         lower, upper = (first, last) if step > 0 else (last, first)
         loop = Loop(id, lower, upper, step, first if isinstance(first, Affine) else A(0), (), id)
         text = LoopText(id, id.split("@")[0], INT, True, first, last, step, here, here, here, "", "", "<", loops, False,
-                        not (bound_names(first) | bound_names(last)) & set(loops))
+                        not bound_names(first) & set(loops))
         at = len(self.loops)
         self.loops.append(text)
         inner = tuple(self.node(part, (*loops, id), (*domain, loop.constraints())) for part in body)

@@ -121,7 +121,7 @@ def _span(solid: list[Token], start: int, end: int) -> Span:
 def _loop(loop: ByHand, shape: Shape, solid: list[Token], loops: list[ByHand], depth: int) -> LoopText:
     declared = solid[shape.marks[1] + 2].kind == "word"
     outer = tuple(one.id for one in loops[:depth])
-    independent = not (bound_names(loop.first) | bound_names(loop.last)) & set(outer)
+    independent = not bound_names(loop.first) & set(outer)
     return LoopText(loop.id, loop.id.split("@")[0], TYPES[loop.type], declared, loop.first, loop.last, loop.step,
                     _span(solid, shape.start, shape.end), _span(solid, shape.start, shape.marks[-1]),
                     _span(solid, shape.children[0].start, shape.children[0].end), loop.first_text, loop.bound_text,

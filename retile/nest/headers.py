@@ -30,7 +30,7 @@ def loop_text(source: Source, loop: Any, id: str, header: Header, outer: tuple[s
     """The value that tells the other rooms of a loop's text."""
     texts = setting.texts()
     bound, relation = _bound(source, loop, header, texts, setting)
-    independent = not (bound_names(header.first) | bound_names(header.last)) & setting.loop_ids
+    independent = not bound_names(header.first) & setting.loop_ids
     return LoopText(id, header.binding.name, header.type, header.declared_in_for, header.first, header.last, header.step,
                     *spans, _first(source, loop, header, texts, setting), bound, relation, outer, live_after, independent)
 

@@ -54,7 +54,8 @@ def _behind_data(loop: LoopText, nest: Nest) -> bool:
 
 def _restored(loop: LoopText, nest: Nest, layout: NestText, style: Style, scope: Scope, indent: str) -> list[str]:
     chain = [nest.loop(id) for id in (*loop.outer, loop.id)]
-    if all(one.independent and isinstance(one.first, Affine) and isinstance(one.last, Affine) for one in chain):
+    ids = {one.id for one in chain}
+    if all(isinstance(bound, Affine) and not bound.names() & ids for one in chain for bound in (one.first, one.last)):
         try:
             return _computed(loop, chain[:-1], style, scope, indent)
         except NoRoom:
