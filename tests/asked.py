@@ -10,6 +10,7 @@ from pathlib import Path
 import retile
 from retile.library import OpenNest
 from retile.model import Judgement, Variant
+from retile.plan import judge
 
 
 @dataclass(frozen=True)
@@ -20,7 +21,8 @@ class Answer:
     folder: tempfile.TemporaryDirectory  # lives as long as the answer does
 
     def check(self, plan: str) -> Judgement:
-        return self.opened.check(plan)
+        """The verdict without the search for a plan to propose instead."""
+        return judge(self.opened.nest, self.opened.dependences, self.opened.plan(plan))
 
     def verdict(self, plan: str) -> str:
         return self.check(plan).verdict.value

@@ -18,7 +18,7 @@ from dataclasses import dataclass, field
 from asked import Answer, ask
 from random_nests import Case
 
-from oracle import Aligned, TooLong, Undefined, Unsupported, compare, observe, times_of, verdict_at
+from oracle import Aligned, Log, TooLong, Undefined, Unsupported, compare, observe, times_of, verdict_at
 from oracle_values import Instance
 from retile.affine import Affine, AllOf, AnyOf, Constraint, Formula
 from retile.model import Assumption, Judgement, RetileError, Violation
@@ -109,15 +109,13 @@ def _examine_legal(case: Case, judgement: Judgement, answer: Answer, chosen: lis
 
 def _examine_variant(case: Case, answer: Answer, plan: str, chosen: list[dict[str, int]], finding: Finding) -> None:
     judgement = answer.check(plan)
-    for trust in (False, True):
+    for trust in (False, True) if judgement.assumptions else (False,):
         try:
             variant = answer.variant(plan, trust=trust)
         except RetileError as problem:
             finding.notes[f"no variant: {_short(str(problem))}"] += 1
             finding.problems.append(f"legal, but no variant for {plan}: {problem}")
             return
-        if trust and not judgement.assumptions:
-            continue
         for sizes in chosen:
             if trust and not assumptions_hold(judgement.assumptions, sizes):
                 continue
@@ -178,7 +176,7 @@ def witness_problems(case: Case, judgement: Judgement, violation: Violation, not
     return problem
 
 
-def _replayed(times: list[tuple], violation: Violation, instances: list[Instance], sizes: dict[str, int]) -> list[str]:
+def _replayed(times: list[tuple], violation: Violation, instances: Log, sizes: dict[str, int]) -> list[str]:
     sources = [k for k, x in enumerate(instances) if _is(x, violation.source)]
     targets = [k for k, x in enumerate(instances) if _is(x, violation.target)]
     pairs = [(a, b) for a in sources for b in targets if instances[a].run == instances[b].run]

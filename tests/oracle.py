@@ -18,8 +18,16 @@ from oracle_run import Program
 from oracle_text import Undefined, Unsupported
 from oracle_values import Instance, LoopAt, Machine, TooLong, cell_name, tag_of
 
-__all__ = ["Aligned", "Clash", "Outcome", "Undefined", "Unsupported", "TooLong", "compare", "final_tags", "observe",
+__all__ = ["Aligned", "Clash", "Log", "Outcome", "Undefined", "Unsupported", "TooLong", "compare", "final_tags", "observe",
            "parse_terms", "times_of", "verdict_at"]
+
+
+class Log(list[Instance]):
+    """Statement instances in their order, and the loops of the nest in text order."""
+
+    def __init__(self, instances: Iterable[Instance], loops: Sequence[LoopAt]) -> None:
+        super().__init__(instances)
+        self.loops = loops
 
 
 # ---------------------------------------------------------------- plans
@@ -82,24 +90,22 @@ Aligned = Sequence[tuple[int, str, Callable[[dict[str, int]], int]]]
 
 @dataclass
 class _Loops:
-    """The loops that a plan names, as they ran."""
+    """The loops that a plan names."""
 
     starts: dict[str, tuple[int, int]]
     seen: dict[str, LoopAt]
 
     @staticmethod
-    def of(terms: Iterable[Term], instances: list[Instance]) -> _Loops:
-        names = {name for term in terms for name, _ in term.loops}
+    def of(terms: Iterable[Term], instances: Log) -> _Loops:
+        starts: dict[str, tuple[int, int]] = {}
         seen: dict[str, LoopAt] = {}
-        for instance in instances:
-            for loop in instance.loops:
-                for name in names - seen.keys():
-                    if _is(loop, name):
-                        seen[name] = loop
-            if len(seen) == len(names):
-                break
-        # a loop that never ran: everything that ran stands before it
-        starts = {name: (seen[name].line, seen[name].column) if name in seen else (10**9, 0) for name in names}
+        for name in {name for term in terms for name, _ in term.loops}:
+            known = next((loop for loop in instances.loops if _is(loop, name)), None)
+            if known is None:
+                raise Unsupported(f"no loop {name}")
+            starts[name] = (known.line, known.column)
+            ran = (loop for instance in instances for loop in instance.loops if _is(loop, name))
+            seen[name] = next(ran, known)
         return _Loops(starts, seen)
 
     def around(self, instance: Instance, name: str, aligned: Aligned) -> LoopAt | None:
@@ -108,8 +114,7 @@ class _Loops:
         if found is None:
             for line, loop, value in aligned:
                 if line == instance.line and loop == name:
-                    like = self.seen.get(name, LoopAt(name, 0, 0, 0, 0, 1, True))
-                    return replace(like, value=value(instance.iterators))
+                    return replace(self.seen[name], value=value(instance.iterators))
         return found
 
 
@@ -126,7 +131,7 @@ def _moment(term: Term, instance: Instance, loops: _Loops, aligned: Aligned) -> 
     return total // unit
 
 
-def times_of(instances: list[Instance], plan: str, aligned: Aligned = ()) -> list[tuple[float, ...]]:
+def times_of(instances: Log, plan: str, aligned: Aligned = ()) -> list[tuple[float, ...]]:
     """The time vector of every instance under a plan."""
     terms = parse_terms(plan)
     loops = _Loops.of(terms, instances)
@@ -142,10 +147,10 @@ def _program(text: str, line: int | None, directory: Path | None) -> Program:
 
 
 def observe(text: str, function: str, line: int, sizes: dict[str, int], *, may: bool = False, steps: int = 100_000,
-            directory: Path | None = None) -> list[Instance]:
+            directory: Path | None = None) -> Log:
     """The statement instances of the nest at ``line``, in order; raises Undefined if the call is undefined in C."""
-    machine = _program(text, line, directory).run(function, sizes, may=may, steps=steps)
-    return machine.instances
+    program = _program(text, line, directory)
+    return Log(program.run(function, sizes, may=may, steps=steps).instances, program.loops)
 
 
 @dataclass(frozen=True)
@@ -162,7 +167,7 @@ class Clash:
 class Outcome:
     """What a plan does to one execution."""
 
-    instances: list[Instance]
+    instances: Log
     clashes: list[Clash] = field(default_factory=list)  # at most one per cell
     stale: list[Clash] = field(default_factory=list)  # reads that see another write when the plan's order is replayed
 
@@ -182,7 +187,7 @@ def verdict_at(text: str, function: str, line: int, plan: str, sizes: dict[str, 
     instances = observe(text, function, line, sizes, may=may, steps=steps, directory=directory)
     outcome = Outcome(instances)
     for run in sorted({instance.run for instance in instances}):
-        part = [instance for instance in instances if instance.run == run]
+        part = Log((instance for instance in instances if instance.run == run), instances.loops)
         times = times_of(part, plan, aligned)
         outcome.clashes += _reversed_pairs(part, times)
         outcome.stale += _stale_reads(part, times)
@@ -198,7 +203,7 @@ def _is_scalar(obj: object) -> bool:
     return obj.kind in ("local", "block") and getattr(obj.type, "of", None) is None and hasattr(obj.type, "floating")
 
 
-def _reversed_pairs(instances: list[Instance], times: list[tuple]) -> list[Clash]:
+def _reversed_pairs(instances: Log, times: list[tuple]) -> list[Clash]:
     latest_write: dict = {}
     latest: dict = {}
     found: dict = {}
@@ -215,7 +220,7 @@ def _reversed_pairs(instances: list[Instance], times: list[tuple]) -> list[Clash
     return list(found.values())
 
 
-def _replay(instances: list[Instance], order: list[int]) -> tuple[dict, dict]:
+def _replay(instances: Log, order: list[int]) -> tuple[dict, dict]:
     """Who wrote what each read sees, and the last write of each cell."""
     writer: dict = {}
     seen: dict = {}
@@ -229,7 +234,7 @@ def _replay(instances: list[Instance], order: list[int]) -> tuple[dict, dict]:
     return seen, writer
 
 
-def _stale_reads(instances: list[Instance], times: list[tuple]) -> list[Clash]:
+def _stale_reads(instances: Log, times: list[tuple]) -> list[Clash]:
     original = list(range(len(instances)))
     seen, last = _replay(instances, original)
     seen_now, last_now = _replay(instances, sorted(original, key=lambda at: (times[at], at)))

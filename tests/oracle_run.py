@@ -38,6 +38,7 @@ class Program(Expressions):
         super().__init__()
         self.nest_line = nest
         self.around: list[Around] = []
+        self.loops: list[LoopAt] = []  # of the nest, in text order, without values
         self.in_nest = 0  # number of loops of the nest around what is being compiled
         self.returned: object = None
         self.globals = {}
@@ -141,7 +142,7 @@ class Program(Expressions):
         for node in _parameters(function.node):
             kind = self.type(node.type, lengths)
             if isinstance(kind, Array):
-                kind = Pointer(kind.of, kind.length)
+                kind = Pointer(kind.of)  # C11 6.7.6.3: the outermost extent of a parameter says nothing
             slot = self.names.slot()
             self.names.scopes[-1][node.name] = ("local", slot, kind)
             parameters.append((node.name, kind, slot))
@@ -353,6 +354,7 @@ class Program(Expressions):
         self.around.append(entry)
         if self.in_nest or is_nest:
             self.in_nest += 1
+            self.loops.append(LoopAt(*entry[:3], 0, 0, step, entry[6]))
         body = self.statement(node.stmt)
         self.around.pop()
         self.in_nest = max(0, self.in_nest - 1)

@@ -114,9 +114,11 @@ def test_tags_see_a_missing_and_an_extra_iteration():
 
 
 def test_undefined_behaviour_is_noticed():
-    far = "void f(int n, double a[n]) { for (int i = 0; i <= n; i++) a[i] = 0; }"
+    far = "void f(int n, double a[n][n]) { for (int i = 0; i <= n; i++) a[0][i] = 0; }"
     with pytest.raises(Undefined):
         final_tags(far, "f", {"n": 3})
+    outermost = "void f(int n, double a[n][n]) { for (int i = 0; i <= n; i++) a[i][0] = 0; }"
+    final_tags(outermost, "f", {"n": 3})  # C11 6.7.6.3, paragraph 7: a parameter's outermost extent is not kept
     overflow = "void f(int n, int *a) { for (int i = 0; i < 3; i++) a[i] = n + i; }"
     with pytest.raises(Undefined):
         final_tags(overflow, "f", {"n": 2147483646})
