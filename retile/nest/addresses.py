@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections import Counter
+from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
@@ -51,12 +51,24 @@ class _File:
     def __init__(self, source: Source) -> None:
         self.source = source
         self.unit = Unit(source)
+        self._per_line: dict[int, int] = {}
 
     @cached_property
     def loops(self) -> tuple[_For, ...]:
         """All loops of the file, in text order."""
+        return self._loops_of(self.source.functions)
+
+    def loops_on(self, line: int) -> tuple[_For, ...]:
+        """The loops on a line; only the functions that reach over it are parsed."""
+        spans = [(function, self.source.function_span(function)) for function in self.source.functions]
+        here = [function for function, span in spans
+                if span is None or span.line <= line <= self.source.at(span.end)[0]]
+        return tuple(loop for loop in self._loops_of(here) if loop.line == line)
+
+    @staticmethod
+    def _loops_of(functions: Iterable[Any]) -> tuple[_For, ...]:
         found = []
-        for function in self.source.functions:
+        for function in functions:
             inner: set[int] = set()
             for node in descendants(function.body):
                 if isinstance(node, c_ast.For):
@@ -66,7 +78,9 @@ class _File:
 
     def address(self, loop: _For) -> Address:
         """FILE:LINE, with the column where the line has several loops."""
-        shared = Counter(one.line for one in self.loops)[loop.line] > 1
+        if loop.line not in self._per_line:
+            self._per_line[loop.line] = len(self.loops_on(loop.line))
+        shared = self._per_line[loop.line] > 1
         return Address(self.source.path, loop.line, loop.column if shared else None)
 
     def read(self, loop: _For) -> Found:
@@ -94,7 +108,7 @@ def read_nest(source: Source, line: int, column: int | None = None) -> Found:
     RetileError if there is none, or if several start there and no column is given.
     """
     file = _File(source)
-    there = [loop for loop in file.loops if loop.line == line]
+    there = list(file.loops_on(line))
     if not there:
         raise RetileError(source.complaint(line, None, "no `for` starts on this line", _nearest(file, line)))
     if column is not None:

@@ -26,6 +26,8 @@ class Obligation:
     iterators: tuple[str, ...]
     node: Any  # where it comes from, for a refusal
     storages: tuple[str, ...] = ()
+    # How many facts were known when it arose: later ones may themselves rest on it, so they prove nothing of it.
+    known: int | None = None
 
 
 @dataclass
@@ -64,9 +66,9 @@ class Knowledge:
             self._ranges[name] = type_range(name, type_)
         return self._ranges[name]
 
-    def region(self, *formulas: Formula) -> Region:
-        """All that is known, and these formulas."""
-        both = AllOf((*self.facts, *formulas))
+    def region(self, *formulas: Formula, known: int | None = None) -> Region:
+        """All that is known, or the first ``known`` facts, and these formulas."""
+        both = AllOf((*tuple(self.facts)[:known], *formulas))
         return Region.where(both, self.ranges(formula_names(both)))
 
     def proves(self, domain: Formula, formula: Formula) -> bool:
@@ -77,13 +79,13 @@ class Knowledge:
     def condition(self, obligation: Obligation) -> Formula | None:
         """What must hold of the parameters; None if it always does, false (an empty ``AnyOf``) if it never can."""
         names = formula_names(obligation.formula)
-        known = self.region(obligation.domain, self.ranges(names))
+        known = self.region(obligation.domain, self.ranges(names), known=obligation.known)
         bad = (known - Region.where(obligation.formula)).without(obligation.iterators)
         if bad.is_empty():
             return None
         # Only sizes at which the domain has points count; elsewhere the shorter condition may say no needlessly.
         bad = bad.relative_to(known.without(obligation.iterators))
-        context = self.region(self.ranges(bad.names()))
+        context = self.region(self.ranges(bad.names()), known=obligation.known)
         good = (Region.where() - bad).relative_to(context)
         return AnyOf() if (good & context).is_empty() else good.formula()
 

@@ -13,7 +13,7 @@ def form_text(form: Affine, texts: Mapping[str, str] | None = None) -> str:
     for symbol, coefficient in sorted(form.terms, key=lambda term: term[1] < 0):
         body = _symbol_text(symbol, texts or {})
         if abs(coefficient) != 1:
-            body = f"{abs(coefficient)} * {body}"
+            body = f"{abs(coefficient)} * {body if isinstance(symbol, str) else f'({body})'}"
         parts.append(("- " if coefficient < 0 else "+ ") + body)
     if form.constant or not parts:
         parts.append(("- " if form.constant < 0 else "+ ") + str(abs(form.constant)))
@@ -25,7 +25,8 @@ def _symbol_text(symbol: Symbol, texts: Mapping[str, str]) -> str:
     if isinstance(symbol, str):
         text = texts.get(symbol, symbol)
         return text if _is_primary(text) else f"({text})"
-    return f"({form_text(symbol.numerator, texts)}) / {symbol.divisor}"
+    numerator = form_text(symbol.numerator, texts)
+    return f"{numerator if _is_primary(numerator) else f'({numerator})'} / {symbol.divisor}"
 
 
 def _is_primary(text: str) -> bool:

@@ -7,7 +7,6 @@ from typing import Any
 from ..affine import AnyOf, Formula
 from ..model import Access, Address, Assumption, AssumptionCode, LoopText, Nest, Refusal, Statement
 from ..source import Source
-from ..source.kinds import PointerTo
 from .expressions import Expressions
 from .headers import loop_text
 from .knowledge import Knowledge, Obligation
@@ -40,13 +39,13 @@ class NestReader:
         setting = Setting(self._unit, self._names, self._nest, knowledge, strict=False)
         setting.expressions, setting.places = Expressions(setting), Places(setting)
         setting.outer_iterators = outer_loops(self._nest, self._names)
+        facts_around(self._nest, self._unit, self._names, knowledge)
         walk = Walk(setting, self._nest)
         self.loop_names = tuple(walk.ids.values())
         refusals = [*walk.refusals, *self._directives()]
         if not walk.tree:
             self._refuse(refusals)
             return None
-        self._facts_around(knowledge)
         stored = store(setting, walk, self._nest)
         overlap_assumptions(setting, stored, self._stores(walk, stored))
         assumptions, unprovable = self._settle(setting, [*setting.obligations, *stored.obligations])
@@ -59,12 +58,6 @@ class NestReader:
     def _refuse(self, refusals: list[Refusal]) -> None:
         unique = dict.fromkeys(refusals)
         self.refusals = tuple(sorted(unique, key=lambda one: (one.line, one.column)))
-
-    def _facts_around(self, knowledge: Knowledge) -> None:
-        """Facts about the parameters that the nest has; those about others say nothing here."""
-        known = set(knowledge.parameters)
-        facts_around(self._nest, self._unit, self._names, knowledge)
-        del known
 
     @staticmethod
     def _stores(walk: Walk, stored: Stored) -> dict[str, Any]:
@@ -138,5 +131,3 @@ def _hopeless(obligation: Obligation) -> Refusal:
     return refusal(obligation.node, "wrap", "unsigned arithmetic wraps around here for all sizes; "
                                             "write it with signed numbers or in another order.")
 
-
-__all__ = ["NestReader", "PointerTo"]

@@ -115,8 +115,16 @@ class Setting:
 
     def define(self, binding: Binding, expression: Any, context: Context) -> None:
         """Note that this is the only assignment to a local inside the nest."""
-        if len(self.assigned(binding)) == 1 and binding.automatic and not self.names.address_taken(binding):
+        if len(self.assigned(binding)) != 1 or not binding.automatic or self.names.address_taken(binding):
+            return
+        if all(self._known_before(one, context) for one in descendants(expression) if isinstance(one, c_ast.ID)):
             self.definitions[binding] = Definition(expression, context)
+
+    def _known_before(self, node: Any, context: Context) -> bool:
+        """True if a name in a definition is an iterator, never changes, or was defined before."""
+        binding = self.names.of(node)
+        return binding is None or not binding.is_object or context.iterator(binding) is not None or \
+            self.is_frozen(binding) or self.definition(binding, context) is not None
 
     def definition(self, binding: Binding, context: Context) -> Definition | None:
         """The definition that every use here sees; None if there is no such."""
@@ -305,7 +313,8 @@ class Setting:
         if self.strict:
             return self.knowledge.proves(context.formula, formula)
         self.obligations.setdefault(
-            Obligation(code, formula, context.formula, context.loops, node, storages))
+            Obligation(code, formula, context.formula, context.loops, node, storages,
+                       len(self.knowledge.facts)))
         return True
 
     def narrow_product(self, poly: Poly, type_: CType, context: Context, node: Any) -> Poly | None:

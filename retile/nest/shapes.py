@@ -14,6 +14,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from math import gcd
+from typing import Any
 
 from ..affine import Affine, AllOf, AnyOf, Formula, Symbol, at_most, less
 from ..model import AssumptionCode
@@ -105,23 +106,38 @@ def _read(setting: Setting, accesses: Sequence[Subscript], strides: tuple[Stride
     lengths = _row_lengths(setting, strides)
     if lengths is None:
         return None
-    subscripts = tuple(_subscripts(setting, access.poly, strides) for access in accesses)
+    subscripts: list[tuple[Affine, ...]] = []
     obligations: dict[Obligation, None] = {}
-    for access, found in zip(accesses, subscripts, strict=True):
-        if found is None:
+    for access in accesses:
+        chosen = _chosen(setting, access, strides, lengths, storage)
+        if chosen is None:
             return None
+        subscripts.append(chosen[0])
+        obligations.update(dict.fromkeys(chosen[1:]))
+    return Grid(strides, tuple(subscripts), tuple(obligations))
+
+
+def _chosen(setting: Setting, access: Subscript, strides: tuple[Stride, ...], lengths: list[Affine],
+            storage: str) -> tuple[Any, ...] | None:
+    """The subscripts of one access, followed by the obligation that they need, if any; None if they never fit.
+
+    ``i*m + m - 1 - j`` is column m - 1 - j of row i, although the term m alone could be one row.
+    """
+    best: tuple[Any, ...] | None = None
+    for whole_rows in (True, False):
+        found = _subscripts(setting, access.poly, strides, whole_rows)
+        if found is None:
+            continue
         inside = AllOf(tuple(part for subscript, length in zip(found[1:], lengths, strict=True)
                              for part in (at_most(0, subscript), less(subscript, length))))
         obligation = Obligation(AssumptionCode.ROW_BOUND, inside, access.context.formula, access.context.loops,
                                 access.node, (storage,))
-        if obligation in obligations:
-            continue
         condition = setting.knowledge.condition(obligation)
-        if condition == AnyOf():
-            return None
-        if condition is not None:
-            obligations[obligation] = None
-    return Grid(strides, subscripts, tuple(obligations))
+        if condition is None:
+            return (found,)
+        if condition != AnyOf() and best is None:
+            best = (found, obligation)
+    return best
 
 
 def _row_lengths(setting: Setting, strides: tuple[Stride, ...]) -> list[Affine] | None:
@@ -137,16 +153,19 @@ def _row_lengths(setting: Setting, strides: tuple[Stride, ...]) -> list[Affine] 
     return lengths
 
 
-def _subscripts(setting: Setting, poly: Poly, strides: tuple[Stride, ...]) -> tuple[Affine, ...] | None:
-    """The terms of a polynomial divided among the strides."""
+def _subscripts(setting: Setting, poly: Poly, strides: tuple[Stride, ...],
+                whole_rows: bool) -> tuple[Affine, ...] | None:
+    """The terms of a polynomial divided among the strides; sizes alone are rows only if ``whole_rows``."""
     totals = [Poly() for _ in strides]
-    still, poly = _whole_rows(setting, poly, strides)
+    still, poly = _whole_rows(setting, poly, strides) if whole_rows else ({}, poly)
     for at, rows in still.items():
         totals[at] = totals[at] + rows
     for moving, sizes, coefficient in _parts(setting, poly) or ():
         for at, (factor, product) in enumerate(strides):
             rest = quotient(sizes, product)
             if rest is None or coefficient % factor or (moving is not None and rest):
+                continue
+            if moving is None and product and not whole_rows:
                 continue
             factors = monomial([*rest, *([moving] if moving is not None else [])])
             totals[at] = totals[at] + Poly.build({factors: coefficient // factor})

@@ -48,6 +48,8 @@ def facts_around(nest: Any, unit: Unit, names: FunctionNames, knowledge: Knowled
         return
     node = nest
     for parent in names.ancestors(nest):
+        if isinstance(parent, (c_ast.Case, c_ast.Default)):
+            return  # a switch may jump past what stands above
         if isinstance(parent, c_ast.If) and node is not parent.cond:
             _condition(parent.cond, parent, node is parent.iftrue, unit, names, knowledge)
         elif isinstance(parent, c_ast.For) and node is parent.stmt:
