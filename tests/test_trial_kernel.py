@@ -105,6 +105,22 @@ ACCEPTED = {
     "pointers to rows": (
         "void f(int n, int m, double (*z)[m]) {\n for (int i = 0; i < n; i++)\n  for (int j = 0; j < m; j++)\n"
         "   z[i][j] *= 2;\n}\n", "*= 2", "*= 3"),
+    "a pointer that the function works out": (
+        "void f(long n, double *z) {\n double *const end = z + n, *last = end - 1;\n for (long i = 0; i < n; i++)\n"
+        "  last[-i] *= 2;\n}\n", "*= 2", "*= 3"),
+    "pointers to rows that lie anywhere": (
+        "void f(double **z, int n, int m) {\n for (int i = 0; i < n; i++)\n  for (int j = 0; j < m; j++)\n"
+        "   z[i][j] *= 2;\n}\n", "*= 2", "*= 3"),
+    "structs within structs": (
+        "typedef struct { double x, y; } mark;\ntypedef struct { int rows, cols; double **row; float w[3][3]; mark m; } chart;\n"
+        "void f(chart *c) {\n for (int i = 0; i < c->rows; i++)\n  for (int j = 0; j < c->cols; j++)\n"
+        "   c->row[i][j] += c->w[1][2] * c->m.y;\n}\n", "c->m.y", "c->m.x"),
+    "an array of pointers": (
+        "void f(int n, double *z[8]) {\n for (int k = 0; k < 8; k++)\n  for (int i = 0; i < n; i++)\n   z[k][i] *= 2;\n}\n",
+        "*= 2", "*= 3"),
+    "enumerations": (
+        "enum kind { A, B, C };\nvoid f(int n, enum kind *k) {\n for (int i = 0; i < n; i++)\n  k[i] = k[i] == A ? B : C;\n}\n",
+        "B : C", "C : B"),
     "an iterator used afterwards": (
         "int f(int n, double *z) {\n int i;\n for (i = 0; i < n; i++)\n  z[i] *= 2;\n return i;\n}\n", "i < n; i++)", "i < n; i++); i = 0; if (i)"),
     "a sum that is returned": (

@@ -66,7 +66,7 @@ class Variable:
     node: Any  # its type node
     place: str  # ``argument``, ``local``, ``global``
     constant: bool  # the object itself is const
-    initialised: bool
+    init: Any  # its initializer, if it has one
     defined: bool = True  # False for ``extern`` without a definition in the file
 
 
@@ -218,13 +218,13 @@ def _enter(scope: Scope, item: Any, place: str) -> None:
         return
     held = "global" if place == "local" and extern else place
     scope.typedefs.pop(item.name, None)
-    node, initialised = item.type, item.init is not None
+    node, init = item.type, item.init
     if isinstance(node, c_ast.ArrayDecl) and node.dim is None and isinstance(item.init, c_ast.InitList):
         node = copy.copy(node)
         node.dim = c_ast.Constant("int", str(len(item.init.exprs)))
     if old is not None and place == "global":
-        initialised = initialised or old.initialised
-    scope.variables[item.name] = Variable(item.name, node, held, _is_const(node), initialised, not extern)
+        init = init if init is not None else old.init
+    scope.variables[item.name] = Variable(item.name, node, held, _is_const(node), init, not extern)
 
 
 def _enter_tags(scope: Scope, node: Any) -> Any:

@@ -23,12 +23,12 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
-from pycparser import c_ast
+from pycparser import c_ast, c_generator
 
 from ..model import Nest, RetileError, ScalarClass, StorageKind
 from ..templating import environment
 from .declared import Arithmetic, Array, Pointer, Record, Scope, Variable, names_in, scope_at, type_text, walk
-from .memory import Memory, declared_type, memory_of
+from .memory import Memory, declared_type, memory_of, plain
 
 if TYPE_CHECKING:
     from ..source import Source
@@ -47,6 +47,7 @@ class Kernel:
     scope: Scope
     memory: Memory
     prefix: str  # no name of the file begins with it
+    derived: tuple[Variable, ...]  # pointers that the function works out from others before the nest
     outs: tuple[Variable, ...]  # scalars whose value after the nest can be seen
     kept: frozenset[str]  # functions whose bodies stay
 
@@ -86,7 +87,8 @@ class Kernel:
         lines = "".join(_include(header) for header in includes)
         lines = f"\n{lines}{self._line(span.line)}" if lines else ""
         types = " ".join(self.scope.local_types)
-        return f"{self._emptied(start, span.start)}}} {lines}{types} void {self.prefix}_kernel({self._parameters()}) {{ "
+        head = f"{types} void {self.prefix}_kernel({self._parameters()}) {{ {' '.join(map(_with_init, self.derived))} "
+        return f"{self._emptied(start, span.start)}}} {lines}{head}"
 
     def _closing(self, start: int, end: int) -> str:
         back = "".join(f" *{self._out(variable)} = {variable.name};" for variable in self.outs)
@@ -139,13 +141,14 @@ def kernel_of(source: Source, nest: Nest, variant_texts: Iterable[str] = ()) -> 
     scope = scope_at(source.ast, function, node)
     _without_shadowed(scope, node)
     named = names_in(node).union(*(_WORD.findall(text) for text in variant_texts))
+    derived = _derived(nest, scope, named)
     try:
-        memory = memory_of(scope, node, named)
+        memory = memory_of(scope, node, named, derived)
     except RetileError as problem:
         raise RetileError(source.complaint(nest.span.line, nest.span.column, str(problem),
                                            "move the nest into a function of its own")) from None
-    return Kernel(source, nest, node, function, scope, memory, _free_prefix(nest), _outs(nest, memory),
-                  _called(source, node))
+    return Kernel(source, nest, node, function, scope, memory, _free_prefix(nest), derived,
+                  _outs(nest, memory), _called(source, node))
 
 
 def _find(source: Source, nest: Nest) -> tuple[Any, Any]:
@@ -156,6 +159,28 @@ def _find(source: Source, nest: Nest) -> tuple[Any, Any]:
             if isinstance(node, c_ast.For) and source.span(node) == nest.span:
                 return function, node
     raise RetileError(f"{nest.address}: the nest is not in this file any more; read it again")
+
+
+def _derived(nest: Nest, scope: Scope, named: set[str]) -> tuple[Variable, ...]:
+    """Pointers such as ``end = z + n`` that the nest's accesses have been traced through, in order of declaration."""
+    roots = {plain(storage.object).split(".")[0] for storage in nest.storages}
+    found: list[Variable] = []
+    waiting = set(named)
+    while waiting:
+        variable = scope.variables.get(waiting.pop())
+        if variable is None or variable in found or variable.name in roots or variable.place != "local" \
+                or variable.init is None or not isinstance(declared_type(scope, variable), Pointer):
+            continue
+        if not any(isinstance(part, c_ast.FuncCall) for part in walk(variable.init)):
+            found.append(variable)
+            waiting |= names_in(variable.init)
+    order = list(scope.variables)
+    return tuple(sorted(found, key=lambda variable: order.index(variable.name)))
+
+
+def _with_init(variable: Variable) -> str:
+    value = c_generator.CGenerator().visit(variable.init)
+    return f"{type_text(variable.node, variable.name, qualifiers=True)} = {value};"
 
 
 def _without_shadowed(scope: Scope, node: Any) -> None:

@@ -219,6 +219,8 @@ class _Sizing:
             else:
                 strides = self._strides(block)
             taken, forms = forms[:len(strides)], forms[len(strides):]
+            if not taken:  # the access ends here: it reads a pointer to a row
+                break
             whole = sum((form * stride for form, stride in zip(taken, strides)), Affine())
             self._note(block, *_spread(domain, whole))
 

@@ -8,7 +8,8 @@ it points to, and the doubles that the struct's member points to; ``double **row
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+import re
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -89,18 +90,19 @@ class Memory:
 def plain(text: str) -> str:
     """The name of a cell as used here: ``g->depth`` is ``g.depth``, blanks and parentheses go.
 
-    >>> plain("( *g ).rows"), plain("to->cols")
-    ('g.rows', 'to.cols')
+    >>> plain("( *g ).rows"), plain("to->cols"), plain("rows[]")
+    ('g.rows', 'to.cols', 'rows')
     """
-    return "".join(text.split()).replace("->", ".").replace("(", "").replace(")", "").replace("*", "")
+    return re.sub(r"[\s()*]|\[\]", "", text.replace("->", "."))
 
 
-def memory_of(scope: Scope, nest: Any, named: Iterable[str]) -> Memory:
+def memory_of(scope: Scope, nest: Any, named: Iterable[str], derived: Sequence[Variable] = ()) -> Memory:
     """The memory for a nest (a For node) and for variants that use the names ``named``.
 
-    Raises RetileError, naming the variable, for objects that a trial cannot make.
+    ``derived`` are pointers that the kernel works out from others, as the function did.  Raises RetileError, naming the
+    variable, for objects that a trial cannot make.
     """
-    return _Builder(scope, nest).build(named)
+    return _Builder(scope, nest, derived).build(named)
 
 
 def path_of(scope: Scope, node: Any) -> tuple[str, Type] | None:
@@ -166,21 +168,25 @@ def declared_type(scope: Scope, variable: Variable) -> Type:
 class _Builder:
     """Gives every variable a block and follows the pointers that the nest follows."""
 
-    def __init__(self, scope: Scope, nest: Any) -> None:
+    def __init__(self, scope: Scope, nest: Any, derived: Sequence[Variable]) -> None:
         self.memory = Memory(scope)
         self.scope = scope
         self.nest = nest
+        self.derived = {variable.name: variable for variable in derived}
         self.paths = _Paths(scope)
         self.members: set[str] = set()
 
     def build(self, named: Iterable[str]) -> Memory:
-        for node in walk(self.nest):
+        reached = [c_ast.UnaryOp("*", variable.init) for variable in self.derived.values()]
+        for node in (part for whole in (self.nest, *reached) for part in walk(whole)):
             found = self.paths.of(node)
             if found:
                 self.members.add(found[0])
-        wanted = [name for name in self.scope.variables if name in set(named)]
+        names = set(named).union(*(names_in(variable.init) for variable in self.derived.values()))
+        wanted = [name for name in self.scope.variables if name in names]
         for name in self._in_order(wanted):
-            self._variable(self.scope.variables[name])
+            if name not in self.derived:
+                self._variable(self.scope.variables[name])
         return self.memory
 
     def _in_order(self, names: list[str]) -> list[str]:

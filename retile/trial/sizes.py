@@ -98,10 +98,18 @@ def _wishes(bench: Bench, chunks: Mapping[str, Sequence[int]]) -> Iterator[dict[
     bounds = {name for loop in bench.nest.loops for name in bound_names(loop.first) | bound_names(loop.last)}
     every = sorted({chunk for sizes in chunks.values() for chunk in sizes}, reverse=True)
 
+    outer = {parameter.symbol for parameter in bench.direct if parameter.kind == "outer iterator"}
+
     def completed(wish: Mapping[str, int], turn: int) -> dict[str, int]:
-        """Names outside all loop bounds are no sizes: small values in turn, and one that leaves gaps between rows."""
-        other = (0, 1, 2, max(wish.values(), default=0) + 3)[turn % 4]
-        return {name: wish[name] if name in bounds or name in bench.hidden else other for name in names}
+        """Names outside all loop bounds are no sizes: small values in turn, and one that leaves gaps between rows.
+
+        Outer iterators are small too, or nothing would be left to do where a loop begins at one.
+        """
+        largest = max(wish.values(), default=0)
+        other = (0, 1, 2, largest + 3)[turn % 4]
+        inside = (0, 1, 2, largest // 2)[turn % 4]
+        return {name: inside if name in outer else wish[name] if name in bounds or name in bench.hidden else other
+                for name in names}
 
     turn = 0
     unequal = {name: _UNEQUAL[at % len(_UNEQUAL)] for at, name in enumerate(names)}
