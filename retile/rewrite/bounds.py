@@ -53,12 +53,10 @@ def with_extremum(scope: Scope, symbol: str, variable: Expression, kind: str, fo
     """
     value = Affine.of(symbol)
     sides = tuple(at_most(value, form) if kind == "min" else at_most(form, value) for form in forms)
-    choose = min if kind == "min" else max
-    ranges = [scope.best_range(form) for form in forms]
-    lows, highs = [low for low, _ in ranges], [high for _, high in ranges]
-    interval = (None if None in lows else choose(low for low in lows if low is not None),
-                None if None in highs else choose(high for high in highs if high is not None))
-    limits = tuple(at_most(low, value) for low in interval[:1] if low is not None)
+    whole = scope.naming(symbol, variable, extremum_of(symbol, kind, forms))
+    interval = whole.range(value)
+    limits = (*(at_most(low, value) for low in interval[:1] if low is not None),
+              *(at_most(value, high) for high in interval[1:] if high is not None))
     return scope.naming(symbol, variable, *sides, *limits, interval=interval)
 
 

@@ -354,6 +354,11 @@ def comparison(left: Affine, relation: str, right: Affine, scope: Scope,
     sides = [(left, relation, right)]
     if right.terms and (relation, right.constant) in (("<", 1), (">", -1)):
         sides.insert(0, (left, relation + "=", right - right.constant))
+    form = left - right
+    apart = tuple(Affine.build({s: abs(c) for s, c in form.terms if c * sign > 0}, max(form.constant * sign, 0))
+                  for sign in (1, -1))
+    if left not in aliases and right not in aliases:
+        sides.append((apart[0], relation, apart[1]))
     sides.append((left - right.constant, relation, right - right.constant))
     if left.constant and rest.terms:
         sides.append((rest, relation, right - left.constant))

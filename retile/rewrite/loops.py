@@ -122,6 +122,13 @@ class Loops:
                 base = self._base(loop)
                 self._deepest[base] = max(loop.level, self._deepest.get(base, 0))
 
+    def source(self, id: str) -> LoopText:
+        """A loop of the nest; its type is spelled as the user did in its header, where the header says."""
+        loop = self._nest.loop(id)
+        words = self._layout.header(loop).variable.removesuffix(loop.iterator).split()
+        spelling = " ".join(word for word in words if word not in ("register", "const", "volatile"))
+        return replace(loop, type=replace(loop.type, spelling=spelling)) if loop.declared_in_for and spelling else loop
+
     # ---------------------------------------------------------------- names
 
     def _base(self, loop: Loop) -> str:
@@ -158,7 +165,7 @@ class Loops:
         if loop.role is Role.CHUNK:
             return self._chunk(loop, place)
         if loop.symbol in self._ids:
-            source = self._nest.loop(loop.symbol)
+            source = self.source(loop.symbol)
             if self.unchanged(loop):
                 inside = self._entered(loop, place, Expression(source.iterator, source.type))
                 text = self._layout.text[source.header.start:source.header.end]
@@ -179,7 +186,7 @@ class Loops:
 
     def _reached(self, loop: Loop, place: Place) -> Place:
         """Where the original runs this loop too, the value with which it ends fits its variable."""
-        source = self._nest.loop(loop.of)
+        source = self.source(loop.of)
         if not set(source.outer) <= place.around or source.relation not in ("<=", ">=") or abs(source.step) != 1:
             return place
         if not isinstance(source.last, Affine) or not isinstance(source.first, Affine):
@@ -397,7 +404,7 @@ class Loops:
     def _sum(self, loop: Loop, place: Place) -> Opened:
         """A loop over a skewed sum, which has no variable in the user's text."""
         work = Locals(place)
-        source = self._nest.loop(loop.of)
+        source = self.source(loop.of)
         name = self.name(loop.symbol, self._base(loop))
         kind = "max" if loop.step > 0 else "min"
         near = self._near(loop, work, LONG_LONG)
@@ -440,7 +447,7 @@ class Loops:
 
     def _chunk(self, loop: Loop, place: Place) -> Opened:
         """A loop from chunk to chunk, with the end of the chunk where the loops inside want it."""
-        source = self._nest.loop(loop.of)
+        source = self.source(loop.of)
         skewed = "(" in loop.symbol
         shift = 0 if skewed else self._shift(source)
         work = Locals(place)

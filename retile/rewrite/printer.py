@@ -91,7 +91,7 @@ class Printer:
 
     def _assigned(self, loop: Loop, place: Place, indent: str) -> list[str]:
         """The one iteration of a loop, its iterator set before it."""
-        source = self._nest.loop(loop.symbol)
+        source = self._loops.source(loop.symbol)
         remarks = self._take(loop)
         value = self._loops.in_type(Affine.of(loop.lower), source.type, place.scope) \
             if isinstance(loop.lower, Affine) else None
@@ -104,17 +104,27 @@ class Printer:
         return lines + self.nodes(loop.body, Place(scope, place.limits, place.around | {loop.symbol}), indent)
 
     def _body(self, loop: Loop, opened: Opened, indent: str, behind: str) -> list[str]:
-        inner = indent + self._style.step
         given, place = self._given(loop, opened.inside)
         only = loop.body[0] if len(loop.body) == 1 else None
+        inner = indent + (self._style.braced_step if self._surely_braced(loop, opened, bool(given)) else self._style.step)
         body = self._indented((*opened.first, *given), inner)
         single = isinstance(only, Loop) and self._single(only)
         body += self._assigned(only, place, inner) if isinstance(only, Loop) and single else \
             self.nodes(loop.body, place, inner)
-        source = self._nest.loop(loop.of)
-        braced = self._layout.braced(source) or len(loop.body) != 1 or bool(opened.first or given) or single or \
-            self._needs_braces(loop.body[0], body)
+        braced = self._surely_braced(loop, opened, bool(given)) or single or self._needs_braces(loop.body[0], body)
         return self._style.block(opened.header, body, indent, braced, behind)
+
+    def _surely_braced(self, loop: Loop, opened: Opened, given: bool) -> bool:
+        """True if the body gets braces, as far as that shows before it is printed.
+
+        Where the style indents braces, so that a body's place depends on them, every doubtful loop gets some.
+        """
+        if self._layout.braced(self._nest.loop(loop.of)) or len(loop.body) != 1 or opened.first or given:
+            return True
+        inner = loop.body[0]
+        plain = isinstance(inner, Verbatim) and self._layout.statement_count(inner) == 1 or \
+            isinstance(inner, Loop) and inner.symbol in self._ids and self._loops.unchanged(inner)
+        return not plain and self._style.braced_step != self._style.step
 
     def _needs_braces(self, node: Node, body: list[str]) -> bool:
         """True for a body of more than one statement, or one that a reader could take for it."""
@@ -132,7 +142,7 @@ class Printer:
         lines: list[str] = []
         wanted = dict(_instances(loop.body))
         for name, form in wanted.items():
-            source = self._nest.loop(name)
+            source = self._loops.source(name)
             if name in place.around or form == Affine.of(name) or not place.scope.sees(form.names()):
                 continue
             value = self._loops.in_type(form, source.type, place.scope)
@@ -179,7 +189,7 @@ class Printer:
             text = self._style.wrapped(condition(guard.condition, place.scope), indent + "if (")
         else:
             raise InternalError(f"{self._nest.address}: a condition has no text")
-        inner = indent + self._style.step
+        inner = indent + self._style.braced_step
         body = self.nodes(guard.body, inside, inner)
         # always in braces: an else of the user's further out must not find this if
         lines = self._style.block(f"if ({text})", body, indent)

@@ -19,6 +19,7 @@ class Style:
 
     eol: str
     step: str  # what a body is indented by
+    braced_step: str  # what a body in braces is indented by, which differs where braces are indented themselves
     brace: str  # ``end``: on the header's line; ``own``: on a line of its own
     brace_step: str  # what a brace on a line of its own is indented by
     line_comments: bool  # remarks are written with ``//``
@@ -60,13 +61,20 @@ def read_style(text: str, nest: Nest, layout: NestText) -> Style:
     brace, brace_step = _braces(text, nest, layout)
     start = nest.span.start
     crlf = text.count("\r\n")
-    return Style("\r\n" if crlf and crlf * 2 > text.count("\n") else "\n", _step(nest, layout, brace_step), brace, brace_step,
-                 _line_comments(text, start))
+    eol = "\r\n" if crlf and crlf * 2 > text.count("\n") else "\n"
+    plain, braced = (_step(nest, layout, braces) for braces in (False, True))
+    if brace_step:
+        plain = plain or brace_step
+        braced = braced or plain + brace_step
+    step = plain or braced or _own_step(nest, layout)
+    return Style(eol, step, braced or step, brace, brace_step, _line_comments(text, start))
 
 
-def _step(nest: Nest, layout: NestText, brace_step: str) -> str:
-    """The indentation of a body against its header."""
+def _step(nest: Nest, layout: NestText, braced: bool) -> str:
+    """The indentation of a body, in braces or not, against its header; empty if the nest shows none."""
     for loop in nest.loops:
+        if layout.braced(loop) is not braced:
+            continue
         outer = layout.indentation(loop.span.start)
         spans = (*(inner.span for inner in nest.loops), *(statement.span for statement in nest.statements))
         for span in spans:
@@ -76,6 +84,11 @@ def _step(nest: Nest, layout: NestText, brace_step: str) -> str:
             if indent.startswith(outer) and len(indent) > len(outer):
                 return indent[len(outer):]
             break
+    return ""
+
+
+def _own_step(nest: Nest, layout: NestText) -> str:
+    """The indentation of the nest itself, taken for one level."""
     own = layout.indentation(nest.span.start)
     return "\t" if own.startswith("\t") else " " * (min(len(own), 8) or 4)
 

@@ -147,7 +147,7 @@ class _Order:
         facts = tuple(a.condition for a in assumptions if a.condition is not None)
         indent = layout.indentation(self.nest.span.start)
         tests = Tests((), ()) if self.trust else tests_of(self.nest, assumptions, before, names)
-        inner = indent + style.step if tests.conditions else indent
+        inner = indent + style.braced_step if tests.conditions else indent
         scope = before.knowing(*facts) if facts else before
         lines, homeless = self._loops(layout, style, names, scope, inner)
         lines += restored(self.nest, layout, style, scope, inner)
@@ -208,16 +208,16 @@ class _Order:
             word = "Tested here" if tested else "Assumed"
             facts = "; ".join(dict.fromkeys(assumption.text.rstrip(".") for assumption in assumptions))
             lines += textwrap.wrap(f"{word}: {facts}.", WIDTH, break_long_words=False, break_on_hyphens=False)
-        return [*lines, f"Made by: {self._command()}"]
+        return [*lines, f"Made by: {self._command(assumptions)}"]
 
-    def _command(self) -> str:
+    def _command(self, assumptions: tuple[Assumption, ...]) -> str:
         file = self.nest.address.file
         if os.path.isabs(file) or file.startswith(".."):
             file = os.path.basename(file)
         words = ["retile", "rewrite", str(replace(self.nest.address, file=file)), self.plan.order_text]
         if self.remainder != "clamp":
             words += ["--remainder", self.remainder]
-        if self.trust:
+        if self.trust and assumptions:
             words.append("--trust")
         return shlex.join([*words, *self.source.call.flags])
 
