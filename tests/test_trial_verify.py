@@ -7,6 +7,7 @@ import pytest
 from trial_case import FAST, case, of_file
 
 from retile.model import Assumption, AssumptionCode, Judgement, RetileError, Verdict
+from retile.source import CompilerCall
 from retile.trial import Settings, verify_all
 from retile.trial.build import can_sanitize, strict_flags
 
@@ -33,7 +34,7 @@ def mirror(tmp_path):
 
 def test_a_right_variant_passes_under_the_sanitizers(mirror):
     found = mirror.accepts(mirror.variant(CHUNKED, PLAN), STRICT)
-    assert found.sanitized == can_sanitize("cc")
+    assert found.sanitized == can_sanitize(("cc",))
     assert found.difference is None and found.failure is None
 
 
@@ -71,7 +72,7 @@ def test_the_first_difference_names_array_place_values_and_sizes(mirror):
     assert str(difference).startswith("to[2][1] is 1234.5, the original leaves ")
 
 
-needs_sanitizers = pytest.mark.skipif(not can_sanitize("cc"), reason="this compiler has no sanitizers")
+needs_sanitizers = pytest.mark.skipif(not can_sanitize(("cc",)), reason="this compiler has no sanitizers")
 
 
 @needs_sanitizers
@@ -203,7 +204,7 @@ def test_rows_also_lie_apart(tmp_path):
 
 
 def test_without_sanitizers_it_is_said(mirror, monkeypatch):
-    monkeypatch.setattr("retile.trial.verification.can_sanitize", lambda cc: False)
+    monkeypatch.setattr("retile.trial.verification.can_sanitize", lambda command: False)
     found = mirror.accepts(mirror.variant(CHUNKED, PLAN), STRICT)
     assert not found.sanitized and any("no sanitizers" in note for note in found.notes)
 
@@ -213,3 +214,12 @@ def test_another_compiler(mirror):
     clang = replace(STRICT, cc="clang")
     mirror.accepts(mirror.variant(CHUNKED, PLAN), clang)
     mirror.tells_apart(mirror.variant(CHUNKED.replace("? i_from + 16", "? i_from + 15"), PLAN), clang)
+
+
+def test_a_compiler_with_arguments_in_a_directory_of_its_own(tmp_path):
+    (tmp_path / "deep").mkdir()
+    (tmp_path / "deep" / "scale.h").write_text("#define SCALE 3\n")
+    call = CompilerCall("cc -DTWO=2", ("-Ideep", "-O3", "-ffast-math"), str(tmp_path))
+    one = case(tmp_path, "#include <scale.h>\nvoid f(int n, double *z) {\n for (int i = 0; i < n; i++)\n"
+                         "  z[i] = z[i] * SCALE + TWO;\n}\n", call)
+    one.tells_apart(one.replaced("SCALE", "TWO"))

@@ -13,9 +13,14 @@ from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
+from typing import TYPE_CHECKING
 
+from ..host import ask
 from ..model import RetileError
 from ..templating import environment
+
+if TYPE_CHECKING:
+    from ..source import CompilerCall
 
 _SANITIZERS = ("-fsanitize=address,undefined", "-fno-sanitize-recover=all")
 # Size zero belongs to the domain, also where a variable-length array may formally not have it.
@@ -38,17 +43,16 @@ class Workshop:
     """A folder, a compiler and the flags of the user's file."""
 
     folder: Path
-    cc: str
-    unit_flags: tuple[str, ...]  # -D, -I, -std of the file
+    call: CompilerCall  # the compiler and the flags of the file: -D, -I, -std
     beside: str  # folder of the user's file, where its quoted includes are looked for
 
     def kernel(self, name: str, text: bytes, flags: Sequence[str]) -> Built:
-        """Compile a kernel's text to a library that can be loaded beside others."""
+        """Compile a kernel's text to a library that can be loaded beside others; ``flags`` are all flags there are."""
         source, target = self.folder / f"{name}.c", self.folder / f"{name}.so"
         source.write_bytes(text)
         threads = ("-fopenmp",) if re.search(rb"^\s*#\s*pragma\s+omp\b", text, re.MULTILINE) else ()
-        said = run([self.cc, *self.unit_flags, *flags, *threads, "-w", "-fPIC", "-shared", "-fvisibility=hidden",
-                    "-iquote", self.beside, "-o", str(target), str(source), "-lm"])
+        said = run([*self.call.command, *flags, *threads, "-w", "-fPIC", "-shared", "-fvisibility=hidden",
+                    "-iquote", self.beside, "-o", str(target), str(source), "-lm"], self.call.directory)
         return Built(target) if said is None else Built(None, said)
 
 
@@ -68,11 +72,11 @@ def strict_flags(flags: Sequence[str], sanitize: bool) -> list[str]:
     return [*kept, "-O1", *(_SANITIZE if sanitize else ()), "-ffp-contract=off"]
 
 
-def run(command: Sequence[str]) -> str | None:
-    """Run a compiler; None if all went well, else what it said (its first lines)."""
+def run(command: Sequence[str], directory: str | None = None) -> str | None:
+    """Run a compiler in a directory; None if all went well, else what it said (its first lines)."""
     try:
         done = subprocess.run(list(command), capture_output=True, text=True, errors="replace", timeout=_SECONDS,
-                              stdin=subprocess.DEVNULL, env={**os.environ, "LC_ALL": "C"})
+                              stdin=subprocess.DEVNULL, env={**os.environ, "LC_ALL": "C"}, cwd=directory)
     except FileNotFoundError:
         raise RetileError(f"the compiler {command[0]} is not there; name another with --cc") from None
     except subprocess.TimeoutExpired:
@@ -86,24 +90,24 @@ def run(command: Sequence[str]) -> str | None:
 
 
 @cache
-def harness(cc: str, sanitize: bool, prefix: str) -> Path:
+def harness(command: tuple[str, ...], sanitize: bool, prefix: str) -> Path:
     """The program that runs kernels, built once per process; RetileError if it cannot be built."""
     folder = _shared_folder()
     stem = f"harness{len(list(folder.glob('*.c')))}"
     source, target = folder / f"{stem}.c", folder / stem
     source.write_text(environment().get_template("trial_harness.c.j2").render(p=prefix), encoding="utf-8")
     flags = ("-fsanitize=address,undefined", "-O1") if sanitize else ("-O2",)
-    said = run([cc, "-std=c11", "-w", *flags, "-o", str(target), str(source), "-ldl", "-lm"])
+    said = run([*command, "-std=c11", "-w", *flags, "-o", str(target), str(source), "-ldl", "-lm"])
     if said is not None:
-        raise RetileError(f"{cc} cannot build the program that runs the trials:\n{said}")
+        raise RetileError(f"{command[0]} cannot build the program that runs the trials:\n{said}")
     return target
 
 
 @cache
-def can_sanitize(cc: str) -> bool:
+def can_sanitize(command: tuple[str, ...]) -> bool:
     """True if programs built with the address and undefined-behaviour sanitizers run here."""
     try:
-        program = harness(cc, True, "trial")
+        program = harness(command, True, "trial")
         done = subprocess.run([str(program)], capture_output=True, text=True, timeout=20, stdin=subprocess.DEVNULL,
                               env=sanitizer_environment())
     except (RetileError, OSError, subprocess.SubprocessError):
@@ -119,11 +123,10 @@ def sanitizer_environment() -> dict[str, str]:
 
 
 @cache
-def compiler_version(cc: str) -> str | None:
+def compiler_version(command: tuple[str, ...]) -> str | None:
     """The first line of what the compiler says about itself."""
-    from ..host import compilers
-    found = compilers([cc])
-    return found[0].version if found else None
+    said = ask([*command, "--version"])
+    return said.splitlines()[0].strip() if said and said.strip() else None
 
 
 @cache

@@ -59,11 +59,10 @@ def workshop(source: Source, settings: Settings) -> Iterator[Workshop]:
     """A scratch folder with a compiler; the folder is gone afterwards, whatever happens."""
     folder = Path(tempfile.mkdtemp(prefix="retile-trial-"))
     try:
-        cc = settings.cc or source.call.cc
-        if shutil.which(cc) is None:
-            raise RetileError(f"the compiler {cc} is not there; name another with --cc")
-        beside = os.path.dirname(os.path.abspath(source.path))
-        yield Workshop(folder, cc, tuple(source.call.flags), beside)
+        call = replace(source.call, cc=settings.cc or source.call.cc)
+        if shutil.which(call.command[0]) is None:
+            raise RetileError(f"the compiler {call.cc} is not there; name another with --cc")
+        yield Workshop(folder, call, os.path.dirname(os.path.abspath(source.path)))
     finally:
         shutil.rmtree(folder, ignore_errors=True)
 
@@ -196,7 +195,8 @@ class _State:
     def _time(self, original: bytes, texts: list[bytes]) -> None:
         good = [number for number, trial in enumerate(self.trials) if trial.failure is None]
         self.tell("build", 0, 1, f"{len(good) + 1} kernels")
-        baseline, *built = self.shop.kernels("timed", [original, *(texts[number] for number in good)], self.settings.flags)
+        baseline, *built = self.shop.kernels("timed", [original, *(texts[number] for number in good)],
+                                               [*self.shop.call.flags, *self.settings.flags])
         if baseline.path is None:
             raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
         paths = [baseline.path]
@@ -210,7 +210,7 @@ class _State:
 
     def _clock(self, paths: list[Path]) -> None:
         prefix = self.bench.kernel.prefix
-        program = harness(self.shop.cc, False, prefix)
+        program = harness(self.shop.call.command, False, prefix)
         fills = {plain(name): way for name, way in self.settings.fills}
         verifier = Verifier(self.bench, self.shop, replace(self.settings, sanitize=False))
         self.fill = verifier.choose_fill(paths[0], program, self.case)
@@ -258,8 +258,8 @@ class _State:
         nest, settings = self.bench.nest, self.settings
         return Campaign(
             address=str(nest.address), host=host.describe().as_json(), sizes=tuple(self.case.sizes.items()),
-            baseline_samples=baseline, trials=tuple(self.trials), compiler=self.shop.cc,
-            compiler_version=compiler_version(self.shop.cc), flags=(*self.shop.unit_flags, *settings.flags),
+            baseline_samples=baseline, trials=tuple(self.trials), compiler=self.shop.call.cc,
+            compiler_version=compiler_version(self.shop.call.command), flags=(*self.shop.call.flags, *settings.flags),
             seed=settings.seed, fills=settings.fills, fill=self.fill.way,
             source_sha256=hashlib.sha256(source.encode(source.text)).hexdigest(),
             measured_at=datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ"), interrupted=self.interrupted,

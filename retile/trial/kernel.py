@@ -101,8 +101,8 @@ class Kernel:
     def _emptied(self, start: int, end: int) -> str:
         """The text between two offsets without all but line ends and directives."""
         parts, at = [], start
-        for token in self.source.tokens:
-            if token.kind == "directive" and start <= token.start and token.end <= end:
+        for token in self.source.tokens_in(start, end):
+            if token.kind == "directive" and token.end <= end:
                 parts += ["\n" * self.source.text.count("\n", at, token.start), token.text]
                 at = token.end
         return "".join(parts) + "\n" * self.source.text.count("\n", at, end)

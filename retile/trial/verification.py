@@ -62,10 +62,10 @@ class Verifier:
 
     def __init__(self, bench: Bench, workshop: Workshop, settings: Settings) -> None:
         self.bench, self.workshop, self.settings = bench, workshop, settings
-        self.sanitize = settings.sanitize and can_sanitize(workshop.cc)
+        self.sanitize = settings.sanitize and can_sanitize(workshop.call.command)
         self.prefix = bench.kernel.prefix
-        self.program = harness(workshop.cc, self.sanitize, self.prefix)
-        self.flags = strict_flags(settings.flags, self.sanitize)
+        self.program = harness(workshop.call.command, self.sanitize, self.prefix)
+        self.flags = strict_flags([*workshop.call.flags, *settings.flags], self.sanitize)
         self.fills = {plain(name): way for name, way in settings.fills}
         self.notes: list[str] = []
 
@@ -203,7 +203,7 @@ class Verifier:
         if candidate.open:
             notes += uncovered(self.bench, [candidate.plan], cases)
         if self.settings.sanitize and not self.sanitize:
-            notes.append(f"{self.workshop.cc} has no sanitizers here; only the borders of arrays were watched")
+            notes.append(f"{self.workshop.call.cc} has no sanitizers here; only the borders of arrays were watched")
         failure = candidate.failure
         if candidate.open and not cases:
             failure = "the original ran at none of the sizes"
