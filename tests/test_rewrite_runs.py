@@ -1,0 +1,142 @@
+"""Variants against their originals: compiled strictly, run under the sanitizers, at sizes around the chunks.
+
+The body counts and mixes, so that an instance that is missing, repeated or out of its domain shows in the result.
+"""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from rewriting import case_of, compile_and_run, compilers, renamed, together
+
+SIZES = "0, 1, 2, 3, 7, 8, 9, 15, 16, 17, 31, 33, 38"
+
+MAIN = """
+enum { N = 40 };
+static unsigned char one[N][N][2], two[N][N][2];
+typedef void survey_function(TYPE n, TYPE m, unsigned char z[][40][2]);
+int main(void) {
+    static survey_function *const variants[] = { VARIANTS };
+    static const int sizes[] = { SIZES };
+    const size_t many = sizeof sizes / sizeof *sizes;
+    for (size_t v = 0; v < sizeof variants / sizeof *variants; v++)
+        for (size_t s = 0; s < many; s++)
+            for (size_t t = 0; t < many; t++) {
+                memset(one, 0, sizeof one);
+                memset(two, 0, sizeof two);
+                original((TYPE)sizes[s], (TYPE)sizes[t], one);
+                variants[v]((TYPE)sizes[s], (TYPE)sizes[t], two);
+                if (memcmp(one, two, sizeof one)) {
+                    printf("variant %d differs at %d, %d\\n", (int)v, sizes[s], sizes[t]);
+                    return 1;
+                }
+            }
+    return 0;
+}
+"""
+
+BODY = "z[i][j][0] += 1 + z[i][j][1]++;"
+
+
+def nest(type: str, outer: str, inner: str, body: str = BODY) -> str:
+    """A function around two loops, whose headers may say T for the type."""
+    return (f"#include <stddef.h>\nvoid survey({type} n, {type} m, unsigned char z[][40][2]) {{\n    (void)n; (void)m;\n    {outer}\n        {inner}\n"
+            f"            {body}\n}}\n").replace("T ", f"{type} ")
+
+
+RECTANGLE = ("for (T i = 0; i < n; i++)", "for (T j = 0; j < m; ++j)")
+TRIANGLE = ("for (T i = 0; i < n; i++)", "for (T j = i; j < n; j += 1)")
+UNDER = ("for (T i = 0; i < n; i++)", "for (T j = 0; j <= i; j++)")
+BAND = ("for (T i = 0; i < n; i++)", "for (T j = i > m ? i - m : 0; j < i; j++)")
+CASES = [
+    *((f"rectangle, {type}", type, RECTANGLE, ["j:8 i j", "i:4 j:8 i j", "i:12 i:4 j i", "i:5 i:2 i j"])
+      for type in ("int", "unsigned", "size_t", "long", "short", "unsigned char")),
+    *((f"triangle, {type}", type, TRIANGLE, ["j i", "i:4 j:8 i j", "j:8 i j"]) for type in ("int", "size_t")),
+    *((f"under the diagonal, {type}", type, UNDER, ["j i", "i:4 j:8 i j"]) for type in ("int", "long", "size_t")),
+    ("band", "int", BAND, ["j i", "i:4 j:8 i j", "j:8 i j"]),
+    ("downwards", "int", ("for (T i = n - 1; i >= 0; i--)", "for (T j = m - 1; j >= 0; j -= 2)"),
+     ["j i", "i:4 j:8 i j", "j:3 i j"]),
+    ("steps", "int", ("for (T i = 0; i < n; i += 3)", "for (T j = 1; j <= m; j += 2)"), ["j i", "i:4 j:8 i j", "j:3 i j"]),
+    ("steps that depend", "int", ("for (T i = n - 1; i >= 0; i -= 3)", "for (T j = i; j <= n - 1; j += 2)"),
+     ["j i", "i:4 j:8 i j", "j:8 i j"]),
+    ("down to zero, unsigned", "unsigned", ("for (T i = n; i-- > 0; )", "for (T j = m; j-- > 0; )"),
+     ["j i", "i:4 j:8 i j", "j:3 i j", "i:6 i:2 j i"]),
+    ("unequal", "int", ("for (T i = 0; i != n; i++)", "for (T j = 0; j < m; j++)"), ["j i", "i:4 j:8 i j"]),
+    ("constant", "int", ("for (T i = 2; i < 37; i++)", "for (T j = 0; j < 32; j++)"), ["j:8 i j", "i:4 j:5 i j"]),
+    ("skewed", "int", RECTANGLE, ["(i+j):8 i j", "i:4 (2*i+j):8 i j", "(i+2*j):8 i j", "(i+j) i", "i:4 (i+j):8 i (i+j)"]),
+    ("guarded", "int", ("for (T i = 0; i < n; i++)", "for (T j = 0; j < m; j++)", "if (i + j < m) z[i][j][0] += 3;"),
+     ["j i", "i:4 j:8 i j"]),
+]
+
+
+@pytest.mark.parametrize(("name", "type", "loops", "plans"), CASES, ids=[case[0] for case in CASES])
+def test_variants_compute_what_the_original_computes(name: str, type: str, loops: tuple[str, ...], plans: list[str],
+                                                     tmp_path: Path) -> None:
+    text = nest(type, *loops)
+    case = case_of(tmp_path, text)
+    variants = [case.variant(plan, remainder=remainder).text for plan in plans for remainder in ("clamp", "peel")]
+    names = ", ".join(f"variant{number}" for number in range(len(variants)))
+    main = MAIN.replace("TYPE", type).replace("VARIANTS", names).replace("SIZES", SIZES)
+    compile_and_run(tmp_path, together(text, variants, main), optimize="-O0")
+
+
+def test_both_compilers_take_the_variants_without_a_warning(tmp_path: Path) -> None:
+    for compiler in compilers():
+        for name, type, loops, plans in CASES:
+            folder = tmp_path / f"{compiler}-{name}"
+            folder.mkdir()
+            text = nest(type, *loops)
+            case = case_of(folder, text)
+            together_text = "\n".join(renamed(case.variant(plan, trust=True).text, "survey", f"variant{number}")
+                                      for number, plan in enumerate(plans[:2]))
+            compile_and_run(folder, together_text + "\nint main(void) { return 0; }\n", compiler=compiler, flags=())
+
+
+EDGES = """
+static int one, two;
+int main(void) {
+    RUNS
+    return 0;
+}
+"""
+
+
+@pytest.mark.parametrize(("type", "text", "plan", "calls"), [
+    ("int", "for (int i = n; i < INT_MAX; i++)", "i:64 i", ["INT_MAX - 100, 0", "INT_MAX - 1, 0", "INT_MAX, 0"]),
+    ("int", "for (int i = n; i >= INT_MIN + 5; i--)", "i:64 i", ["INT_MIN + 70, 0", "INT_MIN + 5, 0", "INT_MIN, 0"]),
+    ("int", "for (int i = m; i < n; i++)", "i:64 i", ["INT_MAX, INT_MAX - 99", "INT_MIN + 99, INT_MIN", "-5, 7"]),
+    ("int", "for (int i = m; i < n; i += 3)", "i:64 i", ["INT_MAX - 3, INT_MAX - 199", "INT_MIN + 9, INT_MIN"]),
+    ("unsigned", "for (unsigned i = m; i < n; i++)", "i:64 i", ["UINT_MAX, UINT_MAX - 99", "70, 0"]),
+    ("size_t", "for (size_t i = m; i < n; i++)", "i:64 i", ["SIZE_MAX, SIZE_MAX - 99", "70, 0", "0, 70"]),
+    ("size_t", "for (size_t i = m; i < n; i++)", "i:96 i:6 i", ["SIZE_MAX, SIZE_MAX - 99", "70, 0", "0, 70"]),
+    ("size_t", "for (size_t i = n; i-- > m; )", "i:64 i", ["SIZE_MAX, SIZE_MAX - 99", "70, 0", "64, 0", "0, 70"]),
+    ("long", "for (long i = m; i < n; i++)", "i:64 i", ["LONG_MAX, LONG_MAX - 99", "LONG_MIN + 99, LONG_MIN"]),
+    ("long", "for (long i = m; i > n; i--)", "i:64 i", ["LONG_MIN, LONG_MIN + 99", "LONG_MAX - 99, LONG_MAX"]),
+    ("unsigned char", "for (unsigned char i = m; i < n; i++)", "i:64 i", ["255, 0", "255, 254", "3, 7", "200, 200"]),
+    ("short", "for (short i = n; i > m; i--)", "i:100 i", ["32767, 31000", "-32768, 5", "5, -32768"]),
+], ids=str)
+def test_bounds_at_the_limits_of_a_type(type: str, text: str, plan: str, calls: list[str], tmp_path: Path) -> None:
+    """The loops touch one cell per iteration number, so a lost or repeated one shows; wrapping would not end."""
+    text = (f"#include <limits.h>\n#include <stdint.h>\n#include <stddef.h>\nvoid survey({type} n, {type} m, int *sum) {{\n"
+            f"    (void)n; (void)m;\n    {text}\n        sum[0] += (int)(i % 1000) + 1;\n}}\n")
+    case = case_of(tmp_path, text)
+    variants = [case.variant(plan, remainder=remainder).text for remainder in ("clamp", "peel")]
+    runs = "\n    ".join(f"one = two = 0; original({call}, &one); variant{v}({call}, &two); if (one != two) return 1;"
+                         for call in calls for v in range(2))
+    compile_and_run(tmp_path, together(text, variants, EDGES.replace("RUNS", runs)))
+
+
+def test_the_full_part_has_a_trip_count_that_the_compiler_knows(tmp_path: Path) -> None:
+    for type in ("int", "size_t"):
+        text = nest(type, *RECTANGLE)
+        peeled = case_of(tmp_path, text).variant("i:4 j:8 i j", remainder="peel").nest_text
+        first = "(int)" if type == "int" else ""
+        assert f"for ({type} j = {first}j_from; j < {first}j_from + 8; ++j)" in peeled
+        assert peeled.count(BODY) == 2
+
+
+def test_the_same_call_gives_the_same_text(tmp_path: Path) -> None:
+    text = nest("size_t", *UNDER)
+    one, two = (case_of(tmp_path, text).variant("i:4 j:8 i j", remainder="peel") for _ in range(2))
+    assert one.text == two.text
