@@ -132,15 +132,23 @@ def nests(files: tuple[str, ...], every: bool, as_json: bool, **given: Any) -> i
 @retile.command(short_help="Show the dependences of a nest.")
 @_address
 @click.option("--dot", is_flag=True, help="Print the graph in the DOT language of Graphviz.")
+@click.option("--graph", metavar="FILE", help="Draw the graph: FILE.svg for a picture, FILE.dot for Graphviz.")
+@click.option("--space", metavar="FILE", help="Draw the iterations of the deepest statement into FILE.svg.")
+@click.option("--plan", metavar="PLAN", help="With --space: number the iterations in the order of a plan.")
+@click.option("--set", "sizes", multiple=True, metavar="NAME=VALUE", help="With --space: a size, such as n=7 (repeatable).")
 @_compiler_options
 @_json
-def depend(address: str, dot: bool, as_json: bool, **given: Any) -> int:
-    """Show the dependences of a nest: the pairs of statements whose order matters."""
-    from .commands import depend
+def depend(address: str, dot: bool, graph: str | None, space: str | None, plan: str | None, sizes: tuple[str, ...],
+           as_json: bool, **given: Any) -> int:
+    """Show the dependences of a nest: the pairs of statements whose order matters. Pictures replace the table."""
+    from .commands import depend, pictures
 
     if dot and as_json:
         raise click.UsageError("--dot and --json exclude each other.")
-    return depend.run(address, _compiling(given), dot=dot, as_json=as_json)
+    if space is None and (plan is not None or sizes):
+        raise click.UsageError("--plan and --set belong to --space FILE.svg.")
+    wanted = pictures.Pictures(graph, space, plan, sizes)
+    return depend.run(address, _compiling(given), dot=dot, pictures=wanted, as_json=as_json)
 
 
 @retile.command(short_help="Say whether a plan computes the same.")

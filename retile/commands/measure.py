@@ -17,6 +17,7 @@ from ..report.verdict import verdict_lines
 from .compiling import CompilerOptions
 from .opening import open_nest
 from .output import look_of, print_document, print_lines, say
+from .sizes import named_sizes, named_value
 
 if TYPE_CHECKING:
     from ..trial import Campaign, Event, Settings
@@ -44,7 +45,7 @@ def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measur
     """Verify and time the variants of plans; 1 if a plan is not legal or a variant is not verified."""
     if not plans:
         raise RetileError("measure needs at least one PLAN, for example 'i j' for the original order of two loops.")
-    sizes = {name: _whole(value, name) for name, value in map(_pair, measuring.sizes)}
+    sizes = named_sizes(measuring.sizes)
     settings = _settings(measuring, compiling)
     nest = open_nest(address, compiling)
     parsed = [plan if nest.refusals else nest.plan(plan, remainder=measuring.remainder) for plan in plans]
@@ -63,22 +64,8 @@ def _settings(measuring: Measuring, compiling: CompilerOptions) -> Settings:
         flags = Settings().flags if measuring.flags is None else tuple(shlex.split(measuring.flags))
     except ValueError as error:
         raise RetileError(f"--flags {measuring.flags!r} cannot be split into words: {error}.") from None
-    return Settings(cc=compiling.cc, flags=flags, fills=tuple(map(_pair, measuring.fills)), seed=measuring.seed,
+    return Settings(cc=compiling.cc, flags=flags, fills=tuple(map(named_value, measuring.fills)), seed=measuring.seed,
                     seconds=measuring.seconds, trust=measuring.trust)
-
-
-def _pair(text: str) -> tuple[str, str]:
-    name, equals, value = text.partition("=")
-    if not (name.strip() and equals and value.strip()):
-        raise RetileError(f"'{text}' is not of the form NAME=VALUE.")
-    return name.strip(), value.strip()
-
-
-def _whole(text: str, name: str) -> int:
-    try:
-        return int(text)
-    except ValueError:
-        raise RetileError(f"--set {name}={text}: '{text}' is not a whole number.") from None
 
 
 def _command(address: str, plans: tuple[str, ...]) -> str:

@@ -1,8 +1,7 @@
-"""The dependences of a nest as a table and as a picture in the DOT language of Graphviz."""
+"""The dependences of a nest as a table."""
 
 from __future__ import annotations
 
-import json
 from typing import TYPE_CHECKING
 
 from ..model import Nest
@@ -39,19 +38,3 @@ def _row(edge: Edge) -> tuple[str, ...]:
     distance = "varies" if edge.distance is None else " ".join(map(str, edge.distance))
     return (edge.kind, edge.storage + ("" if edge.exact else " (any cell)"), edge.source, edge.target,
             " ".join(edge.common), distance, " ".join(edge.direction), edge.carried_by or "-")
-
-
-def dependences_dot(nest: Nest, dependences: Dependences) -> list[str]:
-    """The graph for Graphviz: statements as nodes, dependences as edges."""
-    lines = ["digraph dependences {", "  node [shape=box, fontname=monospace];"]
-    for statement in nest.statements:
-        lines.append(f"  {_quoted(statement.id)} [label={_quoted(f'{statement.id}: {statement.text}')}];")
-    for edge in dependences.edges:
-        label = f"{edge.kind} {edge.storage}\n{' '.join(edge.direction)}"
-        style = {"flow": "solid", "anti": "dashed"}.get(edge.kind, "dotted")
-        lines.append(f"  {_quoted(edge.source)} -> {_quoted(edge.target)} [label={_quoted(label)}, style={style}];")
-    return [*lines, "}"]
-
-
-def _quoted(text: str) -> str:
-    return json.dumps(text, ensure_ascii=False)
