@@ -113,3 +113,8 @@ def test_the_document_of_a_rewriting_without_a_variant_has_no_text():
     assert list(written)[:6] == ["address", "plan", "options", "verdict", "text", "diff"]
     assert written["text"] is None and written["diff"] is None
     assert written["refusals"] == [{"line": 7, "column": 3, "code": "call", "reason": "a call"}]
+
+
+def test_iterators_go_by_their_names_in_c():
+    assert document.iterator_values(Instance("9", 9, (("t", 1), ("i@14", 2)))) == {"t": 1, "i": 2}
+    assert document.iterator_values(Instance("9", 9, (("i@3", 1), ("i@14", 2)))) == {"i@3": 1, "i@14": 2}

@@ -122,7 +122,13 @@ def of_violation(violation: Violation) -> Document:
 
 def of_instance(instance: Instance) -> Document:
     """``{"statement", "line", "iterators"}``; the iterators have the values of the C variables."""
-    return {"statement": instance.statement, "line": instance.line, "iterators": dict(instance.iterators)}
+    return {"statement": instance.statement, "line": instance.line, "iterators": iterator_values(instance)}
+
+
+def iterator_values(instance: Instance) -> dict[str, int]:
+    """The values of the loops around an instance by the C variables' names; by loop where one hides another."""
+    names = [loop.split("@")[0] for loop, _ in instance.iterators]
+    return {name if names.count(name) == 1 else loop: value for name, (loop, value) in zip(names, instance.iterators)}
 
 
 # ---------------------------------------------------------------- rewrite

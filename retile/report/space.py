@@ -75,9 +75,10 @@ def iteration_space(nest: Nest, dependences: Dependences, sizes: Mapping[str, in
     plan, sizes = _with_numbers(judgement.plan, nest, sizes) if judgement is not None else (None, dict(sizes))
     domain = Region.union(dependences.domains[s.id] for s in nest.statements if s.loops == statement.loops)
     given = _by_symbol(nest, sizes)
-    chosen = choose_sizes(nest, statement, domain, given, _wish(statement, plan))
+    wish = _wish(statement, plan)
+    chosen = choose_sizes(nest, statement, domain, given, wish)
     inside = domain.at(chosen).only(statement.loops)
-    axes = tuple(_axis(nest.loop(id), inside, len(statement.loops)) for id in statement.loops)
+    axes = tuple(_axis(nest.loop(id), inside, wish, _MOST[len(statement.loops)]) for id in statement.loops)
     shown = inside & Region.where(*(part for axis in axes for part in (
         at_most(min(axis.values), Affine.of(axis.loop.id)), at_most(Affine.of(axis.loop.id), max(axis.values)))))
     points = tuple(shown.points(statement.loops))
@@ -136,8 +137,8 @@ def _wish(statement: Statement, plan: Plan | None) -> int:
     return max([_WISHED[len(statement.loops)], *(chunk + 2 for chunk in chunks if chunk <= _LARGEST_CHUNK)])
 
 
-def _axis(loop: LoopText, inside: Region, depth: int) -> Axis:
-    """The values of a loop in a space; only the first ones if there are more than a picture can hold."""
+def _axis(loop: LoopText, inside: Region, wish: int, most: int) -> Axis:
+    """The values of a loop in a space; only the first ones if there are more than ``most``."""
     low = inside.extreme(Affine.of(loop.id), largest=False)
     high = inside.extreme(Affine.of(loop.id), largest=True)
     if low is None or high is None:
@@ -147,7 +148,7 @@ def _axis(loop: LoopText, inside: Region, depth: int) -> Axis:
     if stride > 1 and not (inside & Region.where(at_most(1, (Affine.of(loop.id) - origin).mod(stride)))).is_empty():
         stride = 1
     whole = range(low, high + 1, stride) if loop.step > 0 else range(high, low - 1, -stride)
-    return Axis(loop, tuple(whole[:_WISHED[depth]] if len(whole) > _MOST[depth] else whole), len(whole))
+    return Axis(loop, tuple(whole[:wish] if len(whole) > most else whole), len(whole))
 
 
 # ---------------------------------------------------------------- the plan's order

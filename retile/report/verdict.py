@@ -6,6 +6,7 @@ import shlex
 from collections.abc import Callable, Iterable
 
 from ..model import Address, Assumption, Instance, Judgement, Plan, Refusal, Unproven, Verdict, Violation
+from .document import iterator_values
 from .table import Look, coloured, paragraph
 
 _STYLE = {Verdict.LEGAL: "good", Verdict.ILLEGAL: "bad", Verdict.UNPROVEN: "doubtful", Verdict.REFUSED: "bad"}
@@ -73,7 +74,7 @@ def cell_text(violation: Violation) -> str:
 
 
 def _instance_text(instance: Instance) -> str:
-    values = ", ".join(f"{name} = {value}" for name, value in instance.iterators)
+    values = ", ".join(f"{name} = {value}" for name, value in iterator_values(instance).items())
     return f"line {instance.line}" + (f", {values}" if values else "")
 
 
