@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 from enum import Enum
+from typing import Any
 
 from .affine import Affine, Bound, Formula
 from .tree import Loop
@@ -136,6 +137,9 @@ class Access:
     subscripts: tuple[Affine, ...] | None  # None: any cell of the storage (only for reads)
     certain: bool  # False under a condition on data: it counts as happening, but proves nothing about sizes
     span: Span
+    # For the read and write of an update ``x = x op e``: ``+``, ``*``, ``min`` ...; updates of one kind commute.
+    update: str = ""
+    exact_update: bool = False  # any order of such updates gives the same bits
 
 
 @dataclass(frozen=True)
@@ -234,7 +238,7 @@ class Nest:
         return _by(self.storages, "name", name)
 
 
-def _by(values: tuple, attribute: str, wanted: str):
+def _by(values: tuple[Any, ...], attribute: str, wanted: str) -> Any:
     for value in values:
         if getattr(value, attribute) == wanted:
             return value

@@ -80,6 +80,26 @@ class _End:
     access: Access
 
 
+@dataclass(frozen=True)
+class _Key:
+    """What pairs of instances have in common that make up one edge."""
+
+    source: str
+    target: str
+    kind: str
+    carrier: str | None
+    exact: bool = True
+    update: str = ""
+    free: bool = False
+
+
+def _key(source: _End, target: _End, carrier: str | None) -> _Key:
+    a, b = source.access, target.access
+    same = a.update if a.update == b.update else ""
+    return _Key(source.statement.id, target.statement.id, _kind(a, b), carrier,
+                a.subscripts is not None and b.subscripts is not None, same, bool(same) and a.exact_update and b.exact_update)
+
+
 class _Analysis:
     def __init__(self, nest: Nest, domains: dict[str, Region], times: dict[str, tuple[Coordinate, ...]]) -> None:
         self._nest = nest
@@ -95,13 +115,11 @@ class _Analysis:
         if not any(end.access.write for end in ends):
             return
         private = () if as_stored else storage.private_to
-        found: dict[tuple[str, str, str, str | None, bool], list[Region]] = defaultdict(list)
+        found: dict[_Key, list[Region]] = defaultdict(list)
         for source, target in _writing_pairs(ends):
             pairs = self.sharing(source, target, private)
             for carrier, relation in self._by_level(source.statement, target.statement, pairs):
-                exact = source.access.subscripts is not None and target.access.subscripts is not None
-                key = (source.statement.id, target.statement.id, _kind(source.access, target.access), carrier, exact)
-                found[key].append(relation)
+                found[_key(source, target, carrier)].append(relation)
         for key, relations in found.items():
             yield self._edge(storage, key, Region.union(relations[1:]) | relations[0])
         if storage.scalar is ScalarClass.PRIVATE and storage.live_after and not as_stored:
@@ -133,8 +151,8 @@ class _Analysis:
             carrier = next(iter(coordinate.names())) if isinstance(coordinate, Affine) else None
             yield carrier, relation
 
-    def _edge(self, storage: Storage, key: tuple[str, str, str, str | None, bool], relation: Region) -> Edge:
-        source, target, kind, carrier, exact = key
+    def _edge(self, storage: Storage, key: _Key, relation: Region) -> Edge:
+        source, target, kind, carrier = key.source, key.target, key.kind, key.carrier
         others = set(self._nest.statement(target).loops)
         common = tuple(loop for loop in self._nest.statement(source).loops if loop in others)
         loops = [self._nest.loop(id) for id in common]
@@ -142,8 +160,8 @@ class _Analysis:
         known = tuple(d for d in distances if d is not None)
         return Edge(source, target, kind, storage.name, relation, carrier, common,
                     known if len(known) == len(loops) else None,
-                    tuple(_direction(relation, loop, d) for loop, d in zip(loops, distances, strict=True)), exact,
-                    tuple(a for a in self._nest.assumptions if storage.name in a.storages))
+                    tuple(_direction(relation, loop, d) for loop, d in zip(loops, distances, strict=True)),
+                    key.exact, tuple(a for a in self._nest.assumptions if storage.name in a.storages), key.update, key.free)
 
     def _last_values(self, storage: Storage, ends: list[_End]) -> Iterator[Edge]:
         """Every earlier write before the last one: what is seen after the nest is the last value."""
@@ -161,7 +179,7 @@ class _Analysis:
             later = Region.union(followed[target_statement.id]).renamed(names)
             last = relation - later
             if not last.is_empty():
-                yield self._edge(storage, (source_statement.id, target_statement.id, "output", carrier, True), last)
+                yield self._edge(storage, _Key(source_statement.id, target_statement.id, "output", carrier), last)
 
 
 def _writing_pairs(ends: Iterable[_End]) -> Iterator[tuple[_End, _End]]:

@@ -28,6 +28,8 @@ class Edge:
     direction: tuple[str, ...]  # per common loop: ``<``, ``=``, ``>``, ``<=``, ``>=``, ``!=`` or ``*``, in iteration order
     exact: bool  # False where an access may touch any cell: the pairs may, but need not, share one
     assumptions: tuple[Assumption, ...] = ()
+    update: str = ""  # both are updates of this kind (``+``, ``max`` ...): only their order, not their sum, depends on it
+    free: bool = False  # ... and any order gives the same bits
 
 
 @dataclass(frozen=True)

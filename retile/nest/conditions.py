@@ -23,6 +23,8 @@ class Conditions:
 
     def known(self, node: Any, context: Context) -> Formula | None:
         """The condition as a formula over iterators and parameters; None if it depends on data."""
+        if self._setting.reads_stored(node):
+            return None
         mark = self._setting.mark()
         found = self._known(node, context)
         if found is None:

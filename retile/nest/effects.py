@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from pycparser import c_ast
@@ -15,6 +15,7 @@ from .context import Context
 from .places import Member, Place
 from .refusals import refused
 from .setting import Setting, c_text
+from .updates import Update, accumulation, family, update
 
 
 @dataclass(frozen=True)
@@ -25,7 +26,7 @@ class Touch:
     write: bool
     context: Context
     node: Any
-    update: str = ""  # ``+`` for the read and write of ``x += e``, ``x = x + e``, ``x++``; the operator of the family
+    update: Update | None = None  # for the read and write of ``x += e``, ``x = x + e``, ``x++``
 
 
 class Effects:
@@ -130,7 +131,7 @@ class Effects:
         if node.op == "*":
             self._read(node, context)
         elif node.op in ("++", "--", "p++", "p--"):
-            self._update(node.expr, context, "+")
+            self._update(node.expr, context, update("+", self._type(node.expr), self._type(node.expr)))
         elif node.op == "&":
             raise refused(node, "address", f"the address `{c_text(node)}` is taken inside the nest; "
                                            "use the object itself there.")
@@ -215,14 +216,14 @@ class Effects:
         if not cell.is_fixed(self._setting.loop_ids) or any(one.poly is None or one.poly.constant != 0 for one in cell.indices):
             self._found.append(Touch(cell, False, context, node))
 
-    def _write(self, node: Any, context: Context, update: str = "") -> None:
+    def _write(self, node: Any, context: Context, update: Update | None = None) -> None:
         place = self._scalar_place(node, context)
         if any(isinstance(step, Member) and step.bits is not None for step in place.steps):
             raise refused(node, "bit-field", f"`{c_text(node)}` is a bit-field, which shares its bytes with others; "
                                              "use a plain member.")
         self._found.append(Touch(place, True, context, node, update))
 
-    def _update(self, node: Any, context: Context, family: str) -> None:
+    def _update(self, node: Any, context: Context, family: Update | None) -> None:
         self._not_an_iterator(node, context)
         self._beneath(node, context)
         place = self._scalar_place(node, context)
@@ -237,15 +238,33 @@ class Effects:
             return
         if node.op != "=":
             self._visit(node.rvalue, context)
-            self._update(target, context, _family(node.op[:-1]))
+            self._update(target, context, update(family(node.op[:-1]), self._type(target), self._work(target, node.rvalue)))
             return
-        family = self._accumulates(node)
+        kind, reads = accumulation(node)
+        whole = update(kind, self._type(target), self._type(node.rvalue))
         before = len(self._found)
         self._visit(node.rvalue, context)
-        if family:
-            self._mark_own_read(before, target, context, family)
+        own = self._own_reads(before, target)
+        if whole is not None and len(own) == reads:
+            for at in own:
+                self._found[at] = replace(self._found[at], update=whole)
+        else:
+            whole = None
         self._beneath(target, context)
-        self._write(target, context, family)
+        self._write(target, context, whole)
+
+    def _work(self, left: Any, right: Any) -> CType | None:
+        """The type in which an operator on both computes."""
+        a, b = self._type(left), self._type(right)
+        return self._setting.types.common(a, b) if a is not None and b is not None else None
+
+    def _type(self, node: Any) -> CType | None:
+        found = self._setting.type_of(node)
+        return found if isinstance(found, CType) else None
+
+    def _own_reads(self, since: int, target: Any) -> list[int]:
+        """Which touches found since then read the very cell that is assigned."""
+        return [at for at in range(since, len(self._found)) if c_text(self._found[at].node) == c_text(target)]
 
     def _assign_pointer(self, node: Any, context: Context) -> None:
         binding = self._setting.names.of(node.lvalue) if isinstance(node.lvalue, c_ast.ID) else None
@@ -261,24 +280,3 @@ class Effects:
             raise refused(node, "iterator-changed", f"the iterator `{binding.name}` is changed inside its loop; "
                                                     "only the loop's header may do that.")
         self._not_outside(node, binding)
-
-    def _accumulates(self, node: Any) -> str:
-        """The family of ``x = x op e`` or ``x = e op x`` with a commutative operator; empty for any other."""
-        value, target = node.rvalue, c_text(node.lvalue)
-        if not isinstance(value, c_ast.BinaryOp) or value.op not in ("+", "-", "*", "&", "|", "^"):
-            return ""
-        left, right = c_text(value.left) == target, c_text(value.right) == target
-        return _family(value.op) if left or (right and value.op != "-") else ""
-
-    def _mark_own_read(self, since: int, target: Any, context: Context, family: str) -> None:
-        """Mark the read of ``x`` in ``x = x op e``, if it is the only one."""
-        text = c_text(target)
-        own = [at for at in range(since, len(self._found)) if c_text(self._found[at].node) == text]
-        if len(own) == 1:
-            touch = self._found[own[0]]
-            self._found[own[0]] = Touch(touch.place, False, touch.context, touch.node, family)
-
-
-def _family(op: str) -> str:
-    """Additions and subtractions accumulate into one sum."""
-    return "+" if op in ("+", "-") else op if op in ("*", "&", "|", "^") else ""

@@ -37,7 +37,7 @@ def webs(touches: list[Numbered], branches: list[Branch]) -> tuple[Web, ...]:
     if private:
         return private
     families = {touch.update for _, touch in touches}
-    if len(families) == 1 and families != {""}:
+    if len(families) == 1 and families != {None}:
         return (Web(tuple(touches), ScalarClass.ACCUMULATOR),)
     return (Web(tuple(touches), ScalarClass.CARRIED),)
 

@@ -16,7 +16,7 @@ from .calls import is_pure_call
 from .context import Context
 from .knowledge import Knowledge, Obligation
 from .polynomial import Monomial, Poly, symbol_names
-from .scopes import Binding, FunctionNames, descendants
+from .scopes import Binding, FunctionNames, assigned_target, descendants
 from .unit import Unit
 
 if TYPE_CHECKING:
@@ -60,6 +60,7 @@ class Setting:
         self.loop_ids: set[str] = set()
         self.loop_iterators: set[Binding] = set()
         self.outer_iterators: dict[Binding, Any] = {}  # iterators of the loops around the nest, with these loops
+        self._stored_texts: frozenset[str] | None = None
         inside = {id(node) for node in descendants(within)}
         self._assigned = {binding: [node for node in nodes if id(node) in inside]
                           for binding, nodes in names.assignments.items()}
@@ -152,6 +153,15 @@ class Setting:
         self.held[text] = place
         return self.knowledge.add_parameter(Parameter(text, text, type_, "member" if "." in text or "->" in text
                                                       else "expression"))
+
+    def reads_stored(self, node: Any) -> bool:
+        """True if the expression reads a place that the piece writes under the same text: that is data, not a size."""
+        if self._stored_texts is None:
+            targets = (assigned_target(one) for one in descendants(self.within))
+            self._stored_texts = frozenset(c_text(one) for one in targets if isinstance(one, (c_ast.ArrayRef, c_ast.StructRef)))
+        return bool(self._stored_texts) and any(
+            isinstance(one, (c_ast.ArrayRef, c_ast.StructRef)) and c_text(one) in self._stored_texts
+            for one in descendants(node))
 
     def expression_parameter(self, text: str, type_: CType) -> str:
         """The parameter for an expression that keeps its value."""

@@ -7,7 +7,7 @@ from dataclasses import dataclass, field, replace
 from typing import Any
 
 from ..affine import Affine, AllOf, at_most, less
-from ..model import Access, Assumption, AssumptionCode, CType, Refusal, ScalarClass, Storage, StorageKind
+from ..model import Access, Assumption, AssumptionCode, CType, Refusal, ScalarClass, Span, Storage, StorageKind
 from ..source.kinds import ArrayOf, PointerTo
 from .effects import Touch
 from .knowledge import Obligation
@@ -82,7 +82,7 @@ class _Builder:
             web.role, web.private_to, live, place.root.text, "const" in place.quals))
         self.stored.roots[name] = place.root
         for order, touch in web.touches:
-            self.stored.accesses[order] = Access(name, touch.write, (), touch.context.certain, self._span(order))
+            self.stored.accesses[order] = _access(touch, name, (), self._span(order))
 
     def _element(self, type_: Any) -> CType | str:
         if isinstance(type_, CType):
@@ -143,7 +143,7 @@ class _Builder:
             subscripts = tuple(form for part in known for form in part) if len(known) == len(column) else None
             if subscripts is None and touch.write:
                 self._refuse_write(touch)
-            self.stored.accesses[order] = Access(name, touch.write, subscripts, touch.context.certain, self._span(order))
+            self.stored.accesses[order] = _access(touch, name, subscripts, self._span(order))
 
     def _refuse_write(self, touch: Touch) -> None:
         indirect = any(one.poly is None for one in touch.place.indices)
@@ -261,3 +261,8 @@ def _shown(key: str, places: list[Place]) -> str:
             all(isinstance(place.steps[0], Index) and place.steps[0].poly == Poly() for place in places):
         return first.root.key + "->" + key[len(first.root.key) + 1:]
     return key
+
+
+def _access(touch: Touch, name: str, subscripts: tuple[Affine, ...] | None, span: Span) -> Access:
+    family, exact = (touch.update.family, touch.update.exact) if touch.update else ("", False)
+    return Access(name, touch.write, subscripts, touch.context.certain, span, family, exact)

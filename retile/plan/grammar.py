@@ -18,7 +18,7 @@ from dataclasses import replace
 from ..model import Nest, Plan, RetileError, Term
 
 # The options that a plan may carry, and the values each of them takes.
-OPTIONS = {"remainder": ("clamp", "peel")}
+OPTIONS = {"remainder": ("clamp", "peel"), "reassociate": ("no", "yes")}
 
 _TERM = re.compile(r"\S+")
 _PRODUCT = re.compile(r"([+-]?)(?:(\d+)\*)?([^+\-*]+)")

@@ -101,8 +101,11 @@ class _Court:
         return next(first_differences(pairs, later, self._times[source.id]), None)
 
     def binding_edges(self) -> tuple[Edge, ...]:
-        """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole."""
-        edges = tuple(edge for edge in self._dependences.edges if edge.storage not in self._copied)
+        """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole, and the
+        order of updates ``x = x op e`` only where another order could change bits that the user has not given away."""
+        anyhow = dict(self.plan.options).get("reassociate") == "yes"
+        edges = tuple(edge for edge in self._dependences.edges if edge.storage not in self._copied
+                      and not (edge.free or (edge.update and anyhow)))
         return (*edges, *(edge for edge in self._dependences.reuse if edge.storage in self._split))
 
     def refusals(self) -> Iterator[Refusal]:
