@@ -74,7 +74,7 @@ class Reading:
         """True if the function's ``{`` comes from the user's file."""
         return part.brace is not None and self.unit.tokens[self.text.first[part.brace]].file == 0
 
-    @property
+    @cached_property
     def own_functions(self) -> tuple[tuple[FuncDef, External], ...]:
         """The functions defined in the user's file."""
         return tuple((function, part) for function, part in self.parsed.functions if self.is_own(part))
