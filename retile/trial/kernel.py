@@ -21,6 +21,7 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast, c_generator
@@ -60,12 +61,15 @@ class Kernel:
         middle = source.slice(span) if nest_text is None else nest_text
         edits = [(body.start + 1, span.start, self._opening(body.start + 1, span, includes)),
                  (span.start, span.end, middle),
-                 (span.end, body.end - 1, self._closing(span.end, body.end - 1))]
-        for function in source.functions:
-            if function is not self.function and function.decl.name not in self.kept:
-                start, end = self._inside(function)
-                edits.append((start, end, self._emptied(start, end)))
+                 (span.end, body.end - 1, self._closing(span.end, body.end - 1)), *self._others]
         return source.encode(self._line(1) + _edited(source.text, edits) + "\n" + self._face())
+
+    @cached_property
+    def _others(self) -> list[tuple[int, int, str]]:
+        """The edits that empty the functions which the nest does not call."""
+        others = [function for function in self.source.functions
+                  if function is not self.function and function.decl.name not in self.kept]
+        return [(start, end, self._emptied(start, end)) for start, end in map(self._inside, others)]
 
     def _inside(self, function: Any) -> tuple[int, int]:
         """The text between a function's braces; nothing of it if it is not sure where they are."""
