@@ -1,11 +1,14 @@
 """The iterators' values after the nest, where somebody can see them.
 
 An iterator declared before the nest ends with the value that its loop's last execution in the original left behind:
-the first value beyond its bound, or its first value if it made no round.  The variant runs the loops in another order,
-so that value is set anew.  For loops whose bounds depend on each other the original headers run once more, empty.
+the first value beyond its bound, or its first value if it made no round; if the loops around it made none, with the
+value that it had before.  The variant runs the loops in another order, so that value is set anew.  For loops whose
+bounds depend on each other the original headers run once more, empty.
 """
 
 from __future__ import annotations
+
+from dataclasses import dataclass
 
 from ..affine import Affine, Constraint, less
 from ..model import LoopText, Nest, RetileError
@@ -21,20 +24,32 @@ from .expression import (
     same_values,
 )
 from .layout import NestText
+from .names import Names
 from .style import Style
 
 
-def restored(nest: Nest, layout: NestText, style: Style, scope: Scope, indent: str) -> list[str]:
-    """The lines that set the iterators that are looked at after the nest; none if there are none."""
-    lines: list[str] = []
+@dataclass(frozen=True)
+class Restored:
+    """Lines ahead of the variant's loops, which remember values, and lines behind them, which set them."""
+
+    ahead: list[str]
+    behind: list[str]
+
+
+def restored(nest: Nest, layout: NestText, style: Style, scope: Scope, names: Names, indent: str) -> Restored:
+    """What keeps the iterators right that are looked at after the nest.
+
+    Raises RetileError for one whose loop runs or not depending on data.
+    """
+    found = Restored([], [])
     for loop in nest.loops:
         if loop.iterator_live_after and not loop.declared_in_for:
             if _behind_data(loop, nest):
                 raise RetileError(f"{nest.address}: '{loop.iterator}' is used after the nest, and whether its loop in line "
                                   f"{loop.span.line} runs depends on data.\nDeclare it in the 'for', or set it after the "
                                   "nest yourself.")
-            lines += _restored(loop, nest, layout, style, scope, indent)
-    return lines
+            _restore(loop, nest, layout, style, scope, names, indent, found)
+    return found
 
 
 def _behind_data(loop: LoopText, nest: Nest) -> bool:
@@ -52,29 +67,41 @@ def _behind_data(loop: LoopText, nest: Nest) -> bool:
     return found(nest.tree, False)
 
 
-def _restored(loop: LoopText, nest: Nest, layout: NestText, style: Style, scope: Scope, indent: str) -> list[str]:
+def _restore(loop: LoopText, nest: Nest, layout: NestText, style: Style, scope: Scope, names: Names, indent: str,
+             found: Restored) -> None:
     chain = [nest.loop(id) for id in (*loop.outer, loop.id)]
-    ids = {one.id for one in chain}
-    if all(isinstance(bound, Affine) and not bound.names() & ids for one in chain for bound in (one.first, one.last)):
-        try:
-            return _computed(loop, chain[:-1], style, scope, indent)
-        except NoRoom:
-            pass
-    return _run_again(chain, layout, style, indent)
+    try:
+        tests, value = _computed(loop, chain[:-1], scope)
+    except NoRoom:
+        found.behind.extend(_run_again(loop, chain, layout, style, names, indent, found))
+        return
+    line = f"{loop.iterator} = {value.text};"
+    if not tests:
+        found.behind.append(indent + line)
+        return
+    before = _remembered(loop, names, indent, found)
+    found.behind.extend([f"{indent}if ({' && '.join(tests)})", f"{indent}{style.step}{line}",
+                         f"{indent}else", f"{indent}{style.step}{loop.iterator} = {before};"])
 
 
-def _computed(loop: LoopText, outer: list[LoopText], style: Style, scope: Scope, indent: str) -> list[str]:
-    """``j = m > 0 ? m : 0;``, under the condition that the loops around made a round."""
+def _remembered(loop: LoopText, names: Names, indent: str, found: Restored) -> str:
+    """The name of a constant with the iterator's value before the nest."""
+    name = names.fresh(f"{loop.iterator}_before")
+    found.ahead.append(f"{indent}const {loop.type.spelling} {name} = {loop.iterator};")
+    return name
+
+
+def _computed(loop: LoopText, outer: list[LoopText], scope: Scope) -> tuple[list[str], Expression]:
+    """The conditions that the loops around made a round, and the value then; NoRoom if they depend on each other."""
     tests = []
+    for one in (*outer, loop):
+        if not one.independent or not isinstance(one.first, Affine) or not isinstance(one.last, Affine):
+            raise NoRoom(one.id)
     for one in outer:
         if not scope.implies(_runs(one)):
             tests.append(_runs_text(one, scope))
         scope = scope.knowing(_runs(one))
-    value = _exit_value(loop, scope)
-    line = f"{loop.iterator} = {value.text};"
-    if not tests:
-        return [indent + line]
-    return [f"{indent}if ({' && '.join(tests)})", f"{indent}{style.step}{line}"]
+    return tests, _exit_value(loop, scope)
 
 
 def _runs(loop: LoopText) -> Constraint:
@@ -113,10 +140,10 @@ def _of_type(form: Affine, loop: LoopText, scope: Scope) -> Expression:
     return value if same_values(promoted(value.type), promoted(loop.type)) else converted(value, loop.type)
 
 
-def _run_again(chain: list[LoopText], layout: NestText, style: Style, indent: str) -> list[str]:
+def _run_again(loop: LoopText, chain: list[LoopText], layout: NestText, style: Style, names: Names, indent: str,
+               found: Restored) -> list[str]:
     """The loops around and the loop itself with their own headers, doing nothing."""
-    lines = []
-    for depth, loop in enumerate(chain):
-        header = layout.text[loop.header.start:loop.header.end]
-        lines.append(indent + style.step * depth + header)
+    lines = [f"{indent}{loop.iterator} = {_remembered(loop, names, indent, found)};"] if len(chain) > 1 else []
+    for depth, one in enumerate(chain):
+        lines.append(indent + style.step * depth + layout.text[one.header.start:one.header.end])
     return [*lines, indent + style.step * len(chain) + ";"]

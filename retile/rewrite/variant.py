@@ -150,7 +150,8 @@ class _Order:
         inner = indent + style.braced_step if tests.conditions else indent
         scope = before.knowing(*facts) if facts else before
         lines, homeless = self._loops(layout, style, names, scope, inner)
-        lines += restored(self.nest, layout, style, scope, inner)
+        kept = restored(self.nest, layout, style, scope, names, inner)
+        lines = [*kept.ahead, *lines, *kept.behind]
         remark = style.remark(self._remark(assumptions, bool(tests.conditions)), indent)
         remark += [indent + text for text in homeless]
         if tests.conditions:

@@ -1,0 +1,177 @@
+"""Tests of assumptions when the function is called, and iterators that are looked at after the nest."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from rewriting import case_of, compile_and_run, together
+
+FLAT = """#include <stddef.h>
+void survey(int n, int m, int ld, double *to, const double *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[i * ld + j] = from[j * ld + i] + 1;
+}
+"""
+
+# Every overlap of the two windows: the variant must give what the original gives, by whichever loops.
+OVERLAPS = """
+static double one[400], two[400];
+int main(void) {
+    static const int sizes[] = { 0, 1, 5, 8, 9 };
+    for (int s = 0; s < 25; s++)
+        for (int ld = 9; ld < 12; ld++)
+            for (int shift = -150; shift <= 150; shift += 1) {
+                int n = sizes[s / 5], m = sizes[s % 5];
+                for (int k = 0; k < 400; k++)
+                    one[k] = two[k] = k * 7 % 31;
+                original(n, m, ld, one + 150 + (shift < 0 ? 0 : shift), one + 150 - (shift < 0 ? shift : 0));
+                variant0(n, m, ld, two + 150 + (shift < 0 ? 0 : shift), two + 150 - (shift < 0 ? shift : 0));
+                if (memcmp(one, two, sizeof one)) { printf("differ: %d %d %d %d\\n", n, m, ld, shift); return 1; }
+            }
+    original(INT_MIN, 3, 9, one, two); variant0(INT_MIN, 3, 9, one, two);
+    original(3, INT_MIN, -9, one, two); variant0(3, INT_MIN, -9, one, two);
+    original(0, INT_MAX, INT_MAX, 0, 0); variant0(0, INT_MAX, INT_MAX, 0, 0);
+    return 0;
+}
+"""
+
+
+@pytest.mark.parametrize("plan", ["j i", "i:4 j:4 j i"])
+def test_overlapping_windows_run_the_original(plan: str, tmp_path: Path) -> None:
+    variant = case_of(tmp_path, FLAT).variant(plan)
+    assert FLAT[FLAT.index("for"):FLAT.rindex(";")] in variant.nest_text  # byte for byte
+    compile_and_run(tmp_path, together(FLAT, [variant.text], OVERLAPS))
+
+
+def test_windows_that_lie_apart_run_the_variant(tmp_path: Path) -> None:
+    """A store in the variant alone shows which loops ran."""
+    variant = case_of(tmp_path, FLAT).variant("j i")
+    marked = variant.text.replace("+ 1;", "+ 2;", 1)  # the variant stands first, the original behind its else
+    main = """
+static double field[200];
+int main(void) {
+    variant0(4, 4, 10, field, field + 100);
+    if (field[0] != 2) return 1;      /* apart: the variant ran */
+    field[0] = 0;
+    variant0(4, 4, 10, field, field + 34);
+    if (field[0] != 2) return 2;      /* touching */
+    field[33] = 0; field[0] = 0;
+    variant0(4, 4, 10, field, field + 33);
+    return field[0] != 1 ? 3 : 0;     /* one cell shared: the original ran */
+}
+"""
+    compile_and_run(tmp_path, together(FLAT, [marked], main))
+
+
+def test_trust_says_the_assumption_and_leaves_the_test_out(tmp_path: Path) -> None:
+    variant = case_of(tmp_path, FLAT).variant("j i", trust=True)
+    assert "Assumed: " in variant.nest_text and "do not overlap" in variant.nest_text
+    assert "uintptr_t" not in variant.text and "if (" not in variant.nest_text and variant.includes == ()
+    assert "--trust" in variant.nest_text
+
+
+def test_a_member_behind_a_pointer_is_tested_against_the_stores(tmp_path: Path) -> None:
+    text = """struct grid { int rows, cols; int *depth; };
+void survey(struct grid *g, const int *from)
+{
+    for (int r = 0; r < g->rows; r++)
+        for (int c = 0; c < g->cols; c++)
+            g->depth[r * g->cols + c] = from[c * g->rows + r];
+}
+"""
+    variant = case_of(tmp_path, text).variant("c r")
+    main = """
+static int apart[64], from[64];
+static union { struct { int cells[18]; struct grid grid; } at; int cells[64]; } one, two;
+int main(void) {
+    struct grid plain = { 5, 7, apart };
+    for (int k = 0; k < 64; k++)
+        from[k] = k;
+    variant0(&plain, from);
+    for (int r = 0; r < 5; r++)
+        for (int c = 0; c < 7; c++)
+            if (apart[r * 7 + c] != c * 5 + r) return 1;
+    for (int k = 0; k < 64; k++)
+        from[k] = 3;
+    one.at.grid = (struct grid){ 4, 5, one.cells };   /* the last stores change the number of rows and columns */
+    two.at.grid = (struct grid){ 4, 5, two.cells };
+    original(&one.at.grid, from);
+    variant0(&two.at.grid, from);
+    if (one.at.grid.rows != 3 || one.at.grid.cols != 3) return 3;
+    one.at.grid.depth = two.at.grid.depth = 0;
+    return memcmp(&one, &two, sizeof one) ? 2 : 0;
+}
+"""
+    both = together(text, [variant.text], main)
+    declaration = "struct grid { int rows, cols; int *depth; };"
+    head, _, tail = both.partition(declaration)
+    compile_and_run(tmp_path, head + declaration + tail.replace(declaration, ""), flags=("-fno-strict-aliasing",))
+    assert "g_begin" in variant.nest_text and "do not change" in variant.nest_text
+
+
+LIVE = """void survey(int n, int m, int z[][24], int *last)
+{
+    int i = -7, j = -8;
+    (void)m;
+    HEADERS
+            z[i][j] += i + j;
+    last[0] = i;
+    last[1] = j;
+}
+"""
+
+LIVE_MAIN = """
+static int one[25][24], two[25][24];
+int main(void) {
+    for (int n = -3; n < 20; n++)
+        for (int m = -3; m < 20; m++) {
+            memset(one, 0, sizeof one); memset(two, 0, sizeof two);
+            original(n, m, one, one[24]);
+            CALLS
+        }
+    return 0;
+}
+"""
+
+
+@pytest.mark.parametrize("headers", [
+    ("for (i = 0; i < n; i++)", "for (j = 0; j < m; j++)"),
+    ("for (i = 1; i <= n; i += 3)", "for (j = 2; j < m; j += 4)"),
+    ("for (i = n - 1; i >= 0; i--)", "for (j = m; j > 1; j -= 2)"),
+    ("for (i = 0; i < n; i++)", "for (j = i; j < n; j++)"),
+    ("for (i = n; i-- > 0; )", "for (j = m; j-- > 2; )"),
+], ids=str)
+def test_iterators_end_with_the_originals_values(headers: tuple[str, str], tmp_path: Path) -> None:
+    text = LIVE.replace("HEADERS", "\n        ".join(headers))
+    case = case_of(tmp_path, text)
+    variants = [case.variant(plan).text for plan in ("j:5 i:4 i j", "i:5 i j", "j i")]
+    calls = "\n            ".join(f"memset(two, 0, sizeof two); variant{v}(n, m, two, two[24]); "
+                                  f"if (memcmp(one, two, sizeof one)) return {v + 1};" for v in range(len(variants)))
+    compile_and_run(tmp_path, together(text, variants, LIVE_MAIN.replace("CALLS", calls)))
+
+
+def test_an_unsigned_iterator_ends_below_zero_as_the_originals_does(tmp_path: Path) -> None:
+    text = """void survey(unsigned n, int *z, unsigned *last)
+{
+    unsigned i;
+    for (i = n; i-- > 0; )
+        z[i] += 1;
+    last[0] = i;
+}
+"""
+    variant = case_of(tmp_path, text).variant("i:8 i")
+    main = """
+int main(void) {
+    for (unsigned n = 0; n < 20; n++) {
+        int one[20] = { 0 }, two[20] = { 0 };
+        unsigned i, j;
+        original(n, one, &i); variant0(n, two, &j);
+        if (memcmp(one, two, sizeof one) || i != j) return 1;
+    }
+    return 0;
+}
+"""
+    compile_and_run(tmp_path, together(text, [variant.text], main))
