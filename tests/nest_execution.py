@@ -82,9 +82,10 @@ def _linear(storage: Storage, subscripts: list[int], values: Mapping[str, int], 
     return total
 
 
-def events_run(text: str, function: str, line: int, sizes: Mapping[str, int], unknown: frozenset[str]) -> set[Event]:
+def events_run(text: str, function: str, line: int, sizes: Mapping[str, int], unknown: frozenset[str],
+               steps: int = 200_000) -> set[Event]:
     """What really happens in the nest; branches on data are all taken.  Cells of ``unknown`` objects get offset -1."""
-    machine = Program(text, nest=line).run(function, dict(sizes), may=True)
+    machine = Program(text, nest=line).run(function, dict(sizes), may=True, steps=steps)
     found: set[Event] = set()
     for instance in machine.instances:
         cells = [(write, (obj.name, -1 if obj.name in unknown and not write else offset))

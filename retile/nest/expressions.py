@@ -77,6 +77,10 @@ class Expressions:
             return None
         if not value.exact and value.type.bits >= self._setting.types.arithmetic.pointer_bytes * 8:
             return value.poly
+        return self._widened(value, context, node)
+
+    def _widened(self, value: Value, context: Context, node: Any) -> Poly | None:
+        """The value where it becomes wider or an offset; a product may not have wrapped in its own type."""
         if not value.exact and self._setting.affine(value.poly) is None:
             return self._setting.narrow_product(value.poly, value.type, context, node)
         return self.observe(value, context, node)
@@ -106,7 +110,7 @@ class Expressions:
         fits = to.smallest <= value.type.smallest and value.type.largest <= to.largest
         if fits or (not to.signed and not value.exact and to.bits <= value.type.bits):
             if fits and to.bits > value.type.bits and not value.exact:
-                seen = self.observe(value, context, node)
+                seen = self._widened(value, context, node)
                 return None if seen is None else Value(seen, to, True)
             return Value(value.poly, to, value.exact if fits else False)
         if not to.signed and (value.exact or to.bits == value.type.bits):

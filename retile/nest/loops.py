@@ -15,7 +15,7 @@ from typing import Any
 from pycparser import c_ast
 
 from ..affine import (Affine, AllOf, AnyOf, Bound, Constraint, Extremum, Formula, at_least_bound, at_most, at_most_bound,
-                      bound_names, equal)
+                      bound_names, equal, negate)
 from ..model import AssumptionCode, CType
 from .bounds import Bounds, flat, negated, scaled
 from .conditions import Conditions
@@ -98,7 +98,7 @@ class Loops:
         if relation == "!=":
             self._must_meet(first, last, step, type_, context, loop)
         header = Header(binding, type_, declared, first, last, step, relation, first_node, bound_node, False)
-        self._must_end(header, context, loop)
+        self._must_end(header, symbol, context, loop)
         return header
 
     def _until_wrap(self, loop: Any, binding: Binding, type_: CType, declared: bool, first: Bound, first_node: Any,
@@ -231,6 +231,8 @@ class Loops:
             raise self._condition_refused(node, loop, binding)
         common = self._setting.types.common(left_type, right_type)
         bound = self._bounds.read(other, context, common)
+        if relation == "!=" and bound is not None:
+            bound = self._one_form(bound, other, common)
         tested = None if bound is None else self._tested(mine, symbol, step, relation, bound, context, common)
         if tested is not None and isinstance(bound, Affine) and symbol in bound.names():
             tested, bound = tested - bound, Affine()
@@ -344,7 +346,7 @@ class Loops:
         elif not self._setting.require(AssumptionCode.RELATION, meets, context, loop):
             raise refused(loop, "bound", "the loop may run past its `!=` bound and wrap around.")
 
-    def _must_end(self, header: Header, context: Context, loop: Any) -> None:
+    def _must_end(self, header: Header, symbol: str, context: Context, loop: Any) -> None:
         """No value tested leaves the iterator's type: up to one step beyond the last."""
         type_, step = header.type, header.step
         beyond = abs(step) - (1 if header.relation == "!=" else 0)
@@ -356,9 +358,23 @@ class Loops:
         if self._setting.knowledge.proves(context.where(runs).formula, inside):
             return
         narrow = type_.bits < self._setting.types.arithmetic.int.bits
-        if (abs(step) == 1 and not self._always_true) or (type_.signed and not narrow):
+        if abs(step) != 1 and (narrow or not type_.signed):
+            self._must_not_wrap(header, symbol, context, loop)
+        elif (abs(step) == 1 and not self._always_true) or (type_.signed and not narrow):
             self._fact(inside, context.where(runs), loop)
         elif not self._setting.require(AssumptionCode.NO_WRAP, inside, context.where(runs), loop):
+            raise refused(loop, "bound", "the loop's iterator may wrap around.")
+
+    def _must_not_wrap(self, header: Header, symbol: str, context: Context, loop: Any) -> None:
+        """From the last value within the bounds the next one, beyond them, must still be one of the type."""
+        if not isinstance(header.first, Affine):
+            raise refused(loop, "step", "the first value is the larger or smaller of two and the step is not one; "
+                                        "give the loop a plain first value.")
+        after = Affine.of(symbol) + header.step
+        leaves = negate(at_most_bound(after, header.last) if header.step > 0 else at_least_bound(after, header.last))
+        inside = context.inside(symbol, header.binding, AllOf((header.constraint(symbol, header.first), leaves)))
+        holds = AllOf((at_most(header.type.smallest, after), at_most(after, header.type.largest)))
+        if not self._setting.require(AssumptionCode.NO_WRAP, holds, inside, loop):
             raise refused(loop, "bound", "the loop's iterator may wrap around.")
 
     def _fact(self, formula: Formula, context: Context, loop: Any) -> None:

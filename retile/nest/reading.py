@@ -13,6 +13,7 @@ from .knowledge import Knowledge, Obligation
 from .liveness import live_after
 from .overlaps import overlap_assumptions
 from .places import Places
+from .products import product_obligations
 from .readable import formula_text
 from .refusals import refusal
 from .scopes import FunctionNames
@@ -48,7 +49,10 @@ class NestReader:
             return None
         stored = store(setting, walk, self._nest)
         overlap_assumptions(setting, stored, self._stores(walk, stored))
-        assumptions, unprovable = self._settle(setting, [*setting.obligations, *stored.obligations])
+        products, hopeless = product_obligations(setting)
+        refusals += [refusal(node, "wrap", "this product of unsigned numbers may wrap around, and no bound for it is seen; "
+                                           "compute it in size_t or in a signed type.") for node in hopeless]
+        assumptions, unprovable = self._settle(setting, [*setting.obligations, *stored.obligations, *products])
         refusals += stored.refusals + unprovable
         if refusals:
             self._refuse(refusals)

@@ -16,7 +16,7 @@ from dataclasses import dataclass
 from math import gcd
 from typing import Any
 
-from ..affine import Affine, AllOf, AnyOf, Formula, Symbol, at_most, less
+from ..affine import Affine, AllOf, AnyOf, Symbol, at_most, less
 from ..model import AssumptionCode
 from .context import Context
 from .knowledge import Obligation
@@ -46,7 +46,7 @@ class Grid:
 
 def grid_of(setting: Setting, accesses: Sequence[Subscript], storage: str) -> Grid | None:
     """The grid that all accesses agree on; None if there is none."""
-    if any(_parts(setting, access.poly) is None for access in accesses):
+    if any(parts_of(setting, access.poly) is None for access in accesses):
         return None
     polys = [access.poly for access in accesses]
     plain = _strides(setting, polys)
@@ -66,7 +66,7 @@ def needs_grid(setting: Setting, poly: Poly) -> bool:
     return any(symbol_names(s) & setting.loop_ids for factors, _ in poly.terms if len(factors) > 1 for s in factors)
 
 
-def _parts(setting: Setting, poly: Poly) -> list[tuple[Symbol | None, Monomial, int]] | None:
+def parts_of(setting: Setting, poly: Poly) -> list[tuple[Symbol | None, Monomial, int]] | None:
     """Terms as (iterator, sizes, coefficient); None if iterators multiply each other."""
     found: list[tuple[Symbol | None, Monomial, int]] = []
     for factors, coefficient in poly.terms:
@@ -80,7 +80,7 @@ def _parts(setting: Setting, poly: Poly) -> list[tuple[Symbol | None, Monomial, 
 
 def _strides(setting: Setting, polys: Iterable[Poly]) -> tuple[Stride, ...] | None:
     """The products of sizes beside iterators, largest first; None unless each divides the one before."""
-    sizes = {part[1] for poly in polys for part in _parts(setting, poly) or () if part[0] is not None and part[1]}
+    sizes = {part[1] for poly in polys for part in parts_of(setting, poly) or () if part[0] is not None and part[1]}
     ordered = sorted(sizes, key=lambda m: (-len(m), str(m)))
     for large, small in zip(ordered, ordered[1:], strict=False):
         if len(large) == len(small) or quotient(large, small) is None:
@@ -95,7 +95,7 @@ def _with_factors(setting: Setting, polys: Iterable[Poly], strides: tuple[Stride
     for _, sizes in strides[:-1]:
         common = 0
         for poly in polys:
-            for moving, product, coefficient in _parts(setting, poly) or ():
+            for moving, product, coefficient in parts_of(setting, poly) or ():
                 if moving is not None and product == sizes:
                     common = gcd(common, coefficient)
         found.append((common or 1, sizes))
@@ -160,7 +160,7 @@ def _subscripts(setting: Setting, poly: Poly, strides: tuple[Stride, ...],
     still, poly = _whole_rows(setting, poly, strides) if whole_rows else ({}, poly)
     for at, rows in still.items():
         totals[at] = totals[at] + rows
-    for moving, sizes, coefficient in _parts(setting, poly) or ():
+    for moving, sizes, coefficient in parts_of(setting, poly) or ():
         for at, (factor, product) in enumerate(strides):
             rest = quotient(sizes, product)
             if rest is None or coefficient % factor or (moving is not None and rest):
@@ -198,51 +198,3 @@ def stride_texts(setting: Setting, strides: tuple[Stride, ...]) -> tuple[str, ..
 def _text(setting: Setting, stride: Stride) -> str:
     factor, product = stride
     return setting.poly_text(Poly(((product, factor),)))
-
-
-# ---------------------------------------------------------------- products in 32 bits
-
-
-def product_bound(setting: Setting, row: Affine, stride: Stride, context: Context, largest: int) -> Formula | None:
-    """A condition under which ``(row + 1) * stride`` does not exceed ``largest + 1``; None if no bound is found.
-
-    The product of the largest row and the stride becomes a parameter, computed in 64 bits factor by factor; each partial
-    product is bounded first, so that the next one is exact.
-    """
-    top = _upper_form(setting, row + 1, context)
-    if top is None:
-        return None
-    text = f"(unsigned long long)({setting.poly_text(Poly.of(top))})"
-    symbol = f"({setting.poly_text(Poly.of(top))})" if len(top.terms) > 1 or top.constant else \
-        setting.poly_text(Poly.of(top))
-    wide = setting.types.arithmetic.named(("unsigned", "long", "long"))
-    assert wide is not None
-    factor, product = stride
-    pieces = [setting.poly_text(Poly.of(s)) for s in product] + ([str(factor)] if factor != 1 else [])
-    conditions: list[Formula] = []
-    for piece in pieces:
-        text, symbol = f"{text} * {piece}", f"{symbol} * {piece}"
-        name = setting.wide_parameter(symbol, f"({text})", wide)
-        conditions.append(at_most(Affine.of(name), largest + 1))
-    return AllOf(tuple(conditions))
-
-
-def _upper_form(setting: Setting, form: Affine, context: Context) -> Affine | None:
-    """An affine form of the parameters that bounds a form from above throughout a domain."""
-    from ..affine import equal
-    from ..sets import Region
-
-    mark = "~top"
-    knowledge = setting.knowledge
-    region = knowledge.region(context.formula) & Region.where(equal(Affine.of(mark), form))
-    region = region.without(context.loops)
-    for piece in region.pieces():
-        for constraint in piece:
-            if constraint.form.coefficient(mark) == -1 or (constraint.equality and constraint.form.coefficient(mark)):
-                candidate = constraint.form + Affine.of(mark) if constraint.form.coefficient(mark) == -1 else \
-                    Affine.of(mark) - constraint.form
-                if candidate.names() <= set(knowledge.parameters) and \
-                        all(isinstance(s, str) for s, _ in candidate.terms) and \
-                        region.implies(at_most(Affine.of(mark), candidate)):
-                    return candidate
-    return None

@@ -17,7 +17,7 @@ from .polynomial import Poly
 from .refusals import refusal
 from .scalars import Numbered, Web, webs
 from .setting import Setting, c_text
-from .shapes import Grid, Stride, Subscript, grid_of, needs_grid, product_bound, stride_texts
+from .shapes import Grid, Subscript, grid_of, needs_grid, stride_texts
 from .walk import Walk
 
 
@@ -192,25 +192,9 @@ class _Builder:
         if grid is None:
             return Grid(((1, ()),), tuple(None for _ in polys), ())
         found: list[tuple[Affine, ...] | None] = [None] * len(polys)
-        for (at, poly), subscripts in zip(known, grid.subscripts, strict=True):
+        for (at, _), subscripts in zip(known, grid.subscripts, strict=True):
             found[at] = subscripts
-            if subscripts is not None and not self._fits_in_type(touches[at][1], poly, subscripts, grid.strides[0]):
-                found[at] = None
         return Grid(grid.strides, tuple(found), grid.obligations)
-
-    def _fits_in_type(self, touch: Touch, poly: Poly, subscripts: tuple[Affine, ...], stride: Stride) -> bool:
-        """Exclude that a product of 32-bit unsigned numbers wraps, where it matters."""
-        for narrow, type_, context, node in self._setting.narrow:
-            if narrow != poly or context.loops != touch.context.loops:
-                continue
-            row = subscripts[0]
-            bound = product_bound(self._setting, row, stride, context, type_.largest)
-            if bound is None:
-                return False
-            for formula in (at_most(0, row), bound):
-                self.stored.obligations.append(
-                    Obligation(AssumptionCode.NO_WRAP, formula, context.formula, context.loops, node))
-        return True
 
     def _leaves_row(self, touch: Touch) -> bool:
         """True if a pointer may run from one row of an array of arrays into the next."""
