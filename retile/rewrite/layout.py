@@ -10,13 +10,13 @@ from collections import defaultdict
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
 
-from ..model import LoopText, Nest
+from ..model import LoopText, Nest, RetileError
 from ..source.lex import SKIPPED, Token, tokenize
 from ..source.structure import Malformed, Shape, compound
 from ..tree import Guard, Loop, Node, Verbatim, children
 
 
-class InternalError(Exception):
+class InternalError(RetileError):
     """retile contradicts itself: a defect of retile, never of the user's program.  Nothing has been written."""
 
 

@@ -12,9 +12,10 @@ from dataclasses import replace
 from ..affine import Affine, equal, negate
 from ..model import Nest
 from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Verbatim, children
+from .chunks import Loops
 from .expression import Expression, condition, express
 from .layout import InternalError, NestText, Remarks
-from .loops import Loops, Opened, Place
+from .loops import Opened, Place
 from .style import Style
 
 

@@ -19,10 +19,11 @@ from ..sets import Region
 from ..tree import Loop, Node, Verbatim, children, loops_of
 from .after import restored
 from .assumed import Tests, tests_of
+from .chunks import Loops
 from .expression import INT, Expression, NoRoom, Scope, written
 from .includes import insertion, missing
 from .layout import InternalError, NestText
-from .loops import Loops, Place
+from .loops import Place
 from .names import Names
 from .patch import unified
 from .peel import peeled
