@@ -115,6 +115,20 @@ ACCEPTED = {
         "typedef struct { double x, y; } mark;\ntypedef struct { int rows, cols; double **row; float w[3][3]; mark m; } chart;\n"
         "void f(chart *c) {\n for (int i = 0; i < c->rows; i++)\n  for (int j = 0; j < c->cols; j++)\n"
         "   c->row[i][j] += c->w[1][2] * c->m.y;\n}\n", "c->m.y", "c->m.x"),
+    "pointers and unnamed structs in a struct": (
+        "struct mesh { struct { int nx, ny; } size; double *h[2]; };\nvoid f(struct mesh *m) {\n"
+        " for (int y = 0; y < m->size.ny; y++)\n  for (int x = 0; x < m->size.nx; x++)\n"
+        "   m->h[1][y * m->size.nx + x] = m->h[0][y * m->size.nx + x];\n}\n", "= m->h[0]", "= 2 * m->h[0]"),
+    "a packed struct": (
+        "struct __attribute__((packed)) sounding { char c; double v; };\nvoid f(int n, struct sounding *s) {\n"
+        " float lane[16] = {0};\n if (n > 3)\n  for (int i = 0; i < n; i++)\n   s[i].v = s[i].v * lane[3];\n}\n",
+        "lane[3]", "lane[4]"),
+    "an array of unknown length in another file": (
+        "extern double basin[][12];\nvoid f(int n) {\n for (int i = 0; i < n; i++)\n  for (int j = 0; j < 12; j++)\n"
+        "   basin[i][j] *= 2;\n}\n", "*= 2", "*= 3"),
+    "part of an array": (
+        "void f(int n, double z[n], int from, int to) {\n for (int i = from; i < to; i++)\n  z[i] *= 2;\n}\n",
+        "*= 2", "*= 3"),
     "an array of pointers": (
         "void f(int n, double *z[8]) {\n for (int k = 0; k < 8; k++)\n  for (int i = 0; i < n; i++)\n   z[k][i] *= 2;\n}\n",
         "*= 2", "*= 3"),

@@ -214,9 +214,11 @@ def _enter(scope: Scope, item: Any, place: str) -> None:
         return
     old = scope.variables.get(item.name)
     extern = "extern" in item.storage
-    if old is not None and place == "global" and extern:
+    if old is not None and old.place == "global" and place == "global" and extern:
         return
     held = "global" if place == "local" and extern else place
+    if extern and isinstance(item.type, c_ast.ArrayDecl) and item.type.dim is None:
+        held = "argument"  # nobody here knows how long it is: as good as a pointer
     scope.typedefs.pop(item.name, None)
     node, init = item.type, item.init
     if isinstance(node, c_ast.ArrayDecl) and node.dim is None and isinstance(item.init, c_ast.InitList):

@@ -74,6 +74,14 @@ class Bench:
         return tuple(p for p in self.nest.parameters if self.bases[p.symbol] == (plain(p.text),))
 
     @cached_property
+    def lengths(self) -> frozenset[str]:
+        """The symbols of the parameters, and the hidden integers, that declared extents are computed from."""
+        dims = [dim for block in self.kernel.memory.blocks for dim in block.dims if dim is not None]
+        used = set().union(*(objects_in(dim, self.scope) for dim in dims))
+        symbols = {parameter.symbol for parameter in self.direct if plain(parameter.text) in used}
+        return frozenset(symbols | used & set(self.hidden))
+
+    @cached_property
     def hidden(self) -> tuple[str, ...]:
         """Integers that are no parameters themselves but that parameters and extents are computed from."""
         shown = {plain(parameter.text) for parameter in self.direct}
@@ -195,11 +203,18 @@ class _Sizing:
         cells = self.memory.cells_of(storage.name)
         if not cells:
             return
-        if access.subscripts is None:
+        if access.subscripts is None or not self._fits(storage, cells[0], access.subscripts):
             for subscripts in self._looked_up(cells[0]):
                 self._reach(cells[0], [self._range(node, statement) for node in subscripts])
         elif access.subscripts:
             self._affine(statement, storage, cells[0], access.subscripts)
+
+    def _fits(self, storage: Storage, cell: Cell, subscripts: tuple[Affine, ...]) -> bool:
+        """True if the subscripts are those of the blocks on the way, one by one; else the C text has to tell."""
+        total = sum(block.skip + (block.levels[-1] if block.levels else 0) for block in self._chain(cell))
+        if storage.strides:
+            return len(subscripts) == total - 1 + len(storage.strides)
+        return len(subscripts) <= total or cell.repeat != "1"
 
     def _chain(self, cell: Cell) -> list[Block]:
         chain = [self.memory.blocks[cell.block]]
@@ -212,7 +227,7 @@ class _Sizing:
         forms = [self._known(form) for form in subscripts]
         chain = [block for block in self._chain(cell) if block.levels and block.levels[-1]]
         for block in chain:
-            last = block is chain[-1]
+            forms, last = forms[block.skip:], block is chain[-1]
             if storage.strides and last:
                 strides = [value_of(expression(text, self.bench.scope), self.bench.scope, self.cells)
                            for text in storage.strides]
@@ -314,7 +329,7 @@ class _Sizing:
         for block in self._chain(cell):
             if not block.levels or not block.levels[-1]:
                 continue
-            strides = self._strides(block)
+            strides, subscripts = self._strides(block), subscripts[block.skip:]
             taken, subscripts = subscripts[:len(strides)], subscripts[len(strides):]
             self._note(block, sum(int(low) * stride for (low, _), stride in zip(taken, strides)),
                        sum(int(high) * stride for (_, high), stride in zip(taken, strides)))

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from pycparser import c_ast
@@ -32,6 +32,7 @@ class Block:
     constant: int  # 1 if the home may not be written
     dims: tuple[Any, ...]  # declared extents as expression nodes, None where there is none
     levels: tuple[int, ...]  # how many subscripts each block on the way here takes, this one last
+    skip: int = 0  # subscripts between the block before and this one: of an array of pointers in a struct
 
     @property
     def step(self) -> str:
@@ -90,10 +91,10 @@ class Memory:
 def plain(text: str) -> str:
     """The name of a cell as used here: ``g->depth`` is ``g.depth``, blanks and parentheses go.
 
-    >>> plain("( *g ).rows"), plain("to->cols"), plain("rows[]")
-    ('g.rows', 'to.cols', 'rows')
+    >>> plain("( *g ).rows"), plain("to->cols"), plain("rows[]"), plain("m->h[0]")
+    ('g.rows', 'to.cols', 'rows', 'm.h')
     """
-    return re.sub(r"[\s()*]|\[\]", "", text.replace("->", "."))
+    return re.sub(r"[\s()*]|\[\d*\]", "", text.replace("->", "."))
 
 
 def memory_of(scope: Scope, nest: Any, named: Iterable[str], derived: Sequence[Variable] = ()) -> Memory:
@@ -165,6 +166,30 @@ def declared_type(scope: Scope, variable: Variable) -> Type:
     return found
 
 
+@dataclass(frozen=True)
+class _Spot:
+    """A place in the elements of a block: a member path of a type, and how often it comes, for arrays in structs."""
+
+    holder: str  # the type that the path starts in
+    path: tuple[str, ...] = ()
+    before: str = "0"  # offset of the holder
+    repeat: str = "1"
+    stride: str = "0"
+    subscripts: int = 0  # how many the array takes
+
+    @property
+    def offset(self) -> str:
+        """Bytes from the begin of the element, as C."""
+        if not self.path:
+            return self.before
+        own = f"__builtin_offsetof({self.holder}, {'.'.join(self.path)})"
+        return own if self.before == "0" else f"{self.before} + {own}"
+
+    def inside(self, member: str) -> _Spot:
+        """The spot of a member."""
+        return replace(self, path=(*self.path, member))
+
+
 class _Builder:
     """Gives every variable a block and follows the pointers that the nest follows."""
 
@@ -177,7 +202,7 @@ class _Builder:
         self.members: set[str] = set()
 
     def build(self, named: Iterable[str]) -> Memory:
-        reached = [c_ast.UnaryOp("*", variable.init) for variable in self.derived.values()]
+        reached = [_element_of(variable.init) for variable in self.derived.values()]
         for node in (part for whole in (self.nest, *reached) for part in walk(whole)):
             found = self.paths.of(node)
             if found:
@@ -221,43 +246,44 @@ class _Builder:
                           constant=int(fixed and variable.constant))
         if not fixed:
             self.memory.arguments.append(variable)
-        self._contents(block, element, variable.name, "0", "1", "0", node=variable)
+        self._contents(block, element, variable.name, _Spot(text), variable)
 
     def _add(self, name: str, text: str, dims: tuple[Any, ...], levels: tuple[int, ...], count: str = "0",
-             home: str = "0", argument: int = -1, constant: int = 0) -> Block:
-        block = Block(len(self.memory.blocks), name, text, count, home, argument, constant, dims, levels)
+             home: str = "0", argument: int = -1, constant: int = 0, skip: int = 0) -> Block:
+        block = Block(len(self.memory.blocks), name, text, count, home, argument, constant, dims, levels, skip)
         self.memory.blocks.append(block)
         return block
 
-    def _contents(self, block: Block, of: Type, path: str, offset: str, repeat: str, stride: str,
-                  node: Variable | None = None) -> None:
-        """Register what stands at ``offset`` in the elements of a block."""
+    def _contents(self, block: Block, of: Type, path: str, spot: _Spot, variable: Variable | None = None) -> None:
+        """Register what stands at a spot in the elements of a block."""
         if isinstance(of, Arithmetic):
             if of.text not in self.memory.types:
                 self.memory.types.append(of.text)
-            self.memory.cells.append(Cell(len(self.memory.cells), path.replace("*", ""), block.number, offset, repeat,
-                                          stride, of.text, self.memory.types.index(of.text)))
+            self.memory.cells.append(Cell(len(self.memory.cells), path.replace("*", ""), block.number, spot.offset,
+                                          spot.repeat, spot.stride, of.text, self.memory.types.index(of.text)))
         elif isinstance(of, Record):
             for name, member in of.members:
-                self._member(block, of, f"{path}.{name}", name, member, offset, (repeat, stride))
+                if not of.union or self._is_used(f"{path}.{name}"):
+                    self._member(block, member, f"{path}.{name}", spot.inside(name))
         elif isinstance(of, Pointer) and path in self.paths.followed:
-            self._follow(block, of, path, Link(block.number, 0, offset, repeat, stride), node)
+            self._follow(block, of, path, spot, variable)
 
-    def _member(self, block: Block, record: Record, path: str, name: str, member: Any, offset: str,
-                around: tuple[str, str]) -> None:
-        if record.union and not any(used == path or used.startswith((path + ".", path + "*")) for used in self.members):
-            return
-        holder = record.text or block.type
+    def _is_used(self, path: str) -> bool:
+        return any(used == path or used.startswith((path + ".", path + "*")) for used in self.members)
+
+    def _member(self, block: Block, member: Any, path: str, spot: _Spot) -> None:
         element, dims = _flat(self.scope.type_of(member))
-        at = f"__builtin_offsetof({holder}, {name})" if offset == "0" else f"{offset} + __builtin_offsetof({holder}, {name})"
-        repeat, stride = around
-        if dims and isinstance(element, Arithmetic | Record | Pointer):
-            require(repeat == "1", f"a trial cannot fill arrays of structs with arrays inside another struct ({path})")
-            repeat = f"sizeof((({holder} *)0)->{name}) / sizeof({element.text})"
-            stride = f"sizeof({element.text})"
-        self._contents(block, element, path, at, repeat, stride)
+        if not isinstance(element, Arithmetic | Record | Pointer):
+            return
+        if dims:
+            require(spot.repeat == "1", f"a trial cannot fill arrays of structs with arrays inside another struct ({path})")
+            require(element.text, f"a trial cannot fill {path}: give the struct of its elements a name")
+            size = f"sizeof({element.text})"
+            spot = _Spot(element.text, (), spot.offset, f"sizeof((({spot.holder} *)0)->{'.'.join(spot.path)}) / {size}", size,
+                         len(dims))
+        self._contents(block, element, path, spot)
 
-    def _follow(self, holder: Block, of: Pointer, path: str, link: Link, variable: Variable | None) -> None:
+    def _follow(self, holder: Block, of: Pointer, path: str, spot: _Spot, variable: Variable | None) -> None:
         element, inner = _flat(of.target)
         indexed = self.paths.followed[path]
         require(isinstance(element, Arithmetic | Pointer | Record) and element.text,
@@ -266,9 +292,9 @@ class _Builder:
         dims = (outer, *inner)
         levels = (*holder.levels, len(dims) if indexed or inner else 0)
         block = self._add(path.replace("*", ""), element.text, dims, levels,
-                          count="0" if indexed or inner else "1")
-        self.memory.links.append(Link(link.holder, block.number, link.offset, link.repeat, link.stride))
-        self._contents(block, element, path + "*", "0", "1", "0")
+                          count="0" if indexed or inner else "1", skip=spot.subscripts)
+        self.memory.links.append(Link(holder.number, block.number, spot.offset, spot.repeat, spot.stride))
+        self._contents(block, element, path + "*", _Spot(element.text))
 
 
 def _flat(of: Type) -> tuple[Any, tuple[Any, ...]]:
@@ -278,6 +304,13 @@ def _flat(of: Type) -> tuple[Any, tuple[Any, ...]]:
         dims = (*dims, of.extent)
         of = of.element
     return of, dims
+
+
+def _element_of(pointer: Any) -> Any:
+    """The expression of some element that a pointer leads to."""
+    while isinstance(pointer, c_ast.Cast):
+        pointer = pointer.expr
+    return c_ast.UnaryOp("*", c_ast.BinaryOp("+", pointer, c_ast.Constant("int", "0")))
 
 
 def _names_of_type(node: Any) -> set[str]:

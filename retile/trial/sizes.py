@@ -103,18 +103,21 @@ def _wishes(bench: Bench, chunks: Mapping[str, Sequence[int]]) -> Iterator[dict[
     def completed(wish: Mapping[str, int], turn: int) -> dict[str, int]:
         """Names outside all loop bounds are no sizes: small values in turn, and one that leaves gaps between rows.
 
-        Outer iterators are small too, or nothing would be left to do where a loop begins at one.
+        Declared lengths of arrays have room for all others.  Outer iterators are small, or nothing would be left to do
+        where a loop begins at one.
         """
         largest = max(wish.values(), default=0)
         other = (0, 1, 2, largest + 3)[turn % 4]
         inside = (0, 1, 2, largest // 2)[turn % 4]
-        return {name: inside if name in outer else wish[name] if name in bounds or name in bench.hidden else other
-                for name in names}
+        chosen = {name: inside if name in outer else wish[name] if name in bounds or name in bench.hidden else other
+                  for name in names}
+        return {name: largest + turn % 3 if name in bench.lengths - bounds else value for name, value in chosen.items()}
 
     turn = 0
     unequal = {name: _UNEQUAL[at % len(_UNEQUAL)] for at, name in enumerate(names)}
     yield completed(unequal, 0)
     yield completed(unequal, 1)
+    yield completed(dict(zip(names, reversed(unequal.values()))), 2)
     for value in _interesting(every):
         turn += 1
         yield completed(dict.fromkeys(names, value), turn)
@@ -122,6 +125,9 @@ def _wishes(bench: Bench, chunks: Mapping[str, Sequence[int]]) -> Iterator[dict[
         for value in _interesting(sizes):
             turn += 1
             yield completed({**unequal, name: value}, turn)
+    for name in sorted(bounds & set(names)):
+        turn += 1
+        yield completed({**dict.fromkeys(names, 2), name: 13}, turn)
     for value in (*_SMALL, -2):
         turn += 1
         yield completed({name: value + at % 3 for at, name in enumerate(names)}, turn)
