@@ -6,7 +6,7 @@ import subprocess
 from pathlib import Path
 
 import pytest
-from rewriting import Case, case_of, rewritten
+from rewriting import Case, case_of, compile_and_run, rewritten
 
 from retile.affine import Affine
 from retile.dependence import analyse
@@ -305,3 +305,24 @@ def test_a_wrong_tree_is_a_defect_and_gives_no_text(change, tmp_path: Path, monk
     monkeypatch.setattr(retile.plan, "build_tree", lambda nest, plan: _broken(build(nest, plan), change))
     with pytest.raises(InternalError, match="nothing was written"):
         rewrite(case.source, case.nest, dependences, judgement.plan, judgement)
+
+
+# ---------------------------------------------------------------- the C of 1990
+
+OLD = """void survey(T n, T m, double *a)
+{
+    T i, j;
+    for (i = 0; i < n; i++)
+        for (j = 0; j < m; j++)
+            a[i * m + j] = a[i * m + j] + 1;
+}
+"""
+
+
+@pytest.mark.parametrize("type", ["int", "unsigned long"])
+@pytest.mark.parametrize("plan", ["i:4 j:8 i j", "(i+j):8 i j", "j i"])
+def test_the_c_of_1990_declares_nothing_in_headers(type: str, plan: str, tmp_path: Path) -> None:
+    case = case_of(tmp_path, OLD.replace("T", type), flags=("-std=c89",))
+    text = case.variant(plan, trust=True, remainder="peel").text
+    compile_and_run(tmp_path, text + "int main(void) { return 0; }\n", flags=(),
+                    warnings=("-std=c89", "-Wall", "-Wextra", "-Werror", "-Wdeclaration-after-statement"))

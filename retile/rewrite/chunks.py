@@ -85,11 +85,11 @@ class Loops(Elements):
         inside = self._with_variable(making, Expression(name, type), loop.constraints())
         start = self._chunk_start(making, type)
         test = self._chunk_test(making, Expression(name, type), loop.length)
-        header = f"{self._layout.header(source).opening}{type.spelling} {name} = {start}; {test}; " \
-                 f"{self._step(name, loop)})"
+        header = f"{name} = {start}; {test}; {self._step(name, loop)})"
         body = Locals(inside)
         self._end_of_chunk(making, body)
-        return Opened(tuple(work.lines), header, tuple(body.lines), work.place, body.place)
+        opened = Opened(tuple(work.lines), header, tuple(body.lines), work.place, body.place)
+        return self._with_declaration(opened, source, f"{type.spelling} {name}")
 
     def _advancing(self, making: _Chunk) -> Opened | None:
         """``for (size_t k_from = 0, k_to; k_from < n; k_from = k_to)``; None if the chunk's end is not known here."""
@@ -113,9 +113,14 @@ class Loops(Elements):
         value = self._chosen_of(chunk_end, making.end, kind, inside.scope, type, aliases)
         start, test = self._chunk_start(making, type), self._chunk_test(making, Expression(name, type), None)
         scope = limit.named_in(inside.scope, to, type)
-        header = f"{self._layout.header(source).opening}{type.spelling} {name} = {start}, {to}; {test}; {name} = {to})"
-        return Opened(tuple(work.lines), header, (f"{to} = {value.text};",), work.place,
-                      Place(scope, (*inside.limits, limit), inside.around))
+        # the second variable is one of the block where the header cannot declare it
+        header = f"{name} = {start}{'' if self._apart else f', {to}'}; {test}; {name} = {to})"
+        opened = Opened(tuple(work.lines), header, (f"{to} = {value.text};",), work.place,
+                        Place(scope, (*inside.limits, limit), inside.around))
+        if self._apart:
+            opened = self._with_declaration(opened, source, f"{type.spelling} {name}")
+            return replace(opened, declared=f"{opened.declared}, {to}")
+        return self._with_declaration(opened, source, f"{type.spelling} {name}")
 
     def _advancing_type(self, making: _Chunk) -> CType | None:
         scope = making.work.place.scope

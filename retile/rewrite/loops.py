@@ -21,7 +21,7 @@ from ..affine import (
     negate,
 )
 from ..model import CType, LoopText, Nest
-from ..tree import Loop, Role, loops_of
+from ..tree import Loop, Node, Role, loops_of
 from .bounds import (
     Limit,
     far_bound,
@@ -77,6 +77,7 @@ class Opened:
     outside: Place  # after it: the declarations ahead of it stay
     inside: Place
     kept: bool = False  # the header is the user's, byte for byte
+    declared: str = ""  # the variables, where the header must not declare them (C90)
 
 
 @dataclass
@@ -100,7 +101,9 @@ def step_of(loop: Loop) -> Affine:
 class Elements:
     """Writes the headers of one variant, but for chunk loops."""
 
-    def __init__(self, nest: Nest, layout: NestText, names: Names, tree: tuple) -> None:
+    def __init__(self, nest: Nest, layout: NestText, names: Names, tree: tuple[Node, ...], apart: bool = False) -> None:
+        """``apart``: whether the user's dialect wants declarations outside of headers."""
+        self._apart = apart
         self._nest = nest
         self._layout = layout
         self._names = names
@@ -414,9 +417,15 @@ class Elements:
         test = comparison(Affine.of(loop.symbol), "<" if upward else ">", end, inside.scope)
         step = self._step(name, loop)
         first = self.in_type(start, type, work.place.scope).text
-        opening = self._layout.header(source).opening
-        return Opened(tuple(work.lines), f"{opening}{type.spelling} {name} = {first}; {test.text}; {step})", (),
-                      work.place, inside)
+        opened = Opened(tuple(work.lines), f"{name} = {first}; {test.text}; {step})", (), work.place, inside)
+        return self._with_declaration(opened, source, f"{type.spelling} {name}")
+
+    def _with_declaration(self, opened: Opened, source: LoopText, declared: str) -> Opened:
+        """The loop with its own variable declared in the header, or ahead of it; the header starts at its name."""
+        opening, (type, _, _) = self._layout.header(source).opening, declared.rpartition(" ")
+        if self._apart:
+            return replace(opened, header=opening + opened.header, declared=declared)
+        return replace(opened, header=f"{opening}{type} {opened.header}")
 
     @staticmethod
     def _step(name: str, loop: Loop) -> str:

@@ -70,7 +70,12 @@ class Printer:
         lines = [indent + self._layout.moved(extent, indent) for extent in remarks.before]
         lines += self._indented(opened.before, indent)
         behind = "".join(" " + self._layout.moved(extent, indent) for extent in remarks.behind)
-        lines += self._body(loop, opened, indent, behind)
+        if opened.declared:
+            inner = indent + self._style.braced_step
+            body = [f"{inner}{opened.declared};", *self._body(loop, opened, inner, behind)]
+            lines += [f"{indent}{{", *body, f"{indent}}}"]
+        else:
+            lines += self._body(loop, opened, indent, behind)
         after = [self._layout.moved(extent, indent) for extent in remarks.after]
         if after:
             lines[-1] += " " + after[0]

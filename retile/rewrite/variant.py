@@ -161,7 +161,7 @@ class _Order:
 
     def _loops(self, layout: NestText, style: Style, names: Names, scope: Scope, indent: str) \
             -> tuple[list[str], list[str]]:
-        loops = Loops(self.nest, layout, names, self.tree)
+        loops = Loops(self.nest, layout, names, self.tree, _is_c90(self.source.call.flags))
         kept = frozenset(loop.symbol for loop in _printed(self.tree)
                          if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
         printer = Printer(self.nest, layout, style, loops, kept)
@@ -222,6 +222,13 @@ class _Order:
         if self.trust and assumptions:
             words.append("--trust")
         return shlex.join([*words, *self.source.call.flags])
+
+
+def _is_c90(flags: tuple[str, ...]) -> bool:
+    """True if the flags choose the C of 1990, whose headers of loops declare nothing."""
+    standards = [flag for flag in flags if flag.startswith("-std=") or flag == "-ansi"]
+    return bool(standards) and standards[-1].removeprefix("-std=") in \
+        ("-ansi", "c89", "c90", "gnu89", "gnu90", "iso9899:1990", "iso9899:199409")
 
 
 def _printed(nodes: tuple[Node, ...]) -> Iterable[Loop]:
