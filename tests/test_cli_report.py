@@ -45,7 +45,7 @@ def test_a_legal_verdict_names_what_it_rests_on_and_what_to_do_next():
     said = lines_of(Judgement(Verdict.LEGAL, Plan("i:64 i", ()), assumptions=(NO_OVERLAP,)))
     assert said.startswith("legal: ")
     assert "  - a and c do not overlap [no-overlap]\n" in said
-    assert "tests it when the function is called" in said
+    assert "tests this when the function is called" in said
     assert said.endswith("Next: retile rewrite --diff grids/relax.c:30 'i:64 i'")
 
 
@@ -54,7 +54,7 @@ def test_what_cannot_be_tested_is_not_promised_to_be():
                               unproven=(Unproven("9", "9", "rows may be the same.", "rows of depth are distinct"),)))
     assert "Not decided for line 9: rows may be the same." in said
     assert "It would be settled by: rows of depth are distinct" in said
-    assert "tests it when" not in said
+    assert "tests this when" not in said
 
 
 def test_a_refusal_shows_its_place():

@@ -13,10 +13,12 @@ from ..report.table import Look
 def look_of(stream: IO[str]) -> Look:
     """How lines should look on a stream: width and colour of a terminal, plain and unbroken elsewhere.
 
-    Honours the convention of ``NO_COLOR`` (any value that is not empty turns colour off).
+    Honours the conventions of ``COLUMNS`` (a width, also for files and pipes) and of ``NO_COLOR`` (any value that is not
+    empty turns colour off).
     """
     if not stream.isatty():
-        return Look()
+        columns = os.environ.get("COLUMNS", "")
+        return Look(int(columns) if columns.isdecimal() and int(columns) > 0 else None)
     import shutil
 
     colour = not os.environ.get("NO_COLOR") and os.environ.get("TERM") != "dumb"

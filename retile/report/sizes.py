@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 
-from ..affine import Affine, formula_names
-from ..model import Nest, RetileError, Statement
+from ..affine import Affine, at_most, formula_names
+from ..model import LoopText, Nest, RetileError, Statement
 from ..sets import Region
 
 _HUGE = 10_000  # how bad a size is at which a loop does not run
@@ -54,14 +54,24 @@ class _Chooser:
     def badness(self, sizes: Mapping[str, int]) -> int:
         """How far the loops are from the wished number of iterations, all together."""
         inside = self._domain.at(sizes)
-        bad = 0
-        for loop in self._loops:
-            low = inside.extreme(Affine.of(loop.id), largest=False)
-            high = inside.extreme(Affine.of(loop.id), largest=True)
-            if low is None or high is None:
-                return _HUGE * len(self._loops)
-            bad += min(_HUGE, abs((high - low) // abs(loop.step) + 1 - self.wish))
-        return bad
+        if inside.is_empty():
+            return _HUGE * len(self._loops)
+        return sum(min(_HUGE, abs(len(loop_values(loop, inside)) - self.wish)) for loop in self._loops)
+
+
+def loop_values(loop: LoopText, inside: Region) -> range:
+    """From the first to the last value of a loop in a bounded region that is not empty, in the loop's own order.
+
+    They lie a step apart if all that occur do; else, as for ``j = i; j < n; j += 2``, one.
+    """
+    value, stride = Affine.of(loop.id), abs(loop.step)
+    low, high = inside.extreme(value, largest=False), inside.extreme(value, largest=True)
+    if low is None or high is None:
+        raise ValueError(f"loop {loop.id} has no bound at fixed sizes")
+    origin = low if loop.step > 0 else high
+    if stride > 1 and not (inside & Region.where(at_most(1, (value - origin).mod(stride)))).is_empty():
+        stride = 1
+    return range(low, high + 1, stride) if loop.step > 0 else range(high, low - 1, -stride)
 
 
 def _fitted(region: Region, wishes: Mapping[str, int]) -> dict[str, int]:

@@ -16,7 +16,7 @@ from ..model import Judgement, LoopText, Nest, Plan, RetileError, Statement
 from ..order import Coordinate, Cut
 from ..sets import Region
 from .links import Frame, Link, links
-from .sizes import choose_sizes
+from .sizes import choose_sizes, loop_values
 
 if TYPE_CHECKING:
     from ..dependence import Dependences
@@ -139,15 +139,7 @@ def _wish(statement: Statement, plan: Plan | None) -> int:
 
 def _axis(loop: LoopText, inside: Region, wish: int, most: int) -> Axis:
     """The values of a loop in a space; only the first ones if there are more than ``most``."""
-    low = inside.extreme(Affine.of(loop.id), largest=False)
-    high = inside.extreme(Affine.of(loop.id), largest=True)
-    if low is None or high is None:
-        raise ValueError(f"loop {loop.id} has no bound at fixed sizes")
-    stride = abs(loop.step)
-    origin = low if loop.step > 0 else high
-    if stride > 1 and not (inside & Region.where(at_most(1, (Affine.of(loop.id) - origin).mod(stride)))).is_empty():
-        stride = 1
-    whole = range(low, high + 1, stride) if loop.step > 0 else range(high, low - 1, -stride)
+    whole = loop_values(loop, inside)
     return Axis(loop, tuple(whole[:wish] if len(whole) > most else whole), len(whole))
 
 

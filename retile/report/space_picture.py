@@ -226,8 +226,12 @@ def _link_shapes(grid: _Grid, link: Link) -> list[Shape]:
 
 def _said(link: Link) -> str:
     ends = ", ".join(map(str, link.distance))
-    return f"{' and '.join(link.kinds)} ({ends}) on {', '.join(link.cells)}" + \
+    return f"{_listed(link.kinds)} ({ends}) on {', '.join(link.cells)}" + \
         (", reversed by the plan" if link.reversed else "")
+
+
+def _listed(words: tuple[str, ...]) -> str:
+    return " and ".join((*([", ".join(words[:-1])] if words[1:] else []), words[-1]))
 
 
 def _legend(space: Space) -> list[tuple[str, str]]:
@@ -238,7 +242,7 @@ def _legend(space: Space) -> list[tuple[str, str]]:
         distances = groups.setdefault((look, link.kinds, link.cells), [])
         distances += [link.distance] if link.distance not in distances else []
     order = ["wrong", *KINDS]
-    return [(look, ("reversed by the plan: " if look == "wrong" else "") + f"{' and '.join(kinds)} on {', '.join(cells)}: "
+    return [(look, ("reversed by the plan: " if look == "wrong" else "") + f"{_listed(kinds)} on {', '.join(cells)}: "
              + ", ".join(f"({', '.join(map(str, d))})" for d in distances))
             for (look, kinds, cells), distances in sorted(groups.items(), key=lambda item: order.index(item[0][0]))]
 

@@ -30,7 +30,7 @@ def verdict_lines(address: Address, judgement: Judgement, place: Place, look: Lo
     lines = [f"{word}: {address} with plan {judgement.plan.text!r}".replace("'", '"'), ""]
     if judgement.verdict is Verdict.LEGAL:
         lines += paragraph("Every variant in this order computes the same as the original, for all sizes.", look)
-    for violation in judgement.violations[:_SHOWN]:
+    for violation in sorted(judgement.violations, key=lambda one: list(_DEEDS).index(one.kind))[:_SHOWN]:
         lines += _separated(lines, violation_lines(violation, look))
     if len(judgement.violations) > _SHOWN:
         more = len(judgement.violations) - _SHOWN
@@ -103,7 +103,7 @@ def assumption_lines(assumptions: Iterable[Assumption], look: Look) -> list[str]
     for assumption in assumptions:
         lines += paragraph(f"{assumption.text} [{assumption.code.value}]", look, "  - ", "    ")
     if all(assumption.testable for assumption in assumptions):
-        lines += paragraph("The variant tests it when the function is called and else runs the original loops.", look)
+        lines += paragraph("The variant tests this when the function is called, and else runs the original loops.", look)
     return lines
 
 
