@@ -140,3 +140,34 @@ def test_the_same_call_gives_the_same_text(tmp_path: Path) -> None:
     text = nest("size_t", *UNDER)
     one, two = (case_of(tmp_path, text).variant("i:4 j:8 i j", remainder="peel") for _ in range(2))
     assert one.text == two.text
+
+
+@pytest.mark.parametrize("remainder", ["clamp", "peel"])
+def test_chunks_whose_size_is_a_constant_of_the_build(remainder: str, tmp_path: Path) -> None:
+    text = nest("int", *RECTANGLE)
+    variant = case_of(tmp_path, text).variant("i:I_CHUNK j:J_CHUNK i j", remainder=remainder).text
+    main = MAIN.replace("TYPE", "int").replace("VARIANTS", "variant0").replace("SIZES", SIZES)
+    for sizes in (("-DI_CHUNK=1", "-DJ_CHUNK=1"), ("-DI_CHUNK=5", "-DJ_CHUNK=8"), ("-DI_CHUNK=100", "-DJ_CHUNK=3")):
+        compile_and_run(tmp_path, together(text, [variant], main), flags=sizes)
+
+
+WAITING = """void survey(int n, int m, unsigned char z[][40][2])
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            unsigned sum = z[i][j][0];
+            for (int k = 0; k < m; k++)
+                sum = sum * 3 + z[k][(i + j) % 40][1];
+            z[i][j][0] = (unsigned char)sum;
+        }
+}
+"""
+
+
+def test_values_that_wait_in_cells_come_back(tmp_path: Path) -> None:
+    variants = [case_of(tmp_path, WAITING).variant(plan, remainder=remainder).text
+                for plan in ("i:4 j:3 k:5 i j k", "i:4 j:3 k:5 k i j") for remainder in ("clamp", "peel")]
+    assert all("sum_kept[" in text for text in variants)
+    names = ", ".join(f"variant{number}" for number in range(len(variants)))
+    main = MAIN.replace("TYPE", "int").replace("VARIANTS", names).replace("SIZES", SIZES)
+    compile_and_run(tmp_path, together(WAITING, variants, main))
