@@ -206,7 +206,7 @@ class Assumption:
     @property
     def testable(self) -> bool:
         """True if the variant can test it when the function is called."""
-        return self.condition is not None or len(self.storages) == 2
+        return self.code is not AssumptionCode.OTHER and (self.condition is not None or len(self.storages) == 2)
 
 
 @dataclass(frozen=True)

@@ -61,8 +61,11 @@ OVERLAPS = {
                              " for (int i = 0; i < s.n; i++) s.d[i] = 1;\n}", []),
     "rows of pointers": ("void sweep(int n, double **rows) {\n for (int i = 0; i < n; i++)\n"
                          "  for (int j = 0; j < n; j++) rows[i][j] = 0;\n}",
-                         ["no-overlap: rows and rows[] do not overlap",
-                          "other: the rows that rows points to do not overlap each other"]),
+                         ["other: the rows that rows points to do not overlap each other or rows itself"]),
+    "rows of pointers that are only read":
+        ("void sweep(int n, double *to, double **rows) {\n for (int i = 0; i < n; i++)\n"
+         "  for (int j = 0; j < n; j++) to[i * n + j] = rows[i][j];\n}",
+         ["no-overlap: rows and to do not overlap", "other: rows[] and to do not overlap"]),
     "a pointer into the same array": ("void sweep(int n, double *a) {\n double *b = a + n;\n"
                                       " for (int i = 0; i < n; i++) b[i] = a[i];\n}", []),
     "a row of an outer loop": ("void sweep(int n, int m, double *a) {\n for (int i = 0; i < n; i++) {\n"

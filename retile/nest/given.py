@@ -111,7 +111,7 @@ def _distinct(nest: Nest, assumptions: list[Assumption], text: str) -> list[Assu
         what = f"'{missing[0]}' is not stored to or read in the nest" if missing else "it takes one name or two"
         raise RetileError(f"wrong --distinct {text}: {what}.\nNames here: {', '.join(sorted(known))}.")
     settled = [replace(a, given=True) if set(a.storages) == set(names) or
-               a.code is AssumptionCode.OTHER and names == [a.storages[0].removesuffix("[]") if a.storages else ""]
+               a.code is AssumptionCode.OTHER and len(a.storages) == 1 and names == [a.storages[0].removesuffix("[]")]
                else a for a in assumptions]
     if settled == assumptions:
         raise RetileError(f"--distinct {text} settles nothing at {nest.address}: no assumption is about that.")

@@ -52,13 +52,20 @@ class _Overlaps:
                 if {one.name, other.name} & self._written and self._may_overlap(one, other):
                     self._assume(AssumptionCode.NO_OVERLAP, one.name, other.name,
                                  f"{one.name} and {other.name} do not overlap")
-            if one.name in self._written and one.name.endswith("[]"):
+            if one.name in self._written and self._are_rows(one.name):
+                table = stored.roots[one.name].key.removesuffix("[]")
                 stored.assumptions.append(Assumption(
-                    AssumptionCode.OTHER, f"the rows that {one.name.removesuffix('[]')} points to do not overlap each other",
+                    AssumptionCode.OTHER, f"the rows that {table} points to do not overlap each other or {table} itself",
                     None, (one.name,)))
         self._hold(self._held())
 
+    def _are_rows(self, name: str) -> bool:
+        """True for what a table of pointers leads to: it has no first cell to compare addresses with."""
+        return name in self._stored.roots and not self._stored.roots[name].text
+
     def _assume(self, code: AssumptionCode, one: str, other: str, text: str) -> None:
+        if self._are_rows(one) or self._are_rows(other):
+            code = AssumptionCode.OTHER
         self._stored.assumptions.append(Assumption(code, text, None, (one, other)))
 
     # ------------------------------------------------------------ bounds and pointers in memory
@@ -117,8 +124,7 @@ class _Overlaps:
 
     def _direct(self, one: _Held, name: str) -> None:
         """A store to the same object: harmless if it is another member, which other indices do not change."""
-        shown = name.replace("->", ".", 1)
-        if shown != one.cell:
+        if self._stored.keys.get(name) != one.cell:
             return
         node = self._nodes.get(name)
         self._stored.refusals.append(refusal(
@@ -128,8 +134,8 @@ class _Overlaps:
     # ------------------------------------------------------------ may two overlap?
 
     def _may_overlap(self, one: Storage, other: Storage) -> bool:
-        if one.object == other.object:
-            return False
+        if one.object == other.object or f"{one.object}[]" == other.object or f"{other.object}[]" == one.object:
+            return False  # members of one structure; rows and their table, which have an assumption of their own
         return self._roots_meet(self._stored.roots[one.name], self._stored.roots[other.name])
 
     def _roots_meet(self, one: Root, other: Root) -> bool:

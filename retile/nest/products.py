@@ -79,6 +79,8 @@ def _upper_form(setting: Setting, form: Affine, context: Context) -> Affine | No
     mark = "~top"
     known = setting.knowledge
     region = (known.region(context.formula) & Region.where(equal(Affine.of(mark), form))).without(context.loops)
+    if region.is_empty():
+        return Affine()
     for piece in (*region.pieces(), *region.hull().pieces()):
         for constraint in piece:
             factor = constraint.form.coefficient(mark)

@@ -27,6 +27,7 @@ class Stored:
 
     storages: list[Storage] = field(default_factory=list)
     roots: dict[str, Root] = field(default_factory=dict)  # by storage name
+    keys: dict[str, str] = field(default_factory=dict)  # by storage name: the same for all cells that it stands for
     accesses: dict[tuple[int, int], Access] = field(default_factory=dict)  # by statement and touch number
     refusals: list[Refusal] = field(default_factory=list)
     obligations: list[Obligation] = field(default_factory=list)
@@ -81,6 +82,7 @@ class _Builder:
             name, place.root.key, StorageKind.SCALAR, self._element(place.type), self._bytes(place), (), (), False, scope,
             web.role, web.private_to, live, place.root.text, "const" in place.quals))
         self.stored.roots[name] = place.root
+        self.stored.keys[name] = place.key
         for order, touch in web.touches:
             self.stored.accesses[order] = _access(touch, name, (), self._span(order))
 
@@ -138,6 +140,7 @@ class _Builder:
             name, root.key, root.kind, self._element(place.type), self._bytes(place), tuple(shape), strides, root.restrict,
             scope, None, private, live, self._address(place), "const" in place.quals))
         self.stored.roots[name] = root
+        self.stored.keys[name] = key
         for (order, touch), column in zip(touches, columns, strict=True):
             known = [part for part in column if part is not None]
             subscripts = tuple(form for part in known for form in part) if len(known) == len(column) else None
