@@ -13,7 +13,7 @@ from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, at_most
 from ..dependence import Dependences, Edge, original_times
-from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan, Refusal, Statement, StorageKind,
+from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan, Refusal, Statement,
                      Unproven, Verdict, Violation)
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
@@ -169,15 +169,8 @@ class _Court:
             if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
                 if self._could_reverse(assumption.storages[0], assumption.storages[1], reorders):
                     yield assumption
-            elif assumption.code is AssumptionCode.ROW_BOUND:
-                if any(self._could_reverse(name, name, reorders) for name in self._flattened()):
-                    yield assumption
             elif not self.is_identity():
-                yield assumption
-
-    def _flattened(self) -> tuple[str, ...]:
-        return tuple(storage.name for storage in self._nest.storages
-                     if storage.kind is not StorageKind.SCALAR and storage.strides)
+                yield assumption  # row lengths too: the loops' bounds are built under them
 
     def is_identity(self) -> bool:
         """True if the plan is the original order, loop for loop."""
