@@ -8,12 +8,12 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from ..model import LoopText, Nest, RetileError
 from ..source.lex import SKIPPED, Token, tokenize
 from ..source.structure import Malformed, Shape, compound
-from ..tree import Guard, Loop, Node, Verbatim, children
+from ..tree import Guard, Kept, Leaf, Loop, Node, Verbatim, children
 
 
 class InternalError(RetileError):
@@ -61,8 +61,11 @@ class NestText:
         except Malformed as error:
             raise InternalError(f"{nest.address}: the text of the nest is not one statement") from error
         self._shapes = {self._start(shape): shape for shape in _shapes(self._root) if shape.kind == "for"}
+        self._conditions = {self._solid[shape.marks[1] + 1].start: shape for shape in _shapes(self._root)
+                            if shape.kind == "if"}
         named = {node.symbol for node in _nodes(tree) if isinstance(node, Loop)}
         self._named = {loop.span.start for loop in nest.loops if loop.id in named}
+        self.tree = tree = tuple(self._separated(tree))
         guards = {node.span[0] for node in _nodes(tree) if isinstance(node, Guard) and node.span is not None}
         self._guards = guards
         self._spans = {node.span for node in _nodes(tree) if isinstance(node, Verbatim)}
@@ -97,6 +100,11 @@ class NestText:
         if not inside:
             return ""
         return self.text[self._solid[inside[0]].start:self._solid[inside[-1]].end]
+
+    def first_inside(self, loop: LoopText) -> int:
+        """Where the first statement of the loop's body starts, behind a brace."""
+        body = self.loop_shape(loop).children[0]
+        return self._start(body.children[0] if body.kind == "compound" and body.children else body)
 
     def braced(self, loop: LoopText) -> bool:
         """True if the user put the loop's body in braces."""
@@ -144,6 +152,92 @@ class NestText:
         """True if the next statement that is taken is a piece, which takes the free ones before it along."""
         at += self._free(siblings, at)
         return at < len(siblings) and not self._holds_named(siblings[at])
+
+    # ---------------------------------------------------------------- conditions
+
+    def _separated(self, nodes: Iterable[Node]) -> Iterator[Node]:
+        """The nodes with pieces cut where they hold one branch of an ``if`` in whose other branch a named loop stands.
+
+        Such an ``if`` cannot move as text: its branches go different ways, each under the condition.
+        """
+        for node in nodes:
+            if isinstance(node, Verbatim):
+                yield from self._cut(node)
+            elif isinstance(node, Loop | Guard | Kept):
+                yield replace(node, body=tuple(self._separated(node.body)))
+            else:
+                yield node
+
+    def _cut(self, piece: Verbatim) -> Iterator[Node]:
+        apart = [node for node in piece.content if isinstance(node, Guard) and self._is_taken_apart(node)]
+        if not apart:
+            yield piece
+            return
+        run: list[Node] = []
+        for node in (*piece.content, None):
+            if node is not None and node not in apart:
+                run.append(node)
+                continue
+            spans = {guard.span for guard in apart}
+            run = [one for one in run if not (isinstance(one, Leaf) and self._statement_span(one) in spans)]
+            if run:
+                yield Verbatim(self._extent(run), tuple(run))
+                run = []
+            if isinstance(node, Guard):
+                self._check_repeatable(node)
+                inner = Verbatim(self._extent(node.body), node.body)
+                yield replace(node, body=tuple(self._separated((inner,))))
+
+    def _is_taken_apart(self, guard: Guard) -> bool:
+        shape = self._conditions.get(guard.span[0]) if guard.span is not None else None
+        return shape is not None and self._holds_named(shape)
+
+    def _check_repeatable(self, guard: Guard) -> None:
+        """A condition on data is asked once per branch now: nothing that it reads may change in between."""
+        written = {access.storage for one in self._nest.statements for access in one.accesses if access.write}
+        asked = [one for one in self._nest.statements if (one.span.start, one.span.end) == guard.span]
+        if guard.condition is None and (not asked or any(access.storage in written for access in asked[0].accesses)):
+            raise RetileError(f"{self._nest.address}: the plan takes the branches of a condition apart whose data the nest "
+                              "changes.\nName only loops that stand outside of it.")
+
+    def _statement_span(self, leaf: Leaf) -> tuple[int, int]:
+        span = self._nest.statement(leaf.statement).span
+        return span.start, span.end
+
+    def _extent(self, nodes: Iterable[Node]) -> tuple[int, int]:
+        """From the first to the last character of the statements in some nodes."""
+        spans = list(self._spans_in(nodes))
+        return min(start for start, _ in spans), max(end for _, end in spans)
+
+    def _spans_in(self, nodes: Iterable[Node]) -> Iterator[tuple[int, int]]:
+        for node in nodes:
+            if isinstance(node, Leaf):
+                yield self._statement_span(node)
+            elif isinstance(node, Loop):
+                span = self._nest.loop(node.of).span
+                yield span.start, span.end
+            else:
+                if isinstance(node, Guard) and node.span is not None:
+                    yield node.span
+                yield from self._spans_in(children(node))
+
+    def in_false_branch(self, guard: Guard) -> bool:
+        """True if what a condition of the user's guards stands behind its ``else``."""
+        shape = self._conditions.get(guard.span[0]) if guard.span is not None else None
+        if shape is None:
+            raise InternalError(f"{self._nest.address}: a condition is not that of an if")
+        place = min(self._places(guard.body))
+        return len(shape.children) == 2 and place >= self._start(shape.children[1])
+
+    def _places(self, nodes: Iterable[Node]) -> Iterator[int]:
+        """Where the text of some nodes of the printed tree stands."""
+        for node in nodes:
+            if isinstance(node, Verbatim):
+                yield node.span[0]
+            elif not isinstance(node, Leaf):
+                yield from self._places(children(node))
+
+    # ---------------------------------------------------------------- siblings
 
     def _siblings(self, span: tuple[int, int]) -> tuple[tuple[Shape, ...], int | None, int | None]:
         """The statements of the innermost block of the nest that moves and holds the span, with its braces."""

@@ -191,6 +191,7 @@ class Printer:
             inside = replace(place, scope=place.scope.knowing(guard.condition))
         if guard.span is not None:
             text = self._layout.moved(guard.span, indent)
+            text = f"!({text})" if self._layout.in_false_branch(guard) else text
         elif guard.condition is not None:
             text = self._style.wrapped(condition(guard.condition, place.scope), indent + "if (")
         else:

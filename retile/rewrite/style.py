@@ -75,15 +75,10 @@ def _step(nest: Nest, layout: NestText, braced: bool) -> str:
     for loop in nest.loops:
         if layout.braced(loop) is not braced:
             continue
-        outer = layout.indentation(loop.span.start)
-        spans = (*(inner.span for inner in nest.loops), *(statement.span for statement in nest.statements))
-        for span in spans:
-            if span.start < loop.body.start or span.end > loop.span.end or span.line == loop.span.line:
-                continue
-            indent = layout.indentation(span.start)
-            if indent.startswith(outer) and len(indent) > len(outer):
-                return indent[len(outer):]
-            break
+        outer, start = layout.indentation(loop.span.start), layout.first_inside(loop)
+        inner = layout.indentation(start)
+        if "\n" in layout.text[loop.header.end:start] and inner.startswith(outer) and len(inner) > len(outer):
+            return inner[len(outer):]
     return ""
 
 

@@ -165,7 +165,7 @@ class _Order:
         kept = frozenset(loop.symbol for loop in _printed(self.tree)
                          if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
         printer = Printer(self.nest, layout, style, loops, kept)
-        lines = printer.nodes(self.tree, Place(scope), indent)
+        lines = printer.nodes(layout.tree, Place(scope), indent)
         return lines, printer.homeless
 
     def _assumptions(self) -> tuple[Assumption, ...]:
