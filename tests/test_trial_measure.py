@@ -1,6 +1,5 @@
 """Timing, the records that it leaves, and their files."""
 
-import glob
 import json
 import os
 import signal
@@ -123,21 +122,30 @@ def test_short_calls_come_with_a_warning(sums):
 
 # ---------------------------------------------------------------- leaving early
 
-def _left_behind():
-    return set(glob.glob(os.path.join(tempfile.gettempdir(), "retile-trial-*")))
+@pytest.fixture
+def scratch(tmp_path, monkeypatch):
+    """A place for temporary files of this test alone."""
+    folder = tmp_path / "scratch"
+    folder.mkdir()
+    monkeypatch.setattr(tempfile, "tempdir", str(folder))
+    return folder
 
 
-def test_the_scratch_folder_goes(sums):
-    before = _left_behind()
-    measure(sums.source, sums.nest, [sums.variant(BY_ROWS, "i j")], SIZES, QUICK)
+def _trials_in(folder):
+    return [path.name for path in folder.iterdir() if path.name.startswith("retile-trial-")]
+
+
+def test_the_scratch_folder_goes(sums, scratch):
+    seen = []
+    measure(sums.source, sums.nest, [sums.variant(BY_ROWS, "i j")], SIZES, QUICK, lambda event: seen.append(_trials_in(scratch)))
+    assert seen and all(len(names) == 1 for names in seen)
     with pytest.raises(RetileError):
         measure(sums.source, sums.nest, [], {}, QUICK)
-    assert _left_behind() <= before
+    assert _trials_in(scratch) == []
 
 
 @pytest.mark.parametrize("signal_number", [signal.SIGINT, signal.SIGTERM])
-def test_interrupted_campaigns_keep_what_they_have(sums, signal_number):
-    before = _left_behind()
+def test_interrupted_campaigns_keep_what_they_have(sums, scratch, signal_number):
     began = time.monotonic()
 
     def on_progress(event):
@@ -149,7 +157,7 @@ def test_interrupted_campaigns_keep_what_they_have(sums, signal_number):
     assert campaign.interrupted and time.monotonic() - began < 30
     assert campaign.trials[0].verified and campaign.trials[0].samples
     assert campaign.as_json()["interrupted"] is True
-    assert _left_behind() <= before
+    assert _trials_in(scratch) == []
 
 
 def test_interrupted_before_timing(sums):
