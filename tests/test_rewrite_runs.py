@@ -10,6 +10,10 @@ from pathlib import Path
 import pytest
 from rewriting import case_of, compile_and_run, compilers, renamed, together
 
+from retile.dependence import analyse
+from retile.model import RetileError, Verdict
+from retile.plan import judge, parse_plan
+
 SIZES = "0, 1, 2, 3, 7, 8, 9, 15, 16, 17, 31, 33, 38"
 
 MAIN = """
@@ -171,3 +175,52 @@ def test_values_that_wait_in_cells_come_back(tmp_path: Path) -> None:
     names = ", ".join(f"variant{number}" for number in range(len(variants)))
     main = MAIN.replace("TYPE", "int").replace("VARIANTS", names).replace("SIZES", SIZES)
     compile_and_run(tmp_path, together(WAITING, variants, main))
+
+
+BRANCHES = """void survey(int n, int m, unsigned char z[][40][2])
+{
+    for (int i = 0; i < n; i++)
+        if (i < m)
+            for (int j = 0; j < n; j++)
+                z[i][j][0] += 1 + z[i][j][1]++;
+        else
+            for (int j = 0; j < m; j++)
+                z[i][j][0] += 2 + z[i][j][1]++;
+}
+"""
+
+
+def test_branches_that_go_different_ways_keep_their_condition(tmp_path: Path) -> None:
+    plans = ["j@5 i", "i:4 j@5 i", "j@5:4 i j@5 j@8", "j@8 i", "j@8:4 i j@8 j@5"]
+    variants = [case_of(tmp_path, BRANCHES).variant(plan, remainder=remainder).text
+                for plan in plans for remainder in ("clamp", "peel")]
+    names = ", ".join(f"variant{number}" for number in range(len(variants)))
+    main = MAIN.replace("TYPE", "int").replace("VARIANTS", names).replace("SIZES", SIZES)
+    compile_and_run(tmp_path, together(BRANCHES, variants, main), optimize="-O0")
+
+
+ASKED = """void survey(int n, int m, unsigned char z[][40][2])
+{
+    for (int i = 0; i < n; i++)
+        if (z[i][39][0] % 2 == m % 2)
+            for (int j = 0; j < 30; j++)
+                z[i][j][1] += 1;
+        else
+            for (int j = 0; j < 30; j++)
+                z[i][j][1] += 2;
+}
+"""
+
+
+def test_branches_under_data_are_taken_apart_only_if_the_data_stays(tmp_path: Path) -> None:
+    separate = ASKED.replace("unsigned char z[][40][2]", "unsigned char z[][40][2], const unsigned char *restrict key") \
+        .replace("z[i][39][0]", "key[i]")
+    text = case_of(tmp_path, separate).variant("j@5 i", trust=True).nest_text
+    assert "if (key[i] % 2 == m % 2) {" in text and "if (!(key[i] % 2 == m % 2)) {" in text
+    case = case_of(tmp_path, ASKED.replace("[j][1]", "[j][0]"))
+    dependences = analyse(case.nest)
+    for plan in ("j@5 i", "j@8 i"):
+        judgement = judge(case.nest, dependences, parse_plan(plan, case.nest))
+        if judgement.verdict is Verdict.LEGAL:
+            with pytest.raises(RetileError, match="takes the branches of a condition apart"):
+                case.variant(plan)

@@ -50,9 +50,19 @@ class Expression:
 
 def written(text: str, type: CType) -> Expression:
     """An expression that the user wrote, of unknown structure."""
-    if _ATOM.match(text):
+    if _ATOM.match(text) or _in_parentheses(text):
         return Expression(text, type)
     return Expression(text, type, SUM if _SIMPLE_SUM.match(text) else CHOICE)
+
+
+def _in_parentheses(text: str) -> bool:
+    """True if the first character is a parenthesis that the last one closes."""
+    depth = 0
+    for at, character in enumerate(text):
+        depth += (character == "(") - (character == ")")
+        if depth == 0:
+            return at == len(text) - 1 and text.startswith("(")
+    return False
 
 
 def promoted(type: CType) -> CType:
@@ -363,12 +373,22 @@ def comparison(left: Affine, relation: str, right: Affine, scope: Scope,
     if left.constant and rest.terms:
         sides.append((rest, relation, right - left.constant))
     distance = [(right - rest, FLIPPED[relation], Affine((), left.constant))] if left.constant and rest.terms else []
-    for wide, arrangements in ((False, sides), (True, sides[:1]), (False, distance), (True, [*sides, *distance])):
+    splits = [(one, relation, other) for one, other in _splits(left - right)]
+    for wide, arrangements in ((False, sides), (True, sides[:1]), (False, distance), (True, [*sides, *distance]),
+                               (False, splits), (True, splits)):
         for a, sign, b in arrangements:
             found = _compared(a, sign, b, scope, aliases, wide)
             if found is not None:
                 return found
     raise NoRoom(f"{left} {relation} {right}")
+
+
+def _splits(form: Affine) -> Iterator[tuple[Affine, Affine]]:
+    """All ways to write ``form rel 0`` with its terms on two sides, for forms of few terms."""
+    for mask in range(1 << len(form.terms)) if len(form.terms) <= 4 else ():
+        left = Affine.build({s: c for at, (s, c) in enumerate(form.terms) if mask >> at & 1})
+        for one in (left, left + form.constant):
+            yield one, one - form
 
 
 def _shared(a: Affine, b: Affine) -> Affine:
