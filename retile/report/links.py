@@ -1,7 +1,7 @@
 """Which dependences a picture of an iteration space shows.
 
-At fixed sizes a dependence is a finite set of pairs of iterations.  Pairs are sorted by their distance.  A distance that
-is the sum of two others says little new about the order and is left out, but every kind keeps one.
+At fixed sizes a dependence is a finite set of pairs of iterations.  Pairs are sorted by their distance.  A distance
+that is the sum of two others says little new about the order and is left out, but every kind keeps one.
 """
 
 from __future__ import annotations

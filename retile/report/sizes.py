@@ -12,7 +12,8 @@ _HUGE = 10_000  # how bad a size is at which a loop does not run
 _ROUNDS = 2
 
 
-def choose_sizes(nest: Nest, statement: Statement, domain: Region, given: Mapping[str, int], wish: int) -> dict[str, int]:
+def choose_sizes(nest: Nest, statement: Statement, domain: Region, given: Mapping[str, int],
+                 wish: int) -> dict[str, int]:
     """A value for every parameter, by symbol, that satisfies facts and assumptions.
 
     The loops around ``statement``, whose instances ``domain`` holds, get about ``wish`` iterations each.  Raises
@@ -68,8 +69,7 @@ def loop_values(loop: LoopText, inside: Region) -> range:
     low, high = inside.extreme(value, largest=False), inside.extreme(value, largest=True)
     if low is None or high is None:
         raise ValueError(f"loop {loop.id} has no bound at fixed sizes")
-    origin = low if loop.step > 0 else high
-    if stride > 1 and not (inside & Region.where(at_most(1, (value - origin).mod(stride)))).is_empty():
+    if stride > 1 and not (inside & Region.where(at_most(1, (value - low).mod(stride)))).is_empty():
         stride = 1
     return range(low, high + 1, stride) if loop.step > 0 else range(high, low - 1, -stride)
 

@@ -83,9 +83,9 @@ def iteration_space(nest: Nest, dependences: Dependences, sizes: Mapping[str, in
         at_most(min(axis.values), Affine.of(axis.loop.id)), at_most(Affine.of(axis.loop.id), max(axis.values)))))
     points = tuple(shown.points(statement.loops))
     if not points:
-        raise RetileError(f"{nest.address}: the first iterations of these loops hold no point to draw; "
-                          f"choose smaller sizes with --set.")
-    walk = _walk(nest, statement, plan, judgement, points, chosen) if plan is not None and judgement is not None else None
+        raise RetileError(f"{nest.address}: line {statement.id} is not executed in the first iterations of all "
+                          f"its loops; choose smaller sizes with --set, or the address of an inner loop.")
+    walk = _walk(nest, statement, plan, judgement, points, chosen)
     frame = Frame(statement.loops, tuple(nest.loop(id).step for id in statement.loops), shown,
                   tuple(axis.values for axis in axes), {p: at for at, p in enumerate(walk.points)} if walk else {})
     found, notes = links(nest, dependences, frame, chosen)
@@ -102,8 +102,8 @@ def _deepest(nest: Nest) -> Statement:
     if len(statement.loops) <= DEEPEST:
         return statement
     inner = nest.loop(statement.loops[-DEEPEST])
-    raise RetileError(f"{nest.address}: line {statement.id} stands in {len(statement.loops)} loops of this nest; --space "
-                      f"draws one, two or three. Give the address of an inner loop, such as "
+    raise RetileError(f"{nest.address}: line {statement.id} stands in {len(statement.loops)} loops of this nest; "
+                      f"--space draws one, two or three. Give the address of an inner loop, such as "
                       f"{nest.address.file}:{inner.span.line} (loop {inner.id}).")
 
 
@@ -145,9 +145,11 @@ def _axis(loop: LoopText, inside: Region, wish: int, most: int) -> Axis:
 
 # ---------------------------------------------------------------- the plan's order
 
-def _walk(nest: Nest, statement: Statement, plan: Plan, judgement: Judgement, points: tuple[Values, ...],
-          sizes: Mapping[str, int]) -> Walk:
+def _walk(nest: Nest, statement: Statement, plan: Plan | None, judgement: Judgement | None,
+          points: tuple[Values, ...], sizes: Mapping[str, int]) -> Walk | None:
     """The points in the order of a plan, and among those that the plan leaves together in the original order."""
+    if plan is None or judgement is None:
+        return None
     from ..dependence import original_times
     from ..plan.schedule import moment, moments
 
@@ -158,7 +160,8 @@ def _walk(nest: Nest, statement: Statement, plan: Plan, judgement: Judgement, po
     values = {point: {**sizes, **dict(zip(statement.loops, point, strict=True))} for point in points}
     chunks = {point: tuple(level.evaluate(values[point]) for level in levels) for point in points}
     outer = {point: tuple(chunks[point][at] for at in first) for point in points}
-    return Walk(plan, judgement, tuple(sorted(points, key=lambda point: _evaluated(time, values[point]))), outer, chunks)
+    ordered = sorted(points, key=lambda point: _evaluated(time, values[point]))
+    return Walk(plan, judgement, tuple(ordered), outer, chunks)
 
 
 def _evaluated(time: Sequence[Coordinate], values: Mapping[str, int]) -> Values:
@@ -179,4 +182,4 @@ def _too_large(walk: Walk | None) -> list[str]:
     chunked = [term for term in walk.plan.terms if term.chunk is not None]
     if not chunked or len(set(walk.chunks.values())) > 1:
         return []
-    return ["All of this lies in one chunk: choose smaller chunks, or larger sizes with --set, to see where the plan cuts."]
+    return ["All of this lies in one chunk: smaller chunks, or larger sizes with --set, show where the plan cuts."]

@@ -146,8 +146,9 @@ def _axes(grid: _Grid) -> list[Shape]:
     shapes: list[Shape] = []
     for panel, value in enumerate(grid.panels):
         x, y = grid.corner(panel)
-        said = [Words(x, y - 2 * _LINE - 5, f"{grid.space.axes[0].loop.id} = {value}", "strong")] if value is not None else []
-        said.append(Words(x + 4, y - _LINE - 5, f"{grid.columns.loop.id} →", "small"))
+        said = [Words(x + 4, y - _LINE - 5, f"{grid.columns.loop.id} →", "small")]
+        if value is not None:
+            said.append(Words(x, y - 2 * _LINE - 5, f"{grid.space.axes[0].loop.id} = {value}", "strong"))
         said += [Words(x + grid.cell * (at + 0.5), y - 5, str(v), "small", "middle")
                  for at, v in enumerate(grid.columns.values)]
         if grid.rows is not None:
@@ -176,8 +177,9 @@ def _chunks(grid: _Grid) -> list[Shape]:
     for (panel, row, column), point in at.items():
         x, y = grid.centre(point)
         cells.append(Rect(x - half, y - half, grid.cell, grid.cell, "odd" if sum(walk.outer[point]) % 2 else "even"))
-        for beside, line in (((panel, row, column + 1), f"M{number(x + half)} {number(y - half)} v{number(grid.cell)}"),
-                             ((panel, row + 1, column), f"M{number(x - half)} {number(y + half)} h{number(grid.cell)}")):
+        left, top, right, bottom = map(number, (x - half, y - half, x + half, y + half))
+        for beside, line in (((panel, row, column + 1), f"M{right} {top} V{bottom}"),
+                             ((panel, row + 1, column), f"M{left} {bottom} H{right}")):
             other = at.get(beside)
             if other is not None and walk.chunks[other] != walk.chunks[point]:
                 borders.append(Path(line, "border" if walk.outer[other] != walk.outer[point] else "minor"))
