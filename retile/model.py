@@ -274,6 +274,16 @@ class Place:
 
 
 @dataclass(frozen=True)
+class Alignment:
+    """A statement outside a loop that stands where the loop has a value."""
+
+    statement: str
+    loop: str
+    value: Affine  # in the statement's iterators and the parameters
+    chunks_only: bool  # it goes with the chunk that holds the value, but before or after its single iterations
+
+
+@dataclass(frozen=True)
 class Plan:
     """A new order for a nest."""
 
@@ -281,8 +291,7 @@ class Plan:
     terms: tuple[Term, ...]  # outermost first
     options: tuple[tuple[str, str], ...] = ()  # after the ``;``: (word, value)
     places: tuple[tuple[str, tuple[Place, ...]], ...] = ()  # per statement id, one place per term
-    # (statement, loop, value): a statement outside a loop that stands where the loop has this value
-    aligned: tuple[tuple[str, str, Affine], ...] = ()
+    aligned: tuple[Alignment, ...] = ()
     copied: tuple[str, ...] = ()  # statements that run again wherever their value is needed
     kept: tuple[str, ...] = ()  # private scalars whose values wait in a small array of the variant's own
 

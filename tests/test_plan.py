@@ -151,7 +151,7 @@ def final_values(nest: Nest, order: list[Run]) -> dict[tuple, object]:
 
 def test_pivot_statement_waits_for_its_column() -> None:
     plan = judge(FACTORISATION, analyse(FACTORISATION), parse_plan("j:3 k i@21 i@23 j", FACTORISATION)).plan
-    assert [(id, loop, str(value)) for id, loop, value in plan.aligned] == [("22", "j", "k")]
+    assert [(a.statement, a.loop, str(a.value)) for a in plan.aligned] == [("22", "j", "k")]
 
 
 @pytest.mark.parametrize("text", ["k:2 i j k", "i:2 k:2 i j k", "i:200 j:300 k:2 i j k"])

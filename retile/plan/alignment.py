@@ -15,11 +15,11 @@ from collections.abc import Callable, Iterator
 from dataclasses import replace
 
 from ..affine import Affine, bound_names
-from ..model import Nest, Plan, Statement
+from ..model import Alignment, Nest, Plan, Statement
 from .schedule import placed
 
 # Plans that are judged in one search; every step tries each candidate of each open slot once.
-_MOST_TRIALS = 160
+_MOST_TRIALS = 200
 
 Cost = Callable[[Plan], tuple[int, frozenset[str]]]
 
@@ -33,11 +33,11 @@ def settled(plan: Plan, nest: Nest, cost: Cost) -> Plan | None:
     wrong, ends = cost(current)
     while wrong:
         best: tuple[int, frozenset[str], Plan] | None = None
-        for statement, loop, value in _candidates(current, nest, ends):
+        for new in _candidates(current, nest, ends):
             trials += 1
             if trials > _MOST_TRIALS:
                 return None
-            aligned = (*(a for a in current.aligned if a[:2] != (statement, loop)), (statement, loop, value))
+            aligned = (*(a for a in current.aligned if (a.statement, a.loop) != (new.statement, new.loop)), new)
             trial = placed(replace(current, aligned=aligned), nest)
             count, trial_ends = cost(trial)
             if count < (best[0] if best else wrong):
@@ -50,13 +50,16 @@ def settled(plan: Plan, nest: Nest, cost: Cost) -> Plan | None:
     return current
 
 
-def _candidates(plan: Plan, nest: Nest, ends: frozenset[str]) -> Iterator[tuple[str, str, Affine]]:
+def _candidates(plan: Plan, nest: Nest, ends: frozenset[str]) -> Iterator[Alignment]:
+    chunked = {loop for term in plan.terms if term.chunk is not None for loop, _ in term.form}
     for statement in nest.statements:
         for loop in plan.moved if statement.id in ends else ():
             if loop not in statement.loops:
                 for value in _values(statement, loop, nest):
-                    if (statement.id, loop, value) not in plan.aligned:
-                        yield statement.id, loop, value
+                    for chunks_only in (True, False) if loop in chunked else (False,):
+                        candidate = Alignment(statement.id, loop, value, chunks_only)
+                        if candidate not in plan.aligned:
+                            yield candidate
 
 
 def _values(statement: Statement, id: str, nest: Nest) -> Iterator[Affine]:
@@ -64,7 +67,7 @@ def _values(statement: Statement, id: str, nest: Nest) -> Iterator[Affine]:
     loop = nest.loop(id)
     known = {*statement.loops, *(parameter.symbol for parameter in nest.parameters)}
     seen: set[Affine] = set()
-    near = [Affine.of(name) for name in reversed(statement.loops)]
+    near = [Affine.of(name) + shift for name in reversed(statement.loops) for shift in (0, 1, -1, 2)]
     for bound in (loop.first, loop.last):
         if isinstance(bound, Affine) and bound_names(bound) <= known:
             near += [bound - loop.step, bound, bound + loop.step]

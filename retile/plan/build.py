@@ -25,7 +25,7 @@ from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Role, Verbatim, loops_of
 from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
 from .grammar import form_text
 from .kept import Keeping, keeping
-from .schedule import AFTER, BEFORE, INSIDE, placed, skewed_coordinate
+from .schedule import AFTER, BEFORE, INSIDE, placed, skewed_coordinate, standing
 from .units import Unit, statements_in, units
 
 
@@ -41,9 +41,6 @@ class _Builder:
         self._plan = plan
         self._context = defined(nest)
         self._parameters = tuple(parameter.symbol for parameter in nest.parameters)
-        self._aligned: dict[str, dict[str, Affine]] = {}
-        for statement, loop, value in plan.aligned:
-            self._aligned.setdefault(statement, {})[loop] = value
         kept = (keeping(nest, plan, nest.storage(name)) for name in plan.kept)
         self._kept = tuple(keep for keep in kept if keep is not None)
         self._constants = tuple(term.chunk for term in plan.terms if isinstance(term.chunk, str))
@@ -129,7 +126,7 @@ class _Builder:
         return term.chunk is None and all(term.loop not in unit.loops for unit in members)
 
     def _leaf(self, unit: Unit, known: Region, outer: tuple[Loop, ...]) -> Node:
-        node: Node = Verbatim(unit.span, _standing(unit.nodes, self._aligned))
+        node: Node = Verbatim(unit.span, _marked(unit.nodes, self._plan))
         around = known & self._context
         for guard in reversed(unit.guards):
             if guard.condition is None or not around.implies(guard.condition):
@@ -142,8 +139,9 @@ class _Builder:
         conditions: list[Formula] = [self._source(loop).constraints() for loop in unit.loops]
         if guarded:
             conditions += [guard.condition for guard in unit.guards if guard.condition is not None]
-        present = {*unit.loops, *self._aligned.get(unit.statement, {})}
-        conditions += [equal(Affine.of(loop), value) for loop, value in self._aligned.get(unit.statement, {}).items()]
+        aligned = standing(self._plan, unit.statement)
+        present = {*unit.loops, *aligned}
+        conditions += [equal(Affine.of(loop), value) for loop, value in aligned.items()]
         conditions += [self._chunk_link(term) for term in self._plan.terms if term.chunk is not None
                        and all(loop in present for loop, _ in term.form)]
         return Region.where(*conditions) & self._context
@@ -235,12 +233,12 @@ class _Builder:
         yield from _cut(frame, source, chunks)
 
 
-def _standing(nodes: tuple[Node, ...], aligned: dict[str, dict[str, Affine]]) -> tuple[Node, ...]:
+def _marked(nodes: tuple[Node, ...], plan: Plan) -> tuple[Node, ...]:
     """The nodes with the values at which their statements stand noted in the leaves."""
-    if not aligned:
+    if not plan.aligned:
         return nodes
-    return tuple(replace(node, aligned=tuple(aligned.get(node.statement, {}).items())) if isinstance(node, Leaf)
-                 else replace(node, body=_standing(node.body, aligned)) if isinstance(node, Loop | Guard)
+    return tuple(replace(node, aligned=tuple(standing(plan, node.statement).items())) if isinstance(node, Leaf)
+                 else replace(node, body=_marked(node.body, plan)) if isinstance(node, Loop | Guard)
                  else node for node in nodes)
 
 

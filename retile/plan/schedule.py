@@ -22,11 +22,8 @@ def placed(plan: Plan, nest: Nest) -> Plan:
     A statement inside the loops of a term takes the loops' own place, and so does one that the plan aligns with them;
     any other stands before the first value or after the last one, as the text has it.
     """
-    aligned: dict[str, dict[str, Affine]] = {}
-    for statement, loop, value in plan.aligned:
-        aligned.setdefault(statement, {})[loop] = value
-    places = tuple((statement.id, tuple(_place(term, statement, nest, aligned.get(statement.id, {}))
-                                        for term in plan.terms)) for statement in nest.statements)
+    places = tuple((statement.id, tuple(_place(term, statement, nest, plan) for term in plan.terms))
+                   for statement in nest.statements)
     for id in plan.copied:
         last = last_bare(plan, nest.statement(id).loops)
         places = tuple((name, tuple(Place(INSIDE, None) if at < last and place.form is None else place
@@ -48,12 +45,18 @@ def stays_whole(plan: Plan, loops: tuple[str, ...]) -> bool:
     return all(loop in loops for term in plan.terms[:last_bare(plan, loops) + 1] for loop, _ in term.form)
 
 
-def _place(term: Term, statement: Statement, nest: Nest, aligned: dict[str, Affine]) -> Place:
+def _place(term: Term, statement: Statement, nest: Nest, plan: Plan) -> Place:
+    aligned = standing(plan, statement.id, term.chunk is not None)
     missing = [loop for loop, _ in term.form if loop not in statement.loops and loop not in aligned]
     if not missing:
         return Place(INSIDE, moment(term, nest).substitute(aligned))
     before = statement.span.start < nest.loop(missing[0]).span.start
     return Place(BEFORE if before else AFTER, None)
+
+
+def standing(plan: Plan, statement: str, chunks: bool = True) -> dict[str, Affine]:
+    """The values of loops at which a statement outside them stands, for chunk terms or for bare ones."""
+    return {a.loop: a.value for a in plan.aligned if a.statement == statement and (chunks or not a.chunks_only)}
 
 
 def moment(term: Term, nest: Nest) -> Affine:

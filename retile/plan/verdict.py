@@ -20,7 +20,7 @@ from ..sets import Region
 from .alignment import settled
 from .copies import copied, copied_scalars
 from .kept import keepable
-from .schedule import moments, placed, stays_whole
+from .schedule import INSIDE, moments, placed, stays_whole
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
 _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
@@ -109,7 +109,8 @@ class _Court:
         return (*edges, *(edge for edge in self._dependences.reuse if edge.storage in self._split))
 
     def refusals(self) -> Iterator[Refusal]:
-        """A declaration whose block the plan takes apart cannot be written down."""
+        """What the plan asks for that cannot be written down in C without changing the user's text."""
+        yield from self._shared_iterators()
         for name in sorted(self._split):
             if self._nest.storage(name).scope != "block":
                 continue
@@ -117,6 +118,20 @@ class _Court:
             if len({self._split_of(s) for s in users}) > 1 and not self._reverses_reuse(name):
                 yield Refusal(users[0].line, users[0].span.column, "declaration-split",
                               f"'{name}' is declared in a block that the plan takes apart; declare it before the nest")
+
+    def _shared_iterators(self) -> Iterator[Refusal]:
+        """Loops that use one variable, and that the plan puts one into the other."""
+        for statement in self._nest.statements:
+            seen: dict[str, str] = {}
+            for term, place in zip(self.plan.terms, self.plan.places_of(statement.id), strict=True):
+                if term.chunk is not None or place.position != INSIDE:
+                    continue
+                other = seen.setdefault(self._nest.loop(term.loop).iterator, term.loop)
+                if other != term.loop:
+                    yield Refusal(statement.line, statement.span.column, "shared-iterator",
+                                  f"the plan runs this line inside the loops {other} and {term.loop}, which use one variable; "
+                                  "give one of them a variable of its own")
+                    return
 
     def _split_of(self, statement: Statement) -> tuple[int, ...]:
         return tuple(place.position for place in self.plan.places_of(statement.id))

@@ -106,9 +106,9 @@ def of_judgement(address: Address, judgement: Judgement) -> Document:
 
 def of_places(plan: Plan) -> Document:
     """Where statements stand that the text has outside a loop of the plan: at which value, or again in every iteration."""
-    return {"places": [{"statement": statement, "loop": loop, "value": str(value)}
-                       for statement, loop, value in plan.aligned],
-            "repeated": list(plan.copied)}
+    return {"places": [{"statement": a.statement, "loop": a.loop, "value": str(a.value), "chunks_only": a.chunks_only}
+                       for a in plan.aligned],
+            "repeated": list(plan.copied), "kept": list(plan.kept)}
 
 
 def of_violation(violation: Violation) -> Document:

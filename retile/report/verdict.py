@@ -39,7 +39,7 @@ def verdict_lines(address: Address, judgement: Judgement, place: Place, look: Lo
         lines += _separated(lines, unproven_lines(unproven, look))
     for refusal in judgement.refusals:
         lines += _separated(lines, place(refusal).splitlines())
-    if judgement.plan.aligned or judgement.plan.copied:
+    if place_lines(judgement.plan, look):
         lines += _separated(lines, place_lines(judgement.plan, look))
     if judgement.assumptions:
         lines += _separated(lines, assumption_lines(judgement.assumptions, look))
@@ -89,10 +89,13 @@ def unproven_lines(unproven: Unproven, look: Look) -> list[str]:
 def place_lines(plan: Plan, look: Look) -> list[str]:
     """Where statements went that the text has outside a loop of the plan."""
     lines = []
-    for statement, loop, value in plan.aligned:
-        lines += paragraph(f"Line {statement}, outside the loop over {loop}, runs where {loop} = {value}.", look)
+    for a in plan.aligned:
+        where = f"with the chunk of {a.loop} that holds {a.value}" if a.chunks_only else f"where {a.loop} = {a.value}"
+        lines += paragraph(f"Line {a.statement}, outside the loop over {a.loop}, runs {where}.", look)
     for statement in plan.copied:
         lines += paragraph(f"Line {statement} runs again wherever its value is needed.", look)
+    for scalar in plan.kept:
+        lines += paragraph(f"The values of {scalar} that wait are kept in a small array.", look)
     return lines
 
 
