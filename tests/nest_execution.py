@@ -54,10 +54,19 @@ def events_read(nest: Nest, sizes: Mapping[str, int]) -> set[Event]:
         for point in region.points(statement.loops):
             here = {**values, **dict(zip(statement.loops, point, strict=True))}
             named = tuple((nest.loop(id).iterator, value) for id, value in zip(statement.loops, point, strict=True))
-            cells = [(access.write, _cell(nest.storage(access.storage), access, here, sizes))
-                     for access in statement.accesses if _counts(nest.storage(access.storage), access)]
-            found.add((statement.span.line, named, frozenset(c for w, c in cells if not w),
-                       frozenset(c for w, c in cells if w)))
+            cells = [
+                (access.write, _cell(nest.storage(access.storage), access, here, sizes))
+                for access in statement.accesses
+                if _counts(nest.storage(access.storage), access)
+            ]
+            found.add(
+                (
+                    statement.span.line,
+                    named,
+                    frozenset(c for w, c in cells if not w),
+                    frozenset(c for w, c in cells if w),
+                )
+            )
     return found
 
 
@@ -82,15 +91,20 @@ def _linear(storage: Storage, subscripts: list[int], values: Mapping[str, int], 
     return total
 
 
-def events_run(text: str, function: str, line: int, sizes: Mapping[str, int], unknown: frozenset[str],
-               steps: int = 200_000) -> set[Event]:
+def events_run(
+    text: str, function: str, line: int, sizes: Mapping[str, int], unknown: frozenset[str], steps: int = 200_000
+) -> set[Event]:
     """What really happens in the nest; branches on data are all taken.  Cells of ``unknown`` objects get offset -1."""
     machine = Program(text, nest=line).run(function, dict(sizes), may=True, steps=steps)
     found: set[Event] = set()
     for instance in machine.instances:
-        cells = [(write, (obj.name, -1 if obj.name in unknown and not write else offset))
-                 for obj, offset, write in instance.accesses if obj.kind in ("caller", "global")]
+        cells = [
+            (write, (obj.name, -1 if obj.name in unknown and not write else offset))
+            for obj, offset, write in instance.accesses
+            if obj.kind in ("caller", "global")
+        ]
         inside = [(loop.name, loop.value) for loop in instance.loops if loop.line >= line]
-        found.add((instance.line, tuple(inside), frozenset(c for w, c in cells if not w),
-                   frozenset(c for w, c in cells if w)))
+        found.add(
+            (instance.line, tuple(inside), frozenset(c for w, c in cells if not w), frozenset(c for w, c in cells if w))
+        )
     return found

@@ -18,8 +18,9 @@ from walk import holds
 
 SIZES = {
     "beams": 5, "beams_count": 3, "cells": 6, "cols": 5, "colour": 1, "ld": 6, "ld_beams": 5, "ld_echoes": 7,
-    "ld_weights": 5, "m": 5, "n": 4, "n_beams": 3, "n_phones": 5, "n_samples": 4, "phones": 4, "pings": 4, "profiles": 3,
-    "readings": 4, "rows": 4, "samples": 6, "sides": 3, "steps": 3, "sweeps": 2, "terms": 3, "used_pings": 2, "width": 2,
+    "ld_weights": 5, "m": 5, "n": 4, "n_beams": 3, "n_phones": 5, "n_samples": 4, "phones": 4, "pings": 4,
+    "profiles": 3, "readings": 4, "rows": 4, "samples": 6, "sides": 3, "steps": 3, "sweeps": 2, "terms": 3,
+    "used_pings": 2, "width": 2,
 }  # fmt: skip
 TOO_LONG = {"filter_window", "apply_gain", "mark_window"}  # fixed sizes of a real window
 OTHER_OBJECTS = {"smooth_grid", "scale_rows"}  # pointers in memory, which the interpreter names in its own way
@@ -33,7 +34,9 @@ def assumed(nest: Nest, values: dict[str, int]) -> bool:
 
 def unknown_objects(nest: Nest) -> frozenset[str]:
     """Objects of which some access may be to any cell."""
-    return frozenset(nest.storage(a.storage).object for s in nest.statements for a in s.accesses if a.subscripts is None)
+    return frozenset(
+        nest.storage(a.storage).object for s in nest.statements for a in s.accesses if a.subscripts is None
+    )
 
 
 def with_memory(events: set[Event]) -> set[Event]:
@@ -48,8 +51,10 @@ def without_lines(events: set[Event]) -> set[Event]:
 
 def in_structures(events: set[Event], bytes_of: dict[str, int]) -> set[Event]:
     """Cells by element instead of byte: members of one structure count as one cell."""
+
     def cells(found: frozenset[tuple[str, int]]) -> frozenset[tuple[str, int]]:
         return frozenset((name, offset // bytes_of.get(name, 1)) for name, offset in found)
+
     return {(line, iterators, cells(reads), cells(writes)) for line, iterators, reads, writes in events}
 
 
@@ -69,8 +74,11 @@ def test_a_style_is_read_as_it_runs(text, sizes, tmp_path):
 def sample_functions() -> list[tuple[str, int]]:
     found = []
     for path in sorted(SAMPLES.glob("*.c")):
-        found += [(path.name, f.address.line) for f in read_nests(open_source(str(path)))
-                  if f.outermost and f.nest is not None and f.function not in TOO_LONG | OTHER_OBJECTS]
+        found += [
+            (path.name, f.address.line)
+            for f in read_nests(open_source(str(path)))
+            if f.outermost and f.nest is not None and f.function not in TOO_LONG | OTHER_OBJECTS
+        ]
     return found
 
 

@@ -18,7 +18,8 @@ def nest_of(text: str, directory, outermost: bool = True) -> Nest:
 
 
 def sweep(header: str, body: str = "depth[i] = 1;", parameters: str = "int n") -> str:
-    return f"#include <stddef.h>\n#include <stdint.h>\nvoid sweep({parameters}, double *depth) {{\n    {header}\n        {body}\n}}\n"
+    includes = "#include <stddef.h>\n#include <stdint.h>\n"
+    return f"{includes}void sweep({parameters}, double *depth) {{\n    {header}\n        {body}\n}}\n"
 
 
 LOOPS = [
@@ -28,20 +29,28 @@ LOOPS = [
     ("for (int i = 1; n > i; i += 3)", "int n", "i: 1 .. n - 1 by 3, first `1`, `< n`"),
     ("for (int i = /* rim */ 1; i != n; i = i + 1)", "int n", "i: 1 .. n - 1 by 1, first `1`, `!= n`"),
     ("for (int i = 0; 2 * i < n; i++)", "int n", "i: 0 .. (n - 1) / 2 by 1, first `0`, `<= (n - 1) / 2`"),
-    ("for (int i = 0; i < n && i <= w; i++)", "int n, int w",
-     "i: 0 .. (n - 1 < w ? n - 1 : w) by 1, first `0`, `<= (n - 1 < w ? n - 1 : w)`"),
+    (
+        "for (int i = 0; i < n && i <= w; i++)",
+        "int n, int w",
+        "i: 0 .. (n - 1 < w ? n - 1 : w) by 1, first `0`, `<= (n - 1 < w ? n - 1 : w)`",
+    ),
     ("for (unsigned i = n - 1; i < n; i--)", "unsigned n", "i: n - 1 .. 0 by -1, first `n - 1`, `--> 0`"),
     ("for (uint8_t i = 0; i < 200; i += 50)", "int n", "i: 0 .. 199 by 50, first `0`, `< 200`"),
-    ("for (int i = n > 4 ? n : 4; i < 99; i += 2)", "int n",
-     "i: ((n > 4) ? (n) : (4)) .. 98 by 2, first `n > 4 ? n : 4`, `< 99`"),
+    (
+        "for (int i = n > 4 ? n : 4; i < 99; i += 2)",
+        "int n",
+        "i: ((n > 4) ? (n) : (4)) .. 98 by 2, first `n > 4 ? n : 4`, `< 99`",
+    ),
 ]
 
 
 @pytest.mark.parametrize(("header", "parameters", "expected"), LOOPS, ids=[case[0] for case in LOOPS])
 def test_a_header_is_read(header, parameters, expected, tmp_path):
     loop = nest_of(sweep(header, parameters=parameters), tmp_path).loops[0]
-    assert f"{loop.id}: {bound_text(loop.first)} .. {bound_text(loop.last)} by {loop.step}, first `{loop.first_text}`, " \
-           f"`{loop.relation} {loop.bound_text}`" == expected
+    assert (
+        f"{loop.id}: {bound_text(loop.first)} .. {bound_text(loop.last)} by {loop.step}, first `{loop.first_text}`, "
+        f"`{loop.relation} {loop.bound_text}`" == expected
+    )
 
 
 ASSUMED = [
@@ -63,11 +72,17 @@ def test_what_unsigned_arithmetic_needs_is_assumed(header, parameters, expected,
 
 
 def test_a_guard_around_the_nest_makes_an_assumption_needless(tmp_path):
-    text = "void sweep(unsigned n, double *depth) {\n if (n >= 1)\n  for (unsigned i = 0; i < n - 1; i++) depth[i] = 1;\n}"
-    early = "void sweep(unsigned n, double *depth) {\n if (n == 0) return;\n" \
-            " for (unsigned i = 0; i < n - 1; i++) depth[i] = 1;\n}"
-    changed = "void sweep(unsigned n, double *depth) {\n if (n >= 1) {\n  n -= 3;\n" \
-              "  for (unsigned i = 0; i < n - 1; i++) depth[i] = 1;\n }\n}"
+    text = (
+        "void sweep(unsigned n, double *depth) {\n if (n >= 1)\n  for (unsigned i = 0; i < n - 1; i++) depth[i] = 1;\n}"
+    )
+    early = (
+        "void sweep(unsigned n, double *depth) {\n if (n == 0) return;\n"
+        " for (unsigned i = 0; i < n - 1; i++) depth[i] = 1;\n}"
+    )
+    changed = (
+        "void sweep(unsigned n, double *depth) {\n if (n >= 1) {\n  n -= 3;\n"
+        "  for (unsigned i = 0; i < n - 1; i++) depth[i] = 1;\n }\n}"
+    )
     assert nest_of(text, tmp_path).assumptions == () == nest_of(early, tmp_path).assumptions
     assert [a.text for a in nest_of(changed, tmp_path).assumptions] == ["n >= 1"]
 
@@ -105,10 +120,15 @@ def test_strides_that_disagree_leave_a_read_open_and_refuse_a_write(tmp_path):
 
 
 def test_a_table_is_read_in_two_steps(tmp_path):
-    nest = nest_of(sweep("for (int i = 0; i < n; i++)", "depth[i] = depth[n + cell[i]];",
-                         "int n, const int *restrict cell"), tmp_path)
+    nest = nest_of(
+        sweep("for (int i = 0; i < n; i++)", "depth[i] = depth[n + cell[i]];", "int n, const int *restrict cell"),
+        tmp_path,
+    )
     assert [(a.storage, a.write, a.subscripts) for a in nest.statements[0].accesses] == [
-        ("cell", False, (Affine.of("i"),)), ("depth", False, None), ("depth", True, (Affine.of("i"),))]
+        ("cell", False, (Affine.of("i"),)),
+        ("depth", False, None),
+        ("depth", True, (Affine.of("i"),)),
+    ]
 
 
 def test_ids_tell_loops_and_statements_apart(tmp_path):
@@ -143,7 +163,10 @@ void sweep(int n, double *depth, const double *restrict echo) {
     assert isinstance(other, Guard) and isinstance(other.body[0], Leaf) and other.body[0].statement == "5"
     assert isinstance(other.body[1], Guard) and other.body[1].condition is None
     assert [(s.id, [(a.storage, a.certain) for a in s.accesses]) for s in nest.statements] == [
-        ("4", [("depth", True)]), ("5", [("echo", True)]), ("6", [("depth", False)])]
+        ("4", [("depth", True)]),
+        ("5", [("echo", True)]),
+        ("6", [("depth", False)]),
+    ]
     assert [place.leaf.statement for place in occurrences(nest.tree)] == ["4", "5", "6"]
 
 
@@ -163,8 +186,10 @@ void sweep(int n, double depth[n][n]) {
 
 @pytest.mark.parametrize(("body", "before"), [("i += depth[0] > 0;", True), ("n--;", False)])
 def test_an_outer_loop_that_is_changed_inside_says_nothing(body, before, tmp_path):
-    text = f"void sweep(int n, double *depth) {{\n for (int i = 1; i < n; i++) {{\n  {body}\n" \
-           "  for (int j = 0; j < 9; j++) depth[i + j] = n;\n }\n}"
+    text = (
+        f"void sweep(int n, double *depth) {{\n for (int i = 1; i < n; i++) {{\n  {body}\n"
+        "  for (int j = 0; j < 9; j++) depth[i + j] = n;\n }\n}"
+    )
     nest = nest_of(text, tmp_path, outermost=False)
     assert not any("i < n" in formula_text(fact) or "i >= 1" in formula_text(fact) for fact in nest.facts)
 

@@ -53,8 +53,10 @@ void sweep(int pings, int beams, double *depth) {
     outer, inner = read_nests(opened(text, tmp_path))
     assert outer.nest is None and [r.code for r in outer.refusals] == ["call"]
     assert inner.nest is not None and not inner.outermost and inner.loops == ("j",)
-    assert {p.symbol: p.kind for p in inner.nest.parameters if p.symbol in ("i", "beams")} == \
-        {"i": "outer iterator", "beams": "argument"}
+    assert {p.symbol: p.kind for p in inner.nest.parameters if p.symbol in ("i", "beams")} == {
+        "i": "outer iterator",
+        "beams": "argument",
+    }
 
 
 SHARED = """\
@@ -72,7 +74,9 @@ def test_several_loops_on_a_line_are_told_apart_by_column(tmp_path):
     assert str(read_nest(source, 2, 51).address) == f"{source.path}:2:51"
 
 
-@pytest.mark.parametrize(("line", "column", "word"), [(1, None, "line"), (3, None, "line"), (2, 9, "column"), (99, None, "line")])
+@pytest.mark.parametrize(
+    ("line", "column", "word"), [(1, None, "line"), (3, None, "line"), (2, 9, "column"), (99, None, "line")]
+)
 def test_an_address_without_a_loop_is_an_error_with_a_remedy(line, column, word, tmp_path):
     source = opened(SHARED, tmp_path)
     with pytest.raises(RetileError) as raised:

@@ -8,31 +8,36 @@ import pytest
 
 import retile
 
-HEAD = ("void survey(int n, int m, const double echo[restrict n][m], double *restrict sum, float *restrict low, "
-        "unsigned *restrict hits, int *restrict worst, unsigned char *restrict code)\n{\n"
-        "    for (int i = 0; i < n; i++)\n        for (int j = 0; j < m; j++)\n            ")
+HEAD = (
+    "void survey(int n, int m, const double echo[restrict n][m], double *restrict sum, float *restrict low, "
+    "unsigned *restrict hits, int *restrict worst, unsigned char *restrict code)\n{\n"
+    "    for (int i = 0; i < n; i++)\n        for (int j = 0; j < m; j++)\n            "
+)
 
 
-@pytest.mark.parametrize("statement, by_default, given_away", [
-    ("sum[0] += echo[i][j];", "illegal", "legal"),
-    ("sum[0] = sum[0] - echo[i][j];", "illegal", "legal"),
-    ("sum[0] = echo[i][j] - sum[0];", "illegal", "illegal"),  # not a sum: the sign alternates
-    ("sum[0] = sum[0] + echo[i][j] * sum[0];", "illegal", "illegal"),
-    ("sum[0] *= echo[i][j];", "illegal", "legal"),
-    ("low[0] = low[0] < echo[i][j] ? low[0] : echo[i][j];", "illegal", "legal"),  # -0.0 and NaN depend on the order
-    ("hits[0] += (unsigned)echo[i][j];", "legal", "legal"),  # wraps around: exact in any order (C11, 6.2.5)
-    ("hits[0] ^= (unsigned)i * 3u;", "legal", "legal"),
-    ("hits[0]++;", "legal", "legal"),
-    ("hits[0] += echo[i][j];", "illegal", "legal"),  # computed in double
-    ("code[0] += (unsigned)i;", "legal", "legal"),  # computed in unsigned, cut to 8 bits: exact modulo 256
-    ("code[0] += i;", "illegal", "legal"),  # computed in int: an intermediate sum may overflow
-    ("worst[0] += i;", "illegal", "legal"),
-    ("worst[0] |= i;", "legal", "legal"),
-    ("worst[0] = worst[0] > j ? worst[0] : j;", "legal", "legal"),
-    ("worst[0] = j > worst[0] ? j : worst[0];", "legal", "legal"),
-    ("worst[0] = worst[0] > j ? j : i;", "illegal", "illegal"),
-    ("worst[0] = hits[0] > 3u ? worst[0] : j;", "illegal", "illegal"),
-])
+@pytest.mark.parametrize(
+    "statement, by_default, given_away",
+    [
+        ("sum[0] += echo[i][j];", "illegal", "legal"),
+        ("sum[0] = sum[0] - echo[i][j];", "illegal", "legal"),
+        ("sum[0] = echo[i][j] - sum[0];", "illegal", "illegal"),  # not a sum: the sign alternates
+        ("sum[0] = sum[0] + echo[i][j] * sum[0];", "illegal", "illegal"),
+        ("sum[0] *= echo[i][j];", "illegal", "legal"),
+        ("low[0] = low[0] < echo[i][j] ? low[0] : echo[i][j];", "illegal", "legal"),  # -0.0 and NaN depend on the order
+        ("hits[0] += (unsigned)echo[i][j];", "legal", "legal"),  # wraps around: exact in any order (C11, 6.2.5)
+        ("hits[0] ^= (unsigned)i * 3u;", "legal", "legal"),
+        ("hits[0]++;", "legal", "legal"),
+        ("hits[0] += echo[i][j];", "illegal", "legal"),  # computed in double
+        ("code[0] += (unsigned)i;", "legal", "legal"),  # computed in unsigned, cut to 8 bits: exact modulo 256
+        ("code[0] += i;", "illegal", "legal"),  # computed in int: an intermediate sum may overflow
+        ("worst[0] += i;", "illegal", "legal"),
+        ("worst[0] |= i;", "legal", "legal"),
+        ("worst[0] = worst[0] > j ? worst[0] : j;", "legal", "legal"),
+        ("worst[0] = j > worst[0] ? j : worst[0];", "legal", "legal"),
+        ("worst[0] = worst[0] > j ? j : i;", "illegal", "illegal"),
+        ("worst[0] = hits[0] > 3u ? worst[0] : j;", "illegal", "illegal"),
+    ],
+)
 def test_order_of_updates(tmp_path: Path, statement: str, by_default: str, given_away: str) -> None:
     file = tmp_path / "updates.c"
     file.write_text(HEAD + statement + "\n}\n")

@@ -61,8 +61,9 @@ class _File:
     def loops_on(self, line: int) -> tuple[_For, ...]:
         """The loops on a line; only the functions that reach over it are parsed."""
         spans = [(function, self.source.function_span(function)) for function in self.source.functions]
-        here = [function for function, span in spans
-                if span is None or span.line <= line <= self.source.at(span.end)[0]]
+        here = [
+            function for function, span in spans if span is None or span.line <= line <= self.source.at(span.end)[0]
+        ]
         return tuple(loop for loop in self._loops_of(here) if loop.line == line)
 
     @staticmethod
@@ -117,8 +118,11 @@ def read_nest(source: Source, line: int, column: int | None = None) -> Found:
             raise RetileError(source.complaint(line, column, "no `for` starts in this column", _nearest(file, line)))
     if len(there) > 1:
         choices = ", ".join(str(file.address(loop)) for loop in there)
-        raise RetileError(source.complaint(line, there[0].column, "several `for` loops start on this line",
-                                           f"Say which one: {choices}."))
+        raise RetileError(
+            source.complaint(
+                line, there[0].column, "several `for` loops start on this line", f"Say which one: {choices}."
+            )
+        )
     return file.read(there[0])
 
 

@@ -65,7 +65,7 @@ class Bounds:
             if value is None:
                 return form
             facts.append(AllOf((holds, equal(form, value))))
-        self._setting.knowledge.add_fact(AnyOf(tuple(facts)))
+        self._setting.add_fact(AnyOf(tuple(facts)), context, node)
         return form
 
     def _extremum(self, node: Any, context: Context, type_: CType | None) -> Bound | None:

@@ -1,8 +1,8 @@
 """Which calls only compute a value: functions of the standard library, and functions of the file that are seen to.
 
-A pure function's result depends on its arguments alone and it changes nothing, so its calls may run in any order.  The
-functions of <math.h> may set errno (ISO/IEC 9899:2018, 7.12.1 p5); that is allowed here, as every caller that tests errno
-after a nest would be wrong about which iteration set it.
+A pure function's result depends on its arguments alone and it changes nothing, so its calls may run in any order. The
+functions of <math.h> may set errno (ISO/IEC 9899:2018, 7.12.1 p5); that is allowed here, as every caller that tests
+errno after a nest would be wrong about which iteration set it.
 """
 
 from __future__ import annotations
@@ -62,10 +62,31 @@ def is_pure_function(name: str | None, binding: Binding | None, unit: Unit) -> b
 
 
 _PLAIN = (
-    c_ast.Assignment, c_ast.BinaryOp, c_ast.Break, c_ast.Case, c_ast.Cast, c_ast.Compound, c_ast.Constant, c_ast.Continue,
-    c_ast.DeclList, c_ast.Default, c_ast.DoWhile, c_ast.EmptyStatement, c_ast.ExprList, c_ast.For, c_ast.If, c_ast.InitList,
-    c_ast.Return, c_ast.Switch, c_ast.TernaryOp, c_ast.Typename, c_ast.TypeDecl, c_ast.IdentifierType, c_ast.ArrayDecl,
-    c_ast.While, c_ast.ArrayRef,
+    c_ast.Assignment,
+    c_ast.BinaryOp,
+    c_ast.Break,
+    c_ast.Case,
+    c_ast.Cast,
+    c_ast.Compound,
+    c_ast.Constant,
+    c_ast.Continue,
+    c_ast.DeclList,
+    c_ast.Default,
+    c_ast.DoWhile,
+    c_ast.EmptyStatement,
+    c_ast.ExprList,
+    c_ast.For,
+    c_ast.If,
+    c_ast.InitList,
+    c_ast.Return,
+    c_ast.Switch,
+    c_ast.TernaryOp,
+    c_ast.Typename,
+    c_ast.TypeDecl,
+    c_ast.IdentifierType,
+    c_ast.ArrayDecl,
+    c_ast.While,
+    c_ast.ArrayRef,
 )
 
 
@@ -89,8 +110,12 @@ def _node_is_plain(node: Any, names: FunctionNames, unit: Unit) -> bool:
             return _target_is_own(node, names)
         case c_ast.Decl():
             binding = names.of(node)
-            return "extern" not in node.storage and ("static" not in node.storage or _is_const(node, unit)) and \
-                binding is not None and "volatile" not in unit.types.qualifiers(node)
+            return (
+                "extern" not in node.storage
+                and ("static" not in node.storage or _is_const(node, unit))
+                and binding is not None
+                and "volatile" not in unit.types.qualifiers(node)
+            )
         case c_ast.FuncCall():
             called = called_name(node)
             binding = names.of(node.name) if called else None

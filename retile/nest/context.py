@@ -30,8 +30,12 @@ class Context:
 
     def inside(self, loop: str, binding: Binding, constraint: Formula) -> Context:
         """In the body of one more loop."""
-        return replace(self, loops=(*self.loops, loop), iterators=(*self.iterators, (binding, loop)),
-                       constraints=(*self.constraints, constraint))
+        return replace(
+            self,
+            loops=(*self.loops, loop),
+            iterators=(*self.iterators, (binding, loop)),
+            constraints=(*self.constraints, constraint),
+        )
 
     def where(self, *conditions: Formula) -> Context:
         """Where these conditions hold too."""
@@ -47,4 +51,4 @@ class Context:
 
     def covers(self, other: Context) -> bool:
         """True if ``other`` stands in the same branch and loop body or deeper."""
-        return other.path[:len(self.path)] == self.path
+        return other.path[: len(self.path)] == self.path

@@ -64,7 +64,9 @@ class Effects:
 
     def _initialise(self, decl: Any, place: Place, context: Context) -> None:
         if not isinstance(place.type, ArrayOf):
-            raise refused(decl, "unsupported", f"`{decl.name}` is initialised with a list; assign its parts one by one.")
+            raise refused(
+                decl, "unsupported", f"`{decl.name}` is initialised with a list; assign its parts one by one."
+            )
         for part in decl.init.exprs:
             self._visit(part.expr if isinstance(part, c_ast.NamedInitializer) else part, context)
         for cell in self._setting.places.cells(place, decl):
@@ -96,13 +98,18 @@ class Effects:
             case c_ast.FuncCall():
                 self._call(node, context)
             case _:
-                raise refused(node, "unsupported", f"retile does not read `{c_text(node)}`; write it with plain operators.")
+                raise refused(
+                    node, "unsupported", f"retile does not read `{c_text(node)}`; write it with plain operators."
+                )
 
     def _ternary(self, node: Any, context: Context) -> None:
         self._visit(node.cond, context)
         condition = self._conditions.known(node.cond, context)
-        yes, no = (context, context) if condition is None else \
-            (context.where(condition), context.where(self._conditions.opposite(condition)))
+        yes, no = (
+            (context, context)
+            if condition is None
+            else (context.where(condition), context.where(self._conditions.opposite(condition)))
+        )
         self._visit(node.iftrue, yes.uncertain().block(node.iftrue))
         self._visit(node.iffalse, no.uncertain().block(node.iffalse))
 
@@ -113,14 +120,24 @@ class Effects:
             if name == "__asm__":
                 raise refused(node, "asm", "inline assembly may change anything; it would have to leave the nest.")
             if name == "__statement_expression__":
-                raise refused(node, "statement-expression", "a statement expression stands here; "
-                                                            "use a plain expression or a static function.")
-            raise refused(node, "call", f"the call of {shown} may read or change anything; only functions that are seen "
-                                        "to compute a value from their arguments may stand in the nest.")
+                raise refused(
+                    node,
+                    "statement-expression",
+                    "a statement expression stands here; use a plain expression or a static function.",
+                )
+            raise refused(
+                node,
+                "call",
+                f"the call of {shown} may read or change anything; only functions that are seen "
+                "to compute a value from their arguments may stand in the nest.",
+            )
         for argument in node.args.exprs if node.args else ():
             if not isinstance(self._setting.type_of(argument), CType):
-                raise refused(argument, "call", f"`{c_text(argument)}` is passed as a pointer; retile cannot tell what "
-                                                "is read through it.")
+                raise refused(
+                    argument,
+                    "call",
+                    f"`{c_text(argument)}` is passed as a pointer; retile cannot tell what is read through it.",
+                )
             self._visit(argument, context)
 
     # ------------------------------------------------------------ reads and writes
@@ -133,8 +150,9 @@ class Effects:
         elif node.op in ("++", "--", "p++", "p--"):
             self._update(node.expr, context, update("+", self._type(node.expr), self._type(node.expr)))
         elif node.op == "&":
-            raise refused(node, "address", f"the address `{c_text(node)}` is taken inside the nest; "
-                                           "use the object itself there.")
+            raise refused(
+                node, "address", f"the address `{c_text(node)}` is taken inside the nest; use the object itself there."
+            )
         else:
             self._visit(node.expr, context)
 
@@ -159,17 +177,27 @@ class Effects:
 
     def _not_outside(self, node: Any, binding: Any) -> None:
         if binding is not None and self._setting.is_iterator(binding):
-            raise refused(node, "iterator-outside", f"the iterator `{binding.name}` is used outside its loop, but inside the "
-                                                    "nest; use a variable of its own there.")
+            raise refused(
+                node,
+                "iterator-outside",
+                f"the iterator `{binding.name}` is used outside its loop, but inside the "
+                "nest; use a variable of its own there.",
+            )
 
     def _scalar_place(self, node: Any, context: Context) -> Place:
         place = self._setting.places.place(node, context)
         if isinstance(place.type, StructType):
-            raise refused(node, "struct-assignment", f"the whole structure `{c_text(node)}` is copied; "
-                                                     "copy its members one by one.")
+            raise refused(
+                node,
+                "struct-assignment",
+                f"the whole structure `{c_text(node)}` is copied; copy its members one by one.",
+            )
         if isinstance(place.type, (PointerTo, ArrayOf, FunctionType)):
-            raise refused(node, "pointer", f"the address `{c_text(node)}` is used as a value inside the nest; "
-                                           "use the elements it leads to.")
+            raise refused(
+                node,
+                "pointer",
+                f"the address `{c_text(node)}` is used as a value inside the nest; use the elements it leads to.",
+            )
         return place
 
     def _beneath(self, node: Any, context: Context) -> None:
@@ -207,20 +235,28 @@ class Effects:
     def _pointer_definition(self, node: Any, context: Context) -> None:
         """A pointer that was computed inside the nest is a value of the iteration like any other."""
         binding = self._setting.names.of(node)
-        if binding is not None and isinstance(self._setting.type_of_binding(binding), PointerTo) and \
-                self._setting.definition(binding, context) is not None:
+        if (
+            binding is not None
+            and isinstance(self._setting.type_of_binding(binding), PointerTo)
+            and self._setting.definition(binding, context) is not None
+        ):
             self._found.append(Touch(self._setting.places.variable(binding), False, context, node))
 
     def _pointer_cell(self, node: Any, context: Context) -> None:
         cell = self._setting.places.place(node, context)
-        if not cell.is_fixed(self._setting.loop_ids) or any(one.poly is None or one.poly.constant != 0 for one in cell.indices):
+        if not cell.is_fixed(self._setting.loop_ids) or any(
+            one.poly is None or one.poly.constant != 0 for one in cell.indices
+        ):
             self._found.append(Touch(cell, False, context, node))
 
     def _write(self, node: Any, context: Context, update: Update | None = None) -> None:
         place = self._scalar_place(node, context)
         if any(isinstance(step, Member) and step.bits is not None for step in place.steps):
-            raise refused(node, "bit-field", f"`{c_text(node)}` is a bit-field, which shares its bytes with others; "
-                                             "use a plain member.")
+            raise refused(
+                node,
+                "bit-field",
+                f"`{c_text(node)}` is a bit-field, which shares its bytes with others; use a plain member.",
+            )
         self._found.append(Touch(place, True, context, node, update))
 
     def _update(self, node: Any, context: Context, family: Update | None) -> None:
@@ -238,7 +274,9 @@ class Effects:
             return
         if node.op != "=":
             self._visit(node.rvalue, context)
-            self._update(target, context, update(family(node.op[:-1]), self._type(target), self._work(target, node.rvalue)))
+            self._update(
+                target, context, update(family(node.op[:-1]), self._type(target), self._work(target, node.rvalue))
+            )
             return
         kind, reads = accumulation(node)
         whole = update(kind, self._type(target), self._type(node.rvalue))
@@ -269,14 +307,21 @@ class Effects:
     def _assign_pointer(self, node: Any, context: Context) -> None:
         binding = self._setting.names.of(node.lvalue) if isinstance(node.lvalue, c_ast.ID) else None
         if node.op != "=" or binding is None or self._setting.definition(binding, context) is None:
-            raise refused(node, "pointer-assigned", f"the pointer `{c_text(node.lvalue)}` gets another value inside the "
-                                                    "nest; use subscripts from a pointer that stays.")
+            raise refused(
+                node,
+                "pointer-assigned",
+                f"the pointer `{c_text(node.lvalue)}` gets another value inside the "
+                "nest; use subscripts from a pointer that stays.",
+            )
         self._base(node.rvalue, context)
         self._found.append(Touch(self._setting.places.variable(binding), True, context, node))
 
     def _not_an_iterator(self, node: Any, context: Context) -> None:
         binding = self._setting.names.of(node) if isinstance(node, c_ast.ID) else None
         if binding is not None and context.iterator(binding) is not None:
-            raise refused(node, "iterator-changed", f"the iterator `{binding.name}` is changed inside its loop; "
-                                                    "only the loop's header may do that.")
+            raise refused(
+                node,
+                "iterator-changed",
+                f"the iterator `{binding.name}` is changed inside its loop; only the loop's header may do that.",
+            )
         self._not_outside(node, binding)

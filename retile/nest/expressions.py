@@ -1,10 +1,11 @@
 """From C expressions to polynomials over iterators and parameters.
 
-An integer expression of C is evaluated in a type, and unsigned arithmetic wraps.  Sums and products commute with the
+An integer expression of C is evaluated in a type, and unsigned arithmetic wraps. Sums and products commute with the
 wrapping, so a value is kept as a polynomial together with the promise it keeps: either it equals the polynomial
-(``exact``), or only modulo 2^bits of its type.  Where the value is looked at (compared, divided, widened) the inexact
-one becomes an obligation to lie in the type's range, which is proven on the domain or becomes an assumption.  Signed
-overflow is undefined in C, so signed sums and products are exact wherever the nest is defined (ISO/IEC 9899:2018, 6.5 p5).
+(``exact``), or only modulo 2^bits of its type. Where the value is looked at (compared, divided, widened) the inexact
+one becomes an obligation to lie in the type's range, which is proven on the domain or becomes an assumption. Signed
+overflow is undefined in C, so signed sums and products are exact wherever the nest is defined (ISO/IEC 9899:2018, 6.5
+p5).
 
 What is neither, but cannot change while the nest runs, is a parameter whose text is the expression.
 """
@@ -209,8 +210,13 @@ class Expressions:
         if a is None or b is None:
             return None
         if node.op in _WRAPPING:
-            poly = a.poly + b.poly if node.op == "+" else a.poly - b.poly if node.op == "-" else \
-                self._setting.product(a.poly, b.poly)
+            poly = (
+                a.poly + b.poly
+                if node.op == "+"
+                else a.poly - b.poly
+                if node.op == "-"
+                else self._setting.product(a.poly, b.poly)
+            )
             return self._result(poly, type_, exact=type_.signed)
         return self._division(node, a, b, type_, context)
 
@@ -267,7 +273,7 @@ class Expressions:
             return None
         symbol = self._setting.expression_parameter(c_text(node), type_)
         for fact in self._division_facts(node, symbol, context):
-            self._setting.knowledge.add_fact(fact)
+            self._setting.add_fact(fact, context, node)
         return Value(Poly.of(symbol), type_, True)
 
     def _division_facts(self, node: Any, symbol: str, context: Context) -> list[Formula]:

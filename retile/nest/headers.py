@@ -20,19 +20,42 @@ def spans_of(source: Source, loop: Any) -> tuple[Span, Span, Span]:
     """The loop, its header, its body; Refused if the loop has no text of its own."""
     span, header, body = source.span(loop), source.header_span(loop), source.body_span(loop)
     if span is None or header is None or body is None:
-        raise refused(loop, "macro", "the loop comes out of a macro, so it has no text of its own to rewrite; "
-                                     "write the loop out.")
+        raise refused(
+            loop, "macro", "the loop comes out of a macro, so it has no text of its own to rewrite; write the loop out."
+        )
     return span, header, body
 
 
-def loop_text(source: Source, loop: Any, id: str, header: Header, outer: tuple[str, ...], spans: tuple[Span, Span, Span],
-              live_after: bool, setting: Setting) -> LoopText:
+def loop_text(
+    source: Source,
+    loop: Any,
+    id: str,
+    header: Header,
+    outer: tuple[str, ...],
+    spans: tuple[Span, Span, Span],
+    live_after: bool,
+    setting: Setting,
+) -> LoopText:
     """The value that tells the other rooms of a loop's text."""
     texts = setting.texts()
     bound, relation = _bound(source, loop, header, texts, setting)
     independent = not bound_names(header.first) & setting.loop_ids
-    return LoopText(id, header.binding.name, header.type, header.declared_in_for, header.first, header.last, header.step,
-                    *spans, _first(source, loop, header, texts, setting), bound, relation, outer, live_after, independent)
+    return LoopText(
+        id,
+        header.binding.name,
+        header.type,
+        header.declared_in_for,
+        header.first,
+        header.last,
+        header.step,
+        *spans,
+        _first(source, loop, header, texts, setting),
+        bound,
+        relation,
+        outer,
+        live_after,
+        independent,
+    )
 
 
 def _first(source: Source, loop: Any, header: Header, texts: dict[str, str], setting: Setting) -> str:
@@ -44,8 +67,7 @@ def _first(source: Source, loop: Any, header: Header, texts: dict[str, str], set
     return " ".join(value.split()) if equals and "/*" not in value and "//" not in value else c_text(header.first_node)
 
 
-def _bound(source: Source, loop: Any, header: Header, texts: dict[str, str],
-           setting: Setting) -> tuple[str, str]:
+def _bound(source: Source, loop: Any, header: Header, texts: dict[str, str], setting: Setting) -> tuple[str, str]:
     """The bound as C and the relation of the iterator to it; a mixed condition is given as one inclusive bound."""
     if header.relation == "-->" and _computed_inside(header.bound_node, setting):
         return bound_text(header.last, texts), "-->"
@@ -64,8 +86,9 @@ def _bound(source: Source, loop: Any, header: Header, texts: dict[str, str],
 
 def _computed_inside(node: Any, setting: Setting) -> bool:
     """True if a bound uses a value that the nest computes: its name means nothing outside."""
-    return node is not None and any(setting.names.of(one) in setting.definitions for one in descendants(node)
-                                    if isinstance(one, c_ast.ID))
+    return node is not None and any(
+        setting.names.of(one) in setting.definitions for one in descendants(node) if isinstance(one, c_ast.ID)
+    )
 
 
 def _inclusive(header: Header) -> str:
@@ -77,10 +100,10 @@ def _sides(text: str, op: str) -> tuple[str, str]:
     depth, at = 0, []
     for place, character in enumerate(text):
         depth += (character in "([{") - (character in ")]}")
-        if depth == 0 and text.startswith(op, place) and text[place - 1:place] not in ("<", ">", "-", "=", "!"):
-            if text[place + len(op):place + len(op) + 1] not in ("=", "<", ">"):
+        if depth == 0 and text.startswith(op, place) and text[place - 1 : place] not in ("<", ">", "-", "=", "!"):
+            if text[place + len(op) : place + len(op) + 1] not in ("=", "<", ">"):
                 at.append(place)
-    return (text[:at[0]], text[at[0] + len(op):]) if len(at) == 1 else ("", "")
+    return (text[: at[0]], text[at[0] + len(op) :]) if len(at) == 1 else ("", "")
 
 
 def origin_of(header: Header) -> Affine:
@@ -89,5 +112,9 @@ def origin_of(header: Header) -> Affine:
         return header.first
     if abs(header.step) == 1:
         return Affine()
-    raise refused(header.first_node, "step", "the first value is the larger or smaller of two that change in the nest, and "
-                                             "the step is not one; give the loop a plain first value.")
+    raise refused(
+        header.first_node,
+        "step",
+        "the first value is the larger or smaller of two that change in the nest, and "
+        "the step is not one; give the loop a plain first value.",
+    )

@@ -10,7 +10,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
-from ..affine import AllOf, AnyOf, Affine, Constraint, Formula, at_most, formula_names
+from ..affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, formula_names
 from ..model import Assumption, AssumptionCode, CType, Parameter
 from ..sets import Region
 from .readable import formula_text
@@ -88,7 +88,6 @@ class Knowledge:
         context = self.region(self.ranges(bad.names()), known=obligation.known)
         good = (Region.where() - bad).relative_to(context)
         return AnyOf() if (good & context).is_empty() else good.formula()
-
 
     def exact_condition(self, obligation: Obligation) -> Formula | None:
         """As ``condition``, but not a word more than is needed: for what is taken as a fact."""

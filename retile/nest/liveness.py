@@ -56,7 +56,7 @@ class _Reader:
         while (parent := self._names.parent(node)) is not None and not use.kills:
             if isinstance(parent, c_ast.Compound):
                 items = list(parent.block_items)
-                use = use.then(self._sequence(items[items.index(node) + 1:]))
+                use = use.then(self._sequence(items[items.index(node) + 1 :]))
             elif isinstance(parent, _LOOPS):
                 use = use.then(self._around(parent))
             if use.reads:

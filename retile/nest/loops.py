@@ -1,10 +1,11 @@
 """The headers of ``for`` loops: first value, last value, step.
 
 A loop is read if its iterator is an integer variable that only the header changes, by a constant step, and if its
-condition compares the iterator with bounds that stay the same while the loop runs.  By induction over the iterations the
-values are then first, first + step, ... up to the last one within the bounds, provided that no value tested on the way,
-the one after the last included, leaves the iterator's type.  For signed iterators C itself provides that (overflow is
-undefined); a loop whose unsigned iterator wraps in steps of one would never end; for the rest it becomes an obligation.
+condition compares the iterator with bounds that stay the same while the loop runs. By induction over the iterations
+the values are then first, first + step, ... up to the last one within the bounds, provided that no value tested on
+the way, the one after the last included, leaves the iterator's type. For signed iterators C itself provides that
+(overflow is undefined); a loop whose unsigned iterator wraps in steps of one would never end; for the rest it becomes
+an obligation.
 """
 
 from __future__ import annotations
@@ -14,13 +15,24 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import (Affine, AllOf, AnyOf, Bound, Constraint, Extremum, Formula, at_least_bound, at_most, at_most_bound,
-                      bound_names, equal, negate)
+from ..affine import (
+    Affine,
+    AllOf,
+    AnyOf,
+    Bound,
+    Extremum,
+    Formula,
+    at_least_bound,
+    at_most,
+    at_most_bound,
+    bound_names,
+    equal,
+)
 from ..model import AssumptionCode, CType
 from .bounds import Bounds, flat, negated, scaled
 from .conditions import Conditions
 from .context import Context
-from .polynomial import Poly
+from .endings import Endings
 from .refusals import Refused, refused
 from .scopes import Binding
 from .setting import Setting, c_text
@@ -69,6 +81,7 @@ class Loops:
         self._setting = setting
         self._conditions = conditions
         self._bounds = bounds
+        self._endings = Endings(setting)
         self._always_true = False  # the header being read has a condition that holds as long as nothing wraps
         self._at_first: Formula = AllOf()  # where the iterator of the header being read has its first value
 
@@ -79,9 +92,13 @@ class Loops:
         self._setting.knowledge.iterator_types[symbol] = type_
         first = self._bounds.read(first_node, context, type_)
         if first is None:
-            raise refused(loop.init or loop, "bound", f"the first value `{c_text(first_node)}` of `{binding.name}` is not "
-                                                      "linear in iterators and sizes, or may change inside the nest.")
-        first = self._one_form(first, first_node, type_)
+            raise refused(
+                loop.init or loop,
+                "bound",
+                f"the first value `{c_text(first_node)}` of `{binding.name}` is not "
+                "linear in iterators and sizes, or may change inside the nest.",
+            )
+        first = self._one_form(first, first_node, type_, context)
         if loop.next is None:
             return self._countdown(loop, binding, type_, declared, first, first_node, symbol, context)
         step = self._step(loop.next, binding, context)
@@ -96,19 +113,24 @@ class Loops:
             return self._until_wrap(loop, binding, type_, declared, first, first_node, step)
         last, relation, bound_node = self._together(parts, step)
         if relation == "!=":
-            self._must_meet(first, last, step, type_, context, loop)
+            self._endings.must_meet(first, last, step, type_, context, loop)
         header = Header(binding, type_, declared, first, last, step, relation, first_node, bound_node, False)
-        self._must_end(header, symbol, context, loop)
+        self._endings.must_end(header, symbol, context, loop, self._always_true)
         return header
 
-    def _until_wrap(self, loop: Any, binding: Binding, type_: CType, declared: bool, first: Bound, first_node: Any,
-                    step: int) -> Header:
+    def _until_wrap(
+        self, loop: Any, binding: Binding, type_: CType, declared: bool, first: Bound, first_node: Any, step: int
+    ) -> Header:
         """``for (i = n - 1; i < n; i--)`` with an unsigned i: down to zero, where the next value is too large."""
         wide = type_.bits >= self._setting.types.arithmetic.int.bits
         if step == -1 and not type_.signed and wide and isinstance(first, Affine) and loop.cond.op in ("<", ">"):
             return Header(binding, type_, declared, first, Affine(), step, "-->", first_node, None, True)
-        raise refused(loop, "infinite-loop", "the loop's condition always holds within its bounds, so the loop ends only by "
-                                             "wrapping around, if at all; compare against the end that it runs towards.")
+        raise refused(
+            loop,
+            "infinite-loop",
+            "the loop's condition always holds within its bounds, so the loop ends only by "
+            "wrapping around, if at all; compare against the end that it runs towards.",
+        )
 
     def _from_first(self, symbol: str, first: Bound, step: int) -> Formula:
         value = Affine.of(symbol)
@@ -128,43 +150,61 @@ class Loops:
             if binding is not None:
                 return binding, init.rvalue, False
         if init is None:
-            raise refused(loop, "loop-form", "the loop's header gives no first value; "
-                                             "write it there, as in `for (i = 0; ...)`.")
-        raise refused(loop, "loop-form", "the loop's header starts with more or other than one assignment to an iterator; "
-                                         "move the rest before the loop.")
+            raise refused(
+                loop, "loop-form", "the loop's header gives no first value; write it there, as in `for (i = 0; ...)`."
+            )
+        raise refused(
+            loop,
+            "loop-form",
+            "the loop's header starts with more or other than one assignment to an iterator; "
+            "move the rest before the loop.",
+        )
 
     def _iterator_type(self, binding: Binding, loop: Any) -> CType:
         type_ = self._setting.type_of_binding(binding)
         if not isinstance(type_, CType) or type_.floating or type_.spelling == "_Bool":
             what = "floating-point" if isinstance(type_, CType) else "no integer"
-            raise refused(loop, "iterator-type", f"the iterator `{binding.name}` is {what}; "
-                                                 "retile reads loops over integers.")
+            raise refused(
+                loop, "iterator-type", f"the iterator `{binding.name}` is {what}; retile reads loops over integers."
+            )
         if not binding.automatic:
-            raise refused(loop, "iterator-scope", f"the iterator `{binding.name}` is no local variable, so other functions "
-                                                  "may see it; declare it in the function.")
+            raise refused(
+                loop,
+                "iterator-scope",
+                f"the iterator `{binding.name}` is no local variable, so other functions "
+                "may see it; declare it in the function.",
+            )
         if self._setting.names.address_taken(binding):
-            raise refused(loop, "iterator-address", f"the address of the iterator `{binding.name}` is taken, so a store "
-                                                    "may change it; use a variable of its own for the loop.")
+            raise refused(
+                loop,
+                "iterator-address",
+                f"the address of the iterator `{binding.name}` is taken, so a store "
+                "may change it; use a variable of its own for the loop.",
+            )
         quals = self._setting.qualifiers(binding)
         for word, code in (("volatile", "volatile"), ("_Atomic", "atomic")):
             if word in quals:
                 raise refused(loop, code, f"the iterator `{binding.name}` is {word}; use a plain variable.")
         return type_
 
-    def _one_form(self, first: Bound, node: Any, type_: CType) -> Bound:
+    def _one_form(self, first: Bound, node: Any, type_: CType, context: Context) -> Bound:
         """An extremum of parameters becomes a parameter of its own, from which chunks can be counted."""
         if isinstance(first, Affine) or bound_names(first) & self._setting.loop_ids or self._setting.strict:
             return first
         symbol = Affine.of(self._setting.expression_parameter(c_text(node), type_))
-        self._setting.knowledge.add_fact(AllOf((at_least_bound(symbol, first), at_most_bound(symbol, first))))
+        self._setting.add_fact(AllOf((at_least_bound(symbol, first), at_most_bound(symbol, first))), context, node)
         return symbol
 
     def _step(self, node: Any, binding: Binding, context: Context) -> int:
         step = self._step_value(node, binding, context)
         if step:
             return step
-        raise refused(node, "step", f"the step `{c_text(node)}` is not the addition of a constant to `{binding.name}`; "
-                                    "retile reads steps such as `++`, `--`, `+= 2`.")
+        raise refused(
+            node,
+            "step",
+            f"the step `{c_text(node)}` is not the addition of a constant to `{binding.name}`; "
+            "retile reads steps such as `++`, `--`, `+= 2`.",
+        )
 
     def _step_value(self, node: Any, binding: Binding, context: Context) -> int | None:
         if isinstance(node, c_ast.ExprList) and len(node.exprs) == 1:
@@ -232,7 +272,7 @@ class Loops:
         common = self._setting.types.common(left_type, right_type)
         bound = self._bounds.read(other, context, common)
         if relation == "!=" and bound is not None:
-            bound = self._one_form(bound, other, common)
+            bound = self._one_form(bound, other, common, context)
         tested = None if bound is None else self._tested(mine, symbol, step, relation, bound, context, common)
         if tested is not None and isinstance(bound, Affine) and symbol in bound.names():
             tested, bound = tested - bound, Affine()
@@ -249,8 +289,9 @@ class Loops:
 
         return any(self._is(one, binding) for one in descendants(node))
 
-    def _tested(self, node: Any, symbol: str, step: int, relation: str, bound: Bound, context: Context,
-                common: CType) -> Affine | None:
+    def _tested(
+        self, node: Any, symbol: str, step: int, relation: str, bound: Bound, context: Context, common: CType
+    ) -> Affine | None:
         """The side with the iterator, for all values that are tested: up to one step beyond the bound."""
         value = self._setting.expressions.value(node, context)
         form = None if value is None else self._setting.affine(value.poly)
@@ -280,8 +321,9 @@ class Loops:
             return scaled(_minus(other, Affine.of(1 if relation == "<" else 0)), factor, 0)
         return scaled(_minus(other, Affine.of(-1 if relation == ">" else 0)), factor, factor - 1)
 
-    def _wrong_way(self, relation: str, tested: Affine, bound: Bound, node: Any, context: Context,
-                   binding: Binding) -> None:
+    def _wrong_way(
+        self, relation: str, tested: Affine, bound: Bound, node: Any, context: Context, binding: Binding
+    ) -> None:
         """A comparison against the direction of the step: harmless if it always holds, else the loop is not read."""
         holds = at_most_bound(tested, bound) if relation in ("<", "<=") else at_least_bound(tested, bound)
         if relation in ("<", ">") and isinstance(bound, Affine):
@@ -291,36 +333,61 @@ class Loops:
         if self._setting.knowledge.proves(context.formula, holds):
             self._always_true = True
             return
-        raise refused(node, "loop-direction", f"`{c_text(node)}` bounds `{binding.name}` against the direction of its "
-                                              "step; the loop may run for ever or wrap around.")
+        raise refused(
+            node,
+            "loop-direction",
+            f"`{c_text(node)}` bounds `{binding.name}` against the direction of its "
+            "step; the loop may run for ever or wrap around.",
+        )
 
     def _unrelated(self, node: Any, binding: Binding, context: Context) -> None:
         condition = self._conditions.known(node, context)
         if condition is not None and self._setting.knowledge.proves(context.formula, condition):
             return
-        raise refused(node, "loop-condition", f"the loop's condition `{c_text(node)}` does not compare `{binding.name}` "
-                                              "with a bound; put it into an `if` around the loop.")
+        raise refused(
+            node,
+            "loop-condition",
+            f"the loop's condition `{c_text(node)}` does not compare `{binding.name}` "
+            "with a bound; put it into an `if` around the loop.",
+        )
 
     def _condition_refused(self, node: Any, loop: Any, binding: Binding) -> Refused:
         from .scopes import assigned_target, descendants
 
         if any(assigned_target(one) is not None for one in descendants(node)):
-            return refused(node, "loop-condition", f"the loop's condition `{c_text(node)}` changes something; "
-                                                   "only the last part of the header may do that.")
+            return refused(
+                node,
+                "loop-condition",
+                f"the loop's condition `{c_text(node)}` changes something; "
+                "only the last part of the header may do that.",
+            )
         changed = self._changed_in(node)
         if changed:
-            return refused(node, "bound-changed", f"the bound `{c_text(node)}` uses `{changed}`, which the nest changes; "
-                                                  "copy it to a variable of its own before the nest.")
-        return refused(node, "bound", f"the loop's condition `{c_text(node)}` does not compare `{binding.name}` with a "
-                                      "bound that is linear in iterators and sizes and stays while the loop runs.")
+            return refused(
+                node,
+                "bound-changed",
+                f"the bound `{c_text(node)}` uses `{changed}`, which the nest changes; "
+                "copy it to a variable of its own before the nest.",
+            )
+        return refused(
+            node,
+            "bound",
+            f"the loop's condition `{c_text(node)}` does not compare `{binding.name}` with a "
+            "bound that is linear in iterators and sizes and stays while the loop runs.",
+        )
 
     def _changed_in(self, node: Any) -> str:
         from .scopes import descendants
 
         for one in descendants(node):
             binding = self._setting.names.of(one) if isinstance(one, c_ast.ID) else None
-            if binding is not None and binding.is_object and self._setting.assigned(binding) and \
-                    binding not in self._setting.definitions and not self._setting.is_iterator(binding):
+            if (
+                binding is not None
+                and binding.is_object
+                and self._setting.assigned(binding)
+                and binding not in self._setting.definitions
+                and not self._setting.is_iterator(binding)
+            ):
                 return binding.name
         return ""
 
@@ -334,79 +401,32 @@ class Loops:
 
     # ------------------------------------------------------------ ends
 
-    def _must_meet(self, first: Bound, last: Bound, step: int, type_: CType, context: Context, loop: Any) -> None:
-        """``i != n`` ends only if the steps from the first value meet n."""
-        if not isinstance(first, Affine) or not isinstance(last, Affine):
-            raise refused(loop, "bound", "`!=` with a conditional bound is not read; use `<` or `>`.")
-        sign = 1 if step > 0 else -1
-        distance = (last + sign - first) * sign
-        meets = AllOf((at_most(0, distance), Constraint(distance.mod(abs(step)), True)))
-        if type_.signed and type_.bits >= self._setting.types.arithmetic.int.bits:
-            self._fact(meets, context, loop)
-        elif not self._setting.require(AssumptionCode.RELATION, meets, context, loop):
-            raise refused(loop, "bound", "the loop may run past its `!=` bound and wrap around.")
-
-    def _must_end(self, header: Header, symbol: str, context: Context, loop: Any) -> None:
-        """No value tested leaves the iterator's type: up to one step beyond the last."""
-        type_, step = header.type, header.step
-        beyond = abs(step) - (1 if header.relation == "!=" else 0)
-        if step > 0:
-            inside = at_least_bound(Affine.of(type_.largest - beyond), header.last)
-        else:
-            inside = at_most_bound(Affine.of(type_.smallest + beyond), header.last)
-        runs = at_most_between(header.first, header.last, step)
-        if self._setting.knowledge.proves(context.where(runs).formula, inside):
-            return
-        narrow = type_.bits < self._setting.types.arithmetic.int.bits
-        if abs(step) != 1 and (narrow or not type_.signed):
-            self._must_not_wrap(header, symbol, context, loop)
-        elif (abs(step) == 1 and not self._always_true) or (type_.signed and not narrow):
-            self._fact(inside, context.where(runs), loop)
-        elif not self._setting.require(AssumptionCode.NO_WRAP, inside, context.where(runs), loop):
-            raise refused(loop, "bound", "the loop's iterator may wrap around.")
-
-    def _must_not_wrap(self, header: Header, symbol: str, context: Context, loop: Any) -> None:
-        """From the last value within the bounds the next one, beyond them, must still be one of the type."""
-        if not isinstance(header.first, Affine):
-            raise refused(loop, "step", "the first value is the larger or smaller of two and the step is not one; "
-                                        "give the loop a plain first value.")
-        after = Affine.of(symbol) + header.step
-        leaves = negate(at_most_bound(after, header.last) if header.step > 0 else at_least_bound(after, header.last))
-        inside = context.inside(symbol, header.binding, AllOf((header.constraint(symbol, header.first), leaves)))
-        holds = AllOf((at_most(header.type.smallest, after), at_most(after, header.type.largest)))
-        if not self._setting.require(AssumptionCode.NO_WRAP, holds, inside, loop):
-            raise refused(loop, "bound", "the loop's iterator may wrap around.")
-
-    def _fact(self, formula: Formula, context: Context, loop: Any) -> None:
-        """What must hold of the sizes for the loop to end, whenever it is reached."""
-        from .knowledge import Obligation
-
-        knowledge = self._setting.knowledge
-        condition = knowledge.exact_condition(
-            Obligation(AssumptionCode.OTHER, formula, context.formula, context.loops, loop))
-        if condition is None:
-            return
-        if condition == AnyOf():
-            raise refused(loop, "infinite-loop", "the loop never ends: its bound lies beyond what its iterator can hold.")
-        if not self._setting.strict:
-            knowledge.add_fact(condition)
-
     # ------------------------------------------------------------ for (i = n; i-- > 0; )
 
-    def _countdown(self, loop: Any, binding: Binding, type_: CType, declared: bool, first: Bound, first_node: Any,
-                   symbol: str, context: Context) -> Header:
+    def _countdown(
+        self,
+        loop: Any,
+        binding: Binding,
+        type_: CType,
+        declared: bool,
+        first: Bound,
+        first_node: Any,
+        symbol: str,
+        context: Context,
+    ) -> Header:
         """``i-- > b`` and ``--i >= b`` with an empty third part: the values are first - 1 down to b."""
         low = self._countdown_bound(loop, binding)
         if low is None:
-            raise refused(loop, "step", f"the loop's header does not step `{binding.name}`; "
-                                        "write the step as its last part.")
+            raise refused(
+                loop, "step", f"the loop's header does not step `{binding.name}`; write the step as its last part."
+            )
         node, strict = low
         common = type_ if node is None else self._setting.types.common(type_, self._setting.type_of(node))
         bound: Bound | None = Affine() if node is None else self._bounds.read(node, context, common)
         if bound is None or not isinstance(first, Affine):
             raise self._condition_refused(loop.cond, loop, binding)
         if node is None:  # from below zero it would run into the overflow of its iterator
-            self._fact(at_most(0, first), context, loop)
+            self._endings.fact(at_most(0, first), context, loop)
         header = Header(binding, type_, declared, first - 1, bound, -1, "-->", first_node, node, True)
         self._countdown_ends(header, first, bound, strict, common, context, loop)
         return header
@@ -422,13 +442,18 @@ class Loops:
             return None
         if cond.left.op == "p--" and cond.op == ">":
             return cond.right, True
-        if cond.left.op == "p--" and cond.op == "!=" and isinstance(cond.right, c_ast.Constant) and \
-                cond.right.value == "0":
+        if (
+            cond.left.op == "p--"
+            and cond.op == "!="
+            and isinstance(cond.right, c_ast.Constant)
+            and cond.right.value == "0"
+        ):
             return None, True
         return (cond.right, False) if cond.left.op == "--" and cond.op == ">=" else None
 
-    def _countdown_ends(self, header: Header, first: Affine, bound: Bound, strict: bool, common: CType,
-                        context: Context, loop: Any) -> None:
+    def _countdown_ends(
+        self, header: Header, first: Affine, bound: Bound, strict: bool, common: CType, context: Context, loop: Any
+    ) -> None:
         """The tested value must keep its sign when it is converted, and ``--i`` must not wrap below zero."""
         lowest = min_with(bound, first)
         if not header.type.signed or not common.signed:
@@ -447,16 +472,3 @@ def _minus(bound: Bound, form: Affine) -> Bound:
 def min_with(bound: Bound, form: Affine) -> Bound:
     """The smaller of the two."""
     return flat("min", bound, form)
-
-
-def at_most_between(first: Bound, last: Bound, step: int) -> Formula:
-    """Where the loop runs at all: ``first <= last`` upwards, ``last <= first`` downwards."""
-    low, high = (first, last) if step > 0 else (last, first)
-    if isinstance(low, Affine):
-        return at_most_bound(low, high)
-    if low.kind == "max":
-        return AllOf(tuple(at_most_between(part, high, 1) for part in low.bounds))
-    return AnyOf(tuple(at_most_between(part, high, 1) for part in low.bounds))
-
-
-__all__ = ["Header", "Loops", "Poly"]

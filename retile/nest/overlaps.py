@@ -1,8 +1,8 @@
 """Which storages may share bytes, and the assumptions that they do not.
 
-Two declared objects never overlap.  What a pointer leads to may be any object whose address is known outside, unless the
-pointer is ``restrict`` and the other is not derived from it (ISO/IEC 9899:2018, 6.7.3.1).  Types say nothing here: strict
-aliasing is not relied on, since many programs are built without it.
+Two declared objects never overlap. What a pointer leads to may be any object whose address is known outside, unless
+the pointer is ``restrict`` and the other is not derived from it (ISO/IEC 9899:2018, 6.7.3.1). Types say nothing here:
+strict aliasing is not relied on, since many programs are built without it.
 """
 
 from __future__ import annotations
@@ -48,15 +48,21 @@ class _Overlaps:
         stored = self._stored
         names = [storage for storage in stored.storages]
         for at, one in enumerate(names):
-            for other in names[at + 1:]:
+            for other in names[at + 1 :]:
                 if {one.name, other.name} & self._written and self._may_overlap(one, other):
-                    self._assume(AssumptionCode.NO_OVERLAP, one.name, other.name,
-                                 f"{one.name} and {other.name} do not overlap")
+                    self._assume(
+                        AssumptionCode.NO_OVERLAP, one.name, other.name, f"{one.name} and {other.name} do not overlap"
+                    )
             if one.name in self._written and self._are_rows(one.name):
                 table = stored.roots[one.name].key.removesuffix("[]")
-                stored.assumptions.append(Assumption(
-                    AssumptionCode.OTHER, f"the rows that {table} points to do not overlap each other or {table} itself",
-                    None, (one.name,)))
+                stored.assumptions.append(
+                    Assumption(
+                        AssumptionCode.OTHER,
+                        f"the rows that {table} points to do not overlap each other or {table} itself",
+                        None,
+                        (one.name,),
+                    )
+                )
         self._hold(self._held())
 
     def _are_rows(self, name: str) -> bool:
@@ -79,9 +85,21 @@ class _Overlaps:
             pointer = isinstance(type_, PointerTo)
             name = f"&{binding.name}" if pointer else binding.name
             root = Root(binding.name, StorageKind.SCALAR, binding, f"&{binding.name}", True)
-            storage = Storage(name, name, StorageKind.SCALAR, "void *" if pointer else type_,
-                              self._setting.types.size_of(type_), (), (), False, binding.kind,
-                              ScalarClass.PARAMETER, (), True, f"&{binding.name}")
+            storage = Storage(
+                name,
+                name,
+                StorageKind.SCALAR,
+                "void *" if pointer else type_,
+                self._setting.types.size_of(type_),
+                (),
+                (),
+                False,
+                binding.kind,
+                ScalarClass.PARAMETER,
+                (),
+                True,
+                f"&{binding.name}",
+            )
             found.append(_Held(binding.name, root, storage, name))
         return found
 
@@ -93,11 +111,37 @@ class _Overlaps:
             size = types.size_of(place.step_type) if len(place.indices) == 1 else None
             kind = getattr(place.step_type, "kind", "struct")
             spelling = f"{kind} {getattr(place.step_type, 'tag', None) or ''}".strip()
-            return Storage(f"*{root.key}", root.key, StorageKind.POINTER, spelling, size, (), (), root.restrict, scope,
-                           None, (), True, root.text)
+            return Storage(
+                f"*{root.key}",
+                root.key,
+                StorageKind.POINTER,
+                spelling,
+                size,
+                (),
+                (),
+                root.restrict,
+                scope,
+                None,
+                (),
+                True,
+                root.text,
+            )
         element = place.type if not isinstance(place.type, PointerTo) else "void *"
-        return Storage(text, root.key, StorageKind.POINTER, element, types.size_of(place.type), (), (), root.restrict,
-                       scope, None, (), True, f"&{text}")
+        return Storage(
+            text,
+            root.key,
+            StorageKind.POINTER,
+            element,
+            types.size_of(place.type),
+            (),
+            (),
+            root.restrict,
+            scope,
+            None,
+            (),
+            True,
+            f"&{text}",
+        )
 
     def _hold(self, held: list[_Held]) -> None:
         """No store of the nest may change what must keep its value."""
@@ -105,8 +149,13 @@ class _Overlaps:
         for one in held:
             for name in [s.name for s in self._stored.storages if s.name in self._written]:
                 root = self._stored.roots.get(name)
-                if root is None or name == one.storage.name and one.storage.name in known and root.direct and \
-                        root.kind is StorageKind.SCALAR:
+                if (
+                    root is None
+                    or name == one.storage.name
+                    and one.storage.name in known
+                    and root.direct
+                    and root.kind is StorageKind.SCALAR
+                ):
                     continue
                 if root.key == one.root.key and root.kind is one.root.kind:
                     self._direct(one, name)
@@ -127,9 +176,14 @@ class _Overlaps:
         if self._stored.keys.get(name) != one.cell:
             return
         node = self._nodes.get(name)
-        self._stored.refusals.append(refusal(
-            node, "bound-changed", f"the nest stores to {name}, from which it also reads `{one.text}` as a bound or pointer; "
-                                   "copy that to a variable of its own before the nest."))
+        self._stored.refusals.append(
+            refusal(
+                node,
+                "bound-changed",
+                f"the nest stores to {name}, from which it also reads `{one.text}` as a bound or pointer; "
+                "copy that to a variable of its own before the nest.",
+            )
+        )
 
     # ------------------------------------------------------------ may two overlap?
 
@@ -152,10 +206,15 @@ class _Overlaps:
         return not self._excludes(pointer, declared)
 
     def _is_untouched_argument(self, root: Root) -> bool:
-        """A pointer parameter as the caller gave it: it cannot lead to a local of this call, nor derive from another."""
+        """A pointer parameter as the caller gave it: it leads to no local of this call and derives from no other."""
         binding = root.binding
-        return root.direct and binding is not None and binding.kind == "argument" and \
-            not self._setting.names.assignments.get(binding) and not self._setting.names.address_taken(binding)
+        return (
+            root.direct
+            and binding is not None
+            and binding.kind == "argument"
+            and not self._setting.names.assignments.get(binding)
+            and not self._setting.names.address_taken(binding)
+        )
 
     def _excludes(self, restricted: Root, other: Root) -> bool:
         """True if one is restrict and the other surely not derived from it."""
@@ -174,8 +233,13 @@ class _Overlaps:
         parent = names.parent(node)
         while isinstance(parent, c_ast.BinaryOp) and parent.op in "+-":
             node, parent = parent, names.parent(parent)
-        reached = isinstance(parent, c_ast.ArrayRef) and parent.name is node or \
-            isinstance(parent, c_ast.StructRef) or isinstance(parent, c_ast.UnaryOp) and parent.op == "*"
+        reached = (
+            isinstance(parent, c_ast.ArrayRef)
+            and parent.name is node
+            or isinstance(parent, c_ast.StructRef)
+            or isinstance(parent, c_ast.UnaryOp)
+            and parent.op == "*"
+        )
         while isinstance(parent, (c_ast.ArrayRef, c_ast.StructRef)):
             parent = names.parent(parent)
         return reached and not (isinstance(parent, c_ast.UnaryOp) and parent.op == "&")

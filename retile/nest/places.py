@@ -1,8 +1,8 @@
 """From C designators to cells: which object, which member, which subscripts.
 
-A pointer that is only computed from another one (``double *row = a + i*n``) is followed to it.  A pointer read from memory
-is told by its text if it is one and the same throughout the nest (``g->depth``), else its targets are the rows of a
-table (``rows[]``), with the subscripts of the table first.
+A pointer that is only computed from another one (``double *row = a + i*n``) is followed to it. A pointer read from
+memory is told by its text if it is one and the same throughout the nest (``g->depth``), else its targets are the rows
+of a table (``rows[]``), with the subscripts of the table first.
 """
 
 from __future__ import annotations
@@ -119,8 +119,11 @@ class Places:
                 return self._member(node, context)
             case c_ast.Cast():
                 return self.place(node.expr, context)
-        raise refused(node, "unsupported", f"retile cannot tell which memory `{c_text(node)}` is; "
-                                           "name the array or structure directly.")
+        raise refused(
+            node,
+            "unsupported",
+            f"retile cannot tell which memory `{c_text(node)}` is; name the array or structure directly.",
+        )
 
     def _variable(self, node: Any) -> Place:
         binding = self._setting.names.of(node)
@@ -156,9 +159,15 @@ class Places:
         while found and isinstance(found[0].type, ArrayOf):
             extent = self._setting.constant(found[0].type.extent) if found[0].type.extent is not None else None
             if extent is None or extent * len(found) > 256:
-                raise refused(node, "unsupported", "an array is initialised inside the nest whose length is not a small "
-                                                   "constant; assign its elements in a loop.")
-            found = [self._into(one, Index(Poly.of(at), one.type.extent), node) for one in found for at in range(extent)]
+                raise refused(
+                    node,
+                    "unsupported",
+                    "an array is initialised inside the nest whose length is not a small "
+                    "constant; assign its elements in a loop.",
+                )
+            found = [
+                self._into(one, Index(Poly.of(at), one.type.extent), node) for one in found for at in range(extent)
+            ]
         return found
 
     def key_of(self, binding: Binding) -> str:
@@ -180,27 +189,44 @@ class Places:
 
     def _into(self, array: Place, index: Index, node: Any) -> Place:
         self._check(node, array.type.element, array.type.element_quals)
-        return replace(array, steps=(*array.steps, index), type=array.type.element, quals=array.type.element_quals,
-                       step_type=array.type.element)
+        return replace(
+            array,
+            steps=(*array.steps, index),
+            type=array.type.element,
+            quals=array.type.element_quals,
+            step_type=array.type.element,
+        )
 
     def _member(self, node: Any, context: Context) -> Place:
         whole = self.pointer(node.name, context) if node.type == "->" else self.place(node.name, context)
         if not isinstance(whole.type, StructType):
             raise refused(node, "unsupported", f"retile cannot read the type of `{c_text(node.name)}`.")
         if whole.type.kind == "union" or self._in_union(whole.type, node.field.name):
-            raise refused(node, "union", f"`{c_text(node)}` is a member of a union, whose members share memory; "
-                                         "use a plain variable in the nest.")
+            raise refused(
+                node,
+                "union",
+                f"`{c_text(node)}` is a member of a union, whose members share memory; "
+                "use a plain variable in the nest.",
+            )
         member = self._setting.types.member(whole.type, node.field.name)
         if member is None:
             raise refused(node, "unsupported", f"the structure with the member `{node.field.name}` is not known here.")
         self._check(node, member.type, member.quals)
-        return Place(whole.root, (*whole.steps, Member(node.field.name, member.bits)), member.type,
-                     member.quals | whole.quals, whole.step_type)
+        return Place(
+            whole.root,
+            (*whole.steps, Member(node.field.name, member.bits)),
+            member.type,
+            member.quals | whole.quals,
+            whole.step_type,
+        )
 
     def _in_union(self, type_: StructType, name: str) -> bool:
         for member in self._setting.types.members(type_) or ():
-            if member.name is None and isinstance(member.type, StructType) and \
-                    self._setting.types.member(member.type, name) is not None:
+            if (
+                member.name is None
+                and isinstance(member.type, StructType)
+                and self._setting.types.member(member.type, name) is not None
+            ):
                 return member.type.kind == "union" or self._in_union(member.type, name)
         return False
 
@@ -210,8 +236,12 @@ class Places:
         pointer = type_.quals if isinstance(type_, PointerTo) else frozenset()
         for word, code in (("volatile", "volatile"), ("_Atomic", "atomic")):
             if word in quals | pointer:
-                raise refused(node, code, f"`{c_text(node)}` is {word}: every access to it must stay where it is; "
-                                          "copy it to a plain variable before the nest.")
+                raise refused(
+                    node,
+                    code,
+                    f"`{c_text(node)}` is {word}: every access to it must stay where it is; "
+                    "copy it to a plain variable before the nest.",
+                )
 
     # ------------------------------------------------------------ pointers
 
@@ -233,13 +263,17 @@ class Places:
             case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
                 return self._loaded(node, context)
             case c_ast.UnaryOp() | c_ast.Assignment() if assigned_target(node) is not None:
-                raise refused(node, "pointer-assigned", f"`{c_text(node)}` moves a pointer inside the nest; "
-                                                        "use subscripts from a pointer that stays.")
+                raise refused(
+                    node,
+                    "pointer-assigned",
+                    f"`{c_text(node)}` moves a pointer inside the nest; use subscripts from a pointer that stays.",
+                )
         raise self._unknown(node)
 
     def _unknown(self, node: Any) -> Refused:
-        return refused(node, "pointer", f"retile cannot tell where `{c_text(node)}` points; "
-                                        "name the array that is meant.")
+        return refused(
+            node, "pointer", f"retile cannot tell where `{c_text(node)}` points; name the array that is meant."
+        )
 
     def _sum(self, node: Any, context: Context) -> Place:
         base, offset = node.left, node.right
@@ -278,8 +312,12 @@ class Places:
         if definition is not None:
             return self.pointer(definition.expression, definition.context)
         if not setting.is_frozen(binding):
-            raise refused(node, "pointer-assigned", f"the pointer `{binding.name}` gets another value inside the nest; "
-                                                    "use subscripts from a pointer that stays.")
+            raise refused(
+                node,
+                "pointer-assigned",
+                f"the pointer `{binding.name}` gets another value inside the nest; "
+                "use subscripts from a pointer that stays.",
+            )
         origin = self._origin(binding)
         if origin is not None:
             return origin
@@ -293,7 +331,11 @@ class Places:
         nodes = self._setting.names.assignments.get(binding, [])
         if binding.kind != "local" or len(nodes) != 1 or not isinstance(nodes[0], c_ast.Decl):
             return None
-        if self._setting.names.has_jumps or self._setting.names.address_taken(binding) or not self._constant_since(nodes[0].init, nodes[0]):
+        if (
+            self._setting.names.has_jumps
+            or self._setting.names.address_taken(binding)
+            or not self._constant_since(nodes[0].init, nodes[0])
+        ):
             return None
         try:
             return self.pointer(nodes[0].init, Context())
@@ -362,4 +404,3 @@ def _bare(type_: Any) -> Any:
 
 def _line(node: Any) -> int:
     return getattr(getattr(node, "coord", None), "line", 0)
-

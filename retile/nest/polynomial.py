@@ -1,7 +1,7 @@
 """Integer polynomials over iterators and parameters: what a subscript is before its rows and columns are told apart.
 
-A product of sizes, ``(i*n + j)*m + k``, is no affine form, but becomes several once the array is seen as rows.  A symbol
-is a name or a floor, as in affine forms.
+A product of sizes, ``(i*n + j)*m + k``, is no affine form, but becomes several once the array is seen as rows. A
+symbol is a name or a floor, as in affine forms.
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
 """Products of unsigned numbers that may wrap in fewer bits than an address has.
 
-``a[i * beams + j]`` with 32-bit unsigned numbers wraps when the array is larger than that.  The terms are grouped by their
-products of sizes; where each group's factor is not negative, the value is largest where every factor is.  The product of
-that largest factor and the sizes becomes a parameter, computed in 64 bits, and the sum of these must fit.
+``a[i * beams + j]`` with 32-bit unsigned numbers wraps when the array is larger than that. The terms are grouped by
+their products of sizes; where each group's factor is not negative, the value is largest where every factor is. The
+product of that largest factor and the sizes becomes a parameter, computed in 64 bits, and the sum of these must fit.
 """
 
 from __future__ import annotations

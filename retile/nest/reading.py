@@ -50,8 +50,15 @@ class NestReader:
         stored = store(setting, walk, self._nest)
         overlap_assumptions(setting, stored, self._stores(walk, stored))
         products, hopeless = product_obligations(setting)
-        refusals += [refusal(node, "wrap", "this product of unsigned numbers may wrap around, and no bound for it is seen; "
-                                           "compute it in size_t or in a signed type.") for node in hopeless]
+        refusals += [
+            refusal(
+                node,
+                "wrap",
+                "this product of unsigned numbers may wrap around, and no bound for it is seen; "
+                "compute it in size_t or in a signed type.",
+            )
+            for node in hopeless
+        ]
         assumptions, unprovable = self._settle(setting, [*setting.obligations, *stored.obligations, *products])
         refusals += stored.refusals + unprovable
         if refusals:
@@ -65,20 +72,35 @@ class NestReader:
 
     @staticmethod
     def _stores(walk: Walk, stored: Stored) -> dict[str, Any]:
-        return {access.storage: walk.statements[number].touches[place].node
-                for (number, place), access in stored.accesses.items() if access.write}
+        return {
+            access.storage: walk.statements[number].touches[place].node
+            for (number, place), access in stored.accesses.items()
+            if access.write
+        }
 
     def _directives(self) -> list[Refusal]:
         span = self._source.span(self._nest)
         if span is None:
             return []
-        found = [Refusal(token.line, token.column, "directive",
-                         "a directive stands inside the nest, which would move with the loops; take it out first.")
-                 for token in self._source.directives_in(span)]
+        found = [
+            Refusal(
+                token.line,
+                token.column,
+                "directive",
+                "a directive stands inside the nest, which would move with the loops; take it out first.",
+            )
+            for token in self._source.directives_in(span)
+        ]
         for token in self._source.directives_before(span):
             if "pragma" in token.text.split("(")[0].lower():
-                found.append(Refusal(token.line, token.column, "directive",
-                                     "a pragma before the loop speaks of the loop as it stands; take it out first."))
+                found.append(
+                    Refusal(
+                        token.line,
+                        token.column,
+                        "directive",
+                        "a pragma before the loop speaks of the loop as it stands; take it out first.",
+                    )
+                )
         return found
 
     # ------------------------------------------------------------ obligations
@@ -108,9 +130,19 @@ class NestReader:
         span = self._source.span(self._nest)
         assert span is not None
         statements = tuple(self._statement(number, walk, stored) for number in range(len(walk.statements)))
-        return Nest(self._address, self._function.decl.name, span, walk.tree,  # type: ignore[arg-type]
-                    self._loops(setting, walk), statements, tuple(setting.knowledge.parameters.values()),
-                    tuple(stored.storages), tuple(setting.knowledge.facts), assumptions, self._source.identifiers)
+        return Nest(
+            self._address,
+            self._function.decl.name,
+            span,
+            walk.tree,  # type: ignore[arg-type]
+            self._loops(setting, walk),
+            statements,
+            tuple(setting.knowledge.parameters.values()),
+            tuple(stored.storages),
+            tuple(setting.knowledge.facts),
+            assumptions,
+            self._source.identifiers,
+        )
 
     def _statement(self, number: int, walk: Walk, stored: Stored) -> Statement:
         raw = walk.statements[number]
@@ -123,15 +155,22 @@ class NestReader:
         found = []
         for raw in walk.loops:
             live = not raw.header.declared_in_for and live_after(raw.header.binding, self._nest, self._names)
-            found.append(loop_text(self._source, raw.node, raw.id, raw.header, raw.context.loops, raw.spans, live,
-                                   setting))
+            found.append(
+                loop_text(self._source, raw.node, raw.id, raw.header, raw.context.loops, raw.spans, live, setting)
+            )
         return tuple(found)
 
 
 def _hopeless(obligation: Obligation) -> Refusal:
     if obligation.code is AssumptionCode.ROW_BOUND:
-        return refusal(obligation.node, "row-bound", "the subscript leaves its row for all sizes; "
-                                                     "write the array with subscripts of its own for rows and columns.")
-    return refusal(obligation.node, "wrap", "unsigned arithmetic wraps around here for all sizes; "
-                                            "write it with signed numbers or in another order.")
-
+        return refusal(
+            obligation.node,
+            "row-bound",
+            "the subscript leaves its row for all sizes; "
+            "write the array with subscripts of its own for rows and columns.",
+        )
+    return refusal(
+        obligation.node,
+        "wrap",
+        "unsigned arithmetic wraps around here for all sizes; write it with signed numbers or in another order.",
+    )

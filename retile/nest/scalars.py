@@ -1,8 +1,9 @@
 """What a nest does with a variable without subscripts.
 
-A variable is private to an iteration if every read in the iteration comes after a write that surely happened in the same
-iteration (Allen & Kennedy, "Optimizing Compilers for Modern Architectures", 2001, section 5.3, scalar privatization).
-Where sibling loops each use it privately, each of them has a variable of its own, as far as dependence goes.
+A variable is private to an iteration if every read in the iteration comes after a write that surely happened in the
+same iteration (Allen & Kennedy, "Optimizing Compilers for Modern Architectures", 2001, section 5.3, scalar
+privatization). Where sibling loops each use it privately, each of them has a variable of its own, as far as
+dependence goes.
 """
 
 from __future__ import annotations
@@ -82,16 +83,21 @@ def _common(chains: list[tuple[str, ...]]) -> tuple[str, ...]:
 def _covered(order: Order, context: Context, touches: list[Numbered], branches: list[Branch]) -> bool:
     """True if a write surely happened before, in the same iteration of all loops that the touches share."""
     writes = [(at, touch.context.path) for at, touch in touches if touch.write and at < order]
-    if any(path == context.path[:len(path)] for _, path in writes):
+    if any(path == context.path[: len(path)] for _, path in writes):
         return True
-    return any(around.covers(context) and end <= order[0] and
-               all(_written_in((*around.path, side), writes, branches) for side in (yes, no))
-               for around, yes, no, end in branches)
+    return any(
+        around.covers(context)
+        and end <= order[0]
+        and all(_written_in((*around.path, side), writes, branches) for side in (yes, no))
+        for around, yes, no, end in branches
+    )
 
 
 def _written_in(path: tuple[int, ...], writes: list[tuple[Order, tuple[int, ...]]], branches: list[Branch]) -> bool:
     """True if the branch with this path surely writes."""
     if any(written == path for _, written in writes):
         return True
-    return any(around.path == path and all(_written_in((*path, side), writes, branches) for side in (yes, no))
-               for around, yes, no, _ in branches)
+    return any(
+        around.path == path and all(_written_in((*path, side), writes, branches) for side in (yes, no))
+        for around, yes, no, _ in branches
+    )

@@ -183,8 +183,9 @@ class FunctionNames:
     def _address_used(self, node: Any) -> bool:
         """Climb from a name to the whole designator: is its address taken, or does it stay an array?"""
         parent = self.parent(node)
-        while (isinstance(parent, c_ast.ArrayRef) and parent.name is node and self._is(node, ArrayOf)) or \
-                (isinstance(parent, c_ast.StructRef) and parent.type == "."):
+        while (isinstance(parent, c_ast.ArrayRef) and parent.name is node and self._is(node, ArrayOf)) or (
+            isinstance(parent, c_ast.StructRef) and parent.type == "."
+        ):
             node, parent = parent, self.parent(parent)
         if isinstance(parent, c_ast.UnaryOp) and parent.op == "&":
             return True
@@ -194,8 +195,11 @@ class FunctionNames:
 
     def _is(self, node: Any, kind: type) -> bool:
         type_ = self.type_of(node)
-        return isinstance(type_, kind) or not isinstance(type_, (ArrayOf, StructType)) and \
-            type(type_).__name__ == "UnknownType"
+        return (
+            isinstance(type_, kind)
+            or not isinstance(type_, (ArrayOf, StructType))
+            and type(type_).__name__ == "UnknownType"
+        )
 
 
 def _binding(declared: Declared) -> Binding:

@@ -62,8 +62,9 @@ class Setting:
         self.outer_iterators: dict[Binding, Any] = {}  # iterators of the loops around the nest, with these loops
         self._stored_texts: frozenset[str] | None = None
         inside = {id(node) for node in descendants(within)}
-        self._assigned = {binding: [node for node in nodes if id(node) in inside]
-                          for binding, nodes in names.assignments.items()}
+        self._assigned = {
+            binding: [node for node in nodes if id(node) in inside] for binding, nodes in names.assignments.items()
+        }
 
     # ------------------------------------------------------------ objects
 
@@ -99,8 +100,9 @@ class Setting:
 
     def is_frozen(self, binding: Binding) -> bool:
         """True if no statement of the piece names the object as its target."""
-        return binding.is_object and not self.assigned(binding) and \
-            not self.qualifiers(binding) & {"volatile", "_Atomic"}
+        return (
+            binding.is_object and not self.assigned(binding) and not self.qualifiers(binding) & {"volatile", "_Atomic"}
+        )
 
     def is_iterator(self, binding: Binding) -> bool:
         """True if some loop of the nest runs over the variable."""
@@ -124,8 +126,13 @@ class Setting:
     def _known_before(self, node: Any, context: Context) -> bool:
         """True if a name in a definition is an iterator, never changes, or was defined before."""
         binding = self.names.of(node)
-        return binding is None or not binding.is_object or context.iterator(binding) is not None or \
-            self.is_frozen(binding) or self.definition(binding, context) is not None
+        return (
+            binding is None
+            or not binding.is_object
+            or context.iterator(binding) is not None
+            or self.is_frozen(binding)
+            or self.definition(binding, context) is not None
+        )
 
     def definition(self, binding: Binding, context: Context) -> Definition | None:
         """The definition that every use here sees; None if there is no such."""
@@ -151,17 +158,21 @@ class Setting:
             return None
         text = c_text(node)
         self.held[text] = place
-        return self.knowledge.add_parameter(Parameter(text, text, type_, "member" if "." in text or "->" in text
-                                                      else "expression"))
+        return self.knowledge.add_parameter(
+            Parameter(text, text, type_, "member" if "." in text or "->" in text else "expression")
+        )
 
     def reads_stored(self, node: Any) -> bool:
         """True if the expression reads a place that the piece writes under the same text: that is data, not a size."""
         if self._stored_texts is None:
             targets = (assigned_target(one) for one in descendants(self.within))
-            self._stored_texts = frozenset(c_text(one) for one in targets if isinstance(one, (c_ast.ArrayRef, c_ast.StructRef)))
+            self._stored_texts = frozenset(
+                c_text(one) for one in targets if isinstance(one, (c_ast.ArrayRef, c_ast.StructRef))
+            )
         return bool(self._stored_texts) and any(
             isinstance(one, (c_ast.ArrayRef, c_ast.StructRef)) and c_text(one) in self._stored_texts
-            for one in descendants(node))
+            for one in descendants(node)
+        )
 
     def expression_parameter(self, text: str, type_: CType) -> str:
         """The parameter for an expression that keeps its value."""
@@ -187,7 +198,8 @@ class Setting:
                 return isinstance(self.written_type(node.to_type), CType) and self.frozen_expression(node.expr, context)
             case c_ast.FuncCall():
                 return is_pure_call(node, self) and all(
-                    self.frozen_expression(one, context) for one in (node.args.exprs if node.args else ()))
+                    self.frozen_expression(one, context) for one in (node.args.exprs if node.args else ())
+                )
             case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
                 return self._frozen_memory(node, context)
         return False
@@ -271,9 +283,15 @@ class Setting:
             binding = self.names.of(one) if isinstance(one, c_ast.ID) else None
             if isinstance(one, c_ast.ID) and binding is None:
                 return None
-            if binding is not None and binding.is_object and (
-                    not binding.automatic or self.names.address_taken(binding) or
-                    len(self.names.assignments.get(binding, ())) > (binding.kind == "local")):
+            if (
+                binding is not None
+                and binding.is_object
+                and (
+                    not binding.automatic
+                    or self.names.address_taken(binding)
+                    or len(self.names.assignments.get(binding, ())) > (binding.kind == "local")
+                )
+            ):
                 return None
         strict, self.strict = self.strict, True
         try:
@@ -315,16 +333,25 @@ class Setting:
         knowledge = self.knowledge
         return (self.obligations, self.held, self.held_variables, self.narrow, knowledge.parameters, knowledge.facts)
 
-    # ------------------------------------------------------------ obligations
+    # ------------------------------------------------------------ facts and obligations
 
-    def require(self, code: AssumptionCode, formula: Formula, context: Context, node: Any,
-                storages: tuple[str, ...] = ()) -> bool:
+    def add_fact(self, formula: Formula, context: Context, node: Any) -> None:
+        """Note what holds wherever this place is reached: of the sizes at which it is not, it says nothing."""
+        condition = self.knowledge.exact_condition(
+            Obligation(AssumptionCode.OTHER, formula, context.formula, context.loops, node)
+        )
+        if condition is not None:
+            self.knowledge.add_fact(condition)
+
+    def require(
+        self, code: AssumptionCode, formula: Formula, context: Context, node: Any, storages: tuple[str, ...] = ()
+    ) -> bool:
         """Note that a formula must hold here; False if that is hopeless."""
         if self.strict:
             return self.knowledge.proves(context.formula, formula)
         self.obligations.setdefault(
-            Obligation(code, formula, context.formula, context.loops, node, storages,
-                       len(self.knowledge.facts)))
+            Obligation(code, formula, context.formula, context.loops, node, storages, len(self.knowledge.facts))
+        )
         return True
 
     def narrow_product(self, poly: Poly, type_: CType, context: Context, node: Any) -> Poly | None:
@@ -333,4 +360,3 @@ class Setting:
             return None
         self.narrow[poly, type_, context, node] = None
         return poly
-

@@ -1,10 +1,10 @@
 """Rows and columns of flattened arrays.
 
-``a[(i*n + j)*m + k]`` is a polynomial, no affine form.  Its terms are grouped by the products of sizes that multiply the
-iterators, here n*m, m and 1; where each divides the one before, they are taken for the strides of a grid with subscripts
-(i, j, k).  The guess is right if every inner subscript stays inside its row; that is proven from the loop bounds or
-becomes an assumption over the sizes.  Method: Grosser, Ramanujam, Pouchet, Sadayappan & Pop, "Optimistic delinearization
-of parametrically sized arrays", 2015.
+``a[(i*n + j)*m + k]`` is a polynomial, no affine form. Its terms are grouped by the products of sizes that multiply
+the iterators, here n*m, m and 1; where each divides the one before, they are taken for the strides of a grid with
+subscripts (i, j, k). The guess is right if every inner subscript stays inside its row; that is proven from the loop
+bounds or becomes an assumption over the sizes. Method: Grosser, Ramanujam, Pouchet, Sadayappan & Pop, "Optimistic
+delinearization of parametrically sized arrays", 2015.
 
 All accesses of an array must agree on the strides; ``a[j]`` beside ``a[i*n + j]`` lies in row 0.
 """
@@ -117,8 +117,9 @@ def _read(setting: Setting, accesses: Sequence[Subscript], strides: tuple[Stride
     return Grid(strides, tuple(subscripts), tuple(obligations))
 
 
-def _chosen(setting: Setting, access: Subscript, strides: tuple[Stride, ...], lengths: list[Affine],
-            storage: str) -> tuple[Any, ...] | None:
+def _chosen(
+    setting: Setting, access: Subscript, strides: tuple[Stride, ...], lengths: list[Affine], storage: str
+) -> tuple[Any, ...] | None:
     """The subscripts of one access, followed by the obligation that they need, if any; None if they never fit.
 
     ``i*m + m - 1 - j`` is column m - 1 - j of row i, although the term m alone could be one row.
@@ -128,10 +129,16 @@ def _chosen(setting: Setting, access: Subscript, strides: tuple[Stride, ...], le
         found = _subscripts(setting, access.poly, strides, whole_rows)
         if found is None:
             continue
-        inside = AllOf(tuple(part for subscript, length in zip(found[1:], lengths, strict=True)
-                             for part in (at_most(0, subscript), less(subscript, length))))
-        obligation = Obligation(AssumptionCode.ROW_BOUND, inside, access.context.formula, access.context.loops,
-                                access.node, (storage,))
+        inside = AllOf(
+            tuple(
+                part
+                for subscript, length in zip(found[1:], lengths, strict=True)
+                for part in (at_most(0, subscript), less(subscript, length))
+            )
+        )
+        obligation = Obligation(
+            AssumptionCode.ROW_BOUND, inside, access.context.formula, access.context.loops, access.node, (storage,)
+        )
         condition = setting.knowledge.condition(obligation)
         if condition is None:
             return (found,)
@@ -153,8 +160,9 @@ def _row_lengths(setting: Setting, strides: tuple[Stride, ...]) -> list[Affine] 
     return lengths
 
 
-def _subscripts(setting: Setting, poly: Poly, strides: tuple[Stride, ...],
-                whole_rows: bool) -> tuple[Affine, ...] | None:
+def _subscripts(
+    setting: Setting, poly: Poly, strides: tuple[Stride, ...], whole_rows: bool
+) -> tuple[Affine, ...] | None:
     """The terms of a polynomial divided among the strides; sizes alone are rows only if ``whole_rows``."""
     totals = [Poly() for _ in strides]
     still, poly = _whole_rows(setting, poly, strides) if whole_rows else ({}, poly)

@@ -78,9 +78,24 @@ class _Builder:
         binding = place.root.binding
         assert binding is not None
         scope = "block" if binding in self._walk.block_declared else binding.kind
-        self.stored.storages.append(Storage(
-            name, place.root.key, StorageKind.SCALAR, self._element(place.type), self._bytes(place), (), (), False, scope,
-            web.role, web.private_to, live, place.root.text, "const" in place.quals))
+        self.stored.storages.append(
+            Storage(
+                name,
+                place.root.key,
+                StorageKind.SCALAR,
+                self._element(place.type),
+                self._bytes(place),
+                (),
+                (),
+                False,
+                scope,
+                web.role,
+                web.private_to,
+                live,
+                place.root.text,
+                "const" in place.quals,
+            )
+        )
         self.stored.roots[name] = place.root
         self.stored.keys[name] = place.key
         for order, touch in web.touches:
@@ -126,19 +141,41 @@ class _Builder:
         self._loose(key, touches)
         self._add_array(key, touches, shape, strides, columns)
 
-    def _add_array(self, key: str, touches: list[Numbered], shape: list[Affine | None], strides: tuple[str, ...],
-                   columns: list[list[tuple[Affine, ...] | None]]) -> None:
+    def _add_array(
+        self,
+        key: str,
+        touches: list[Numbered],
+        shape: list[Affine | None],
+        strides: tuple[str, ...],
+        columns: list[list[tuple[Affine, ...] | None]],
+    ) -> None:
         place, root = touches[0][1].place, touches[0][1].place.root
         name = _shown(key, [touch.place for _, touch in touches])
         binding = root.binding
         block = binding in self._walk.block_declared and root.direct and root.kind is StorageKind.ARRAY
         scope = "block" if block else binding.kind if binding is not None else "argument"
         private = self._walk.block_declared[binding] if block and binding is not None else ()
-        live = not block and (root.kind is StorageKind.POINTER or binding is None or
-                              live_after(binding, self._nest, self._setting.names))
-        self.stored.storages.append(Storage(
-            name, root.key, root.kind, self._element(place.type), self._bytes(place), tuple(shape), strides, root.restrict,
-            scope, None, private, live, self._address(place), "const" in place.quals))
+        live = not block and (
+            root.kind is StorageKind.POINTER or binding is None or live_after(binding, self._nest, self._setting.names)
+        )
+        self.stored.storages.append(
+            Storage(
+                name,
+                root.key,
+                root.kind,
+                self._element(place.type),
+                self._bytes(place),
+                tuple(shape),
+                strides,
+                root.restrict,
+                scope,
+                None,
+                private,
+                live,
+                self._address(place),
+                "const" in place.quals,
+            )
+        )
         self.stored.roots[name] = root
         self.stored.keys[name] = key
         for (order, touch), column in zip(touches, columns, strict=True):
@@ -150,10 +187,14 @@ class _Builder:
 
     def _refuse_write(self, touch: Touch) -> None:
         indirect = any(one.poly is None for one in touch.place.indices)
-        why = "the subscript comes from data or is no linear form of iterators and sizes" if indirect else \
-            "its subscripts do not fall into rows of one length"
-        self.stored.refusals.append(refusal(
-            touch.node, "nonaffine-write", f"which cell `{c_text(touch.node)}` writes cannot be told: {why}."))
+        why = (
+            "the subscript comes from data or is no linear form of iterators and sizes"
+            if indirect
+            else "its subscripts do not fall into rows of one length"
+        )
+        self.stored.refusals.append(
+            refusal(touch.node, "nonaffine-write", f"which cell `{c_text(touch.node)}` writes cannot be told: {why}.")
+        )
 
     def _address(self, place: Place) -> str:
         """C text of the address of the first cell."""
@@ -204,8 +245,13 @@ class _Builder:
         for dimension, index in enumerate(touch.place.indices):
             if dimension and index.loose and index.extent is not None and index.poly is not None:
                 form, extent = self._setting.affine(index.poly), self._extent(touch.place, dimension, index)
-                if form is None or extent is None or not self._setting.knowledge.proves(
-                        touch.context.formula, AllOf((at_most(0, form), less(form, extent)))):
+                if (
+                    form is None
+                    or extent is None
+                    or not self._setting.knowledge.proves(
+                        touch.context.formula, AllOf((at_most(0, form), less(form, extent)))
+                    )
+                ):
                     return True
         return False
 
@@ -232,21 +278,33 @@ class _Builder:
                 extent = self._extent(touch.place, dimension, index)
                 form = self._setting.affine(index.poly)
                 if extent is None or form is None:
-                    self.stored.refusals.append(refusal(
-                        touch.node, "pointer", f"`{c_text(touch.node)}` walks through an array of arrays by a pointer; "
-                                               "use its subscripts."))
+                    self.stored.refusals.append(
+                        refusal(
+                            touch.node,
+                            "pointer",
+                            f"`{c_text(touch.node)}` walks through an array of arrays by a pointer; "
+                            "use its subscripts.",
+                        )
+                    )
                     continue
                 inside = AllOf((at_most(0, form), less(form, extent)))
-                self.stored.obligations.append(Obligation(
-                    AssumptionCode.ROW_BOUND, inside, touch.context.formula, touch.context.loops, touch.node, (key,)))
+                self.stored.obligations.append(
+                    Obligation(
+                        AssumptionCode.ROW_BOUND, inside, touch.context.formula, touch.context.loops, touch.node, (key,)
+                    )
+                )
 
 
 def _shown(key: str, places: list[Place]) -> str:
     """``g->total`` for a member of the one structure that a pointer leads to, ``g.total`` for one of many."""
     first = places[0]
-    if first.root.kind is StorageKind.POINTER and first.members and isinstance(first.steps[0], Index) and \
-            all(isinstance(place.steps[0], Index) and place.steps[0].poly == Poly() for place in places):
-        return first.root.key + "->" + key[len(first.root.key) + 1:]
+    if (
+        first.root.kind is StorageKind.POINTER
+        and first.members
+        and isinstance(first.steps[0], Index)
+        and all(isinstance(place.steps[0], Index) and place.steps[0].poly == Poly() for place in places)
+    ):
+        return first.root.key + "->" + key[len(first.root.key) + 1 :]
     return key
 
 

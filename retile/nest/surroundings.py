@@ -1,7 +1,7 @@
 """What the text around a nest says about its parameters: guards, outer loops, early returns.
 
-Only what surely still holds when the nest runs is taken: every variable in such a condition keeps its value from there to
-the end of the nest.  Nothing here may rest on an assumption; what cannot be proven is left out.
+Only what surely still holds when the nest runs is taken: every variable in such a condition keeps its value from
+there to the end of the nest. Nothing here may rest on an assumption; what cannot be proven is left out.
 """
 
 from __future__ import annotations

@@ -26,19 +26,34 @@ _FORBIDDEN = {
     c_ast.While: ("while", "a `while` loop runs an unknown number of times; write it as a `for` with a bound."),
     c_ast.DoWhile: ("while", "a `do` loop runs an unknown number of times; write it as a `for` with a bound."),
     c_ast.Switch: ("switch", "a `switch` chooses by data; write it with `if`."),
-    c_ast.Break: ("break", "`break` ends the loop early, so how often it runs depends on data; "
-                           "let the bound say where the loop ends."),
+    c_ast.Break: (
+        "break",
+        "`break` ends the loop early, so how often it runs depends on data; let the bound say where the loop ends.",
+    ),
     c_ast.Continue: ("continue", "`continue` skips the rest of the iteration; put the rest into an `if`."),
     c_ast.Goto: ("goto", "`goto` leaves the order of the loops; write it with loops and `if`."),
     c_ast.Label: ("label", "a label can be jumped to from elsewhere; write the nest without `goto`."),
-    c_ast.Return: ("return", "`return` leaves the nest early, so how often it runs depends on data; "
-                             "return after the nest."),
+    c_ast.Return: (
+        "return",
+        "`return` leaves the nest early, so how often it runs depends on data; return after the nest.",
+    ),
     c_ast.Case: ("switch", "a `case` stands inside the nest; write it with `if`."),
     c_ast.Default: ("switch", "a `default` stands inside the nest; write it with `if`."),
     c_ast.Pragma: ("directive", "a pragma inside the nest speaks of loops as they stand; take it out first."),
 }
-_EXPRESSIONS = (c_ast.Assignment, c_ast.UnaryOp, c_ast.BinaryOp, c_ast.FuncCall, c_ast.ExprList, c_ast.Cast,
-                c_ast.TernaryOp, c_ast.ID, c_ast.Constant, c_ast.ArrayRef, c_ast.StructRef)
+_EXPRESSIONS = (
+    c_ast.Assignment,
+    c_ast.UnaryOp,
+    c_ast.BinaryOp,
+    c_ast.FuncCall,
+    c_ast.ExprList,
+    c_ast.Cast,
+    c_ast.TernaryOp,
+    c_ast.ID,
+    c_ast.Constant,
+    c_ast.ArrayRef,
+    c_ast.StructRef,
+)
 
 
 @dataclass(frozen=True)
@@ -115,8 +130,9 @@ class Walk:
                 return self._declarations([node], context)
         if isinstance(node, _EXPRESSIONS):
             return self._expression(node, context)
-        raise refused(node, "unsupported", "retile does not read this statement; "
-                                           "write it with assignments, `if` and `for`.")
+        raise refused(
+            node, "unsupported", "retile does not read this statement; write it with assignments, `if` and `for`."
+        )
 
     def _sequence(self, items: Any, context: Context) -> tuple[Node, ...]:
         nodes: list[Node] = []
@@ -162,8 +178,12 @@ class Walk:
             self.block_declared[binding] = context.loops
         type_ = setting.type_of_binding(binding)
         if isinstance(type_, ArrayOf) and setting.size_of(type_) is None:
-            raise refused(decl, "vla", f"the array `{decl.name}`, whose length is no constant, is made anew in every "
-                                       "iteration; declare it before the nest.")
+            raise refused(
+                decl,
+                "vla",
+                f"the array `{decl.name}`, whose length is no constant, is made anew in every "
+                "iteration; declare it before the nest.",
+            )
         if decl.init is None or binding.kind == "static":
             return ()
         if isinstance(type_, PointerTo):
@@ -189,8 +209,11 @@ class Walk:
     def _span(self, node: Any) -> Span:
         span = self._source.span(node)
         if span is None:
-            raise refused(node, "macro", "the statement comes out of a macro in part, so it has no text of its own; "
-                                         "write the statement out.")
+            raise refused(
+                node,
+                "macro",
+                "the statement comes out of a macro in part, so it has no text of its own; write the statement out.",
+            )
         return span
 
     def _leaf(self, node: Any, span: Span, touches: tuple[Touch, ...], context: Context) -> Leaf:
@@ -226,8 +249,11 @@ class Walk:
             if any(touch.write for touch in touches):
                 raise refused(node.cond, "condition", "the condition of an `if` changes something; do that before it.")
             nodes.append(self._leaf(node, span, touches, context))
-        yes, no = (context.uncertain(), context.uncertain()) if condition is None else \
-            (context.where(condition), context.where(negate(condition)))
+        yes, no = (
+            (context.uncertain(), context.uncertain())
+            if condition is None
+            else (context.where(condition), context.where(negate(condition)))
+        )
         nodes += self._guard(condition, node.iftrue, yes, span)
         nodes += self._guard(None if condition is None else negate(condition), node.iffalse, no, span)
         self.branches.append((context, id(node.iftrue), id(node.iffalse), len(self.statements)))
@@ -246,8 +272,12 @@ class Walk:
         spans = spans_of(self._source, node)
         header = self._headers.header(node, id, context)
         if context.iterator(header.binding) is not None:
-            raise refused(node, "iterator-changed", f"the iterator `{header.binding.name}` of an outer loop is used again "
-                                                    "for an inner one; give the inner loop its own.")
+            raise refused(
+                node,
+                "iterator-changed",
+                f"the iterator `{header.binding.name}` of an outer loop is used again "
+                "for an inner one; give the inner loop its own.",
+            )
         origin = origin_of(header)
         self.loops.append(RawLoop(id, node, header, spans, context))
         inside = context.inside(id, header.binding, header.constraint(id, origin))
@@ -287,8 +317,10 @@ def iterator_names(nest: Any) -> tuple[str, ...]:
     ids = list(names)
     for form in ("{name}@{line}", "{name}@{line}:{column}"):
         count = Counter(ids)
-        ids = [id if count[id] == 1 else form.format(name=name, line=loop.coord.line, column=loop.coord.column)
-               for id, name, loop in zip(ids, names, loops, strict=True)]
+        ids = [
+            id if count[id] == 1 else form.format(name=name, line=loop.coord.line, column=loop.coord.column)
+            for id, name, loop in zip(ids, names, loops, strict=True)
+        ]
     return tuple(ids)
 
 
