@@ -17,6 +17,7 @@ from . import __version__
 
 if TYPE_CHECKING:
     from .commands.compiling import CompilerOptions
+    from .commands.opening import Facts
 
 _BUG, _INTERRUPTED, _CLOSED_PIPE = 70, 130, 141
 _TRACEBACK = "RETILE_TRACEBACK"  # set to anything to see where an error of retile itself comes from
@@ -101,8 +102,34 @@ _plan = click.argument("plan", metavar="PLAN")
 _remainder = click.option("--remainder", type=click.Choice(["clamp", "peel"]),
                           help="How the last, shorter chunk is written where the plan does not say (default: clamp): "
                                "with a bound on every chunk, or as loops of its own.")
+_reassociate = click.option("--reassociate", is_flag=True,
+                            help="Let sums and other updates 'x = x op e' be done in another order, which may round "
+                                 "differently.")
 _trust = click.option("--trust", is_flag=True,
                       help="Leave out the test of what the verdict assumes, and with it the original loops.")
+
+
+def _fact_options(command: _F) -> _F:
+    """What the user knows of sizes and arrays."""
+    for option in reversed((
+            click.option("--assume", "relations", multiple=True, metavar="RELATION",
+                         help="A relation between sizes that holds, as in \"lda >= n\" (repeatable)."),
+            click.option("--distinct", multiple=True, metavar="A,B",
+                         help="Arrays that do not overlap, or one array whose rows do not (repeatable)."))):
+        command = option(command)
+    return command
+
+
+def _facts(given: dict[str, Any]) -> Facts:
+    """Take the user's facts out of a command's parameters."""
+    from .commands.opening import Facts
+
+    return Facts(given.pop("relations"), given.pop("distinct"))
+
+
+def _defaults(given: dict[str, Any]) -> dict[str, str | None]:
+    """Take the options that hold for plans which do not name them out of a command's parameters."""
+    return {"remainder": given.pop("remainder", None), "reassociate": "yes" if given.pop("reassociate") else None}
 
 
 # ---------------------------------------------------------------- commands
@@ -136,6 +163,7 @@ def nests(files: tuple[str, ...], every: bool, as_json: bool, **given: Any) -> i
 @click.option("--space", metavar="FILE", help="Draw the iterations of the deepest statement into FILE.svg.")
 @click.option("--plan", metavar="PLAN", help="With --space: number the iterations in the order of a plan.")
 @click.option("--set", "sizes", multiple=True, metavar="NAME=VALUE", help="With --space: a size, such as n=7 (repeatable).")
+@_fact_options
 @_compiler_options
 @_json
 def depend(address: str, dot: bool, graph: str | None, space: str | None, plan: str | None, sizes: tuple[str, ...],
@@ -148,40 +176,45 @@ def depend(address: str, dot: bool, graph: str | None, space: str | None, plan: 
     if space is None and (plan is not None or sizes):
         raise click.UsageError("--plan and --set belong to --space FILE.svg.")
     wanted = pictures.Pictures(graph, space, plan, sizes)
-    return depend.run(address, _compiling(given), dot=dot, pictures=wanted, as_json=as_json)
+    return depend.run(address, _compiling(given), facts=_facts(given), dot=dot, pictures=wanted, as_json=as_json)
 
 
 @retile.command(short_help="Say whether a plan computes the same.")
 @_address
 @_plan
+@_reassociate
+@_fact_options
 @_compiler_options
 @_json
 def check(address: str, plan: str, as_json: bool, **given: Any) -> int:
     """Say whether the nest computes the same in the order of a plan, and if not, show two executions that clash."""
     from .commands import check
 
-    return check.run(address, plan, _compiling(given), as_json=as_json)
+    return check.run(address, plan, _compiling(given), facts=_facts(given), defaults=_defaults(given), as_json=as_json)
 
 
 @retile.command(short_help="Write the loops of a plan.")
 @_address
 @_plan
 @_remainder
+@_reassociate
 @_trust
+@_fact_options
 @click.option("-o", "file", metavar="FILE", help="Write to FILE.")
 @click.option("--diff", "as_diff", is_flag=True, help="Write a patch, for 'git apply' and 'patch -p1'.")
 @click.option("--in-place", is_flag=True, help="Replace the file.")
 @_compiler_options
 @_json
-def rewrite(address: str, plan: str, remainder: str | None, trust: bool, file: str | None, as_diff: bool,
-            in_place: bool, as_json: bool, **given: Any) -> int:
+def rewrite(address: str, plan: str, trust: bool, file: str | None, as_diff: bool, in_place: bool, as_json: bool,
+            **given: Any) -> int:
     """Write the whole file with the nest in the order of a plan; all other text stays as it is."""
     from .commands import rewrite
 
     if in_place and (file is not None or as_diff):
         raise click.UsageError("--in-place excludes -o and --diff.")
     target = rewrite.Target(file, in_place, as_diff, as_json)
-    return rewrite.run(address, plan, _compiling(given), remainder=remainder, trust=trust, target=target)
+    return rewrite.run(address, plan, _compiling(given), facts=_facts(given), defaults=_defaults(given), trust=trust,
+                       target=target)
 
 
 @retile.command(short_help="Build, verify and time the variants of plans.")
@@ -196,16 +229,17 @@ def rewrite(address: str, plan: str, remainder: str | None, trust: bool, file: s
 @click.option("--flags", metavar="TEXT", help="Flags of the timed builds (default: '-O3 -march=native').")
 @click.option("-o", "result", metavar="FILE", help="Where to keep all samples (default: a new file here).")
 @_remainder
+@_reassociate
 @_trust
+@_fact_options
 @_compiler_options
 @_json
 def measure(address: str, plans: tuple[str, ...], as_json: bool, sizes: tuple[str, ...], fills: tuple[str, ...],
-            seconds: float, seed: int, flags: str | None, result: str | None, remainder: str | None, trust: bool,
-            **given: Any) -> int:
+            seconds: float, seed: int, flags: str | None, result: str | None, trust: bool, **given: Any) -> int:
     """Build the original and the variants of plans, verify that they compute the same, and time them on this host."""
     from .commands import measure
 
-    measuring = measure.Measuring(sizes, fills, seconds, seed, flags, remainder, trust, result)
+    measuring = measure.Measuring(sizes, fills, seconds, seed, flags, _defaults(given), _facts(given), trust, result)
     return measure.run(address, plans, _compiling(given), measuring, as_json=as_json)
 
 

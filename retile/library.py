@@ -37,11 +37,21 @@ class OpenFile:
 
         return read_nests(self.source)
 
-    def nest(self, line: int, column: int | None = None) -> OpenNest:
-        """The nest whose outermost ``for`` starts on a line; RetileError, naming the nearest ones, if none does."""
+    def nest(self, line: int, column: int | None = None, *, assume: Sequence[str] = (),
+             distinct: Sequence[str] = ()) -> OpenNest:
+        """The nest whose outermost ``for`` starts on a line; RetileError, naming the nearest ones, if none does.
+
+        ``assume``: relations between sizes that hold, ``"lda >= n"``; ``distinct``: storages that do not overlap,
+        ``"a,b"``, or whose rows do not, ``"rows"``.  RetileError if one is not understood or contradicts the code.
+        """
         from .nest import read_nest
 
-        return OpenNest(self.source, read_nest(self.source, line, column))
+        found = read_nest(self.source, line, column)
+        if found.nest is not None and (assume or distinct):
+            from .nest.given import with_given
+
+            found = replace(found, nest=with_given(found.nest, assume, distinct))
+        return OpenNest(self.source, found)
 
 
 @dataclass(frozen=True)
@@ -79,17 +89,19 @@ class OpenNest:
         """A refusal with file, line, source line and caret."""
         return self.source.complaint(refusal.line, refusal.column, f"{refusal.reason} [{refusal.code}]", "")
 
-    def plan(self, text: str, *, remainder: str | None = None) -> Plan:
-        """The plan that a text describes, ``terms ; options``; ``remainder`` holds if the text does not name one.
+    def plan(self, text: str, **defaults: str | None) -> Plan:
+        """The plan that a text describes, ``terms ; options``; ``defaults`` (``remainder="peel"``) hold for the options
+        that the text does not name.
 
         Raises RetileError, with the place in the text marked, if it is no plan for this nest.
         """
         from .plan import parse_plan
 
         plan = parse_plan(text, self.nest)
-        if remainder is None or "remainder" in dict(plan.options):
+        options = plan.options + tuple((word, value) for word, value in defaults.items()
+                                       if value is not None and word not in dict(plan.options))
+        if options == plan.options:
             return plan
-        options = (*plan.options, ("remainder", remainder))
         written = ", ".join(f"{word} {value}" for word, value in options)
         return replace(plan, text=f"{plan.order_text}; {written}", options=options)
 

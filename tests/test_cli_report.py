@@ -103,7 +103,7 @@ def test_the_document_of_a_verdict_has_the_fields_of_the_contract():
             "kind": "flow", "array": "z", "parameters": {"n": 4, "m": 4}, "cell": [1, 2],
             "source": {"statement": "34", "line": 34, "iterators": {"i": 1, "j": 2}},
             "target": {"statement": "34", "line": 34, "iterators": {"i": 2, "j": 1}}}],
-        "unproven": [], "instead": None, "places": [], "repeated": [], "refusals": [],
+        "unproven": [], "instead": None, "places": [], "repeated": [], "kept": [], "refusals": [],
         "assumptions": [{"code": "no-overlap", "text": "a and c do not overlap", "testable": True}]}
 
 

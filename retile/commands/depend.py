@@ -7,15 +7,15 @@ import sys
 from ..report import document
 from ..report.dependences import dependences_lines
 from .compiling import CompilerOptions
-from .opening import open_nest, say_refusals
+from .opening import Facts, open_nest, say_refusals
 from .output import look_of, print_document, print_lines
 from .pictures import Pictures, draw
 
 
-def run(address: str, compiling: CompilerOptions, *, dot: bool, pictures: Pictures, as_json: bool) -> int:
+def run(address: str, compiling: CompilerOptions, *, facts: Facts, dot: bool, pictures: Pictures, as_json: bool) -> int:
     """Show the dependences of a nest, as pictures where they are wanted; 1 if it is refused."""
     pictures.check_names()
-    nest = open_nest(address, compiling)
+    nest = open_nest(address, compiling, facts)
     if nest.refusals:
         say_refusals(nest)
         if as_json:

@@ -15,7 +15,7 @@ from ..report.document import of_measure_refused
 from ..report.trials import campaign_lines
 from ..report.verdict import verdict_lines
 from .compiling import CompilerOptions
-from .opening import open_nest
+from .opening import Facts, open_nest
 from .output import look_of, print_document, print_lines, say
 from .sizes import named_sizes, named_value
 
@@ -36,7 +36,8 @@ class Measuring:
     seconds: float
     seed: int
     flags: str | None  # of the timed builds, as one word of a shell line
-    remainder: str | None
+    defaults: dict[str, str | None]  # options of plans that do not name them
+    facts: Facts
     trust: bool
     result: str | None  # file for the records; None for one named after the time
 
@@ -47,8 +48,8 @@ def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measur
         raise RetileError("measure needs at least one PLAN, for example 'i j' for the original order of two loops.")
     sizes = named_sizes(measuring.sizes)
     settings = _settings(measuring, compiling)
-    nest = open_nest(address, compiling)
-    parsed = [plan if nest.refusals else nest.plan(plan, remainder=measuring.remainder) for plan in plans]
+    nest = open_nest(address, compiling, measuring.facts)
+    parsed = [plan if nest.refusals else nest.plan(plan, **measuring.defaults) for plan in plans]
     refused = [judgement for judgement in map(nest.check, parsed) if judgement.verdict is not Verdict.LEGAL]
     if refused:
         return _refuse(nest, refused, parsed, sizes, as_json)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 from ..library import OpenNest
@@ -10,7 +11,7 @@ from ..model import Judgement, Verdict
 from ..report.document import of_rewriting
 from ..report.verdict import verdict_lines
 from .compiling import CompilerOptions
-from .opening import open_nest
+from .opening import Facts, open_nest
 from .output import look_of, print_document, say, write_bytes
 
 
@@ -24,11 +25,11 @@ class Target:
     as_json: bool = False
 
 
-def run(address: str, plan: str, compiling: CompilerOptions, *, remainder: str | None, trust: bool,
-        target: Target) -> int:
+def run(address: str, plan: str, compiling: CompilerOptions, *, facts: Facts, defaults: Mapping[str, str | None],
+        trust: bool, target: Target) -> int:
     """Write the variant of a plan; 1, and nothing written, unless the verdict is legal."""
-    nest = open_nest(address, compiling)
-    parsed = plan if nest.refusals else nest.plan(plan, remainder=remainder)
+    nest = open_nest(address, compiling, facts)
+    parsed = plan if nest.refusals else nest.plan(plan, **defaults)
     judgement = nest.check(parsed)
     if judgement.verdict is not Verdict.LEGAL:
         return _refuse(nest, judgement, target)
