@@ -97,11 +97,17 @@ def describe() -> Host:
     """Find out about this machine; takes some tens of milliseconds, mostly for asking the compilers."""
     cpuinfo = _read(_CPUINFO) or ""
     return Host(
-        cpu=_cpu(cpuinfo), logical_cpus=_logical_cpus(), physical_cores=_physical_cores(cpuinfo), caches=_caches(),
-        page_bytes=_page_bytes(), compilers=tuple(compilers()), timer_seconds=timer_step(),
+        cpu=_cpu(cpuinfo),
+        logical_cpus=_logical_cpus(),
+        physical_cores=_physical_cores(cpuinfo),
+        caches=_caches(),
+        page_bytes=_page_bytes(),
+        compilers=tuple(compilers()),
+        timer_seconds=timer_step(),
         virtualised=_virtualised(cpuinfo),
         python=Fact(f"{platform.python_implementation()} {platform.python_version()}", "the running interpreter"),
-        system=Fact(f"{platform.system()} {platform.release()} {platform.machine()}", "uname"))
+        system=Fact(f"{platform.system()} {platform.release()} {platform.machine()}", "uname"),
+    )
 
 
 def compilers(commands: Iterable[str] = _COMPILERS) -> list[Compiler]:
@@ -128,8 +134,15 @@ def timer_step(readings: int = 2000) -> Fact:
 def ask(command: list[str]) -> str | None:
     """Standard output of a short program; None if it cannot be run, fails or hangs."""
     try:
-        done = subprocess.run(command, capture_output=True, text=True, errors="replace", timeout=_SECONDS,
-                              stdin=subprocess.DEVNULL, env={**os.environ, "LC_ALL": "C"})
+        done = subprocess.run(
+            command,
+            capture_output=True,
+            text=True,
+            errors="replace",
+            timeout=_SECONDS,
+            stdin=subprocess.DEVNULL,
+            env={**os.environ, "LC_ALL": "C"},
+        )
     except (OSError, subprocess.SubprocessError):
         return None
     return done.stdout if done.returncode == 0 else None
@@ -161,8 +174,12 @@ def _logical_cpus() -> Fact:
 
 
 def _physical_cores(cpuinfo: str) -> Fact:
-    pairs = set(zip(re.findall(r"^physical id\s*:\s*(\d+)", cpuinfo, re.MULTILINE),
-                    re.findall(r"^core id\s*:\s*(\d+)", cpuinfo, re.MULTILINE)))
+    pairs = set(
+        zip(
+            re.findall(r"^physical id\s*:\s*(\d+)", cpuinfo, re.MULTILINE),
+            re.findall(r"^core id\s*:\s*(\d+)", cpuinfo, re.MULTILINE),
+        )
+    )
     return Fact(len(pairs), str(_CPUINFO)) if pairs else Fact.unknown()
 
 
@@ -182,6 +199,7 @@ def _page_bytes() -> Fact:
 
 # ---------------------------------------------------------------- caches
 
+
 def _caches() -> tuple[Cache, ...]:
     found = caches_of_sysfs(_CACHES)
     if not found:
@@ -199,10 +217,17 @@ def caches_of_sysfs(folder: Path) -> list[Cache]:
         if not level or not level.isdigit() or not kind:
             continue
         shared = _read(index / "shared_cpu_list")
-        found.append(Cache(int(level), kind.lower(), bytes_of(_read(index / "size")),
-                           _positive(_read(index / "coherency_line_size")),
-                           _positive(_read(index / "ways_of_associativity")),
-                           cpus_of(shared) if shared else None, str(index)))
+        found.append(
+            Cache(
+                int(level),
+                kind.lower(),
+                bytes_of(_read(index / "size")),
+                _positive(_read(index / "coherency_line_size")),
+                _positive(_read(index / "ways_of_associativity")),
+                cpus_of(shared) if shared else None,
+                str(index),
+            )
+        )
     return found
 
 
@@ -210,24 +235,44 @@ def caches_of_getconf(said: str) -> list[Cache]:
     """The caches in the output of ``getconf -a`` (names as in the GNU C library)."""
     values = {name: int(value) for name, value in re.findall(r"^(\w+)\s+(\d+)\s*$", said, re.MULTILINE)}
     found = []
-    for level, name, kind in ((1, "LEVEL1_DCACHE", "data"), (1, "LEVEL1_ICACHE", "instruction"),
-                              (2, "LEVEL2_CACHE", "unified"), (3, "LEVEL3_CACHE", "unified"),
-                              (4, "LEVEL4_CACHE", "unified")):
+    for level, name, kind in (
+        (1, "LEVEL1_DCACHE", "data"),
+        (1, "LEVEL1_ICACHE", "instruction"),
+        (2, "LEVEL2_CACHE", "unified"),
+        (3, "LEVEL3_CACHE", "unified"),
+        (4, "LEVEL4_CACHE", "unified"),
+    ):
         if values.get(f"{name}_SIZE"):
-            found.append(Cache(level, kind, values[f"{name}_SIZE"], values.get(f"{name}_LINESIZE") or None,
-                               values.get(f"{name}_ASSOC") or None, None, f"getconf {name}_SIZE"))
+            found.append(
+                Cache(
+                    level,
+                    kind,
+                    values[f"{name}_SIZE"],
+                    values.get(f"{name}_LINESIZE") or None,
+                    values.get(f"{name}_ASSOC") or None,
+                    None,
+                    f"getconf {name}_SIZE",
+                )
+            )
     return found
 
 
 def caches_of_sysctl(said: str) -> list[Cache]:
     """The caches in the output of ``sysctl hw`` (names as on BSD systems)."""
-    values: Mapping[str, int] = {name: int(value) for name, value in
-                                 re.findall(r"^(hw\.\w+)\s*[:=]\s*(\d+)\s*$", said, re.MULTILINE)}
+    values: Mapping[str, int] = {
+        name: int(value) for name, value in re.findall(r"^(hw\.\w+)\s*[:=]\s*(\d+)\s*$", said, re.MULTILINE)
+    }
     line = values.get("hw.cachelinesize") or None
-    return [Cache(level, kind, values[name], line, None, None, f"sysctl {name}")
-            for level, name, kind in ((1, "hw.l1dcachesize", "data"), (1, "hw.l1icachesize", "instruction"),
-                                      (2, "hw.l2cachesize", "unified"), (3, "hw.l3cachesize", "unified"))
-            if values.get(name)]
+    return [
+        Cache(level, kind, values[name], line, None, None, f"sysctl {name}")
+        for level, name, kind in (
+            (1, "hw.l1dcachesize", "data"),
+            (1, "hw.l1icachesize", "instruction"),
+            (2, "hw.l2cachesize", "unified"),
+            (3, "hw.l3cachesize", "unified"),
+        )
+        if values.get(name)
+    ]
 
 
 def bytes_of(text: str | None) -> int | None:

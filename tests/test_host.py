@@ -26,26 +26,45 @@ def _cache_folder(folder: Path, *rows: dict[str, str]) -> Path:
 
 def test_lines_of_64_bytes_hold_eight_doubles(tmp_path):
     """IEEE 754-2019: binary64 has 64 bits, so 8 of them fill 64 bytes."""
-    folder = _cache_folder(tmp_path, {"level": "1", "type": "Data", "size": "32K", "coherency_line_size": "64",
-                                      "ways_of_associativity": "8", "shared_cpu_list": "0,4-6"})
+    folder = _cache_folder(
+        tmp_path,
+        {
+            "level": "1",
+            "type": "Data",
+            "size": "32K",
+            "coherency_line_size": "64",
+            "ways_of_associativity": "8",
+            "shared_cpu_list": "0,4-6",
+        },
+    )
     (cache,) = host.caches_of_sysfs(folder)
-    assert (cache.level, cache.kind, cache.bytes, cache.line_bytes, cache.ways, cache.shared_by) == \
-        (1, "data", 32768, 64, 8, 4)
+    assert (cache.level, cache.kind, cache.bytes, cache.line_bytes, cache.ways, cache.shared_by) == (
+        1,
+        "data",
+        32768,
+        64,
+        8,
+        4,
+    )
     unknown = host.Fact.unknown()
     made = host.Host(unknown, unknown, unknown, (cache,), unknown, (), unknown, unknown, unknown, unknown)
     assert made.line_elements(8) == 8
 
 
 def test_a_cache_that_the_kernel_describes_in_part_keeps_its_gaps(tmp_path):
-    folder = _cache_folder(tmp_path, {"level": "2", "type": "Unified"}, {"type": "Data"}, {"level": "x", "type": "Data"})
+    folder = _cache_folder(
+        tmp_path, {"level": "2", "type": "Unified"}, {"type": "Data"}, {"level": "x", "type": "Data"}
+    )
     (cache,) = host.caches_of_sysfs(folder)
     assert (cache.bytes, cache.line_bytes, cache.ways, cache.shared_by) == (None, None, None, None)
     assert host.caches_of_sysfs(tmp_path / "missing") == []
 
 
 def test_getconf_zeros_mean_unknown():
-    said = ("LEVEL1_DCACHE_SIZE                 49152\nLEVEL1_DCACHE_LINESIZE  64\nLEVEL1_DCACHE_ASSOC 0\n"
-            "LEVEL2_CACHE_SIZE 0\nLEVEL3_CACHE_SIZE\n")
+    said = (
+        "LEVEL1_DCACHE_SIZE                 49152\nLEVEL1_DCACHE_LINESIZE  64\nLEVEL1_DCACHE_ASSOC 0\n"
+        "LEVEL2_CACHE_SIZE 0\nLEVEL3_CACHE_SIZE\n"
+    )
     (cache,) = host.caches_of_getconf(said)
     assert (cache.level, cache.bytes, cache.line_bytes, cache.ways) == (1, 49152, 64, None)
 
@@ -55,8 +74,10 @@ def test_sysctl_names():
     assert [(c.level, c.bytes, c.line_bytes) for c in caches] == [(1, 65536, 128), (2, 4194304, 128)]
 
 
-@pytest.mark.parametrize("text, value", [("32K", 32768), ("1M", 1 << 20), ("96", 96), ("", None), (None, None),
-                                         ("0K", None), ("many", None)])
+@pytest.mark.parametrize(
+    "text, value",
+    [("32K", 32768), ("1M", 1 << 20), ("96", 96), ("", None), (None, None), ("0K", None), ("many", None)],
+)
 def test_sizes(text, value):
     assert host.bytes_of(text) == value
 

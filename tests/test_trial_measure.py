@@ -24,7 +24,9 @@ void sums(int n, int m, double *total, const double *depth) {
             total[j] += depth[i * m + j];
 }
 """
-BY_ROWS = "for (int i = 0; i < n; i++)\n        for (int j = 0; j < m; j++)\n            total[j] += depth[i * m + j];"
+BY_ROWS = (
+    "for (int i = 0; i < n; i++)\n        for (int j = 0; j < m; j++)\n            total[j] += depth[i * m + j];"
+)
 SIZES = {"n": 900, "m": 700}
 
 
@@ -62,8 +64,13 @@ def test_the_document_has_the_agreed_fields(sums):
 def test_what_walks_along_rows_is_timed_as_faster(sums):
     """Rows of 32 KiB: each step down a column opens another page and another cache line, along the row every eighth one
     (Hennessy & Patterson, "Computer Architecture: A Quantitative Approach", loop interchange)."""
-    campaign = measure(sums.source, sums.nest, [sums.variant(BY_ROWS, "i j")], {"n": 3000, "m": 4096},
-                       replace(QUICK, rounds=(6, 6)))
+    campaign = measure(
+        sums.source,
+        sums.nest,
+        [sums.variant(BY_ROWS, "i j")],
+        {"n": 3000, "m": 4096},
+        replace(QUICK, rounds=(6, 6)),
+    )
     assert campaign.trials[0].speedup.median > 1.2
 
 
@@ -79,8 +86,9 @@ def test_a_wrong_variant_is_not_timed(sums):
 def test_timed_builds_that_differ_say_by_how_much_and_why(sums):
     text = BY_ROWS.replace("depth[i * m + j]", "depth[i * m + j] * SCALE")
     text = f"\n#ifdef __FAST_MATH__\n#define SCALE (1 + 0x1p-40)\n#else\n#define SCALE 1\n#endif\n{text}"
-    campaign = measure(sums.source, sums.nest, [sums.variant(text, "i j")], SIZES,
-                       replace(QUICK, flags=("-O2", "-ffast-math")))
+    campaign = measure(
+        sums.source, sums.nest, [sums.variant(text, "i j")], SIZES, replace(QUICK, flags=("-O2", "-ffast-math"))
+    )
     (trial,) = campaign.trials
     assert trial.verified and trial.identical is False
     assert 0 < trial.largest_difference < 1e-6 and 0 < trial.largest_relative < 1e-6
@@ -88,14 +96,18 @@ def test_timed_builds_that_differ_say_by_how_much_and_why(sums):
 
 
 def test_inputs_are_restored_between_rounds(tmp_path):
-    """Squared again and again, any number under one ends as zero and any other as infinite; the outputs stay the same."""
-    one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  z[i] = 4 * z[i] * z[i] * z[i];\n}\n")
+    """Cubed again and again, numbers end as zero or infinite; restored, they give the same outputs each time."""
+    one = case(
+        tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  z[i] = 4 * z[i] * z[i] * z[i];\n}\n"
+    )
     campaign = measure(one.source, one.nest, [one.variant(one.text)], {"n": 1000}, replace(QUICK, rounds=(50, 50)))
     assert campaign.trials[0].identical and len(campaign.baseline_samples) == 50
 
 
 def test_a_missing_size_is_named_with_the_command_to_type(sums):
-    with pytest.raises(RetileError, match=r"no value for m.*retile measure survey.c:2 'i j' --set n=900 --set m=1000"):
+    with pytest.raises(
+        RetileError, match=r"no value for m.*retile measure survey.c:2 'i j' --set n=900 --set m=1000"
+    ):
         measure(sums.source, sums.nest, [], {"n": 900}, QUICK, command="retile measure survey.c:2 'i j'")
 
 
@@ -122,6 +134,7 @@ def test_short_calls_come_with_a_warning(sums):
 
 # ---------------------------------------------------------------- leaving early
 
+
 @pytest.fixture
 def scratch(tmp_path, monkeypatch):
     """A place for temporary files of this test alone."""
@@ -137,7 +150,14 @@ def _trials_in(folder):
 
 def test_the_scratch_folder_goes(sums, scratch):
     seen = []
-    measure(sums.source, sums.nest, [sums.variant(BY_ROWS, "i j")], SIZES, QUICK, lambda event: seen.append(_trials_in(scratch)))
+    measure(
+        sums.source,
+        sums.nest,
+        [sums.variant(BY_ROWS, "i j")],
+        SIZES,
+        QUICK,
+        lambda event: seen.append(_trials_in(scratch)),
+    )
     assert seen and all(len(names) == 1 for names in seen)
     with pytest.raises(RetileError):
         measure(sums.source, sums.nest, [], {}, QUICK)
@@ -152,8 +172,14 @@ def test_interrupted_campaigns_keep_what_they_have(sums, scratch, signal_number)
         if event.stage == "time":
             threading.Timer(1.0, os.kill, (os.getpid(), signal_number)).start()
 
-    campaign = measure(sums.source, sums.nest, [sums.variant(BY_ROWS, "i j")], SIZES,
-                       replace(QUICK, seconds=60, rounds=(6, 1_000_000)), on_progress)
+    campaign = measure(
+        sums.source,
+        sums.nest,
+        [sums.variant(BY_ROWS, "i j")],
+        SIZES,
+        replace(QUICK, seconds=60, rounds=(6, 1_000_000)),
+        on_progress,
+    )
     assert campaign.interrupted and time.monotonic() - began < 30
     assert campaign.trials[0].verified and campaign.trials[0].samples
     assert campaign.as_json()["interrupted"] is True
@@ -170,6 +196,7 @@ def test_interrupted_before_timing(sums):
 
 
 # ---------------------------------------------------------------- files
+
 
 @pytest.fixture
 def result(sums, tmp_path):

@@ -10,8 +10,10 @@ from scipy.stats import binom
 from retile.trial.statistics import estimate, median, ranks, speedup
 
 
-@pytest.mark.parametrize("count, expected", [(5, None), (6, (1, 6)), (8, (1, 8)), (10, (2, 9)), (20, (6, 15)),
-                                             (31, (10, 22)), (50, (18, 33))])
+@pytest.mark.parametrize(
+    "count, expected",
+    [(5, None), (6, (1, 6)), (8, (1, 8)), (10, (2, 9)), (20, (6, 15)), (31, (10, 22)), (50, (18, 33))],
+)
 def test_ranks_of_the_published_table(count, expected):
     """Le Boudec, 2010, table A.1 (quoted from memory; the coverage is checked below without it)."""
     assert ranks(count) == expected

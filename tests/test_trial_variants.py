@@ -38,7 +38,9 @@ def test_an_illegal_order_gives_other_results():
     assert nest.check("j i").verdict is Verdict.ILLEGAL
     legal = nest.rewrite("i j")
     text = legal.nest_text
-    swapped = text.replace("int i = 1; i < n - 1; i++", "?").replace("int j = 1; j < m - 1; j++", "int i = 1; i < n - 1; i++")
+    swapped = text.replace("int i = 1; i < n - 1; i++", "?").replace(
+        "int j = 1; j < m - 1; j++", "int i = 1; i < n - 1; i++"
+    )
     swapped = swapped.replace("?", "int j = 1; j < m - 1; j++")
     assert swapped != text
     (found,) = verify_all(nest.source, nest.nest, [replace(legal, nest_text=swapped)], Settings(sanitize=False))
@@ -47,12 +49,15 @@ def test_an_illegal_order_gives_other_results():
 
 @pytest.mark.benchmark
 def test_a_product_of_matrices_is_six_times_faster(tmp_path, capsys):
-    """A textbook product in the order i j k, n = 1000; Golub & Van Loan, "Matrix Computations", section 1.1, discuss the
-    six orders and their strides."""
+    """A textbook product in the order i j k, n = 1000.
+
+    Golub & Van Loan, "Matrix Computations", section 1.1, discuss the six orders and their strides."""
     path = tmp_path / "product.c"
-    path.write_text("void product(int n, double c[n][n], double a[n][n], double b[n][n])\n{\n"
-                    "    for (int i = 0; i < n; i++)\n        for (int j = 0; j < n; j++)\n"
-                    "            for (int k = 0; k < n; k++)\n                c[i][j] += a[i][k] * b[k][j];\n}\n")
+    path.write_text(
+        "void product(int n, double c[n][n], double a[n][n], double b[n][n])\n{\n"
+        "    for (int i = 0; i < n; i++)\n        for (int j = 0; j < n; j++)\n"
+        "            for (int k = 0; k < n; k++)\n                c[i][j] += a[i][k] * b[k][j];\n}\n"
+    )
     nest = OpenFile(open_source(str(path))).nest(3)
     variants = [nest.rewrite(plan) for plan in ("i k j", "k:64 j:256 i k j")]
     campaign = measure(nest.source, nest.nest, variants, {"n": 1000}, Settings(seconds=10))

@@ -77,8 +77,13 @@ needs_sanitizers = pytest.mark.skipif(not can_sanitize(("cc",)), reason="this co
 
 @needs_sanitizers
 def test_reads_outside_an_array_are_found(tmp_path):
-    one = case(tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] = w[i];\n}\n")
-    text = "double s = 0; for (int i = 0; i <= n; i++) { double v = w[i]; s += v; if (i < n) z[i] = v; } if (s == 42) z[0] = s;"
+    one = case(
+        tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] = w[i];\n}\n"
+    )
+    text = (
+        "double s = 0; for (int i = 0; i <= n; i++) { double v = w[i]; s += v; if (i < n) z[i] = v; "
+        "} if (s == 42) z[0] = s;"
+    )
     found = one.verify(one.variant(text), STRICT)
     assert not found.verified and "AddressSanitizer" in found.failure and "n = " in found.failure
 
@@ -99,7 +104,13 @@ def test_writes_beside_an_array_are_found_without_sanitizers(tmp_path):
 
 def test_a_crash_a_hang_and_bad_c_fail_alone(tmp_path):
     one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  z[i] *= 2;\n}\n")
-    texts = ["*(volatile int *)0 = 1;", "for (volatile int on = 1; on; ) ;", "for (;", "undeclared_function(z);", one.text]
+    texts = [
+        "*(volatile int *)0 = 1;",
+        "for (volatile int on = 1; on; ) ;",
+        "for (;",
+        "undeclared_function(z);",
+        one.text,
+    ]
     found = verify_all(one.source, one.nest, [one.variant(text) for text in texts], replace(FAST, limit=2))
     assert [result.verified for result in found] == [False, False, False, False, True]
     assert "SIGSEGV" in found[0].failure
@@ -118,13 +129,18 @@ def test_an_original_that_stops_is_no_witness(tmp_path):
 
 
 def test_an_output_that_never_changes_proves_little_and_is_said(tmp_path):
-    one = case(tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  if (z[i] > 1e30)\n   z[i] = 0;\n}\n")
+    one = case(
+        tmp_path, "void f(int n, double *z) {\n for (int i = 0; i < n; i++)\n  if (z[i] > 1e30)\n   z[i] = 0;\n}\n"
+    )
     found = one.verify(one.variant(one.text))
     assert any("no output changes" in note for note in found.notes)
 
 
 def test_fill_as_asked(tmp_path):
-    one = case(tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] += w[i] * w[i];\n}\n")
+    one = case(
+        tmp_path,
+        "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] += w[i] * w[i];\n}\n",
+    )
     wrong = one.replaced("w[i] * w[i]", "w[i]")
     assert one.verify(wrong, replace(FAST, fills=(("w", "zero"),))).verified
     one.tells_apart(wrong)
@@ -135,8 +151,11 @@ def test_fill_as_asked(tmp_path):
 
 
 def test_a_factorization_is_given_a_matrix_that_it_can_factor(tmp_path):
-    """Golub & Van Loan, "Matrix Computations", 4th ed., section 4.1: LU without pivoting of a diagonally dominant matrix
-    has bounded growth; a random one may meet a pivot near zero, and sqrt of a negative number is no number."""
+    """Golub & Van Loan, "Matrix Computations", 4th ed., section 4.1 (from memory).
+
+    Elimination without pivoting of a diagonally dominant matrix has bounded growth; a random one may meet a pivot near
+    zero, and the square root of a negative number is no number.
+    """
     one = of_file("samples_c/tidal_factor.c", skip=4)
     found = one.accepts(one.variant(one.text))
     assert found.fill == "diagonal-dominant"
@@ -146,19 +165,27 @@ def test_tables_of_indices_hold_indices_in_range(tmp_path):
     one = of_file("samples_c/swath_mosaic.c", skip=2)
     one.accepts(one.variant(one.text), STRICT)
     one.tells_apart(one.replaced("mosaic[cell[r * cols + c]]", "mosaic[cell[r * cols + c] / 2]"))
-    wide = case(tmp_path, "double table[6];\nvoid f(int n, double *z, const unsigned char *at) {\n"
-                          " for (int i = 0; i < n; i++)\n  z[i] = table[at[i] + 1];\n}\n")
+    wide = case(
+        tmp_path,
+        "double table[6];\nvoid f(int n, double *z, const unsigned char *at) {\n"
+        " for (int i = 0; i < n; i++)\n  z[i] = table[at[i] + 1];\n}\n",
+    )
     wide.accepts(wide.variant(wide.text), STRICT)
 
 
 def test_arrays_must_be_left_as_they_are_where_only_one_side_writes(tmp_path):
-    one = case(tmp_path, "void f(int n, double *z, int *seen) {\n for (int i = 0; i < n; i++)\n  z[i] += seen[i];\n}\n")
+    one = case(
+        tmp_path, "void f(int n, double *z, int *seen) {\n for (int i = 0; i < n; i++)\n  z[i] += seen[i];\n}\n"
+    )
     found = one.tells_apart(one.replaced("seen[i]", "seen[i]++"))
     assert found.difference.array == "seen"
 
 
 def test_iterators_that_nobody_reads_afterwards_may_end_anywhere(tmp_path):
-    text = "void f(int n, double *z) {\n int i, j;\n for (i = 0; i < n; i++)\n  for (j = 0; j < n; j++)\n   z[i * n + j] *= 2;\n}\n"
+    text = (
+        "void f(int n, double *z) {\n int i, j;\n for (i = 0; i < n; i++)\n  for (j = 0; j < n; j++)\n"
+        "   z[i * n + j] *= 2;\n}\n"
+    )
     one = case(tmp_path, text)
     one.accepts(one.variant("for (j = 0; j < n; j++) for (i = 0; i < n; i++) z[i * n + j] *= 2; i = 77;"))
 
@@ -168,7 +195,10 @@ def _assuming(variant, *assumptions):
 
 
 def test_variants_must_notice_pointers_that_overlap(tmp_path):
-    one = case(tmp_path, "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] = w[i] + 1;\n}\n")
+    one = case(
+        tmp_path,
+        "void f(int n, double *z, const double *w) {\n for (int i = 0; i < n; i++)\n  z[i] = w[i] + 1;\n}\n",
+    )
     down = "for (int i = n - 1; i >= 0; i--) z[i] = w[i] + 1;"
     apart = Assumption(AssumptionCode.NO_OVERLAP, "z and w do not overlap", None, ("w", "z"))
     careless = _assuming(one.variant(down), apart)
@@ -181,8 +211,12 @@ def test_variants_must_notice_pointers_that_overlap(tmp_path):
 
 
 def test_strict_flags_take_away_what_relaxes_arithmetic():
-    assert strict_flags(["-O3", "-march=native", "-ffast-math", "-fno-math-errno"], False) == \
-        ["-march=native", "-fno-math-errno", "-O1", "-ffp-contract=off"]
+    assert strict_flags(["-O3", "-march=native", "-ffast-math", "-fno-math-errno"], False) == [
+        "-march=native",
+        "-fno-math-errno",
+        "-O1",
+        "-ffp-contract=off",
+    ]
 
 
 def test_a_missing_compiler_is_said(mirror):
@@ -192,8 +226,11 @@ def test_a_missing_compiler_is_said(mirror):
 
 def test_fixed_sizes_that_take_long_are_verified_once(tmp_path, monkeypatch):
     monkeypatch.setattr("retile.trial.sizes._WORK_OF_ONE", 1000)
-    one = case(tmp_path, "float z[30][90];\nvoid f(void) {\n for (int j = 0; j < 90; j++)\n  for (int i = 0; i < 30; i++)\n"
-                         "   z[i][j] *= 2;\n}\n")
+    one = case(
+        tmp_path,
+        "float z[30][90];\nvoid f(void) {\n for (int j = 0; j < 90; j++)\n  for (int i = 0; i < 30; i++)\n"
+        "   z[i][j] *= 2;\n}\n",
+    )
     assert len(one.accepts(one.variant(one.text)).cases) == 1
 
 
@@ -220,6 +257,10 @@ def test_a_compiler_with_arguments_in_a_directory_of_its_own(tmp_path):
     (tmp_path / "deep").mkdir()
     (tmp_path / "deep" / "scale.h").write_text("#define SCALE 3\n")
     call = CompilerCall("cc -DTWO=2", ("-Ideep", "-O3", "-ffast-math"), str(tmp_path))
-    one = case(tmp_path, "#include <scale.h>\nvoid f(int n, double *z) {\n for (int i = 0; i < n; i++)\n"
-                         "  z[i] = z[i] * SCALE + TWO;\n}\n", call)
+    one = case(
+        tmp_path,
+        "#include <scale.h>\nvoid f(int n, double *z) {\n for (int i = 0; i < n; i++)\n"
+        "  z[i] = z[i] * SCALE + TWO;\n}\n",
+        call,
+    )
     one.tells_apart(one.replaced("SCALE", "TWO"))

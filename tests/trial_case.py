@@ -59,7 +59,9 @@ def _term(word: str) -> Term:
     return Term(((loop, 1),), int(chunk) if chunk else None, 0, 0)
 
 
-def case(folder: Path, text: str, call: CompilerCall = CompilerCall(), name: str = "survey.c", skip: int = 0) -> Case:
+def case(
+    folder: Path, text: str, call: CompilerCall = CompilerCall(), name: str = "survey.c", skip: int = 0
+) -> Case:
     """The first nest of a C text (or a later one: ``skip`` lines with ``for`` are passed over)."""
     path = folder / name
     path.write_text(text)

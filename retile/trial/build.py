@@ -25,8 +25,10 @@ if TYPE_CHECKING:
 _SANITIZERS = ("-fsanitize=address,undefined", "-fno-sanitize-recover=all")
 # Size zero belongs to the domain, also where a variable-length array may formally not have it.
 _SANITIZE = (*_SANITIZERS, "-fno-sanitize=vla-bound", "-fno-omit-frame-pointer", "-g1")
-_RELAXES = re.compile(r"-O\w*|-ffast-math|-funsafe-math-optimizations|-fassociative-math|-freciprocal-math|"
-                      r"-ffp-contract=\w+|-ffinite-math-only|-fno-signed-zeros|-flto\S*|-fsanitize\S*")
+_RELAXES = re.compile(
+    r"-O\w*|-ffast-math|-funsafe-math-optimizations|-fassociative-math|-freciprocal-math|"
+    r"-ffp-contract=\w+|-ffinite-math-only|-fno-signed-zeros|-flto\S*|-fsanitize\S*"
+)
 _SECONDS = 120  # for one call of the compiler
 
 
@@ -51,10 +53,25 @@ class Workshop:
         source, target = self.folder / f"{name}.c", self.folder / f"{name}.so"
         source.write_bytes(text)
         threads = ("-fopenmp",) if re.search(rb"^\s*#\s*pragma\s+omp\b", text, re.MULTILINE) else ()
-        said = run([*self.call.command, *flags, *threads, "-w", "-fPIC", "-shared", "-fvisibility=hidden",
-                    "-iquote", self.beside, "-o", str(target), str(source), "-lm"], self.call.directory)
+        said = run(
+            [
+                *self.call.command,
+                *flags,
+                *threads,
+                "-w",
+                "-fPIC",
+                "-shared",
+                "-fvisibility=hidden",
+                "-iquote",
+                self.beside,
+                "-o",
+                str(target),
+                str(source),
+                "-lm",
+            ],
+            self.call.directory,
+        )
         return Built(target) if said is None else Built(None, said)
-
 
     def kernels(self, stem: str, texts: Sequence[bytes], flags: Sequence[str]) -> list[Built]:
         """Compile several, as many at a time as there are processors."""
@@ -75,8 +92,16 @@ def strict_flags(flags: Sequence[str], sanitize: bool) -> list[str]:
 def run(command: Sequence[str], directory: str | None = None) -> str | None:
     """Run a compiler in a directory; None if all went well, else what it said (its first lines)."""
     try:
-        done = subprocess.run(list(command), capture_output=True, text=True, errors="replace", timeout=_SECONDS,
-                              stdin=subprocess.DEVNULL, env={**os.environ, "LC_ALL": "C"}, cwd=directory)
+        done = subprocess.run(
+            list(command),
+            capture_output=True,
+            text=True,
+            errors="replace",
+            timeout=_SECONDS,
+            stdin=subprocess.DEVNULL,
+            env={**os.environ, "LC_ALL": "C"},
+            cwd=directory,
+        )
     except FileNotFoundError:
         raise RetileError(f"the compiler {command[0]} is not there; name another with --cc") from None
     except subprocess.TimeoutExpired:
@@ -108,8 +133,14 @@ def can_sanitize(command: tuple[str, ...]) -> bool:
     """True if programs built with the address and undefined-behaviour sanitizers run here."""
     try:
         program = harness(command, True, "trial")
-        done = subprocess.run([str(program)], capture_output=True, text=True, timeout=20, stdin=subprocess.DEVNULL,
-                              env=sanitizer_environment())
+        done = subprocess.run(
+            [str(program)],
+            capture_output=True,
+            text=True,
+            timeout=20,
+            stdin=subprocess.DEVNULL,
+            env=sanitizer_environment(),
+        )
     except (RetileError, OSError, subprocess.SubprocessError):
         return False
     return done.stdout == "failed call\n"
@@ -117,9 +148,12 @@ def can_sanitize(command: tuple[str, ...]) -> bool:
 
 def sanitizer_environment() -> dict[str, str]:
     """The environment in which kernels run: what the sanitizers find ends the program."""
-    return {**os.environ, "LC_ALL": "C",
-            "ASAN_OPTIONS": "detect_leaks=0:halt_on_error=1:allocator_may_return_null=1:color=never",
-            "UBSAN_OPTIONS": "halt_on_error=1:print_stacktrace=0:color=never"}
+    return {
+        **os.environ,
+        "LC_ALL": "C",
+        "ASAN_OPTIONS": "detect_leaks=0:halt_on_error=1:allocator_may_return_null=1:color=never",
+        "UBSAN_OPTIONS": "halt_on_error=1:print_stacktrace=0:color=never",
+    }
 
 
 @cache

@@ -72,8 +72,9 @@ def verify(source: Source, nest: Nest, variant: Variant, settings: Settings = Se
     return verify_all(source, nest, [variant], settings)[0]
 
 
-def verify_all(source: Source, nest: Nest, variants: Sequence[Variant],
-               settings: Settings = Settings()) -> list[Verification]:
+def verify_all(
+    source: Source, nest: Nest, variants: Sequence[Variant], settings: Settings = Settings()
+) -> list[Verification]:
     """Verify variants of one nest, which share the original's build and runs.
 
     Both sides are compiled without contraction, with the sanitizers where the compiler has them, and run at awkward
@@ -88,8 +89,15 @@ def verify_all(source: Source, nest: Nest, variants: Sequence[Variant],
         return Verifier(bench, shop, settings).verify(pairs, original, lambda text: None)
 
 
-def measure(source: Source, nest: Nest, variants: Sequence[Variant], sizes: Mapping[str, int],
-            settings: Settings = Settings(), on_progress: Progress | None = None, command: str = "retile measure") -> Campaign:
+def measure(
+    source: Source,
+    nest: Nest,
+    variants: Sequence[Variant],
+    sizes: Mapping[str, int],
+    settings: Settings = Settings(),
+    on_progress: Progress | None = None,
+    command: str = "retile measure",
+) -> Campaign:
     """Verify variants and time them against the original at the given sizes, round by round in one process.
 
     ``sizes`` are by name as the nest's parameters are shown; ``command`` is what the user typed, for the message that
@@ -124,8 +132,9 @@ def _bench(source: Source, nest: Nest, variants: Sequence[Variant], settings: Se
     unknown = unknown_fills(bench, dict(settings.fills))
     if unknown:
         names = sorted({cell.name for cell in bench.kernel.memory.cells})
-        raise RetileError(f"{nest.address}: the nest has nothing named {', '.join(unknown)} to fill; "
-                          f"it has {', '.join(names)}")
+        raise RetileError(
+            f"{nest.address}: the nest has nothing named {', '.join(unknown)} to fill; it has {', '.join(names)}"
+        )
     return bench
 
 
@@ -150,8 +159,10 @@ def _check_memory(nest: Nest, needed: int) -> None:
     except (OSError, StopIteration, ValueError):
         return
     if _COPIES * needed > free:
-        raise RetileError(f"{nest.address}: the arrays take about {needed >> 20} MiB, {_COPIES} copies are kept and only "
-                          f"{free >> 20} MiB are free; choose smaller sizes")
+        raise RetileError(
+            f"{nest.address}: the arrays take about {needed >> 20} MiB, {_COPIES} copies are kept and only "
+            f"{free >> 20} MiB are free; choose smaller sizes"
+        )
 
 
 @dataclass
@@ -188,17 +199,26 @@ class _State:
     def _verify(self, original: bytes, texts: list[bytes]) -> None:
         steps = iter(range(1_000_000))
         verifier = Verifier(self.bench, self.shop, self.settings)
-        results = verifier.verify(list(zip(self.variants, texts)), original, lambda text: self.tell("verify", next(steps), len(texts) + 1, text))
-        self.trials = [replace(trial, verification=result, failure=result.failure or _differs(result.difference))
-                       for trial, result in zip(self.trials, results)]
+        results = verifier.verify(
+            list(zip(self.variants, texts)),
+            original,
+            lambda text: self.tell("verify", next(steps), len(texts) + 1, text),
+        )
+        self.trials = [
+            replace(trial, verification=result, failure=result.failure or _differs(result.difference))
+            for trial, result in zip(self.trials, results)
+        ]
 
     def _time(self, original: bytes, texts: list[bytes]) -> None:
         good = [number for number, trial in enumerate(self.trials) if trial.failure is None]
         self.tell("build", 0, 1, f"{len(good) + 1} kernels")
-        baseline, *built = self.shop.kernels("timed", [original, *(texts[number] for number in good)],
-                                               [*self.shop.call.flags, *self.settings.flags])
+        baseline, *built = self.shop.kernels(
+            "timed", [original, *(texts[number] for number in good)], [*self.shop.call.flags, *self.settings.flags]
+        )
         if baseline.path is None:
-            raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
+            raise RetileError(
+                f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}"
+            )
         paths = [baseline.path]
         for number, kernel in zip(good, built):
             if kernel.path is None:
@@ -218,9 +238,11 @@ class _State:
         fewest, most = self.settings.rounds
         while True:
             self.tell("time", 0, len(paths), f"{self.settings.seconds:g} s for {len(paths)} kernels")
-            text = (job(self.case.layout, self.bench, fills, self.fill.way) +
-                    f"prepare {self.settings.seed}\nverify 0 {len(paths) - 1}\n"
-                    f"clock {self.settings.seconds} {fewest} {most}\n")
+            text = (
+                job(self.case.layout, self.bench, fills, self.fill.way)
+                + f"prepare {self.settings.seed}\nverify 0 {len(paths) - 1}\n"
+                f"clock {self.settings.seconds} {fewest} {most}\n"
+            )
             self.clock = Run()
             limit = self.settings.limit + self.settings.seconds
             run(program, prefix, paths, text, limit, self.clock)
@@ -252,18 +274,28 @@ class _State:
         baseline = tuple(times[0] for times in rounds)
         for kernel, number in enumerate(self.clocked, 1):
             samples = tuple(times[kernel] for times in rounds)
-            self.trials[number] = self._compared(replace(self.trials[number], samples=samples, baseline_samples=baseline),
-                                                 kernel)
+            self.trials[number] = self._compared(
+                replace(self.trials[number], samples=samples, baseline_samples=baseline), kernel
+            )
         self._warn(baseline)
         nest, settings = self.bench.nest, self.settings
         return Campaign(
-            address=str(nest.address), host=host.describe().as_json(), sizes=tuple(self.case.sizes.items()),
-            baseline_samples=baseline, trials=tuple(self.trials), compiler=self.shop.call.cc,
-            compiler_version=compiler_version(self.shop.call.command), flags=(*self.shop.call.flags, *settings.flags),
-            seed=settings.seed, fills=settings.fills, fill=self.fill.way,
+            address=str(nest.address),
+            host=host.describe().as_json(),
+            sizes=tuple(self.case.sizes.items()),
+            baseline_samples=baseline,
+            trials=tuple(self.trials),
+            compiler=self.shop.call.cc,
+            compiler_version=compiler_version(self.shop.call.command),
+            flags=(*self.shop.call.flags, *settings.flags),
+            seed=settings.seed,
+            fills=settings.fills,
+            fill=self.fill.way,
             source_sha256=hashlib.sha256(source.encode(source.text)).hexdigest(),
-            measured_at=datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ"), interrupted=self.interrupted,
-            notes=tuple(dict.fromkeys(self.notes)))
+            measured_at=datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ"),
+            interrupted=self.interrupted,
+            notes=tuple(dict.fromkeys(self.notes)),
+        )
 
     def _rounds(self) -> list[list[float]]:
         """The times of all complete rounds, by kernel; a time of 0 counts as one tick of a nanosecond."""
@@ -271,8 +303,11 @@ class _State:
         times: dict[int, dict[int, float]] = {}
         for number, kernel, seconds, _ in self.clock.of("time"):
             times.setdefault(int(number), {})[int(kernel)] = max(float(seconds), 1e-9)
-        return [[times[number][kernel] for kernel in range(kernels)]
-                for number in sorted(times) if len(times[number]) == kernels]
+        return [
+            [times[number][kernel] for kernel in range(kernels)]
+            for number in sorted(times)
+            if len(times[number]) == kernels
+        ]
 
     def _compared(self, trial: Trial, kernel: int) -> Trial:
         """Add how the timed build's outputs compare with the baseline's."""
@@ -280,8 +315,13 @@ class _State:
             return replace(trial, identical=True)
         for answer in self.clock.of("wrong"):
             if int(answer[0]) == kernel:
-                return replace(trial, identical=False, largest_difference=float(answer[2]),
-                               largest_relative=float(answer[3]), cause=self._cause(trial))
+                return replace(
+                    trial,
+                    identical=False,
+                    largest_difference=float(answer[2]),
+                    largest_relative=float(answer[3]),
+                    cause=self._cause(trial),
+                )
         return trial
 
     def _cause(self, trial: Trial) -> str:
@@ -293,21 +333,29 @@ class _State:
         if any(flag in self.settings.flags for flag in ("-ffast-math", "-Ofast", "-fassociative-math")):
             return f"the flags let the compiler reassociate floating-point operations{place}"
         if trial.verified:
-            return ("without contraction both leave the same bytes: with these flags the compiler fuses multiplications "
-                    f"and additions in one and not in the other (-ffp-contract=off prevents it){place}")
+            return (
+                "without contraction both leave the same bytes: with these flags the compiler fuses multiplications "
+                f"and additions in one and not in the other (-ffp-contract=off prevents it){place}"
+            )
         return f"not known{place}"
 
     def _warn(self, baseline: tuple[float, ...]) -> None:
         step = host.timer_step().value
         if baseline and isinstance(step, float) and min(baseline) < 100 * step:
-            self.notes.append(f"one call takes {min(baseline):.3g} s and the clock steps by {step:.3g} s; "
-                              "choose larger sizes for times that can be told apart")
+            self.notes.append(
+                f"one call takes {min(baseline):.3g} s and the clock steps by {step:.3g} s; "
+                "choose larger sizes for times that can be told apart"
+            )
         elapsed, used = (sum(float(answer[at]) for answer in self.clock.of("time")) for at in (2, 3))
         if elapsed > _BUSY * used and elapsed > 0.05:
-            self.notes.append(f"the processor was shared: {elapsed:.3g} s went by for {used:.3g} s of computing; "
-                              "measure again on a quiet machine")
+            self.notes.append(
+                f"the processor was shared: {elapsed:.3g} s went by for {used:.3g} s of computing; "
+                "measure again on a quiet machine"
+            )
         if baseline and len(baseline) < 6:
-            self.notes.append(f"{len(baseline)} rounds are too few for an interval (6 are needed); give more --seconds")
+            self.notes.append(
+                f"{len(baseline)} rounds are too few for an interval (6 are needed); give more --seconds"
+            )
 
 
 def _differs(difference: Difference | None) -> str | None:

@@ -113,8 +113,11 @@ class Scope:
         decls = node.decls if node.decls is not None else self.records.get(key)
         if decls is None:
             return Opaque(key)
-        members = tuple((decl.name, decl.type) for decl in decls
-                        if isinstance(decl, c_ast.Decl) and decl.name and decl.bitsize is None)
+        members = tuple(
+            (decl.name, decl.type)
+            for decl in decls
+            if isinstance(decl, c_ast.Decl) and decl.name and decl.bitsize is None
+        )
         return Record(key if node.name else "", members, union)
 
 
@@ -164,8 +167,12 @@ def scope_at(file: Any, function: Any, nest: Any) -> Scope:
             break
         _enter(scope, item, "global")
     for item in file.ext:  # a later definition of what was only announced before, and of ``extern`` objects
-        if isinstance(item, c_ast.Decl) and item.name in scope.variables and "extern" not in item.storage \
-                and not isinstance(item.type, c_ast.FuncDecl):
+        if (
+            isinstance(item, c_ast.Decl)
+            and item.name in scope.variables
+            and "extern" not in item.storage
+            and not isinstance(item.type, c_ast.FuncDecl)
+        ):
             _enter(scope, item, "global")
     arguments = function.decl.type.args
     old_style = {decl.name: decl for decl in function.param_decls or ()}

@@ -59,16 +59,22 @@ class Kernel:
         if body is None:
             raise RetileError(f"{self.nest.address}: the function {self.nest.function} comes out of a macro")
         middle = source.slice(span) if nest_text is None else nest_text
-        edits = [(body.start + 1, span.start, self._opening(body.start + 1, span, includes)),
-                 (span.start, span.end, middle),
-                 (span.end, body.end - 1, self._closing(span.end, body.end - 1)), *self._others]
+        edits = [
+            (body.start + 1, span.start, self._opening(body.start + 1, span, includes)),
+            (span.start, span.end, middle),
+            (span.end, body.end - 1, self._closing(span.end, body.end - 1)),
+            *self._others,
+        ]
         return source.encode(self._line(1) + _edited(source.text, edits) + "\n" + self._face())
 
     @cached_property
     def _others(self) -> list[tuple[int, int, str]]:
         """The edits that empty the functions which the nest does not call."""
-        others = [function for function in self.source.functions
-                  if function is not self.function and function.decl.name not in self.kept]
+        others = [
+            function
+            for function in self.source.functions
+            if function is not self.function and function.decl.name not in self.kept
+        ]
         return [(start, end, self._emptied(start, end)) for start, end in map(self._inside, others)]
 
     def _inside(self, function: Any) -> tuple[int, int]:
@@ -91,7 +97,9 @@ class Kernel:
         lines = "".join(_include(header) for header in includes)
         lines = f"\n{lines}{self._line(span.line)}" if lines else ""
         types = " ".join(self.scope.local_types)
-        head = f"{types} void {self.prefix}_kernel({self._parameters()}) {{ {' '.join(map(_with_init, self.derived))} "
+        head = (
+            f"{types} void {self.prefix}_kernel({self._parameters()}) {{ {' '.join(map(_with_init, self.derived))} "
+        )
         return f"{self._emptied(start, span.start)}}} {lines}{head}"
 
     def _closing(self, start: int, end: int) -> str:
@@ -123,10 +131,21 @@ class Kernel:
         arguments = [self._argument(variable, place) for place, variable in enumerate(self.memory.arguments)]
         place = {variable.name: at for at, variable in enumerate(self.memory.arguments)}
         arguments += [f"{self.prefix}_argument[{place[variable.name]}]" for variable in self.outs]
-        return environment().get_template("trial_face.c.j2").render(
-            p=self.prefix, blocks=self.memory.blocks, links=self.memory.links, cells=self.memory.cells,
-            types=self.memory.types, late_definitions=self.memory.late_definitions, prototype=self._parameters(),
-            arguments=", ".join(arguments), argument_count=len(self.memory.arguments))
+        return (
+            environment()
+            .get_template("trial_face.c.j2")
+            .render(
+                p=self.prefix,
+                blocks=self.memory.blocks,
+                links=self.memory.links,
+                cells=self.memory.cells,
+                types=self.memory.types,
+                late_definitions=self.memory.late_definitions,
+                prototype=self._parameters(),
+                arguments=", ".join(arguments),
+                argument_count=len(self.memory.arguments),
+            )
+        )
 
     def _argument(self, variable: Variable, place: int) -> str:
         of = declared_type(self.scope, variable)
@@ -149,10 +168,23 @@ def kernel_of(source: Source, nest: Nest, variant_texts: Iterable[str] = ()) -> 
     try:
         memory = memory_of(scope, node, named, derived)
     except RetileError as problem:
-        raise RetileError(source.complaint(nest.span.line, nest.span.column, str(problem),
-                                           "move the nest into a function of its own")) from None
-    return Kernel(source, nest, node, function, scope, memory, _free_prefix(nest), derived,
-                  _outs(nest, memory), _called(source, node))
+        raise RetileError(
+            source.complaint(
+                nest.span.line, nest.span.column, str(problem), "move the nest into a function of its own"
+            )
+        ) from None
+    return Kernel(
+        source,
+        nest,
+        node,
+        function,
+        scope,
+        memory,
+        _free_prefix(nest),
+        derived,
+        _outs(nest, memory),
+        _called(source, node),
+    )
 
 
 def _find(source: Source, nest: Nest) -> tuple[Any, Any]:
@@ -172,8 +204,14 @@ def _derived(nest: Nest, scope: Scope, named: set[str]) -> tuple[Variable, ...]:
     waiting = set(named)
     while waiting:
         variable = scope.variables.get(waiting.pop())
-        if variable is None or variable in found or variable.name in roots or variable.place != "local" \
-                or variable.init is None or not isinstance(declared_type(scope, variable), Pointer):
+        if (
+            variable is None
+            or variable in found
+            or variable.name in roots
+            or variable.place != "local"
+            or variable.init is None
+            or not isinstance(declared_type(scope, variable), Pointer)
+        ):
             continue
         if not any(isinstance(part, c_ast.FuncCall) for part in walk(variable.init)):
             found.append(variable)
@@ -197,11 +235,20 @@ def _outs(nest: Nest, memory: Memory) -> tuple[Variable, ...]:
     """The function's scalars that the nest changes and that can be seen afterwards."""
     live = {loop.iterator for loop in nest.loops if loop.iterator_live_after and not loop.declared_in_for}
     for storage in nest.storages:
-        if storage.kind is StorageKind.SCALAR and storage.live_after and storage.scope != "block" \
-                and storage.scalar is not ScalarClass.PARAMETER:
+        if (
+            storage.kind is StorageKind.SCALAR
+            and storage.live_after
+            and storage.scope != "block"
+            and storage.scalar is not ScalarClass.PARAMETER
+        ):
             live.add(storage.name.split(".")[0])
-    return tuple(variable for variable in memory.arguments if variable.name in live and not variable.constant
-                 and isinstance(declared_type(memory.scope, variable), Arithmetic | Record))
+    return tuple(
+        variable
+        for variable in memory.arguments
+        if variable.name in live
+        and not variable.constant
+        and isinstance(declared_type(memory.scope, variable), Arithmetic | Record)
+    )
 
 
 def _called(source: Source, node: Any) -> frozenset[str]:

@@ -50,8 +50,9 @@ class Bench:
     nodes: dict[str, Any] = field(init=False)  # expression node of each parameter, by symbol
 
     def __post_init__(self) -> None:
-        self.nodes = {parameter.symbol: expression(parameter.text, self.scope)
-                      for parameter in self.nest.parameters}
+        self.nodes = {
+            parameter.symbol: expression(parameter.text, self.scope) for parameter in self.nest.parameters
+        }
 
     @property
     def nest(self) -> Nest:
@@ -98,11 +99,20 @@ class Bench:
         """The value of a named constant: an enumerator, or a macro of the file or of the flags; None if not found."""
         if name in self.scope.constants:
             return value_of(self.scope.constants[name], self.scope, {})
-        given = next((flag[len(name) + 3:] for flag in reversed(self.kernel.source.call.flags)
-                      if flag.startswith(f"-D{name}=")), None)
+        given = next(
+            (
+                flag[len(name) + 3 :]
+                for flag in reversed(self.kernel.source.call.flags)
+                if flag.startswith(f"-D{name}=")
+            ),
+            None,
+        )
         defined = re.compile(rf"#\s*define\s+{re.escape(name)}\s+(.+)")
-        texts = [match.group(1) for token in self.kernel.source.tokens
-                 if token.kind == "directive" and (match := defined.match(token.text))]
+        texts = [
+            match.group(1)
+            for token in self.kernel.source.tokens
+            if token.kind == "directive" and (match := defined.match(token.text))
+        ]
         try:
             return value_of(expression((given and [given] or texts)[0], self.scope), self.scope, {})
         except (IndexError, RetileError):
@@ -227,13 +237,15 @@ class _Sizing:
         forms = [self._known(form) for form in subscripts]
         chain = [block for block in self._chain(cell) if block.levels and block.levels[-1]]
         for block in chain:
-            forms, last = forms[block.skip:], block is chain[-1]
+            forms, last = forms[block.skip :], block is chain[-1]
             if storage.strides and last:
-                strides = [value_of(expression(text, self.bench.scope), self.bench.scope, self.cells)
-                           for text in storage.strides]
+                strides = [
+                    value_of(expression(text, self.bench.scope), self.bench.scope, self.cells)
+                    for text in storage.strides
+                ]
             else:
                 strides = self._strides(block)
-            taken, forms = forms[:len(strides)], forms[len(strides):]
+            taken, forms = forms[: len(strides)], forms[len(strides) :]
             if not taken:  # the access ends here: it reads a pointer to a row
                 break
             whole = sum((form * stride for form, stride in zip(taken, strides)), Affine())
@@ -284,7 +296,9 @@ class _Sizing:
 
     def _within(self, block: Block, low: int, high: int, declared: int) -> None:
         if low <= high and (low < 0 or high >= declared):
-            raise _TooFar(f"at these sizes the nest uses {block.name} outside its declared extent ({declared} elements)")
+            raise _TooFar(
+                f"at these sizes the nest uses {block.name} outside its declared extent ({declared} elements)"
+            )
 
     # ------------------------------------------------------------ subscripts that are looked up
 
@@ -320,7 +334,9 @@ class _Sizing:
                 old = known.get(name, (low, high))
                 known[name] = (min(low, old[0]), max(high, old[1]))
         reads: set[str] = set()
-        answer = Ranges(self.bench.scope, self.bench.kernel.node, known, lambda _: (0, self.index_values - 1), reads)
+        answer = Ranges(
+            self.bench.scope, self.bench.kernel.node, known, lambda _: (0, self.index_values - 1), reads
+        )
         found = answer.of(node)
         self.indices |= reads
         return found
@@ -329,10 +345,13 @@ class _Sizing:
         for block in self._chain(cell):
             if not block.levels or not block.levels[-1]:
                 continue
-            strides, subscripts = self._strides(block), subscripts[block.skip:]
-            taken, subscripts = subscripts[:len(strides)], subscripts[len(strides):]
-            self._note(block, sum(int(low) * stride for (low, _), stride in zip(taken, strides)),
-                       sum(int(high) * stride for (_, high), stride in zip(taken, strides)))
+            strides, subscripts = self._strides(block), subscripts[block.skip :]
+            taken, subscripts = subscripts[: len(strides)], subscripts[len(strides) :]
+            self._note(
+                block,
+                sum(int(low) * stride for (low, _), stride in zip(taken, strides)),
+                sum(int(high) * stride for (_, high), stride in zip(taken, strides)),
+            )
 
 
 class _TooFar(RetileError):
@@ -344,7 +363,9 @@ def job(layout: Layout, bench: Bench, fills: Mapping[str, str], default: str) ->
 
     Ways of filling: ``random``, ``zero``, ``diagonal-dominant``, ``positive``.
     """
-    lines = [f"block {number} {extent.before} {extent.count} {extent.row}" for number, extent in layout.extents.items()]
+    lines = [
+        f"block {number} {extent.before} {extent.count} {extent.row}" for number, extent in layout.extents.items()
+    ]
     lines.append("alias {} {} {}".format(*(layout.alias or (-1, -1, 0))))
     memory = bench.kernel.memory
     outs = {variable.name for variable in bench.kernel.outs}
@@ -375,8 +396,14 @@ def overlapping(layout: Layout, bench: Bench, first: str, second: str, shift: in
         return None
     holder, inside = sorted(blocks, key=lambda block: block.number)
     targets = {link.target for link in memory.links}
-    if any(block.number not in targets or block.number in {link.holder for link in memory.links} or
-           len(block.levels) > 3 or block.count != "0" or sum(block.levels[:-1]) for block in blocks):
+    if any(
+        block.number not in targets
+        or block.number in {link.holder for link in memory.links}
+        or len(block.levels) > 3
+        or block.count != "0"
+        or sum(block.levels[:-1])
+        for block in blocks
+    ):
         return None
     room, needed = layout.extents[holder.number], layout.extents[inside.number]
     before = max(room.before, needed.before)
@@ -388,8 +415,11 @@ def overlapping(layout: Layout, bench: Bench, first: str, second: str, shift: in
 def unknown_fills(bench: Bench, fills: Mapping[str, str]) -> list[str]:
     """The names among ``fills`` that no array of the nest has."""
     names = {cell.name for cell in bench.kernel.memory.cells}
-    return [name for name in fills if plain(name) not in names and
-            not any(other.startswith(plain(name) + ".") for other in names)]
+    return [
+        name
+        for name in fills
+        if plain(name) not in names and not any(other.startswith(plain(name) + ".") for other in names)
+    ]
 
 
 def names_needed(bench: Bench) -> tuple[str, ...]:

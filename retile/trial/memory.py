@@ -232,24 +232,42 @@ class _Builder:
     def _variable(self, variable: Variable) -> None:
         found = declared_type(self.scope, variable)
         element, dims = _flat(found)
-        require(isinstance(element, Arithmetic | Pointer | Record),
-                f"a trial cannot make the object {variable.name}: its type {type_text(variable.node)} is not complete here")
+        require(
+            isinstance(element, Arithmetic | Pointer | Record),
+            f"a trial cannot make the object {variable.name}: its type {type_text(variable.node)} is not complete here",
+        )
         fixed = variable.place == "global"
         argument = -1 if fixed else len(self.memory.arguments)
         text = element.text or (f"__typeof__({variable.name}{'[0]' * len(dims)})" if fixed else "")
         require(text, f"a trial cannot make {variable.name}: give the struct of its type a name")
         if fixed and not variable.defined:
             self.memory.late_definitions.append(type_text(variable.node, variable.name, qualifiers=True) + ";")
-        block = self._add(variable.name, text, dims, (len(dims),) if dims else (),
-                          count=f"sizeof({variable.name}) / sizeof({text})" if fixed else "0" if dims else "1",
-                          home=f"(void *)&{variable.name}" if fixed else "0", argument=argument,
-                          constant=int(fixed and variable.constant))
+        block = self._add(
+            variable.name,
+            text,
+            dims,
+            (len(dims),) if dims else (),
+            count=f"sizeof({variable.name}) / sizeof({text})" if fixed else "0" if dims else "1",
+            home=f"(void *)&{variable.name}" if fixed else "0",
+            argument=argument,
+            constant=int(fixed and variable.constant),
+        )
         if not fixed:
             self.memory.arguments.append(variable)
         self._contents(block, element, variable.name, _Spot(text), variable)
 
-    def _add(self, name: str, text: str, dims: tuple[Any, ...], levels: tuple[int, ...], count: str = "0",
-             home: str = "0", argument: int = -1, constant: int = 0, skip: int = 0) -> Block:
+    def _add(
+        self,
+        name: str,
+        text: str,
+        dims: tuple[Any, ...],
+        levels: tuple[int, ...],
+        count: str = "0",
+        home: str = "0",
+        argument: int = -1,
+        constant: int = 0,
+        skip: int = 0,
+    ) -> Block:
         block = Block(len(self.memory.blocks), name, text, count, home, argument, constant, dims, levels, skip)
         self.memory.blocks.append(block)
         return block
@@ -259,8 +277,18 @@ class _Builder:
         if isinstance(of, Arithmetic):
             if of.text not in self.memory.types:
                 self.memory.types.append(of.text)
-            self.memory.cells.append(Cell(len(self.memory.cells), path.replace("*", ""), block.number, spot.offset,
-                                          spot.repeat, spot.stride, of.text, self.memory.types.index(of.text)))
+            self.memory.cells.append(
+                Cell(
+                    len(self.memory.cells),
+                    path.replace("*", ""),
+                    block.number,
+                    spot.offset,
+                    spot.repeat,
+                    spot.stride,
+                    of.text,
+                    self.memory.types.index(of.text),
+                )
+            )
         elif isinstance(of, Record):
             for name, member in of.members:
                 if not of.union or self._is_used(f"{path}.{name}"):
@@ -276,23 +304,40 @@ class _Builder:
         if not isinstance(element, Arithmetic | Record | Pointer):
             return
         if dims:
-            require(spot.repeat == "1", f"a trial cannot fill arrays of structs with arrays inside another struct ({path})")
+            require(
+                spot.repeat == "1",
+                f"a trial cannot fill arrays of structs with arrays inside another struct ({path})",
+            )
             require(element.text, f"a trial cannot fill {path}: give the struct of its elements a name")
             size = f"sizeof({element.text})"
-            spot = _Spot(element.text, (), spot.offset, f"sizeof((({spot.holder} *)0)->{'.'.join(spot.path)}) / {size}", size,
-                         len(dims))
+            spot = _Spot(
+                element.text,
+                (),
+                spot.offset,
+                f"sizeof((({spot.holder} *)0)->{'.'.join(spot.path)}) / {size}",
+                size,
+                len(dims),
+            )
         self._contents(block, element, path, spot)
 
     def _follow(self, holder: Block, of: Pointer, path: str, spot: _Spot, variable: Variable | None) -> None:
         element, inner = _flat(of.target)
         indexed = self.paths.followed[path]
-        require(isinstance(element, Arithmetic | Pointer | Record) and element.text,
-                f"a trial cannot make what {path.replace('*', '')} points to: its type is not complete here")
+        require(
+            isinstance(element, Arithmetic | Pointer | Record) and element.text,
+            f"a trial cannot make what {path.replace('*', '')} points to: its type is not complete here",
+        )
         outer = variable.node.dim if variable is not None and isinstance(variable.node, c_ast.ArrayDecl) else None
         dims = (outer, *inner)
         levels = (*holder.levels, len(dims) if indexed or inner else 0)
-        block = self._add(path.replace("*", ""), element.text, dims, levels,
-                          count="0" if indexed or inner else "1", skip=spot.subscripts)
+        block = self._add(
+            path.replace("*", ""),
+            element.text,
+            dims,
+            levels,
+            count="0" if indexed or inner else "1",
+            skip=spot.subscripts,
+        )
         self.memory.links.append(Link(holder.number, block.number, spot.offset, spot.repeat, spot.stride))
         self._contents(block, element, path + "*", _Spot(element.text))
 
@@ -354,10 +399,26 @@ def binary(op: str, a: int, b: int) -> int:
         return quotient if op == "/" else a - quotient * b
     if op in ("<<", ">>"):
         require(0 <= b < 64, "an extent shifts too far at these sizes")
-    return int({"+": lambda: a + b, "-": lambda: a - b, "*": lambda: a * b, "<<": lambda: a << b, ">>": lambda: a >> b,
-                "&": lambda: a & b, "|": lambda: a | b, "^": lambda: a ^ b, "<": lambda: a < b, ">": lambda: a > b,
-                "<=": lambda: a <= b, ">=": lambda: a >= b, "==": lambda: a == b, "!=": lambda: a != b,
-                "&&": lambda: bool(a and b), "||": lambda: bool(a or b)}[op]())
+    return int(
+        {
+            "+": lambda: a + b,
+            "-": lambda: a - b,
+            "*": lambda: a * b,
+            "<<": lambda: a << b,
+            ">>": lambda: a >> b,
+            "&": lambda: a & b,
+            "|": lambda: a | b,
+            "^": lambda: a ^ b,
+            "<": lambda: a < b,
+            ">": lambda: a > b,
+            "<=": lambda: a <= b,
+            ">=": lambda: a >= b,
+            "==": lambda: a == b,
+            "!=": lambda: a != b,
+            "&&": lambda: bool(a and b),
+            "||": lambda: bool(a or b),
+        }[op]()
+    )
 
 
 def _constant(node: Any) -> int:

@@ -32,7 +32,9 @@ class Ranges:
     def of(self, node: Any, depth: int = 0) -> Range:
         """The range of an expression; RetileError if it holds something that cannot be bounded."""
         if depth > 40:
-            raise RetileError("a looked-up subscript feeds on itself; a trial cannot find values that keep it in range")
+            raise RetileError(
+                "a looked-up subscript feeds on itself; a trial cannot find values that keep it in range"
+            )
         below = depth + 1
         if isinstance(node, c_ast.Constant):
             return _constant(node)
@@ -49,8 +51,10 @@ class Ranges:
             return _join(self.of(node.iftrue, below), self.of(node.iffalse, below))
         if isinstance(node, c_ast.BinaryOp):
             return _binary(node.op, lambda: self.of(node.left, below), lambda: self.of(node.right, below))
-        raise RetileError("a trial cannot find out how far a looked-up subscript reaches "
-                          f"({type(node).__name__} in it, line {getattr(node.coord, 'line', '?')})")
+        raise RetileError(
+            "a trial cannot find out how far a looked-up subscript reaches "
+            f"({type(node).__name__} in it, line {getattr(node.coord, 'line', '?')})"
+        )
 
     def _cast(self, node: Any, depth: int) -> Range:
         low, high = self.of(node.expr, depth)
@@ -81,7 +85,11 @@ class Ranges:
             value = None
             if isinstance(node, c_ast.Decl) and node.name == name:
                 value = node.init
-            elif isinstance(node, c_ast.Assignment) and isinstance(node.lvalue, c_ast.ID) and node.lvalue.name == name:
+            elif (
+                isinstance(node, c_ast.Assignment)
+                and isinstance(node.lvalue, c_ast.ID)
+                and node.lvalue.name == name
+            ):
                 if node.op != "=":
                     raise RetileError(f"the subscript {name} adds up in the loop; a trial cannot bound it")
                 value = node.rvalue

@@ -57,7 +57,9 @@ class Difference:
     def __str__(self) -> str:
         at = "".join(f"[{number}]" for number in self.index)
         sizes = ", ".join(f"{name} = {value}" for name, value in self.sizes)
-        return f"{self.array}{at} is {self.found!r}, the original leaves {self.expected!r}" + (f" ({sizes})" if sizes else "")
+        return f"{self.array}{at} is {self.found!r}, the original leaves {self.expected!r}" + (
+            f" ({sizes})" if sizes else ""
+        )
 
 
 @dataclass(frozen=True)
@@ -138,13 +140,24 @@ class Campaign:
     def as_json(self) -> dict[str, Any]:
         """The document that ``measure --json`` prints and that result files hold."""
         return {
-            "format": FORMAT, "address": self.address, "host": dict(self.host), "sizes": dict(self.sizes),
+            "format": FORMAT,
+            "address": self.address,
+            "host": dict(self.host),
+            "sizes": dict(self.sizes),
             "baseline": {"seconds": _estimate_json(self.baseline_samples), "samples": list(self.baseline_samples)},
             "trials": [_trial_json(trial) for trial in self.trials],
             "best": _trial_json(self.best) if self.best else None,
-            "interrupted": self.interrupted, "compiler": self.compiler, "compiler_version": self.compiler_version,
-            "flags": list(self.flags), "seed": self.seed, "fill": self.fill, "fills": dict(self.fills),
-            "source_sha256": self.source_sha256, "measured_at": self.measured_at, "notes": list(self.notes)}
+            "interrupted": self.interrupted,
+            "compiler": self.compiler,
+            "compiler_version": self.compiler_version,
+            "flags": list(self.flags),
+            "seed": self.seed,
+            "fill": self.fill,
+            "fills": dict(self.fills),
+            "source_sha256": self.source_sha256,
+            "measured_at": self.measured_at,
+            "notes": list(self.notes),
+        }
 
 
 def _estimate_json(samples: tuple[float, ...]) -> dict[str, float | None] | None:
@@ -154,22 +167,41 @@ def _estimate_json(samples: tuple[float, ...]) -> dict[str, float | None] | None
 def _trial_json(trial: Trial) -> dict[str, Any]:
     verification = trial.verification
     return {
-        "plan": trial.plan, "options": trial.options, "verified": trial.verified, "identical": trial.identical,
+        "plan": trial.plan,
+        "options": trial.options,
+        "verified": trial.verified,
+        "identical": trial.identical,
         "seconds": trial.seconds.as_json() if trial.seconds else None,
         "speedup": trial.speedup.as_json() if trial.speedup else None,
-        "samples": list(trial.samples), "baseline_samples": list(trial.baseline_samples),
-        "largest_difference": trial.largest_difference, "largest_relative": trial.largest_relative,
-        "cause": trial.cause, "failure": trial.failure,
-        "verification": _verification_json(verification) if verification else None}
+        "samples": list(trial.samples),
+        "baseline_samples": list(trial.baseline_samples),
+        "largest_difference": trial.largest_difference,
+        "largest_relative": trial.largest_relative,
+        "cause": trial.cause,
+        "failure": trial.failure,
+        "verification": _verification_json(verification) if verification else None,
+    }
 
 
 def _verification_json(found: Verification) -> dict[str, Any]:
     difference = found.difference
     return {
-        "verified": found.verified, "cases": [dict(case) for case in found.cases], "sanitized": found.sanitized,
-        "fill": found.fill, "failure": found.failure, "notes": list(found.notes),
-        "difference": {"array": difference.array, "index": list(difference.index), "expected": difference.expected,
-                       "found": difference.found, "sizes": dict(difference.sizes)} if difference else None}
+        "verified": found.verified,
+        "cases": [dict(case) for case in found.cases],
+        "sanitized": found.sanitized,
+        "fill": found.fill,
+        "failure": found.failure,
+        "notes": list(found.notes),
+        "difference": {
+            "array": difference.array,
+            "index": list(difference.index),
+            "expected": difference.expected,
+            "found": difference.found,
+            "sizes": dict(difference.sizes),
+        }
+        if difference
+        else None,
+    }
 
 
 def as_text(campaign: Campaign) -> str:
@@ -190,6 +222,7 @@ def _finite(value: Any) -> Any:
 def write_result(campaign: Campaign, path: str | None = None) -> str:
     """Write a result file, whole or not at all; its path, which without one is made from the time of measuring."""
     from ..source import replace_file
+
     target = path or f"retile-result-{campaign.measured_at.replace(':', '').replace('-', '')}.json"
     try:
         replace_file(target, as_text(campaign).encode("utf-8"))
@@ -275,24 +308,38 @@ def _campaign(part: _Part) -> Campaign:
     if part.take("format", int) != FORMAT:
         raise _Wrong("it was written in another format; measure again")
     return Campaign(
-        address=part.take("address", str), host=part.take("host", dict), sizes=part.pairs("sizes", int),
+        address=part.take("address", str),
+        host=part.take("host", dict),
+        sizes=part.pairs("sizes", int),
         baseline_samples=_Part(part.take("baseline", dict), "the baseline").samples("samples"),
-        trials=tuple(_trial(trial) for trial in part.parts("trials")), compiler=part.take("compiler", str),
-        compiler_version=part.take("compiler_version", str, _NONE), flags=part.texts("flags"),
-        seed=part.take("seed", int), fills=part.pairs("fills", str), fill=part.take("fill", str),
-        source_sha256=part.take("source_sha256", str), measured_at=part.take("measured_at", str),
-        interrupted=part.take("interrupted", bool), notes=part.texts("notes"))
+        trials=tuple(_trial(trial) for trial in part.parts("trials")),
+        compiler=part.take("compiler", str),
+        compiler_version=part.take("compiler_version", str, _NONE),
+        flags=part.texts("flags"),
+        seed=part.take("seed", int),
+        fills=part.pairs("fills", str),
+        fill=part.take("fill", str),
+        source_sha256=part.take("source_sha256", str),
+        measured_at=part.take("measured_at", str),
+        interrupted=part.take("interrupted", bool),
+        notes=part.texts("notes"),
+    )
 
 
 def _trial(part: _Part) -> Trial:
     held = part.take("verification", dict, _NONE)
     trial = Trial(
-        plan=part.take("plan", str), options=part.take("options", str),
+        plan=part.take("plan", str),
+        options=part.take("options", str),
         verification=_verification(_Part(held, "a verification")) if held is not None else None,
-        samples=part.samples("samples"), baseline_samples=part.samples("baseline_samples"),
-        identical=part.take("identical", bool, _NONE), largest_difference=part.take("largest_difference", int, float, _NONE),
-        largest_relative=part.take("largest_relative", int, float, _NONE), cause=part.take("cause", str, _NONE),
-        failure=part.take("failure", str, _NONE))
+        samples=part.samples("samples"),
+        baseline_samples=part.samples("baseline_samples"),
+        identical=part.take("identical", bool, _NONE),
+        largest_difference=part.take("largest_difference", int, float, _NONE),
+        largest_relative=part.take("largest_relative", int, float, _NONE),
+        cause=part.take("cause", str, _NONE),
+        failure=part.take("failure", str, _NONE),
+    )
     if len(trial.samples) != len(trial.baseline_samples):
         raise _Wrong("a trial and its baseline have different numbers of samples")
     return trial
@@ -303,15 +350,22 @@ def _verification(part: _Part) -> Verification:
     return Verification(
         verified=part.take("verified", bool),
         cases=tuple(tuple(_Part(case, "a case").fields.items()) for case in part.take("cases", list)),
-        sanitized=part.take("sanitized", bool), fill=part.take("fill", str),
+        sanitized=part.take("sanitized", bool),
+        fill=part.take("fill", str),
         difference=_difference(_Part(held, "a difference")) if held is not None else None,
-        failure=part.take("failure", str, _NONE), notes=part.texts("notes"))
+        failure=part.take("failure", str, _NONE),
+        notes=part.texts("notes"),
+    )
 
 
 def _difference(part: _Part) -> Difference:
     number = (int, float, _NONE)
     nothing = float("nan")
     expected, found = part.take("expected", *number), part.take("found", *number)
-    return Difference(part.take("array", str), tuple(_every(part.take("index", list), int, "index")),
-                      nothing if expected is None else expected, nothing if found is None else found,
-                      part.pairs("sizes", int))
+    return Difference(
+        part.take("array", str),
+        tuple(_every(part.take("index", list), int, "index")),
+        nothing if expected is None else expected,
+        nothing if found is None else found,
+        part.pairs("sizes", int),
+    )

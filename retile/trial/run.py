@@ -57,7 +57,9 @@ class Run:
         return f"it ended with status {self.status}"
 
 
-def run(program: Path, prefix: str, kernels: Sequence[Path], job: str, seconds: float, into: Run | None = None) -> Run:
+def run(
+    program: Path, prefix: str, kernels: Sequence[Path], job: str, seconds: float, into: Run | None = None
+) -> Run:
     """Run a job; after ``seconds`` the process is ended.  Answers land in ``into`` as they come, also on Ctrl-C.
 
     The process has a session of its own, so that Ctrl-C reaches only us, and its own alarm in case we are killed.
@@ -66,9 +68,15 @@ def run(program: Path, prefix: str, kernels: Sequence[Path], job: str, seconds: 
     job_file = kernels[0].parent / "job"
     job_file.write_text(f"limit {int(seconds) + 5}\n{job}", encoding="ascii")
     with open(job_file, encoding="ascii") as given, open(kernels[0].parent / "said", "w+b") as said:
-        process = subprocess.Popen([str(program), f"{prefix}_entry", *map(str, kernels)], stdin=given,
-                                   stdout=subprocess.PIPE, stderr=said, env=sanitizer_environment(),
-                                   start_new_session=True, cwd=kernels[0].parent)
+        process = subprocess.Popen(
+            [str(program), f"{prefix}_entry", *map(str, kernels)],
+            stdin=given,
+            stdout=subprocess.PIPE,
+            stderr=said,
+            env=sanitizer_environment(),
+            start_new_session=True,
+            cwd=kernels[0].parent,
+        )
         timer = threading.Timer(seconds, _end, (process, found))
         timer.start()
         try:

@@ -37,8 +37,13 @@ def verification_sizes(bench: Bench, plans: Iterable[Plan], trust: bool = False)
     return [dict(sizes) for sizes in sorted(chosen, key=lambda sizes: chosen[sizes])]
 
 
-def _take(bench: Bench, region: Region, wishes: Iterable[Mapping[str, int]], most: int,
-          chosen: dict[tuple[tuple[str, int], ...], int]) -> None:
+def _take(
+    bench: Bench,
+    region: Region,
+    wishes: Iterable[Mapping[str, int]],
+    most: int,
+    chosen: dict[tuple[tuple[str, int], ...], int],
+) -> None:
     """Add up to ``most`` sizes of a region that come near to the wishes and do not take too long."""
     taken = 0
     for wish in wishes if not region.is_empty() else ():
@@ -109,9 +114,13 @@ def _wishes(bench: Bench, chunks: Mapping[str, Sequence[int]]) -> Iterator[dict[
         largest = max(wish.values(), default=0)
         other = (0, 1, 2, largest + 3)[turn % 4]
         inside = (0, 1, 2, largest // 2)[turn % 4]
-        chosen = {name: inside if name in outer else wish[name] if name in bounds or name in bench.hidden else other
-                  for name in names}
-        return {name: largest + turn % 3 if name in bench.lengths - bounds else value for name, value in chosen.items()}
+        chosen = {
+            name: inside if name in outer else wish[name] if name in bounds or name in bench.hidden else other
+            for name in names
+        }
+        return {
+            name: largest + turn % 3 if name in bench.lengths - bounds else value for name, value in chosen.items()
+        }
 
     turn = 0
     unequal = {name: _UNEQUAL[at % len(_UNEQUAL)] for at, name in enumerate(names)}
@@ -178,16 +187,22 @@ def checked(bench: Bench, sizes: Mapping[str, int], command: str) -> dict[str, i
             given[parameter.symbol] = given.pop(parameter.text)
     strange = [name for name in given if name not in names and bench.kernel.memory.cell(name) is None]
     if strange:
-        raise RetileError(f"{bench.nest.address}: the nest has no size {', '.join(strange)}; "
-                          f"it has {', '.join(names) or 'none'}")
+        raise RetileError(
+            f"{bench.nest.address}: the nest has no size {', '.join(strange)}; it has {', '.join(names) or 'none'}"
+        )
     missing = [name for name in names if name not in given]
     if missing:
-        settings = " ".join(f"--set '{name}={given.get(name, 1000)}'" if ">" in name else
-                            f"--set {name}={given.get(name, 1000)}" for name in names)
-        raise RetileError(f"{bench.nest.address}: no value for {', '.join(missing)}; "
-                          f"type, for example: {command} {settings}")
+        settings = " ".join(
+            f"--set '{name}={given.get(name, 1000)}'" if ">" in name else f"--set {name}={given.get(name, 1000)}"
+            for name in names
+        )
+        raise RetileError(
+            f"{bench.nest.address}: no value for {', '.join(missing)}; type, for example: {command} {settings}"
+        )
     _, symbols = bench.values(given)
     if Region.where(*bench.nest.facts).at(symbols).is_empty():
-        raise RetileError(f"{bench.nest.address}: the original is not defined at these sizes "
-                          f"({', '.join(f'{name} = {given[name]}' for name in names)}); choose others")
+        raise RetileError(
+            f"{bench.nest.address}: the original is not defined at these sizes "
+            f"({', '.join(f'{name} = {given[name]}' for name in names)}); choose others"
+        )
     return {**{name: given[name] for name in names}, **given}

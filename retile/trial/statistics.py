@@ -36,7 +36,7 @@ def ranks(count: int, confidence: float = CONFIDENCE) -> tuple[int, int] | None:
     below, chosen = 0, 0
     for rank in range(1, count // 2 + 1):
         below += comb(count, rank - 1)  # outcomes with fewer than `rank` samples under the median
-        if 2 * below > (1 - confidence) * 2 ** count:
+        if 2 * below > (1 - confidence) * 2**count:
             break
         chosen = rank
     return (chosen, count + 1 - chosen) if chosen else None

@@ -87,9 +87,13 @@ class Verifier:
 
     def _overlapping(self, cases: Sequence[Case], variants: Sequence[Variant]) -> list[Case]:
         """Cases in which pointers overlap that the variants assume do not: they must notice."""
-        pairs = {assumption.storages for variant in variants if variant.judgement is not None
-                 for assumption in variant.judgement.assumptions
-                 if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2}
+        pairs = {
+            assumption.storages
+            for variant in variants
+            if variant.judgement is not None
+            for assumption in variant.judgement.assumptions
+            if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2
+        }
         found = []
         some = [case for case in cases if self.bench.work(case.sizes) > 0][-2:]
         for first, second in sorted(pairs):
@@ -100,17 +104,23 @@ class Verifier:
                         found.append(replace(case, layout=layout, overlap=f"{first} and {second} overlap"))
         return found
 
-    def verify(self, texts: Sequence[tuple[Variant, bytes]], original: bytes,
-               step: Callable[[str], None]) -> list[Verification]:
+    def verify(
+        self, texts: Sequence[tuple[Variant, bytes]], original: bytes, step: Callable[[str], None]
+    ) -> list[Verification]:
         """One verification for each variant's text; ``step`` is told what is done next."""
         step(f"build {len(texts) + 1} kernels")
         baseline, *built = self.workshop.kernels("strict", [original, *(text for _, text in texts)], self.flags)
         if baseline.path is None:
-            raise RetileError(f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}")
-        candidates = [_Candidate(kernel, variant.plan, failure=kernel.complaint)
-                      for kernel, (variant, _) in zip(built, texts)]
+            raise RetileError(
+                f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}"
+            )
+        candidates = [
+            _Candidate(kernel, variant.plan, failure=kernel.complaint) for kernel, (variant, _) in zip(built, texts)
+        ]
         cases = self.cases([variant for variant, _ in texts])
-        fill = self.choose_fill(baseline.path, self.program, max(cases, key=lambda case: self.bench.work(case.sizes)))
+        fill = self.choose_fill(
+            baseline.path, self.program, max(cases, key=lambda case: self.bench.work(case.sizes))
+        )
         self._run_all(baseline.path, candidates, cases, fill, step)
         return [self._result(candidate, fill) for candidate in candidates]
 
@@ -126,24 +136,40 @@ class Verifier:
                 continue
             changed, finite = int(counts[0]), int(counts[1])
             if changed and finite == changed:
-                note = () if not tried and not stopped else (
-                    f"arrays are filled {way}: {_FILLS[0]} values " +
-                    ("stop the original" if not tried else "give infinite results or none at all"),)
+                note = (
+                    ()
+                    if not tried and not stopped
+                    else (
+                        f"arrays are filled {way}: {_FILLS[0]} values "
+                        + ("stop the original" if not tried else "give infinite results or none at all"),
+                    )
+                )
                 return Fill(way, note)
             tried.append((way, changed, finite))
         if not tried:
-            raise RetileError(f"{self.bench.nest.address}: the original does not run on its own at "
-                              f"{_sizes_text(case)}: {stopped}")
+            raise RetileError(
+                f"{self.bench.nest.address}: the original does not run on its own at {_sizes_text(case)}: {stopped}"
+            )
         way, changed, finite = max(tried, key=lambda entry: (entry[2], entry[1]))
-        what = "no output changes" if not changed else f"{changed - finite} of {changed} changed outputs are not finite"
+        what = (
+            "no output changes"
+            if not changed
+            else f"{changed - finite} of {changed} changed outputs are not finite"
+        )
         return Fill(way, (f"arrays are filled {way}, which proves little: {what}; choose with --fill",))
 
     def _original(self, baseline: Path, program: Path, case: Case, way: str) -> Run:
         text = job(case.layout, self.bench, self.fills, way) + f"prepare {self.settings.seed}\nverify 0 0\n"
         return run(program, self.prefix, [baseline], text, self.settings.limit)
 
-    def _run_all(self, baseline: Path, candidates: list[_Candidate], cases: list[Case], fill: Fill,
-                 step: Callable[[str], None]) -> None:
+    def _run_all(
+        self,
+        baseline: Path,
+        candidates: list[_Candidate],
+        cases: list[Case],
+        fill: Fill,
+        step: Callable[[str], None],
+    ) -> None:
         """Run all cases; after a crash the rest goes on in a new process without the one that crashed."""
         left = list(cases)
         while left and any(candidate.open for candidate in candidates):
@@ -155,13 +181,15 @@ class Verifier:
             if found.finished:
                 return
             original_failed = self._blame(found, running, left[done])
-            left = left[done + 1:] if original_failed else left[done:]
+            left = left[done + 1 :] if original_failed else left[done:]
 
     def _job(self, cases: Sequence[Case], count: int, fill: Fill) -> str:
         parts = []
         for number, case in enumerate(cases):
-            parts.append(f"case {number}\n{job(case.layout, self.bench, self.fills, fill.way)}"
-                         f"prepare {self.settings.seed}\nverify 0 {count}\n")
+            parts.append(
+                f"case {number}\n{job(case.layout, self.bench, self.fills, fill.way)}"
+                f"prepare {self.settings.seed}\nverify 0 {count}\n"
+            )
         return "".join(parts)
 
     def _understand(self, found: Run, running: list[_Candidate], cases: list[Case]) -> int:
@@ -207,9 +235,15 @@ class Verifier:
         failure = candidate.failure
         if candidate.open and not cases:
             failure = "the original ran at none of the sizes"
-        return Verification(verified=candidate.open and bool(cases), cases=tuple(tuple(case.items()) for case in cases),
-                            sanitized=self.sanitize, fill=fill.way, difference=candidate.difference, failure=failure,
-                            notes=tuple(notes))
+        return Verification(
+            verified=candidate.open and bool(cases),
+            cases=tuple(tuple(case.items()) for case in cases),
+            sanitized=self.sanitize,
+            fill=fill.way,
+            difference=candidate.difference,
+            failure=failure,
+            notes=tuple(notes),
+        )
 
 
 def difference_of(bench: Bench, case: Case, words: Sequence[str]) -> Difference:
