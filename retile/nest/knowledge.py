@@ -38,6 +38,7 @@ class Knowledge:
     iterator_types: dict[str, CType] = field(default_factory=dict)
     facts: dict[Formula, None] = field(default_factory=dict)
     _ranges: dict[str, Formula] = field(default_factory=dict)
+    _conditions: dict[tuple[Any, ...], Formula | None] = field(default_factory=dict)
 
     def add_fact(self, fact: Formula) -> None:
         """Note a fact; trivial ones are dropped."""
@@ -78,6 +79,13 @@ class Knowledge:
 
     def condition(self, obligation: Obligation) -> Formula | None:
         """What must hold of the parameters; None if it always does, false (an empty ``AnyOf``) if it never can."""
+        rests_on = len(self.facts) if obligation.known is None else obligation.known
+        key = (obligation.formula, obligation.domain, obligation.iterators, rests_on)
+        if key not in self._conditions:
+            self._conditions[key] = self._condition(obligation)
+        return self._conditions[key]
+
+    def _condition(self, obligation: Obligation) -> Formula | None:
         names = formula_names(obligation.formula)
         known = self.region(obligation.domain, self.ranges(names), known=obligation.known)
         bad = (known - Region.where(obligation.formula)).without(obligation.iterators)
@@ -88,6 +96,10 @@ class Knowledge:
         context = self.region(self.ranges(bad.names()), known=obligation.known)
         good = (Region.where() - bad).relative_to(context)
         return AnyOf() if (good & context).is_empty() else good.formula()
+
+    def forget_conditions(self) -> None:
+        """Facts were taken back: what was concluded from them is not known any more."""
+        self._conditions.clear()
 
     def exact_condition(self, obligation: Obligation) -> Formula | None:
         """As ``condition``, but not a word more than is needed: for what is taken as a fact."""

@@ -325,6 +325,8 @@ class Setting:
 
     def rewind(self, mark: tuple[int, ...]) -> None:
         """Forget what was gathered since a mark, because what it was for came to nothing."""
+        if len(self.knowledge.facts) > mark[-1]:
+            self.knowledge.forget_conditions()
         for part, length in zip(self._gathered(), mark, strict=True):
             while len(part) > length:
                 part.popitem()
