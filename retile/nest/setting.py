@@ -12,6 +12,7 @@ from pycparser import c_ast, c_generator
 
 from ..affine import Affine, Formula, Symbol
 from ..model import AssumptionCode, CType, Parameter
+from ..source.kinds import ArrayOf
 from .calls import is_pure_call
 from .context import Context
 from .knowledge import Knowledge, Obligation
@@ -125,7 +126,9 @@ class Setting:
 
     def _known_before(self, node: Any, context: Context) -> bool:
         """True if a name in a definition is an iterator, never changes, or was defined before."""
-        binding = self.names.of(node)
+        binding, above = self.names.of(node), self.names.parent(node)
+        if isinstance(above, c_ast.UnaryOp) and above.op == "&" or isinstance(self.type_of(node), ArrayOf):
+            return True  # only where the object lies matters
         return (
             binding is None
             or not binding.is_object
