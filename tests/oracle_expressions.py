@@ -93,6 +93,8 @@ class Expressions(Types):
             if type(at) is not int:
                 at = at.v
             end = limit(env)
+            if at >= 1 << 63:
+                at -= 1 << 64  # what a wrapped size_t reaches on every machine with 64-bit addresses
             if end is None and abs(at) > FAR:
                 raise Undefined(f"subscript {at} of {obj.name} is far outside any object of a test")
             if end is not None and not 0 <= at < end:

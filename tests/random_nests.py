@@ -226,7 +226,7 @@ class Writer:
     def bounds(self, size: str, outer: str | None) -> tuple[str, str]:
         choose = self.choose
         if outer is None:
-            lows = ["0", "0", "0", "1", "2", "n > 3 ? 1 : 0"]
+            lows = ["0", "0", "0", "0", "1", "2", "(n < 3 ? n : 3)"]
             highs = [size, size, size, f"{size} - 1", "4", f"{size} / 2 + 1", f"({size} < 5 ? {size} : 5)"]
             return choose.pick(lows), choose.pick(highs)
         return choose.pick([
@@ -367,7 +367,7 @@ def _chunks(choose: Choices) -> list[int]:
         return []
     if choose.chance(12):
         return choose.pick([[6, 2], [5, 2], [4, 2]])
-    return [choose.pick([2, 2, 3, 3, 4, 5, 1, 64])]
+    return [choose.pick([2, 2, 2, 3, 3, 3, 4, 4, 5, 5, 1, 64])]
 
 
 def _skew(choose: Choices, terms: list[str], loops: list[Loop], labels: dict[int, str]) -> None:

@@ -19,7 +19,7 @@ from retile.model import RetileError
 from retile.trial import verify
 
 REGRESSIONS = Path(__file__).parent / "regressions"
-GROUPS, PAIRS, SECONDS = 8, 45, 10.0  # of the default run
+GROUPS, PAIRS, SECONDS = 8, 60, 7.0  # of the default run
 
 
 def keep(case: Case, name: str) -> Path:
@@ -58,12 +58,12 @@ def test_seeded_pairs(group):
         finding = checked(seed)
         seen[finding.verdict] += 1
         seen.update(finding.notes)
-        if time.monotonic() > end:
+        if time.monotonic() > end and seen["legal"] and seen["illegal"]:
             break
     assert seen["legal"] and seen["illegal"], seen  # a generator whose nests are all refused would prove nothing
 
 
-@settings(max_examples=40, deadline=None, derandomize=True,
+@settings(max_examples=20, deadline=None, derandomize=True,
           suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large])
 @given(cases())
 def test_drawn_pairs(case):
@@ -75,12 +75,12 @@ def test_drawn_pairs(case):
 def test_compiled_variants(group):
     """Some legal variants built and run against the original, sanitizers on."""
     ran, end = 0, time.monotonic() + SECONDS
-    for seed in range(500_000 + group * 1000, 500_040 + group * 1000):
+    for seed in range(500_000 + group * 1000, 500_060 + group * 1000):
         verification = compiled(seed)
         if verification is not None:
             assert verification.verified, f"seed {seed}: {verification}\n{seeded_case(seed)}"
             ran += 1
-        if ran >= 6 or time.monotonic() > end:
+        if ran >= 5 or (ran and time.monotonic() > end):
             break
     assert ran
 
