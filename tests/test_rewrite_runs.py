@@ -5,6 +5,7 @@ The body counts and mixes, so that an instance that is missing, repeated or out 
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 
 import pytest
@@ -86,15 +87,16 @@ def test_variants_compute_what_the_original_computes(name: str, type: str, loops
 
 
 def test_both_compilers_take_the_variants_without_a_warning(tmp_path: Path) -> None:
+    parts = []
+    for name, type, loops, plans in CASES:
+        folder = tmp_path / name
+        folder.mkdir()
+        case = case_of(folder, nest(type, *loops))
+        parts += [renamed(case.variant(plan, trust=True).text, "survey", f"variant{len(parts) + number}")
+                  for number, plan in enumerate(plans[:2])]
+    declared = [f"{re.search(r'void variant.*', part)[0].rstrip(' {')};\n{part}" for part in parts]  # type: ignore[index]
     for compiler in compilers():
-        for name, type, loops, plans in CASES:
-            folder = tmp_path / f"{compiler}-{name}"
-            folder.mkdir()
-            text = nest(type, *loops)
-            case = case_of(folder, text)
-            together_text = "\n".join(renamed(case.variant(plan, trust=True).text, "survey", f"variant{number}")
-                                      for number, plan in enumerate(plans[:2]))
-            compile_and_run(folder, together_text + "\nint main(void) { return 0; }\n", compiler=compiler, flags=())
+        compile_and_run(tmp_path, "\n".join(declared) + "\nint main(void) { return 0; }\n", compiler=compiler, flags=())
 
 
 EDGES = """

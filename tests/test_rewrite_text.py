@@ -249,7 +249,7 @@ def test_headers_of_a_file_without_includes_go_to_the_top(head: str, expected: s
 def test_the_remark_says_how_to_make_the_variant_again(tmp_path: Path) -> None:
     text = case_of(tmp_path, SUM).variant("k:64 i k j", remainder="peel").nest_text
     assert text.startswith("/* Loops reordered by retile: k:64 i k j; remainder peel\n")
-    assert "Made by: retile rewrite survey.c:3 'k:64 i k j' --remainder peel */" in text
+    assert "Made by: retile rewrite survey.c:3 'k:64 i k j; remainder peel' */" in text
 
 
 def test_the_remark_is_written_like_the_files_own(tmp_path: Path) -> None:
