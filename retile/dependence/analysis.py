@@ -26,11 +26,12 @@ def analyse(nest: Nest) -> Dependences:
     """All dependences of a nest, under its facts and its assumptions."""
     context = defined(nest)
     domains = {statement.id: Region.where(statement.domain) & context for statement in nest.statements}
-    analysis = _Analysis(nest, domains, original_times(nest))
+    times = original_times(nest)
+    analysis = _Analysis(nest, domains, times)
     edges = tuple(edge for storage in nest.storages for edge in analysis.edges(storage))
     reuse = tuple(edge for storage in nest.storages if storage.scalar is ScalarClass.PRIVATE
                   for edge in analysis.edges(storage, as_stored=True))
-    return Dependences(context, domains, edges, reuse, nest.assumptions)
+    return Dependences(context, domains, times, edges, reuse, nest.assumptions)
 
 
 def defined(nest: Nest) -> Region:

@@ -7,6 +7,7 @@ from functools import cached_property
 from typing import TYPE_CHECKING
 
 from ..model import Assumption
+from ..order import Coordinate
 from ..sets import Region
 
 if TYPE_CHECKING:
@@ -38,6 +39,7 @@ class Dependences:
 
     context: Region  # the parameters' values at which the original is defined and the assumptions hold
     domains: dict[str, Region]  # per statement: parameters and iterators of its instances
+    times: dict[str, tuple[Coordinate, ...]]  # per statement: its time vector in the original order
     edges: tuple[Edge, ...]
     # Pairs that only reuse the storage of a value private to an iteration; they bind a plan that splits the iteration.
     reuse: tuple[Edge, ...]

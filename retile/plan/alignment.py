@@ -15,42 +15,52 @@ from collections.abc import Callable, Iterator
 from dataclasses import replace
 
 from ..affine import Affine, bound_names
+from ..dependence import Edge
 from ..model import Alignment, Nest, Plan, Statement
 from .schedule import placed
 
 # Plans that are judged in one search; every step tries each candidate of each open slot once.
-_MOST_TRIALS = 200
+MOST_TRIALS = 150
 
-Cost = Callable[[Plan], tuple[int, frozenset[str]]]
+# Those of some edges that a placed plan reverses.
+Judged = Callable[[Plan, tuple[Edge, ...]], tuple[Edge, ...]]
 
 
-def settled(plan: Plan, nest: Nest, cost: Cost) -> Plan | None:
-    """The plan with values for missing loops under which it reverses nothing; None if none were found.
+def settled(plan: Plan, nest: Nest, edges: tuple[Edge, ...], wrong: tuple[Edge, ...], judged: Judged,
+            trials: int) -> Plan | None:
+    """The plan with values for missing loops under which it reverses none of the edges; None if none were found.
 
-    ``cost`` gives the number of reversed edges of a placed plan and the statements at their ends.
+    ``wrong``: those that it reverses as it stands.  A trial moves one statement, so only edges at it are judged again.
     """
-    current, trials = plan, 0
-    wrong, ends = cost(current)
     while wrong:
-        best: tuple[int, frozenset[str], Plan] | None = None
-        for new in _candidates(current, nest, ends):
-            trials += 1
-            if trials > _MOST_TRIALS:
+        best: tuple[Plan, tuple[Edge, ...]] | None = None
+        for new in _candidates(plan, nest, wrong):
+            trials -= 1
+            if trials < 0:
                 return None
-            aligned = (*(a for a in current.aligned if (a.statement, a.loop) != (new.statement, new.loop)), new)
-            trial = placed(replace(current, aligned=aligned), nest)
-            count, trial_ends = cost(trial)
-            if count < (best[0] if best else wrong):
-                best = count, trial_ends, trial
-            if count == 0:
+            trial = placed(replace(plan, aligned=(*_others(plan, new), new)), nest)
+            still = tuple(edge for edge in wrong if not _at(edge, new.statement))
+            still += judged(trial, tuple(edge for edge in edges if _at(edge, new.statement)))
+            if len(still) < len(best[1] if best else wrong):
+                best = trial, still
+            if not still:
                 break
         if best is None:
             return None
-        wrong, ends, current = best
-    return current
+        plan, wrong = best
+    return plan
 
 
-def _candidates(plan: Plan, nest: Nest, ends: frozenset[str]) -> Iterator[Alignment]:
+def _at(edge: Edge, statement: str) -> bool:
+    return statement in (edge.source, edge.target)
+
+
+def _others(plan: Plan, new: Alignment) -> tuple[Alignment, ...]:
+    return tuple(a for a in plan.aligned if (a.statement, a.loop) != (new.statement, new.loop))
+
+
+def _candidates(plan: Plan, nest: Nest, wrong: tuple[Edge, ...]) -> Iterator[Alignment]:
+    ends = {end for edge in wrong for end in (edge.source, edge.target)}
     chunked = {loop for term in plan.terms if term.chunk is not None for loop, _ in term.form}
     for statement in nest.statements:
         for loop in plan.moved if statement.id in ends else ():
@@ -67,7 +77,7 @@ def _values(statement: Statement, id: str, nest: Nest) -> Iterator[Affine]:
     loop = nest.loop(id)
     known = {*statement.loops, *(parameter.symbol for parameter in nest.parameters)}
     seen: set[Affine] = set()
-    near = [Affine.of(name) + shift for name in reversed(statement.loops) for shift in (0, 1, -1, 2)]
+    near = [Affine.of(name) + shift for name in reversed(statement.loops) for shift in (0, 1, -1)]
     for bound in (loop.first, loop.last):
         if isinstance(bound, Affine) and bound_names(bound) <= known:
             near += [bound - loop.step, bound, bound + loop.step]

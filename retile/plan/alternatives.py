@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import replace
 from itertools import combinations, islice, permutations, product
 
@@ -17,6 +17,9 @@ _MOST_SKEWED = 20
 _MOST_ORDERS = 12
 _MOST_FEWER = 24
 _LARGEST_SKEW = 3
+# For the first few of them other places of statements are looked for too, with so many trials each.
+_SEARCHED = 3
+_TRIALS = 30
 # Iterations per loop of which each has a value of a scalar waiting: two loops of them fill half a small first cache.
 _WAITING = 32
 
@@ -28,17 +31,26 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
     smallest factors that do (Wolf & Lam, "A data locality optimizing algorithm", 1991).
     """
     original = tuple(loop.id for loop in nest.loops)
+    candidates = tuple(_distinct(plan, (*_bounded(nest, plan), *_candidates(plan.terms, original)), original))
+    for trials, some in ((0, candidates), (_TRIALS, candidates[:_SEARCHED])):
+        for text, terms in some:
+            if is_legal(nest, dependences, replace(plan, terms=terms, places=(), aligned=(), kept=(), copied=()), trials):
+                return text + plan.text[len(plan.order_text):]
+    return None
+
+
+def _distinct(plan: Plan, candidates: Iterable[tuple[Term, ...]], original: tuple[str, ...]) \
+        -> Iterator[tuple[str, tuple[Term, ...]]]:
+    """The candidates with their texts, each once, without the plan itself and the original order."""
     seen = {plan.order_text}
-    for terms in (*_bounded(nest, plan), *_candidates(plan.terms, original)):
+    for terms in candidates:
         text = " ".join(term_text(term) for term in terms)
         bare = [term.loop for term in terms if term.chunk is None]
         changed = len(bare) < len(terms) or bare != [id for id in original if id in bare]
         if text in seen or not changed:
             continue
         seen.add(text)
-        if is_legal(nest, dependences, replace(plan, terms=terms, places=())):
-            return text + plan.text[len(plan.order_text):]
-    return None
+        yield text, terms
 
 
 def _bounded(nest: Nest, plan: Plan) -> Iterator[tuple[Term, ...]]:

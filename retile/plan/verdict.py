@@ -8,16 +8,16 @@ pair is a witness: it is shown at the smallest sizes at which it happens.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, at_most
-from ..dependence import Dependences, Edge, original_times
+from ..dependence import Dependences, Edge
 from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan, Refusal, Statement,
                      Unproven, Verdict, Violation)
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
-from .alignment import settled
+from .alignment import MOST_TRIALS, settled
 from .copies import copied, copied_scalars
 from .kept import keepable
 from .schedule import INSIDE, moments, placed, stays_whole
@@ -41,11 +41,11 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
     return Judgement(verdict, plan, violations, unproven, (), assumptions)
 
 
-def is_legal(nest: Nest, dependences: Dependences, plan: Plan) -> bool:
-    """The verdict alone, without evidence; stops at the first reversed pair."""
-    court = _settled_court(nest, dependences, plan)
+def is_legal(nest: Nest, dependences: Dependences, plan: Plan, trials: int = MOST_TRIALS) -> bool:
+    """The verdict alone, without evidence; ``trials`` limits the search for other places, 0 for none."""
+    court = _settled_court(nest, dependences, plan, trials)
     return not any(court.refusals()) and all(a.testable or a.given for a in nest.assumptions) and \
-        all(court.reversed(edge) is None for edge in court.binding_edges())
+        not court.wrong(court.binding_edges())
 
 
 def binding_edges(nest: Nest, dependences: Dependences, plan: Plan) -> tuple[Edge, ...]:
@@ -53,7 +53,7 @@ def binding_edges(nest: Nest, dependences: Dependences, plan: Plan) -> tuple[Edg
     return _Court(nest, dependences, plan).binding_edges()
 
 
-def _settled_court(nest: Nest, dependences: Dependences, plan: Plan) -> _Court:
+def _settled_court(nest: Nest, dependences: Dependences, plan: Plan, trials: int = MOST_TRIALS) -> _Court:
     """The court on a plan as it stands or, where that reverses something, with what would settle it, if found.
 
     Tried in turn: values computed again (``copies.py``), values kept in arrays (``kept.py``), statements aligned with
@@ -63,9 +63,12 @@ def _settled_court(nest: Nest, dependences: Dependences, plan: Plan) -> _Court:
     court = first
     if first.reuses_reversed():
         court = _Court(nest, dependences, replace(first.plan, kept=keepable(nest, first.plan)))
-    if all(set(plan.moved) <= set(statement.loops) for statement in nest.statements) or not court.cost()[0]:
-        return court if not court.cost()[0] else first
-    better = settled(court.plan, nest, lambda trial: _Court(nest, dependences, trial).cost())
+    edges = court.binding_edges()
+    wrong = court.wrong(edges)
+    if not wrong or not trials or all(set(plan.moved) <= set(statement.loops) for statement in nest.statements):
+        return first if wrong else court
+    better = settled(court.plan, nest, edges, wrong,
+                     lambda trial, some: _Court(nest, dependences, trial).wrong(some), trials)
     return first if better is None else _Court(nest, dependences, better)
 
 
@@ -80,9 +83,9 @@ class _Court:
     def __init__(self, nest: Nest, dependences: Dependences, plan: Plan) -> None:
         self._nest = nest
         self._dependences = dependences
-        original = original_times(nest)
         self._times: dict[str, tuple[Coordinate, ...]] = {
-            statement.id: (*moments(plan, statement.id), *original[statement.id]) for statement in nest.statements}
+            statement.id: (*moments(plan, statement.id), *dependences.times[statement.id])
+            for statement in nest.statements}
         self.plan = plan
         self._found: dict[int, _Reversed | None] = {}
         self._copied = copied_scalars(nest, plan)
@@ -90,10 +93,9 @@ class _Court:
         self._split = {name for name in {edge.storage for edge in dependences.reuse} - self._copied - set(plan.kept)
                        if not stays_whole(plan, nest.storage(name).private_to)}
 
-    def cost(self) -> tuple[int, frozenset[str]]:
-        """How many edges the plan reverses, and the statements at their ends."""
-        wrong = [edge for edge in self.binding_edges() if self.reversed(edge) is not None]
-        return len(wrong), frozenset(end for edge in wrong for end in (edge.source, edge.target))
+    def wrong(self, edges: Iterable[Edge]) -> tuple[Edge, ...]:
+        """Those of the edges that the plan reverses."""
+        return tuple(edge for edge in edges if self.reversed(edge) is not None)
 
     def _reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> tuple[int, Region] | None:
         """Pairs whose target the plan does not run after the source, with the level that decides; None if there are none."""
@@ -175,7 +177,9 @@ class _Court:
         for assumption in self._nest.assumptions:
             if not assumption.testable and not assumption.given:
                 first = self._nest.statements[0].id
-                yield Unproven(first, first, "the code does not state a fact that the verdict needs", assumption.text)
+                names = ",".join(name.removesuffix("[]") for name in assumption.storages)
+                given = f" (if you know it: --distinct {names})" if names else ""
+                yield Unproven(first, first, "the code does not state a fact that the verdict needs", assumption.text + given)
 
     def needed_assumptions(self) -> Iterator[Assumption]:
         """The assumptions without which the plan could reverse a pair of accesses, or the loops could run otherwise."""
@@ -211,7 +215,7 @@ class _Court:
         pairs = domain & self._dependences.domains[target.id].renamed({loop: prime(loop) for loop in target.loops})
         if pairs.is_empty():
             return False
-        original = original_times(self._nest)
+        original = self._dependences.times
         later = primed_vector(original[target.id], target.loops)
         strict = min(len(later), len(original[source.id]))
         return any(self._reversed_pairs(found, source, target) is not None

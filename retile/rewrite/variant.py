@@ -204,21 +204,30 @@ class _Order:
 
     def _remark(self, assumptions: tuple[Assumption, ...], tested: bool) -> list[str]:
         """The comment above the variant: plan, options, assumptions, and how to make it again."""
-        options = [f"remainder {self.remainder}"] if self.remainder != "clamp" else []
-        lines = [f"Loops reordered by retile: {'; '.join([self.plan.order_text, *options])}"]
-        if assumptions:
-            word = "Tested here" if tested else "Assumed"
-            facts = "; ".join(dict.fromkeys(assumption.text.rstrip(".") for assumption in assumptions))
-            lines += textwrap.wrap(f"{word}: {facts}.", WIDTH, break_long_words=False, break_on_hyphens=False)
+        lines = [f"Loops reordered by retile: {self._line}"]
+        if dict(self.plan.options).get("reassociate") == "yes":
+            lines.append("Updates x = x op e run in another order, so that they may round differently.")
+        for word, wanted in (("Tested here", True), ("Assumed", False)):
+            facts = dict.fromkeys(a.text.rstrip(".") for a in assumptions if (tested and a.testable) == wanted)
+            if facts:
+                lines += textwrap.wrap(f"{word}: {'; '.join(facts)}.", WIDTH, break_long_words=False, break_on_hyphens=False)
         return [*lines, f"Made by: {self._command(assumptions)}"]
+
+    @property
+    def _line(self) -> str:
+        """The variant's one line: the plan with all options that are not the default."""
+        options = {"remainder": self.remainder, **dict(self.plan.options)}
+        named = [f"{word} {value}" for word, value in options.items() if value not in ("clamp", "no")]
+        return self.plan.order_text + (f"; {', '.join(named)}" if named else "")
 
     def _command(self, assumptions: tuple[Assumption, ...]) -> str:
         file = self.nest.address.file
         if os.path.isabs(file) or file.startswith(".."):
             file = os.path.basename(file)
-        words = ["retile", "rewrite", str(replace(self.nest.address, file=file)), self.plan.order_text]
-        if self.remainder != "clamp":
-            words += ["--remainder", self.remainder]
+        words = ["retile", "rewrite", str(replace(self.nest.address, file=file)), self._line]
+        for given in (a for a in self.nest.assumptions if a.given):
+            names = ",".join(name.removesuffix("[]") for name in given.storages)
+            words += ["--distinct", names] if names else ["--assume", given.text]
         if self.trust and assumptions:
             words.append("--trust")
         return shlex.join([*words, *self.source.call.flags])
