@@ -65,19 +65,22 @@ def _candidates(plan: Plan, nest: Nest, wrong: tuple[Edge, ...]) -> Iterator[Ali
     for statement in nest.statements:
         for loop in plan.moved if statement.id in ends else ():
             if loop not in statement.loops:
-                for value in _values(statement, loop, nest):
+                for value in _values(statement, loop, nest, plan.moved):
                     for chunks_only in (True, False) if loop in chunked else (False,):
                         candidate = Alignment(statement.id, loop, value, chunks_only)
                         if candidate not in plan.aligned:
                             yield candidate
 
 
-def _values(statement: Statement, id: str, nest: Nest) -> Iterator[Affine]:
-    """Forms of the statement's iterators that lie at or next to the loop's bounds."""
+def _values(statement: Statement, id: str, nest: Nest, moved: tuple[str, ...]) -> Iterator[Affine]:
+    """Forms of the statement's iterators that lie at or next to the loop's bounds.
+
+    Loops that the plan does not move run inside the statement's piece of text: one piece stands at one value.
+    """
     loop = nest.loop(id)
-    known = {*statement.loops, *(parameter.symbol for parameter in nest.parameters)}
+    known = {*(name for name in statement.loops if name in moved), *(parameter.symbol for parameter in nest.parameters)}
     seen: set[Affine] = set()
-    near = [Affine.of(name) + shift for name in reversed(statement.loops) for shift in (0, 1, -1)]
+    near = [Affine.of(name) + shift for name in reversed(statement.loops) if name in moved for shift in (0, 1, -1)]
     for bound in (loop.first, loop.last):
         if isinstance(bound, Affine) and bound_names(bound) <= known:
             near += [bound - loop.step, bound, bound + loop.step]
