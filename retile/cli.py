@@ -1,7 +1,7 @@
 """The command line: options, exit statuses and messages.  Each command loads its own module when it is called.
 
-Exit statuses: 0 done; 1 the answer is no; 2 the call is wrong or a file cannot be used, with nothing on standard output;
-130 interrupted.  An error of retile itself ends with 70 (``EX_SOFTWARE`` of the BSD header sysexits.h).
+Exit statuses: 0 done; 1 the answer is no; 2 the call is wrong or a file cannot be used, with nothing on standard
+output; 130 interrupted.  An error of retile itself ends with 70 (``EX_SOFTWARE`` of the BSD header sysexits.h).
 """
 
 from __future__ import annotations
@@ -162,7 +162,8 @@ def nests(files: tuple[str, ...], every: bool, as_json: bool, **given: Any) -> i
 @click.option("--graph", metavar="FILE", help="Draw the graph: FILE.svg for a picture, FILE.dot for Graphviz.")
 @click.option("--space", metavar="FILE", help="Draw the iterations of the deepest statement into FILE.svg.")
 @click.option("--plan", metavar="PLAN", help="With --space: number the iterations in the order of a plan.")
-@click.option("--set", "sizes", multiple=True, metavar="NAME=VALUE", help="With --space: a size, such as n=7 (repeatable).")
+@click.option("--set", "sizes", multiple=True, metavar="NAME=VALUE",
+              help="With --space: a size, such as n=7 (repeatable).")
 @_fact_options
 @_compiler_options
 @_json

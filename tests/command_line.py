@@ -33,7 +33,7 @@ def retile(*arguments: str | Path, cwd: Path = ROOT, seconds: float = 60, **envi
 
 
 def line_of(sample: str, function: str, text: str = r"\bfor\b") -> int:
-    """The line of the first match of a pattern behind a function's name, so that edits of a sample do not break tests."""
+    """The line of the first match of a pattern behind a function's name; edits of a sample do not break tests."""
     lines = (SAMPLES / sample).read_text(encoding="utf-8").splitlines()
     start = next(number for number, line in enumerate(lines) if f"{function}(" in line or f"{function} (" in line)
     return next(number for number, line in enumerate(lines[start:], start + 1) if re.search(text, line.split("/*")[0]))

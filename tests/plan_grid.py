@@ -32,7 +32,8 @@ def _of_loops(names: tuple[str, ...]) -> list[str]:
     chunked = [f"{name}:{size} {order}" for order in orders[:3] for name, size in zip(names, _CHUNKS)]
     blocks = [" ".join(f"{name}:{size}" for name, size in zip(order, _CHUNKS)) + " " + original
               for order in islice(permutations(names), 2)]
-    levels = [f"{names[0]}:6 {names[-1]}:4 {names[0]}:3 {original}"] if len(names) > 1 else [f"{names[0]}:6 {names[0]}:4 {original}"]
+    between = f"{names[-1]}:4 " if len(names) > 1 else ""
+    levels = [f"{names[0]}:6 {between}{names[0]}:3 {original}"]
     skewed = [f"({names[0]}+{names[1]}):3 {original}", f"({names[0]}+{names[1]}):2 {names[1]}:4 {original}"] \
         if len(names) > 1 else []
     return [*orders, *chunked, *blocks, *levels, *skewed]

@@ -1,6 +1,6 @@
 """The examples of the README: find them, run them, and (``python tests/readme.py``) write their output anew.
 
-An example is a fenced block of the language ``console``: lines that begin with ``$ `` are commands, the lines behind them
+An example is a fenced block of the language ``console``: lines that begin with ``$ `` are commands, those behind them
 their output.  In a block ``console measured`` the output depends on the machine.
 """
 

@@ -50,7 +50,8 @@ def test_the_python_example_runs():
     done = subprocess.run([sys.executable, "-c", block.replace('"n": 200', '"n": 40')], cwd=ROOT, capture_output=True,
                           text=True, timeout=300)
     assert (done.returncode, done.stderr) == (0, "")
-    assert "legal ['weights and beams do not overlap'" in done.stdout and "\n+++ b/samples_c/beamform.c\n" in done.stdout
+    assert "legal ['weights and beams do not overlap'" in done.stdout
+    assert "\n+++ b/samples_c/beamform.c\n" in done.stdout
 
 
 def test_the_two_commands_stand_at_the_top():
@@ -63,7 +64,8 @@ def test_the_two_commands_stand_at_the_top():
 
 def test_the_readme_lists_the_codes_of_refusals():
     part = TEXT.split("### What is refused")[1].split("\n## ")[0]
-    listed = {code for row in re.findall(r"^\| (`.*?) \|", part, re.MULTILINE) for code in re.findall(r"`([a-z-]+)`", row)}
+    rows = re.findall(r"^\| (`.*?) \|", part, re.MULTILINE)
+    listed = {code for row in rows for code in re.findall(r"`([a-z-]+)`", row)}
     files = [*(ROOT / "retile").glob("nest/*.py"), *(ROOT / "retile").glob("plan/*.py")]
     texts = [file.read_text(encoding="utf-8") for file in files]
     assert {code for text in texts for code in codes_in(text)} - listed == set()

@@ -42,7 +42,8 @@ class Measuring:
     result: str | None  # file for the records; None for one named after the time
 
 
-def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measuring: Measuring, *, as_json: bool) -> int:
+def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measuring: Measuring, *,
+        as_json: bool) -> int:
     """Verify and time the variants of plans; 1 if a plan is not legal or a variant is not verified."""
     if not plans:
         raise RetileError("measure needs at least one PLAN, for example 'i j' for the original order of two loops.")

@@ -13,8 +13,8 @@ from ..report.table import Look
 def look_of(stream: IO[str]) -> Look:
     """How lines should look on a stream: width and colour of a terminal, plain and unbroken elsewhere.
 
-    Honours the conventions of ``COLUMNS`` (a width, also for files and pipes) and of ``NO_COLOR`` (any value that is not
-    empty turns colour off).
+    Honours the conventions of ``COLUMNS`` (a width, also for files and pipes) and of ``NO_COLOR`` (any value that is
+    not empty turns colour off).
     """
     if not stream.isatty():
         columns = os.environ.get("COLUMNS", "")

@@ -105,7 +105,7 @@ def of_judgement(address: Address, judgement: Judgement) -> Document:
 
 
 def of_places(plan: Plan) -> Document:
-    """Where statements stand that the text has outside a loop of the plan: at which value, or again in every iteration."""
+    """Where statements stand that the text has outside a loop of the plan: at a value, or again in every iteration."""
     return {"places": [{"statement": a.statement, "loop": a.loop, "value": str(a.value), "chunks_only": a.chunks_only}
                        for a in plan.aligned],
             "repeated": list(plan.copied), "kept": list(plan.kept)}
@@ -148,5 +148,5 @@ def of_measure_refused(address: Address, sizes: Mapping[str, int], plans: Iterab
     trials = [{**of_plan(plan), "verdict": "legal" if judgement is None else judgement.verdict.value,
                "violations": [of_violation(violation) for violation in judgement.violations] if judgement else [],
                "verified": False, "identical": False, "seconds": None, "speedup": None} for plan, judgement in plans]
-    return {"address": str(address), "host": None, "sizes": dict(sizes), "baseline": None, "trials": trials, "best": None,
-            "refusals": [of_refusal(refusal) for refusal in refusals]}
+    return {"address": str(address), "host": None, "sizes": dict(sizes), "baseline": None, "trials": trials,
+            "best": None, "refusals": [of_refusal(refusal) for refusal in refusals]}

@@ -17,7 +17,8 @@ def host_lines(host: Host, look: Look) -> list[str]:
     rows += [(f"level {cache.level} {cache.kind} cache", _cache(cache), cache.origin) for cache in host.caches]
     rows += [("page", *_fact(host.page_bytes, " bytes")),
              *((f"compiler {c.command}", c.version or c.path, c.origin) for c in host.compilers),
-             ("clock step", *_fact(_nanoseconds(host.timer_seconds), " ns")), ("virtual machine", *_fact(host.virtualised)),
+             ("clock step", *_fact(_nanoseconds(host.timer_seconds), " ns")),
+             ("virtual machine", *_fact(host.virtualised)),
              ("Python", *_fact(host.python)), ("system", *_fact(host.system))]
     return table((Column("what", whole=True), Column("found"), Column("from")), rows, look)
 

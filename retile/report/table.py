@@ -26,7 +26,8 @@ class Column:
     style: str = ""  # a style of rich, e.g. ``bold``
 
 
-def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], look: Look, *, best: int | None = None) -> list[str]:
+def table(columns: Sequence[Column], rows: Iterable[Sequence[str]], look: Look, *,
+          best: int | None = None) -> list[str]:
     """The lines of a table; ``best`` is the number of a row to stress.  No line has blanks at its end."""
     from rich.box import Box
     from rich.console import Console

@@ -28,8 +28,8 @@ def campaign_lines(campaign: Campaign, look: Look) -> list[str]:
     best = next((number for number, trial in enumerate(campaign.trials, 1) if trial is campaign.best), None)
     lines += table(_COLUMNS, rows, look, best=best)
     lines += ["", *paragraph("Medians with their 95 % intervals. verified: built without contraction of floating-point "
-                             "operations, all outputs are the same, bit for bit, at every size tried. identical: so are "
-                             "those of the builds that were timed.", look)]
+                             "operations, all outputs are the same, bit for bit, at every size tried. identical: so "
+                             "are those of the builds that were timed.", look)]
     lines += _remarks(campaign, look)
     for note in campaign.notes:
         lines += paragraph(note, look, "Note: ", "      ")

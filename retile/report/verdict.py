@@ -106,7 +106,8 @@ def assumption_lines(assumptions: Iterable[Assumption], look: Look) -> list[str]
     for assumption in assumptions:
         lines += paragraph(f"{assumption.text} [{assumption.code.value}]", look, "  - ", "    ")
     if all(assumption.testable for assumption in assumptions):
-        lines += paragraph("The variant tests this when the function is called, and else runs the original loops.", look)
+        lines += paragraph("The variant tests this when the function is called, and else runs the original loops.",
+                           look)
     return lines
 
 
