@@ -202,11 +202,13 @@ class Assumption:
     condition: Formula | None = None  # the fact over parameters, for all codes but no-overlap, unchanged and other
     storages: tuple[str, ...] = ()  # the two that must not overlap, for no-overlap and unchanged; the one whose rows must not
     given: bool = False  # the user vouches for it
+    ranges_known: bool = True  # for two storages: which of their cells the nest touches is known ahead of it
 
     @property
     def testable(self) -> bool:
         """True if the variant can test it when the function is called."""
-        return self.code is not AssumptionCode.OTHER and (self.condition is not None or len(self.storages) == 2)
+        return self.code is not AssumptionCode.OTHER and \
+            (self.condition is not None or len(self.storages) == 2 and self.ranges_known)
 
 
 @dataclass(frozen=True)

@@ -2,10 +2,16 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
 from rewriting import case_of, compile_and_run, together
+
+from retile.dependence import analyse
+from retile.model import Verdict
+from retile.nest.given import with_given
+from retile.plan import is_legal, judge, parse_plan
 
 FLAT = """#include <stddef.h>
 void survey(int n, int m, int ld, double *to, const double *from)
@@ -175,3 +181,72 @@ int main(void) {
 }
 """
     compile_and_run(tmp_path, together(text, [variant.text], main))
+
+
+# A bound that is read from memory which the stores may reach: what follows it, and its text in a call.
+HELD = {
+    "member of a structure without a tag":
+        ("typedef struct { int rows, pad; } limits;", "const limits *g", "g->rows", "sizeof *g"),
+    "element of an array": ("", "const int *limits", "limits[1]", "sizeof(int)"),
+    "member of an element": ("struct two { int pad, rows; };", "const struct two *t", "t[1].rows", "sizeof(int)"),
+}
+
+
+@pytest.mark.parametrize(("declared", "argument", "bound", "size"), HELD.values(), ids=HELD.keys())
+def test_a_bound_in_memory_is_compared_with_what_is_stored(declared: str, argument: str, bound: str, size: str,
+                                                           tmp_path: Path) -> None:
+    """The stores run over the memory of the bound, cell by cell: the variant must notice wherever it lies."""
+    text = f"""void survey({argument}, int m, int ld, int *to)
+{{
+    for (int r = 0; r < {bound}; r++)
+        for (int c = 0; c < m; c++)
+            to[r * ld + c] = r + c;
+}}
+"""
+    case = case_of(tmp_path, f"{declared}\n{text}" if declared else text)
+    variant = case.variant("c r")
+    assert size in variant.nest_text and "do not change" in variant.nest_text
+    main = """
+static int one[64], two[64];
+int main(void) {
+    for (int at = 0; at < 40; at++)
+        for (int k = 0; k < 8; k++) {
+            for (int i = 0; i < 64; i++)
+                one[i] = two[i] = 5;
+            original((const void *)(one + at), 4, 5, one + 12 + k);
+            variant0((const void *)(two + at), 4, 5, two + 12 + k);
+            if (memcmp(one, two, sizeof one)) { printf("differ: %d %d\\n", at, k); return 1; }
+        }
+    return 0;
+}
+"""
+    body = variant.text.replace(declared + "\n", "") if declared else variant.text
+    compile_and_run(tmp_path, declared + "\n" + together(text, [body], main), flags=("-fno-strict-aliasing",))
+
+
+GATHER = """void survey(int n, int m, int ld, double *to, const double *from, const int *at)
+{
+    for (int r = 0; r < n; r++)
+        for (int c = 0; c < m; c++)
+            to[r * ld + c] = from[at[c]];
+}
+"""
+
+
+def test_cells_that_nobody_knows_ahead_leave_the_verdict_open(tmp_path: Path) -> None:
+    case = case_of(tmp_path, GATHER)
+    plan = parse_plan("c r", case.nest)
+    judgement = judge(case.nest, analyse(case.nest), plan)
+    assert judgement.verdict is Verdict.UNPROVEN and not is_legal(case.nest, analyse(case.nest), plan)
+    (open_question,) = judgement.unproven
+    assert "--distinct from,to" in open_question.needs and "restrict" in open_question.needs
+    same = judge(case.nest, analyse(case.nest), parse_plan("r c", case.nest))
+    assert same.verdict is Verdict.LEGAL  # nothing changes places
+
+
+def test_what_the_user_gives_settles_it(tmp_path: Path) -> None:
+    case = case_of(tmp_path, GATHER)
+    given = replace(case, nest=with_given(case.nest, (), ("from,to",)))
+    text = given.variant("c r").nest_text
+    assert "Assumed: from and to do not overlap" in text and "at_end <= to_begin" in text
+    assert "from_begin" not in text and "--distinct from,to" in text

@@ -15,6 +15,7 @@ from pycparser import c_ast
 from ..model import Assumption, AssumptionCode, ScalarClass, Storage, StorageKind
 from ..source.kinds import PointerTo
 from .places import Place, Root
+from .polynomial import Poly
 from .refusals import refusal
 from .scopes import Binding
 from .setting import Setting
@@ -107,8 +108,9 @@ class _Overlaps:
         """The structure, or the single cell, that a bound or pointer is read from."""
         root, types = place.root, self._setting.types
         scope = root.binding.kind if root.binding is not None else "argument"
-        if place.members and root.kind is StorageKind.POINTER and root.text:
-            size = types.size_of(place.step_type) if len(place.indices) == 1 else None
+        whole = len(place.indices) == 1 and place.indices[0].poly == Poly()  # not of t[k].n, nor of t->of[k].n
+        if place.members and whole and root.kind is StorageKind.POINTER and root.text:
+            size = types.size_of(place.step_type)
             kind = getattr(place.step_type, "kind", "struct")
             spelling = f"{kind} {getattr(place.step_type, 'tag', None) or ''}".strip()
             return Storage(

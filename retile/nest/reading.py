@@ -7,6 +7,7 @@ from typing import Any
 from ..affine import AnyOf, Formula
 from ..model import Access, Address, Assumption, AssumptionCode, LoopText, Nest, Refusal, Statement
 from ..source import Source
+from ..touched import with_known_ranges
 from .expressions import Expressions
 from .headers import loop_text
 from .knowledge import Knowledge, Obligation
@@ -130,7 +131,7 @@ class NestReader:
         span = self._source.span(self._nest)
         assert span is not None
         statements = tuple(self._statement(number, walk, stored) for number in range(len(walk.statements)))
-        return Nest(
+        return with_known_ranges(Nest(
             self._address,
             self._function.decl.name,
             span,
@@ -142,7 +143,7 @@ class NestReader:
             tuple(setting.knowledge.facts),
             assumptions,
             self._source.identifiers,
-        )
+        ))
 
     def _statement(self, number: int, walk: Walk, stored: Stored) -> Statement:
         raw = walk.statements[number]

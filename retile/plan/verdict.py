@@ -17,10 +17,11 @@ from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan
                      Unproven, Verdict, Violation)
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
+from ..touched import touched
 from .alignment import MOST_TRIALS, settled
 from .copies import copied, copied_scalars
 from .kept import keepable
-from .schedule import INSIDE, moments, placed, stays_whole
+from .schedule import INSIDE, merged, moments, placed, stays_whole
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
 _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
@@ -44,8 +45,7 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
 def is_legal(nest: Nest, dependences: Dependences, plan: Plan, trials: int = MOST_TRIALS) -> bool:
     """The verdict alone, without evidence; ``trials`` limits the search for other places, 0 for none."""
     court = _settled_court(nest, dependences, plan, trials)
-    return not any(court.refusals()) and all(a.testable or a.given for a in nest.assumptions) and \
-        not court.wrong(court.binding_edges())
+    return not any(court.refusals()) and not any(court.unsettled()) and not court.wrong(court.binding_edges())
 
 
 def binding_edges(nest: Nest, dependences: Dependences, plan: Plan) -> tuple[Edge, ...]:
@@ -129,7 +129,7 @@ class _Court:
                 if term.chunk is not None or place.position != INSIDE:
                     continue
                 other = seen.setdefault(self._nest.loop(term.loop).iterator, term.loop)
-                if other != term.loop:
+                if other not in (term.loop, merged(self.plan, self._nest, statement.id).get(term.loop)):
                     yield Refusal(statement.line, statement.span.column, "shared-iterator",
                                   f"the plan runs this line inside the loops {other} and {term.loop}, which use one variable; "
                                   "give one of them a variable of its own")
@@ -174,22 +174,39 @@ class _Court:
                                f"a subscript of {edge.storage} is not affine: the access may touch any cell",
                                f"that the cells of {edge.storage} which line {self._line(edge.source)} and line "
                                f"{self._line(edge.target)} touch are different ones")
+        for assumption in self.unsettled():
+            first = self._nest.statements[0].id
+            yield Unproven(first, first, *self._lacking(assumption))
+
+    def unsettled(self) -> Iterator[Assumption]:
+        """The assumptions that the plan needs, nobody can test, and the user has not given."""
+        reorders: dict[tuple[str, str], bool] = {}
         for assumption in self._nest.assumptions:
-            if not assumption.testable and not assumption.given:
-                first = self._nest.statements[0].id
-                names = ",".join(name.removesuffix("[]") for name in assumption.storages)
-                given = f" (if you know it: --distinct {names})" if names else ""
-                yield Unproven(first, first, "the code does not state a fact that the verdict needs", assumption.text + given)
+            if not assumption.testable and not assumption.given and \
+                    (assumption.code is AssumptionCode.OTHER or self._needs(assumption, reorders)):
+                yield assumption
+
+    def _lacking(self, assumption: Assumption) -> tuple[str, str]:
+        """Why nobody can test an assumption, and what would settle it."""
+        names = [name.removesuffix("[]") for name in assumption.storages]
+        given = f"if you know it: --distinct {','.join(names)}"
+        if assumption.ranges_known:
+            return "the code does not state a fact that the verdict needs", assumption.text + (f" ({given})" if names else "")
+        unknown = [name for name in names if touched(self._nest, self._nest.storage(name)) is None]
+        return (f"which cells of {' and '.join(unknown)} the nest touches is not known before it runs, so that no test can "
+                f"tell whether {' and '.join(names)} overlap",
+                f"{assumption.text} (declare the pointers restrict or, {given})")
 
     def needed_assumptions(self) -> Iterator[Assumption]:
         """The assumptions without which the plan could reverse a pair of accesses, or the loops could run otherwise."""
         reorders: dict[tuple[str, str], bool] = {}
-        for assumption in self._nest.assumptions:
-            if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
-                if self._could_reverse(assumption.storages[0], assumption.storages[1], reorders):
-                    yield assumption
-            elif not self.is_identity():
-                yield assumption  # row lengths too: the loops' bounds are built under them
+        yield from (assumption for assumption in self._nest.assumptions if self._needs(assumption, reorders))
+
+    def _needs(self, assumption: Assumption, reorders: dict[tuple[str, str], bool]) -> bool:
+        """True if the plan rests on an assumption; row lengths too, since the loops' bounds are built under them."""
+        if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
+            return self._could_reverse(*assumption.storages, reorders)
+        return not self.is_identity()
 
     def is_identity(self) -> bool:
         """True if the plan is the original order, loop for loop."""

@@ -13,16 +13,14 @@ from dataclasses import dataclass
 
 from ..affine import Affine, AllOf, Constraint, Floor, equal
 from ..model import (
-    Access,
     Assumption,
     AssumptionCode,
     CType,
     Nest,
     RetileError,
-    Statement,
     Storage,
 )
-from ..sets import Region
+from ..touched import touched
 from .expression import (
     PRODUCT,
     UNARY,
@@ -36,6 +34,7 @@ from .expression import (
 from .names import Names
 
 ADDRESS = CType("uintptr_t", 64, False)
+_NAMED_TYPE = re.compile(r"(?:struct|union|enum) \w+|(?!(?:struct|union|enum|void)\b)[A-Za-z_]\w*")
 
 
 @dataclass(frozen=True)
@@ -51,6 +50,8 @@ def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, name
     ranges = _Ranges(nest, scope, names)
     conditions: list[str] = []
     for assumption in assumptions:
+        if assumption.given and not assumption.testable:
+            continue
         if assumption.code in (AssumptionCode.NO_OVERLAP, AssumptionCode.UNCHANGED) and len(assumption.storages) == 2:
             conditions.append(ranges.apart(*assumption.storages, assumption))
         elif assumption.condition is not None:
@@ -81,7 +82,7 @@ class _Ranges:
         if name not in self._named:
             storage = self._nest.storage(name)
             low, high = self._extent(storage, assumption)
-            word = "_".join(re.findall(r"\w+", name))
+            word = "_".join(re.findall(r"\w+", name)) + ("_pointer" if name.startswith("&") else "")
             begin, end = self._names.fresh(f"{word}_begin"), self._names.fresh(f"{word}_end")
             base = f"(uintptr_t){written(storage.pointer_text or name, ADDRESS).at(UNARY)}"
             size = self._size(storage)
@@ -101,29 +102,24 @@ class _Ranges:
     def _size(storage: Storage) -> str:
         if isinstance(storage.element, CType) and storage.element_bytes in (None, storage.element.bits // 8):
             return f"sizeof({storage.element.spelling})"
-        if isinstance(storage.element, str) and re.fullmatch(r"(?:(?:struct|union|enum) )?[A-Za-z_]\w*", storage.element):
+        if isinstance(storage.element, str) and re.fullmatch(_NAMED_TYPE, storage.element):
             return f"sizeof({storage.element})"
+        if not storage.shape and storage.pointer_text:  # a structure without a name, a pointer
+            text = storage.pointer_text
+            return f"sizeof {text[1:]}" if re.fullmatch(r"&\w+", text) else f"sizeof({text[1:]})" if text.startswith("&") \
+                else f"sizeof *{written(text, ADDRESS).at(UNARY)}"
         return str(storage.element_bytes)
 
     def _extent(self, storage: Storage, assumption: Assumption) -> tuple[str, str]:
         """First touched element and the one behind the last, as sums of uintptr_t."""
-        if storage.element_bytes is None and not isinstance(storage.element, CType):
+        found = touched(self._nest, storage, self._scope.region)
+        if found is None:
             raise self._untestable(storage, assumption)
-        uses = [(statement, access) for statement in self._nest.statements for access in statement.accesses
-                if access.storage == storage.name]
-        if not storage.shape and all(access.subscripts == () for _, access in uses):
-            return "0", "1"
-        if any(access.subscripts is None for _, access in uses) or not uses:
-            return "0", self._whole(storage, assumption)
-        dimensions = len(uses[0][1].subscripts or ())
-        lows, highs = [], []
-        for dimension in range(dimensions):
-            low, high = self._span(uses, dimension)
-            if low is None or high is None:
-                raise self._untestable(storage, assumption)
-            lows.append(low)
-            highs.append(high)
-        strides = self._strides(storage, dimensions, assumption)
+        if not found.lows:
+            extents = [extent for extent in storage.shape if extent is not None]
+            return "0", " * ".join(map(self._modular, extents)) or "1"
+        lows, highs, dimensions = list(found.lows), list(found.highs), len(found.lows)
+        strides = self._strides(storage, dimensions)
         highs[-1] = highs[-1] + 1
         if dimensions > 1 and self._is_extent(highs[-1], strides[-2]):  # whole rows: (n - 1) * m + m
             highs[-2:] = [highs[-2] + 1, Affine()]
@@ -136,33 +132,9 @@ class _Ranges:
     def _untestable(self, storage: Storage, assumption: Assumption) -> RetileError:
         return RetileError(f"{self._nest.address}: which cells of '{storage.name}' the nest touches is not known, so that "
                            f"'{assumption.text}' cannot be tested when the function is called.\n"
-                           "Declare the pointers 'restrict', or give --trust if you know that it holds.")
+                           "Declare the pointers 'restrict', or give --distinct if you know that it holds.")
 
-    def _whole(self, storage: Storage, assumption: Assumption) -> str:
-        if not storage.shape or any(extent is None for extent in storage.shape):
-            raise self._untestable(storage, assumption)
-        return " * ".join(self._modular(extent) for extent in storage.shape if extent is not None)
-
-    def _span(self, uses: list[tuple[Statement, Access]], dimension: int) -> tuple[Affine | None, Affine | None]:
-        """A lower and an upper bound of a subscript over all instances, in parameters."""
-        parameters = [parameter.symbol for parameter in self._nest.parameters]
-        values = Region.union(
-            (self._scope.region & Region.where(statement.domain, equal(Affine.of("~v"), access.subscripts[dimension])))
-            .only([*parameters, "~v"]) for statement, access in uses if access.subscripts is not None)
-        lows, highs = [], []
-        for piece in values.hull().relative_to(self._scope.region).pieces() + values.hull().pieces():
-            for constraint in piece:
-                factor = constraint.form.coefficient("~v")
-                rest = constraint.form - Affine.of("~v") * factor
-                if not factor or "~v" in rest.names():
-                    continue
-                if factor > 0 or constraint.equality:
-                    lows.append(_divided(-rest if factor > 0 else rest, abs(factor), up=True))
-                if factor < 0 or constraint.equality:
-                    highs.append(_divided(rest if factor < 0 else -rest, abs(factor), up=False))
-        return _simplest(lows), _simplest(highs)
-
-    def _strides(self, storage: Storage, dimensions: int, assumption: Assumption) -> list[Expression | None]:
+    def _strides(self, storage: Storage, dimensions: int) -> list[Expression | None]:
         """The distance in elements between two values of each subscript; None for 1."""
         if storage.strides:
             return [self._stride(text) for text in storage.strides]
@@ -170,8 +142,7 @@ class _Ranges:
         strides: list[Expression | None] = [None]
         factors: list[str] = []
         for extent in reversed(extents):
-            if extent is None:
-                raise self._untestable(storage, assumption)
+            assert extent is not None
             text = self._sum(extent)
             factors.insert(0, text if len(extent.terms) + bool(extent.constant) == 1 else f"(uintptr_t)({text})")
             strides.insert(0, Expression(" * ".join(factors), ADDRESS, PRODUCT if len(factors) > 1 else UNARY))
@@ -235,12 +206,3 @@ class _Ranges:
         except NoRoom:
             raise RetileError(f"{self._nest.address}: the addresses that the nest touches cannot be computed without "
                               "overflow; give --trust, or declare the pointers 'restrict'.") from None
-
-
-def _divided(form: Affine, by: int, up: bool) -> Affine:
-    return (form + by - 1).floor_div(by) if up else form.floor_div(by)
-
-
-def _simplest(forms: list[Affine]) -> Affine | None:
-    """Any of the bounds is right; the one with the fewest names is the easiest to read."""
-    return min(forms, key=lambda form: (len(form.names()), len(form.terms), str(form)), default=None)

@@ -26,7 +26,7 @@ UNSIGNED_LONG_LONG = CType("unsigned long long", 64, False)
 # How strongly an expression holds together, weakest first.
 CHOICE, OR, AND, EQUALITY, RELATION, SUM, PRODUCT, UNARY, ATOM = range(9)
 
-_ATOM = re.compile(r"(?:\w+|\w+(?:(?:->|\.)\w+)+|\([^()]*\))\Z")
+_ATOM = re.compile(r"(?:\w+(?:(?:->|\.)\w+|\[\w+\])*|\([^()]*\))\Z")
 _NAME = r"\w+(?:(?:->|\.)\w+)*"
 _SIMPLE_SUM = re.compile(rf"{_NAME}(?:\s*[-+*]\s*{_NAME})*\Z")
 
@@ -52,6 +52,8 @@ def written(text: str, type: CType) -> Expression:
     """An expression that the user wrote, of unknown structure."""
     if _ATOM.match(text) or _in_parentheses(text):
         return Expression(text, type)
+    if text.startswith("&") and _ATOM.match(text[1:]):
+        return Expression(text, type, UNARY)
     return Expression(text, type, SUM if _SIMPLE_SUM.match(text) else CHOICE)
 
 
