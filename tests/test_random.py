@@ -12,14 +12,14 @@ from pathlib import Path
 
 import pytest
 from examination import Finding, examine
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, Phase, given, settings
 from random_nests import Case, cases, seeded_case
 
 from retile.model import RetileError
 from retile.trial import verify
 
 REGRESSIONS = Path(__file__).parent / "regressions"
-GROUPS, PAIRS, SECONDS = 8, 60, 7.0  # of the default run
+GROUPS, PAIRS, SECONDS = 6, 60, 7.0  # of the default run
 
 
 def keep(case: Case, name: str) -> Path:
@@ -36,11 +36,11 @@ def kept(path: Path) -> Case:
     return Case(f"{text}\n", int(line), plan, ("n", "m", "w"))
 
 
-def checked(seed: int) -> Finding:
+def checked(seed: int, thorough: bool = False) -> Finding:
     """Examine the case of a seed; a problem fails the test and leaves a file."""
     case = seeded_case(seed)
     try:
-        finding = examine(case, seed)
+        finding = examine(case, seed, thorough)
     except Exception as crash:
         path = keep(case, f"seed_{seed}")
         raise AssertionError(f"seed {seed} ({path.name}) ends in {type(crash).__name__}: {crash}\n{case}") from crash
@@ -63,10 +63,21 @@ def test_seeded_pairs(group):
     assert seen["legal"] and seen["illegal"], seen  # a generator whose nests are all refused would prove nothing
 
 
-@settings(max_examples=20, deadline=None, derandomize=True,
-          suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large])
+QUIET = [HealthCheck.too_slow, HealthCheck.data_too_large]
+
+
+@settings(max_examples=12, deadline=None, derandomize=True, phases=[Phase.generate], suppress_health_check=QUIET)
 @given(cases())
 def test_drawn_pairs(case):
+    finding = examine(case, thorough=False)
+    assert not finding.problems, f"{case}\n" + "\n".join(finding.problems)
+
+
+@pytest.mark.long
+@settings(max_examples=2000, deadline=None, suppress_health_check=QUIET)
+@given(cases())
+def test_drawn_pairs_made_small(case):
+    """As above, with hypothesis shrinking what fails, which takes minutes."""
     finding = examine(case)
     assert not finding.problems, f"{case}\n" + "\n".join(finding.problems)
 
@@ -101,7 +112,7 @@ def compiled(seed: int):
 @pytest.mark.parametrize("path", sorted(REGRESSIONS.glob("*.c")), ids=lambda path: path.stem)
 def test_regressions(path):
     case = kept(path)
-    for seed in range(4):
+    for seed in range(2):
         finding = examine(case, seed)
         assert not finding.problems, f"{case}\n" + "\n".join(finding.problems)
 
@@ -113,7 +124,7 @@ def test_many_pairs(request):
     seen, failed = Counter(), []
     for seed in range(first * 1_000_000, first * 1_000_000 + pairs):
         try:
-            finding = checked(seed)
+            finding = checked(seed, thorough=True)
         except (AssertionError, pytest.fail.Exception) as problem:
             failed.append(str(problem))
             continue
