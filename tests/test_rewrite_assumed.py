@@ -250,3 +250,39 @@ def test_what_the_user_gives_settles_it(tmp_path: Path) -> None:
     text = given.variant("c r").nest_text
     assert "Assumed: from and to do not overlap" in text and "at_end <= to_begin" in text
     assert "from_begin" not in text and "--distinct from,to" in text
+
+
+CONDITIONAL = """int survey(int n, int m, unsigned char z[][24], const unsigned char *restrict key)
+{
+    int i, j = 3;
+    for (i = 0; i < n; i++)
+        if (key[i] > 2)
+            for (j = 0; j < m; j++)
+                z[i][j] += 1;
+    return i;
+}
+"""
+
+
+def test_an_iterator_that_data_decides_is_refused_with_its_line(tmp_path: Path) -> None:
+    case = case_of(tmp_path, CONDITIONAL.replace("return i", "return j"))
+    for plan, verdict in (("j i", Verdict.REFUSED), ("i:4 i j", Verdict.REFUSED), ("i j", Verdict.LEGAL)):
+        judgement = judge(case.nest, analyse(case.nest), parse_plan(plan, case.nest))
+        assert judgement.verdict is verdict
+        assert [(r.line, r.code) for r in judgement.refusals] == [(6, "iterator-after")] * (verdict is Verdict.REFUSED)
+    assert "'j' is used after the nest" in judge(case.nest, analyse(case.nest), parse_plan("j i", case.nest)).refusals[0].reason
+
+
+def test_an_iterator_that_data_decides_may_be_forgotten(tmp_path: Path) -> None:
+    variant = case_of(tmp_path, CONDITIONAL).variant("i:4 j i")
+    main = """
+int main(void) {
+    unsigned char one[20][24] = { 0 }, two[20][24] = { 0 }, key[20];
+    for (int k = 0; k < 20; k++) key[k] = k * 7 % 5;
+    for (int n = 0; n < 20; n++)
+        for (int m = 0; m < 20; m++)
+            if (original(n, m, one, key) != variant0(n, m, two, key) || memcmp(one, two, sizeof one)) return 1;
+    return 0;
+}
+"""
+    compile_and_run(tmp_path, together(CONDITIONAL, [variant.text], main))

@@ -18,6 +18,7 @@ from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
 from ..touched import touched
+from .afterwards import lost_iterators
 from .alignment import MOST_TRIALS, settled
 from .copies import copied, copied_scalars
 from .kept import keepable
@@ -113,6 +114,11 @@ class _Court:
     def refusals(self) -> Iterator[Refusal]:
         """What the plan asks for that cannot be written down in C without changing the user's text."""
         yield from self._shared_iterators()
+        if not self.is_identity():
+            for loop in lost_iterators(self._nest):
+                yield Refusal(loop.span.line, loop.span.column, "iterator-after",
+                              f"'{loop.iterator}' is used after the nest, and a condition decides whether its loop runs; declare "
+                              "it in the 'for', or set it after the nest yourself")
         for name in sorted(self._split):
             if self._nest.storage(name).scope != "block":
                 continue

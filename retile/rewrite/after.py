@@ -11,7 +11,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from ..affine import Affine, Constraint, less
-from ..model import LoopText, Nest, RetileError
+from ..model import LoopText, Nest
 from .expression import (
     CHOICE,
     Expression,
@@ -37,34 +37,12 @@ class Restored:
 
 
 def restored(nest: Nest, layout: NestText, style: Style, scope: Scope, names: Names, indent: str) -> Restored:
-    """What keeps the iterators right that are looked at after the nest.
-
-    Raises RetileError for one whose loop runs or not depending on data.
-    """
+    """What keeps the iterators right that are looked at after the nest; no condition stands around their loops."""
     found = Restored([], [])
     for loop in nest.loops:
         if loop.iterator_live_after and not loop.declared_in_for:
-            if _behind_data(loop, nest):
-                raise RetileError(f"{nest.address}: '{loop.iterator}' is used after the nest, and whether its loop in line "
-                                  f"{loop.span.line} runs depends on data.\nDeclare it in the 'for', or set it after the "
-                                  "nest yourself.")
             _restore(loop, nest, layout, style, scope, names, indent, found)
     return found
-
-
-def _behind_data(loop: LoopText, nest: Nest) -> bool:
-    """True if a condition stands between the nest's loops around this one."""
-    from ..tree import Guard, Loop, Node
-
-    def found(nodes: tuple[Node, ...], guarded: bool) -> bool:
-        for node in nodes:
-            if isinstance(node, Loop) and (node.of == loop.id and guarded or found(node.body, guarded)):
-                return True
-            if isinstance(node, Guard) and found(node.body, True):
-                return True
-        return False
-
-    return found(nest.tree, False)
 
 
 def _restore(loop: LoopText, nest: Nest, layout: NestText, style: Style, scope: Scope, names: Names, indent: str,
