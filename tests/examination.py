@@ -69,8 +69,8 @@ def examine(case: Case, seed: int = 0, thorough: bool = True) -> Finding:
 
 def aligned_of(judgement: Judgement, sizes: dict[str, int]) -> Aligned:
     """Where the plan puts statements among the iterations of loops they are not in, for the oracle."""
-    return [(int(re.match(r"\d+", statement).group()), loop, functools.partial(_value_of, form, sizes))
-            for statement, loop, form in ((a.statement, a.loop, a.value) for a in judgement.plan.aligned)]
+    return [(int(re.match(r"\d+", a.statement).group()), a.loop, functools.partial(_value_of, a.value, sizes), a.chunks_only)
+            for a in judgement.plan.aligned]
 
 
 def _value_of(form: Affine, sizes: dict[str, int], iterators: dict[str, int]) -> int:

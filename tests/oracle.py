@@ -85,7 +85,7 @@ def _coordinate(loop: LoopAt, skewed: bool) -> int:
 
 
 # (line, loop, value): the statements of the line stand where the loop, which is not around them, has this value.
-Aligned = Sequence[tuple[int, str, Callable[[dict[str, int]], int]]]
+Aligned = Sequence[tuple[int, str, Callable[[dict[str, int]], int], bool]]
 
 
 @dataclass
@@ -108,19 +108,19 @@ class _Loops:
             seen[name] = next(ran, known)
         return _Loops(starts, seen)
 
-    def around(self, instance: Instance, name: str, aligned: Aligned) -> LoopAt | None:
+    def around(self, instance: Instance, name: str, aligned: Aligned, chunk: bool) -> LoopAt | None:
         """The loop at the instance; one that is not around it if the plan says at which of its values it stands."""
         found = next((loop for loop in instance.loops if _is(loop, name)), None)
         if found is None:
-            for line, loop, value in aligned:
-                if line == instance.line and loop == name:
+            for line, loop, value, chunks_only in aligned:
+                if line == instance.line and loop == name and (chunk or not chunks_only):
                     return replace(self.seen[name], value=value(instance.iterators))
         return found
 
 
 def _moment(term: Term, instance: Instance, loops: _Loops, aligned: Aligned) -> float:
     """The instance's place with regard to one term; before or after the loop for a statement outside it."""
-    total, around = 0, [loops.around(instance, name, aligned) for name, _ in term.loops]
+    total, around = 0, [loops.around(instance, name, aligned, term.chunk is not None) for name, _ in term.loops]
     for (name, factor), loop in zip(term.loops, around, strict=True):
         if loop is None:
             return -math.inf if (instance.line, instance.column) < loops.starts[name] else math.inf

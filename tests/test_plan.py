@@ -108,7 +108,7 @@ IMPERFECT = [
     (CLEARED, ["k:3 i j k", "i:2 j:3 k:4 i k j", "k i j", "j i k"]),
     (SCALED, ["j:3 i k j", "k:2 j:3 i k j", "j:2 k i j", "j i k", "k:K_CHUNK i:2 k i j"]),
     (FACTORISATION, ["j:3 k i@21 i@23 j", "k i@21 j i@23", "k:2 j:3 k i@21 i@23 j", "j k i@21 i@23",
-                     "j:J_CHUNK k i@21 i@23 j"]),
+                     "j:J_CHUNK k i@21 i@23 j", "i@23 k i@21 j", "i@23:2 k i@21 i@23 j"]),
     (SUMMED, ["i:2 j:3 k:2 i j k", "i:3 j:2 k:2 k i j", "i j:2 k:2 j k", "i:3 j:2 j k i"]),
 ]
 

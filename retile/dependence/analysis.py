@@ -92,13 +92,23 @@ class _Key:
     exact: bool = True
     update: str = ""
     free: bool = False
+    # How far apart the two accesses' subscripts are where they move alike, so that each distance has its own edge.
+    offset: tuple[int, ...] | None = None
+
+
+def _offset(a: Access, b: Access) -> tuple[int, ...] | None:
+    if a.subscripts is None or b.subscripts is None:
+        return None
+    apart = [x - y for x, y in zip(a.subscripts, b.subscripts, strict=True)]
+    return tuple(form.constant for form in apart) if all(form.is_constant for form in apart) else None
 
 
 def _key(source: _End, target: _End, carrier: str | None) -> _Key:
     a, b = source.access, target.access
     same = a.update if a.update == b.update else ""
     return _Key(source.statement.id, target.statement.id, _kind(a, b), carrier,
-                a.subscripts is not None and b.subscripts is not None, same, bool(same) and a.exact_update and b.exact_update)
+                a.subscripts is not None and b.subscripts is not None, same, bool(same) and a.exact_update and b.exact_update,
+                _offset(a, b))
 
 
 class _Analysis:

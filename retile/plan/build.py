@@ -25,7 +25,7 @@ from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Role, Verbatim, loops_of
 from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
 from .grammar import form_text
 from .kept import Keeping, keeping
-from .schedule import AFTER, BEFORE, INSIDE, placed, skewed_coordinate, standing
+from .schedule import AFTER, BEFORE, INSIDE, merged, placed, skewed_coordinate, standing
 from .units import Unit, statements_in, units
 
 
@@ -82,7 +82,7 @@ class _Builder:
             return tuple(self._leaf(unit, known, outer) for unit in members)
         split = self._split(members, level)
         return tuple(node for position, part in split.items()
-                     for node in self._part(part, level, known, outer, position == INSIDE and not self._idle(level, part)))
+                     for node in self._part(part, level, known, outer, position == INSIDE and not self._idle(level, part, outer)))
 
     def _part(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...],
               in_loop: bool) -> tuple[Node, ...]:
@@ -120,13 +120,19 @@ class _Builder:
         written = {a.storage for a in self._nest.statement(copy.statement).accesses if a.write}
         return any(a.storage in written for id in statements_in(unit.nodes) for a in self._nest.statement(id).accesses)
 
-    def _idle(self, level: int, members: tuple[Unit, ...]) -> bool:
+    def _idle(self, level: int, members: tuple[Unit, ...], outer: tuple[Loop, ...]) -> bool:
         """True if a loop over single iterations would run just once, for statements that only stand at its value."""
         term = self._plan.terms[level]
-        return term.chunk is None and all(term.loop not in unit.loops for unit in members)
+        return term.chunk is None and all(term.loop not in unit.loops or term.loop in self._merged(unit, outer)
+                                          for unit in members)
+
+    def _merged(self, unit: Unit, outer: tuple[Loop, ...]) -> dict[str, str]:
+        """The loops of a unit whose values loops around already have, in the same variables."""
+        around = {loop.symbol for loop in outer}
+        return {inner: loop for inner, loop in merged(self._plan, self._nest, unit.statement).items() if loop in around}
 
     def _leaf(self, unit: Unit, known: Region, outer: tuple[Loop, ...]) -> Node:
-        node: Node = Verbatim(unit.span, _marked(unit.nodes, self._plan))
+        node: Node = Verbatim(unit.span, _marked(unit.nodes, self._plan, self._merged(unit, outer)))
         around = known & self._context
         for guard in reversed(unit.guards):
             if guard.condition is None or not around.implies(guard.condition):
@@ -233,13 +239,15 @@ class _Builder:
         yield from _cut(frame, source, chunks)
 
 
-def _marked(nodes: tuple[Node, ...], plan: Plan) -> tuple[Node, ...]:
-    """The nodes with the values at which their statements stand noted in the leaves."""
+def _marked(nodes: tuple[Node, ...], plan: Plan, merged: dict[str, str]) -> tuple[Node, ...]:
+    """The nodes with the values at which their statements stand, and the loops they share, noted in the leaves."""
     if not plan.aligned:
         return nodes
-    return tuple(replace(node, aligned=tuple(standing(plan, node.statement).items())) if isinstance(node, Leaf)
-                 else replace(node, body=_marked(node.body, plan)) if isinstance(node, Loop | Guard)
-                 else node for node in nodes)
+    shared = {inner: Affine.of(loop) for inner, loop in merged.items()}
+    return tuple(replace(node, aligned=tuple(standing(plan, node.statement).items()),
+                         instance=tuple((name, form.substitute(shared)) for name, form in node.instance))
+                 if isinstance(node, Leaf) else replace(node, body=_marked(node.body, plan, merged))
+                 if isinstance(node, Loop | Guard) else node for node in nodes)
 
 
 def _is_tested(node: Node) -> bool:

@@ -59,6 +59,21 @@ def standing(plan: Plan, statement: str, chunks: bool = True) -> dict[str, Affin
     return {a.loop: a.value for a in plan.aligned if a.statement == statement and (chunks or not a.chunks_only)}
 
 
+def merged(plan: Plan, nest: Nest, statement: str) -> dict[str, str]:
+    """Loops of a statement that need not run where it stands, each with the loop around that already has its value.
+
+    ``for (i) a[i] = 0;`` standing at ``i@5 = i@3`` in a loop over the same variable is simply ``a[i] = 0;`` there.
+    """
+    bare = [term.loop for term in plan.terms if term.chunk is None]
+    found: dict[str, str] = {}
+    for outer, value in standing(plan, statement, chunks=False).items():
+        inner = value.terms[0][0] if len(value.terms) == 1 and value == Affine.of(value.terms[0][0]) else None
+        if isinstance(inner, str) and inner in bare and nest.loop(inner).iterator == nest.loop(outer).iterator and \
+                bare.index(outer) < bare.index(inner):
+            found[inner] = outer
+    return found
+
+
 def moment(term: Term, nest: Nest) -> Affine:
     """A term's value for an instance, in its iterators; for a chunk of unknown size the value that is cut."""
     loops = [(nest.loop(loop), factor) for loop, factor in term.form]

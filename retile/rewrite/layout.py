@@ -10,6 +10,7 @@ from collections import defaultdict
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field, replace
 
+from ..affine import Affine
 from ..model import LoopText, Nest, RetileError
 from ..source.lex import SKIPPED, Token, tokenize
 from ..source.structure import Malformed, Shape, compound
@@ -64,6 +65,8 @@ class NestText:
         self._conditions = {self._solid[shape.marks[1] + 1].start: shape for shape in _shapes(self._root)
                             if shape.kind == "if"}
         named = {node.symbol for node in _nodes(tree) if isinstance(node, Loop)}
+        # loops that the plan names and that need not run: another one around has their value
+        named |= {name for name, form in instances(tree) if form != Affine.of(name)}
         self._named = {loop.span.start for loop in nest.loops if loop.id in named}
         self.tree = tree = tuple(self._separated(tree))
         guards = {node.span[0] for node in _nodes(tree) if isinstance(node, Guard) and node.span is not None}
@@ -370,3 +373,12 @@ def _nodes(nodes: Iterable[Node]) -> Iterator[Node]:
         yield node
         if not isinstance(node, Verbatim):
             yield from _nodes(children(node))
+
+
+def instances(nodes: tuple[Node, ...]) -> Iterator[tuple[str, Affine]]:
+    """The iterators and their values of the instances that pieces of text in these nodes stand for."""
+    for node in nodes:
+        if isinstance(node, Leaf):
+            yield from node.instance
+        else:
+            yield from instances(children(node))

@@ -6,15 +6,14 @@ user's (``layout``, ``style``), headers come from ``loops``.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import replace
 
 from ..affine import Affine, equal, negate
-from ..model import Nest
-from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Verbatim, children
+from ..model import LoopText, Nest
+from ..tree import Copy, Guard, Kept, Loop, Node, Verbatim
 from .chunks import Loops
 from .expression import Expression, condition, express
-from .layout import InternalError, NestText, Remarks
+from .layout import InternalError, NestText, Remarks, instances
 from .loops import Opened, Place
 from .style import Style
 
@@ -146,10 +145,11 @@ class Printer:
     def _given(self, loop: Loop, place: Place) -> tuple[list[str], Place]:
         """The user's iterators that a skewed sum took the place of, as soon as their values are known."""
         lines: list[str] = []
-        wanted = dict(_instances(loop.body))
+        wanted = dict(instances(loop.body))
         for name, form in wanted.items():
             source = self._loops.source(name)
-            if name in place.around or form == Affine.of(name) or not place.scope.sees(form.names()):
+            if name in place.around or form == Affine.of(name) or not place.scope.sees(form.names()) or \
+                    self._same_variable(source, form):
                 continue
             value = self._loops.in_type(form, source.type, place.scope)
             declared = f"const {source.type.spelling} " if source.declared_in_for else ""
@@ -179,6 +179,11 @@ class Printer:
             return f"{cell} = {scalar};"
         return f"{self._declaration(copy.scalar)} {scalar} = {cell};" if copy.declares else f"{scalar} = {cell};"
 
+    def _same_variable(self, source: LoopText, form: Affine) -> bool:
+        """True if the value is that of another loop of the user's over the same variable."""
+        names = form.names() & self._ids
+        return len(names) == 1 and form == Affine.of(*names) and self._nest.loop(*names).iterator == source.iterator
+
     # ---------------------------------------------------------------- guards
 
     def _opposite(self, node: Guard, following: Node) -> bool:
@@ -205,12 +210,3 @@ class Printer:
             apart = replace(place, scope=place.scope.knowing(otherwise.condition))
             lines = self._style.otherwise(lines, self.nodes(otherwise.body, apart, inner), indent)
         return lines
-
-
-def _instances(nodes: tuple[Node, ...]) -> Iterator[tuple[str, Affine]]:
-    """The iterators and their values of the instances that pieces of text in these nodes stand for."""
-    for node in nodes:
-        if isinstance(node, Leaf):
-            yield from node.instance
-        else:
-            yield from _instances(children(node))
