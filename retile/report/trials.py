@@ -30,6 +30,7 @@ def campaign_lines(campaign: Campaign, look: Look) -> list[str]:
     lines += ["", *paragraph("Medians with their 95 % intervals. verified: built without contraction of floating-point "
                              "operations, all outputs are the same, bit for bit, at every size tried. identical: so "
                              "are those of the builds that were timed.", look)]
+    lines += _loose(campaign, look)
     lines += _remarks(campaign, look)
     for note in campaign.notes:
         lines += paragraph(note, look, "Note: ", "      ")
@@ -38,9 +39,22 @@ def campaign_lines(campaign: Campaign, look: Look) -> list[str]:
     return lines
 
 
+def _loose(campaign: Campaign, look: Look) -> list[str]:
+    """What a number under ``verified`` means."""
+    checks = [trial.verification for trial in campaign.trials if trial.verification is not None]
+    names = sorted({name for check in checks if check.tolerance is not None for name in check.loose})
+    if not names:
+        return []
+    return paragraph(f"verified to a number: the updates of {', '.join(names)} run in another order, so they were compared "
+                     "within a tolerance, at most this part of the largest value of their array; it follows from how far "
+                     "results rounded downward and upward lie apart. All others are the same, bit for bit.", look)
+
+
 def _row(trial: Trial, is_best: bool) -> tuple[str, ...]:
     plan = trial.plan + (f"; {trial.options}" if trial.options else "")
     checked = "not asked" if trial.verification is None else "yes" if trial.verified else "NO"
+    if trial.verified and trial.verification is not None and trial.verification.tolerance is not None:
+        checked = f"to {trial.verification.tolerance:.1e}"
     identical = "" if trial.identical is None else "yes" if trial.identical else "no"
     return plan, duration(trial.seconds), ratio(trial.speedup), checked, identical, "best" if is_best else ""
 

@@ -18,6 +18,7 @@ from typing import TYPE_CHECKING
 from ..host import ask
 from ..model import RetileError
 from ..templating import environment
+from .tolerance import STEPS, WIDTHS
 
 if TYPE_CHECKING:
     from ..source import CompilerCall
@@ -120,7 +121,8 @@ def harness(command: tuple[str, ...], sanitize: bool, prefix: str) -> Path:
     folder = _shared_folder()
     stem = f"harness{len(list(folder.glob('*.c')))}"
     source, target = folder / f"{stem}.c", folder / stem
-    source.write_text(environment().get_template("trial_harness.c.j2").render(p=prefix), encoding="utf-8")
+    text = environment().get_template("trial_harness.c.j2").render(p=prefix, widths=WIDTHS, steps=STEPS)
+    source.write_text(text, encoding="utf-8")
     flags = ("-fsanitize=address,undefined", "-O1") if sanitize else ("-O2",)
     said = run([*command, "-std=c11", "-w", *flags, "-o", str(target), str(source), "-ldl", "-lm"])
     if said is not None:

@@ -332,6 +332,8 @@ class _State:
                 place = f"; first at {difference_of(self.bench, self.case, found[str(kernel)][1:])}"
         if any(flag in self.settings.flags for flag in ("-ffast-math", "-Ofast", "-fassociative-math")):
             return f"the flags let the compiler reassociate floating-point operations{place}"
+        if trial.verification and trial.verification.loose:
+            return f"updates run in another order{place}"
         if trial.verified:
             return (
                 "without contraction both leave the same bytes: with these flags the compiler fuses multiplications "

@@ -64,7 +64,10 @@ class Difference:
 
 @dataclass(frozen=True)
 class Verification:
-    """Whether a variant leaves the same bytes as the original, without contraction."""
+    """Whether a variant leaves the same bytes as the original, without contraction.
+
+    Where a plan sets aside the order of floating-point updates, what they change is compared within a tolerance.
+    """
 
     verified: bool
     cases: tuple[tuple[tuple[str, int], ...], ...]  # the sizes at which both ran to the end
@@ -73,6 +76,9 @@ class Verification:
     difference: Difference | None = None
     failure: str | None = None  # what the compiler, the sanitizer or the system said
     notes: tuple[str, ...] = ()
+    loose: tuple[str, ...] = ()  # storages that were compared within a tolerance, not bit for bit
+    tolerance: float | None = None  # the largest allowed there, relative to the largest number of the array
+    largest_difference: float | None = None  # the largest difference that was met and allowed there
 
 
 @dataclass(frozen=True)
@@ -170,6 +176,7 @@ def _trial_json(trial: Trial) -> dict[str, Any]:
         "plan": trial.plan,
         "options": trial.options,
         "verified": trial.verified,
+        "tolerance": verification.tolerance if verification else None,
         "identical": trial.identical,
         "seconds": trial.seconds.as_json() if trial.seconds else None,
         "speedup": trial.speedup.as_json() if trial.speedup else None,
@@ -192,6 +199,9 @@ def _verification_json(found: Verification) -> dict[str, Any]:
         "fill": found.fill,
         "failure": found.failure,
         "notes": list(found.notes),
+        "loose": list(found.loose),
+        "tolerance": found.tolerance,
+        "largest_difference": found.largest_difference,
         "difference": {
             "array": difference.array,
             "index": list(difference.index),
@@ -355,6 +365,9 @@ def _verification(part: _Part) -> Verification:
         difference=_difference(_Part(held, "a difference")) if held is not None else None,
         failure=part.take("failure", str, _NONE),
         notes=part.texts("notes"),
+        loose=part.texts("loose") if "loose" in part.fields else (),
+        tolerance=part.take("tolerance", int, float, _NONE),
+        largest_difference=part.take("largest_difference", int, float, _NONE),
     )
 
 

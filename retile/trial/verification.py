@@ -13,6 +13,7 @@ from .memory import Block, plain, value_of
 from .records import Difference, Settings, Verification
 from .run import Run, run
 from .sizes import uncovered, verification_sizes
+from .tolerance import inexact_outputs
 
 _FILLS = ("random", "diagonal-dominant", "positive")
 _MOST_BYTES = 1 << 28  # of one case's arrays
@@ -33,6 +34,9 @@ class _Candidate:
 
     built: Built
     plan: Plan
+    loose: tuple[str, ...] = ()  # storages that the plan lets round differently
+    allowed: float = 0.0  # the largest relative difference that was allowed there
+    met: float = 0.0  # the largest difference that was met there
     passed: list[Case] = field(default_factory=list)
     difference: Difference | None = None
     failure: str | None = None
@@ -115,7 +119,10 @@ class Verifier:
                 f"{self.bench.nest.address}: the nest cannot be built on its own:\n{baseline.complaint}"
             )
         candidates = [
-            _Candidate(kernel, variant.plan, failure=kernel.complaint) for kernel, (variant, _) in zip(built, texts)
+            _Candidate(
+                kernel, variant.plan, inexact_outputs(self.bench.nest, variant.plan), failure=kernel.complaint
+            )
+            for kernel, (variant, _) in zip(built, texts)
         ]
         cases = self.cases([variant for variant, _ in texts])
         fill = self.choose_fill(
@@ -176,19 +183,22 @@ class Verifier:
             running = [candidate for candidate in candidates if candidate.open]
             step(f"run {len(left)} sizes")
             paths = [baseline, *(candidate.built.path for candidate in running if candidate.built.path)]
-            found = run(self.program, self.prefix, paths, self._job(left, len(running), fill), self.settings.limit)
+            found = run(self.program, self.prefix, paths, self._job(left, running, fill), self.settings.limit)
             done = self._understand(found, running, left)
             if found.finished:
                 return
             original_failed = self._blame(found, running, left[done])
             left = left[done + 1 :] if original_failed else left[done:]
 
-    def _job(self, cases: Sequence[Case], count: int, fill: Fill) -> str:
-        parts = []
+    def _job(self, cases: Sequence[Case], running: Sequence[_Candidate], fill: Fill) -> str:
+        parts = [f"tolerant {number}\n" for number, candidate in enumerate(running, 1) if candidate.loose]
+        names = {name for candidate in running for name in candidate.loose}
+        memory = self.bench.kernel.memory
+        parts += [f"loose {cell.number}\n" for name in sorted(names) for cell in memory.cells_of(name)]
         for number, case in enumerate(cases):
             parts.append(
                 f"case {number}\n{job(case.layout, self.bench, self.fills, fill.way)}"
-                f"prepare {self.settings.seed}\nverify 0 {count}\n"
+                f"prepare {self.settings.seed}\nverify 0 {len(running)}\n"
             )
         return "".join(parts)
 
@@ -202,6 +212,10 @@ class Verifier:
                 candidate = running[int(answer[1]) - 1]
                 if cases[at] not in candidate.passed:
                     candidate.passed.append(cases[at])
+            elif answer[0] == "within":
+                candidate = running[int(answer[1]) - 1]
+                candidate.allowed = max(candidate.allowed, float(answer[2]))
+                candidate.met = max(candidate.met, float(answer[3]))
             elif answer[0] == "differs":
                 candidate = running[int(answer[1]) - 1]
                 candidate.difference = candidate.difference or difference_of(self.bench, cases[at], answer[2:])
@@ -243,6 +257,9 @@ class Verifier:
             difference=candidate.difference,
             failure=failure,
             notes=tuple(notes),
+            loose=tuple(name for name in candidate.loose if self.bench.kernel.memory.cells_of(name)),
+            tolerance=candidate.allowed if candidate.loose else None,
+            largest_difference=candidate.met if candidate.loose else None,
         )
 
 
