@@ -12,7 +12,7 @@ import pytest
 from rewriting import case_of, compile_and_run, compilers, renamed, together
 
 from retile.dependence import analyse
-from retile.model import RetileError, Verdict
+from retile.model import Verdict
 from retile.plan import judge, parse_plan
 
 SIZES = "0, 1, 2, 3, 7, 8, 9, 15, 16, 17, 31, 33, 38"
@@ -214,15 +214,38 @@ ASKED = """void survey(int n, int m, unsigned char z[][40][2])
 """
 
 
-def test_branches_under_data_are_taken_apart_only_if_the_data_stays(tmp_path: Path) -> None:
+def test_branches_under_data_are_taken_apart(tmp_path: Path) -> None:
     separate = ASKED.replace("unsigned char z[][40][2]", "unsigned char z[][40][2], const unsigned char *restrict key") \
         .replace("z[i][39][0]", "key[i]")
     text = case_of(tmp_path, separate).variant("j@5 i", trust=True).nest_text
     assert "if (key[i] % 2 == m % 2) {" in text and "if (!(key[i] % 2 == m % 2)) {" in text
-    case = case_of(tmp_path, ASKED.replace("[j][1]", "[j][0]"))
-    dependences = analyse(case.nest)
-    for plan in ("j@5 i", "j@8 i"):
-        judgement = judge(case.nest, dependences, parse_plan(plan, case.nest))
-        if judgement.verdict is Verdict.LEGAL:
-            with pytest.raises(RetileError, match="takes the branches of a condition apart"):
-                case.variant(plan)
+
+
+# The condition is asked again for every piece that the plan takes out of its branch: its data must not have changed.
+CONDITIONS = {
+    "the loop changes what was asked": ("z[i][20][0] > 2", "j = 0; j < m", "z[i][j][0] += 1;", "", "j i", False),
+    "the loop starts behind what was asked": ("z[i][0][0] > 2", "j = 1; j < m", "z[i][j][0] += 1;", "", "j i", True),
+    "nothing moves": ("z[i][20][0] > 2", "j = 0; j < m", "z[i][j][0] += 1;", "", "i j", True),
+    "the other branch changes it": ("z[i][0][0] > 2", "j = 1; j < m", "z[i][j][0] += 1;",
+                                    "else\n            for (int j = 0; j < m; j++)\n                z[i][j][0] -= 1;",
+                                    "j@8 i", False),
+    "neither branch changes it": ("z[i][0][0] > 2", "j = 1; j < m", "z[i][j][0] += 1;",
+                                  "else\n            for (int j = 1; j < m; j++)\n                z[i][j][0] -= 1;",
+                                  "j@5 j@8 i", True),
+    "another row is asked": ("z[i + 1][0][0] > 2", "j = 0; j < m", "z[i][j][0] += 1;", "", "j i", False),
+}
+
+
+@pytest.mark.parametrize(("asked", "loop", "body", "otherwise", "plan", "legal"), CONDITIONS.values(), ids=CONDITIONS.keys())
+def test_a_condition_is_asked_before_its_data_change(asked: str, loop: str, body: str, otherwise: str, plan: str,
+                                                    legal: bool, tmp_path: Path) -> None:
+    text = (f"void survey(int n, int m, unsigned char z[][40][2])\n{{\n    for (int i = 0; i < n; i++)\n        if ({asked})\n"
+            f"            for (int {loop}; j++)\n                {body}\n        {otherwise}\n}}\n")
+    case = case_of(tmp_path, text)
+    judgement = judge(case.nest, analyse(case.nest), parse_plan(plan, case.nest))
+    assert (judgement.verdict is Verdict.LEGAL) is legal, judgement
+    if legal:
+        main = MAIN.replace("TYPE", "int").replace("VARIANTS", "variant0").replace("SIZES", SIZES) \
+            .replace("memset(one, 0, sizeof one);", "memset(one, 0, sizeof one); for (int r = 0; r < N; r++) one[r][0][0] = r * 7 % 5;") \
+            .replace("memset(two, 0, sizeof two);", "memcpy(two, one, sizeof two);")
+        compile_and_run(tmp_path, together(text, [case.variant(plan).text], main), optimize="-O0")

@@ -23,6 +23,7 @@ from .alignment import MOST_TRIALS, settled
 from .copies import copied, copied_scalars
 from .kept import keepable
 from .schedule import INSIDE, merged, moments, placed, stays_whole
+from .units import Unit, moved_conditions, units
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
 _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
@@ -80,6 +81,15 @@ class _Reversed:
     level: int  # of the time vector, that decides
 
 
+@dataclass(frozen=True)
+class _Run:
+    """The moments at which a plan runs a statement."""
+
+    loops: tuple[str, ...]  # whose iterators the time is in
+    domain: Region | None  # of their values; None for the statement's own
+    time: tuple[Coordinate, ...]
+
+
 class _Court:
     def __init__(self, nest: Nest, dependences: Dependences, plan: Plan) -> None:
         self._nest = nest
@@ -88,6 +98,10 @@ class _Court:
             statement.id: (*moments(plan, statement.id), *dependences.times[statement.id])
             for statement in nest.statements}
         self.plan = plan
+        identity = self.is_identity()
+        self._units = () if identity else tuple(unit for unit in units(nest, plan) if unit.guards)
+        self._moved = frozenset() if identity else moved_conditions(nest, plan)
+        self._run: dict[str, tuple[_Run, ...]] = {}
         self._found: dict[int, _Reversed | None] = {}
         self._copied = copied_scalars(nest, plan)
         # Private scalars whose iterations the plan takes apart: their storage is not theirs alone.
@@ -100,8 +114,35 @@ class _Court:
 
     def _reversed_pairs(self, pairs: Region, source: Statement, target: Statement) -> tuple[int, Region] | None:
         """Pairs whose target the plan does not run after the source, with the level that decides; None if there are none."""
-        later = primed_vector(self._times[target.id], target.loops)
-        return next(first_differences(pairs, later, self._times[source.id]), None)
+        for one in self._runs(source):
+            for other in self._runs(target):
+                extra = {*one.loops, *map(prime, other.loops)} - {*source.loops, *map(prime, target.loops)}
+                both = pairs
+                for run, names in ((one, {}), (other, {loop: prime(loop) for loop in other.loops})):
+                    both = both if run.domain is None else both & run.domain.renamed(names)
+                later = primed_vector(other.time, other.loops)
+                strict = min(len(later), len(one.time))
+                for level, found in first_differences(both, later, one.time):
+                    if level < strict:
+                        return level, found.without(extra) if extra else found
+        return None
+
+    def _runs(self, statement: Statement) -> tuple[_Run, ...]:
+        """When the plan runs a statement: once, or a condition between its loops just before all that it guards."""
+        if statement.id not in self._run:
+            own = () if statement.id in self._moved else (_Run(statement.loops, None, self._times[statement.id]),)
+            span = statement.span.start, statement.span.end
+            self._run[statement.id] = (*own, *(self._asked_for(unit) for unit in self._units
+                                               if any(guard.span == span for guard in unit.guards)))
+        return self._run[statement.id]
+
+    def _asked_for(self, unit: Unit) -> _Run:
+        """When the conditions around a piece are asked for it."""
+        parameters = [parameter.symbol for parameter in self._nest.parameters]
+        domain = self._dependences.domains[unit.statement].only([*parameters, *unit.loops])
+        start = 2 * (len(unit.loops) + len(unit.guards)) + 1  # the piece's place in its list; it starts with the condition
+        time = (*moments(self.plan, unit.statement), *self._dependences.times[unit.statement][:start])
+        return _Run(unit.loops, domain, time)
 
     def binding_edges(self) -> tuple[Edge, ...]:
         """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole, and the

@@ -187,21 +187,12 @@ class NestText:
                 yield Verbatim(self._extent(run), tuple(run))
                 run = []
             if isinstance(node, Guard):
-                self._check_repeatable(node)
                 inner = Verbatim(self._extent(node.body), node.body)
                 yield replace(node, body=tuple(self._separated((inner,))))
 
     def _is_taken_apart(self, guard: Guard) -> bool:
         shape = self._conditions.get(guard.span[0]) if guard.span is not None else None
         return shape is not None and self._holds_named(shape)
-
-    def _check_repeatable(self, guard: Guard) -> None:
-        """A condition on data is asked once per branch now: nothing that it reads may change in between."""
-        written = {access.storage for one in self._nest.statements for access in one.accesses if access.write}
-        asked = [one for one in self._nest.statements if (one.span.start, one.span.end) == guard.span]
-        if guard.condition is None and (not asked or any(access.storage in written for access in asked[0].accesses)):
-            raise RetileError(f"{self._nest.address}: the plan takes the branches of a condition apart whose data the nest "
-                              "changes.\nName only loops that stand outside of it.")
 
     def _statement_span(self, leaf: Leaf) -> tuple[int, int]:
         span = self._nest.statement(leaf.statement).span
