@@ -9,7 +9,7 @@ from hand_nests import BACKWARD, CLEARED, DOWN, DRIFT, FACTORISATION, PRODUCT, S
 from walk import Run, runs
 
 from retile.dependence import analyse
-from retile.model import Nest, RetileError, Verdict
+from retile.model import Judgement, Nest, RetileError, Verdict
 from retile.plan import build_tree, copied_scalars, is_legal, judge, nearest_legal, parse_plan, placed
 from retile.questions import order_kept, same_instances, values_arrive
 from retile.tree import Loop, Node
@@ -32,6 +32,10 @@ from retile.tree import Loop, Node
     ("(t+):4 t i", 2, 1, "not a sum"),
     ("(t-t):4 t i", 1, 3, "always 0"),
     ("t i; unroll", 5, 6, "not an option"),
+    ("t i; place 22", 5, 8, "not a place"),
+    ("t i; place 99 at t = 1", 11, 2, "no statement '99'"),
+    ("t i; place 22 at i = t", 17, 1, "'i' is around it"),
+    ("t i; place 22 at q = t", 17, 1, "'q' is not a loop"),
     ("t i; remainder peel, remainder clamp", 21, 15, "stands twice"),
     ("", 0, 1, "names no loop"),
 ])
@@ -158,6 +162,22 @@ def test_pivot_statement_waits_for_its_column() -> None:
 def test_no_array_keeps_values_without_bound(text: str) -> None:
     judgement = judge(SUMMED, analyse(SUMMED), parse_plan(text, SUMMED))
     assert (judgement.verdict, judgement.plan.kept) == (Verdict.ILLEGAL, ())
+
+
+def test_a_stated_place_is_taken_and_judged() -> None:
+    dependences = analyse(FACTORISATION)
+
+    def judged(place: str) -> Judgement:
+        return judge(FACTORISATION, dependences, parse_plan(f"j:3 k i@21 i@23 j; place 22 {place}", FACTORISATION))
+
+    good = judged("at j = k")
+    assert good.verdict is Verdict.LEGAL
+    assert [(a.statement, a.loop, str(a.value), a.chunks_only) for a in good.plan.aligned] == [("22", "j", "k", False)]
+    assert judged("with j = k").verdict is Verdict.LEGAL
+    assert judged("at j = 2*k - n + 7").verdict is Verdict.ILLEGAL  # too early at some sizes
+    assert judged("at j = n + 5").verdict is Verdict.ILLEGAL  # too late
+    with pytest.raises(RetileError, match="'m' is not known"):
+        judged("at j = m")
 
 
 def test_a_value_that_does_not_arrive_is_noticed() -> None:

@@ -32,9 +32,12 @@ def settled(plan: Plan, nest: Nest, edges: tuple[Edge, ...], wrong: tuple[Edge, 
 
     ``wrong``: those that it reverses as it stands.  A trial moves one statement, so only edges at it are judged again.
     """
+    stated = {(a.statement, a.loop) for a in plan.aligned}
     while wrong:
         best: tuple[Plan, tuple[Edge, ...]] | None = None
         for new in _candidates(plan, nest, wrong):
+            if (new.statement, new.loop) in stated:
+                continue
             trials -= 1
             if trials < 0:
                 return None

@@ -5,7 +5,7 @@
     sum     = [ "-" ] product { ("+" | "-") product }
     product = [ integer "*" ] loop
     chunk   = integer | identifier
-    option  = word blank value
+    option  = see ``options``
 
 A wrong plan is a wrong call: one message, with the place in the plan marked.
 """
@@ -15,10 +15,8 @@ from __future__ import annotations
 import re
 from dataclasses import replace
 
-from ..model import Nest, Plan, RetileError, Term
-
-# The options that a plan may carry, and the values each of them takes.
-OPTIONS = {"remainder": ("clamp", "peel"), "reassociate": ("no", "yes")}
+from ..model import Nest, Plan, Term
+from .options import PlanText, read_options
 
 _TERM = re.compile(r"\S+")
 _PRODUCT = re.compile(r"([+-]?)(?:(\d+)\*)?([^+\-*]+)")
@@ -38,41 +36,30 @@ def term_text(term: Term) -> str:
     return form_text(term.form) + ("" if term.chunk is None else f":{term.chunk}")
 
 
-class _PlanText:
-    """The text of a plan, to complain about."""
-
-    def __init__(self, text: str) -> None:
-        self.text = text
-
-    def complaint(self, start: int, end: int, what: str, remedy: str) -> RetileError:
-        mark = " " * start + "^" * max(1, end - start)
-        return RetileError(f"wrong plan: {what}\n    {self.text}\n    {mark}\n{remedy}")
-
-
 def parse_plan(text: str, nest: Nest) -> Plan:
     """The plan that a text describes for a nest; ``places`` are filled in by ``schedule.placed``.
 
     Raises RetileError, with the place in the plan marked, if the text is not a plan or does not fit the nest.
     """
-    plan = _PlanText(text)
+    plan = PlanText(text)
     order, semicolon, rest = text.partition(";")
     terms = tuple(_term(plan, match.start(), match.group(), nest) for match in _TERM.finditer(order))
     if not terms:
         raise plan.complaint(0, 1, "it names no loop", f"Loops here: {_loop_names(nest)}.")
     _check_terms(plan, terms, nest)
     terms = _executed(terms)
-    options = _options(plan, len(order) + 1, rest) if semicolon else ()
+    options, aligned = read_options(plan, len(order) + 1, rest, nest, terms) if semicolon else ((), ())
     written = " ".join(order.split())
     if options:
         written += "; " + ", ".join(f"{word} {value}" for word, value in options)
-    return Plan(written, terms, options)
+    return Plan(written, terms, options, aligned=aligned)
 
 
 def _loop_names(nest: Nest) -> str:
     return ", ".join(loop.id for loop in nest.loops)
 
 
-def _term(plan: _PlanText, start: int, text: str, nest: Nest) -> Term:
+def _term(plan: PlanText, start: int, text: str, nest: Nest) -> Term:
     ids = {loop.id for loop in nest.loops}
     end = start + len(text)
     if text in ids:
@@ -86,7 +73,7 @@ def _term(plan: _PlanText, start: int, text: str, nest: Nest) -> Term:
     return Term(((_loop(plan, start, head, ids, nest), 1),), chunk, start, end)
 
 
-def _chunk(plan: _PlanText, start: int, size: str, ids: set[str]) -> int | str:
+def _chunk(plan: PlanText, start: int, size: str, ids: set[str]) -> int | str:
     remedy = "A chunk is a whole number of at least 1, as in i:64, or the name of a constant, as in i:I_CHUNK."
     if size.isidentifier() and size.isascii() and size not in ids:
         return size
@@ -99,7 +86,7 @@ def _chunk(plan: _PlanText, start: int, size: str, ids: set[str]) -> int | str:
     return int(size)
 
 
-def _loop(plan: _PlanText, start: int, name: str, ids: set[str], nest: Nest) -> str:
+def _loop(plan: PlanText, start: int, name: str, ids: set[str], nest: Nest) -> str:
     if name in ids:
         return name
     alike = sorted(id for id in ids if id.split("@")[0] == name)
@@ -109,7 +96,7 @@ def _loop(plan: _PlanText, start: int, name: str, ids: set[str], nest: Nest) -> 
     raise plan.complaint(start, start + len(name), f"the nest has no loop '{name}'", f"Loops here: {_loop_names(nest)}.")
 
 
-def _sum(plan: _PlanText, start: int, text: str, ids: set[str], nest: Nest) -> tuple[tuple[str, int], ...]:
+def _sum(plan: PlanText, start: int, text: str, ids: set[str], nest: Nest) -> tuple[tuple[str, int], ...]:
     coefficients: dict[str, int] = {}
     at = 0
     while at < len(text):
@@ -127,7 +114,7 @@ def _sum(plan: _PlanText, start: int, text: str, ids: set[str], nest: Nest) -> t
     return form
 
 
-def _check_terms(plan: _PlanText, terms: tuple[Term, ...], nest: Nest) -> None:
+def _check_terms(plan: PlanText, terms: tuple[Term, ...], nest: Nest) -> None:
     bare: dict[tuple[tuple[str, int], ...], Term] = {}
     chunks: dict[tuple[tuple[str, int], ...], Term] = {}
     for term in terms:
@@ -153,7 +140,7 @@ def _falls(coarser: int | str | None, finer: int | str) -> bool:
     return finer != coarser  # of a name nothing is known, but one constant does not cut a loop twice
 
 
-def _check_moved(plan: _PlanText, terms: tuple[Term, ...], bare: tuple[Term, ...], nest: Nest) -> None:
+def _check_moved(plan: PlanText, terms: tuple[Term, ...], bare: tuple[Term, ...], nest: Nest) -> None:
     """The bare terms must determine every loop that the plan moves, and no loop around one of these may be missing."""
     placed = {loop for term in bare for loop, _ in term.form}
     for term in terms:
@@ -191,20 +178,3 @@ def _executed(terms: tuple[Term, ...]) -> tuple[Term, ...]:
 
 def _is_plain(term: Term) -> bool:
     return len(term.form) == 1 and term.form[0][1] == 1
-
-
-def _options(plan: _PlanText, start: int, text: str) -> tuple[tuple[str, str], ...]:
-    found: dict[str, str] = {}
-    for match in re.finditer(r"[^,]+", text):
-        words = match.group().split()
-        begin = start + match.start() + len(match.group()) - len(match.group().lstrip())
-        end = start + match.end()
-        if not words:
-            continue
-        known = ", ".join(f"{word} {'|'.join(values)}" for word, values in OPTIONS.items())
-        if len(words) != 2 or words[0] not in OPTIONS or words[1] not in OPTIONS[words[0]]:
-            raise plan.complaint(begin, end, f"'{' '.join(words)}' is not an option", f"Options: {known}.")
-        if words[0] in found:
-            raise plan.complaint(begin, end, f"option '{words[0]}' stands twice", "Leave one of the two out.")
-        found[words[0]] = words[1]
-    return tuple(found.items())

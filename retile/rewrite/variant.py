@@ -216,8 +216,10 @@ class _Order:
     @property
     def _line(self) -> str:
         """The variant's one line: the plan with all options that are not the default."""
-        options = {"remainder": self.remainder, **dict(self.plan.options)}
-        named = [f"{word} {value}" for word, value in options.items() if value not in ("clamp", "no")]
+        options = self.plan.options
+        if "remainder" not in dict(options):
+            options = (("remainder", self.remainder), *options)
+        named = [f"{word} {value}" for word, value in options if value not in ("clamp", "no")]
         return self.plan.order_text + (f"; {', '.join(named)}" if named else "")
 
     def _command(self, assumptions: tuple[Assumption, ...]) -> str:
