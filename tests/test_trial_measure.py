@@ -13,7 +13,8 @@ import pytest
 from trial_case import case
 
 from retile.model import RetileError
-from retile.trial import Settings, as_text, measure, read_result, write_result
+from retile.trial import Estimate, Settings, as_text, measure, read_result, write_result
+from retile.trial.campaign import _is_wide
 from retile.trial.statistics import median
 
 QUICK = Settings(sanitize=False, seconds=0.1, rounds=(6, 12))
@@ -258,3 +259,32 @@ def _places(value, so_far=()):
         if so_far[:1] != ("host",) and not (isinstance(key, int) and key > 1):
             yield (*so_far, key)
             yield from _places(part, (*so_far, key))
+
+
+SLOW = """\
+void slow(int n, double *z) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++)
+            for (int k = 0; k < n; k++)
+                z[i] = z[i] * 0.5 + z[j] * 0.25 + z[k] * 0.125;
+}
+"""
+
+
+def test_slow_nests_have_fewer_rounds_and_say_so(tmp_path):
+    """A round takes longer than the time for all of them: three are left, which have no interval."""
+    one = case(tmp_path, SLOW)
+    campaign = measure(one.source, one.nest, [one.variant(one.text)], {"n": 300}, replace(QUICK, seconds=0.01))
+    (trial,) = campaign.trials
+    assert len(trial.samples) == 3 and trial.seconds.median > 0 and trial.speedup.low is None
+    assert any("3 rounds are too few for an interval" in note for note in campaign.notes)
+
+
+def test_fast_nests_have_all_the_rounds_that_fit(sums):
+    campaign = measure(sums.source, sums.nest, [sums.variant(BY_ROWS, "i j")], {"n": 9, "m": 7},
+                       replace(QUICK, seconds=0.2, rounds=(6, 100)))
+    assert len(campaign.trials[0].samples) == 100
+
+
+def test_wide_intervals_are_pointed_out():
+    assert _is_wide(Estimate(2, 1, 3)) and not _is_wide(Estimate(2, 1.9, 2.2)) and not _is_wide(Estimate(2, None, None))

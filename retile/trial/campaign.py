@@ -24,12 +24,14 @@ from .memory import plain
 from .records import FILLS, Campaign, Difference, Event, Progress, Settings, Trial, Verification
 from .run import Run, run
 from .sizes import checked
+from .statistics import Estimate, median
 from .verification import Case, Fill, Verifier, bytes_of, difference_of
 
 if TYPE_CHECKING:
     from ..source import Source
 
 _BUSY = 1.15  # elapsed over computing time from which other programs are suspected
+_WIDE = 1.5  # upper over lower end of an interval that says little
 _COPIES = 3  # the arrays themselves, what they held first, what the original leaves
 
 
@@ -241,7 +243,7 @@ class _State:
             text = (
                 job(self.case.layout, self.bench, fills, self.fill.way)
                 + f"prepare {self.settings.seed}\nverify 0 {len(paths) - 1}\n"
-                f"clock {self.settings.seconds} {fewest} {most}\n"
+                f"clock {self.settings.seconds} {min(fewest, self.settings.least_rounds)} {fewest} {most}\n"
             )
             self.clock = Run()
             limit = self.settings.limit + self.settings.seconds
@@ -356,8 +358,23 @@ class _State:
             )
         if baseline and len(baseline) < 6:
             self.notes.append(
-                f"{len(baseline)} rounds are too few for an interval (6 are needed); give more --seconds"
+                f"{len(baseline)} rounds are too few for an interval (6 are needed): a round takes about "
+                f"{median(self._lengths()):.3g} s; give more --seconds or choose smaller sizes"
             )
+        wide = [trial.plan for trial in self.trials if _is_wide(trial.speedup)]
+        if wide:
+            named = ", ".join(f'"{plan}"' for plan in wide)
+            self.notes.append(
+                f"the interval of {named} is wide: its ends differ by more than a factor of {_WIDE:g}; "
+                "give more --seconds or measure on a quiet machine"
+            )
+
+    def _lengths(self) -> list[float]:
+        return [sum(times) for times in self._rounds()]
+
+
+def _is_wide(found: Estimate | None) -> bool:
+    return found is not None and found.low is not None and found.high is not None and found.high > _WIDE * found.low
 
 
 def _differs(difference: Difference | None) -> str | None:

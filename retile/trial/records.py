@@ -25,6 +25,7 @@ class Settings:
     seed: int = 1
     seconds: float = 10.0  # for clocking, all kernels together
     rounds: tuple[int, int] = (6, 1000)  # fewest (six give a 95 % interval) and most
+    least_rounds: int = 3  # where the fewest would take more than half as long again as ``seconds``
     verify: bool = True
     sanitize: bool = True  # verification builds use the sanitizers where the compiler has them
     trust: bool = False  # variants are only called where their assumptions hold; do not try others
