@@ -191,6 +191,8 @@ class Loops:
         """An extremum of parameters becomes a parameter of its own, from which chunks can be counted."""
         if isinstance(first, Affine) or bound_names(first) & self._setting.loop_ids or self._setting.strict:
             return first
+        if not self._setting.means_the_same_ahead(node):
+            return first
         symbol = Affine.of(self._setting.expression_parameter(c_text(node), type_))
         self._setting.add_fact(AllOf((at_least_bound(symbol, first), at_most_bound(symbol, first))), context, node)
         return symbol

@@ -13,7 +13,7 @@ from typing import Any
 from pycparser import c_ast
 
 from ..model import Assumption, AssumptionCode, ScalarClass, Storage, StorageKind
-from ..source.kinds import PointerTo
+from ..source.kinds import ArrayOf, PointerTo
 from .places import Place, Root
 from .polynomial import Poly
 from .refusals import refusal
@@ -128,9 +128,10 @@ class _Overlaps:
                 True,
                 root.text,
             )
-        element = place.type if not isinstance(place.type, PointerTo) else "void *"
+        pointer = isinstance(place.type, PointerTo)  # the text alone names what it leads to
+        element = "void *" if pointer else place.type
         return Storage(
-            text,
+            f"&{text}" if pointer else text,
             root.key,
             StorageKind.POINTER,
             element,
@@ -159,6 +160,8 @@ class _Overlaps:
                     and root.kind is StorageKind.SCALAR
                 ):
                     continue
+                if not root.text and root.cell is not None and root.cell.key == one.cell:
+                    continue  # a pointer of a table, which has an assumption with its rows
                 if root.key == one.root.key and root.kind is one.root.kind:
                     self._direct(one, name)
                 elif self._roots_meet(root, one.root):
@@ -190,9 +193,16 @@ class _Overlaps:
     # ------------------------------------------------------------ may two overlap?
 
     def _may_overlap(self, one: Storage, other: Storage) -> bool:
-        if one.object == other.object or f"{one.object}[]" == other.object or f"{other.object}[]" == one.object:
-            return False  # members of one structure; rows and their table, which have an assumption of their own
-        return self._roots_meet(self._stored.roots[one.name], self._stored.roots[other.name])
+        if one.object == other.object:
+            return False  # members of one structure
+        first, second = self._stored.roots[one.name], self._stored.roots[other.name]
+        if self._is_table(one.name, second) or self._is_table(other.name, first):
+            return False  # they have an assumption of their own
+        return self._roots_meet(first, second)
+
+    def _is_table(self, name: str, root: Root) -> bool:
+        """True if the root stands for the rows that the pointers of the storage lead to."""
+        return not root.text and root.cell is not None and root.cell.key == self._stored.keys[name]
 
     def _roots_meet(self, one: Root, other: Root) -> bool:
         a, b = one.kind is StorageKind.POINTER, other.kind is StorageKind.POINTER
@@ -235,13 +245,19 @@ class _Overlaps:
         parent = names.parent(node)
         while isinstance(parent, c_ast.BinaryOp) and parent.op in "+-":
             node, parent = parent, names.parent(parent)
-        reached = (
-            isinstance(parent, c_ast.ArrayRef)
-            and parent.name is node
-            or isinstance(parent, c_ast.StructRef)
-            or isinstance(parent, c_ast.UnaryOp)
-            and parent.op == "*"
-        )
-        while isinstance(parent, (c_ast.ArrayRef, c_ast.StructRef)):
-            parent = names.parent(parent)
-        return reached and not (isinstance(parent, c_ast.UnaryOp) and parent.op == "&")
+        if not self._designates(parent, node):
+            return False
+        while self._designates(parent, node):
+            node, parent = parent, names.parent(parent)
+        address = isinstance(parent, c_ast.UnaryOp) and parent.op == "&"
+        return not address and not isinstance(self._setting.type_of(node), ArrayOf)
+
+    @staticmethod
+    def _designates(above: Any, node: Any) -> bool:
+        """True for an element, member or target of what a node names."""
+        match above:
+            case c_ast.ArrayRef() | c_ast.StructRef():
+                return above.name is node
+            case c_ast.UnaryOp(op="*"):
+                return True
+        return False

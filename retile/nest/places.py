@@ -31,6 +31,7 @@ class Root:
     text: str  # C text of the address of its first cell; empty for rows, which have no common first cell
     direct: bool  # the object itself, or the target of the variable itself, not of a pointer in memory
     restrict: bool = False
+    cell: Place | None = None  # where a pointer in memory was read from
 
 
 @dataclass(frozen=True)
@@ -85,6 +86,10 @@ class Place:
         """The members on the way."""
         return tuple(step.name for step in self.steps if isinstance(step, Member))
 
+    def same_cell(self, other: Place) -> bool:
+        """True if both are surely one cell."""
+        return _identity(self) == _identity(other) and all(index.poly is not None for index in self.indices)
+
     def is_fixed(self, loop_ids: set[str]) -> bool:
         """True if it is one and the same cell throughout the nest."""
         return all(one.poly is not None and not one.poly.names() & loop_ids for one in self.indices)
@@ -96,6 +101,7 @@ class Places:
     def __init__(self, setting: Setting) -> None:
         self._setting = setting
         self._keys: dict[str, Binding] = {}
+        self._texts: dict[tuple[str, tuple[Poly | None, ...]], str] = {}  # of cells that stay, by key and subscripts
 
     # ------------------------------------------------------------ designators
 
@@ -243,6 +249,25 @@ class Places:
                     "copy it to a plain variable before the nest.",
                 )
 
+    def text_of(self, place: Place, node: Any) -> str:
+        """C text, ahead of the nest, of a cell that stays: one for each cell, as the user wrote it if that is possible."""
+        if not self._setting.means_the_same_ahead(node):
+            return self._texts.setdefault(_identity(place), self._written_out(place))
+        return self._texts.setdefault(_identity(place), c_text(node))
+
+    def _written_out(self, place: Place) -> str:
+        """``g->n``, ``t[k].of[2]``: a designator from the root's address."""
+        text = place.root.text.removeprefix("&") if place.root.kind is not StorageKind.POINTER else place.root.text
+        pointer = place.root.kind is StorageKind.POINTER
+        for at, step in enumerate(place.steps):
+            following = place.steps[at + 1] if at + 1 < len(place.steps) else None
+            if isinstance(step, Member):
+                text, pointer = f"{text}{'->' if pointer else '.'}{step.name}", False
+            elif not (pointer and step.poly == Poly() and isinstance(following, Member)):
+                assert step.poly is not None
+                text, pointer = f"{text}[{self._setting.poly_text(step.poly)}]", False
+        return text
+
     # ------------------------------------------------------------ pointers
 
     def pointer(self, node: Any, context: Context) -> Place:
@@ -389,12 +414,30 @@ class Places:
         if not isinstance(cell.type, PointerTo):
             raise self._unknown(node)
         if cell.is_fixed(self._setting.loop_ids) and all(one.poly == Poly() for one in cell.indices):
+            text = self.text_of(cell, node)
             if not self._setting.strict:
-                self._setting.held[c_text(node)] = cell
-            root = Root(c_text(node), StorageKind.POINTER, cell.root.binding, c_text(node), False)
+                self._setting.held[text] = cell
+            root = Root(text, StorageKind.POINTER, cell.root.binding, text, False, cell=cell)
             return self._target(root, (Index(Poly()),), cell.type, node)
-        root = Root(cell.key + "[]", StorageKind.POINTER, cell.root.binding, "", False)
-        return self._target(root, (*cell.indices, Index(Poly())), cell.type, node)
+        return self._target(rows_of(cell), (*cell.indices, Index(Poly())), cell.type, node)
+
+
+def rows_of(table: Place) -> Root:
+    """What the pointers of a table lead to, as one object whose first subscripts are those of the table."""
+    return Root(table.key + "[]", StorageKind.POINTER, table.root.binding, "", False, cell=table)
+
+
+def as_rows(place: Place) -> Place:
+    """The same cell as one of a table's rows, if pointers in memory lead to it."""
+    if place.root.cell is None:
+        return place
+    table = as_rows(place.root.cell)
+    behind = place.steps if place.root.text else place.steps[len(place.root.cell.indices) :]
+    return replace(place, root=rows_of(table), steps=(*table.indices, *behind))
+
+
+def _identity(place: Place) -> tuple[str, tuple[Poly | None, ...]]:
+    return place.key, tuple(index.poly for index in place.indices)
 
 
 def _bare(type_: Any) -> Any:

@@ -62,9 +62,9 @@ class Setting:
         self.loop_iterators: set[Binding] = set()
         self.outer_iterators: dict[Binding, Any] = {}  # iterators of the loops around the nest, with these loops
         self._stored_texts: frozenset[str] | None = None
-        inside = {id(node) for node in descendants(within)}
+        self._inside = frozenset(id(node) for node in descendants(within))
         self._assigned = {
-            binding: [node for node in nodes if id(node) in inside] for binding, nodes in names.assignments.items()
+            binding: [node for node in nodes if id(node) in self._inside] for binding, nodes in names.assignments.items()
         }
 
     # ------------------------------------------------------------ objects
@@ -100,10 +100,22 @@ class Setting:
         return self._assigned.get(binding, [])
 
     def is_frozen(self, binding: Binding) -> bool:
-        """True if no statement of the piece names the object as its target."""
+        """True if the object is there before the piece and no statement of the piece names it as its target."""
         return (
-            binding.is_object and not self.assigned(binding) and not self.qualifiers(binding) & {"volatile", "_Atomic"}
+            binding.is_object
+            and not self.assigned(binding)
+            and not self.is_inner(binding)
+            and not self.qualifiers(binding) & {"volatile", "_Atomic"}
         )
+
+    def is_inner(self, binding: Binding) -> bool:
+        """True if the object is declared inside the piece: its name means nothing ahead of it."""
+        return id(binding.decl) in self._inside
+
+    def means_the_same_ahead(self, node: Any) -> bool:
+        """True if the text of an expression has the same meaning ahead of the piece: all its names keep what they are."""
+        bindings = (self.names.of(one) for one in descendants(node) if isinstance(one, c_ast.ID))
+        return all(b is not None and (not b.is_object or self.is_frozen(b)) for b in bindings)
 
     def is_iterator(self, binding: Binding) -> bool:
         """True if some loop of the nest runs over the variable."""
@@ -159,7 +171,7 @@ class Setting:
         place = self.places.attempt(node, context)
         if place is None or not place.is_fixed(self.loop_ids):
             return None
-        text = c_text(node)
+        text = self.places.text_of(place, node)
         self.held[text] = place
         return self.knowledge.add_parameter(
             Parameter(text, text, type_, "member" if "." in text or "->" in text else "expression")
@@ -184,6 +196,9 @@ class Setting:
 
     def frozen_expression(self, node: Any, context: Context) -> bool:
         """True if nothing in the expression changes while the piece runs; notes the memory that it reads."""
+        return self.means_the_same_ahead(node) and self._is_frozen_part(node, context)
+
+    def _is_frozen_part(self, node: Any, context: Context) -> bool:
         match node:
             case c_ast.Constant():
                 return True
@@ -192,16 +207,16 @@ class Setting:
             case c_ast.UnaryOp() if node.op == "sizeof":
                 return self.constant(node) is not None
             case c_ast.UnaryOp() if node.op in ("+", "-", "~", "!"):
-                return self.frozen_expression(node.expr, context)
+                return self._is_frozen_part(node.expr, context)
             case c_ast.BinaryOp():
-                return self.frozen_expression(node.left, context) and self.frozen_expression(node.right, context)
+                return self._is_frozen_part(node.left, context) and self._is_frozen_part(node.right, context)
             case c_ast.TernaryOp():
-                return all(self.frozen_expression(part, context) for part in (node.cond, node.iftrue, node.iffalse))
+                return all(self._is_frozen_part(part, context) for part in (node.cond, node.iftrue, node.iffalse))
             case c_ast.Cast():
-                return isinstance(self.written_type(node.to_type), CType) and self.frozen_expression(node.expr, context)
+                return isinstance(self.written_type(node.to_type), CType) and self._is_frozen_part(node.expr, context)
             case c_ast.FuncCall():
                 return is_pure_call(node, self) and all(
-                    self.frozen_expression(one, context) for one in (node.args.exprs if node.args else ())
+                    self._is_frozen_part(one, context) for one in (node.args.exprs if node.args else ())
                 )
             case c_ast.ArrayRef() | c_ast.StructRef() | c_ast.UnaryOp(op="*"):
                 return self._frozen_memory(node, context)
@@ -225,7 +240,7 @@ class Setting:
         place = self.places.attempt(node, context)
         if place is None or not place.is_fixed(self.loop_ids):
             return False
-        self.held[c_text(node)] = place
+        self.held[self.places.text_of(place, node)] = place
         return True
 
     # ------------------------------------------------------------ polynomials

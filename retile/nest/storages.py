@@ -12,7 +12,7 @@ from ..source.kinds import ArrayOf, PointerTo
 from .effects import Touch
 from .knowledge import Obligation
 from .liveness import live_after
-from .places import Index, Member, Place, Root
+from .places import Index, Member, Place, Root, as_rows
 from .polynomial import Poly
 from .refusals import refusal
 from .scalars import Numbered, Web, webs
@@ -44,9 +44,8 @@ class _Builder:
         self._setting, self._walk, self._nest = setting, walk, nest
         self.stored = Stored()
         groups: dict[str, list[Numbered]] = defaultdict(list)
-        for number, statement in enumerate(walk.statements):
-            for place, touch in enumerate(statement.touches):
-                groups[touch.place.key].append(((number, place), touch))
+        for order, touch in _one_name_each(walk):
+            groups[touch.place.key].append((order, touch))
         for key, touches in groups.items():
             if touches[0][1].place.root.kind is StorageKind.SCALAR:
                 self._variable(key, touches)
@@ -218,8 +217,9 @@ class _Builder:
             return None
         constant = self._setting.constant(index.extent)
         last = dimension == len(place.indices) - 1
-        if constant is not None:  # a last member of one element may stand for more of them
-            return None if constant <= 1 and last and place.members else Affine.of(constant)
+        if constant is not None:  # a last member of one element may stand for more of them, in a single structure
+            single = all(one.poly == Poly() for one in place.indices[:-1])
+            return None if constant <= 1 and last and place.members and single else Affine.of(constant)
         return self._setting.stable_form(index.extent)
 
     # ------------------------------------------------------------ one dimension
@@ -293,6 +293,23 @@ class _Builder:
                         AssumptionCode.ROW_BOUND, inside, touch.context.formula, touch.context.loops, touch.node, (key,)
                     )
                 )
+
+
+def _one_name_each(walk: Walk) -> list[Numbered]:
+    """All touches; where a pointer of a table is followed by itself (``t[0][j]``) and as one of many (``t[i][j]``), both
+    as one of many."""
+    touches = [
+        ((number, at), touch) for number, statement in enumerate(walk.statements) for at, touch in enumerate(statement.touches)
+    ]
+    names: dict[str, set[str]] = defaultdict(set)
+    for _, touch in touches:
+        names[as_rows(touch.place).root.key].add(touch.place.root.key)
+    return [
+        (order, replace(touch, place=as_rows(touch.place)))
+        if len(names[as_rows(touch.place).root.key]) > 1
+        else (order, touch)
+        for order, touch in touches
+    ]
 
 
 def _shown(key: str, places: list[Place]) -> str:

@@ -17,6 +17,7 @@ from .conditions import Conditions
 from .context import Context
 from .effects import Effects, Touch
 from .headers import origin_of, spans_of
+from .hiding import hidden_names
 from .loops import Header, Loops
 from .refusals import Refused, refusal, refused
 from .scopes import Binding, descendants
@@ -97,6 +98,7 @@ class Walk:
         self._conditions = conditions
         self._headers = Loops(setting, conditions, Bounds(setting, conditions))
         self._effects = Effects(setting, conditions)
+        self.refusals += hidden_names(nest, setting)
         self.tree = self._node(nest, Context())
         self.statements = [self._without_sizes(statement) for statement in self.statements]
 
@@ -233,8 +235,7 @@ class Walk:
         return replace(statement, touches=kept)
 
     def _is_held(self, touch: Touch) -> bool:
-        held = self.setting.held.get(c_text(touch.node))
-        return held is not None and held.key == touch.place.key and held.steps == touch.place.steps
+        return any(held.same_cell(touch.place) for held in self.setting.held.values())
 
     # ------------------------------------------------------------ if
 
