@@ -10,7 +10,7 @@ from rewriting import WARNINGS, compile_and_run
 
 from retile.affine import Affine, at_most
 from retile.model import CType
-from retile.rewrite.expression import Expression, NoRoom, Scope, comparison, express
+from retile.rewrite.expression import Expression, NoRoom, Scope, comparison, condition, express
 from retile.sets import Region
 
 A = Affine.of
@@ -67,8 +67,8 @@ def test_expressions_have_the_forms_value(a: str, b: str, tmp_path: Path) -> Non
 
 
 def spelled(value: int) -> str:
-    """An integer as C of type long long."""
-    return f"(-{-value - 1}LL - 1)" if value < 0 else f"{value}LL"
+    """An integer as C of type long long, or unsigned where that is too small."""
+    return f"(-{-value - 1}LL - 1)" if value < 0 else f"{value}LL" if value < 1 << 63 else f"{value}ULL"
 
 
 def truth(left: Affine, sign: str, right: Affine, values: dict[str, int]) -> bool:
@@ -93,3 +93,23 @@ def test_what_fits_nowhere_is_refused() -> None:
 def test_a_sum_that_may_wrap_is_compared_by_its_distance() -> None:
     scope = scope_of({"x": "unsigned long", "y": "unsigned long"}).knowing(at_most(x, y))
     assert comparison(x + 64, "<", y, scope).text == "y - x > 64"
+
+
+@pytest.mark.parametrize("by", [1, 7, -1, -7])
+def test_relations_hold_where_no_type_holds_the_sum(by: int, tmp_path: Path) -> None:
+    """``x <= y + by`` at the ends of every type, under the sanitizer."""
+    parts, calls = [], []
+    for number, type in enumerate(TYPES):
+        text = condition(at_most(x, y + by), scope_of({"x": type, "y": type})).text
+        parts.append(f"static int relation{number}({type} x, {type} y) {{ return {text}; }}")
+        calls += [f"if (relation{number}(({type}){spelled(a)}, ({type}){spelled(b)}) != {int(a <= b + by)}) return 1;"
+                  for a in values_of(type) for b in values_of(type)]
+    program = "\n".join(parts) + "\nint main(void) {\n" + "\n".join(calls) + "\nreturn 0; }\n"
+    compile_and_run(tmp_path, program, warnings=(*WARNINGS, "-Wno-type-limits"), optimize="-O0",
+                    flags=("-fsanitize=undefined", "-fno-sanitize-recover=all"))
+
+
+def test_a_distance_of_one_reads_as_the_relation_itself() -> None:
+    scope = scope_of({"x": "long", "y": "long"})
+    assert condition(at_most(x, y + 1), scope).text == "x <= y || x - 1 <= y"
+    assert condition(at_most(x, y - 1), scope).text == "x < y"

@@ -11,7 +11,7 @@ from __future__ import annotations
 import re
 from dataclasses import dataclass
 
-from ..affine import Affine, AllOf, Constraint, Floor, equal
+from ..affine import Affine, AllOf, Constraint, Floor, Formula
 from ..model import (
     Assumption,
     AssumptionCode,
@@ -55,12 +55,27 @@ def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, name
         if assumption.code in (AssumptionCode.NO_OVERLAP, AssumptionCode.UNCHANGED) and len(assumption.storages) == 2:
             conditions.append(ranges.apart(*assumption.storages, assumption))
         elif assumption.condition is not None:
-            parts = assumption.condition.parts if isinstance(assumption.condition, AllOf) else (assumption.condition,)
-            for part in parts:
+            for part in _parts(assumption):
                 if not scope.implies(part):
                     conditions.append(condition(part, scope).text)
                     scope = scope.knowing(part)
     return Tests(tuple(ranges.declarations), (*ranges.signs, *dict.fromkeys(conditions)))
+
+
+def without_implied(assumptions: tuple[Assumption, ...], scope: Scope) -> tuple[Assumption, ...]:
+    """The assumptions without those relations that all the others imply: ``n <= ld + 1`` beside ``n <= ld``."""
+    for one in assumptions:
+        others = tuple(other for other in assumptions if other is not one)
+        facts = [other.condition for other in others if other.condition is not None]
+        if one.condition is not None and not one.given and scope.knowing(*facts).implies(one.condition):
+            assumptions = others
+    return assumptions
+
+
+def _parts(assumption: Assumption) -> tuple[Formula, ...]:
+    if assumption.condition is None:
+        return ()
+    return assumption.condition.parts if isinstance(assumption.condition, AllOf) else (assumption.condition,)
 
 
 class _Ranges:

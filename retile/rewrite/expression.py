@@ -14,7 +14,7 @@ import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 
-from ..affine import Affine, AllOf, Constraint, Floor, Formula, Symbol, equal
+from ..affine import Affine, AllOf, Constraint, Floor, Formula, Symbol, at_most, equal, less
 from ..model import CType
 from ..sets import Region
 
@@ -454,4 +454,26 @@ def _single_condition(constraint: Constraint, scope: Scope) -> Expression:
         return comparison(negative, "<=", Affine((), form.constant), scope)
     if not negative.terms:
         return comparison(positive, ">=", Affine((), -form.constant), scope)
-    return comparison(right, "<=", left, scope)
+    try:
+        return comparison(right, "<=", left, scope)
+    except NoRoom:
+        return _in_two_steps(negative, positive, form.constant, scope)
+
+
+def _in_two_steps(small: Affine, large: Affine, by: int, scope: Scope) -> Expression:
+    """``small <= large + by`` where no type holds the sum: first without ``by``, which leaves room for it; or NoRoom.
+
+    ``n <= ld || n - 1 <= ld`` for ``n <= ld + 1``, and ``n < ld && n + 1 <= ld`` for ``n <= ld - 1``.
+    """
+    word, level = ("||", OR) if by > 0 else ("&&", AND)
+    more = less(large, small) if by > 0 else less(small, large)
+    try:
+        clear = comparison(small, "<=" if by > 0 else "<", large, scope)
+        rest = comparison(small - by, "<=", large, scope.knowing(more))
+    except NoRoom:
+        type = express(large, scope, wide=False).type
+        edge = Affine((), type.largest - by if by > 0 else type.smallest - by)
+        more = at_most(large, edge) if by > 0 else at_most(edge, large)
+        clear = comparison(large, ">" if by > 0 else ">=", edge, scope)
+        rest = comparison(small, "<=", large + by, scope.knowing(more))
+    return Expression(f"{clear.at(RELATION)} {word} {rest.at(RELATION)}", INT, level)

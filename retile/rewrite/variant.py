@@ -13,12 +13,12 @@ from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
-from ..affine import Affine, AllOf, Formula, at_most, bound_names
+from ..affine import Affine, AllOf, Formula, at_most, bound_names, formula_names
 from ..model import Assumption, AssumptionCode, Judgement, Nest, Plan, Variant
 from ..sets import Region
 from ..tree import Loop, Node, Verbatim, children, loops_of
 from .after import restored
-from .assumed import Tests, tests_of
+from .assumed import Tests, tests_of, without_implied
 from .chunks import Loops
 from .expression import INT, Expression, NoRoom, Scope, written
 from .includes import insertion, missing
@@ -136,15 +136,15 @@ class _Order:
         except NoRoom:
             pass
         try:
-            return self._text(room_assumptions(self.nest, self.tree))
+            return self._text(room_assumptions(self.nest, self.tree, self._assumptions()))
         except NoRoom as error:
             raise InternalError(f"{self.nest.address}: no integer type of C is wide enough for {error}") from error
 
     def _text(self, room: tuple[Assumption, ...]) -> tuple[str, tuple[str, ...]]:
-        assumptions = (*self._assumptions(), *room)
+        before = outer_scope(self.nest, self.tree)
+        assumptions = without_implied((*room, *self._assumptions()), before)
         layout, style = self.layout, self.style
         names = Names(self.nest.names_in_scope | {"uintptr_t", "size_t"})
-        before = outer_scope(self.nest, self.tree)
         facts = tuple(a.condition for a in assumptions if a.condition is not None)
         indent = layout.indentation(self.nest.span.start)
         tests = Tests((), ()) if self.trust else tests_of(self.nest, assumptions, before, names)
@@ -269,9 +269,10 @@ def _in_range(symbol: str, low: int, high: int) -> list[Formula]:
     return [at_most(low, Affine.of(symbol)), at_most(Affine.of(symbol), high)]
 
 
-def room_assumptions(nest: Nest, tree: tuple[Node, ...]) -> tuple[Assumption, ...]:
+def room_assumptions(nest: Nest, tree: tuple[Node, ...], others: tuple[Assumption, ...]) -> tuple[Assumption, ...]:
     """That bounds of 64 bits are small enough for sums of them: nobody has larger ones, but a test says it."""
-    names = frozenset().union(*(bound_names(bound) for loop in loops_of(tree) for bound in (loop.lower, loop.upper)))
+    names = frozenset().union(*(bound_names(bound) for loop in loops_of(tree) for bound in (loop.lower, loop.upper)),
+                              *(formula_names(other.condition) for other in others if other.condition is not None))
     found = []
     for parameter in nest.parameters:
         if parameter.type.bits >= 64 and parameter.symbol in names:
