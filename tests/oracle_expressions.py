@@ -85,6 +85,7 @@ class Expressions(Types):
         if isinstance(kind, Pointer) or kind.floating:
             raise Unsupported("subscript")
         size = self.size(base_kind)
+        machine = self.machine
         limit = (lambda env: env[extent.index]) if isinstance(extent, Slot) else (lambda env: extent)
 
         def element(env: list) -> tuple[Object, int]:
@@ -95,9 +96,9 @@ class Expressions(Types):
             end = limit(env)
             if at >= 1 << 63:
                 at -= 1 << 64  # what a wrapped size_t reaches on every machine with 64-bit addresses
-            if end is None and abs(at) > FAR:
+            if end is None and abs(at) > FAR and not machine.uncertain:
                 raise Undefined(f"subscript {at} of {obj.name} is far outside any object of a test")
-            if end is not None and not 0 <= at < end:
+            if end is not None and not 0 <= at < end and not machine.uncertain:
                 raise Undefined(f"subscript {at} of {obj.name} is outside 0..{end}-1")
             return obj, offset + at * (size if type(size) is int else size(env))
 
@@ -308,9 +309,13 @@ class Expressions(Types):
 
         def run(env: list) -> object:
             chosen, other = (a, b) if condition(env) else (b, a)
-            if machine.may and data:
-                other(env)
-            return chosen(env)
+            if not (machine.may and data):
+                return chosen(env)
+            machine.uncertain += 1
+            other(env)
+            result = chosen(env)
+            machine.uncertain -= 1
+            return result
 
         return kind, run
 
@@ -336,11 +341,12 @@ class Expressions(Types):
 
         def run(env: list) -> int:
             first = a(env)
-            if first == stop:
-                if machine.may and data:
-                    b(env)
-                return int(first)
-            return int(b(env))
+            if not (machine.may and data):
+                return int(first) if first == stop else int(b(env))
+            machine.uncertain += 1
+            second = b(env)
+            machine.uncertain -= 1
+            return int(first) if first == stop else int(second)
 
         return run
 

@@ -280,8 +280,10 @@ class Program(Expressions):
         def run(env: list) -> object:
             if machine.may and data:
                 condition(env)
+                machine.uncertain += 1
                 yes(env)
                 no(env)
+                machine.uncertain -= 1
                 return None
             return yes(env) if condition(env) else no(env)
 

@@ -138,6 +138,7 @@ class Machine:
 
     sizes: dict[str, int]
     may: bool = False  # branches on data are all taken, so that the log holds what may happen
+    uncertain: int = 0  # how many conditions on data stand around what is only run because of ``may``
     steps: int = 2_000_000
     access: list | None = None  # of the statement that runs, if it belongs to the nest
     instances: list[Instance] = field(default_factory=list)
