@@ -264,3 +264,12 @@ def test_a_compiler_with_arguments_in_a_directory_of_its_own(tmp_path):
         call,
     )
     one.tells_apart(one.replaced("SCALE", "TWO"))
+
+
+def test_rows_that_the_nest_points_into_itself_have_memory(tmp_path):
+    smooth = case(tmp_path, "void smooth(double *img, const double *src, int h, int w)\n{\n"
+                            "    for (int i = 1; i < h - 1; i++) {\n        double *row = img + i * w;\n"
+                            "        const double *up = src + (i - 1) * w, *mid = src + i * w;\n"
+                            "        for (int j = 1; j < w - 1; j++)\n            row[j] = up[j] + mid[j - 1];\n    }\n}\n")
+    smooth.accepts(smooth.variant(smooth.text))
+    smooth.tells_apart(smooth.replaced("mid[j - 1]", "mid[j]"))

@@ -9,7 +9,7 @@ it points to, and the doubles that the struct's member points to; ``double **row
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -203,6 +203,7 @@ class _Builder:
 
     def build(self, named: Iterable[str]) -> Memory:
         reached = [_element_of(variable.init) for variable in self.derived.values()]
+        reached += [_element_of(init) for init in _pointers_set(self.nest)]
         for node in (part for whole in (self.nest, *reached) for part in walk(whole)):
             found = self.paths.of(node)
             if found:
@@ -356,6 +357,15 @@ def _element_of(pointer: Any) -> Any:
     while isinstance(pointer, c_ast.Cast):
         pointer = pointer.expr
     return c_ast.UnaryOp("*", c_ast.BinaryOp("+", pointer, c_ast.Constant("int", "0")))
+
+
+def _pointers_set(nest: Any) -> Iterator[Any]:
+    """What the nest sets pointers of its own to: ``double *row = a + i * n;`` follows ``a``."""
+    for node in walk(nest):
+        if isinstance(node, c_ast.Decl) and isinstance(node.type, c_ast.PtrDecl) and node.init is not None:
+            yield node.init
+        elif isinstance(node, c_ast.Assignment) and node.op == "=" and isinstance(node.lvalue, c_ast.ID):
+            yield node.rvalue
 
 
 def _names_of_type(node: Any) -> set[str]:
