@@ -48,8 +48,38 @@ int main(void) {
 @pytest.mark.parametrize("plan", ["j i", "i:4 j:4 j i"])
 def test_overlapping_windows_run_the_original(plan: str, tmp_path: Path) -> None:
     variant = case_of(tmp_path, FLAT).variant(plan)
-    assert FLAT[FLAT.index("for"):FLAT.rindex(";")] in variant.nest_text  # byte for byte
+    original = FLAT[FLAT.index("    for"):FLAT.rindex("}")]
+    assert "    } else {\n" + "".join(f"    {line}" for line in original.splitlines(True)) + "    }" in variant.nest_text
     compile_and_run(tmp_path, together(FLAT, [variant.text], OVERLAPS))
+
+
+MANY_LINES = """void survey(int n, int ld, double *to, const double *from, const char **word)
+{
+\tfor (int i = 0; i < n; i++) {
+\t\t/* turned:
+\t\t   rows first */
+\t\tfor (int j = 0; j < n; j++) {
+\t\t\tto[i * ld + j] = from[j * ld + i] + sizeof "a \\
+b";
+
+/* at the edge
+  of the page */
+\t\t\tto[i * ld + j] -= \\
+\t\t\t\t2;
+\t\t}
+\t}
+\t(void)word;
+}
+"""
+
+
+def test_the_original_moves_by_whole_lines(tmp_path: Path) -> None:
+    """Lines of a string stay; a comment moves if all of it can."""
+    text = case_of(tmp_path, MANY_LINES).variant("i:8 j:8 i j").nest_text
+    fallback = text[text.index("else {\n") + len("else {\n"):text.rindex("\n\t}")]
+    want = [line if line.startswith(("b\"", "/* at", "  of")) or not line else "\t" + line
+            for line in MANY_LINES[MANY_LINES.index("\tfor"):MANY_LINES.index("\n\t(void)")].split("\n")]
+    assert fallback.split("\n") == want
 
 
 def test_windows_that_lie_apart_run_the_variant(tmp_path: Path) -> None:

@@ -176,14 +176,15 @@ class _Order:
         return (*needed, *other)
 
     def _guarded(self, tests: Tests, lines: list[str], style: Style, indent: str) -> list[str]:
-        """The variant where the tests hold, else the original, byte for byte."""
-        original = self.source.text[self.nest.span.start:self.nest.span.end]
+        """The variant where the tests hold, else the original, which only moves to the right by whole lines."""
+        inner = indent + style.braced_step
+        original = inner + self.layout.moved((self.nest.span.start, self.nest.span.end), inner)
         parts = [f"({part})" if " || " in part and len(tests.conditions) > 1 else part for part in tests.conditions]
         head = " && ".join(parts)
         if len(indent) + len(head) > WIDTH:
             head = f"{style.eol}{indent}{style.step}&& ".join(parts)
         return [*(indent + line for line in tests.declarations),
-                *style.otherwise(style.block(f"if ({head})", lines, indent), [indent + original], indent)]
+                *style.otherwise(style.block(f"if ({head})", lines, indent), [original], indent)]
 
     def _joined(self, remark: list[str], lines: list[str], style: Style, indent: str) -> str:
         """One text in place of the nest: a block of its own where the nest is not one statement among others."""
