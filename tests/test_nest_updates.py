@@ -50,3 +50,27 @@ def test_two_kinds_of_update_keep_their_order(tmp_path: Path) -> None:
     file = tmp_path / "updates.c"
     file.write_text(HEAD + "{ hits[0] += (unsigned)i; hits[0] *= 5u; }\n}\n")
     assert retile.open_file(file).nest(3).check("j i").verdict.value == "illegal"
+
+
+@pytest.mark.parametrize(
+    "statement",
+    [
+        "sum[i * m + j] = echo[0][hits[0]++];",
+        "low[i * m + j] = (float)(hits[0] += 3u);",
+        "code[i * m + j] = (unsigned char)(hits[0] = hits[0] + 1u);",
+        "sum[i * m + j] = (hits[0] ^= (unsigned)j) > 4u;",
+    ],
+)
+def test_an_update_whose_value_is_looked_at_keeps_its_place(tmp_path: Path, statement: str) -> None:
+    """C11, 6.5.16: an assignment is an expression; which value it has depends on the updates before it."""
+    file = tmp_path / "updates.c"
+    file.write_text(HEAD + statement + "\n}\n")
+    nest = retile.open_file(file).nest(3)
+    assert nest.check("j i").verdict.value == "illegal"
+    assert nest.check("j i; reassociate yes").verdict.value == "illegal"
+
+
+def test_updates_between_commas_are_updates(tmp_path: Path) -> None:
+    file = tmp_path / "updates.c"
+    file.write_text(HEAD + "hits[0]++, hits[1] += (unsigned)i;\n}\n")
+    assert retile.open_file(file).nest(3).check("j i").verdict.value == "legal"

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -36,16 +37,18 @@ class Effects:
         self._setting = setting
         self._conditions = conditions
         self._found: list[Touch] = []
+        self._unused: frozenset[int] = frozenset()  # expressions of the statement whose values nobody looks at
 
     def of(self, node: Any, context: Context) -> tuple[Touch, ...]:
-        """The touches of an expression statement."""
+        """The touches of an expression statement, or of a condition."""
         self._found = []
+        self._unused = frozenset(map(id, _unused_values(node)))
         self._visit(node, context)
         return tuple(self._found)
 
     def of_declaration(self, decl: Any, context: Context) -> tuple[Touch, ...]:
         """The touches of a declaration with an initialiser."""
-        self._found = []
+        self._found, self._unused = [], frozenset()
         name = c_ast.ID(decl.name, decl.coord)
         place = self._setting.places.declared(decl)
         if isinstance(decl.init, c_ast.InitList):
@@ -57,7 +60,7 @@ class Effects:
 
     def of_pointer(self, value: Any, binding: Any, context: Context, node: Any) -> tuple[Touch, ...]:
         """The touches of giving a pointer its value."""
-        self._found = []
+        self._found, self._unused = [], frozenset()
         self._base(value, context)
         self._found.append(Touch(self._setting.places.variable(binding), True, context, node))
         return tuple(self._found)
@@ -148,7 +151,8 @@ class Effects:
         if node.op == "*":
             self._read(node, context)
         elif node.op in ("++", "--", "p++", "p--"):
-            self._update(node.expr, context, update("+", self._type(node.expr), self._type(node.expr)))
+            whole = update("+", self._type(node.expr), self._type(node.expr)) if id(node) in self._unused else None
+            self._update(node.expr, context, whole)
         elif node.op == "&":
             raise refused(
                 node, "address", f"the address `{c_text(node)}` is taken inside the nest; use the object itself there."
@@ -274,11 +278,10 @@ class Effects:
             return
         if node.op != "=":
             self._visit(node.rvalue, context)
-            self._update(
-                target, context, update(family(node.op[:-1]), self._type(target), self._work(target, node.rvalue))
-            )
+            kind = family(node.op[:-1]) if id(node) in self._unused else ""
+            self._update(target, context, update(kind, self._type(target), self._work(target, node.rvalue)))
             return
-        kind, reads = accumulation(node)
+        kind, reads = accumulation(node) if id(node) in self._unused else ("", 0)
         whole = update(kind, self._type(target), self._type(node.rvalue))
         before = len(self._found)
         self._visit(node.rvalue, context)
@@ -325,3 +328,15 @@ class Effects:
                 f"the iterator `{binding.name}` is changed inside its loop; only the loop's header may do that.",
             )
         self._not_outside(node, binding)
+
+
+def _unused_values(node: Any) -> Iterator[Any]:
+    """The expressions of a statement that stand for what they do: an update among them is nothing but an update.
+
+    ``s += x;`` and both halves of ``s++, t += x;`` are; in ``a[n++] = x;`` the order of the updates of n can be seen.
+    """
+    if isinstance(node, c_ast.ExprList):
+        for part in node.exprs:
+            yield from _unused_values(part)
+    else:
+        yield node

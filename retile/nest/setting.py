@@ -64,7 +64,8 @@ class Setting:
         self._stored_texts: frozenset[str] | None = None
         self._inside = frozenset(id(node) for node in descendants(within))
         self._assigned = {
-            binding: [node for node in nodes if id(node) in self._inside] for binding, nodes in names.assignments.items()
+            binding: [node for node in nodes if id(node) in self._inside]
+            for binding, nodes in names.assignments.items()
         }
 
     # ------------------------------------------------------------ objects
@@ -113,7 +114,7 @@ class Setting:
         return id(binding.decl) in self._inside
 
     def means_the_same_ahead(self, node: Any) -> bool:
-        """True if the text of an expression has the same meaning ahead of the piece: all its names keep what they are."""
+        """True if the text of an expression may stand ahead of the piece: all its names are known there and stay."""
         bindings = (self.names.of(one) for one in descendants(node) if isinstance(one, c_ast.ID))
         return all(b is not None and (not b.is_object or self.is_frozen(b)) for b in bindings)
 

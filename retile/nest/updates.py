@@ -1,9 +1,9 @@
-"""Updates ``x = x op e``: what may be done in another order if the result is allowed to round differently, and what anyway.
+"""Updates ``x = x op e``: which may be done in another order if the result may round differently, and which anyway.
 
 Additions, multiplications, minima and maxima and the bitwise operators are commutative and associative in arithmetic.
-In C they are so to the last bit only where nothing rounds and nothing overflows: bitwise operators, minima and maxima of
-integers, and sums and products that wrap around because they are computed in an unsigned type (ISO C11, 6.2.5).  A signed
-sum may overflow at an intermediate value in one order and not in another; a floating one rounds differently.
+In C they are so to the last bit only where nothing rounds and nothing overflows: bitwise operators, minima and maxima
+of integers, and sums and products that wrap around because they are computed in an unsigned type (ISO C11, 6.2.5).  A
+signed sum may overflow at an intermediate value in one order and not in another; a floating one rounds differently.
 """
 
 from __future__ import annotations
@@ -44,7 +44,10 @@ def family(op: str) -> str:
 
 
 def accumulation(node: Any) -> tuple[str, int]:
-    """The family of ``x = ...`` and how often it reads ``x``: ``x = x + e``, ``x = e > x ? e : x``, ``x = fmax(x, e)``."""
+    """The family of an assignment and how often it reads its target.
+
+    ``x = x + e`` reads it once, ``x = e > x ? e : x`` twice, ``x = fmax(x, e)`` once.
+    """
     value, target = node.rvalue, c_text(node.lvalue)
     if isinstance(value, c_ast.BinaryOp):
         left, right = c_text(value.left) == target, c_text(value.right) == target
