@@ -9,7 +9,10 @@ from trial_case import FAST, case, of_file
 from retile.model import Assumption, AssumptionCode, Judgement, RetileError, Verdict
 from retile.source import CompilerCall
 from retile.trial import Settings, verify_all
-from retile.trial.build import can_sanitize, strict_flags
+from retile.trial.build import Workshop, can_sanitize, strict_flags
+from retile.trial.kernel import kernel_of
+from retile.trial.layout import Bench
+from retile.trial.verification import Verifier
 
 STRICT = Settings()
 COPY = """\
@@ -273,3 +276,31 @@ def test_rows_that_the_nest_points_into_itself_have_memory(tmp_path):
                             "        for (int j = 1; j < w - 1; j++)\n            row[j] = up[j] + mid[j - 1];\n    }\n}\n")
     smooth.accepts(smooth.variant(smooth.text))
     smooth.tells_apart(smooth.replaced("mid[j - 1]", "mid[j]"))
+
+
+def test_a_single_cell_behind_a_pointer(tmp_path):
+    found = case(
+        tmp_path,
+        "void count(int n, int m, long *hits, double *sum, double d[n][m]) {\n    for (int i = 0; i < n; i++)\n"
+        "        for (int j = 0; j < m; j++) {\n            *hits += d[i][j] > 0;\n            sum[0] += d[i][j];\n"
+        "        }\n}\n",
+    )
+    assert any(dict(sizes)["n"] > 2 for sizes in found.accepts(found.variant(found.text)).cases)
+    assert found.tells_apart(found.replaced("> 0", "> 0.5")).difference.array == "hits"
+
+
+def test_sizes_without_work_prove_nothing(tmp_path):
+    """Where only empty loops can be run, nothing was verified."""
+    text = "void f(int n, int to[4], int from[4]) {\n    for (int i = 0; i < n; i++)\n        to[i] = from[i];\n}\n"
+    found = case(tmp_path, text)
+    bench = Bench(kernel_of(found.source, found.nest))
+
+    def only_empty(sizes):
+        if sizes["n"] > 0:
+            raise RetileError("no room")
+        return Bench.layout(bench, sizes)
+
+    bench.layout = only_empty
+    verifier = Verifier(bench, Workshop(tmp_path, found.source.call, str(tmp_path)), FAST)
+    with pytest.raises(RetileError, match="nothing to verify at: no room"):
+        verifier.cases([found.variant(found.text)])

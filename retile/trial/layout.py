@@ -213,6 +213,8 @@ class _Sizing:
         cells = self.memory.cells_of(storage.name)
         if not cells:
             return
+        if access.subscripts == (Affine(),) and not self._subscripted(cells[0]):
+            return  # ``*p`` alone: the one element that there is
         if access.subscripts is None or not self._fits(storage, cells[0], access.subscripts):
             for subscripts in self._looked_up(cells[0]):
                 self._reach(cells[0], [self._range(node, statement) for node in subscripts])
@@ -221,10 +223,14 @@ class _Sizing:
 
     def _fits(self, storage: Storage, cell: Cell, subscripts: tuple[Affine, ...]) -> bool:
         """True if the subscripts are those of the blocks on the way, one by one; else the C text has to tell."""
-        total = sum(block.skip + (block.levels[-1] if block.levels else 0) for block in self._chain(cell))
+        total = self._subscripted(cell)
         if storage.strides:
             return len(subscripts) == total - 1 + len(storage.strides)
         return len(subscripts) <= total or cell.repeat != "1"
+
+    def _subscripted(self, cell: Cell) -> int:
+        """How many subscripts the blocks on the way to a cell take."""
+        return sum(block.skip + (block.levels[-1] if block.levels else 0) for block in self._chain(cell))
 
     def _chain(self, cell: Cell) -> list[Block]:
         chain = [self.memory.blocks[cell.block]]

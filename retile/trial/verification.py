@@ -76,7 +76,7 @@ class Verifier:
     def cases(self, variants: Sequence[Variant]) -> list[Case]:
         """The sizes to verify at, each with its layout; RetileError if there is no case at all."""
         found: list[Case] = []
-        problem = "no sizes satisfy what the nest needs"
+        problem = ""
         for sizes in verification_sizes(self.bench, [variant.plan for variant in variants], self.settings.trust):
             try:
                 layout = self.bench.layout(sizes)
@@ -85,7 +85,8 @@ class Verifier:
                 continue
             if bytes_of(self.bench, layout) <= _MOST_BYTES:
                 found.append(Case(sizes, layout))
-        if not found:
+        if not found or (problem and not any(self.bench.work(case.sizes) for case in found)):
+            problem = problem or "no sizes satisfy what the nest needs"
             raise RetileError(f"{self.bench.nest.address}: there is nothing to verify at: {problem}")
         return found if self.settings.trust else found + self._overlapping(found, variants)
 
