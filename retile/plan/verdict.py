@@ -252,8 +252,12 @@ class _Court:
     def _needs(self, assumption: Assumption, reorders: dict[tuple[str, str], bool]) -> bool:
         """True if the plan rests on an assumption; row lengths too, since the loops' bounds are built under them."""
         if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
-            return self._could_reverse(*assumption.storages, reorders)
+            return self._could_reverse(*assumption.storages, reorders) or self._copy_reads(assumption.storages)
         return not self.is_identity()
+
+    def _copy_reads(self, storages: tuple[str, ...]) -> bool:
+        """True if a statement that runs again reads one of the storages: a store to the other must not change it."""
+        return any(access.storage in storages for id in self.plan.copied for access in self._nest.statement(id).accesses)
 
     def is_identity(self) -> bool:
         """True if the plan is the original order, loop for loop."""
