@@ -13,7 +13,8 @@ from command_line import ROOT, SAMPLES, line_of, retile
 
 BEAMS = f"samples_c/beamform.c:{line_of('beamform.c', 'form_beams')}"
 EIGHT = f"samples_c/relax.c:{line_of('relax.c', 'relax_eight')}"
-PAINT = f"samples_c/swath_mosaic.c:{line_of('swath_mosaic.c', 'paint')}"
+RETURNS = f"samples_c/first_return.c:{line_of('first_return.c', 'first_returns')}"
+BREAK = line_of("first_return.c", "first_returns", "break;")
 COMMANDS = ("nests", "depend", "check", "rewrite", "measure", "host")
 
 
@@ -96,14 +97,15 @@ def test_an_error_of_retile_itself_is_owned_up_to(tmp_path):
 # ---------------------------------------------------------------- nests
 
 def test_nests_prints_a_table_and_nothing_else():
-    done = retile("nests", "samples_c/relax.c", "samples_c/swath_mosaic.c")
+    done = retile("nests", "samples_c/relax.c", "samples_c/first_return.c")
     assert (done.status, done.err) == (0, "")
     rows = done.out.splitlines()
     assert [row.split()[0] for row in rows if row.startswith("samples_c/")] == [
         f"samples_c/{sample}:{line_of(sample, function)}" for sample, function in
         (("relax.c", "relax_four"), ("relax.c", "relax_eight"), ("relax.c", "relax_colour"),
-         ("swath_mosaic.c", "paint"), ("swath_mosaic.c", "lift"))]
-    assert "refused" in next(row for row in rows if row.startswith(PAINT))
+         ("first_return.c", "first_returns"), ("first_return.c", "first_returns_by_halving"),
+         ("first_return.c", "sum_until_mark"))]
+    assert "refused" in next(row for row in rows if row.startswith(RETURNS))
     assert "ready" in next(row for row in rows if row.startswith(EIGHT))
 
 
@@ -116,18 +118,17 @@ def test_nests_lists_inner_loops_with_all_and_in_json():
 
 
 def test_the_document_of_nests_has_the_fields_of_the_contract():
-    done = retile("nests", "--json", "samples_c/swath_mosaic.c")
+    done = retile("nests", "--json", "samples_c/first_return.c", "samples_c/swath_transpose.c")
     assert (done.status, done.err) == (0, "")
-    paint = json.loads(done.out)["nests"][0]
-    line = line_of("swath_mosaic.c", "paint")
-    assert paint.items() >= {
-        "address": PAINT, "file": "samples_c/swath_mosaic.c", "line": line, "function": "paint", "outermost": True,
-        "loops": ["p", "b"], "status": "refused"}.items()
-    assert [refusal["line"] for refusal in paint["refusals"]] == [line + 4]
-    assert all({"line", "code", "reason"} <= refusal.keys() for refusal in paint["refusals"])
-    lift = json.loads(done.out)["nests"][2]
-    assert (lift["status"], lift["refusals"]) == ("ready", [])
-    assert all({"code", "text"} <= assumption.keys() for assumption in lift["assumptions"])
+    listed = json.loads(done.out)["nests"]
+    assert listed[0].items() >= {
+        "address": RETURNS, "file": "samples_c/first_return.c", "line": BREAK - 5, "function": "first_returns",
+        "outermost": True, "loops": ["b", "s"], "status": "refused"}.items()
+    assert [refusal["line"] for refusal in listed[0]["refusals"]] == [BREAK]
+    assert all({"line", "code", "reason"} <= refusal.keys() for refusal in listed[0]["refusals"])
+    turn = next(nest for nest in listed if nest["function"] == "turn_swath")
+    assert (turn["status"], turn["refusals"]) == ("ready", [])
+    assert [set(assumption) >= {"code", "text"} for assumption in turn["assumptions"]] == [True]
 
 
 def test_definitions_reach_the_preprocessor(tmp_path):
@@ -167,10 +168,10 @@ def test_depend_as_a_table_and_as_a_graph():
 
 
 def test_depend_of_a_refused_nest_is_no():
-    done = retile("depend", PAINT, "--json")
+    done = retile("depend", RETURNS, "--json")
     assert done.status == 1
-    assert json.loads(done.out)["refusals"][0]["line"] == line_of("swath_mosaic.c", "paint") + 4
-    assert "mosaic[cell[p * beams + b]]" in done.err
+    assert json.loads(done.out)["refusals"][0]["line"] == BREAK
+    assert "break;" in done.err
 
 
 # ---------------------------------------------------------------- check
@@ -202,10 +203,10 @@ def test_the_document_of_check_has_the_fields_of_the_contract():
 
 
 def test_check_of_a_refused_nest_is_no():
-    done = retile("check", PAINT, "b p")
+    done = retile("check", RETURNS, "s b")
     assert (done.status, done.err) == (1, "")
     assert done.out.startswith("refused: ")
-    assert f"samples_c/swath_mosaic.c:{line_of('swath_mosaic.c', 'paint') + 4}" in done.out
+    assert f"samples_c/first_return.c:{BREAK}" in done.out
 
 
 # ---------------------------------------------------------------- rewrite
@@ -266,7 +267,7 @@ def test_options_of_a_plan_win_over_those_of_the_call():
     assert said["options"] == "remainder clamp"
 
 
-@pytest.mark.parametrize("address, plan, verdict", [(EIGHT, "j i", "illegal"), (PAINT, "b p", "refused")])
+@pytest.mark.parametrize("address, plan, verdict", [(EIGHT, "j i", "illegal"), (RETURNS, "s b", "refused")])
 def test_nothing_is_written_for_a_plan_that_is_not_legal(tmp_path, address, plan, verdict):
     out = tmp_path / "out.c"
     done = retile("rewrite", address, plan, "-o", out)
