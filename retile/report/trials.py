@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from .table import Column, Look, coloured, paragraph, table
@@ -10,8 +12,10 @@ if TYPE_CHECKING:
     from ..trial import Campaign, Trial
     from ..trial.statistics import Estimate
 
-_COLUMNS = (Column("plan"), Column("time per call", right=True), Column("times faster", right=True),
+_COLUMNS = (Column("plan"), Column("time per call", right=True, whole=True), Column("95 % interval", right=True, whole=True),
+            Column("times faster", right=True, whole=True), Column("95 % interval", right=True, whole=True),
             Column("verified", whole=True), Column("identical", whole=True), Column(""))
+_INTERVALS = (2, 4)  # the columns that are left out where there is none
 _UNITS = ((1.0, "s"), (1e-3, "ms"), (1e-6, "us"), (1e-9, "ns"))
 
 
@@ -20,14 +24,16 @@ def campaign_lines(campaign: Campaign, look: Look) -> list[str]:
     sizes = ", ".join(f"{name} = {value}" for name, value in campaign.sizes)
     version = campaign.compiler_version or campaign.compiler
     lines = [f"{campaign.address}" + (f" at {sizes}" if sizes else ""), f"{version}, {' '.join(campaign.flags)}", ""]
-    from ..trial.statistics import estimate
+    from ..trial.statistics import Estimate, estimate
 
     baseline = estimate(campaign.baseline_samples) if campaign.baseline_samples else None
-    rows: list[tuple[str, ...]] = [("the original", duration(baseline), "1", "", "", "")]
-    rows += [_row(trial, trial is campaign.best) for trial in campaign.trials]
+    clock = Scale.of([trial.seconds for trial in campaign.trials] + [baseline])
+    rows: list[tuple[str, ...]] = [("the original", *clock.cells(baseline), *_RATIO.cells(Estimate(1, None, None)), "", "", "")]
+    rows += [_row(trial, clock, trial is campaign.best) for trial in campaign.trials]
     best = next((number for number, trial in enumerate(campaign.trials, 1) if trial is campaign.best), None)
-    lines += table(_COLUMNS, rows, look, best=best)
-    lines += ["", *paragraph("Medians with their 95 % intervals. verified: built without contraction of floating-point "
+    shown = [at for at in range(len(_COLUMNS)) if at not in _INTERVALS or any(row[at] for row in rows)]
+    lines += table([_COLUMNS[at] for at in shown], [[row[at] for at in shown] for row in rows], look, best=best)
+    lines += ["", *paragraph("Times are medians. verified: built without contraction of floating-point "
                              "operations, all outputs are the same, bit for bit, at every size tried. identical: so "
                              "are those of the builds that were timed.", look)]
     lines += _loose(campaign, look)
@@ -50,45 +56,56 @@ def _loose(campaign: Campaign, look: Look) -> list[str]:
                      "results rounded downward and upward lie apart. All others are the same, bit for bit.", look)
 
 
-def _row(trial: Trial, is_best: bool) -> tuple[str, ...]:
+def _row(trial: Trial, clock: Scale, is_best: bool) -> tuple[str, ...]:
     plan = trial.plan + (f"; {trial.options}" if trial.options else "")
     checked = "not asked" if trial.verification is None else "yes" if trial.verified else "NO"
     if trial.verified and trial.verification is not None and trial.verification.tolerance is not None:
         checked = f"to {trial.verification.tolerance:.1e}"
     identical = "" if trial.identical is None else "yes" if trial.identical else "no"
-    return plan, duration(trial.seconds), ratio(trial.speedup), checked, identical, "best" if is_best else ""
+    times, ratios = clock.cells(trial.seconds), _RATIO.cells(trial.speedup)
+    return plan, *times, *ratios, checked, identical, "best" if is_best else ""
 
 
-def duration(time: Estimate | None) -> str:
-    """Seconds with a fitting unit: ``12.3 ms [12.1, 12.6]``; a dash if there is none."""
-    if time is None:
-        return "-"
-    factor, unit = next((pair for pair in _UNITS if time.median >= pair[0]), _UNITS[-1])
-    return f"{_digits(time.median / factor)} {unit}" + _interval(time, factor)
+@dataclass(frozen=True)
+class Scale:
+    """One unit and one number of decimals for a column, so that its numbers compare at a glance."""
+
+    factor: float
+    unit: str
+    decimals: int
+
+    @staticmethod
+    def of(times: Iterable[Estimate | None]) -> Scale:
+        """The unit in which the smallest median is at least 1, shown with three digits."""
+        least = min((time.median for time in times if time is not None), default=1.0)
+        factor, unit = next((pair for pair in _UNITS if least >= pair[0]), _UNITS[-1])
+        return Scale(factor, " " + unit, sum(least / factor < limit for limit in (10, 100)))
+
+    def cells(self, value: Estimate | None) -> tuple[str, str]:
+        """The median and its interval, ``12.3 ms`` and ``12.1 to 12.6``; a dash if there is no median."""
+        if value is None:
+            return "-", ""
+        low, high = value.low, value.high
+        interval = "" if low is None or high is None else f"{self._number(low)} to {self._number(high)}"
+        return self._number(value.median) + self.unit, interval
+
+    def _number(self, number: float) -> str:
+        return f"{number / self.factor:.{self.decimals}f}"
 
 
-def ratio(times: Estimate | None) -> str:
-    """A ratio: ``3.21 [3.1, 3.4]``; a dash if there is none."""
-    return "-" if times is None else _digits(times.median) + _interval(times, 1.0)
-
-
-def _digits(number: float) -> str:
-    """Three digits, or all those before the point."""
-    return f"{number:.0f}" if number >= 1000 else f"{number:.3g}"
-
-
-def _interval(value: Estimate, factor: float) -> str:
-    if value.low is None or value.high is None:
-        return ""
-    return f" [{_digits(value.low / factor)}, {_digits(value.high / factor)}]"
+_RATIO = Scale(1.0, "", 2)
 
 
 def _remarks(campaign: Campaign, look: Look) -> list[str]:
-    """What went wrong with variants, or differs; the same of several is said once."""
+    """What went wrong with variants, or differs; the same of several is said once, with the first place of it."""
     plans: dict[str, list[str]] = {}
+    places: dict[str, str] = {}
     for trial in campaign.trials:
         for text in _faults(trial):
-            plans.setdefault(text, []).append(f'"{trial.plan}"')
+            what, mark, place = text.partition("; first at ")
+            places.setdefault(what, mark + place)
+            plans.setdefault(what, []).append(f'"{trial.plan}"' + _amount(trial))
+    plans = {what + places[what]: names for what, names in plans.items()}
     return [line for text, names in plans.items() for line in paragraph(f"{', '.join(names)}: {text}", look, "", "  ")]
 
 
@@ -101,6 +118,9 @@ def _faults(trial: Trial) -> list[str]:
     elif trial.failure:
         found.append(f"not timed: {trial.failure}")
     if trial.identical is False:
-        amount = f" by up to {trial.largest_difference:.3g}" if trial.largest_difference is not None else ""
-        found.append(f"the timed builds differ{amount}" + (f": {trial.cause}" if trial.cause else ""))
+        found.append("the timed build differs from the original's" + (f": {trial.cause}" if trial.cause else ""))
     return found
+
+
+def _amount(trial: Trial) -> str:
+    return "" if trial.largest_difference is None else f" (by up to {trial.largest_difference:.2g})"
