@@ -229,6 +229,7 @@ def rewrite(address: str, plan: str, trust: bool, file: str | None, as_diff: boo
 @click.option("--seed", type=int, default=1, show_default=True, help="Of the random contents.")
 @click.option("--flags", metavar="TEXT", help="Flags of the timed builds (default: '-O3 -march=native').")
 @click.option("-o", "result", metavar="FILE", help="Where to keep all samples (default: a new file here).")
+@click.option("--plot", metavar="FILE", help="Draw the speedups of every round into FILE.svg, .png or .pdf.")
 @_remainder
 @_reassociate
 @_trust
@@ -236,11 +237,11 @@ def rewrite(address: str, plan: str, trust: bool, file: str | None, as_diff: boo
 @_compiler_options
 @_json
 def measure(address: str, plans: tuple[str, ...], as_json: bool, sizes: tuple[str, ...], fills: tuple[str, ...],
-            seconds: float, seed: int, flags: str | None, result: str | None, trust: bool, **given: Any) -> int:
+            seconds: float, seed: int, flags: str | None, result: str | None, plot: str | None, trust: bool, **given: Any) -> int:
     """Build the original and the variants of plans, verify that they compute the same, and time them on this host."""
     from .commands import measure
 
-    measuring = measure.Measuring(sizes, fills, seconds, seed, flags, _defaults(given), _facts(given), trust, result)
+    measuring = measure.Measuring(sizes, fills, seconds, seed, flags, _defaults(given), _facts(given), trust, result, plot)
     return measure.run(address, plans, _compiling(given), measuring, as_json=as_json)
 
 

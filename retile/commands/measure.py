@@ -7,11 +7,13 @@ import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from ..library import OpenNest
 from ..model import Judgement, Plan, RetileError, Verdict
 from ..report.document import of_measure_refused
+from ..report.plot import check_plot_name, speedup_plot
 from ..report.trials import campaign_lines
 from ..report.verdict import verdict_lines
 from .compiling import CompilerOptions
@@ -40,6 +42,7 @@ class Measuring:
     facts: Facts
     trust: bool
     result: str | None  # file for the records; None for one named after the time
+    plot: str | None  # file for a picture of the speedups
 
 
 def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measuring: Measuring, *,
@@ -47,6 +50,8 @@ def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measur
     """Verify and time the variants of plans; 1 if a plan is not legal or a variant is not verified."""
     if not plans:
         raise RetileError("measure needs at least one PLAN, for example 'i j' for the original order of two loops.")
+    if measuring.plot is not None:
+        check_plot_name(measuring.plot)
     sizes = named_sizes(measuring.sizes)
     settings = _settings(measuring, compiling)
     nest = open_nest(address, compiling, measuring.facts)
@@ -93,6 +98,10 @@ def _report(campaign: Campaign, measuring: Measuring, as_json: bool) -> int:
     from ..trial import as_text, write_result
 
     file = write_result(campaign, measuring.result)
+    if measuring.plot is not None:
+        from ..source import replace_file
+
+        replace_file(measuring.plot, speedup_plot(campaign, Path(measuring.plot).suffix.lower()))
     if as_json:
         print_document({**json.loads(as_text(campaign)), "result": file})
     else:
