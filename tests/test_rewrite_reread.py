@@ -48,6 +48,7 @@ def test_what_is_printed_is_what_was_judged(type: str, loops: tuple[str, str], p
         path = tmp_path / "variant.c"
         path.write_text(variant.text)
         above = variant.text[:variant.text.index(without_remark(variant.nest_text).split("\n")[0])]
+        above += variant.text[len(above):].partition("for")[0]  # behind an if that asks whether the loop would end
         found = read_nest(open_source(str(path)), above.count("\n") + 1)
         assert found.nest is not None, found.refusals
         for n in SIZES:

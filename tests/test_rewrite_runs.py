@@ -249,3 +249,30 @@ def test_a_condition_is_asked_before_its_data_change(asked: str, loop: str, body
             .replace("memset(one, 0, sizeof one);", "memset(one, 0, sizeof one); for (int r = 0; r < N; r++) one[r][0][0] = r * 7 % 5;") \
             .replace("memset(two, 0, sizeof two);", "memcpy(two, one, sizeof two);")
         compile_and_run(tmp_path, together(text, [case.variant(plan).text], main), optimize="-O0")
+
+
+# A loop that the plan moves out of one that makes no round: with these bounds alone it would never end.
+ENDLESS = {
+    "largest int": ("int", "j = 0; j <= m; j++", "INT_MAX", "m < 2147483647"),
+    "largest unsigned char": ("unsigned char", "j = 0; j <= m; j++", "255", "m < 255"),
+    "largest size_t": ("size_t", "j = 0; j <= m; j++", "SIZE_MAX", "m < 18446744073709551615U"),
+    "smallest int": ("int", "j = 5; j >= m; j--", "INT_MIN", "m >= -2147483647"),
+    "two steps": ("int", "j = 0; j < m; j += 2", "INT_MAX", ""),
+    "two steps, inclusive": ("int", "j = 1; j <= m; j += 2", "INT_MAX", "m <= 2147483646"),
+    "behind its end": ("int", "j = 0; j != m; j++", "-1", "m >= 0"),
+}
+
+
+@pytest.mark.parametrize(("type", "header", "bound", "condition"), ENDLESS.values(), ids=ENDLESS.keys())
+def test_a_loop_that_never_ran_still_ends(type: str, header: str, bound: str, condition: str, tmp_path: Path) -> None:
+    text = (f"#include <stddef.h>\nvoid survey(int n, {type} m, unsigned char z[][64])\n{{\n    for (int i = 0; i < n; i++)\n"
+            f"        for ({type} {header})\n            z[i][j & 63] += 1;\n}}\n")
+    variants = [case_of(tmp_path, text).variant(plan).text for plan in ("j i", "j:64 i j")]
+    assert f"if ({condition}" in variants[0]
+    main = ("static unsigned char one[9][64], two[9][64];\nint main(void) {\n    variant0(0, " + bound + ", two);\n"
+            "    for (int n = 0; n < 9; n++) for (int m = 0; m < 200; m++) {\n"
+            f"        original(n, ({type})m, one); variant0(n, ({type})m, two); variant1(n, ({type})m, one); original(n, ({type})m, two);\n"
+            "        if (memcmp(one, two, sizeof one)) return 1;\n    }\n    return 0;\n}\n")
+    if type == "unsigned char":
+        main = main.replace("m < 200", "m < 250")
+    compile_and_run(tmp_path, together(text, variants, main))

@@ -224,7 +224,8 @@ def _pieces(form: Affine, scope: Scope, wide: CType | None) -> Iterator[_Piece |
                                                             one[0] is None)):
         size = abs(factor)
         if symbol is None:
-            yield _Piece(factor < 0, Affine((), size), Expression(str(size), _literal_type(size)))
+            type = _literal_type(size)
+            yield _Piece(factor < 0, Affine((), size), Expression(str(size) + ("" if type.signed else "U"), type))
         elif isinstance(symbol, str):
             yield _scaled(factor < 0, size, Affine.of(symbol), scope.operands[symbol], scope, wide)
         elif isinstance(symbol, tuple):

@@ -15,9 +15,15 @@ from dataclasses import dataclass, field, replace
 
 from ..affine import (
     Affine,
+    AllOf,
     AnyOf,
     Bound,
+    Formula,
+    at_least_bound,
+    at_most_bound,
+    bound_names,
     less,
+    map_bound,
     negate,
 )
 from ..model import CType, LoopText, Nest
@@ -45,6 +51,7 @@ from .expression import (
     Scope,
     common,
     comparison,
+    condition,
     converted,
     express,
     promoted,
@@ -78,6 +85,7 @@ class Opened:
     inside: Place
     kept: bool = False  # the header is the user's, byte for byte
     declared: str = ""  # the variables, where the header must not declare them (C90)
+    condition: str = ""  # without it the loop must not be entered
 
 
 @dataclass
@@ -91,6 +99,31 @@ class Locals:
 def _widens(narrow: CType, wide: CType) -> bool:
     """True if a value changes to the wider type by itself, without a change of sign that compilers warn of."""
     return promoted(narrow).bits < wide.bits and (wide.signed or not promoted(narrow).signed)
+
+
+def _enters(source: LoopText, first: Affine) -> Formula:
+    """The loop's own comparison may let it make a round."""
+    if source.relation == "!=":
+        return AllOf()
+    return at_most_bound(first, source.last) if source.step > 0 else at_least_bound(first, source.last)
+
+
+def _ends(source: LoopText, first: Affine) -> Formula:
+    """The value with which the loop ends fits its variable; for ``!=`` it lies ahead of the first one."""
+    upward, stride = source.step > 0, abs(source.step)
+    if source.relation == "!=":
+        return at_most_bound(first - 1, source.last) if upward else at_least_bound(first + 1, source.last)
+    limit = source.type.largest if upward else source.type.smallest
+    if stride == 1 or first.is_constant:  # last <= limit - 1, or up to the last value on the grid that leaves room
+        steps = abs(limit - first.constant) // stride - 1
+        most = Affine((), limit + (-1 if upward else 1)) if stride == 1 else \
+            first + (stride * steps + stride - 1) * (1 if upward else -1)
+        return at_least_bound(most, source.last) if upward else at_most_bound(most, source.last)
+    if upward:
+        ending = map_bound(source.last, lambda last: first + ((last - first).floor_div(stride) + 1) * stride)
+        return at_least_bound(Affine((), limit), ending)
+    ending = map_bound(source.last, lambda last: first - ((first - last).floor_div(stride) + 1) * stride)
+    return at_most_bound(Affine((), limit), ending)
 
 
 def step_of(loop: Loop) -> Affine:
@@ -160,11 +193,12 @@ class Elements:
             return self._chunk(loop, place)
         if loop.symbol in self._ids:
             source = self.source(loop.symbol)
+            asked = self._must_end(loop, source, place)
             if self.unchanged(loop):
                 inside = self._entered(loop, place, Expression(source.iterator, source.type))
                 text = self._layout.text[source.header.start:source.header.end]
-                return Opened((), text, (), place, inside, kept=True)
-            return self._element(loop, source, place)
+                return Opened((), text, (), place, inside, kept=True, condition=asked)
+            return replace(self._element(loop, source, place), condition=asked)
         return self._sum(loop, place)
 
     def unchanged(self, loop: Loop) -> bool:
@@ -190,6 +224,26 @@ class Elements:
         else:
             fact = AnyOf((less(Affine((), source.type.smallest), source.last), less(source.first, source.last)))
         return replace(place, scope=place.scope.knowing(fact))
+
+    def _must_end(self, loop: Loop, source: LoopText, place: Place) -> str:
+        """What keeps a loop from running beyond its type where the original might not run it at all; empty if nothing can.
+
+        ``j <= m`` never fails at the type's largest ``m``.  The original only hangs if the loops around make a round, so
+        nothing is lost if the loop is not entered then.
+        """
+        whole = far_bound(loop) == far_bound(self._source[loop.symbol])
+        plain = abs(source.step) == 1 and (source.relation in ("<", ">") or not whole)
+        if plain or set(source.outer) <= place.around or source.relation == "-->" or \
+                not isinstance(source.first, Affine) or \
+                not place.scope.sees(bound_names(source.last) | source.first.names()):
+            return ""
+        ends = _ends(source, source.first)
+        if place.scope.implies(AnyOf((negate(_enters(source, source.first)), ends))):
+            return ""
+        if source.relation in ("<=", ">=") and abs(source.step) == 1 and isinstance(source.last, Affine):
+            sign, limit = ("<", source.type.largest) if source.step > 0 else (">=", source.type.smallest + 1)
+            return comparison(source.last, sign, Affine((), limit), place.scope).text
+        return condition(ends, place.scope).text
 
     # ---------------------------------------------------------------- what the user wrote
 

@@ -69,8 +69,10 @@ class Printer:
         lines = [indent + self._layout.moved(extent, indent) for extent in remarks.before]
         lines += self._indented(opened.before, indent)
         behind = "".join(" " + self._layout.moved(extent, indent) for extent in remarks.behind)
-        if opened.declared:
-            inner = indent + self._style.braced_step
+        inner = indent + self._style.braced_step
+        if opened.condition:
+            lines += self._style.block(f"if ({opened.condition})", self._body(loop, opened, inner, behind), indent)
+        elif opened.declared:
             body = [f"{inner}{opened.declared};", *self._body(loop, opened, inner, behind)]
             lines += [f"{indent}{{", *body, f"{indent}}}"]
         else:
