@@ -134,7 +134,7 @@ class Access:
 
     storage: str
     write: bool
-    subscripts: tuple[Affine, ...] | None  # None: any cell of the storage (only for reads)
+    subscripts: tuple[Affine, ...] | None  # None: any cell of the storage
     certain: bool  # False under a condition on data: it counts as happening, but proves nothing about sizes
     span: Span
     # For the read and write of an update ``x = x op e``: ``+``, ``*``, ``min`` ...; updates of one kind commute.

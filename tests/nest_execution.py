@@ -92,14 +92,17 @@ def _linear(storage: Storage, subscripts: list[int], values: Mapping[str, int], 
 
 
 def events_run(
-    text: str, function: str, line: int, sizes: Mapping[str, int], unknown: frozenset[str], steps: int = 200_000
+    text: str, function: str, line: int, sizes: Mapping[str, int], unknown: frozenset[tuple[str, bool]], steps: int = 200_000
 ) -> set[Event]:
-    """What really happens in the nest; branches on data are all taken.  Cells of ``unknown`` objects get offset -1."""
+    """What really happens in the nest; branches on data are all taken.
+
+    Cells of objects that are ``unknown`` to reads, or to writes, get offset -1 there.
+    """
     machine = Program(text, nest=line).run(function, dict(sizes), may=True, steps=steps)
     found: set[Event] = set()
     for instance in machine.instances:
         cells = [
-            (write, (obj.name, -1 if obj.name in unknown and not write else offset))
+            (write, (obj.name, -1 if (obj.name, write) in unknown else offset))
             for obj, offset, write in instance.accesses
             if obj.kind in ("caller", "global")
         ]

@@ -105,14 +105,11 @@ void hook(int*);
 void sweep(int pings,double *depth){ int i; hook(&i);
     for (i= 0;i<pings; i++){ depth[i]=1; } }
 """, ((3, "iterator-address"),)),
-    ("nonaffine", """\
-void sweep(int pings,double *depth) {
-    for (int i= 0;i<pings; i++) depth[i*i]=1; }
-""", ((2, "nonaffine-write"),)),
-    ("indirect", """\
-void sweep(int pings,double *depth,int *place) {
-    for (int i= 0;i<pings; i++) depth[place[i]]=1; }
-""", ((2, "nonaffine-write"),)),
+    ("indirect pointer", """\
+struct cell{double v[4]; double w[4];};
+void sweep(int pings,struct cell *depth,int *place) {
+    for (int i= 0;i<pings; i++) { double *to = &depth[i].v[0]; to[place[i]]=1; } }
+""", ((3, "pointer"),)),
     ("union", """\
 union cell{int i; float sweep;};
 void sweep(int pings,union cell *depth) {
@@ -260,9 +257,4 @@ void sweep(int pings,double *depth) {
 void sweep(int pings,double *depth) {
     for (int i= 0;i<pings; i++) printf("%g", depth[i]); }
 """, ((3, "call"),)),
-    ("ld conflict", """\
-void sweep(int pings,int beams,double *depth) {
-    for (int i= 0;i<pings; i++)
-    for (int j= 0;j<beams;j++) depth[i*pings+j]=depth[i*beams+j]; }
-""", ((3, "nonaffine-write"),)),
 )

@@ -32,10 +32,10 @@ def assumed(nest: Nest, values: dict[str, int]) -> bool:
     return all(holds(formula, values) for formula in (*conditions, *nest.facts))
 
 
-def unknown_objects(nest: Nest) -> frozenset[str]:
-    """Objects of which some access may be to any cell."""
+def unknown_objects(nest: Nest) -> frozenset[tuple[str, bool]]:
+    """Objects of which some read, or some write, may be to any cell."""
     return frozenset(
-        nest.storage(a.storage).object for s in nest.statements for a in s.accesses if a.subscripts is None
+        (nest.storage(a.storage).object, a.write) for s in nest.statements for a in s.accesses if a.subscripts is None
     )
 
 

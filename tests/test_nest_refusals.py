@@ -29,14 +29,14 @@ def test_all_reasons_of_a_nest_are_given_in_text_order(tmp_path):
 void log_ping(int);
 void sweep(int pings, double *depth, const int *cell) {
     for (int i = 0; i < pings; i++) {
-        depth[cell[i]] = 1;
+        *(i > 3 ? depth : depth + 1) = 1;
         log_ping(i);
         if (depth[i] > 9) break;
     }
 }
 """
     found = read_nest(opened(text, tmp_path), 3)
-    assert [(r.line, r.code) for r in found.refusals] == [(4, "nonaffine-write"), (5, "call"), (6, "break")]
+    assert [(r.line, r.code) for r in found.refusals] == [(4, "pointer"), (5, "call"), (6, "break")]
 
 
 def test_an_inner_loop_may_be_read_where_the_outer_is_refused(tmp_path):

@@ -180,20 +180,11 @@ class _Builder:
         for (order, touch), column in zip(touches, columns, strict=True):
             known = [part for part in column if part is not None]
             subscripts = tuple(form for part in known for form in part) if len(known) == len(column) else None
-            if subscripts is None and touch.write:
-                self._refuse_write(touch)
             self.stored.accesses[order] = _access(touch, name, subscripts, self._span(order))
 
-    def _refuse_write(self, touch: Touch) -> None:
-        indirect = any(one.poly is None for one in touch.place.indices)
-        why = (
-            "the subscript comes from data or is no linear form of iterators and sizes"
-            if indirect
-            else "its subscripts do not fall into rows of one length"
-        )
-        self.stored.refusals.append(
-            refusal(touch.node, "nonaffine-write", f"which cell `{c_text(touch.node)}` writes cannot be told: {why}.")
-        )
+    def _walks(self, touch: Touch) -> None:
+        what = f"`{c_text(touch.node)}` walks through an array of arrays by a pointer; use its subscripts."
+        self.stored.refusals.append(refusal(touch.node, "pointer", what))
 
     def _address(self, place: Place) -> str:
         """C text of the address of the first cell."""
@@ -273,19 +264,16 @@ class _Builder:
         key = _shown(key, [touch.place for _, touch in touches])
         for _, touch in touches:
             for dimension, index in enumerate(touch.place.indices):
-                if not index.loose or index.extent is None or index.poly is None or dimension == 0:
+                if not index.loose or index.extent is None or dimension == 0:
+                    continue
+                if index.poly is None:  # any cell of the array is meant; it must not be part of a structure
+                    if touch.place.members:
+                        self._walks(touch)
                     continue
                 extent = self._extent(touch.place, dimension, index)
                 form = self._setting.affine(index.poly)
                 if extent is None or form is None:
-                    self.stored.refusals.append(
-                        refusal(
-                            touch.node,
-                            "pointer",
-                            f"`{c_text(touch.node)}` walks through an array of arrays by a pointer; "
-                            "use its subscripts.",
-                        )
-                    )
+                    self._walks(touch)
                     continue
                 inside = AllOf((at_most(0, form), less(form, extent)))
                 self.stored.obligations.append(
@@ -296,10 +284,12 @@ class _Builder:
 
 
 def _one_name_each(walk: Walk) -> list[Numbered]:
-    """All touches; where a pointer of a table is followed by itself (``t[0][j]``) and as one of many (``t[i][j]``), both
-    as one of many."""
+    """All touches; a pointer of a table that is followed by itself (``t[0][j]``) and as one of many (``t[i][j]``) is
+    always taken as one of many."""
     touches = [
-        ((number, at), touch) for number, statement in enumerate(walk.statements) for at, touch in enumerate(statement.touches)
+        ((number, at), touch)
+        for number, statement in enumerate(walk.statements)
+        for at, touch in enumerate(statement.touches)
     ]
     names: dict[str, set[str]] = defaultdict(set)
     for _, touch in touches:
