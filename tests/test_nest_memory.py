@@ -108,6 +108,31 @@ OVERLAPS = {
         "  for (int j = 0; j < n; j++) to[i * n + j] = rows[i][j];\n}",
         ["no-overlap: rows and to do not overlap", "other: rows[] and to do not overlap"],
     ),
+    "memory of its own": (
+        "#include <stdlib.h>\nvoid sweep(int n, double *from) {\n double *t = malloc(n * sizeof *t); if (!t) return;\n"
+        " for (int i = 0; i < n; i++) t[i] = from[i];\n free(t); }",
+        [],
+    ),
+    "two pieces of memory": (
+        "#include <stdlib.h>\nextern double level[];\ndouble *sweep(int n) {\n double *t, *u = (double *)calloc(n, 8);\n"
+        " t = aligned_alloc(64, 64);\n for (int i = 0; i < n; i++) t[i] = u[i] + level[i];\n free(u); return t; }",
+        [],
+    ),
+    "memory that another pointer leads to": (
+        "#include <stdlib.h>\nvoid sweep(int n) {\n double *t = malloc(n * 8), *u; u = t + 1;\n"
+        " for (int i = 0; i < n; i++) t[i] = u[i];\n}",
+        ["no-overlap: u and t do not overlap"],
+    ),
+    "memory that is given away": (
+        "#include <stdlib.h>\nstruct swath { double *d; };\nvoid sweep(int n, struct swath *s) {\n"
+        " double *t = malloc(n * 8); s->d = t;\n for (int i = 0; i < n; i++) t[i] = s->d[i];\n}",
+        ["no-overlap: s->d and t do not overlap"],  # *s was there before the memory
+    ),
+    "memory that may be an argument's": (
+        "#include <stdlib.h>\nvoid sweep(int n, double *from) {\n double *t = malloc(n * 8); if (!t) t = from;\n"
+        " for (int i = 0; i < n; i++) t[i] = from[i];\n}",
+        ["no-overlap: from and t do not overlap"],
+    ),
     "a pointer into the same array": (
         "void sweep(int n, double *a) {\n double *b = a + n;\n for (int i = 0; i < n; i++) b[i] = a[i];\n}",
         [],

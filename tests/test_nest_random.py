@@ -27,8 +27,9 @@ def usable(nest: Nest, sizes: dict[str, int]) -> bool:
 
 
 def certain_cells(events: set[Event], unknown: frozenset[str]) -> set[Event]:
-    """Events without the reads of objects of which some read may be of any cell."""
-    return {(line, at, frozenset(cell for cell in reads if cell[0] not in unknown), writes)
+    """Events without the objects of which some access may be to any cell."""
+    return {(line, at, frozenset(cell for cell in reads if cell[0] not in unknown),
+             frozenset(cell for cell in writes if cell[0] not in unknown))
             for line, at, reads, writes in events}
 
 
@@ -48,7 +49,7 @@ def check(seed: int, directory) -> int:
         if not usable(nest, sizes):
             continue
         try:
-            run = events_run(text, nest.function, LINE, sizes, unknown, steps=20_000)
+            run = events_run(text, nest.function, LINE, sizes, frozenset(), steps=20_000)
         except (Undefined, Unsupported, TooLong):
             continue
         values = parameter_values(nest, sizes)

@@ -14,12 +14,16 @@ from pycparser import c_ast
 
 from ..model import Assumption, AssumptionCode, ScalarClass, Storage, StorageKind
 from ..source.kinds import ArrayOf, PointerTo
+from .calls import called_name
 from .places import Place, Root
 from .polynomial import Poly
 from .refusals import refusal
 from .scopes import Binding
 from .setting import Setting
 from .storages import Stored
+
+
+_ALLOCATORS = ("malloc", "calloc", "aligned_alloc")
 
 
 def overlap_assumptions(setting: Setting, stored: Stored, nodes: dict[str, Any]) -> None:
@@ -211,7 +215,7 @@ class _Overlaps:
         if a and b:
             return not (self._excludes(one, other) or self._excludes(other, one))
         pointer, declared = (one, other) if a else (other, one)
-        if declared.binding is None or not self._setting.reachable(declared.binding):
+        if declared.binding is None or not self._setting.reachable(declared.binding) or self._is_fresh(pointer):
             return False
         if declared.binding.automatic and self._is_untouched_argument(pointer):
             return False
@@ -229,12 +233,29 @@ class _Overlaps:
         )
 
     def _excludes(self, restricted: Root, other: Root) -> bool:
-        """True if one is restrict and the other surely not derived from it."""
-        if not restricted.restrict or restricted.binding is None:
+        """True if one is restrict, or leads to memory of its own, and the other is surely not derived from it."""
+        fresh = self._is_fresh(restricted)
+        if not (restricted.restrict or fresh) or restricted.binding is None:
             return False
         if self._is_untouched_argument(other) or other.kind is not StorageKind.POINTER:
             return True
+        if fresh and self._is_fresh(other) and restricted.binding is not other.binding:
+            return True
         return not self._leaks(restricted.binding)
+
+    def _is_fresh(self, root: Root) -> bool:
+        """A local pointer whose only value comes from an allocation, which nothing else leads to (7.22.3 p1)."""
+        binding = root.binding
+        if binding is None or not root.direct or root.kind is not StorageKind.POINTER or binding.kind != "local":
+            return False
+        nodes = self._setting.names.assignments.get(binding, [])
+        if len(nodes) != 1 or self._setting.names.address_taken(binding):
+            return False
+        value = nodes[0].init if isinstance(nodes[0], c_ast.Decl) else getattr(nodes[0], "rvalue", None)
+        while isinstance(value, c_ast.Cast):
+            value = value.expr
+        name = called_name(value) if isinstance(value, c_ast.FuncCall) else None
+        return name in _ALLOCATORS and self._setting.unit.function_named(name) is None
 
     def _leaks(self, binding: Binding) -> bool:
         """True if the pointer is used for more than reaching elements, so that others may derive from it."""
@@ -243,6 +264,8 @@ class _Overlaps:
     def _only_reached_through(self, node: Any) -> bool:
         names = self._setting.names
         parent = names.parent(node)
+        if self._only_looked_at(node, parent):
+            return True
         while isinstance(parent, c_ast.BinaryOp) and parent.op in "+-":
             node, parent = parent, names.parent(parent)
         if not self._designates(parent, node):
@@ -251,6 +274,20 @@ class _Overlaps:
             node, parent = parent, names.parent(parent)
         address = isinstance(parent, c_ast.UnaryOp) and parent.op == "&"
         return not address and not isinstance(self._setting.type_of(node), ArrayOf)
+
+    def _only_looked_at(self, node: Any, parent: Any) -> bool:
+        """True where a pointer gets its value, is tested, freed or returned."""
+        match parent:
+            case c_ast.Assignment():
+                return parent.op == "=" and parent.lvalue is node
+            case c_ast.If():
+                return parent.cond is node
+            case c_ast.UnaryOp(op="!") | c_ast.BinaryOp(op="==" | "!=" | "&&" | "||") | c_ast.Return():
+                return True
+            case c_ast.ExprList():
+                call = self._setting.names.parent(parent)
+                return isinstance(call, c_ast.FuncCall) and call.args is parent and called_name(call) == "free"
+        return False
 
     @staticmethod
     def _designates(above: Any, node: Any) -> bool:
