@@ -18,6 +18,10 @@ PLANS = {
     ("track_match.c", 16): ["i:4 j:3 i j"],
     ("swath_mosaic.c", 26): ["r c", "r:8 c:8 c r"],
     ("echo_filter.c", 35): ["s:100 p s"],
+    ("tidal_factor.c", 15): ["j:4 k i@16 i@18 j", "k:4 k i@18 j; reassociate yes"],
+    ("tidal_factor.c", 40): ["k:4 i:4 s k i; reassociate yes"],
+    ("beamform.c", 40): ["b:8 s:8 p:8 b p s"],
+    ("drift.c", 23): ["(2*t+y@24):5 t y@24 x@25 y@29 x@30"],
 }
 
 
