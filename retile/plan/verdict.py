@@ -247,7 +247,18 @@ class _Court:
     def needed_assumptions(self) -> Iterator[Assumption]:
         """The assumptions without which the plan could reverse a pair of accesses, or the loops could run otherwise."""
         reorders: dict[tuple[str, str], bool] = {}
-        yield from (assumption for assumption in self._nest.assumptions if self._needs(assumption, reorders))
+        needed = tuple(assumption for assumption in self._nest.assumptions if self._needs(assumption, reorders))
+        yield from self._without_implied(needed)
+
+    def _without_implied(self, assumptions: tuple[Assumption, ...]) -> tuple[Assumption, ...]:
+        """The assumptions without relations that the others and the facts imply: ``n <= ld + 1`` beside ``n <= ld``."""
+        for assumption in assumptions:
+            others = tuple(other for other in assumptions if other is not assumption)
+            conditions = [other.condition for other in others if other.condition is not None]
+            if assumption.condition is not None and not assumption.given and conditions and \
+                    Region.where(*self._nest.facts, *conditions).implies(assumption.condition):
+                assumptions = others
+        return assumptions
 
     def _needs(self, assumption: Assumption, reorders: dict[tuple[str, str], bool]) -> bool:
         """True if the plan rests on an assumption; row lengths too, since the loops' bounds are built under them."""
