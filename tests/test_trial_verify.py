@@ -7,6 +7,7 @@ import pytest
 from trial_case import FAST, case, of_file
 
 from retile.model import Assumption, AssumptionCode, Judgement, RetileError, Verdict
+from retile.nest.given import with_given
 from retile.source import CompilerCall
 from retile.trial import Settings, verify_all
 from retile.trial.build import Workshop, can_sanitize, strict_flags
@@ -304,3 +305,15 @@ def test_sizes_without_work_prove_nothing(tmp_path):
     verifier = Verifier(bench, Workshop(tmp_path, found.source.call, str(tmp_path)), FAST)
     with pytest.raises(RetileError, match="nothing to verify at: no room"):
         verifier.cases([found.variant(found.text)])
+
+
+def test_facts_about_rows_behind_rows_go_by_the_names_of_the_tables(tmp_path):
+    """``from`` and the rows of ``to``, and the rows of both: the two names settle either."""
+    text = "void f(int n, int m, double **to, double *const *from) {\n    for (int j = 0; j < m; j++)\n"
+    text += "        for (int i = 0; i < n; i++)\n            to[i][j] = from[i][j];\n}\n"
+    found = case(tmp_path, text)
+    assert not any(a.given for a in found.nest.assumptions)
+    assert all(a.given for a in with_given(found.nest, distinct=["from,to", "to"]).assumptions)
+    part = with_given(found.nest, distinct=["to"]).assumptions
+    assert [a.storages for a in part if a.given] == [("to[]",)]
+    found.accepts(found.variant(found.text))

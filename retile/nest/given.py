@@ -110,9 +110,14 @@ def _distinct(nest: Nest, assumptions: list[Assumption], text: str) -> list[Assu
     if len(names) not in (1, 2) or missing or len(set(names)) != len(names):
         what = f"'{missing[0]}' is not stored to or read in the nest" if missing else "it takes one name or two"
         raise RetileError(f"wrong --distinct {text}: {what}.\nNames here: {', '.join(sorted(known))}.")
-    settled = [replace(a, given=True) if set(a.storages) == set(names) or
-               a.code is AssumptionCode.OTHER and len(a.storages) == 1 and names == [a.storages[0].removesuffix("[]")]
-               else a for a in assumptions]
+    settled = [replace(a, given=True) if _are_named(a, names) else a for a in assumptions]
     if settled == assumptions:
         raise RetileError(f"--distinct {text} settles nothing at {nest.address}: no assumption is about that.")
     return settled
+
+
+def _are_named(assumption: Assumption, names: list[str]) -> bool:
+    """A name stands for what it points to, rows behind rows included: ``to`` for ``to`` and ``to[]``."""
+    if len(assumption.storages) == 1 and assumption.code is not AssumptionCode.OTHER:
+        return assumption.storages == tuple(names)
+    return {name.removesuffix("[]") for name in assumption.storages} == {name.removesuffix("[]") for name in names}
