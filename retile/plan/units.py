@@ -24,16 +24,22 @@ def moved_conditions(nest: Nest, plan: Plan) -> frozenset[str]:
     """Ids of the conditions that stand between named loops: the tree evaluates them more often than the original."""
     named = {term.loop for term in plan.terms if term.chunk is None}
     found: set[str] = set()
-    _find_conditions(nest.tree, named, found)
+    _find_conditions(nest.tree, nest, named, found)
     return frozenset(found)
 
 
-def _find_conditions(nodes: tuple[Node, ...], named: set[str], found: set[str]) -> None:
-    for at, node in enumerate(nodes):
+def _find_conditions(nodes: tuple[Node, ...], nest: Nest, named: set[str], found: set[str]) -> None:
+    for node in nodes:
         if isinstance(node, Loop | Guard) and _holds_named((node,), named):
-            if isinstance(node, Guard) and at > 0 and isinstance(before := nodes[at - 1], Leaf):
-                found.add(before.statement)
-            _find_conditions(node.body, named, found)
+            if isinstance(node, Guard):
+                found.update(leaf.statement for leaf in nodes if isinstance(leaf, Leaf) and _reads(leaf, node, nest))
+            _find_conditions(node.body, nest, named, found)
+
+
+def _reads(leaf: Leaf, guard: Guard, nest: Nest) -> bool:
+    """True for what reads the condition of a guard, which has the same place in the text."""
+    span = nest.statement(leaf.statement).span
+    return (span.start, span.end) == guard.span
 
 
 def _holds_named(nodes: Iterable[Node], named: set[str]) -> bool:
