@@ -16,10 +16,10 @@ from pathlib import Path
 
 from oracle_run import Program
 from oracle_text import Undefined, Unsupported
-from oracle_values import Instance, LoopAt, Machine, TooLong, cell_name, tag_of
+from oracle_values import Instance, LoopAt, TooLong, cell_name, tag_of
 
-__all__ = ["Aligned", "Clash", "Log", "Outcome", "Undefined", "Unsupported", "TooLong", "compare", "final_tags", "observe",
-           "parse_terms", "times_of", "verdict_at"]
+__all__ = ["Aligned", "Clash", "Log", "Outcome", "TooLong", "Undefined", "Unsupported", "compare", "final_tags",
+           "observe", "parse_terms", "times_of", "verdict_at"]
 
 
 class Log(list[Instance]):

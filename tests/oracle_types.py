@@ -157,7 +157,7 @@ class Types:
             kinds = [k for k in kinds if k.signed]
         if "l" in suffix:
             kinds = [k for k in kinds if k.size == 8]
-        return next(k for k in kinds if value <= k.high), value
+        return next((k for k in kinds if value <= k.high), ULLONG), value
 
     # supplied by Expressions
     def value(self, node: c_ast.Node) -> tuple[object, Code]:
