@@ -316,3 +316,15 @@ int main(void) {
 }
 """
     compile_and_run(tmp_path, together(CONDITIONAL, [variant.text], main))
+
+
+def test_ranges_of_whole_rows_are_products_that_cannot_overflow(tmp_path: Path) -> None:
+    text = """void survey(int n, int m, int to[n + 1][m + 1], const int *from)
+{
+    for (int i = 0; i <= n; i++)
+        for (int j = 0; j <= m; j++)
+            to[i][j] = from[j * (n + 1) + i];
+}
+"""
+    case = case_of(tmp_path, text)
+    assert "to_begin + (((uintptr_t)n + 1) * ((uintptr_t)m + 1)) * sizeof(int)" in case.variant("j i").nest_text

@@ -10,6 +10,7 @@ from rewriting import WARNINGS, compile_and_run
 
 from retile.affine import Affine, at_most
 from retile.model import CType
+from retile.rewrite.bounds import without_alignment
 from retile.rewrite.expression import Expression, NoRoom, Scope, comparison, condition, express
 from retile.sets import Region
 
@@ -113,3 +114,15 @@ def test_a_distance_of_one_reads_as_the_relation_itself() -> None:
     scope = scope_of({"x": "long", "y": "long"})
     assert condition(at_most(x, y + 1), scope).text == "x <= y || x - 1 <= y"
     assert condition(at_most(x, y - 1), scope).text == "x < y"
+
+
+@pytest.mark.parametrize("sign", ["<", ">"])
+def test_a_choice_asks_for_the_numerator_alone(sign: str) -> None:
+    """floor(x / d) + k against b, by a comparison of x, for all small values."""
+    for divisor, k, b in itertools.product((2, 3, 16), (-2, 0, 1), (-3, 0, 4)):
+        asked, other = without_alignment(x.floor_div(divisor) + k, y + b, sign)
+        for vx, vy in itertools.product(range(-40, 40), (-2, 0, 1)):
+            values = {"x": vx, "y": vy}
+            one, two = asked.evaluate(values), other.evaluate(values)
+            left, right = vx // divisor + k, vy + b
+            assert (one < two if sign == "<" else one > two) is (left < right if sign == "<" else left > right)

@@ -142,7 +142,7 @@ class _Ranges:
 
     def _is_extent(self, form: Affine, stride: Expression | None) -> bool:
         """True if a form is the row length that a stride's text says."""
-        return stride is not None and len(form.terms) == 1 and self._sum(form) == stride.text
+        return stride is not None and bool(form.terms) and stride.text in (self._sum(form), self._modular(form))
 
     def _untestable(self, storage: Storage, assumption: Assumption) -> RetileError:
         return RetileError(f"{self._nest.address}: which cells of '{storage.name}' the nest touches is not known, so that "
@@ -159,7 +159,7 @@ class _Ranges:
         for extent in reversed(extents):
             assert extent is not None
             text = self._sum(extent)
-            factors.insert(0, text if len(extent.terms) + bool(extent.constant) == 1 else f"(uintptr_t)({text})")
+            factors.insert(0, text if len(extent.terms) + bool(extent.constant) == 1 else self._modular(extent))
             strides.insert(0, Expression(" * ".join(factors), ADDRESS, PRODUCT if len(factors) > 1 else UNARY))
         return strides
 
@@ -172,9 +172,9 @@ class _Ranges:
             sign = f"{text} >= 0"
             if sign not in self.signs:
                 self.signs.append(sign)
-        sum_of = re.fullmatch(r"(.+?)\s*([+-])\s*(\d+)", text)
+        sum_of = re.fullmatch(r"\(?(.+?)\s*([+-])\s*(\d+)\)?", text)
         if sum_of is not None and sum_of[1] in {p.text for p in self._nest.parameters}:
-            return Expression(f"(uintptr_t){sum_of[1]} {sum_of[2]} {sum_of[3]}", ADDRESS, PRODUCT)
+            return Expression(f"((uintptr_t){sum_of[1]} {sum_of[2]} {sum_of[3]})", ADDRESS)
         return written(text, ADDRESS)
 
     def _linear(self, subscripts: list[Affine], strides: list[Expression | None]) -> str:
@@ -184,7 +184,7 @@ class _Ranges:
             if subscript == Affine():
                 continue
             if stride is not None and subscript == Affine((), 1):
-                parts.append(stride.text if stride.text.startswith("(uintptr_t)") else f"(uintptr_t){stride.at(UNARY)}")
+                parts.append(stride.text if stride.text.startswith(("(uintptr_t)", "((uintptr_t)")) else f"(uintptr_t){stride.at(UNARY)}")
             elif stride is not None:
                 value = self._modular(subscript)
                 parts.append(f"{value} * {stride.at(UNARY)}")

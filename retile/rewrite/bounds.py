@@ -132,17 +132,21 @@ def _scaled_to(forms: tuple[Affine, ...], limit: Limit) -> tuple[Affine, frozens
     return None
 
 
-def without_alignment(a: Affine, b: Affine) -> tuple[Affine, Affine]:
-    """Two forms that compare as ``a`` and ``b`` do, as far as a choice between them goes.
+def without_alignment(a: Affine, b: Affine, sign: str) -> tuple[Affine, Affine]:
+    """Two forms that compare by ``sign`` as ``a`` and ``b`` do, as far as a choice between them goes.
 
     With ``a = s*floor(e/s)`` and ``b`` a multiple of ``s``, ``e`` may be asked instead: ``e < b`` gives ``a < b``, and
-    ``e > b`` gives ``a >= b``.
+    ``e > b`` gives ``a >= b``.  With ``a = floor(e/s) + k``: ``a < b`` if ``e < s*(b - k)``, and ``a > b`` if
+    ``e > s*(b - k + 1) - 1``.
     """
-    floor, factor = a.terms[0] if len(a.terms) == 1 and not a.constant else ("", 0)
+    floor, factor = a.terms[0] if len(a.terms) == 1 else ("", 0)
     if isinstance(floor, Floor):
         aligned = b.constant % floor.divisor == 0 and all(c % floor.divisor == 0 for _, c in b.terms)
-        if factor == floor.divisor and aligned:
+        if factor == floor.divisor and aligned and not a.constant:
             return floor.numerator, b
+        if factor == 1:
+            least = (b - a.constant) * floor.divisor
+            return floor.numerator, least if sign == "<" else least + floor.divisor - 1
     return a, b
 
 

@@ -365,7 +365,7 @@ class Elements:
                    aliases: Mapping[Affine, Expression]) -> Expression:
         """``a < b ? a : b`` in a type."""
         sign = "<" if kind == "min" else ">"
-        asked, other = without_alignment(a, b)
+        asked, other = without_alignment(a, b, sign)
         test = comparison(asked, sign, other, scope, aliases)
         taken = less(asked, other) if kind == "min" else less(other, asked)
         left = self._branch(a, scope.knowing(taken), type, aliases)
