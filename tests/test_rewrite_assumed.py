@@ -328,3 +328,14 @@ def test_ranges_of_whole_rows_are_products_that_cannot_overflow(tmp_path: Path) 
 """
     case = case_of(tmp_path, text)
     assert "to_begin + (((uintptr_t)n + 1) * ((uintptr_t)m + 1)) * sizeof(int)" in case.variant("j i").nest_text
+
+
+def test_a_product_of_64_bits_gets_room_before_it_is_added_to(tmp_path: Path) -> None:
+    text = """void survey(unsigned n, unsigned w, const double *restrict depth, double *restrict to)
+{
+    for (unsigned t = n < 3 ? n : 3; t <= w / 2 + 1; t++)
+        to[t] = depth[t * w + 2 * t] * depth[t * w + t];
+}
+"""
+    text_of_variant = case_of(tmp_path, text).variant("t:4 t").nest_text
+    assert "<= 1000000000000" in text_of_variant and "} else {" in text_of_variant

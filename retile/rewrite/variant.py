@@ -142,7 +142,7 @@ class _Order:
 
     def _text(self, room: tuple[Assumption, ...]) -> tuple[str, tuple[str, ...]]:
         before = outer_scope(self.nest, self.tree)
-        assumptions = without_implied((*room, *self._assumptions()), before)
+        assumptions = (*room, *without_implied(self._assumptions(), before))
         layout, style = self.layout, self.style
         names = Names(self.nest.names_in_scope | {"uintptr_t", "size_t"})
         facts = tuple(a.condition for a in assumptions if a.condition is not None)
