@@ -62,6 +62,7 @@ class Guard:
     condition: Formula | None
     body: tuple[Node, ...]
     span: tuple[int, int] | None = None  # extent of the condition in the user's text, if it is the user's
+    partly: bool = False  # the text tests data too, so that it must be tested even where ``condition`` surely holds
 
 
 @dataclass(frozen=True)

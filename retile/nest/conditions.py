@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from typing import Any
 
 from pycparser import c_ast
@@ -30,6 +31,22 @@ class Conditions:
         if found is None:
             self._setting.rewind(mark)
         return found
+
+    def known_part(self, node: Any, context: Context) -> Formula | None:
+        """What is known wherever a condition on data holds; None if nothing is.
+
+        ``i > 0 && a[i] > x`` implies ``i > 0``.  A part that would need memory to keep its value is taken for data.
+        """
+        found: list[Formula] = []
+        for part in _conjuncts(node):
+            mark = self._setting.mark()
+            formula = self.known(part, context)
+            if formula is not None and self._setting.needs_nothing_since(mark):
+                found.append(formula)
+                context = context.where(formula)
+            else:
+                self._setting.rewind(mark)
+        return AllOf(tuple(found)) if found else None
 
     def _known(self, node: Any, context: Context) -> Formula | None:
         match node:
@@ -72,6 +89,14 @@ class Conditions:
         a = self._setting.expressions.affine(node.left, context, common)
         b = self._setting.expressions.affine(node.right, context, common) if a is not None else None
         return None if a is None or b is None else (a, b)
+
+
+def _conjuncts(node: Any) -> Iterator[Any]:
+    if isinstance(node, c_ast.BinaryOp) and node.op == "&&":
+        yield from _conjuncts(node.left)
+        yield from _conjuncts(node.right)
+    else:
+        yield node
 
 
 def relation(op: str, left: Affine, right: Affine) -> Formula:

@@ -342,6 +342,10 @@ class Setting:
         """How much has been gathered; for ``rewind``."""
         return tuple(len(part) for part in self._gathered())
 
+    def needs_nothing_since(self, mark: tuple[int, ...]) -> bool:
+        """True if nothing was gathered since a mark that must hold or keep its value; parameters may have been."""
+        return self.mark()[:4] == mark[:4]
+
     def rewind(self, mark: tuple[int, ...]) -> None:
         """Forget what was gathered since a mark, because what it was for came to nothing."""
         if len(self.knowledge.facts) > mark[-1]:

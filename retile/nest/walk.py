@@ -250,21 +250,24 @@ class Walk:
             if any(touch.write for touch in touches):
                 raise refused(node.cond, "condition", "the condition of an `if` changes something; do that before it.")
             nodes.append(self._leaf(node, span, touches, context))
-        yes, no = (
-            (context.uncertain(), context.uncertain())
-            if condition is None
-            else (context.where(condition), context.where(negate(condition)))
-        )
-        nodes += self._guard(condition, node.iftrue, yes, span)
-        nodes += self._guard(None if condition is None else negate(condition), node.iffalse, no, span)
+        if condition is None:
+            part = self._conditions.known_part(node.cond, context)
+            narrowed = context if part is None else context.where(part)
+            nodes += self._guard(part, node.iftrue, narrowed.uncertain(), span, partly=part is not None)
+            nodes += self._guard(None, node.iffalse, context.uncertain(), span)
+        else:
+            nodes += self._guard(condition, node.iftrue, context.where(condition), span)
+            nodes += self._guard(negate(condition), node.iffalse, context.where(negate(condition)), span)
         self.branches.append((context, id(node.iftrue), id(node.iffalse), len(self.statements)))
         return tuple(nodes)
 
-    def _guard(self, condition: Formula | None, body: Any, context: Context, span: Span) -> list[Node]:
+    def _guard(
+        self, condition: Formula | None, body: Any, context: Context, span: Span, partly: bool = False
+    ) -> list[Node]:
         if body is None:
             return []
         inner = self._node(body, context.block(body))
-        return [Guard(condition, inner, (span.start, span.end))] if inner else []
+        return [Guard(condition, inner, (span.start, span.end), partly)] if inner else []
 
     # ------------------------------------------------------------ loops
 

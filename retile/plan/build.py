@@ -135,8 +135,8 @@ class _Builder:
         node: Node = Verbatim(unit.span, _marked(unit.nodes, self._plan, self._merged(unit, outer)))
         around = known & self._context
         for guard in reversed(unit.guards):
-            if guard.condition is None or not around.implies(guard.condition):
-                node = Guard(guard.condition, (node,), guard.span)
+            if guard.condition is None or guard.partly or not around.implies(guard.condition):
+                node = replace(guard, body=(node,))
         left = self._visible(unit, outer, guarded=False).relative_to(around)
         return node if around.within(left) else Guard(left.formula(), (node,))
 
