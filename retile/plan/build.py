@@ -14,7 +14,7 @@ The result is not trusted: ``questions.py`` judges it like any other tree.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import replace
 
 from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal, less
@@ -148,22 +148,25 @@ class _Builder:
         aligned = standing(self._plan, unit.statement)
         present = {*unit.loops, *aligned}
         conditions += [equal(Affine.of(loop), value) for loop, value in aligned.items()]
-        conditions += [self._chunk_link(term) for term in self._plan.terms if term.chunk is not None
+        conditions += [self._chunk_link(term, aligned) for term in self._plan.terms if term.chunk is not None
                        and all(loop in present for loop, _ in term.form)]
         return Region.where(*conditions) & self._context
 
     def _source(self, id: str) -> Loop:
         return next(loop for loop in loops_of(self._nest.tree) if loop.of == id)
 
-    def _chunk_link(self, term: Term) -> Formula:
-        """How the value of a chunk loop hangs together with the iterators: it is the first value of their chunk."""
+    def _chunk_link(self, term: Term, aligned: Mapping[str, Affine]) -> Formula:
+        """How the value of a chunk loop hangs together with the iterators: it is the first value of their chunk.
+
+        Chunks begin at the loop's first value, but a statement may stand before it.
+        """
         loop, value = self._chunk(term), Affine.of(chunk_symbol(term))
         assert loop.cut is not None
         sign = 1 if loop.step > 0 else -1
         ahead = (loop.cut - value) * sign
         conditions = [at_most(0, ahead), less(ahead, loop.length),
                       equal((value - loop.origin).mod(abs(loop.step)), 0)]
-        if loop.cut == Affine.of(loop.of) and self._nest.loop(loop.of).independent:
+        if loop.cut == Affine.of(loop.of) and self._nest.loop(loop.of).independent and loop.of not in aligned:
             conditions.append(at_most(0, (value - loop.origin) * sign))
         if loop.named is not None:
             conditions.append(at_most(1, Affine.of(loop.named)))

@@ -154,6 +154,7 @@ class _Court:
 
     def refusals(self) -> Iterator[Refusal]:
         """What the plan asks for that cannot be written down in C without changing the user's text."""
+        yield from self._never_run()
         yield from self._shared_iterators()
         if not self.is_identity():
             for loop in lost_iterators(self._nest):
@@ -167,6 +168,14 @@ class _Court:
             if len({self._split_of(s) for s in users}) > 1 and not self._reverses_reuse(name):
                 yield Refusal(users[0].line, users[0].span.column, "declaration-split",
                               f"'{name}' is declared in a block that the plan takes apart; declare it before the nest")
+
+    def _never_run(self) -> Iterator[Refusal]:
+        """Statements for which no bounds can be written: no sizes at which the nest is defined let them run."""
+        for statement in self._nest.statements:
+            if not self.is_identity() and self._dependences.domains[statement.id].is_empty():
+                yield Refusal(statement.line, statement.span.column, "never-runs",
+                              "no sizes for which all subscripts stay inside their arrays let this line run; "
+                              "look at the bounds around it")
 
     def _shared_iterators(self) -> Iterator[Refusal]:
         """Loops that use one variable, and that the plan puts one into the other."""
