@@ -171,7 +171,10 @@ class Region:
         ordered = self._in_order(order)
         if ordered.is_empty():
             return None
-        point = ordered.lexmin().sample_point()
+        try:
+            point = ordered.lexmin().sample_point()
+        except isl.Error:  # the library gives up on some sets with many divisions: go from name to name
+            return _first_by_name(ordered, order)
         return {name: _value(point, at) for at, name in enumerate(order)}
 
     def sample(self, names: Iterable[str] = ()) -> dict[str, int] | None:
@@ -226,6 +229,16 @@ class Region:
 
     def __repr__(self) -> str:
         return f"Region({self._set})"
+
+
+def _first_by_name(points: isl.Set, order: tuple[str, ...]) -> dict[str, int]:
+    """The smallest value of each name in turn, given those before it."""
+    found: dict[str, int] = {}
+    for at, name in enumerate(order):
+        value = points.dim_min_val(at)
+        points = points.fix_val(isl.dim_type.set, at, value)
+        found[name] = int(value.to_python())
+    return found
 
 
 def _value(point: isl.Point, at: int) -> int:
