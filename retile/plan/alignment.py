@@ -22,6 +22,9 @@ from .schedule import placed
 # Plans that are judged in one search; every step tries each candidate of each open slot once.
 MOST_TRIALS = 150
 
+# With many edges a trial costs more, and fewer are made.
+_MOST_EDGES = 2000
+
 # Those of some edges that a placed plan reverses.
 Judged = Callable[[Plan, tuple[Edge, ...]], tuple[Edge, ...]]
 
@@ -32,6 +35,7 @@ def settled(plan: Plan, nest: Nest, edges: tuple[Edge, ...], wrong: tuple[Edge, 
 
     ``wrong``: those that it reverses as it stands.  A trial moves one statement, so only edges at it are judged again.
     """
+    trials = min(trials, _MOST_EDGES // max(1, len(edges)))
     stated = {(a.statement, a.loop) for a in plan.aligned}
     while wrong:
         best: tuple[Plan, tuple[Edge, ...]] | None = None

@@ -19,6 +19,8 @@ _MOST_FEWER = 24
 _LARGEST_SKEW = 3
 # For the first few of them other places of statements are looked for too, with so many trials each.
 _SEARCHED = 3
+# A plan costs about a millisecond for each dependence that it is held against: with many of those, fewer plans are tried.
+_MOST_EDGES = 500
 _TRIALS = 30
 # Iterations per loop of which each has a value of a scalar waiting: two loops of them fill half a small first cache.
 _WAITING = 32
@@ -32,7 +34,8 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
     """
     original = tuple(loop.id for loop in nest.loops)
     candidates = tuple(_distinct(plan, (*_bounded(nest, plan), *_candidates(plan.terms, original)), original))
-    for trials, some in ((0, candidates), (_TRIALS, candidates[:_SEARCHED])):
+    most = max(_SEARCHED, _MOST_EDGES // max(1, len(dependences.edges)))
+    for trials, some in ((0, candidates[:most]), (_TRIALS, candidates[:_SEARCHED])):
         for text, terms in some:
             if is_legal(nest, dependences, replace(plan, terms=terms, places=(), aligned=(), kept=(), copied=()), trials):
                 return text + plan.text[len(plan.order_text):]
