@@ -250,7 +250,7 @@ class Places:
                 )
 
     def text_of(self, place: Place, node: Any) -> str:
-        """C text of a cell that stays, to be read ahead of the nest: one per cell, the user's own if that is possible."""
+        """C text of a cell that stays, to be read ahead of the nest: one per cell, the user's own if possible."""
         if not self._setting.means_the_same_ahead(node):
             return self._texts.setdefault(_identity(place), self._written_out(place))
         return self._texts.setdefault(_identity(place), c_text(node))
