@@ -191,6 +191,8 @@ class _Builder:
         # Copies follow those that need them: they add no iterations.
         own = [unit for unit in members if unit.statement not in self._plan.copied]
         values = Region.union(self._executed(unit).only(visible) for unit in own).coalesced()
+        if values.is_empty():  # a condition that never holds: the loops run all the same
+            values = Region.union(self._executed(unit, guarded=False).only(visible) for unit in own).coalesced()
         loop = self._bounded(term, symbol, values, known, outer)
         inner = known & Region.where(loop.constraints())
         return replace(loop, body=self.group(members, level + 1, inner, (*outer, loop)))

@@ -17,6 +17,7 @@ from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan
                      Unproven, Verdict, Violation)
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
+from ..tree import occurrences
 from ..touched import touched
 from .afterwards import lost_iterators
 from .alignment import MOST_TRIALS, settled
@@ -171,8 +172,12 @@ class _Court:
 
     def _never_run(self) -> Iterator[Refusal]:
         """Statements for which no bounds can be written: no sizes at which the nest is defined let them run."""
-        for statement in self._nest.statements:
-            if not self.is_identity() and self._dependences.domains[statement.id].is_empty():
+        if self.is_identity():
+            return
+        for place in occurrences(self._nest.tree):
+            statement = self._nest.statement(place.leaf.statement)
+            loops = Region.where(*(loop.constraints() for loop in place.loops))
+            if (loops & self._dependences.context).is_empty():
                 yield Refusal(statement.line, statement.span.column, "never-runs",
                               "no sizes for which all subscripts stay inside their arrays let this line run; "
                               "look at the bounds around it")
