@@ -214,7 +214,8 @@ class _Builder:
             lower, upper = lower or full_lower, upper or full_upper
         loop = on_grid(replace(frame, lower=tightest("max", ((frame.lower,) if start else ()) + lower),
                                 upper=tightest("min", ((frame.upper,) if start else ()) + upper)))
-        return without_idle_bounds(loop, known & self._context)
+        # Where the values are none, the loops inside run nothing, whatever the bounds say.
+        return without_idle_bounds(loop, known & self._context & values.without([symbol]))
 
     def _frame(self, term: Term, symbol: str, outer: tuple[Loop, ...]) -> Loop:
         """The loop of a term with everything but its bounds and its body."""
