@@ -62,16 +62,6 @@ def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, name
     return Tests(tuple(ranges.declarations), (*ranges.signs, *dict.fromkeys(conditions)))
 
 
-def without_implied(assumptions: tuple[Assumption, ...], scope: Scope) -> tuple[Assumption, ...]:
-    """The assumptions without those relations that all the others imply: ``n <= ld + 1`` beside ``n <= ld``."""
-    for one in assumptions:
-        others = tuple(other for other in assumptions if other is not one)
-        facts = [other.condition for other in others if other.condition is not None]
-        if one.condition is not None and not one.given and scope.knowing(*facts).implies(one.condition):
-            assumptions = others
-    return assumptions
-
-
 def _parts(assumption: Assumption) -> tuple[Formula, ...]:
     if assumption.condition is None:
         return ()

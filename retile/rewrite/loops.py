@@ -10,6 +10,7 @@ first be computed.
 from __future__ import annotations
 
 import re
+from abc import ABC, abstractmethod
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
@@ -131,7 +132,7 @@ def step_of(loop: Loop) -> Affine:
     return loop.length if loop.step > 0 else -loop.length
 
 
-class Elements:
+class Elements(ABC):
     """Writes the headers of one variant, but for chunk loops."""
 
     def __init__(self, nest: Nest, layout: NestText, names: Names, tree: tuple[Node, ...], apart: bool = False) -> None:
@@ -376,8 +377,9 @@ class Elements:
         alias = aliases.get(form)
         return converted(alias, type) if alias is not None else self.in_type(form, type, scope)
 
+    @abstractmethod
     def _chunk(self, loop: Loop, place: Place) -> Opened:
-        raise NotImplementedError
+        """Open a chunk loop."""
 
     # ---------------------------------------------------------------- elements
 

@@ -18,7 +18,7 @@ from ..model import Assumption, AssumptionCode, Judgement, Nest, Plan, Variant
 from ..sets import Region
 from ..tree import Loop, Node, Verbatim, children, loops_of
 from .after import restored
-from .assumed import Tests, tests_of, without_implied
+from .assumed import Tests, tests_of
 from .chunks import Loops
 from .expression import INT, Expression, NoRoom, Scope, written
 from .includes import insertion, missing
@@ -142,7 +142,7 @@ class _Order:
 
     def _text(self, room: tuple[Assumption, ...]) -> tuple[str, tuple[str, ...]]:
         before = outer_scope(self.nest, self.tree)
-        assumptions = (*room, *without_implied(self._assumptions(), before))
+        assumptions = (*room, *self._assumptions())
         layout, style = self.layout, self.style
         names = Names(self.nest.names_in_scope | {"uintptr_t", "size_t"})
         facts = tuple(a.condition for a in assumptions if a.condition is not None)
