@@ -19,7 +19,7 @@ def test_ranks_of_the_published_table(count, expected):
     assert ranks(count) == expected
 
 
-@given(st.integers(1, 400))
+@given(st.integers(1, 2500))
 def test_coverage_is_enough_and_no_narrower_pair_is(count):
     """Coverage by the binomial distribution function of scipy."""
     pair = ranks(count)

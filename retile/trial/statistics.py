@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from fractions import Fraction
 from math import comb
 
 CONFIDENCE = 0.95
@@ -36,7 +37,7 @@ def ranks(count: int, confidence: float = CONFIDENCE) -> tuple[int, int] | None:
     below, chosen = 0, 0
     for rank in range(1, count // 2 + 1):
         below += comb(count, rank - 1)  # outcomes with fewer than `rank` samples under the median
-        if 2 * below > (1 - confidence) * 2**count:
+        if 2 * below > (1 - Fraction(str(confidence))) * 2**count:  # thousands of samples are too many for a float
             break
         chosen = rank
     return (chosen, count + 1 - chosen) if chosen else None
