@@ -35,9 +35,10 @@ def ranks(count: int, confidence: float = CONFIDENCE) -> tuple[int, int] | None:
     ((1, 6), (2, 9), None)
     """
     below, chosen = 0, 0
+    most = (1 - Fraction(str(confidence))) * 2**count  # thousands of samples are too many for a float
     for rank in range(1, count // 2 + 1):
         below += comb(count, rank - 1)  # outcomes with fewer than `rank` samples under the median
-        if 2 * below > (1 - Fraction(str(confidence))) * 2**count:  # thousands of samples are too many for a float
+        if 2 * below > most:
             break
         chosen = rank
     return (chosen, count + 1 - chosen) if chosen else None
