@@ -205,6 +205,94 @@ EXAMPLES = {
                 a[i][j] = 0.2 * (a[i][j] + a[i - 1][j] + a[i + 1][j] + a[i][j - 1] + a[i][j + 1]);"""),
         legal=("t j i", "t i:2 j:2 i j", "t:2 (t+i):2 (t+j):2 t i j", "(t+i):2 (t+j):3 t i j"),
         illegal=("i t j", "t:2 i:2 j:2 t i j", "t:2 (t+i):2 j:2 t i j"), sizes="steps n", largest=4),
+    "supernodes along the axes": Example(
+        "Irigoin & Triolet, Supernode Partitioning, 1988: hyperplanes with normals h cut legal blocks if h . d >= 0 for "
+        "every distance d; here d = (1, 0), (0, 1) and the axes will do. From memory.",
+        survey("int n, int m, double a[n + 1][m + 1]", """
+    for (int i = 1; i <= n; i++)
+        for (int j = 1; j <= m; j++)
+            a[i][j] = 0.5 * (a[i - 1][j] + a[i][j - 1]);"""),
+        frozenset({edge("flow", "a", "4", "4", "i", (1, 0), "<="), edge("flow", "a", "4", "4", "j", (0, 1), "=<")}),
+        legal=("i:2 j:3 i j", "(i+j):2 i:2 i j", "(2*i+j):3 j:2 j i"),
+        illegal=("(i-j):2 i:2 i j", "(j-i):2 i j"), sizes="n m", largest=5),
+    "rhombic supernodes": Example(
+        "Irigoin & Triolet, 1988: d = (1, -1), (1, 0), (1, 1) lie in the cone between the normals (1, 1) and (1, -1), so "
+        "that both families cut at once, while (0, 1) . (1, -1) < 0. From memory.",
+        survey("int steps, int n, double a[steps + 1][n + 2]", """
+    for (int t = 0; t < steps; t++)
+        for (int i = 1; i <= n; i++)
+            a[t + 1][i] = 0.25 * (a[t][i - 1] + 2.0 * a[t][i] + a[t][i + 1]);"""),
+        frozenset({edge("flow", "a", "4", "4", "t", (1, shift), f"<{sign}") for shift, sign in ((-1, ">"), (0, "="), (1, "<"))}),
+        legal=("(t+i):3 (t-i):2 t i", "(t-i):2 (t+i):2 t i", "t:2 (t+i):3 t i"),
+        illegal=("t:2 i:2 t i", "i:3 t:2 t i", "(i-t):2 (t+i):2 t i", "(t-2*i):2 t i"), sizes="steps n", largest=5),
+    "wave front": Example(
+        "Wolfe, Loop Skewing: The Wavefront Method Revisited, 1986: a five-point relaxation; i + j is the wave. From memory.",
+        survey("int n, int m, double a[n + 2][m + 2]", """
+    for (int i = 1; i <= n; i++)
+        for (int j = 1; j <= m; j++)
+            a[i][j] = 0.2 * (a[i - 1][j] + a[i][j - 1] + a[i][j] + a[i + 1][j] + a[i][j + 1]);"""),
+        frozenset({edge(kind, "a", "4", "4", *rest) for kind in ("flow", "anti")
+                   for rest in (("i", (1, 0), "<="), ("j", (0, 1), "=<"))}),
+        legal=("j i", "(i+j) i", "(i+j) j", "(i+j):3 i j", "i (i+j)", "i:2 j:2 i j"),
+        illegal=("(i-j) i", "(j-i) j", "(i-j):2 i j"), sizes="n m", largest=5),
+    "unimodular double loop": Example(
+        "Banerjee, Unimodular Transformations of Double Loops, 1990: distances (1, -2), (0, 1) and (2, -1); the wave "
+        "(3, 1) makes all inner iterations independent. From memory.",
+        survey("int n, int m, double a[n + 3][m + 3]", """
+    for (int i = 2; i < n; i++)
+        for (int j = 1; j < m; j++)
+            a[i][j] = a[i - 1][j + 2] + a[i][j - 1] + a[i - 2][j + 1];"""),
+        frozenset({edge("flow", "a", "4", "4", "i", (1, -2), "<>"), edge("flow", "a", "4", "4", "j", (0, 1), "=<"),
+                   edge("flow", "a", "4", "4", "i", (2, -1), "<>")}),
+        legal=("(3*i+j) i", "(3*i+j):2 i j", "i (3*i+j)", "i:2 (2*i+j):3 i j"),
+        illegal=("j i", "(i+j) i", "(i+j):2 i j"), sizes="n m", largest=6),
+    "vector code for four statements": Example(
+        "Allen & Kennedy, Automatic Translation of Fortran Programs to Vector Form, 1987 (the worked example; the column "
+        "N is the last one here, subscripts begin at 0). From memory.",
+        survey("int n, double x[n], double y[2 * n], double a[n + 1][n], double b[n], double c[n][n]", """
+    for (int i = 0; i < n; i++) {
+        x[i] = y[i] + 10.0;
+        for (int j = 0; j < n; j++) {
+            b[j] = a[j][n - 1];
+            for (int k = 0; k < n; k++)
+                a[j + 1][k] = b[j] + c[j][k];
+            y[i + j] = a[j + 1][n - 1];
+        }
+    }"""),
+        frozenset({
+            edge("anti", "y", "3", "8", None, (0,), "="), edge("flow", "y", "8", "3", "i", None, "<"),
+            edge("flow", "b", "5", "7", None, (0, 0), "=="), edge("flow", "a", "7", "8", None, (0, 0), "=="),
+            edge("flow", "a", "7", "5", "j", (0, 1), "=<"), edge("output", "a", "7", "7", "i", None, "<=="),
+            edge("output", "y", "8", "8", "i", None, "<>"), edge("output", "b", "5", "5", "i", None, "<=")}),
+        legal=("i j k", "i j k:2 k", "i:2 i j k"),
+        illegal=("i k j", "j:2 i j k", "i:2 j:2 i j k"), largest=4),
+    "a row of the last line": Example(
+        "Pugh, 1992, on symbolic constants: a[i][j + 1] = a[n][j] depends only where i reaches n. From memory.",
+        survey("int n, int m, double a[n + 1][m + 1]", """
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            a[i][j + 1] = a[n][j];"""), legal=("j i", "j:2 i:2 j i"), sizes="n m", largest=4),
+    "a row of the last line, reached": Example(
+        "The same with i = n in the loop: only then the lines meet, and only in the last iteration of i.",
+        survey("int n, int m, double a[n + 1][m + 1]", """
+    for (int i = 0; i <= n; i++)
+        for (int j = 0; j < m; j++)
+            a[i][j + 1] = a[n][j];"""),
+        frozenset({edge("flow", "a", "4", "4", "j", (0, 1), "=<"), edge("anti", "a", "4", "4", "i", None, "<>")}),
+        legal=("i j:2 j",), illegal=("j i", "j:2 i j"), sizes="n m", largest=4),
+    "ten apart": Example(
+        "Maydan, Hennessy & Lam, 1991, introduction: a[i] = a[i + 10] over ten values has no dependence. From memory.",
+        survey("double a[20][4]", """
+    for (int i = 0; i < 10; i++)
+        for (int j = 0; j < 4; j++)
+            a[i][j] = a[i + 10][3 - j] + 3.0;"""), legal=("j i", "i:3 j:2 i j"), sizes=""),
+    "one apart": Example(
+        "Maydan, Hennessy & Lam, 1991, introduction: a[i + 1] = a[i] depends from each iteration to the next. From memory.",
+        survey("double a[20][4]", """
+    for (int i = 0; i < 10; i++)
+        for (int j = 0; j < 4; j++)
+            a[i + 1][j] = a[i][3 - j] + 3.0;"""),
+        frozenset({edge("flow", "a", "4", "4", "i", None, "<!=")}), legal=("i j:2 j", "i j"), illegal=("j i",), sizes=""),
     "matrix product": Example(
         "Wolf & Lam, 1991; Golub & Van Loan, Matrix Computations, ch. 1: all six loop orders and every blocking.",
         survey("int n, double c[n][n], double a[n][n], double b[n][n]", """
@@ -312,7 +400,7 @@ def test_illegal_plans(name):
 INDEPENDENT = ["strong SIV, symbolic distance beyond the bounds", "weak-crossing SIV, one side only",
                "coupled subscripts, contradictory", "triangle of a transposition", "ten by ten",
                "eleven i plus thirteen j", "Banerjee bounds, out of reach", "GCD",
-               "strong SIV, distance not an integer"]
+               "strong SIV, distance not an integer", "a row of the last line", "ten apart"]
 
 
 @pytest.mark.parametrize("name", INDEPENDENT)
@@ -322,7 +410,9 @@ def test_no_flow_or_anti_dependence(name):
 
 
 @pytest.mark.parametrize("name", ["interchange forbidden", "relaxation in one dimension", "summed areas", "prefix sums",
-                                  "transposition in place", "weak-zero SIV", "interchange allowed", "strong SIV"])
+                                  "transposition in place", "weak-zero SIV", "interchange allowed", "strong SIV",
+                                  "wave front", "rhombic supernodes", "unimodular double loop",
+                                  "a row of the last line, reached"])
 def test_edges_are_those_of_a_real_execution(name):
     """Every pair of iterations that shares a cell belongs to an edge of its kind and direction, and no edge is idle."""
     example = EXAMPLES[name]
@@ -353,3 +443,23 @@ def _pairs_of_an_execution(text: str, sizes: dict[str, int]) -> set[tuple[str, s
 def _allows(direction: tuple[str, ...], signs: str) -> bool:
     allowed = {"<=": "<=", ">=": ">=", "!=": "<>", "*": "<=>"}
     return all(sign in allowed.get(word, word) for word, sign in zip(direction, signs, strict=True))
+
+
+NORMALS = {"i": (1, 0), "j": (0, 1), "(i+j)": (1, 1), "(i-j)": (1, -1), "(2*i+j)": (2, 1), "(j-i)": (-1, 1)}
+
+
+@pytest.mark.parametrize("distances", [((1, 0),), ((1, -1),), ((1, -1), (0, 1)), ((2, -1), (1, 1)), ((3, -2), (1, 0))])
+def test_the_condition_on_supernodes(distances):
+    """Irigoin & Triolet, 1988: blocks between hyperplanes may be run one after the other if h . d >= 0 for all of them.
+
+    For two families, ``h:2 g:3``, also where h . d >= 2: then every pair lies in different blocks of the first.
+    """
+    reads = " + ".join(f"a[i + {4 - di}][j + {4 - dj}]" for di, dj in distances)
+    text = survey("int n, double a[n + 8][n + 8]", f"""
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++)
+            a[i + 4][j + 4] = {reads};""")
+    for (first, h), (second, g) in itertools.permutations(NORMALS.items(), 2):
+        ahead = [(h[0] * di + h[1] * dj, g[0] * di + g[1] * dj) for di, dj in distances]
+        kept = all(x >= 0 and (y >= 0 or x >= 2) for x, y in ahead)
+        assert ask(text, LINE).verdict(f"{first}:2 {second}:3 i j") == ("legal" if kept else "illegal"), (first, second)

@@ -9,6 +9,7 @@ Nests outside this small reading raise Unsupported: scalars that are written, un
 
 from __future__ import annotations
 
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import z3
@@ -208,7 +209,11 @@ class ZNest:
         return env, facts
 
 
-def reversed_pair(nest: ZNest, plan: str) -> tuple[dict[str, int], str] | None:
+# (line, loop, value, chunks only): where the statements of a line stand in a loop that is not around them.
+Aligned = Sequence[tuple[int, str, Callable[[dict], z3.ArithRef], bool]]
+
+
+def reversed_pair(nest: ZNest, plan: str, aligned: Aligned = ()) -> tuple[dict[str, int], str] | None:
     """Sizes at which the plan reverses a pair, and where; None if z3 proves that there is no such pair."""
     terms = parse_terms(plan)
     for first in nest.statements:
@@ -217,13 +222,13 @@ def reversed_pair(nest: ZNest, plan: str) -> tuple[dict[str, int], str] | None:
                 for other, places, also in second.accesses:
                     if array != other or not (writes or also) or len(subscripts) != len(places):
                         continue
-                    model = _solve(nest, terms, (first, subscripts), (second, places))
+                    model = _solve(nest, terms, (first, subscripts), (second, places), aligned)
                     if model is not None:
                         return model, f"{array} between lines {first.line} and {second.line}"
     return None
 
 
-def _solve(nest: ZNest, terms: tuple[Term, ...], one: tuple, two: tuple) -> dict[str, int] | None:
+def _solve(nest: ZNest, terms: tuple[Term, ...], one: tuple, two: tuple, aligned: Aligned) -> dict[str, int] | None:
     shared, facts = nest.shared()
     loops_a, env_a, facts_a = nest.instance(one[0], "", shared)
     loops_b, env_b, facts_b = nest.instance(two[0], "'", shared)
@@ -231,8 +236,8 @@ def _solve(nest: ZNest, terms: tuple[Term, ...], one: tuple, two: tuple) -> dict
     for a, b in zip(one[1], two[1], strict=True):
         facts.append(nest.number(a, env_a, facts) == nest.number(b, env_b, facts))
     before = _before(_moments(one[0], loops_a), _moments(two[0], loops_b))
-    place_a = [_place(nest, term, one[0], loops_a, facts) for term in terms]
-    place_b = [_place(nest, term, two[0], loops_b, facts) for term in terms]
+    place_a = [_Placing(nest, one[0], loops_a, env_a, facts, aligned).place(term) for term in terms]
+    place_b = [_Placing(nest, two[0], loops_b, env_b, facts, aligned).place(term) for term in terms]
     solver = z3.Solver()
     solver.set("timeout", 5000)
     solver.add(*facts, before, _before(place_b, place_a))
@@ -251,26 +256,61 @@ def _moments(statement: ZStatement, loops: list[ZLoop]) -> list:
     return [step if isinstance(step, int) else next(numbers).number for step in statement.path]
 
 
-def _place(nest: ZNest, term: Term, statement: ZStatement, loops: list[ZLoop], facts: list) -> object:
-    """The statement's place with regard to one term of the plan (see the definition in oracle.py)."""
-    total: object = 0
-    for name, factor in term.loops:
-        loop = next((loop for loop in loops if _is(loop.name, loop.line, name)), None)
-        if loop is None:
-            return -10**9 if (statement.line, statement.column) < _start(nest, name) else 10**9
-        if term.skewed:
-            total = total + factor * (loop.value if loop.step == 1 else loop.number)
-        elif loop.dependent:
-            total = loop.value if loop.step > 0 else -loop.value
-        else:
-            total = loop.number
-    if term.chunk is None:
-        return total
-    loop = next(loop for loop in loops if _is(loop.name, loop.line, term.loops[0][0]))
-    unit = term.chunk * (abs(loop.step) if loop.dependent and not term.skewed else 1)
-    chunk = nest.fresh("chunk")
-    facts += [unit * chunk <= total, total < unit * chunk + unit]
-    return chunk
+@dataclass
+class _Placing:
+    """An instance of a statement, for the question where it stands in a plan (see the definition in oracle.py)."""
+
+    nest: ZNest
+    statement: ZStatement
+    loops: list[ZLoop]
+    env: dict
+    facts: list
+    aligned: Aligned
+
+    def place(self, term: Term) -> object:
+        """The place with regard to one term."""
+        total: object = 0
+        around = [self._around(name, term.chunk is not None) for name, _ in term.loops]
+        for (name, factor), loop in zip(term.loops, around, strict=True):
+            if loop is None:
+                before = (self.statement.line, self.statement.column) < _start(self.nest, name)
+                return -10**9 if before else 10**9
+            if term.skewed:
+                total = total + factor * (loop.value if loop.step == 1 else loop.number)
+            elif loop.dependent:
+                total = loop.value if loop.step > 0 else -loop.value
+            else:
+                total = loop.number
+        if term.chunk is None:
+            return total
+        unit = term.chunk * (abs(around[0].step) if around[0].dependent and not term.skewed else 1)
+        return self._quotient("chunk", total, unit)
+
+    def _quotient(self, what: str, total: z3.ArithRef, unit: int) -> z3.ArithRef:
+        whole = self.nest.fresh(what)
+        self.facts += [unit * whole <= total, total < unit * whole + unit]
+        return whole
+
+    def _around(self, name: str, chunk: bool) -> ZLoop | None:
+        """The loop at the instance; one that is not around it if the plan says at which of its values it stands."""
+        for loop in self.loops:
+            if _is(loop.name, loop.line, name):
+                return loop
+        for line, other, value, chunks_only in self.aligned:
+            if line == self.statement.line and other == name and (chunk or not chunks_only):
+                return self._standing(name, value(self.env))
+        return None
+
+    def _standing(self, name: str, value: z3.ArithRef) -> ZLoop:
+        statement, node = _header(self.nest, name)
+        base, first, step, early = _loop_parts(node)
+        inner = {_loop_parts(loop)[0] for loop in statement.around if loop not in self.nest.outer}
+        dependent = bool(_names(first) & inner)
+        number = value  # only asked for where the first value depends on no other loop
+        if not dependent:
+            ahead = value - self.nest.number(first, self.env, self.facts) + (1 if early else 0)
+            number = self._quotient("number", ahead if step > 0 else -ahead, abs(step))
+        return ZLoop(base, node.coord.line, node.coord.column, value, number, step, dependent)
 
 
 def _is(name: str, line: int, wanted: str) -> bool:
@@ -279,10 +319,16 @@ def _is(name: str, line: int, wanted: str) -> bool:
 
 
 def _start(nest: ZNest, name: str) -> tuple[int, int]:
+    node = _header(nest, name)[1]
+    return node.coord.line, node.coord.column
+
+
+def _header(nest: ZNest, name: str) -> tuple[ZStatement, c_ast.For]:
+    """The loop of a name, and a statement in it."""
     for statement in nest.statements:
         for loop in statement.around:
             if _is(_loop_parts(loop)[0], loop.coord.line, name):
-                return loop.coord.line, loop.coord.column
+                return statement, loop
     raise Unsupported(f"no loop {name}")
 
 
