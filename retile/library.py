@@ -129,8 +129,7 @@ class OpenNest:
         judgement = self.check(parsed)
         if judgement.verdict is not Verdict.LEGAL:
             raise RetileError(f"{self.address}: no variant for plan '{parsed.text}': it is {judgement.verdict.value}.")
-        remainder = dict(parsed.options).get("remainder", "clamp")
-        return rewrite(self.source, self.nest, self.dependences, parsed, judgement, remainder=remainder, trust=trust)
+        return rewrite(self.source, self.nest, self.dependences, parsed, judgement, trust=trust)
 
     def diff(self, variant: Variant) -> str:
         """A patch from the file to a variant, as ``git apply`` and ``patch -p1`` take it."""

@@ -11,7 +11,7 @@ from enum import Enum
 from typing import Any
 
 from .affine import Affine, Bound, Formula
-from .tree import Loop
+from .tree import Buffer, Loop
 
 # ---------------------------------------------------------------- source
 
@@ -126,6 +126,9 @@ class Storage:
     live_after: bool = True  # its value after the nest can be seen
     pointer_text: str = ""  # C expression of the address of the first cell: ``a``, ``g->depth``, ``&x``
     const: bool = False
+    # For a member of structures in an array (``t.x``) the array of whole structures that it lies in, with the first of
+    # its subscripts: their distance in memory is that of the structures.
+    whole: Storage | None = None
 
 
 @dataclass(frozen=True)
@@ -140,6 +143,7 @@ class Access:
     # For the read and write of an update ``x = x op e``: ``+``, ``*``, ``min`` ...; updates of one kind commute.
     update: str = ""
     exact_update: bool = False  # any order of such updates gives the same bits
+    node: Any = field(default=None, compare=False, repr=False)  # the expression in the syntax tree
 
 
 @dataclass(frozen=True)
@@ -296,6 +300,8 @@ class Plan:
     aligned: tuple[Alignment, ...] = ()
     copied: tuple[str, ...] = ()  # statements that run again wherever their value is needed
     kept: tuple[str, ...] = ()  # private scalars whose values wait in a small array of the variant's own
+    buffers: tuple[Buffer, ...] = ()  # outer ones first
+    unrolled: tuple[str, ...] = ()  # loops whose full chunks are written out
 
     def places_of(self, statement: str) -> tuple[Place, ...]:
         """The places of one statement; KeyError if the plan has none for it."""
@@ -305,6 +311,11 @@ class Plan:
     def moved(self) -> tuple[str, ...]:
         """The ids of all loops that the plan names, in its order."""
         return tuple(dict.fromkeys(loop for term in self.terms for loop, _ in term.form))
+
+    @property
+    def remainder(self) -> str:
+        """How partial chunks are done: as the options say; what is written out needs full chunks apart."""
+        return dict(self.options).get("remainder", "peel" if self.unrolled else "clamp")
 
     @property
     def order_text(self) -> str:

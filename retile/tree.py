@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 from enum import Enum
+from math import prod
 
 from .affine import Affine, AllOf, Bound, Formula, at_least_bound, at_most_bound, equal
 
@@ -42,6 +43,7 @@ class Loop:
     # loop; the loop cuts the values of ``cut`` into consecutive runs, which is given, not derived.
     named: str | None = None
     cut: Affine | None = None
+    unrolled: bool = False  # one of the copies of a loop that is written out: it has a single value
 
     @property
     def length(self) -> Affine:
@@ -101,7 +103,42 @@ class Copy:
     declares: bool = False  # the scalar is declared here: its own declaration stands in another piece
 
 
-Node = Loop | Guard | Leaf | Verbatim | Kept | Copy
+@dataclass(frozen=True)
+class Buffer:
+    """Cells of the variant's own in place of those that some accesses of a storage touch while a part of the tree runs."""
+
+    word: str  # ``hold`` or ``pack``
+    storage: str
+    subscripts: tuple[Affine, ...]  # of the accesses that it serves, in the nest's iterators
+    shape: tuple[int, ...]
+    index: tuple[Affine, ...]  # which cell serves an access, in symbols of the tree
+    level: int  # it lives in the loops of the plan's terms before this one
+    terms: tuple[int, ...]  # the plan's terms over which its cells are filled and emptied
+    heap: bool  # too large for a local array
+
+    @property
+    def cells(self) -> int:
+        """How many cells it has."""
+        return prod(self.shape)
+
+
+@dataclass(frozen=True)
+class Held:
+    """While its body runs, all accesses that a buffer serves go to the buffer's cells."""
+
+    buffer: Buffer
+    body: tuple[Node, ...]
+
+
+@dataclass(frozen=True)
+class Move:
+    """Copies the cell of the buffer that serves an access at this place from the program's own cell, or back to it."""
+
+    buffer: Buffer
+    store: bool  # buffer to the program's cell; else the other way
+
+
+Node = Loop | Guard | Leaf | Verbatim | Kept | Copy | Held | Move
 
 # One moment's place: list positions and (symbol, direction) pairs in turn, outermost first.
 Moment = int | tuple[str, int]
@@ -115,6 +152,30 @@ class Occurrence:
     loops: tuple[Loop, ...]  # outermost first
     conditions: tuple[Formula, ...]  # loops and guards with known conditions
     time: tuple[Moment, ...]
+
+
+@dataclass(frozen=True)
+class Moved:
+    """A move with all that surrounds it in a part of a tree."""
+
+    move: Move
+    conditions: tuple[Formula, ...]
+
+
+def moves(nodes: tuple[Node, ...], conditions: tuple[Formula, ...] = ()) -> Iterator[Moved]:
+    """All moves of a part of a tree, in list order, each with the loops and guards around it."""
+    for node in nodes:
+        if isinstance(node, Move):
+            yield Moved(node, conditions)
+        else:
+            yield from moves(children(node), (*conditions, *established(node)))
+
+
+def established(node: Node) -> tuple[Formula, ...]:
+    """What holds inside a node because of it."""
+    if isinstance(node, Loop):
+        return (node.constraints(),)
+    return (node.condition,) if isinstance(node, Guard) and node.condition is not None else ()
 
 
 def occurrences(tree: tuple[Node, ...]) -> Iterator[Occurrence]:
@@ -135,9 +196,8 @@ def _walk(nodes: tuple[Node, ...], loops: tuple[Loop, ...], conditions: tuple[Fo
         elif isinstance(node, Guard):
             known = (node.condition,) if node.condition is not None else ()
             yield from _walk(node.body, loops, (*conditions, *known), (*here, ("", 0)))
-        elif not isinstance(node, Copy):
-            inner = node.content if isinstance(node, Verbatim) else node.body
-            yield from _walk(inner, loops, conditions, (*here, ("", 0)))
+        else:
+            yield from _walk(children(node), loops, conditions, (*here, ("", 0)))
 
 
 def loops_of(nodes: tuple[Node, ...]) -> Iterator[Loop]:
@@ -150,6 +210,6 @@ def loops_of(nodes: tuple[Node, ...]) -> Iterator[Loop]:
 
 def children(node: Node) -> tuple[Node, ...]:
     """The nodes inside a node."""
-    if isinstance(node, Leaf | Copy):
+    if isinstance(node, Leaf | Copy | Move):
         return ()
     return node.content if isinstance(node, Verbatim) else node.body

@@ -317,4 +317,4 @@ def _shown(key: str, places: list[Place]) -> str:
 
 def _access(touch: Touch, name: str, subscripts: tuple[Affine, ...] | None, span: Span) -> Access:
     family, exact = (touch.update.family, touch.update.exact) if touch.update else ("", False)
-    return Access(name, touch.write, subscripts, touch.context.certain, span, family, exact)
+    return Access(name, touch.write, subscripts, touch.context.certain, span, family, exact, touch.node)

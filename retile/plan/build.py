@@ -17,12 +17,13 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from dataclasses import replace
 
-from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal, less
+from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal, less, negate
 from ..dependence import defined
 from ..model import Nest, Plan, Term
 from ..sets import Region
-from ..tree import Copy, Guard, Kept, Leaf, Loop, Node, Role, Verbatim, loops_of
+from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Role, Verbatim, loops_of
 from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
+from .buffers import reads_and_writes, served
 from .grammar import form_text
 from .kept import Keeping, keeping
 from .schedule import AFTER, BEFORE, INSIDE, merged, placed, skewed_coordinate, standing
@@ -51,7 +52,42 @@ class _Builder:
         nodes = self._copying(self._parts(members, level, known, outer), level, members)
         for keep in owned:
             nodes = (Kept(keep.scalar, keep.shape, nodes),)
+        for buffer in reversed([buffer for buffer in self._plan.buffers if buffer.level == level]):
+            nodes = self._buffered(nodes, buffer, members, known, outer)
         return nodes
+
+    def _buffered(self, nodes: tuple[Node, ...], buffer: Buffer, members: tuple[Unit, ...], known: Region,
+                  outer: tuple[Loop, ...]) -> tuple[Node, ...]:
+        """The nodes with a buffer that is filled before them and emptied after them, where anything uses it."""
+        users = tuple(unit for unit in members if any(served(buffer, self._nest.statement(id))
+                                                      for id in statements_in(unit.nodes)))
+        if not users:
+            return nodes
+        around = known & self._context
+        needed = Region.union(self._visible(unit, outer) for unit in users)
+        reads, writes = reads_and_writes(self._nest, buffer)
+        inside = known & needed
+        fill, empty = ((self._moving(Move(buffer, store), users, inside, outer, buffer.terms),) if wanted else ()
+                       for store, wanted in ((False, reads), (True, writes)))
+        held = Held(buffer, (*fill, *nodes, *empty))
+        if around.within(needed):
+            return (held,)
+        condition = needed.relative_to(around).formula()
+        idle = Region.union(self._visible(unit, outer) for unit in members) & around
+        return Guard(condition, (held,)), *((Guard(negate(condition), nodes),) if not idle.within(needed) else ())
+
+    def _moving(self, move: Move, users: tuple[Unit, ...], known: Region, outer: tuple[Loop, ...],
+                terms: tuple[int, ...]) -> Node:
+        """The loops over the cells of a buffer."""
+        if not terms:
+            return move
+        term = self._plan.terms[terms[0]]
+        symbol = chunk_symbol(term) if term.chunk is not None else term.loop
+        visible = (*self._parameters, *self._constants, *(loop.symbol for loop in outer), symbol)
+        values = Region.union(self._executed(unit).only(visible) for unit in users).coalesced()
+        loop = self._bounded(term, symbol, values, known, outer)
+        inner = known & Region.where(loop.constraints())
+        return replace(loop, body=(self._moving(move, users, inner, (*outer, loop), terms[1:]),))
 
     def _copying(self, nodes: tuple[Node, ...], level: int, members: tuple[Unit, ...]) -> tuple[Node, ...]:
         """The nodes with the values that they use fetched before and put back after them."""

@@ -16,7 +16,7 @@ import re
 from dataclasses import replace
 
 from ..model import Nest, Plan, Term
-from .options import PlanText, read_options
+from .options import Options, PlanText, read_options
 
 _TERM = re.compile(r"\S+")
 _PRODUCT = re.compile(r"([+-]?)(?:(\d+)\*)?([^+\-*]+)")
@@ -48,11 +48,12 @@ def parse_plan(text: str, nest: Nest) -> Plan:
         raise plan.complaint(0, 1, "it names no loop", f"Loops here: {_loop_names(nest)}.")
     _check_terms(plan, terms, nest)
     terms = _executed(terms)
-    options, aligned = read_options(plan, len(order) + 1, rest, nest, terms) if semicolon else ((), ())
+    options = read_options(plan, len(order) + 1, rest, nest, terms) if semicolon else Options()
     written = " ".join(order.split())
-    if options:
-        written += "; " + ", ".join(f"{word} {value}" for word, value in options)
-    return Plan(written, terms, options, aligned=aligned)
+    if options.words:
+        written += "; " + ", ".join(f"{word} {value}" for word, value in options.words)
+    return Plan(written, terms, options.words, aligned=options.aligned, unrolled=options.unrolled,
+                buffers=options.buffers)
 
 
 def _loop_names(nest: Nest) -> str:

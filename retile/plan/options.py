@@ -3,24 +3,37 @@
     option = "remainder" ( "clamp" | "peel" )
            | "reassociate" ( "no" | "yes" )
            | "place" statement ( "at" | "with" ) loop "=" sum
+           | "unroll" loop
+           | "hold" array "across" loop
+           | "pack" array "at" loop ":" chunk
 
 ``place 17 at j = k``: the statement of line 17, which is not in the loop ``j``, stands where ``j`` has the value ``k``;
 ``with``: it goes with the chunk of ``j`` that holds ``k``, before or after the chunk's single iterations, as the text
 has it.  retile looks for such places itself; stated ones are taken as they are, and judged.
+
+``unroll i``: the full chunks of ``i`` are written out, iteration for iteration.  ``hold`` and ``pack`` are explained in
+``buffers``; an array that the nest reaches in several ways is named with its subscripts, as in ``grid[i][k]``.
 """
 
 from __future__ import annotations
 
 import re
 
+from dataclasses import dataclass
+
 from ..affine import Affine
-from ..model import Alignment, Nest, RetileError, Statement, Term
+from ..model import Alignment, Nest, RetileError, Statement, StorageKind, Term
+from ..tree import Buffer
+from .buffers import Unfit, buffer_of, references
 
 # The options with a fixed set of values.
 OPTIONS = {"remainder": ("clamp", "peel"), "reassociate": ("no", "yes")}
 
 _KNOWN = ", ".join([*(f"{word} {'|'.join(values)}" for word, values in OPTIONS.items()), "place LINE at LOOP = VALUE",
-                    "place LINE with LOOP = VALUE"])
+                    "place LINE with LOOP = VALUE", "unroll LOOP", "hold ARRAY across LOOP", "pack ARRAY at LOOP:CHUNK"])
+_BUFFER = re.compile(r"(hold|pack)\s+(\S+)\s+(across|at)\s+(\S+)")
+# Iterations of one loop that are written out at most.
+MOST_UNROLLED = 64
 _PLACE = re.compile(r"place\s+(\S+)\s+(at|with)\s+(\S+?)\s*=\s*(\S.*)")
 _PRODUCT = re.compile(r"\s*([+-]?)\s*(?:(\d+)\s*\*\s*)?([^+\-*\s]+)\s*")
 
@@ -37,14 +50,25 @@ class PlanText:
         return RetileError(f"wrong plan: {what}\n    {self.text}\n    {mark}\n{remedy}")
 
 
-def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple[Term, ...]) \
-        -> tuple[tuple[tuple[str, str], ...], tuple[Alignment, ...]]:
-    """The options as (word, value), and the places among them; ``start``: where ``text`` begins in the plan.
+@dataclass(frozen=True)
+class Options:
+    """What the options of a plan say."""
+
+    words: tuple[tuple[str, str], ...] = ()  # all of them: (word, value)
+    aligned: tuple[Alignment, ...] = ()
+    unrolled: tuple[str, ...] = ()
+    buffers: tuple[Buffer, ...] = ()
+
+
+def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple[Term, ...]) -> Options:
+    """The options of a plan; ``start``: where ``text`` begins in the plan.
 
     Raises RetileError, with the place in the plan marked, for a word, a value or a name that is not known.
     """
     found: list[tuple[str, str]] = []
     aligned: list[Alignment] = []
+    unrolled: list[str] = []
+    buffers: list[Buffer] = []
     for match in re.finditer(r"[^,]+", text):
         option = match.group().strip()
         begin = start + match.start() + len(match.group()) - len(match.group().lstrip())
@@ -53,12 +77,76 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
         word, _, value = option.partition(" ")
         if word == "place":
             aligned.append(_alignment(plan, begin, option, nest, terms))
+        elif word == "unroll":
+            unrolled.append(_unrolled(plan, begin, option, value.strip(), terms))
+        elif word in ("hold", "pack"):
+            buffers.append(_buffer(plan, begin, option, nest, terms, buffers))
         elif value.strip() not in OPTIONS.get(word, ()):
             raise plan.complaint(begin, begin + len(option), f"'{option}' is not an option", f"Options: {_KNOWN}.")
         elif word in dict(found):
             raise plan.complaint(begin, begin + len(option), f"option '{word}' stands twice", "Leave one of the two out.")
         found.append((word, " ".join(value.split())))
-    return tuple(found), tuple(aligned)
+    buffers.sort(key=lambda buffer: buffer.level)
+    if unrolled and ("remainder", "clamp") in found:
+        raise plan.complaint(start, start + len(text), "only full chunks can be written out, and 'remainder clamp' has none",
+                             "Leave 'remainder clamp' out.")
+    return Options(tuple(found), tuple(aligned), tuple(unrolled), tuple(buffers))
+
+
+def _unrolled(plan: PlanText, begin: int, option: str, loop: str, terms: tuple[Term, ...]) -> str:
+    chunks = [term.chunk for term in terms if len(term.form) == 1 and term.loop == loop]
+    if len(chunks) < 2 or not isinstance(chunks[-2], int):
+        raise plan.complaint(begin, begin + len(option), f"'{loop}' has no chunk with a number in the plan",
+                             "Only the iterations of a chunk are written out: put one like i:4 into the plan.")
+    if chunks[-2] > MOST_UNROLLED:
+        raise plan.complaint(begin, begin + len(option), f"{chunks[-2]} iterations of '{loop}' are too many to write out",
+                             f"At most {MOST_UNROLLED}.")
+    return loop
+
+
+def _buffer(plan: PlanText, begin: int, option: str, nest: Nest, terms: tuple[Term, ...], others: list[Buffer]) \
+        -> Buffer:
+    match = _BUFFER.fullmatch(option)
+    if match is None or (match.group(1) == "hold") != (match.group(3) == "across"):
+        raise plan.complaint(begin, begin + len(option), "this is not a buffer",
+                             "Write it like: hold beams across k, or: pack echoes at k:256.")
+    word, name, _, place = match.groups()
+    chunk = word == "pack"
+    written = {f"{term.loop}:{term.chunk}" if term.chunk is not None else term.loop: at for at, term in enumerate(terms)
+               if len(term.form) == 1 and (term.chunk is not None or not chunk)}
+    at = written.get(place) if chunk == (":" in place) else None
+    if at is None:
+        known = [text for text in written if chunk == (":" in text)]
+        raise plan.complaint(begin + match.start(4), begin + match.end(4), f"'{place}' is not such a term of the plan",
+                             f"Terms here: {', '.join(known) or 'none'}.")
+    storage, subscripts = _reference(plan, begin + match.start(2), name, nest)
+    if any((other.storage, other.subscripts) == (storage, subscripts) for other in others):
+        raise plan.complaint(begin, begin + len(option), f"{name} has a buffer already", "Leave one of the two out.")
+    try:
+        return buffer_of(nest, terms, word, nest.storage(storage), subscripts, at)
+    except Unfit as reason:
+        raise plan.complaint(begin, begin + len(option), f"cannot {word} {name}: {reason}",
+                             "Change the order or leave the option out.") from None
+
+
+def _reference(plan: PlanText, begin: int, name: str, nest: Nest) -> tuple[str, tuple[Affine, ...]]:
+    """The accesses that a name means: of an array, or with its subscripts where there are several."""
+    known = {storage.name: references(nest, storage.name) for storage in nest.storages
+             if storage.kind is not StorageKind.SCALAR}
+    if len(known.get(name, ())) == 1:
+        return name, known[name][0]
+    texts = {shown(storage, subscripts): (storage, subscripts) for storage, several in known.items()
+             for subscripts in several}
+    if name in texts:
+        return texts[name]
+    one_of = [text for text, (storage, _) in texts.items() if storage == name]
+    what = f"'{name}' is reached in several ways" if one_of else f"the nest has no array '{name}'"
+    raise plan.complaint(begin, begin + len(name), what, f"Name one of: {', '.join(one_of or texts)}.")
+
+
+def shown(storage: str, subscripts: tuple[Affine, ...]) -> str:
+    """An access as a plan names it: ``grid[i][k+1]``."""
+    return storage + "".join(f"[{subscript}]" for subscript in subscripts).replace(" ", "")
 
 
 def _alignment(plan: PlanText, begin: int, option: str, nest: Nest, terms: tuple[Term, ...]) -> Alignment:

@@ -21,6 +21,7 @@ from ..tree import occurrences
 from ..touched import touched
 from .afterwards import lost_iterators
 from .alignment import MOST_TRIALS, settled
+from .build import build_tree
 from .copies import copied, copied_scalars
 from .kept import keepable
 from .schedule import INSIDE, merged, moments, placed, stays_whole
@@ -42,7 +43,20 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
     unproven = () if violations else tuple(court.unproven(edges))
     assumptions = tuple(court.needed_assumptions())
     verdict = Verdict.ILLEGAL if violations else Verdict.UNPROVEN if unproven else Verdict.LEGAL
+    unfit = tuple(_unfit(nest, dependences, plan)) if verdict is Verdict.LEGAL and plan.buffers else ()
+    if unfit:
+        return Judgement(Verdict.REFUSED, plan, refusals=unfit)
     return Judgement(verdict, plan, violations, unproven, (), assumptions)
+
+
+def _unfit(nest: Nest, dependences: Dependences, plan: Plan) -> Iterator[Refusal]:
+    """Why buffers of the plan cannot serve: the tree asked, for its flaws."""
+    from ..reached import cells_reached
+
+    for flaw in cells_reached(build_tree(nest, plan), nest, dependences.context):
+        place = nest.statement(flaw.statement).span
+        yield Refusal(place.line, place.column, "buffer", f"{flaw.text}; leave the option out, or put it at another loop")
+        return
 
 
 def is_legal(nest: Nest, dependences: Dependences, plan: Plan, trials: int = MOST_TRIALS) -> bool:
@@ -277,7 +291,8 @@ class _Court:
     def _needs(self, assumption: Assumption, reorders: dict[tuple[str, str], bool]) -> bool:
         """True if the plan rests on an assumption; row lengths too, since the loops' bounds are built under them."""
         if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
-            return self._could_reverse(*assumption.storages, reorders) or self._copy_reads(assumption.storages)
+            return self._could_reverse(*assumption.storages, reorders) or self._copy_reads(assumption.storages) or \
+                any(buffer.storage in assumption.storages for buffer in self.plan.buffers)
         return not self.is_identity()
 
     def _copy_reads(self, storages: tuple[str, ...]) -> bool:
@@ -285,8 +300,8 @@ class _Court:
         return any(access.storage in storages for id in self.plan.copied for access in self._nest.statement(id).accesses)
 
     def is_identity(self) -> bool:
-        """True if the plan is the original order, loop for loop."""
-        return all(term.chunk is None for term in self.plan.terms) and \
+        """True if the plan is the original order, loop for loop, with no storage of its own."""
+        return not self.plan.buffers and all(term.chunk is None for term in self.plan.terms) and \
             [term.loop for term in self.plan.terms] == \
             [loop.id for loop in self._nest.loops if loop.id in {term.loop for term in self.plan.terms}]
 

@@ -14,7 +14,7 @@ from ..affine import Affine
 from ..model import LoopText, Nest, RetileError
 from ..source.lex import SKIPPED, Token, tokenize
 from ..source.structure import Malformed, Shape, compound
-from ..tree import Guard, Kept, Leaf, Loop, Node, Verbatim, children
+from ..tree import Guard, Held, Kept, Leaf, Loop, Node, Verbatim, children
 
 
 class InternalError(RetileError):
@@ -117,6 +117,11 @@ class NestText:
         """The extent of the whole statements that a piece stands for, with the comments that go with them."""
         return self._pieces[node.span]
 
+    def without_comments(self, extent: tuple[int, int]) -> tuple[int, int]:
+        """An extent without the comments at its ends."""
+        solid = [token for token in self._solid if extent[0] <= token.start < extent[1]]
+        return (solid[0].start, solid[-1].end) if solid else extent
+
     def statement_count(self, node: Verbatim) -> int:
         """How many statements a piece has; a comment before the first one counts as one, so that braces show it."""
         start, end = self.piece(node)
@@ -166,7 +171,7 @@ class NestText:
         for node in nodes:
             if isinstance(node, Verbatim):
                 yield from self._cut(node)
-            elif isinstance(node, Loop | Guard | Kept):
+            elif isinstance(node, Loop | Guard | Kept | Held):
                 yield replace(node, body=tuple(self._separated(node.body)))
             else:
                 yield node
@@ -318,22 +323,25 @@ class NestText:
         line = self.text[self.text.rfind("\n", 0, offset) + 1:offset]
         return line[:len(line) - len(line.lstrip(" \t"))]
 
-    def moved(self, extent: tuple[int, int], indent: str) -> str:
+    def moved(self, extent: tuple[int, int], indent: str, changes: Iterable[tuple[int, int, str]] = ()) -> str:
         """A piece of text with its lines moved to another indentation, its first line without any.
 
         Lines inside string literals and directives stay where they are; a comment moves as a whole or not at all.
+        ``changes``: what stands in place of ``text[start:end]``, none of them across lines.
         """
         start, end = extent
         old = self.indentation(start)
         text = self.text[start:end]
+        changes = tuple(changes)
         if old == indent or "\n" not in text:
-            return text
+            return _changed(text, start, changes)
         fixed = self._fixed_lines(start, end, old)
         lines: list[str] = []
         offset = start
         for line in text.split("\n"):
             movable = offset > start and offset not in fixed and line.startswith(old) and line.strip()
-            lines.append(indent + line[len(old):] if movable else line)
+            new = _changed(line, offset, [one for one in changes if offset <= one[0] <= offset + len(line)])
+            lines.append(indent + new[len(old):] if movable else new)
             offset += len(line) + 1
         return "\n".join(lines)
 
@@ -350,6 +358,13 @@ class NestText:
             if token.kind != "comment" or not all(line.startswith(old) for line in lines if line.strip()):
                 fixed.update(starts)
         return fixed
+
+
+def _changed(text: str, start: int, changes: Iterable[tuple[int, int, str]]) -> str:
+    """The text, which starts at an offset of the file, with pieces replaced."""
+    for begin, end, new in sorted(changes, reverse=True):
+        text = text[:begin - start] + new + text[end - start:]
+    return text
 
 
 def _shapes(shape: Shape) -> Iterator[Shape]:

@@ -166,10 +166,10 @@ class Elements(ABC):
         ids = [word for word in words if word in self._ids] or [loop.of]
         return "_".join(self._nest.loop(id).iterator for id in ids)
 
-    def name(self, key: object, wanted: str) -> str:
+    def name(self, key: object, wanted: str, family: bool = False) -> str:
         """A new name, the same one for the same key."""
         if key not in self._chosen:
-            self._chosen[key] = self._names.fresh(wanted)
+            self._chosen[key] = self._names.fresh(wanted, family)
         return self._chosen[key]
 
     def _chunk_name(self, loop: Loop, word: str) -> str:

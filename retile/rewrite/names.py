@@ -11,9 +11,9 @@ class Names:
     def __init__(self, taken: Iterable[str]) -> None:
         self._taken = set(taken)
 
-    def fresh(self, wanted: str) -> str:
-        """``wanted``, with as many underscores behind it as it takes."""
-        while wanted in self._taken:
+    def fresh(self, wanted: str, family: bool = False) -> str:
+        """``wanted``, with as many underscores behind it as it takes; ``family``: names like ``wanted_3`` are free too."""
+        while wanted in self._taken or family and any(name.startswith(f"{wanted}_") for name in self._taken):
             wanted += "_"
         self._taken.add(wanted)
         return wanted

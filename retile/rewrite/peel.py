@@ -25,34 +25,35 @@ from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, Constraint, Floor, Formula, at_most, negate
 from ..sets import Region
-from ..tree import Guard, Kept, Loop, Node, Role, loops_of
+from ..tree import Guard, Held, Kept, Loop, Node, Role, loops_of
 from .bounds import members
 
 
-def peeled(tree: tuple[Node, ...], context: Region) -> tuple[Node, ...]:
-    """The tree with full chunks apart; ``context``: what holds of the parameters."""
+def peeled(tree: tuple[Node, ...], context: Region, most: int | None = None) -> tuple[Node, ...]:
+    """The tree with full chunks apart; ``context``: what holds of the parameters; ``most``: how many iterations a chunk may
+    have for that, any number if left out."""
     constants = frozenset(loop.named for loop in loops_of(tree) if loop.named is not None)
-    return tuple(_peeled(node, context, constants) for node in tree)
+    return tuple(_peeled(node, context, constants, most) for node in tree)
 
 
-def _peeled(node: Node, known: Region, constants: frozenset[str]) -> Node:
+def _peeled(node: Node, known: Region, constants: frozenset[str], most: int | None) -> Node:
     if isinstance(node, Guard):
         inner = known if node.condition is None else known & Region.where(node.condition)
-        return replace(node, body=tuple(_peeled(part, inner, constants) for part in node.body))
-    if isinstance(node, Kept):
-        return replace(node, body=tuple(_peeled(part, known, constants) for part in node.body))
+        return replace(node, body=tuple(_peeled(part, inner, constants, most) for part in node.body))
+    if isinstance(node, Kept | Held):
+        return replace(node, body=tuple(_peeled(part, known, constants, most) for part in node.body))
     if not isinstance(node, Loop):
         return node
     inside = known & Region.where(node.constraints())
-    body = tuple(_peeled(part, inside, constants) for part in node.body)
+    body = tuple(_peeled(part, inside, constants, most) for part in node.body)
     if node.role is Role.CHUNK and not (len(body) == 1 and isinstance(body[0], Loop) and body[0].role is Role.CHUNK):
-        body = _apart(body, inside, constants)
+        body = _apart(body, inside, constants, most)
     return replace(node, body=body)
 
 
-def _apart(body: tuple[Node, ...], known: Region, constants: frozenset[str]) -> tuple[Node, ...]:
+def _apart(body: tuple[Node, ...], known: Region, constants: frozenset[str], most: int | None) -> tuple[Node, ...]:
     """A region with its full chunks in front, under a condition, and as it was where the condition fails."""
-    full = _Full(constants)
+    full = _Full(constants, most)
     copy = tuple(full.node(node, {}) for node in body)
     conditions = _needed(tuple(dict.fromkeys(full.conditions)), known)
     inner = {loop.symbol for loop in loops_of(body)}
@@ -84,13 +85,14 @@ class _Range:
 class _Full:
     """Makes the copy of a region in which chunks are full, and collects what has to hold for that."""
 
-    def __init__(self, constants: frozenset[str]) -> None:
+    def __init__(self, constants: frozenset[str], most: int | None) -> None:
         self._constants = constants
+        self._most = most
         self.conditions: list[Constraint] = []
 
     def node(self, node: Node, box: Mapping[str, _Range]) -> Node:
         """The node with the loops in it over full chunks; ``box``: the range of the loops of the region around."""
-        if isinstance(node, Guard | Kept):
+        if isinstance(node, Guard | Kept | Held):
             return replace(node, body=tuple(self.node(part, box) for part in node.body))
         if not isinstance(node, Loop) or node.role is Role.CHUNK:
             return node
@@ -107,13 +109,17 @@ class _Full:
         for low in lowers:
             for high in uppers:
                 assert isinstance(low, Affine) and isinstance(high, Affine)
-                if low.terms and (high - low).names() <= self._constants:
+                if low.terms and (high - low).names() <= self._constants and self._short(high - low):
                     needs = [*(_least(high_ - high, box) for high_ in uppers if isinstance(high_, Affine)),
                              *(_least(low - low_, box) for low_ in lowers if isinstance(low_, Affine))]
                     if all(need is not None and (need.terms or need.constant >= 0) for need in needs):
                         self.conditions += [at_most(0, need) for need in needs if need is not None and need.terms]
                         return replace(loop, lower=low, upper=high)
         return loop
+
+
+    def _short(self, distance: Affine) -> bool:
+        return self._most is None or distance.is_constant and abs(distance.constant) < self._most
 
 
 def _range_of(loop: Loop) -> _Range | None:

@@ -6,23 +6,32 @@ user's (``layout``, ``style``), headers come from ``loops``.
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import replace
 
 from ..affine import Affine, equal, negate
-from ..model import LoopText, Nest
-from ..tree import Copy, Guard, Kept, Loop, Node, Verbatim
+from ..model import LoopText, Nest, Statement
+from ..source import Source
+from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
+from .buffered import Array, Change, Heap, array_name, constant_dimensions, served, with_values
 from .chunks import Loops
-from .expression import Expression, condition, express
+from .expression import Expression, condition
 from .layout import InternalError, NestText, Remarks, instances
 from .loops import Opened, Place
-from .style import Style
+from .style import WIDTH, Style
 
 
 class Printer:
     """Prints one tree; remarks that found no place are left in ``homeless``."""
 
-    def __init__(self, nest: Nest, layout: NestText, style: Style, loops: Loops, kept: frozenset[str]) -> None:
+    def __init__(self, source: Source, nest: Nest, layout: NestText, style: Style, loops: Loops, kept: frozenset[str],
+                 heap: Heap) -> None:
+        self._source = source
         self._nest = nest
+        self._heap = heap
+        self._arrays: dict[Buffer | str, Array] = {}  # those in use here, per buffer or kept scalar
+        self._values: dict[str, str] = {}  # what stands for the user's iterators here
+        self._again = False  # in a copy of text that stands further up already
         self._layout = layout
         self._style = style
         self._loops = loops
@@ -41,7 +50,11 @@ class Printer:
         at = 0
         while at < len(nodes):
             node = nodes[at]
-            if isinstance(node, Loop):
+            if isinstance(node, Loop) and node.unrolled:
+                before = nodes[at - 1] if at else None
+                again = isinstance(before, Loop) and before.unrolled and before.symbol == node.symbol
+                lines += self._written_out(node, place, indent, again)
+            elif isinstance(node, Loop):
                 printed, place = self._loop(node, place, indent)
                 lines += printed
             elif isinstance(node, Guard):
@@ -49,17 +62,129 @@ class Printer:
                 lines += self._guard(node, nodes[at + 1] if both else None, place, indent)
                 at += both
             elif isinstance(node, Verbatim):
-                lines.append(indent + self._layout.moved(self._layout.piece(node), indent))
-            elif isinstance(node, Kept):
-                lines.append(f"{indent}{self._declaration(node.scalar)} {self._cells(node.scalar)}"
-                             f"{''.join(f'[{extent}]' for extent in node.shape)};")
-                lines += self.nodes(node.body, place, indent)
+                lines += self._piece(node, place, indent)
+            elif isinstance(node, Kept | Held):
+                lines += self._with_storage(node, place, indent)
+            elif isinstance(node, Move):
+                lines.append(indent + self._move(node, place))
             elif isinstance(node, Copy):
                 lines.append(indent + self._copy(node, place))
             else:
                 raise InternalError(f"{self._nest.address}: statement {node.statement} has no text of its own")
             at += 1
         return lines
+
+    # ---------------------------------------------------------------- the user's text
+
+    def _piece(self, node: Verbatim, place: Place, indent: str) -> list[str]:
+        """Statements of the user's, with their accesses sent to buffers and values in place of iterators."""
+        extent = self._layout.piece(node) if not self._again else self._layout.without_comments(self._layout.piece(node))
+        return [indent + self._moved(extent, indent, node.content, place)]
+
+    def _moved(self, extent: tuple[int, int], indent: str, content: tuple[Node, ...], place: Place) -> str:
+        changes = list(dict.fromkeys(change for leaf in _leaves(content)
+                                     for change in self._sent(self._nest.statement(leaf.statement), place)))
+        if self._values:
+            changes += with_values(self._layout.text[extent[0]:extent[1]], extent[0], self._values, changes)
+        return self._layout.moved(extent, indent, changes)
+
+    def _sent(self, statement: Statement, place: Place) -> list[Change]:
+        """The accesses of a statement that go to buffers."""
+        found: list[Change] = []
+        for buffer, array in self._arrays.items():
+            if isinstance(buffer, str):
+                continue
+            for access in served(buffer, statement):
+                span = self._source.reference_span(access.node)
+                if span is None:
+                    raise InternalError(f"{self._nest.address}: an access to {buffer.storage} has no text of its own")
+                found.append((span.start, span.end, array.cell(buffer.index, place.scope)))
+        return found
+
+    def _written_out(self, loop: Loop, place: Place, indent: str, again: bool) -> list[str]:
+        """One iteration of a loop that is written out."""
+        source = self._loops.source(loop.symbol)
+        assert isinstance(loop.lower, Affine)
+        value = self._loops.in_type(loop.lower, source.type, place.scope)
+        inside = Place(place.scope.meaning(loop.symbol, loop.lower), place.limits, place.around | {loop.symbol})
+        plain = all(isinstance(node, Verbatim | Move | Copy) or isinstance(node, Loop) and node.unrolled for node in loop.body) \
+            and not self._hides(source.iterator, loop.body)
+        before = self._values, self._again
+        self._again = self._again or again
+        if plain:
+            self._values = {**self._values, source.iterator: value.text}
+            lines = self.nodes(loop.body, inside, indent)
+            if self._declares(loop.body):
+                lines = [indent + "{", *(self._style.step + line for line in lines), indent + "}"]
+        else:
+            declared = f"const {source.type.spelling} " if source.declared_in_for else ""
+            inner = indent + self._style.braced_step
+            lines = [f"{indent}{{", f"{inner}{declared}{source.iterator} = {value.text};",
+                     *self.nodes(loop.body, inside, inner), f"{indent}}}"]
+        self._values, self._again = before
+        return lines
+
+    def _hides(self, iterator: str, nodes: tuple[Node, ...]) -> bool:
+        """True if a macro in the text of some nodes uses an iterator, so that no value can stand in its place."""
+        words = self._source.macro_words
+        seen: set[str] = set()
+        todo = [token.spelling for node in nodes if isinstance(node, Verbatim)
+                for token in self._source.tokens_in(*self._layout.piece(node)) if token.spelling in words]
+        while todo:
+            name = todo.pop()
+            if name not in seen:
+                seen.add(name)
+                if iterator in words[name]:
+                    return True
+                todo += [word for word in words[name] if word in words]
+        return False
+
+    def _declares(self, nodes: tuple[Node, ...]) -> bool:
+        """True if statements of some nodes declare names, which copies of them would declare again."""
+        return any(access.write and self._nest.storage(access.storage).scope == "block" for leaf in _leaves(nodes)
+                   for access in self._nest.statement(leaf.statement).accesses)
+
+    # ---------------------------------------------------------------- storage
+
+    def _with_storage(self, node: Kept | Held, place: Place, indent: str) -> list[str]:
+        """The body of a node with the cells that it has of its own."""
+        key, index, shape = (node.buffer, node.buffer.index, node.buffer.shape) if isinstance(node, Held) else \
+            (node.scalar, next((copy.index for copy in _copies(node.body, node.scalar)), ()), node.shape)
+        if isinstance(key, Buffer) and key.heap:
+            self._arrays[key] = self._heap.arrays[key]
+            lines = self.nodes(node.body, place, indent)
+        else:
+            name = array_name(self._nest, key) if isinstance(key, Buffer) else f"{self._variable(key)}_kept"
+            rows = constant_dimensions(node.body, key, index, place.scope.meanings)
+            array = Array(self._loops.name(("cells", key), name, family=True), shape, rows)
+            self._arrays[key] = array
+            type = self._declaration(key.storage if isinstance(key, Buffer) else key)
+            lines = self._declared(type, list(array.declarators()), indent)
+            lines += self.nodes(node.body, place, indent)
+        del self._arrays[key]
+        return lines
+
+    def _declared(self, type: str, declarators: list[str], indent: str) -> list[str]:
+        lines = [f"{indent}{type} {declarators[0]}"]
+        for one in declarators[1:]:
+            if len(lines[-1]) + len(one) + 3 > WIDTH:
+                lines[-1] += ","
+                lines.append(f"{indent}{self._style.step}{one}")
+            else:
+                lines[-1] += f", {one}"
+        return [*lines[:-1], lines[-1] + ";"]
+
+    def _move(self, move: Move, place: Place) -> str:
+        """``beams_held[j - j_from] = beams[i][j];`` or the other way round."""
+        buffer = move.buffer
+        span = next((span for statement in self._nest.statements for access in served(buffer, statement)
+                     if (span := self._source.reference_span(access.node)) is not None), None)
+        if span is None:
+            raise InternalError(f"{self._nest.address}: no access to {buffer.storage} has a text of its own")
+        changes = with_values(self._layout.text[span.start:span.end], span.start, self._values, [])
+        own = self._layout.moved((span.start, span.end), "", changes)
+        cell = self._arrays[buffer].cell(buffer.index, place.scope)
+        return f"{own} = {cell};" if move.store else f"{cell} = {own};"
 
     # ---------------------------------------------------------------- loops
 
@@ -68,6 +193,12 @@ class Printer:
         remarks = self._take(loop)
         lines = [indent + self._layout.moved(extent, indent) for extent in remarks.before]
         lines += self._indented(opened.before, indent)
+        header = opened.header
+        if self._values and opened.kept:
+            changes = with_values(header, 0, self._values, [])
+            for begin, end, new in reversed(changes):
+                header = header[:begin] + new + header[end:]
+            opened = replace(opened, header=header)
         behind = "".join(" " + self._layout.moved(extent, indent) for extent in remarks.behind)
         inner = indent + self._style.braced_step
         if opened.condition:
@@ -85,7 +216,9 @@ class Printer:
 
     def _take(self, loop: Loop) -> Remarks:
         """The comments of a source loop, for the first tree loop that runs over its iterations one by one."""
-        return self._remarks.pop(loop.symbol, Remarks()) if loop.symbol in self._ids else Remarks()
+        if loop.symbol not in self._ids or not any(_leaves(loop.body)):
+            return Remarks()
+        return self._remarks.pop(loop.symbol, Remarks())
 
     def _indented(self, lines: tuple[str, ...], indent: str) -> list[str]:
         """Generated lines; a mark at the start asks for one more level."""
@@ -93,7 +226,7 @@ class Printer:
 
     def _single(self, loop: Loop) -> bool:
         """True for a loop of exactly one iteration: a value that follows from the loops around."""
-        return loop.symbol in self._ids and isinstance(loop.lower, Affine) and loop.lower == loop.upper and \
+        return not loop.unrolled and loop.symbol in self._ids and isinstance(loop.lower, Affine) and loop.lower == loop.upper and \
             abs(loop.step) == 1
 
     def _assigned(self, loop: Loop, place: Place, indent: str) -> list[str]:
@@ -138,7 +271,7 @@ class Printer:
         if isinstance(node, Loop):
             first = body[0].lstrip()
             return not first.startswith("for")
-        if isinstance(node, Kept):
+        if isinstance(node, Kept | Held):
             return True
         if isinstance(node, Verbatim):
             return self._layout.statement_count(node) != 1
@@ -166,17 +299,12 @@ class Printer:
         element = self._nest.storage(scalar).element
         return element if isinstance(element, str) else element.spelling
 
-    def _cells(self, scalar: str) -> str:
-        """The name of the array in which a scalar's values wait."""
-        return self._loops.name(("kept", scalar), f"{self._variable(scalar)}_kept")
-
     def _variable(self, scalar: str) -> str:
         return self._nest.storage(scalar).pointer_text.removeprefix("&") or scalar
 
     def _copy(self, copy: Copy, place: Place) -> str:
         """``sum_kept[i - i_from] = sum;`` or the other way round."""
-        index = "".join(f"[{express(form, place.scope).text}]" for form in copy.index)
-        cell, scalar = self._cells(copy.scalar) + index, self._variable(copy.scalar)
+        cell, scalar = self._arrays[copy.scalar].cell(copy.index, place.scope), self._variable(copy.scalar)
         if copy.store:
             return f"{cell} = {scalar};"
         return f"{self._declaration(copy.scalar)} {scalar} = {cell};" if copy.declares else f"{scalar} = {cell};"
@@ -197,7 +325,9 @@ class Printer:
         if guard.condition is not None:
             inside = replace(place, scope=place.scope.knowing(guard.condition))
         if guard.span is not None:
-            text = self._layout.moved(guard.span, indent)
+            conditions = tuple(Leaf(statement.id, ()) for statement in self._nest.statements
+                               if (statement.span.start, statement.span.end) == guard.span)
+            text = self._moved(guard.span, indent, conditions, place)
             text = f"!({text})" if self._layout.in_false_branch(guard) else text
         elif guard.condition is not None:
             text = self._style.wrapped(condition(guard.condition, place.scope), indent + "if (")
@@ -212,3 +342,19 @@ class Printer:
             apart = replace(place, scope=place.scope.knowing(otherwise.condition))
             lines = self._style.otherwise(lines, self.nodes(otherwise.body, apart, inner), indent)
         return lines
+
+
+def _leaves(nodes: tuple[Node, ...]) -> Iterator[Leaf]:
+    """All leaves of some nodes."""
+    for node in nodes:
+        if isinstance(node, Leaf):
+            yield node
+        yield from _leaves(children(node))
+
+
+def _copies(nodes: tuple[Node, ...], scalar: str) -> Iterator[Copy]:
+    """All copies of a kept scalar."""
+    for node in nodes:
+        if isinstance(node, Copy) and node.scalar == scalar:
+            yield node
+        yield from _copies(children(node), scalar)

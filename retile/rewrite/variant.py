@@ -16,9 +16,10 @@ from typing import TYPE_CHECKING
 from ..affine import Affine, AllOf, Formula, at_most, bound_names, formula_names
 from ..model import Assumption, AssumptionCode, Judgement, Nest, Plan, Variant
 from ..sets import Region
-from ..tree import Loop, Node, Verbatim, children, loops_of
+from ..tree import Loop, Node, Role, Verbatim, children, loops_of
 from .after import restored
 from .assumed import Tests, tests_of
+from .buffered import Heap
 from .chunks import Loops
 from .expression import INT, Expression, NoRoom, Scope, written
 from .includes import insertion, missing
@@ -29,6 +30,7 @@ from .patch import unified
 from .peel import peeled
 from .printer import Printer
 from .style import WIDTH, Style, read_style
+from .unroll import unrolled
 
 if TYPE_CHECKING:
     from ..dependence import Dependences
@@ -39,7 +41,7 @@ _ROOM = 10 ** 12
 
 
 def rewrite(source: Source, nest: Nest, dependences: Dependences, plan: Plan, judgement: Judgement, *,
-            remainder: str = "clamp", trust: bool = False) -> Variant:
+            remainder: str | None = None, trust: bool = False) -> Variant:
     """The variant of a plan whose verdict is ``legal``.
 
     ``remainder``: ``clamp`` or ``peel``, unless the plan says.  ``trust``: leave out the tests of assumptions and the
@@ -47,7 +49,8 @@ def rewrite(source: Source, nest: Nest, dependences: Dependences, plan: Plan, ju
     assumption cannot be tested.
     """
     original = source.text[nest.span.start:nest.span.end]
-    remainder = dict(plan.options).get("remainder", remainder)
+    if remainder is None or "remainder" in dict(plan.options) or plan.unrolled:
+        remainder = plan.remainder
     if is_original_order(nest, plan):
         return Variant(plan, source.text, judgement, nest.tree, original)
     tree = finished_tree(nest, dependences, judgement.plan, remainder)
@@ -66,7 +69,7 @@ def diff(source: Source, variant: Variant) -> str:
 def is_original_order(nest: Nest, plan: Plan) -> bool:
     """True if the plan names loops in the order in which they stand, and cuts none."""
     names = [term.loop for term in plan.terms if len(term.form) == 1 and term.chunk is None and term.form[0][1] == 1]
-    if len(names) < len(plan.terms):
+    if len(names) < len(plan.terms) or plan.buffers:
         return False
     order = {loop.id: at for at, loop in enumerate(nest.loops)}
     return [order[name] for name in names] == sorted(order[name] for name in names)
@@ -74,11 +77,13 @@ def is_original_order(nest: Nest, plan: Plan) -> bool:
 
 def finished_tree(nest: Nest, dependences: Dependences, plan: Plan, remainder: str) -> tuple[Node, ...]:
     """The tree that will be printed; raises InternalError if it does not do what the nest does."""
-    from ..plan import build_tree
+    from ..plan import MOST_UNROLLED, build_tree
 
     tree = build_tree(nest, plan)
     if remainder == "peel":
-        tree = peeled(tree, dependences.context)
+        long = "remainder" in dict(plan.options) or not plan.unrolled
+        tree = peeled(tree, dependences.context, None if long else MOST_UNROLLED)
+    tree = unrolled(tree, plan.unrolled, MOST_UNROLLED)
     check(tree, nest, dependences, plan)
     return tree
 
@@ -87,12 +92,14 @@ def check(tree: tuple[Node, ...], nest: Nest, dependences: Dependences, plan: Pl
     """Ask the questions of a finished tree; InternalError, with the first flaw, if the answer to one is no."""
     from ..plan import binding_edges, moved_conditions
     from ..questions import order_kept, same_instances, values_arrive
+    from ..reached import cells_reached
 
     context = dependences.context
     repeatable = moved_conditions(nest, plan) | set(plan.copied)
     flaws = [*same_instances(tree, nest, context, repeatable),
              *order_kept(tree, dependences, binding_edges(nest, dependences, plan)),
-             *values_arrive(tree, nest, context, plan.copied)]
+             *values_arrive(tree, nest, context, plan.copied),
+             *cells_reached(tree, nest, context)]
     if flaws:
         raise InternalError(f"{nest.address}: the loops made for this plan are wrong, so nothing was written: {flaws[0]}.\n"
                             "This is a defect of retile; please report it with the nest and the plan.")
@@ -131,8 +138,9 @@ class _Order:
 
     def text(self) -> tuple[str, tuple[str, ...]]:
         """The variant's text and the headers that it needs; asks for smaller sizes if arithmetic has no room."""
+        steps = step_assumptions(self.nest, self.tree) if self.plan.buffers or self.plan.unrolled else ()
         try:
-            return self._text(())
+            return self._text(steps)
         except NoRoom:
             pass
         try:
@@ -148,23 +156,26 @@ class _Order:
         facts = tuple(a.condition for a in assumptions if a.condition is not None)
         indent = layout.indentation(self.nest.span.start)
         tests = Tests((), ()) if self.trust else tests_of(self.nest, assumptions, before, names)
-        inner = indent + style.braced_step if tests.conditions else indent
+        heap = Heap(self.nest, self.tree, names, self.source.call.flags)
+        guarded = bool(tests.conditions or heap)
+        inner = indent + style.braced_step if guarded else indent
         scope = before.knowing(*facts) if facts else before
-        lines, homeless = self._loops(layout, style, names, scope, inner)
+        lines, homeless = self._loops(layout, style, names, scope, inner, heap)
         kept = restored(self.nest, layout, style, scope, names, inner)
         lines = [*kept.ahead, *lines, *kept.behind]
         remark = style.remark(self._remark(assumptions, bool(tests.conditions)), indent)
         remark += [indent + text for text in homeless]
-        if tests.conditions:
-            lines = self._guarded(tests, lines, style, indent)
-        return self._joined(remark, lines, style, indent), (("<stdint.h>",) if tests.declarations else ())
+        if guarded:
+            lines = self._guarded(tests, heap, lines, style, indent)
+        headers = [*(["<stdint.h>"] if tests.declarations else []), *(["<stdlib.h>"] if heap else [])]
+        return self._joined(remark, lines, style, indent), tuple(headers)
 
-    def _loops(self, layout: NestText, style: Style, names: Names, scope: Scope, indent: str) \
+    def _loops(self, layout: NestText, style: Style, names: Names, scope: Scope, indent: str, heap: Heap) \
             -> tuple[list[str], list[str]]:
         loops = Loops(self.nest, layout, names, self.tree, _is_c90(self.source.call.flags))
         kept = frozenset(loop.symbol for loop in _printed(self.tree)
                          if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
-        printer = Printer(self.nest, layout, style, loops, kept)
+        printer = Printer(self.source, self.nest, layout, style, loops, kept, heap)
         lines = printer.nodes(layout.tree, Place(scope), indent)
         return lines, printer.homeless
 
@@ -175,16 +186,18 @@ class _Order:
                  and a.code is not AssumptionCode.ROW_BOUND]
         return (*needed, *other)
 
-    def _guarded(self, tests: Tests, lines: list[str], style: Style, indent: str) -> list[str]:
+    def _guarded(self, tests: Tests, heap: Heap, lines: list[str], style: Style, indent: str) -> list[str]:
         """The variant where the tests hold, else the original, which only moves to the right by whole lines."""
         inner = indent + style.braced_step
         original = inner + self.layout.moved((self.nest.span.start, self.nest.span.end), inner)
-        parts = [f"({part})" if " || " in part and len(tests.conditions) > 1 else part for part in tests.conditions]
+        conditions = (*heap.conditions(), *tests.conditions)
+        parts = [f"({part})" if " || " in part and len(conditions) > 1 else part for part in conditions]
         head = " && ".join(parts)
         if len(indent) + len(head) > WIDTH:
             head = f"{style.eol}{indent}{style.step}&& ".join(parts)
-        return [*(indent + line for line in tests.declarations),
-                *style.otherwise(style.block(f"if ({head})", lines, indent), [original], indent)]
+        return [*(indent + line for line in (*tests.declarations, *heap.declarations())),
+                *style.otherwise(style.block(f"if ({head})", lines, indent), [original], indent),
+                *(indent + line for line in heap.releases())]
 
     def _joined(self, remark: list[str], lines: list[str], style: Style, indent: str) -> str:
         """One text in place of the nest: a block of its own where the nest is not one statement among others."""
@@ -268,6 +281,27 @@ def outer_scope(nest: Nest, tree: tuple[Node, ...]) -> Scope:
 
 def _in_range(symbol: str, low: int, high: int) -> list[Formula]:
     return [at_most(low, Affine.of(symbol)), at_most(Affine.of(symbol), high)]
+
+
+def step_assumptions(nest: Nest, tree: tuple[Node, ...]) -> tuple[Assumption, ...]:
+    """That bounds leave room for the last steps from chunk to chunk, so that these count in the iterators' own types.
+
+    Compilers know little of a distance between values of different types, on which the speed of short loops depends.
+    """
+    chunks = [loop for loop in loops_of(tree) if loop.role is Role.CHUNK and loop.named is None]
+    names = frozenset().union(*(bound_names(bound) for loop in chunks for bound in (loop.lower, loop.upper)))
+    room = 2 * max((abs(loop.step) for loop in chunks), default=0)
+    found = []
+    for parameter in nest.parameters:
+        type = parameter.type
+        if INT.bits <= type.bits < 64 and parameter.symbol in names:
+            high = type.largest - room
+            least = type.smallest + room if type.signed and any(loop.step < 0 for loop in chunks) else type.smallest
+            condition = AllOf(tuple(_in_range(parameter.symbol, least, high)))
+            if not Region.where(*nest.facts).implies(condition):
+                found.append(Assumption(AssumptionCode.RELATION, f"{parameter.text} is at most {high}",
+                                        Region.where(condition).relative_to(Region.where(*nest.facts)).formula()))
+    return tuple(found)
 
 
 def room_assumptions(nest: Nest, tree: tuple[Node, ...], others: tuple[Assumption, ...]) -> tuple[Assumption, ...]:

@@ -131,6 +131,34 @@ class Reading:
         origin = self._origin(self.text.first[index])
         return self.alignment.live[origin.first] if origin is not None and origin.plain else None
 
+    def reference(self, node: Any) -> Span | None:
+        """The user's text of ``a[i].b``; None if it is not sure, or not an expression of this reading."""
+        name, depth = _name_of(node)
+        words = self.text.text
+        if not isinstance(name, c_ast.ID) or not isinstance(name.coord, Place) or \
+                not (0 < name.coord.number < len(words) and words[name.coord.number] == name.name):
+            return None
+        start = end = name.coord.number
+        while depth or self.piece(start, end) is None:
+            if depth and words[end + 1] == "[":
+                end, depth = self._closing(end + 1), depth - 1
+            elif depth and words[end + 1] in (".", "->"):
+                end, depth = end + 2, depth - 1
+            elif words[start - 1] == "(" and words[end + 1] == ")" and not (words[start - 2][-1:].isalnum() or
+                                                                           words[start - 2] in ("]", ")", "_")):
+                start, end = start - 1, end + 1
+            else:
+                return None
+        return self.piece(start, end)
+
+    def _closing(self, opening: int) -> int:
+        """The bracket that closes this one."""
+        depth, at = 1, opening
+        while depth:
+            at += 1
+            depth += {"[": 1, "]": -1}.get(self.text.text[at], 0)
+        return at
+
     def piece(self, start: int, end: int) -> Span | None:
         """The user's text of the parser's tokens ``start`` to ``end``, both included.
 
@@ -151,6 +179,14 @@ class Reading:
                 return None
         opening, ending = alignment.live[origins[0].first], alignment.live[origins[-1].stop - 1]
         return Span(opening.start, ending.end, opening.line, opening.column)
+
+
+def _name_of(node: Any) -> tuple[Any, int]:
+    """The name at the start of ``a[i].b``, and how many subscripts and members follow it."""
+    depth = 0
+    while isinstance(node, c_ast.ArrayRef | c_ast.StructRef):
+        node, depth = node.name, depth + 1
+    return node, depth
 
 
 def _preprocessed_unit(path: str, text: str, call: CompilerCall, stubs: bool) -> Unit:

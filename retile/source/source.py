@@ -183,6 +183,28 @@ class Source:
                 return reading.spans[id(node)]
         return None
 
+    def reference_span(self, node: Any) -> Span | None:
+        """The extent of an array element or structure member, like ``a[i][j]`` or ``p->x``, as the user wrote it.
+
+        It may be a macro call that gives just that.  None if no piece of the user's text is sure to.
+        """
+        for reading in self._readings:
+            found = reading.reference(node)
+            if found is not None:
+                return found
+        return None
+
+    @cached_property
+    def macro_words(self) -> dict[str, frozenset[str]]:
+        """For every macro the words in its definition, all definitions of a name together."""
+        words: dict[str, frozenset[str]] = {}
+        for reading in self._readings:
+            for event in reading.unit.events:
+                if event.definition is not None:
+                    found = frozenset(text for kind, text in spellings(event.definition) if kind == "word")
+                    words[event.name] = words.get(event.name, frozenset()) | found
+        return words
+
     def function_span(self, function: c_ast.FuncDef) -> Span | None:
         """From the first specifier of a function definition to its closing brace."""
         for own, part in self._readings[0].own_functions:

@@ -1,0 +1,149 @@
+"""Buffers in C: local arrays and allocated ones, and the user's text with its accesses sent there.
+
+    double beams_held_0[8], beams_held_1[8];                        a row of its own for each value that is written out
+    double (*const echoes_packed)[256][8] = malloc(...);            too large for the stack: allocated once, ahead of the nest
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+
+from ..affine import Affine
+from ..model import Access, CType, Nest, Statement
+from ..source.lex import tokenize
+from ..tree import Buffer, Copy, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
+from .expression import Scope, express
+from .names import Names
+
+_WORDS = {"hold": "held", "pack": "packed"}
+_ALIGNMENT = 64  # bytes: a cache line, and as much as the widest vectors that are common
+
+
+def served(buffer: Buffer, statement: Statement) -> tuple[Access, ...]:
+    """The accesses of a statement that a buffer serves."""
+    return tuple(access for access in statement.accesses
+                 if access.storage == buffer.storage and access.subscripts == buffer.subscripts)
+
+
+@dataclass(frozen=True)
+class Array:
+    """Cells of the variant's own as they are declared: an array per combination of the written-out values in ``rows``."""
+
+    name: str
+    shape: tuple[int, ...]
+    rows: tuple[int, ...]  # dimensions that are told apart by name
+
+    def cell(self, index: tuple[Affine, ...], scope: Scope) -> str:
+        """The text of one cell."""
+        known = [form.substitute(scope.meanings) for form in index]
+        name = "_".join([self.name, *(str(known[at].constant) for at in self.rows)])
+        return name + "".join(f"[{express(form, scope).text}]" for at, form in enumerate(known) if at not in self.rows)
+
+    def declarators(self) -> Iterator[str]:
+        """What is declared, without the type."""
+        names = [self.name]
+        for at in self.rows:
+            names = [f"{name}_{number}" for name in names for number in range(self.shape[at])]
+        extents = "".join(f"[{extent}]" for at, extent in enumerate(self.shape) if at not in self.rows)
+        return (name + extents for name in names)
+
+
+def constant_dimensions(nodes: tuple[Node, ...], wanted: Buffer | str, index: tuple[Affine, ...],
+                        meanings: Mapping[str, Affine]) -> tuple[int, ...]:
+    """The dimensions in which every use of a buffer, or of a kept scalar, has a number for its index."""
+    found = [{at for at, form in enumerate(index) if form.substitute(inner).is_constant}
+             for inner in _uses(nodes, wanted, dict(meanings))]
+    return tuple(sorted(set.intersection(*found))) if found else ()
+
+
+def _uses(nodes: tuple[Node, ...], wanted: Buffer | str, meanings: dict[str, Affine]) -> Iterator[dict[str, Affine]]:
+    """The values that are known where something may use the cells."""
+    for node in nodes:
+        if isinstance(node, Copy):
+            if node.scalar == wanted:
+                yield meanings
+        elif isinstance(node, Move):
+            if node.buffer == wanted:
+                yield meanings
+        elif isinstance(node, Leaf | Verbatim):
+            if isinstance(wanted, Buffer):
+                yield meanings
+        elif isinstance(node, Loop) and node.unrolled and isinstance(node.lower, Affine):
+            yield from _uses(node.body, wanted, {**meanings, node.symbol: node.lower.substitute(meanings)})
+        else:
+            yield from _uses(children(node), wanted, meanings)
+
+
+class Heap:
+    """The buffers that are allocated once, ahead of the nest."""
+
+    def __init__(self, nest: Nest, tree: tuple[Node, ...], names: Names, flags: tuple[str, ...]) -> None:
+        self._nest = nest
+        self._c11 = not any(flag in ("-ansi",) or flag.startswith("-std=") and
+                            flag[-2:] in ("89", "90", "99", "9x") or flag.endswith(":199409") for flag in flags)
+        found = dict.fromkeys(buffer for buffer in _buffers(tree) if buffer.heap)
+        self.arrays = {buffer: Array(names.fresh(array_name(nest, buffer)), buffer.shape, ()) for buffer in found}
+
+    def __bool__(self) -> bool:
+        return bool(self.arrays)
+
+    def declarations(self) -> list[str]:
+        """Allocates each; the pointer is null where there is no memory."""
+        return [self._declaration(buffer, array) for buffer, array in self.arrays.items()]
+
+    def _declaration(self, buffer: Buffer, array: Array) -> str:
+        element = self._nest.storage(buffer.storage).element
+        assert isinstance(element, CType)
+        inner = "".join(f"[{extent}]" for extent in buffer.shape[1:])
+        pointer = f"(*const {array.name}){inner}" if inner else f"*const {array.name}"
+        size = buffer.cells * element.bits // 8
+        amount = f"{buffer.shape[0]} * sizeof *{array.name}" if size % _ALIGNMENT == 0 or not self._c11 else \
+            str(-(-size // _ALIGNMENT) * _ALIGNMENT)
+        call = f"aligned_alloc({_ALIGNMENT}, {amount})" if self._c11 else f"malloc({amount})"
+        return f"{element.spelling} {pointer} = {call};"
+
+    def conditions(self) -> list[str]:
+        """True where all are there."""
+        return [array.name for array in self.arrays.values()]
+
+    def releases(self) -> list[str]:
+        """Frees each."""
+        return [f"free({array.name});" for array in reversed(self.arrays.values())]
+
+
+def array_name(nest: Nest, buffer: Buffer) -> str:
+    """What a buffer is called: after the user's array."""
+    text = nest.storage(buffer.storage).name
+    base = "_".join("".join(c if c.isalnum() or c == "_" else " " for c in text).split())
+    return f"{base}_{_WORDS[buffer.word]}"
+
+
+def _buffers(nodes: tuple[Node, ...]) -> Iterator[Buffer]:
+    for node in nodes:
+        if isinstance(node, Held):
+            yield node.buffer
+        yield from _buffers(children(node))
+
+
+Change = tuple[int, int, str]  # text[start:end] becomes
+
+
+def with_values(text: str, start: int, values: Mapping[str, str], taken: list[Change]) -> list[Change]:
+    """The changes, at offsets of the file, that put values in place of names in a piece of C text.
+
+    ``start``: where the text begins; ``taken``: changes already made, inside which nothing is looked at.
+    """
+    tokens = [token for token in tokenize(text) if token.kind not in ("blank", "comment", "directive")]
+    found: list[Change] = []
+    for at, token in enumerate(tokens):
+        begin, end = start + token.start, start + token.end
+        if token.kind != "word" or token.spelling not in values or any(a <= begin < b for a, b, _ in taken) or \
+                at and tokens[at - 1].text in (".", "->"):
+            continue
+        value = values[token.spelling]
+        alone = at and tokens[at - 1].text in "[(," and at + 1 < len(tokens) and tokens[at + 1].text in "]),"
+        plain = value.replace("_", "a").isalnum()
+        found.append((begin, end, value if alone or plain else f"({value})"))
+    return found
+
