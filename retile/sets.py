@@ -212,14 +212,11 @@ class Region:
 
     def _in_order(self, order: tuple[str, ...]) -> isl.Set:
         """The points as an isl set whose dimensions are these names, which must be all that the region mentions."""
-        points = self._set.add_dims(isl.dim_type.set, len(order))
-        base = 0
+        points = self._set.from_params()
         for at, name in enumerate(order):
-            identifier = _NAMES.identifier(name)
-            place = points.find_dim_by_name(_PARAM, identifier)
-            if place >= 0:
-                points = points.equate(_PARAM, place, isl.dim_type.set, base + at)
-                points = points.project_out(_PARAM, place, 1)
+            place = points.find_dim_by_name(_PARAM, _NAMES.identifier(name))
+            points = points.move_dims(isl.dim_type.set, at, _PARAM, place, 1) if place >= 0 else \
+                points.insert_dims(isl.dim_type.set, at, 1)
         if points.dim(_PARAM):
             raise ValueError(f"names without a place in the order: {set(self.names()) - set(order)}")
         return points
