@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from functools import lru_cache
 
 
 @dataclass(frozen=True)
@@ -25,7 +26,12 @@ Symbol = str | Floor
 
 
 def _symbol_key(symbol: Symbol) -> tuple[int, str]:
-    return (0, symbol) if isinstance(symbol, str) else (1, repr(symbol))
+    return (0, symbol) if isinstance(symbol, str) else _floor_key(symbol)
+
+
+@lru_cache(maxsize=4096)
+def _floor_key(floor: Floor) -> tuple[int, str]:
+    return 1, repr(floor)
 
 
 @dataclass(frozen=True)

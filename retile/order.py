@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 from .affine import Affine, AllOf, AnyOf, Formula, at_most, equal, less
 from .sets import Region
@@ -41,7 +42,8 @@ def substituted(vector: Iterable[Coordinate], values: Mapping[str, Affine]) -> t
                  else Cut(c.form.substitute(values)) for c in vector)
 
 
-def primed_vector(vector: Iterable[Coordinate], names: Iterable[str]) -> tuple[Coordinate, ...]:
+@lru_cache(maxsize=4096)
+def primed_vector(vector: tuple[Coordinate, ...], names: tuple[str, ...]) -> tuple[Coordinate, ...]:
     """A time vector with these names standing for the target's."""
     return substituted(vector, {name: Affine.of(prime(name)) for name in names})
 
@@ -71,17 +73,27 @@ def first_differences(pairs: Region, earlier: Sequence[Coordinate], later: Seque
             return
         if isinstance(a, Cut) or isinstance(b, Cut):
             # Any cut: a smaller value may lie in an earlier run, and any two values may share one.
-            before = remaining & Region.where(less(_inside(a), _inside(b)))
+            before = remaining & _where_less(_inside(a), _inside(b))
             if not before.is_empty():
                 yield level, before
             continue
-        before = remaining & Region.where(less(Affine.of(a), b))
+        before = remaining & _where_less(a, b)
         if not before.is_empty():
             yield level, before
-        remaining = remaining & Region.where(equal(Affine.of(a), b))
+        remaining = remaining & _where_equal(a, b)
         if remaining.is_empty():
             return
     yield min(len(earlier), len(later)), remaining
+
+
+@lru_cache(maxsize=4096)
+def _where_less(a: Affine | int, b: Affine | int) -> Region:
+    return Region.where(less(a, b))
+
+
+@lru_cache(maxsize=4096)
+def _where_equal(a: Affine | int, b: Affine | int) -> Region:
+    return Region.where(equal(a, b))
 
 
 def _inside(coordinate: Coordinate) -> Affine:

@@ -9,7 +9,7 @@ polyhedral model", 2010.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from functools import reduce
+from functools import lru_cache, reduce
 
 import islpy as isl
 
@@ -81,10 +81,7 @@ class Region:
     @staticmethod
     def where(*formulas: Formula) -> Region:
         """All assignments under which every formula holds; with no formula, all assignments."""
-        both = AllOf(formulas)
-        names = ", ".join(_NAMES.identifier(name) for name in sorted(_names_in(both, set())))
-        text = f"[{names}] -> {{ : {_condition(both)} }}"
-        return Region(isl.Set.read_from_str(isl.DEFAULT_CONTEXT, text))
+        return _where(formulas)
 
     @staticmethod
     def union(regions: Iterable[Region]) -> Region:
@@ -92,7 +89,7 @@ class Region:
         return reduce(lambda a, b: a | b, regions, Region.where(AnyOf()))
 
     def __and__(self, other: Region) -> Region:
-        return Region(self._set.intersect(other._set))
+        return _both(self, other)
 
     def __or__(self, other: Region) -> Region:
         return Region(self._set.union(other._set))
@@ -199,7 +196,7 @@ class Region:
     def extreme(self, form: Affine, largest: bool) -> int | None:
         """The largest or smallest value of a form over the region; None if the region is empty or it is unbounded."""
         probe = (self & Region.where(Constraint(Affine.of("~") - form, equality=True))).only(["~"])
-        ordered = probe._in_order(("~",))
+        ordered = probe._in_order(("~",)).coalesce()  # without empty pieces, which would count as 0
         if ordered.is_empty():
             return None
         value = ordered.dim_max_val(0) if largest else ordered.dim_min_val(0)
@@ -215,14 +212,11 @@ class Region:
 
     def _in_order(self, order: tuple[str, ...]) -> isl.Set:
         """The points as an isl set whose dimensions are these names, which must be all that the region mentions."""
-        points = self._set.add_dims(isl.dim_type.set, len(order))
-        base = 0
+        points = self._set.from_params()
         for at, name in enumerate(order):
-            identifier = _NAMES.identifier(name)
-            place = points.find_dim_by_name(_PARAM, identifier)
-            if place >= 0:
-                points = points.equate(_PARAM, place, isl.dim_type.set, base + at)
-                points = points.project_out(_PARAM, place, 1)
+            place = points.find_dim_by_name(_PARAM, _NAMES.identifier(name))
+            points = points.move_dims(isl.dim_type.set, at, _PARAM, place, 1) if place >= 0 else \
+                points.insert_dims(isl.dim_type.set, at, 1)
         if points.dim(_PARAM):
             raise ValueError(f"names without a place in the order: {set(self.names()) - set(order)}")
         return points
@@ -231,10 +225,25 @@ class Region:
         return f"Region({self._set})"
 
 
+# A search for a plan asks the same few questions of the same relations many times over.
+@lru_cache(maxsize=4096)
+def _where(formulas: tuple[Formula, ...]) -> Region:
+    both = AllOf(formulas)
+    names = ", ".join(_NAMES.identifier(name) for name in sorted(_names_in(both, set())))
+    text = f"[{names}] -> {{ : {_condition(both)} }}"
+    return Region(isl.Set.read_from_str(isl.DEFAULT_CONTEXT, text))
+
+
+@lru_cache(maxsize=4096)
+def _both(one: Region, other: Region) -> Region:
+    return Region(one._set.intersect(other._set))
+
+
 def _first_by_name(points: isl.Set, order: tuple[str, ...]) -> dict[str, int]:
     """The smallest value of each name in turn, given those before it."""
     found: dict[str, int] = {}
     for at, name in enumerate(order):
+        points = points.coalesce()  # without empty pieces, whose smallest value would count as 0
         value = points.dim_min_val(at)
         points = points.fix_val(isl.dim_type.set, at, value)
         found[name] = int(value.to_python())

@@ -68,6 +68,13 @@ def test_projection_pieces_and_extremes(formula: Formula) -> None:
     assert (some is None) if not inside else (some["i"], some["j"], some["n"]) in inside
 
 
+def test_empty_pieces_have_no_smallest_value() -> None:
+    apart = AnyOf((less(A("i") * -1, A("j") + 2), less(A("i") * -2 - "j", A("n"))))  # one piece is empty at i = -4
+    region = Region.where(apart, BOX)
+    assert _first_by_name(region._in_order(tuple("ijn")), tuple("ijn")) == {"i": -4, "j": 3, "n": -4}
+    assert (region & Region.where(equal(A("i"), -4))).extreme(A("j"), largest=False) == 3
+
+
 def test_unbounded_has_no_extreme() -> None:
     assert Region.where(less(A("i"), A("n"))).extreme(A("i"), largest=True) is None
     assert Region.where(equal(A("i"), 3)).extreme(A("i"), largest=True) == 3

@@ -29,7 +29,7 @@ def analyse(nest: Nest) -> Dependences:
     times = original_times(nest)
     analysis = _Analysis(nest, domains, times)
     edges = tuple(edge for storage in nest.storages for edge in analysis.edges(storage))
-    reuse = tuple(edge for storage in nest.storages if storage.scalar is ScalarClass.PRIVATE
+    reuse = tuple(edge for storage in nest.storages if storage.private_to
                   for edge in analysis.edges(storage, as_stored=True))
     return Dependences(context, domains, times, edges, reuse, nest.assumptions)
 
