@@ -77,7 +77,7 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
         word, _, value = option.partition(" ")
         if word == "place":
             aligned.append(_alignment(plan, begin, option, nest, terms))
-        elif word == "unroll":
+        elif word == "unroll" and value.strip():
             unrolled.append(_unrolled(plan, begin, option, value.strip(), terms))
         elif word in ("hold", "pack"):
             buffers.append(_buffer(plan, begin, option, nest, terms, buffers))
@@ -146,6 +146,8 @@ def _reference(plan: PlanText, begin: int, name: str, nest: Nest) -> tuple[str, 
 
 def shown(storage: str, subscripts: tuple[Affine, ...]) -> str:
     """An access as a plan names it: ``grid[i][k+1]``."""
+    if "->" in storage and subscripts[:1] == (Affine(),):  # the pointer leads to one structure
+        subscripts = subscripts[1:]
     return storage + "".join(f"[{subscript}]" for subscript in subscripts).replace(" ", "")
 
 

@@ -334,13 +334,13 @@ class NestText:
         text = self.text[start:end]
         changes = tuple(changes)
         if old == indent or "\n" not in text:
-            return _changed(text, start, changes)
+            return replaced(text, start, changes)
         fixed = self._fixed_lines(start, end, old)
         lines: list[str] = []
         offset = start
         for line in text.split("\n"):
             movable = offset > start and offset not in fixed and line.startswith(old) and line.strip()
-            new = _changed(line, offset, [one for one in changes if offset <= one[0] <= offset + len(line)])
+            new = replaced(line, offset, [one for one in changes if offset <= one[0] <= offset + len(line)])
             lines.append(indent + new[len(old):] if movable else new)
             offset += len(line) + 1
         return "\n".join(lines)
@@ -360,7 +360,7 @@ class NestText:
         return fixed
 
 
-def _changed(text: str, start: int, changes: Iterable[tuple[int, int, str]]) -> str:
+def replaced(text: str, start: int, changes: Iterable[tuple[int, int, str]]) -> str:
     """The text, which starts at an offset of the file, with pieces replaced."""
     for begin, end, new in sorted(changes, reverse=True):
         text = text[:begin - start] + new + text[end - start:]

@@ -16,7 +16,7 @@ from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verb
 from .buffered import Array, Change, Heap, array_name, constant_dimensions, served, with_values
 from .chunks import Loops
 from .expression import Expression, condition
-from .layout import InternalError, NestText, Remarks, instances
+from .layout import InternalError, NestText, Remarks, instances, replaced
 from .loops import Opened, Place
 from .style import WIDTH, Style
 
@@ -107,11 +107,9 @@ class Printer:
         assert isinstance(loop.lower, Affine)
         value = self._loops.in_type(loop.lower, source.type, place.scope)
         inside = Place(place.scope.meaning(loop.symbol, loop.lower), place.limits, place.around | {loop.symbol})
-        plain = all(isinstance(node, Verbatim | Move | Copy) or isinstance(node, Loop) and node.unrolled for node in loop.body) \
-            and not self._hides(source.iterator, loop.body)
         before = self._values, self._again
         self._again = self._again or again
-        if plain:
+        if not self._hides(source.iterator, loop.body):
             self._values = {**self._values, source.iterator: value.text}
             lines = self.nodes(loop.body, inside, indent)
             if self._declares(loop.body):
@@ -128,8 +126,8 @@ class Printer:
         """True if a macro in the text of some nodes uses an iterator, so that no value can stand in its place."""
         words = self._source.macro_words
         seen: set[str] = set()
-        todo = [token.spelling for node in nodes if isinstance(node, Verbatim)
-                for token in self._source.tokens_in(*self._layout.piece(node)) if token.spelling in words]
+        todo = [token.spelling for node in _pieces(nodes) for token in
+                self._source.tokens_in(*self._layout.piece(node)) if token.spelling in words]
         while todo:
             name = todo.pop()
             if name not in seen:
@@ -141,7 +139,7 @@ class Printer:
 
     def _declares(self, nodes: tuple[Node, ...]) -> bool:
         """True if statements of some nodes declare names, which copies of them would declare again."""
-        return any(access.write and self._nest.storage(access.storage).scope == "block" for leaf in _leaves(nodes)
+        return any(isinstance(node, Copy) and node.declares for node in nodes) or any(access.write and self._nest.storage(access.storage).scope == "block" for leaf in _leaves(nodes)
                    for access in self._nest.statement(leaf.statement).accesses)
 
     # ---------------------------------------------------------------- storage
@@ -189,16 +187,10 @@ class Printer:
     # ---------------------------------------------------------------- loops
 
     def _loop(self, loop: Loop, place: Place, indent: str) -> tuple[list[str], Place]:
-        opened = self._loops.open(loop, place)
+        opened = self._valued(self._loops.open(loop, place))
         remarks = self._take(loop)
         lines = [indent + self._layout.moved(extent, indent) for extent in remarks.before]
         lines += self._indented(opened.before, indent)
-        header = opened.header
-        if self._values and opened.kept:
-            changes = with_values(header, 0, self._values, [])
-            for begin, end, new in reversed(changes):
-                header = header[:begin] + new + header[end:]
-            opened = replace(opened, header=header)
         behind = "".join(" " + self._layout.moved(extent, indent) for extent in remarks.behind)
         inner = indent + self._style.braced_step
         if opened.condition:
@@ -213,6 +205,17 @@ class Printer:
             lines[-1] += " " + after[0]
             lines += [indent + text for text in after[1:]]
         return lines, opened.outside
+
+    def _valued(self, opened: Opened) -> Opened:
+        """The loop's texts with values in place of iterators that are written out."""
+        if not self._values:
+            return opened
+        lines = {name: tuple(map(self._in_values, getattr(opened, name))) for name in ("before", "first")}
+        texts = {name: self._in_values(getattr(opened, name)) for name in ("header", "declared", "condition")}
+        return replace(opened, **lines, **texts)
+
+    def _in_values(self, text: str) -> str:
+        return replaced(text, 0, with_values(text, 0, self._values, []))
 
     def _take(self, loop: Loop) -> Remarks:
         """The comments of a source loop, for the first tree loop that runs over its iterations one by one."""
@@ -350,6 +353,15 @@ def _leaves(nodes: tuple[Node, ...]) -> Iterator[Leaf]:
         if isinstance(node, Leaf):
             yield node
         yield from _leaves(children(node))
+
+
+def _pieces(nodes: tuple[Node, ...]) -> Iterator[Verbatim]:
+    """All pieces of the user's text in some nodes."""
+    for node in nodes:
+        if isinstance(node, Verbatim):
+            yield node
+        else:
+            yield from _pieces(children(node))
 
 
 def _copies(nodes: tuple[Node, ...], scalar: str) -> Iterator[Copy]:
