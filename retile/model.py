@@ -126,6 +126,9 @@ class Storage:
     live_after: bool = True  # its value after the nest can be seen
     pointer_text: str = ""  # C expression of the address of the first cell: ``a``, ``g->depth``, ``&x``
     const: bool = False
+    # For a member of structures in an array (``t.x``) the array of whole structures that it lies in, with the first of
+    # its subscripts: their distance in memory is that of the structures.
+    whole: Storage | None = None
 
 
 @dataclass(frozen=True)

@@ -70,6 +70,7 @@ class Place:
     type: Any
     quals: frozenset[str] = frozenset()
     step_type: Any = None  # what the last subscript counts
+    holder: Any = None  # the structure of the first member
 
     @property
     def key(self) -> str:
@@ -224,6 +225,7 @@ class Places:
             member.type,
             member.quals | whole.quals,
             whole.step_type,
+            whole.holder or whole.type,
         )
 
     def _in_union(self, type_: StructType, name: str) -> bool:
