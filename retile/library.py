@@ -6,11 +6,11 @@ Each question is one method, each answer one of the values of ``model``; the roo
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import TYPE_CHECKING
 
 from .model import Address, Judgement, Nest, Plan, Refusal, RetileError, Variant, Verdict
+from .values import dataclass, replace
 
 if TYPE_CHECKING:
     from .dependence import Dependences

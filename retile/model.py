@@ -6,12 +6,12 @@ and columns that count from 1.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
 from enum import Enum
 from typing import Any
 
 from .affine import Affine, Bound, Formula
 from .tree import Loop
+from .values import dataclass
 
 # ---------------------------------------------------------------- source
 
@@ -378,6 +378,6 @@ class Variant:
     plan: Plan
     text: str  # the whole file
     judgement: Judgement
-    tree: tuple[Loop, ...] = field(default=())  # what it executes, as judged
+    tree: tuple[Loop, ...] = ()  # what it executes, as judged
     nest_text: str = ""  # what stands in place of the nest's span
     includes: tuple[str, ...] = ()  # headers that it needs beyond those of the file, e.g. ``<stdint.h>``

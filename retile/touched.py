@@ -7,11 +7,11 @@ subscript that is read from memory, a row whose length nobody states), no test c
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
 
 from .affine import Affine, Formula, at_most, equal
 from .model import Access, Assumption, AssumptionCode, CType, Nest, Statement, Storage
 from .sets import Region
+from .values import dataclass, replace
 
 
 @dataclass(frozen=True)

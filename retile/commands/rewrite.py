@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import sys
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 from ..library import OpenNest
 from ..model import Judgement, Verdict
 from ..report.document import of_rewriting
 from ..report.verdict import verdict_lines
+from ..values import dataclass
 from .compiling import CompilerOptions
 from .opening import Facts, open_nest
 from .output import look_of, print_document, say, write_bytes

@@ -7,13 +7,13 @@ of a table (``rows[]``), with the subscripts of the table first.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
 from typing import Any
 
 from pycparser import c_ast
 
 from ..model import CType, StorageKind
 from ..source.kinds import ArrayOf, PointerTo, StructType, UnknownType, Void
+from ..values import dataclass, replace
 from .context import Context
 from .polynomial import Poly
 from .refusals import Refused, refused

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from dataclasses import dataclass, field, replace
 from typing import Any
 
 from ..affine import Affine, AllOf, at_most, less
 from ..model import Access, Assumption, AssumptionCode, CType, Refusal, ScalarClass, Span, Storage, StorageKind
 from ..source.kinds import ArrayOf, PointerTo, StructType
+from ..values import replace
 from .effects import Touch
 from .knowledge import Obligation
 from .liveness import live_after
@@ -21,17 +21,17 @@ from .shapes import Grid, Subscript, grid_of, needs_grid, stride_texts
 from .walk import Walk
 
 
-@dataclass
 class Stored:
     """The storages of a nest, and which access each touch became."""
 
-    storages: list[Storage] = field(default_factory=list)
-    roots: dict[str, Root] = field(default_factory=dict)  # by storage name
-    keys: dict[str, str] = field(default_factory=dict)  # by storage name: the same for all cells that it stands for
-    accesses: dict[tuple[int, int], Access] = field(default_factory=dict)  # by statement and touch number
-    refusals: list[Refusal] = field(default_factory=list)
-    obligations: list[Obligation] = field(default_factory=list)
-    assumptions: list[Assumption] = field(default_factory=list)
+    def __init__(self) -> None:
+        self.storages: list[Storage] = []
+        self.roots: dict[str, Root] = {}  # by storage name
+        self.keys: dict[str, str] = {}  # by storage name: the same for all cells that it stands for
+        self.accesses: dict[tuple[int, int], Access] = {}  # by statement and touch number
+        self.refusals: list[Refusal] = []
+        self.obligations: list[Obligation] = []
+        self.assumptions: list[Assumption] = []
 
 
 def store(setting: Setting, walk: Walk, nest: Any) -> Stored:

@@ -13,9 +13,9 @@ A wrong plan is a wrong call: one message, with the place in the plan marked.
 from __future__ import annotations
 
 import re
-from dataclasses import replace
 
 from ..model import Nest, Plan, Term
+from ..values import replace
 from .options import PlanText, read_options
 
 _TERM = re.compile(r"\S+")

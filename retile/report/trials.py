@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from ..values import dataclass
 from .table import Column, Look, coloured, paragraph, table
 
 if TYPE_CHECKING:

@@ -12,7 +12,6 @@ what is touched (``i < n && i < m`` inside ``n``) is compared with what an addre
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, Constraint, Formula
 from ..model import (
@@ -24,6 +23,7 @@ from ..model import (
     Storage,
 )
 from ..touched import Touched, reached, touched
+from ..values import dataclass, replace
 from .expression import UNARY, NoRoom, Scope, condition, written
 from .extents import ADDRESS, Arithmetic
 from .names import Names

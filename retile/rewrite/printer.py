@@ -6,11 +6,11 @@ user's (``layout``, ``style``), headers come from ``loops``.
 
 from __future__ import annotations
 
-from dataclasses import replace
 
 from ..affine import Affine, equal, negate
 from ..model import LoopText, Nest
 from ..tree import Copy, Guard, Kept, Loop, Node, Verbatim
+from ..values import replace
 from .chunks import Loops
 from .expression import Expression, condition, express
 from .layout import InternalError, NestText, Remarks, instances
