@@ -26,7 +26,7 @@ if TYPE_CHECKING:
     from ..trial.records import Progress
 
 _INTERRUPTED = 130
-_STAGES = {"verify": "verifying", "build": "building", "time": "timing"}
+_STAGES = {"judge": "judging", "verify": "verifying", "build": "building", "time": "timing"}
 
 
 @dataclass(frozen=True)
