@@ -10,8 +10,9 @@ value; nothing knows of C or of integer sets.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
 from functools import lru_cache
+
+from .values import dataclass
 
 
 @dataclass(frozen=True)

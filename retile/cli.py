@@ -204,9 +204,10 @@ def check(address: str, plan: str, as_json: bool, **given: Any) -> int:
 @click.option("-o", "file", metavar="FILE", help="Write to FILE.")
 @click.option("--diff", "as_diff", is_flag=True, help="Write a patch, for 'git apply' and 'patch -p1'.")
 @click.option("--in-place", is_flag=True, help="Replace the file.")
+@click.option("--verify", is_flag=True, help="First judge, build and run the variant; write nothing unless it is right.")
 @_compiler_options
 @_json
-def rewrite(address: str, plan: str, trust: bool, file: str | None, as_diff: bool, in_place: bool, as_json: bool,
+def rewrite(address: str, plan: str, trust: bool, verify: bool, file: str | None, as_diff: bool, in_place: bool, as_json: bool,
             **given: Any) -> int:
     """Write the whole file with the nest in the order of a plan; all other text stays as it is."""
     from .commands import rewrite
@@ -215,7 +216,7 @@ def rewrite(address: str, plan: str, trust: bool, file: str | None, as_diff: boo
         raise click.UsageError("--in-place excludes -o and --diff.")
     target = rewrite.Target(file, in_place, as_diff, as_json)
     return rewrite.run(address, plan, _compiling(given), facts=_facts(given), defaults=_defaults(given), trust=trust,
-                       target=target)
+                       verify=verify, target=target)
 
 
 @retile.command(short_help="Build, verify and time the variants of plans.")

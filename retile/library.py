@@ -6,17 +6,18 @@ Each question is one method, each answer one of the values of ``model``; the roo
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import TYPE_CHECKING
 
 from .model import Address, Judgement, Nest, Plan, Refusal, RetileError, Variant, Verdict
+from .values import dataclass, replace
 
 if TYPE_CHECKING:
     from .dependence import Dependences
+    from .judge import Examiner, Finding
     from .nest import Found
     from .source import Source
-    from .trial import Campaign, Settings
+    from .trial import Campaign, Settings, Verification
     from .trial.records import Progress
 
 
@@ -137,9 +138,39 @@ class OpenNest:
 
         return diff(self.source, variant)
 
+    @cached_property
+    def _examiner(self) -> Examiner:
+        from .judge import Examiner
+
+        return Examiner(self.source, self.address.line, self.address.column)
+
+    def judge(self, variant: Variant, *, trust: bool = False) -> Finding:
+        """What the judge says of a variant: original and variant are read again and run at small sizes on numbers that
+        carry their history.
+
+        ``trust``: only at sizes at which what the variant assumes holds.  Takes a second or two; a Finding that says so
+        where the judge does not interpret something.
+        """
+        from .judge import Finding, Unsupported, task_of
+
+        try:
+            examiner = self._examiner
+        except Unsupported as problem:
+            return Finding(None, f"the judge does not interpret {problem}")
+        return examiner.examine(task_of(self.nest, variant, self.source.call.flags, trust))
+
+    def verify(self, variant: Variant, settings: Settings | None = None) -> Verification:
+        """Whether original and variant, built and run at awkward sizes, leave the same bytes.
+
+        Raises RetileError if the nest cannot be run on its own or there is no compiler.
+        """
+        from .trial import Settings, verify
+
+        return verify(self.source, self.nest, variant, settings or Settings())
+
     def measure(self, plans: Sequence[str | Plan], sizes: Mapping[str, int], settings: Settings | None = None, *,
                 on_progress: Progress | None = None, command: str = "retile measure") -> Campaign:
-        """Verify the variants of legal plans and time them against the original, round by round in one process.
+        """Judge and verify the variants of legal plans and time them against the original, round by round in one process.
 
         ``sizes`` give the nest's parameters by name.  Interrupted, it returns what was measured until then.  Raises
         RetileError if a plan is not legal, a size is missing, or the nest cannot be run on its own.
@@ -148,7 +179,8 @@ class OpenNest:
 
         settings = settings or Settings()
         variants = [self.rewrite(plan, trust=settings.trust) for plan in plans]
-        return measure(self.source, self.nest, variants, sizes, settings, on_progress, command)
+        return measure(self.source, self.nest, variants, sizes, settings, on_progress, command,
+                       lambda variant: self.judge(variant, trust=settings.trust))
 
     def _parsed(self, plan: str | Plan) -> Plan:
         return plan if isinstance(plan, Plan) else self.plan(plan)

@@ -6,12 +6,12 @@ and columns that count from 1.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
 from enum import Enum
 from typing import Any
 
 from .affine import Affine, Bound, Formula
 from .tree import Buffer, Loop
+from .values import dataclass
 
 # ---------------------------------------------------------------- source
 
@@ -131,6 +131,24 @@ class Storage:
     whole: Storage | None = None
 
 
+class Syntax:
+    """A node of the syntax tree kept beside a value: it is no part of what the value says, so all are equal."""
+
+    __slots__ = ("node",)
+
+    def __init__(self, node: Any = None) -> None:
+        self.node = node
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, Syntax)
+
+    def __hash__(self) -> int:
+        return 0
+
+    def __repr__(self) -> str:
+        return "Syntax()"
+
+
 @dataclass(frozen=True)
 class Access:
     """One read or write of a storage by a statement."""
@@ -143,7 +161,7 @@ class Access:
     # For the read and write of an update ``x = x op e``: ``+``, ``*``, ``min`` ...; updates of one kind commute.
     update: str = ""
     exact_update: bool = False  # any order of such updates gives the same bits
-    node: Any = field(default=None, compare=False, repr=False)  # the expression in the syntax tree
+    syntax: Syntax = Syntax()  # the expression in the syntax tree
 
 
 @dataclass(frozen=True)
@@ -386,6 +404,6 @@ class Variant:
     plan: Plan
     text: str  # the whole file
     judgement: Judgement
-    tree: tuple[Loop, ...] = field(default=())  # what it executes, as judged
+    tree: tuple[Loop, ...] = ()  # what it executes, as judged
     nest_text: str = ""  # what stands in place of the nest's span
     includes: tuple[str, ...] = ()  # headers that it needs beyond those of the file, e.g. ``<stdint.h>``

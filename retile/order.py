@@ -6,11 +6,11 @@ A relation between instances is a Region over the names of the source and, with 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass
 from functools import lru_cache
 
 from .affine import Affine, AllOf, AnyOf, Formula, at_most, equal, less
 from .sets import Region
+from .values import dataclass
 
 
 @dataclass(frozen=True)

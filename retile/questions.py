@@ -13,7 +13,6 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass
 
 from .affine import Affine, AnyOf, Formula, at_most, equal, less
 from .dependence import Dependences, Edge
@@ -21,6 +20,7 @@ from .model import Nest
 from .order import Coordinate, first_differences, same_cut, substituted
 from .sets import Region
 from .tree import Node, Occurrence, loops_of, occurrences
+from .values import dataclass
 
 
 @dataclass(frozen=True)

@@ -16,13 +16,13 @@ All of it is asked on integer sets, of the finished tree, for all sizes at once.
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass
 
 from .affine import Affine, AllOf, AnyOf, Formula, at_most, equal, less
 from .model import Access, Nest
 from .questions import Flaw
 from .sets import Region
 from .tree import Buffer, Held, Loop, Node, children, established, moves, occurrences
+from .values import dataclass
 
 
 @dataclass(frozen=True)

@@ -11,10 +11,10 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from functools import lru_cache, reduce
 
-import islpy as isl
-
 from .affine import Affine, AllOf, AnyOf, Constraint, Formula
+from .isl import isl
 
+_CONTEXT = isl.Context()
 _PARAM = isl.dim_type.param
 
 
@@ -143,7 +143,7 @@ class Region:
         for name, value in values.items():
             place = points.find_dim_by_name(_PARAM, _NAMES.identifier(name))
             if place >= 0:
-                points = points.fix_val(_PARAM, place, isl.Val.int_from_si(isl.DEFAULT_CONTEXT, value))
+                points = points.fix_val(_PARAM, place, isl.Val.int_from_si(_CONTEXT, value))
                 points = points.project_out(_PARAM, place, 1)
         return Region(points)
 
@@ -200,7 +200,7 @@ class Region:
         if ordered.is_empty():
             return None
         value = ordered.dim_max_val(0) if largest else ordered.dim_min_val(0)
-        return int(value.to_python()) if value.is_int() else None
+        return _integer(value) if value.is_int() else None
 
     def points(self, order: Iterable[str]) -> list[tuple[int, ...]]:
         """All points, as values of the names in this order, sorted; the region must be bounded in them."""
@@ -222,7 +222,7 @@ class Region:
         return points
 
     def __repr__(self) -> str:
-        return f"Region({self._set})"
+        return f"Region({self._set.to_str()})"
 
 
 # A search for a plan asks the same few questions of the same relations many times over.
@@ -231,7 +231,7 @@ def _where(formulas: tuple[Formula, ...]) -> Region:
     both = AllOf(formulas)
     names = ", ".join(_NAMES.identifier(name) for name in sorted(_names_in(both, set())))
     text = f"[{names}] -> {{ : {_condition(both)} }}"
-    return Region(isl.Set.read_from_str(isl.DEFAULT_CONTEXT, text))
+    return Region(isl.Set.read_from_str(_CONTEXT, text))
 
 
 @lru_cache(maxsize=4096)
@@ -246,23 +246,29 @@ def _first_by_name(points: isl.Set, order: tuple[str, ...]) -> dict[str, int]:
         points = points.coalesce()  # without empty pieces, whose smallest value would count as 0
         value = points.dim_min_val(at)
         points = points.fix_val(isl.dim_type.set, at, value)
-        found[name] = int(value.to_python())
+        found[name] = _integer(value)
     return found
 
 
+def _integer(value: isl.Val) -> int:
+    return int(value.to_str())
+
+
 def _value(point: isl.Point, at: int) -> int:
-    return int(point.get_coordinate_val(isl.dim_type.set, at).to_python())
+    return _integer(point.get_coordinate_val(isl.dim_type.set, at))
 
 
 def _constraints(piece: isl.BasicSet) -> tuple[Constraint, ...]:
     names = [_NAMES.text(piece.get_dim_name(_PARAM, at)) for at in range(piece.dim(_PARAM))]
     found: list[Constraint] = []
-    for constraint in piece.get_constraints():
-        form = Affine((), int(constraint.get_constant_val().to_python()))
+    listed = piece.get_constraint_list()
+    for number in range(listed.n_constraint()):
+        constraint = listed.get_at(number)
+        form = Affine((), _integer(constraint.get_constant_val()))
         for at, name in enumerate(names):
-            form = form + Affine.of(name) * int(constraint.get_coefficient_val(_PARAM, at).to_python())
+            form = form + Affine.of(name) * _integer(constraint.get_coefficient_val(_PARAM, at))
         for at in range(piece.dim(isl.dim_type.div)):
-            factor = int(constraint.get_coefficient_val(isl.dim_type.div, at).to_python())
+            factor = _integer(constraint.get_coefficient_val(isl.dim_type.div, at))
             if factor:
                 form = form + _div(piece, at, names) * factor
         found.append(Constraint(form, bool(constraint.is_equality())))
@@ -271,12 +277,13 @@ def _constraints(piece: isl.BasicSet) -> tuple[Constraint, ...]:
 
 def _div(piece: isl.BasicSet, at: int, names: list[str]) -> Affine:
     div = piece.get_div(at)
-    divisor = int(div.get_denominator_val().to_python())
-    form = Affine((), int((div.get_constant_val() * divisor).to_python()))
+    denominator = div.get_denominator_val()
+    divisor = _integer(denominator)
+    form = Affine((), _integer(div.get_constant_val().mul(denominator)))
     for place, name in enumerate(names):
-        form = form + Affine.of(name) * int((div.get_coefficient_val(_PARAM, place) * divisor).to_python())
+        form = form + Affine.of(name) * _integer(div.get_coefficient_val(_PARAM, place).mul(denominator))
     for inner in range(at):
-        factor = int((div.get_coefficient_val(isl.dim_type.div, inner) * divisor).to_python())
+        factor = _integer(div.get_coefficient_val(isl.dim_type.div, inner).mul(denominator))
         if factor:
             form = form + _div(piece, inner, names) * factor
     return form.floor_div(divisor)

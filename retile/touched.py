@@ -7,11 +7,11 @@ subscript that is read from memory, a row whose length nobody states), no test c
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
 
 from .affine import Affine, Formula, at_most, equal
 from .model import Access, Assumption, AssumptionCode, CType, Nest, Statement, Storage
 from .sets import Region
+from .values import dataclass, replace
 
 
 @dataclass(frozen=True)
@@ -62,6 +62,20 @@ def touched(nest: Nest, storage: Storage, region: Region | None = None) -> Touch
     return Touched(lows, highs) if len(lows) == len(highs) == dimensions else None  # type: ignore[arg-type]
 
 
+def reached(nest: Nest, storage: Storage, found: Touched, region: Region) -> bool:
+    """True if, wherever the nest touches the storage at all, accesses that surely happen reach each end of the box."""
+    uses = [(statement, access) for statement in nest.statements for access in statement.accesses
+            if access.storage == storage.name]
+    anywhere = Region.union(_values(nest, uses, 0, region)).without(["~v"])
+    sure = [use for use in uses if use[1].certain]
+    for dimension, ends in enumerate(zip(found.lows, found.highs, strict=True)):
+        values = Region.union(_values(nest, sure, dimension, region))
+        if not all((anywhere - (values & Region.where(equal(Affine.of("~v"), end))).without(["~v"])).is_empty()
+                   for end in ends):
+            return False
+    return True
+
+
 def _defined(nest: Nest) -> Region:
     facts: list[Formula] = list(nest.facts)
     for parameter in nest.parameters:
@@ -73,13 +87,18 @@ def _defined(nest: Nest) -> Region:
 def _span(nest: Nest, uses: list[tuple[Statement, Access]], dimension: int, region: Region) \
         -> tuple[Affine | None, Affine | None]:
     """A lower and an upper bound of a subscript over all instances."""
-    parameters = [parameter.symbol for parameter in nest.parameters]
-    values = Region.union(
-        (region & Region.where(statement.domain, equal(Affine.of("~v"), access.subscripts[dimension])))
-        .only([*parameters, "~v"]) for statement, access in uses if access.subscripts is not None)
-    hull = values.hull()
+    hull = Region.union(_values(nest, uses, dimension, region)).hull()
     bounds = list(_bounds(hull.relative_to(region))) + list(_bounds(hull))
     return (_simplest(low for low, _ in bounds if low is not None), _simplest(high for _, high in bounds if high is not None))
+
+
+def _values(nest: Nest, uses: list[tuple[Statement, Access]], dimension: int, region: Region) -> Iterator[Region]:
+    """The values ``~v`` of a subscript in each access, over the parameters."""
+    parameters = [parameter.symbol for parameter in nest.parameters]
+    for statement, access in uses:
+        if access.subscripts is not None:
+            yield (region & Region.where(statement.domain, equal(Affine.of("~v"), access.subscripts[dimension]))) \
+                .only([*parameters, "~v"])
 
 
 def _bounds(values: Region) -> Iterator[tuple[Affine | None, Affine | None]]:

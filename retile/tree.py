@@ -7,11 +7,11 @@ printed are values of this one kind, so that every variant can be judged by the 
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
 from enum import Enum
 from math import prod
 
 from .affine import Affine, AllOf, Bound, Formula, at_least_bound, at_most_bound, equal
+from .values import dataclass
 
 
 class Role(Enum):

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import subprocess
+import sys
 from itertools import product
 
 import pytest
@@ -89,3 +91,37 @@ def test_names_are_free_text() -> None:
 def test_a_name_without_a_place_is_an_error() -> None:
     with pytest.raises(ValueError, match="without a place"):
         Region.where(less(A("i"), A("n"))).points("i")
+
+
+# ---------------------------------------------------------------- how the library is loaded
+
+ASK = """
+from retile.affine import Affine, at_most
+from retile.sets import Region
+from retile.isl import isl
+half = Affine.of("i").floor_div(2)
+print(Region.where(at_most(3, half), at_most(half, 5)).formula(), Region.where(at_most(3, half)).first(["i"]))
+"""
+HIDE_ONCE = """
+from importlib.machinery import PathFinder
+find, asked = PathFinder.find_spec, []
+def hidden(name, *rest):
+    if name == "islpy._isl":
+        asked.append(name)
+    return None if len(asked) == 1 and name == "islpy._isl" else find(name, *rest)
+PathFinder.find_spec = hidden
+"""
+
+
+@pytest.mark.parametrize("before, after", [
+    ("", "assert 'importlib.metadata' not in sys.modules"),  # what takes most of the time of the package's import
+    ("", "import islpy; assert islpy.Set is isl.Set; assert islpy.Val(3) + 4 == 7"),
+    ("import islpy", "assert islpy.Set is isl.Set"),
+    (HIDE_ONCE, "assert isl.__name__ == 'islpy' and len(asked) == 2"),
+])
+def test_the_library_is_loaded_once(before, after):
+    code = f"import sys\n{before}\n{ASK}\n{after}"
+    done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True)
+    half = Affine.of("i").floor_div(2)
+    expected = f"{Region.where(at_most(3, half), at_most(half, 5)).formula()} {{'i': 6}}\n"
+    assert (done.stderr, done.stdout) == ("", expected)

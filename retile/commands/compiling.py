@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
+
+from ..values import dataclass, replace
 
 if TYPE_CHECKING:
     from ..source import CompilerCall

@@ -6,7 +6,6 @@ import shlex
 import sys
 from collections.abc import Iterator
 from contextlib import contextmanager
-from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -16,6 +15,7 @@ from ..report.document import of_measure_refused
 from ..report.plot import check_plot_name, speedup_plot
 from ..report.trials import campaign_lines
 from ..report.verdict import verdict_lines
+from ..values import dataclass
 from .compiling import CompilerOptions
 from .opening import Facts, open_nest
 from .output import look_of, print_document, print_lines, say
@@ -26,7 +26,7 @@ if TYPE_CHECKING:
     from ..trial.records import Progress
 
 _INTERRUPTED = 130
-_STAGES = {"verify": "verifying", "build": "building", "time": "timing"}
+_STAGES = {"judge": "judging", "verify": "verifying", "build": "building", "time": "timing"}
 
 
 @dataclass(frozen=True)

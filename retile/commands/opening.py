@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from ..library import OpenFile, OpenNest
+from ..values import dataclass
 from .address import parse_address
 from .compiling import CompilerOptions
 from .output import say

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
 from ..library import OpenNest
 from ..model import RetileError
+from ..values import dataclass
 from .sizes import named_sizes
 
 

@@ -4,15 +4,16 @@ from __future__ import annotations
 
 import sys
 from collections.abc import Mapping
-from dataclasses import dataclass
 
 from ..library import OpenNest
 from ..model import Judgement, Verdict
 from ..report.document import of_rewriting
 from ..report.verdict import verdict_lines
+from ..values import dataclass
 from .compiling import CompilerOptions
 from .opening import Facts, open_nest
 from .output import look_of, print_document, say, write_bytes
+from .proof import prove
 
 
 @dataclass(frozen=True)
@@ -26,8 +27,8 @@ class Target:
 
 
 def run(address: str, plan: str, compiling: CompilerOptions, *, facts: Facts, defaults: Mapping[str, str | None],
-        trust: bool, target: Target) -> int:
-    """Write the variant of a plan; 1, and nothing written, unless the verdict is legal."""
+        trust: bool, verify: bool, target: Target) -> int:
+    """Write the variant of a plan; 1, and nothing written, unless the verdict is legal and, with ``verify``, holds."""
     nest = open_nest(address, compiling, facts)
     parsed = plan if nest.refusals else nest.plan(plan, **defaults)
     judgement = nest.check(parsed)
@@ -35,9 +36,16 @@ def run(address: str, plan: str, compiling: CompilerOptions, *, facts: Facts, de
         return _refuse(nest, judgement, target)
     variant = nest.rewrite(parsed, trust=trust)
     patch = nest.diff(variant)
+    proof = prove(nest, variant, trust) if verify else None
+    if proof is not None and not proof.passed:
+        say(f"{nest.address}: nothing was written, because the variant is not proven.")
+        if target.as_json:
+            print_document({**of_rewriting(nest.address, judgement, None, None), **proof.as_json()})
+        return 1
     _deliver(nest, patch if target.as_diff else variant.text, target)
     if target.as_json:
-        print_document(of_rewriting(nest.address, judgement, variant.text, patch))
+        said = proof.as_json() if proof is not None else {}
+        print_document({**of_rewriting(nest.address, judgement, variant.text, patch), **said})
     return 0
 
 

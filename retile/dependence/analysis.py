@@ -12,13 +12,13 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass
 
 from ..affine import Affine, AnyOf, Formula, at_most, equal, less
 from ..model import Access, LoopText, Nest, ScalarClass, Statement, Storage
 from ..order import Coordinate, first_differences, prime, primed, primed_vector
 from ..sets import Region
 from ..tree import occurrences
+from ..values import dataclass
 from .edges import Dependences, Edge
 
 

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING
 
 from ..model import Assumption
 from ..order import Coordinate
 from ..sets import Region
+from ..values import dataclass
 
 if TYPE_CHECKING:
     import networkx

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
 
@@ -11,6 +10,7 @@ from pycparser import c_ast
 
 from ..model import Address, Nest, Refusal, RetileError
 from ..source import Source
+from ..values import dataclass
 from .reading import NestReader
 from .refusals import refusal
 from .scopes import descendants

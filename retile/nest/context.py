@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
 from typing import Any
 
 from ..affine import AllOf, Formula
+from ..values import dataclass, replace
 from .scopes import Binding
 
 

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
 from typing import Any
 
 from pycparser import c_ast
 
 from ..model import CType
 from ..source.kinds import ArrayOf, FunctionType, PointerTo, StructType
+from ..values import dataclass, replace
 from .calls import called_name, is_pure_call
 from .conditions import Conditions
 from .context import Context

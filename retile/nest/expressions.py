@@ -12,13 +12,13 @@ What is neither, but cannot change while the nest runs, is a parameter whose tex
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import Any
 
 from pycparser import c_ast
 
 from ..affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, less
 from ..model import AssumptionCode, CType
+from ..values import dataclass
 from .context import Context
 from .polynomial import Poly
 from .setting import Setting, c_text

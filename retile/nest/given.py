@@ -7,12 +7,12 @@ like any other assumption; where it cannot (rows of a ``T **``) it is taken at t
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import replace
 from typing import Any
 
 from ..affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, equal, less, negate
 from ..model import Assumption, AssumptionCode, Nest, RetileError
 from ..sets import Region
+from ..values import replace
 
 _COMPARISONS = {"<": less, "<=": at_most, "==": equal, ">": lambda a, b: less(b, a), ">=": lambda a, b: at_most(b, a),
                 "!=": lambda a, b: negate(equal(a, b))}

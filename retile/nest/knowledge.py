@@ -7,12 +7,12 @@ domain violates it are a projection; nothing left means proven, else the complem
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field
 from typing import Any
 
 from ..affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, formula_names
 from ..model import Assumption, AssumptionCode, CType, Parameter
 from ..sets import Region
+from ..values import dataclass
 from .readable import formula_text
 
 
@@ -30,15 +30,15 @@ class Obligation:
     known: int | None = None
 
 
-@dataclass
 class Knowledge:
     """Parameters and facts, as they become known during the reading."""
 
-    parameters: dict[str, Parameter] = field(default_factory=dict)
-    iterator_types: dict[str, CType] = field(default_factory=dict)
-    facts: dict[Formula, None] = field(default_factory=dict)
-    _ranges: dict[str, Formula] = field(default_factory=dict)
-    _conditions: dict[tuple[Any, ...], Formula | None] = field(default_factory=dict)
+    def __init__(self) -> None:
+        self.parameters: dict[str, Parameter] = {}
+        self.iterator_types: dict[str, CType] = {}
+        self.facts: dict[Formula, None] = {}
+        self._ranges: dict[str, Formula] = {}
+        self._conditions: dict[tuple[Any, ...], Formula | None] = {}
 
     def add_fact(self, fact: Formula) -> None:
         """Note a fact; trivial ones are dropped."""

@@ -6,11 +6,11 @@ write that surely happens makes the variable live; jumps make writes uncertain, 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import Any
 
 from pycparser import c_ast
 
+from ..values import dataclass
 from .scopes import Binding, FunctionNames, children, descendants
 
 _LOOPS = (c_ast.For, c_ast.While, c_ast.DoWhile)

@@ -10,7 +10,6 @@ an obligation.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import Any
 
 from pycparser import c_ast
@@ -29,6 +28,7 @@ from ..affine import (
     equal,
 )
 from ..model import AssumptionCode, CType
+from ..values import dataclass
 from .bounds import Bounds, flat, negated, scaled
 from .conditions import Conditions
 from .context import Context

@@ -7,13 +7,13 @@ strict aliasing is not relied on, since many programs are built without it.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import Any
 
 from pycparser import c_ast
 
 from ..model import Assumption, AssumptionCode, ScalarClass, Storage, StorageKind
 from ..source.kinds import ArrayOf, PointerTo
+from ..values import dataclass
 from .calls import called_name
 from .places import Place, Root
 from .polynomial import Poly

@@ -7,13 +7,13 @@ of a table (``rows[]``), with the subscripts of the table first.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
 from typing import Any
 
 from pycparser import c_ast
 
 from ..model import CType, StorageKind
 from ..source.kinds import ArrayOf, PointerTo, StructType, UnknownType, Void
+from ..values import dataclass, replace
 from .context import Context
 from .polynomial import Poly
 from .refusals import Refused, refused
@@ -70,6 +70,7 @@ class Place:
     type: Any
     quals: frozenset[str] = frozenset()
     step_type: Any = None  # what the last subscript counts
+    holder: Any = None  # the structure of the first member
 
     @property
     def key(self) -> str:
@@ -224,6 +225,7 @@ class Places:
             member.type,
             member.quals | whole.quals,
             whole.step_type,
+            whole.holder or whole.type,
         )
 
     def _in_union(self, type_: StructType, name: str) -> bool:

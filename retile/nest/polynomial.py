@@ -7,9 +7,9 @@ symbol is a name or a floor, as in affine forms.
 from __future__ import annotations
 
 from collections.abc import Collection, Mapping
-from dataclasses import dataclass
 
 from ..affine import Affine, Floor, Symbol
+from ..values import dataclass
 
 Monomial = tuple[Symbol, ...]  # factors, sorted; the empty one is the constant
 

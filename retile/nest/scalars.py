@@ -8,9 +8,9 @@ dependence goes.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 
 from ..model import ScalarClass
+from ..values import dataclass
 from .context import Context
 from .effects import Touch
 

@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterator
-from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Any
 
@@ -17,15 +16,15 @@ from pycparser import c_ast
 from ..source.kinds import ArrayOf, Declared, StructType
 
 
-@dataclass(eq=False)
 class Binding:
     """One declared name: an object, a function or an enumerator.  Compared by identity."""
 
-    name: str
-    kind: str  # ``argument``, ``local``, ``static``, ``global``, ``function``, ``enumerator``
-    declared: Declared
-    file_static: bool = False  # a ``static`` at file scope: no other file can name it
-    uses: list[Any] = field(default_factory=list)  # ID nodes of the function, in text order
+    def __init__(self, name: str, kind: str, declared: Declared, file_static: bool = False) -> None:
+        self.name = name
+        self.kind = kind  # ``argument``, ``local``, ``static``, ``global``, ``function``, ``enumerator``
+        self.declared = declared
+        self.file_static = file_static  # a ``static`` at file scope: no other file can name it
+        self.uses: list[Any] = []  # ID nodes of the function, in text order
 
     @property
     def is_object(self) -> bool:

@@ -5,7 +5,6 @@ The one mutable object of the room.  It lives while one nest is read, and what i
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast, c_generator
@@ -13,6 +12,7 @@ from pycparser import c_ast, c_generator
 from ..affine import Affine, Formula, Symbol
 from ..model import AssumptionCode, CType, Parameter
 from ..source.kinds import ArrayOf
+from ..values import dataclass
 from .calls import is_pure_call
 from .context import Context
 from .knowledge import Knowledge, Obligation

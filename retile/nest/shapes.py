@@ -12,12 +12,12 @@ All accesses of an array must agree on the strides; ``a[j]`` beside ``a[i*n + j]
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
 from math import gcd
 from typing import Any
 
 from ..affine import Affine, AllOf, AnyOf, Symbol, at_most, less
 from ..model import AssumptionCode
+from ..values import dataclass
 from .context import Context
 from .knowledge import Obligation
 from .polynomial import Monomial, Poly, monomial, quotient, symbol_names

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections import defaultdict
-from dataclasses import dataclass, field, replace
 from typing import Any
 
 from ..affine import Affine, AllOf, at_most, less
-from ..model import Access, Assumption, AssumptionCode, CType, Refusal, ScalarClass, Span, Storage, StorageKind
-from ..source.kinds import ArrayOf, PointerTo
+from ..model import Access, Assumption, AssumptionCode, CType, Refusal, ScalarClass, Span, Storage, StorageKind, Syntax
+from ..source.kinds import ArrayOf, PointerTo, StructType
+from ..values import replace
 from .effects import Touch
 from .knowledge import Obligation
 from .liveness import live_after
@@ -21,17 +21,17 @@ from .shapes import Grid, Subscript, grid_of, needs_grid, stride_texts
 from .walk import Walk
 
 
-@dataclass
 class Stored:
     """The storages of a nest, and which access each touch became."""
 
-    storages: list[Storage] = field(default_factory=list)
-    roots: dict[str, Root] = field(default_factory=dict)  # by storage name
-    keys: dict[str, str] = field(default_factory=dict)  # by storage name: the same for all cells that it stands for
-    accesses: dict[tuple[int, int], Access] = field(default_factory=dict)  # by statement and touch number
-    refusals: list[Refusal] = field(default_factory=list)
-    obligations: list[Obligation] = field(default_factory=list)
-    assumptions: list[Assumption] = field(default_factory=list)
+    def __init__(self) -> None:
+        self.storages: list[Storage] = []
+        self.roots: dict[str, Root] = {}  # by storage name
+        self.keys: dict[str, str] = {}  # by storage name: the same for all cells that it stands for
+        self.accesses: dict[tuple[int, int], Access] = {}  # by statement and touch number
+        self.refusals: list[Refusal] = []
+        self.obligations: list[Obligation] = []
+        self.assumptions: list[Assumption] = []
 
 
 def store(setting: Setting, walk: Walk, nest: Any) -> Stored:
@@ -61,10 +61,10 @@ class _Builder:
         binding = touches[0][1].place.root.binding
         assert binding is not None
         declared = self._walk.block_declared.get(binding)
-        if declared is not None and any(touch.write for _, touch in touches):
-            lives: tuple[Web, ...] = (Web(tuple(touches), ScalarClass.PRIVATE, declared),)
-        else:
-            lives = webs(touches, self._walk.branches)
+        lives = webs(touches, self._walk.branches)
+        written = any(touch.write for _, touch in touches)
+        if declared is not None and written and any(web.role is not ScalarClass.PRIVATE for web in lives):
+            lives = (Web(tuple(touches), ScalarClass.PRIVATE, declared),)
         live = declared is None and live_after(binding, self._nest, self._setting.names)
         for number, web in enumerate(lives):
             name = key if number == 0 else f"{key}@{self._span(web.touches[0][0]).line}"
@@ -173,6 +173,7 @@ class _Builder:
                 live,
                 self._address(place),
                 "const" in place.quals,
+                self._whole(name, place, tuple(shape), strides),
             )
         )
         self.stored.roots[name] = root
@@ -181,6 +182,20 @@ class _Builder:
             known = [part for part in column if part is not None]
             subscripts = tuple(form for part in known for form in part) if len(known) == len(column) else None
             self.stored.accesses[order] = _access(touch, name, subscripts, self._span(order))
+
+    def _whole(self, name: str, place: Place, shape: tuple[Affine | None, ...], strides: tuple[str, ...]) -> Storage | None:
+        """The array of structures that a member lies in; None for one structure, or where a length is not known."""
+        ahead = next((at for at, step in enumerate(place.steps) if isinstance(step, Member)), 0)
+        indices, struct = place.steps[:ahead], place.holder
+        if not indices or not isinstance(struct, StructType) or not place.root.text or \
+                all(isinstance(one, Index) and one.poly == Poly() for one in indices):
+            return None
+        dimensions = len(shape) - (len(place.indices) - len(indices))
+        if None in shape[dimensions:] or (size := self._setting.size_of(struct)) is None:
+            return None
+        spelling = f"{struct.kind} {struct.tag or ''}".strip()
+        root = place.root
+        return Storage(name, root.key, root.kind, spelling, size, shape[:dimensions], strides, pointer_text=root.text)
 
     def _walks(self, touch: Touch) -> None:
         what = f"`{c_text(touch.node)}` walks through an array of arrays by a pointer; use its subscripts."
@@ -317,4 +332,4 @@ def _shown(key: str, places: list[Place]) -> str:
 
 def _access(touch: Touch, name: str, subscripts: tuple[Affine, ...] | None, span: Span) -> Access:
     family, exact = (touch.update.family, touch.update.exact) if touch.update else ("", False)
-    return Access(name, touch.write, subscripts, touch.context.certain, span, family, exact, touch.node)
+    return Access(name, touch.write, subscripts, touch.context.certain, span, family, exact, Syntax(touch.node))

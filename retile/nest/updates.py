@@ -8,12 +8,12 @@ signed sum may overflow at an intermediate value in one order and not in another
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import Any
 
 from pycparser import c_ast
 
 from ..model import CType
+from ..values import dataclass
 from .setting import c_text
 
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections import Counter
-from dataclasses import dataclass, replace
 from typing import Any
 
 from pycparser import c_ast
@@ -12,6 +11,7 @@ from ..affine import Affine, Formula, negate
 from ..model import Refusal, Span
 from ..source.kinds import ArrayOf, PointerTo
 from ..tree import Guard, Leaf, Loop, Node
+from ..values import dataclass, replace
 from .bounds import Bounds
 from .conditions import Conditions
 from .context import Context

@@ -12,11 +12,11 @@ long as fewer dependences are reversed.  What is found is judged like any other 
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import replace
 
 from ..affine import Affine, bound_names
 from ..dependence import Edge
 from ..model import Alignment, Nest, Plan, Statement
+from ..values import replace
 from .schedule import placed
 
 # Plans that are judged in one search; every step tries each candidate of each open slot once.

@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
-from dataclasses import replace
 from itertools import combinations, islice, permutations, product
 
 from ..dependence import Dependences
 from ..model import Nest, Plan, ScalarClass, Term
+from ..values import replace
 from .grammar import term_text
 from .schedule import stays_whole
 from .verdict import is_legal

@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import replace
 
 from ..affine import Affine, Bound, Constraint, Extremum, at_least_bound, at_most_bound, map_bound
 from ..sets import Region
 from ..tree import Loop
+from ..values import replace
 
 
 def tightest(kind: str, bounds: tuple[Bound, ...]) -> Bound:

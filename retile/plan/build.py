@@ -15,13 +15,13 @@ The result is not trusted: ``questions.py`` judges it like any other tree.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import replace
 
 from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal, less, negate
 from ..dependence import defined
 from ..model import Nest, Plan, Term
 from ..sets import Region
 from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Role, Verbatim, loops_of
+from ..values import replace
 from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
 from .buffers import reads_and_writes, served
 from .grammar import form_text

@@ -13,10 +13,10 @@ A wrong plan is a wrong call: one message, with the place in the plan marked.
 from __future__ import annotations
 
 import re
-from dataclasses import replace
 
 from ..model import Nest, Plan, Term
 from .options import Options, PlanText, read_options
+from ..values import replace
 
 _TERM = re.compile(r"\S+")
 _PRODUCT = re.compile(r"([+-]?)(?:(\d+)\*)?([^+\-*]+)")

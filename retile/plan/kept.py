@@ -17,11 +17,11 @@ supercomputers", 1986; kept to a chunk by strip-mining).
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from math import prod
 
 from ..affine import Affine
 from ..model import CType, Nest, Plan, ScalarClass, Storage, Term
+from ..values import dataclass
 from .schedule import last_bare, stays_whole
 
 # An array larger than this does not belong on the stack of a loop.

@@ -19,11 +19,10 @@ from __future__ import annotations
 
 import re
 
-from dataclasses import dataclass
-
 from ..affine import Affine
 from ..model import Alignment, Nest, RetileError, Statement, StorageKind, Term
 from ..tree import Buffer
+from ..values import dataclass
 from .buffers import Unfit, buffer_of, references
 
 # The options with a fixed set of values.

@@ -7,11 +7,11 @@ same named loops.
 
 from __future__ import annotations
 
-from dataclasses import replace
 
 from ..affine import Affine
 from ..model import LoopText, Nest, Place, Plan, Statement, Term
 from ..order import Coordinate, Cut
+from ..values import replace
 
 BEFORE, INSIDE, AFTER = 0, 1, 2
 

@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 
 from ..model import Nest, Plan
 from ..tree import Guard, Leaf, Loop, Node, Verbatim, children, loops_of
+from ..values import dataclass
 
 
 @dataclass(frozen=True)

@@ -9,7 +9,6 @@ pair is a witness: it is shown at the smallest sizes at which it happens.
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, at_most
 from ..dependence import Dependences, Edge
@@ -19,6 +18,7 @@ from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
 from ..tree import occurrences
 from ..touched import touched
+from ..values import dataclass, replace
 from .afterwards import lost_iterators
 from .alignment import MOST_TRIALS, settled
 from .build import build_tree

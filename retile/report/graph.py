@@ -11,10 +11,10 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from ..model import Nest, Statement
+from ..values import dataclass
 from .picture import LETTER, MARGIN, Path, Picture, Rect, Shape, Words, columns, head, paragraph, printable, \
     rounded_line, shortened
 

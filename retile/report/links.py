@@ -8,13 +8,13 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from ..affine import Affine, equal
 from ..model import Nest
 from ..order import prime
 from ..sets import Region
+from ..values import dataclass
 
 if TYPE_CHECKING:
     from ..dependence import Dependences, Edge

@@ -10,8 +10,9 @@ from __future__ import annotations
 import math
 import textwrap
 import unicodedata
-from dataclasses import dataclass
 from typing import ClassVar
+
+from ..values import dataclass
 
 LETTER = 7.9  # width of a letter of 13 pixels, of the widest of the fonts that the template names
 SMALL = 6.7  # of 11 pixels

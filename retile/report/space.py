@@ -8,13 +8,13 @@ middle, stands for all.  The order is that of the moments that the verdict is ab
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from ..affine import Affine, at_most, formula_names
 from ..model import Judgement, LoopText, Nest, Plan, RetileError, Statement
 from ..order import Coordinate, Cut
 from ..sets import Region
+from ..values import dataclass, replace
 from .links import Frame, Link, links
 from .sizes import choose_sizes, loop_values
 

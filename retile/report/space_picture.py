@@ -6,9 +6,9 @@ steps between neighbours are lines, and chunks are shaded; with none, points are
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from math import gcd
 
+from ..values import dataclass
 from .graph import KINDS, line_sample
 from .links import PANELS_IN_A_ROW, Link, Values
 from .picture import LETTER, MARGIN, SMALL, Circle, Path, Picture, Point, Rect, Shape, Words, arrow, columns, number, \

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+
+from ..values import dataclass
 
 _UNLIMITED = 100_000  # a width that no table reaches
 

@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
+from ..values import dataclass
 from .table import Column, Look, coloured, paragraph, table
 
 if TYPE_CHECKING:
@@ -59,6 +59,8 @@ def _loose(campaign: Campaign, look: Look) -> list[str]:
 def _row(trial: Trial, clock: Scale, is_best: bool) -> tuple[str, ...]:
     plan = trial.plan + (f"; {trial.options}" if trial.options else "")
     checked = "not asked" if trial.verification is None else "yes" if trial.verified else "NO"
+    if trial.judged is False:
+        checked = "NO"
     if trial.verified and trial.verification is not None and trial.verification.tolerance is not None:
         checked = f"to {trial.verification.tolerance:.1e}"
     identical = "" if trial.identical is None else "yes" if trial.identical else "no"
@@ -112,10 +114,14 @@ def _remarks(campaign: Campaign, look: Look) -> list[str]:
 def _faults(trial: Trial) -> list[str]:
     found = []
     verification = trial.verification
+    if trial.finding is not None and trial.judged is False:
+        found.append(f"NOT verified: it computes something else: {trial.finding['reason']}")
+    if trial.finding is not None and trial.judged is None:
+        found.append(f"not judged: {trial.finding['reason']}")
     if verification is not None and not verification.verified:
         reason = str(verification.difference) if verification.difference else verification.failure
         found.append(f"NOT verified: {reason or 'no reason was recorded'}")
-    elif trial.failure:
+    elif trial.failure and trial.judged is not False:
         found.append(f"not timed: {trial.failure}")
     if trial.identical is False:
         found.append("the timed build differs from the original's" + (f": {trial.cause}" if trial.cause else ""))

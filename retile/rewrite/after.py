@@ -8,10 +8,10 @@ bounds depend on each other the original headers run once more, empty.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 
 from ..affine import Affine, Constraint, less
 from ..model import LoopText, Nest
+from ..values import dataclass
 from .expression import (
     CHOICE,
     Expression,

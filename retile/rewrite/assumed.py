@@ -4,14 +4,16 @@ Two storages do not overlap if one's last touched byte lies before the other's f
 projected from the nest's instances onto the parameters (the box that they need), and addresses are compared as
 integers: pointers are only converted, never moved, and sums of ``uintptr_t`` cannot be undefined.  If the nest makes no
 round, it touches nothing, and either answer is right.
+
+A box that some access reaches lies in memory, so that its addresses cannot wrap around.  One that may be larger than
+what is touched (``i < n && i < m`` inside ``n``) is compared with what an address can hold, in ``double``.
 """
 
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 
-from ..affine import Affine, AllOf, Constraint, Floor, Formula
+from ..affine import Affine, AllOf, Constraint, Formula
 from ..model import (
     Assumption,
     AssumptionCode,
@@ -20,21 +22,15 @@ from ..model import (
     RetileError,
     Storage,
 )
-from ..touched import touched
-from .expression import (
-    PRODUCT,
-    UNARY,
-    Expression,
-    NoRoom,
-    Scope,
-    condition,
-    express,
-    written,
-)
+from ..touched import Touched, reached, touched
+from ..values import dataclass, replace
+from .expression import UNARY, NoRoom, Scope, condition, written
+from .extents import ADDRESS, Arithmetic
 from .names import Names
 
-ADDRESS = CType("uintptr_t", 64, False)
 _NAMED_TYPE = re.compile(r"(?:struct|union|enum) \w+|(?!(?:struct|union|enum|void)\b)[A-Za-z_]\w*")
+# A range of fewer bytes, either way, cannot wrap around.
+_SURELY_ADDRESSED = 1 << 62
 
 
 @dataclass(frozen=True)
@@ -47,19 +43,23 @@ class Tests:
 
 def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, names: Names) -> Tests:
     """The tests of some assumptions; RetileError if one cannot be tested."""
-    ranges = _Ranges(nest, scope, names)
+    tested = [a for a in assumptions if a.testable or not a.given]
+    known = [a.condition for a in tested if a.condition is not None and not _apart(a)]
+    ranges = _Ranges(nest, scope, scope.knowing(*known) if known else scope, names)
     conditions: list[str] = []
-    for assumption in assumptions:
-        if assumption.given and not assumption.testable:
-            continue
-        if assumption.code in (AssumptionCode.NO_OVERLAP, AssumptionCode.UNCHANGED) and len(assumption.storages) == 2:
-            conditions.append(ranges.apart(*assumption.storages, assumption))
+    for assumption in tested:
+        if _apart(assumption):
+            conditions.append(ranges.apart(assumption))
         elif assumption.condition is not None:
             for part in _parts(assumption):
                 if not scope.implies(part):
                     conditions.append(condition(part, scope).text)
                     scope = scope.knowing(part)
     return Tests(tuple(ranges.declarations), (*ranges.signs, *dict.fromkeys(conditions)))
+
+
+def _apart(assumption: Assumption) -> bool:
+    return assumption.code in (AssumptionCode.NO_OVERLAP, AssumptionCode.UNCHANGED) and len(assumption.storages) == 2
 
 
 def _parts(assumption: Assumption) -> tuple[Formula, ...]:
@@ -69,24 +69,27 @@ def _parts(assumption: Assumption) -> tuple[Formula, ...]:
 
 
 class _Ranges:
-    def __init__(self, nest: Nest, scope: Scope, names: Names) -> None:
+    def __init__(self, nest: Nest, scope: Scope, tested: Scope, names: Names) -> None:
+        """``tested``: the scope where all other tests hold."""
         self._nest = nest
         self._scope = scope
+        self._tested = tested
         self._names = names
+        self._arithmetic = Arithmetic(scope)
         self._named: dict[str, tuple[str, str]] = {}
         self.declarations: list[str] = []
         self.signs: list[str] = []
 
-    def apart(self, one: str, other: str, assumption: Assumption) -> str:
+    def apart(self, assumption: Assumption) -> str:
         """The condition that two storages' touched bytes lie apart."""
+        one, other = assumption.storages
         first, second = self._range(one, assumption), self._range(other, assumption)
         return f"{first[1]} <= {second[0]} || {second[1]} <= {first[0]}"
 
     def _range(self, name: str, assumption: Assumption) -> tuple[str, str]:
         """The names of the addresses of a storage's first touched byte and of the one behind its last."""
         if name not in self._named:
-            storage = self._nest.storage(name)
-            low, high = self._extent(storage, assumption)
+            storage, low, high = self._extent(self._nest.storage(name), assumption)
             word = "_".join(re.findall(r"\w+", name)) + ("_pointer" if name.startswith("&") else "")
             begin, end = self._names.fresh(f"{word}_begin"), self._names.fresh(f"{word}_end")
             base = f"(uintptr_t){written(storage.pointer_text or name, ADDRESS).at(UNARY)}"
@@ -115,99 +118,83 @@ class _Ranges:
                 else f"sizeof *{written(text, ADDRESS).at(UNARY)}"
         return str(storage.element_bytes)
 
-    def _extent(self, storage: Storage, assumption: Assumption) -> tuple[str, str]:
-        """First touched element and the one behind the last, as sums of uintptr_t."""
+    def _extent(self, storage: Storage, assumption: Assumption) -> tuple[Storage, str, str]:
+        """What the range is counted in, its first touched element, and the one behind the last."""
         found = touched(self._nest, storage, self._scope.region)
         if found is None:
             raise self._untestable(storage, assumption)
         if not found.lows:
             extents = [extent for extent in storage.shape if extent is not None]
-            return "0", " * ".join(map(self._modular, extents)) or "1"
-        lows, highs, dimensions = list(found.lows), list(found.highs), len(found.lows)
-        strides = self._strides(storage, dimensions)
+            return storage, "0", " * ".join(map(self._arithmetic.whole, extents)) or "1"
+        lows, highs = list(found.lows), list(found.highs)
+        whole = storage.whole or storage
+        if storage.whole is not None and not whole.strides:  # the structures that the members lie in
+            lows, highs = lows[:len(whole.shape)], highs[:len(whole.shape)]
         highs[-1] = highs[-1] + 1
-        if dimensions > 1 and self._is_extent(highs[-1], strides[-2]):  # whole rows: (n - 1) * m + m
-            highs[-2:] = [highs[-2] + 1, Affine()]
-        return self._linear(lows, strides), self._linear(highs, strides)
+        try:
+            self._note_signs(whole)
+            self._note_wrap(storage, found, whole, lows, highs)
+            strides = self._arithmetic.strides(whole, len(lows))
+            if len(lows) > 1 and self._is_extent(highs[-1], strides[-2]):  # whole rows: (n - 1) * m + m
+                highs[-2:] = [highs[-2] + 1, Affine()]
+            return whole, self._arithmetic.linear(lows, strides), self._arithmetic.linear(highs, strides)
+        except NoRoom:
+            raise RetileError(f"{self._nest.address}: the addresses that the nest touches cannot be computed without "
+                              "overflow; give --trust, or declare the pointers 'restrict'.") from None
 
-    def _is_extent(self, form: Affine, stride: Expression | None) -> bool:
+    def _is_extent(self, form: Affine, stride: str | None) -> bool:
         """True if a form is the row length that a stride's text says."""
-        return stride is not None and bool(form.terms) and stride.text in (self._sum(form), self._modular(form))
+        return stride is not None and bool(form.terms) and \
+            stride in (self._arithmetic.added(form), self._arithmetic.whole(form))
 
     def _untestable(self, storage: Storage, assumption: Assumption) -> RetileError:
         return RetileError(f"{self._nest.address}: which cells of '{storage.name}' the nest touches is not known, so that "
                            f"'{assumption.text}' cannot be tested when the function is called.\n"
                            "Declare the pointers 'restrict', or give --distinct if you know that it holds.")
 
-    def _strides(self, storage: Storage, dimensions: int) -> list[Expression | None]:
-        """The distance in elements between two values of each subscript; None for 1."""
+    def _note_signs(self, storage: Storage) -> None:
+        """A row length must not be negative, or the first cell were the last."""
+        for text in storage.strides:
+            parameter = next((p for p in self._nest.parameters if p.text == text), None)
+            if parameter is not None and parameter.type.signed and \
+                    not self._tested.implies(Constraint(Affine.of(parameter.symbol))):
+                self._note(f"{text} >= 0")
+
+    def _note_wrap(self, storage: Storage, found: Touched, whole: Storage, lows: list[Affine], highs: list[Affine]) -> None:
+        """A range that may be larger than what is touched must not wrap around."""
+        size = whole.element_bytes or (whole.element.bits // 8 if isinstance(whole.element, CType) else 1)
+        if self._reach(whole, lows, highs) * size < _SURELY_ADDRESSED or \
+                reached(self._nest, storage, found, self._scope.region):
+            return
+        rough = replace(self._arithmetic, type="double")
+        strides = rough.strides(whole, len(lows))
+        for side, sign, limit in ((lows, ">", "-1e18"), (highs, "<", "1e18")):
+            count = rough.linear(side, strides)
+            if count != "0":
+                self._note(f"{self._times(count, self._size(whole))} {sign} {limit}")
+
+    def _reach(self, storage: Storage, lows: list[Affine], highs: list[Affine]) -> int:
+        """The number of elements that the range cannot exceed, whatever the sizes."""
+        spans = [self._largest(low) + self._largest(high) for low, high in zip(lows, highs, strict=True)]
+        total = 0
+        for at, span in enumerate(spans):
+            total += span * self._stride_limit(storage, at, len(spans))
+        return total
+
+    def _largest(self, form: Affine) -> int:
+        low, high = self._scope.best_range(form)
+        return _SURELY_ADDRESSED if low is None or high is None else max(abs(low), abs(high))
+
+    def _stride_limit(self, storage: Storage, at: int, dimensions: int) -> int:
         if storage.strides:
-            return [self._stride(text) for text in storage.strides]
-        extents = storage.shape[len(storage.shape) - dimensions + 1:] if dimensions > 1 else ()
-        strides: list[Expression | None] = [None]
-        factors: list[str] = []
-        for extent in reversed(extents):
-            assert extent is not None
-            text = self._sum(extent)
-            factors.insert(0, text if len(extent.terms) + bool(extent.constant) == 1 else self._modular(extent))
-            strides.insert(0, Expression(" * ".join(factors), ADDRESS, PRODUCT if len(factors) > 1 else UNARY))
-        return strides
+            text = storage.strides[at].strip()
+            parameter = next((p for p in self._nest.parameters if p.text == text), None)
+            return 1 if text in ("", "1") else self._largest(Affine.of(parameter.symbol)) if parameter else _SURELY_ADDRESSED
+        limit = 1
+        for extent in storage.shape[len(storage.shape) - dimensions + at + 1:]:
+            limit *= _SURELY_ADDRESSED if extent is None else self._largest(extent)
+        return limit
 
-    def _stride(self, text: str) -> Expression | None:
-        if text.strip() in ("", "1"):
-            return None
-        parameter = next((p for p in self._nest.parameters if p.text == text), None)
-        if parameter is not None and parameter.type.signed and \
-                not self._scope.implies(Constraint(Affine.of(parameter.symbol))):
-            sign = f"{text} >= 0"
-            if sign not in self.signs:
-                self.signs.append(sign)
-        sum_of = re.fullmatch(r"\(?(.+?)\s*([+-])\s*(\d+)\)?", text)
-        if sum_of is not None and sum_of[1] in {p.text for p in self._nest.parameters}:
-            return Expression(f"((uintptr_t){sum_of[1]} {sum_of[2]} {sum_of[3]})", ADDRESS)
-        return written(text, ADDRESS)
-
-    def _linear(self, subscripts: list[Affine], strides: list[Expression | None]) -> str:
-        """``sum(subscript * stride)``; its first operand is converted, so that all of it is unsigned."""
-        parts: list[str] = []
-        for subscript, stride in zip(subscripts, strides, strict=True):
-            if subscript == Affine():
-                continue
-            if stride is not None and subscript == Affine((), 1):
-                parts.append(stride.text if stride.text.startswith(("(uintptr_t)", "((uintptr_t)")) else f"(uintptr_t){stride.at(UNARY)}")
-            elif stride is not None:
-                value = self._modular(subscript)
-                parts.append(f"{value} * {stride.at(UNARY)}")
-            else:
-                parts.append(self._sum(subscript) if parts else self._modular(subscript).removeprefix("(")
-                             .removesuffix(")") if self._modular(subscript).startswith("((") else self._modular(subscript))
-        return " + ".join(parts) if parts else "0"
-
-    def _modular(self, form: Affine) -> str:
-        """A form in arithmetic modulo the address space, which nothing can overflow; it binds like a factor."""
-        text = self._sum(form)
-        if form.is_constant and form.constant >= 0:
-            return f"(uintptr_t){text}"
-        return f"((uintptr_t){text})" if " " in text else f"(uintptr_t){text}"
-
-    def _sum(self, form: Affine) -> str:
-        """A form as a sum whose first operand decides its type."""
-        form = form.substitute(self._scope.meanings)
-        if any(isinstance(symbol, Floor) for symbol, _ in form.terms):
-            return f"({self._exact(form)})"
-        text = ""
-        for symbol, factor in sorted(form.terms, key=lambda term: term[1] < 0):
-            assert isinstance(symbol, str)
-            operand = self._scope.operands[symbol].at(UNARY)
-            product = operand if abs(factor) == 1 else f"{operand} * {abs(factor)}"
-            text += (" - " if factor < 0 else " + ") + product if text else (product if factor > 0 else f"0 - {product}")
-        if form.constant or not text:
-            text += f" {'-' if form.constant < 0 else '+'} {abs(form.constant)}" if text else str(form.constant)
-        return text
-
-    def _exact(self, form: Affine) -> str:
-        try:
-            return express(form, self._scope).text
-        except NoRoom:
-            raise RetileError(f"{self._nest.address}: the addresses that the nest touches cannot be computed without "
-                              "overflow; give --trust, or declare the pointers 'restrict'.") from None
+    def _note(self, test: str) -> None:
+        if test not in self.signs:
+            self.signs.append(test)

@@ -7,7 +7,6 @@ said of the value plus one (``shift``).
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 
 from ..affine import (
     Affine,
@@ -22,6 +21,7 @@ from ..affine import (
 )
 from ..model import CType
 from ..tree import Loop
+from ..values import dataclass
 from .expression import Expression, Scope
 
 

@@ -7,12 +7,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
 
 from ..affine import Affine
 from ..model import Access, CType, Nest, Statement
 from ..source.lex import tokenize
 from ..tree import Buffer, Copy, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
+from ..values import dataclass
 from .expression import Scope, express
 from .names import Names
 

@@ -15,11 +15,11 @@ Loops that count down with ``i-- > b`` always step that way, with ``i_from`` one
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
 
 from ..affine import Affine, AnyOf, Formula, equal, map_bound
 from ..model import CType, LoopText
 from ..tree import Loop, Role, loops_of
+from ..values import dataclass, replace
 from .bounds import (
     Limit,
     extremum_of,

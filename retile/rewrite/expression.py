@@ -12,11 +12,11 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, Constraint, Floor, Formula, Symbol, at_most, equal, less
 from ..model import CType
 from ..sets import Region
+from ..values import dataclass, replace
 
 INT = CType("int", 32, True)
 LONG = CType("long", 64, True)

@@ -8,13 +8,14 @@ from __future__ import annotations
 
 from collections import defaultdict
 from collections.abc import Iterable, Iterator
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 from ..affine import Affine
 from ..model import LoopText, Nest, RetileError
 from ..source.lex import SKIPPED, Token, tokenize
 from ..source.structure import Malformed, Shape, compound
 from ..tree import Guard, Held, Kept, Leaf, Loop, Node, Verbatim, children
+from ..values import replace
 
 
 class InternalError(RetileError):

@@ -12,7 +12,7 @@ from __future__ import annotations
 import re
 from abc import ABC, abstractmethod
 from collections.abc import Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 
 from ..affine import (
     Affine,
@@ -29,6 +29,7 @@ from ..affine import (
 )
 from ..model import CType, LoopText, Nest
 from ..tree import Loop, Node, Role, loops_of
+from ..values import replace
 from .bounds import (
     Limit,
     far_bound,

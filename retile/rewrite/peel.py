@@ -21,11 +21,11 @@ bounds; where bounds depend on other loops of the region it is taken at the box'
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, replace
 
 from ..affine import Affine, AllOf, Constraint, Floor, Formula, at_most, negate
 from ..sets import Region
 from ..tree import Guard, Held, Kept, Loop, Node, Role, loops_of
+from ..values import dataclass, replace
 from .bounds import members
 
 

@@ -7,12 +7,12 @@ user's (``layout``, ``style``), headers come from ``loops``.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import replace
 
 from ..affine import Affine, equal, negate
 from ..model import LoopText, Nest, Statement
 from ..source import Source
 from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
+from ..values import replace
 from .buffered import Array, Change, Heap, array_name, constant_dimensions, served, with_values
 from .chunks import Loops
 from .expression import Expression, condition
@@ -95,7 +95,7 @@ class Printer:
             if isinstance(buffer, str):
                 continue
             for access in served(buffer, statement):
-                span = self._source.reference_span(access.node)
+                span = self._source.reference_span(access.syntax.node)
                 if span is None:
                     raise InternalError(f"{self._nest.address}: an access to {buffer.storage} has no text of its own")
                 found.append((span.start, span.end, array.cell(buffer.index, place.scope)))
@@ -176,7 +176,7 @@ class Printer:
         """``beams_held[j - j_from] = beams[i][j];`` or the other way round."""
         buffer = move.buffer
         span = next((span for statement in self._nest.statements for access in served(buffer, statement)
-                     if (span := self._source.reference_span(access.node)) is not None), None)
+                     if (span := self._source.reference_span(access.syntax.node)) is not None), None)
         if span is None:
             raise InternalError(f"{self._nest.address}: no access to {buffer.storage} has a text of its own")
         changes = with_values(self._layout.text[span.start:span.end], span.start, self._values, [])

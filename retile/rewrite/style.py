@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 
 from ..model import Nest
+from ..values import dataclass
 from .expression import AND, Expression
 from .layout import NestText
 

@@ -11,10 +11,9 @@ still the plan's.
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 from ..affine import Affine
 from ..tree import Guard, Held, Kept, Loop, Node, Role
+from ..values import replace
 
 
 def unrolled(nodes: tuple[Node, ...], names: tuple[str, ...], most: int) -> tuple[Node, ...]:

@@ -10,13 +10,13 @@ import os
 import shlex
 import textwrap
 from collections.abc import Iterable
-from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from ..affine import Affine, AllOf, Formula, at_most, bound_names, formula_names
 from ..model import Assumption, AssumptionCode, Judgement, Nest, Plan, Variant
 from ..sets import Region
 from ..tree import Loop, Node, Role, Verbatim, children, loops_of
+from ..values import dataclass, replace
 from .after import restored
 from .assumed import Tests, tests_of
 from .buffered import Heap

@@ -11,9 +11,9 @@ from __future__ import annotations
 
 from bisect import bisect_left
 from collections import defaultdict
-from dataclasses import dataclass
 from typing import NamedTuple
 
+from ..values import dataclass
 from .lex import SKIPPED, Token
 from .macros import ANY, DYNAMIC, CannotExpand, Expander, Macro, Piece
 from .preprocessed import MacroEvent, Unit

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections import Counter
 from collections.abc import Sequence
-from dataclasses import replace
 
 from ..model import CType
+from ..values import replace
 from .macros import Macro
 
 

@@ -8,10 +8,10 @@ import shlex
 import signal
 import subprocess
 import time
-from dataclasses import dataclass
 from typing import IO
 
 from ..model import RetileError
+from ..values import dataclass
 
 HEADERS = os.path.join(os.path.dirname(os.path.abspath(__file__)), "headers")
 SECONDS = 30.0  # for one run of the preprocessor

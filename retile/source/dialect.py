@@ -10,22 +10,21 @@ visible as unknown: a call of a function (``__asm__``, ``__statement_expression_
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass, field
 
 from .preprocessed import Unit
 
 
-@dataclass
 class ParserText:
     """The tokens for the parser: number ``k`` stands for preprocessed tokens ``first[k]`` to ``last[k]``."""
 
-    text: list[str] = field(default_factory=list)
-    first: list[int] = field(default_factory=list)
-    last: list[int] = field(default_factory=list)
-    # Typedef names that stand for a type of an expression or a type, with the tokens of the operand.
-    typeof: dict[str, tuple[str, ...]] = field(default_factory=dict)
-    # Dropped attributes that change a type or a layout: (number of the next token, word).
-    dropped: list[tuple[int, str]] = field(default_factory=list)
+    def __init__(self) -> None:
+        self.text: list[str] = []
+        self.first: list[int] = []
+        self.last: list[int] = []
+        # Typedef names that stand for a type of an expression or a type, with the tokens of the operand.
+        self.typeof: dict[str, tuple[str, ...]] = {}
+        # Dropped attributes that change a type or a layout: (number of the next token, word).
+        self.dropped: list[tuple[int, str]] = []
 
     def add(self, text: str, first: int, last: int) -> None:
         """Append a token."""

@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import re
-from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast
 
 from ..model import CType
+from ..values import replace
 from .kinds import ArrayOf, FunctionType, PointerTo, Scope, StructType, Type, UnknownType, Void
 
 if TYPE_CHECKING:

@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from typing import Any, TypeAlias, Union
 
 from ..model import CType
+from ..values import dataclass
 
 NONE: frozenset[str] = frozenset()
 

@@ -10,10 +10,10 @@ matters (``#``) or the place (``__LINE__``) a token is ANY, which equals whateve
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 from functools import cached_property
 from typing import NamedTuple
 
+from ..values import dataclass
 from .lex import spellings
 
 

@@ -7,9 +7,9 @@
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 from typing import NamedTuple
 
+from ..values import dataclass
 from .lex import spellings
 
 

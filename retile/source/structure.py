@@ -7,7 +7,8 @@ semicolon.  It gives what a syntax tree does not: where each statement ends.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+
+from ..values import dataclass
 
 
 class Malformed(Exception):

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from bisect import bisect_right
 from collections.abc import Iterator
-from dataclasses import replace
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast
 
 from ..model import CType
+from ..values import replace
 from .basic import Arithmetic
 from .dialect import EXTRA_TYPES, LAYOUT_WORDS, TYPE_WORDS
 from .expressions import Expressions, string_size

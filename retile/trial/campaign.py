@@ -8,7 +8,7 @@ import shutil
 import signal
 import tempfile
 import threading
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
 from datetime import UTC, datetime
@@ -28,6 +28,7 @@ from .statistics import Estimate, median
 from .verification import Case, Fill, Verifier, bytes_of, difference_of
 
 if TYPE_CHECKING:
+    from ..judge import Finding
     from ..source import Source
 
 _BUSY = 1.15  # elapsed over computing time from which other programs are suspected
@@ -99,11 +100,12 @@ def measure(
     settings: Settings = Settings(),
     on_progress: Progress | None = None,
     command: str = "retile measure",
+    judge: Callable[[Variant], Finding] | None = None,
 ) -> Campaign:
-    """Verify variants and time them against the original at the given sizes, round by round in one process.
+    """Judge and verify variants and time them against the original at the given sizes, round by round in one process.
 
     ``sizes`` are by name as the nest's parameters are shown; ``command`` is what the user typed, for the message that
-    names a missing size.  Ctrl-C and SIGTERM end the campaign early; what was measured so far is returned with
+    names a missing size; ``judge`` says of a variant what it computes, by its text.  Ctrl-C and SIGTERM end the campaign early; what was measured so far is returned with
     ``interrupted`` set.  Raises RetileError for sizes that are missing, unknown or undefined, for arrays that do not
     fit into memory, and where ``verify_all`` does.
     """
@@ -113,7 +115,7 @@ def measure(
         chosen = checked(bench, sizes, command)
         case = Case(chosen, _layout(bench, chosen))
         _check_memory(nest, bytes_of(bench, case.layout))
-        state = _State(bench, shop, settings, case, list(variants), on_progress)
+        state = _State(bench, shop, settings, case, list(variants), on_progress, judge)
         try:
             state.run()
         except KeyboardInterrupt:
@@ -177,6 +179,7 @@ class _State:
     case: Case
     variants: list[Variant]
     on_progress: Progress | None
+    judge: Callable[[Variant], Finding] | None = None
     trials: list[Trial] = field(default_factory=list)
     fill: Fill = Fill("random")
     clocked: list[int] = field(default_factory=list)  # trial numbers of the kernels that are timed, in their order
@@ -189,9 +192,18 @@ class _State:
 
     def run(self) -> None:
         original, texts = _texts(self.bench, self.variants)
+        if self.judge is not None:
+            self._judge(self.judge)
         if self.settings.verify:
             self._verify(original, texts)
         self._time(original, texts)
+
+    def _judge(self, judge: Callable[[Variant], Finding]) -> None:
+        for number, variant in enumerate(self.variants):
+            self.tell("judge", number, len(self.variants), self.trials[number].plan)
+            found = judge(variant)
+            failure = None if found.judged is not False else f"it computes something else: {found.reason}"
+            self.trials[number] = replace(self.trials[number], finding=found.as_json(), failure=failure)
 
     def tell(self, stage: str, done: int, total: int, text: str) -> None:
         """Report progress, if anybody listens."""
@@ -207,7 +219,7 @@ class _State:
             lambda text: self.tell("verify", next(steps), len(texts) + 1, text),
         )
         self.trials = [
-            replace(trial, verification=result, failure=result.failure or _differs(result.difference))
+            replace(trial, verification=result, failure=trial.failure or result.failure or _differs(result.difference))
             for trial, result in zip(self.trials, results)
         ]
 

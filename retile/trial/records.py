@@ -36,7 +36,7 @@ class Settings:
 class Event:
     """Progress: ``done`` of ``total`` steps of a stage."""
 
-    stage: str  # ``build``, ``verify``, ``time``
+    stage: str  # ``judge``, ``verify``, ``build``, ``time``
     done: int
     total: int
     text: str
@@ -96,11 +96,17 @@ class Trial:
     largest_relative: float | None = None
     cause: str | None = None  # why timed builds differ
     failure: str | None = None  # why it was not timed
+    finding: Mapping[str, Any] | None = None  # what the judge says of the text; None if nobody asked it
+
+    @property
+    def judged(self) -> bool | None:
+        """What the judge says; None if it was not asked or could not run."""
+        return self.finding["judged"] if self.finding is not None else None
 
     @property
     def verified(self) -> bool:
-        """True if verification ran and found nothing."""
-        return self.verification is not None and self.verification.verified
+        """True if verification ran and found nothing, and the judge neither."""
+        return self.verification is not None and self.verification.verified and self.judged is not False
 
     @property
     def seconds(self) -> Estimate | None:
@@ -177,6 +183,7 @@ def _trial_json(trial: Trial) -> dict[str, Any]:
         "plan": trial.plan,
         "options": trial.options,
         "verified": trial.verified,
+        "judged": trial.judged,
         "tolerance": verification.tolerance if verification else None,
         "identical": trial.identical,
         "seconds": trial.seconds.as_json() if trial.seconds else None,
@@ -188,6 +195,7 @@ def _trial_json(trial: Trial) -> dict[str, Any]:
         "cause": trial.cause,
         "failure": trial.failure,
         "verification": _verification_json(verification) if verification else None,
+        "judge": dict(trial.finding) if trial.finding is not None else None,
     }
 
 
@@ -350,10 +358,21 @@ def _trial(part: _Part) -> Trial:
         largest_relative=part.take("largest_relative", int, float, _NONE),
         cause=part.take("cause", str, _NONE),
         failure=part.take("failure", str, _NONE),
+        finding=_finding(part),
     )
     if len(trial.samples) != len(trial.baseline_samples):
         raise _Wrong("a trial and its baseline have different numbers of samples")
     return trial
+
+
+def _finding(part: _Part) -> Mapping[str, Any] | None:
+    held = part.take("judge", dict, _NONE)
+    if held is None:
+        return None
+    said = _Part(held, "a judge's finding")
+    said.take("judged", bool, _NONE)
+    said.take("reason", str)
+    return held
 
 
 def _verification(part: _Part) -> Verification:

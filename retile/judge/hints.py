@@ -1,0 +1,63 @@
+"""Where it is worth to look for faults of a variant, from what its maker knows; what is found rests on the texts alone."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING
+
+from .examine import Allowed, Task
+
+if TYPE_CHECKING:
+    from ..model import Assumption, Nest, Variant
+
+_LARGEST = 300  # chunks beyond that are not worth their time
+
+
+def task_of(nest: Nest, variant: Variant, flags: Sequence[str] = (), trust: bool = False) -> Task:
+    """The task of judging a variant; with ``trust`` only at sizes at which what it assumes holds."""
+    plan, assumptions = variant.plan, variant.judgement.assumptions
+    chunks = {_chunk(term.chunk, variant.text, flags) for term in plan.terms if term.chunk is not None}
+    pairs = [] if trust else [pair for a in assumptions if (pair := _pointers(nest, a)) and not a.given]
+    allowed: Allowed = _holding(nest, assumptions) if trust else (lambda sizes: True)
+    return Task(variant.text, tuple(sorted(chunk for chunk in chunks if 1 < chunk <= _LARGEST)),
+                dict(plan.options).get("reassociate") == "yes", tuple(pairs), allowed)
+
+
+def _chunk(chunk: int | str, text: str, flags: Sequence[str]) -> int:
+    """A chunk's size; 0 for a name whose value is not found."""
+    if isinstance(chunk, int):
+        return chunk
+    for flag in reversed(flags):
+        if flag.startswith(f"-D{chunk}="):
+            value = flag[len(chunk) + 3 :]
+            return int(value) if value.isdecimal() else 0
+    match = re.search(rf"^[ \t]*#[ \t]*define[ \t]+{re.escape(chunk)}[ \t]+(\d+)\b", text, re.MULTILINE)
+    return int(match[1]) if match else 0
+
+
+def _pointers(nest: Nest, assumption: Assumption) -> tuple[str, str] | None:
+    """The two pointers of an assumption that they do not lead to the same memory."""
+    if len(assumption.storages) != 2:
+        return None
+    known = {storage.name: storage.object for storage in nest.storages}
+    one, other = (known.get(name, name).removesuffix("[]") for name in assumption.storages)
+    return (one, other) if one != other else None
+
+
+def _holding(nest: Nest, assumptions: Sequence[Assumption]) -> Allowed:
+    """Whether the assumptions about sizes hold at given ones; not where that cannot be told."""
+    from ..affine import formula_names
+    from ..sets import Region
+
+    conditions = [a.condition for a in assumptions if a.condition is not None]
+    needed = {name for condition in conditions for name in formula_names(condition)}
+    texts = {p.symbol: p.text for p in nest.parameters if p.symbol in needed}
+
+    def holds(sizes: Mapping[str, int]) -> bool:
+        values = {symbol: sizes[text] for symbol, text in texts.items() if text in sizes}
+        if len(values) < len(needed):
+            return not conditions
+        return not Region.where(*conditions).at(values).is_empty()
+
+    return holds
