@@ -185,10 +185,18 @@ class Source:
 
     def function_span(self, function: c_ast.FuncDef) -> Span | None:
         """From the first specifier of a function definition to its closing brace."""
-        for own, part in self._readings[0].own_functions:
-            if own is function:
-                return self._readings[0].piece(part.start, part.end)
-        return None
+        part = self._parts.get(id(function))
+        return None if part is None else self._readings[0].piece(part.start, part.end)
+
+    @cached_property
+    def _parts(self) -> dict[int, External]:
+        """Where each of ``functions`` stands in the parser's text, by ``id``."""
+        return {id(function): part for function, part in self._readings[0].own_functions}
+
+    def has_word(self, function: c_ast.FuncDef, word: str) -> bool:
+        """True if a word stands in a function after preprocessing; tells so without parsing it."""
+        part = self._parts.get(id(function))
+        return part is not None and word in self._readings[0].text.text[part.start : part.end + 1]
 
     def header_span(self, node: Any) -> Span | None:
         """From the keyword of a ``for``, ``if``, ``while`` or ``switch`` to the parenthesis that closes its header."""
