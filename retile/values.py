@@ -40,7 +40,8 @@ else:
 
 
 def _completed(cls: Any) -> Any:
-    own = (name for name, kind in cls.__dict__.get("__annotations__", {}).items() if not str(kind).startswith("ClassVar"))
+    annotations = cls.__dict__.get("__annotations__", {})
+    own = (name for name, kind in annotations.items() if not str(kind).startswith("ClassVar"))
     inherited = (name for base in reversed(cls.__mro__[1:]) for name in base.__dict__.get("__match_args__", ()))
     names = tuple(dict.fromkeys((*inherited, *own)))
     setattr(cls, "__match_args__", names)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import random
+import time
 from pathlib import Path
 
 import pytest
@@ -11,6 +12,7 @@ from source_marks import opened
 
 from retile.model import RetileError
 from retile.source import CompilerCall, complaint, open_source
+from retile.source.compiler import preprocess
 
 
 def message(path: str | Path, call: CompilerCall = CompilerCall(), bodies: bool = False) -> str:
@@ -206,3 +208,22 @@ def test_deep_nesting_is_refused_not_crashed_on(tmp_path: Path) -> None:
                 source.span(function.body)
         except RetileError as error:
             assert str(path) in str(error)
+
+
+def test_the_compiler_works_while_other_things_are_done(tmp_path: Path) -> None:
+    mark = tmp_path / "mark"
+    begun = preprocess(CompilerCall(f"sh -c 'echo int depth\\; && touch {mark}'"), "line.c", stubs=False)
+    end = time.monotonic() + 20
+    while not mark.exists() and time.monotonic() < end:
+        time.sleep(0.01)
+    assert mark.exists()  # nobody has asked for the answer yet
+    assert begun.answer().output == "int depth;\n"
+
+
+def test_a_run_that_nobody_asks_for_is_stopped(tmp_path: Path) -> None:
+    mark = tmp_path / "mark"
+    begun = preprocess(CompilerCall(f"sh -c 'sleep 1; touch {mark}'"), "line.c", stubs=False)
+    begun.stop()
+    begun.stop()
+    time.sleep(1.3)
+    assert not mark.exists()

@@ -50,8 +50,8 @@ def _classes(decorator):
 
 
 OURS, THEIRS = _classes(values.dataclass), _classes(dataclasses.dataclass)
-CALLS = [("Chunk", ("i",), {}), ("Chunk", ("i", 64), {}), ("Chunk", (), {"size": 8, "loop": "j"}), ("Named", ("i",), {}),
-         ("Named", ("i", 64, "COLUMNS"), {}), ("Nothing", (), {}), ("Written", (), {}), ("Written", ((1, 2),), {})]
+CALLS = [("Chunk", ("i",), {}), ("Chunk", ("i", 64), {}), ("Chunk", (), {"size": 8, "loop": "j"}),
+         ("Named", ("i",), {}), ("Named", ("i", 64, "COLUMNS"), {}), ("Nothing", (), {}), ("Written", (), {}), ("Written", ((1, 2),), {})]
 
 
 def _made(classes):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Iterable
 from functools import cached_property
 from typing import Any
@@ -51,6 +52,7 @@ class _File:
     def __init__(self, source: Source) -> None:
         self.source = source
         self.unit = Unit(source)
+        self._per_function: dict[int, tuple[_For, ...]] = {}
         self._per_line: dict[int, int] = {}
 
     @cached_property
@@ -60,22 +62,37 @@ class _File:
 
     def loops_on(self, line: int) -> tuple[_For, ...]:
         """The loops on a line; only the functions that reach over it are parsed."""
-        spans = [(function, self.source.function_span(function)) for function in self.source.functions]
-        here = [
-            function for function, span in spans if span is None or span.line <= line <= self.source.at(span.end)[0]
-        ]
-        return tuple(loop for loop in self._loops_of(here) if loop.line == line)
+        here = [function for function, first, last in self._lines if first <= line <= last]
+        found = [loop for function in here for loop in self._in_function(function) if loop.line == line]
+        return tuple(sorted(found, key=lambda loop: loop.column))
 
-    @staticmethod
-    def _loops_of(functions: Iterable[Any]) -> tuple[_For, ...]:
+    @cached_property
+    def _lines(self) -> tuple[tuple[Any, int, int], ...]:
+        """Each function with its first and last line; one whose extent is not sure may reach over any."""
         found = []
-        for function in functions:
+        for function in self.source.functions:
+            span = self.source.function_span(function)
+            found.append((function, 0, sys.maxsize) if span is None
+                         else (function, span.line, self.source.at(span.end)[0]))
+        return tuple(found)
+
+    def _loops_of(self, functions: Iterable[Any]) -> tuple[_For, ...]:
+        found = [loop for function in functions for loop in self._in_function(function)]
+        return tuple(sorted(found, key=lambda loop: (loop.line, loop.column)))
+
+    def _in_function(self, function: Any) -> tuple[_For, ...]:
+        if not self.source.has_word(function, "for"):
+            return ()
+        if id(function) not in self._per_function:
             inner: set[int] = set()
+            loops = []
             for node in descendants(function.body):
                 if isinstance(node, c_ast.For):
-                    found.append(_For(function, node, id(node) not in inner))
-                    inner.update(id(one) for one in descendants(node.stmt))
-        return tuple(sorted(found, key=lambda loop: (loop.line, loop.column)))
+                    loops.append(_For(function, node, id(node) not in inner))
+                    if id(node) not in inner:
+                        inner.update(id(one) for one in descendants(node.stmt) if isinstance(one, c_ast.For))
+            self._per_function[id(function)] = tuple(loops)
+        return self._per_function[id(function)]
 
     def address(self, loop: _For) -> Address:
         """FILE:LINE, with the column where the line has several loops."""

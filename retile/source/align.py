@@ -185,19 +185,24 @@ class _Aligner:
             if piece is not ANY and piece.text != self.unit.tokens[place].text:
                 return None
         first = places[0] if places else (self.own[position] if position < len(self.own) else len(self.unit.tokens))
-        pragma = any(piece.text == "_Pragma" for piece in pieces) or self._gives_pragma(pieces, set())
+        pragma = any(piece.text == "_Pragma" for piece in pieces) or self._gives_pragma(pieces)
         return Origin(index, stop, first, places[-1] + 1 if places else first, False, pragma)
 
     def _takes_arguments(self, piece: Piece) -> bool:
         macro = self.macros.get(piece.text)
         return macro is not None and macro.parameters is not None and piece.text not in piece.hidden
 
-    def _gives_pragma(self, pieces: list[Piece], seen: set[str]) -> bool:
+    def _gives_pragma(self, pieces: list[Piece]) -> bool:
         """True if a macro named in the call mentions ``_Pragma``, itself or through others."""
-        names = {piece.text for piece in pieces if piece.kind == "word" and piece.text in self.macros} - seen
-        seen |= names
-        named = [self.macros[name] for name in names]
-        return any("_Pragma" in macro.definition or self._gives_pragma(list(macro.body), seen) for macro in named)
+        seen: set[str] = set()
+        waiting: list[Piece] = pieces
+        while waiting:
+            names = {piece.text for piece in waiting if piece.kind == "word" and piece.text in self.macros} - seen
+            if any("_Pragma" in self.macros[name].definition for name in names):
+                return True
+            seen |= names
+            waiting = [piece for name in names for piece in self.macros[name].body]
+        return False
 
     def _meet_again(self, index: int, position: int) -> tuple[int, int]:
         """The next line that starts with a token that is no macro, on which both texts agree."""

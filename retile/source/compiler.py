@@ -50,23 +50,38 @@ class Preprocessed:
     name: str  # of the user's file in the line markers
 
 
-def preprocess(call: CompilerCall, path: str, *, stubs: bool, text: bytes | None = None) -> Preprocessed:
-    """Run ``cc -E -dD`` over a file, or over ``text`` that stands for the file at ``path``.
+class Preprocessing:
+    """A run of the preprocessor that has begun; other work can be done before its answer is asked for."""
+
+    def __init__(self, run: Run, name: str) -> None:
+        self._run, self._name = run, name
+
+    def answer(self) -> Preprocessed:
+        """Wait for the end; RetileError if it takes too long or writes too much."""
+        output, errors, status = self._run.results()
+        return Preprocessed(output.decode("utf-8", "replace"), errors.decode("utf-8", "replace"), status, self._name)
+
+    def stop(self) -> None:
+        """End it, unless it has ended."""
+        self._run.stop()
+
+
+def preprocess(call: CompilerCall, path: str, *, stubs: bool, text: bytes | None = None) -> Preprocessing:
+    """Start ``cc -E -dD`` over a file, or over ``text`` that stands for the file at ``path``.
 
     With ``stubs`` our own short headers stand before those of the system (the user's -I directories come first still).
-    A failure of the compiler is an answer; RetileError is raised if it cannot be started, takes too long or writes too
-    much.
+    A failure of the compiler is an answer; RetileError is raised if it cannot be started.
     """
     command = [*call.command, *call.flags, "-E", "-dD", "-w", "-x", "c"]
     if stubs:
         command += ["-isystem", HEADERS]
     name = os.path.join(".", path) if path.startswith("-") else _from(call.directory, path)
     if text is not None:
+        name = "<stdin>"
         command += ["-iquote", os.path.dirname(os.path.abspath(path)), "-"]
     else:
         command.append(name)  # a path that starts with a dash would be taken for a flag
-    output, errors, status = _run(command, call, text)
-    return Preprocessed(output.decode("utf-8", "replace"), errors.decode("utf-8", "replace"), status, name)
+    return Preprocessing(Run(command, call, text), name)
 
 
 def check_syntax(call: CompilerCall, path: str) -> str:
@@ -76,9 +91,8 @@ def check_syntax(call: CompilerCall, path: str) -> str:
     """
     name = os.path.join(".", path) if path.startswith("-") else _from(call.directory, path)
     try:
-        _, errors, status = _run(
-            [*call.command, *call.flags, "-fsyntax-only", "-w", "-ftabstop=1", "-x", "c", name], call, None
-        )
+        command = [*call.command, *call.flags, "-fsyntax-only", "-w", "-ftabstop=1", "-x", "c", name]
+        _, errors, status = Run(command, call, None).results()
     except RetileError:
         return ""
     return errors.decode("utf-8", "replace") if status else ""
@@ -88,26 +102,37 @@ def _from(directory: str | None, path: str) -> str:
     return os.path.abspath(path) if directory else path
 
 
-def _run(command: list[str], call: CompilerCall, text: bytes | None) -> tuple[bytes, bytes, int]:
-    try:
-        process = subprocess.Popen(
-            command,
-            stdin=subprocess.PIPE if text is not None else subprocess.DEVNULL,
-            stdout=subprocess.PIPE,
-            stderr=subprocess.PIPE,
-            cwd=call.directory,
-            env={**os.environ, "LC_ALL": "C"},
-            start_new_session=True,
-        )
-    except (OSError, ValueError) as error:
-        raise RetileError(_cannot_start(command[0], call, error)) from None
-    try:
-        return _communicate(process, text, command[0])
-    except BaseException:
-        _stop(process)
-        raise
-    finally:
-        for stream in (process.stdin, process.stdout, process.stderr):
+class Run:
+    """One process of the compiler, started when it is made; RetileError if that is not possible."""
+
+    def __init__(self, command: list[str], call: CompilerCall, text: bytes | None) -> None:
+        self._program, self._text = command[0], text
+        self._deadline = time.monotonic() + SECONDS
+        try:
+            self._process = subprocess.Popen(
+                command,
+                stdin=subprocess.PIPE if text is not None else subprocess.DEVNULL,
+                stdout=subprocess.PIPE,
+                stderr=subprocess.PIPE,
+                cwd=call.directory,
+                env={**os.environ, "LC_ALL": "C"},
+                start_new_session=True,
+            )
+        except (OSError, ValueError) as error:
+            raise RetileError(_cannot_start(command[0], call, error)) from None
+
+    def results(self) -> tuple[bytes, bytes, int]:
+        """Standard output, standard error and exit status; RetileError beyond the limits on time and output."""
+        try:
+            return _communicate(self._process, self._text, self._program, self._deadline)
+        finally:
+            self.stop()
+
+    def stop(self) -> None:
+        """Kill it if it still runs."""
+        if self._process.returncode is None:
+            _stop(self._process)
+        for stream in (self._process.stdin, self._process.stdout, self._process.stderr):
             if stream:
                 stream.close()
 
@@ -128,10 +153,11 @@ def _stop(process: subprocess.Popen[bytes]) -> None:
     process.wait()
 
 
-def _communicate(process: subprocess.Popen[bytes], text: bytes | None, program: str) -> tuple[bytes, bytes, int]:
+def _communicate(
+    process: subprocess.Popen[bytes], text: bytes | None, program: str, deadline: float
+) -> tuple[bytes, bytes, int]:
     """Feed the process and read both its outputs within the limits."""
     assert process.stdout and process.stderr
-    deadline = time.monotonic() + SECONDS
     read: dict[IO[bytes], list[bytes]] = {process.stdout: [], process.stderr: []}
     pending, total = memoryview(text or b""), 0
     with selectors.DefaultSelector() as selector:

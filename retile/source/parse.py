@@ -126,11 +126,7 @@ def parse_expression(tokens: Sequence[str], typedefs: Sequence[str]) -> Any:
         return None
 
 
-_PRELUDE = (
-    "".join(f"typedef int {name};" for name in EXTRA_TYPES)
-    + f"int {UNKNOWN_VALUE}(); int {STATEMENT_EXPRESSION}();"
-)  # fmt: skip
-_PRELUDE_COUNT = len(EXTRA_TYPES) + 2
+_FUNCTIONS = f"int {UNKNOWN_VALUE}(); int {STATEMENT_EXPRESSION}();"
 _ERROR = re.compile(r"(?:tokens)?:(\d+)(?::\d+)?: (.*)", re.DOTALL)
 
 
@@ -148,15 +144,16 @@ def _parse(
             last = token.lineno if token is not None else last
             return token
 
-    first_line = _PRELUDE + "".join(f"typedef int {name};" for name in typedefs)
-    source = "\n".join([first_line, *(text[index] for index in kept)])
+    words = [text[index] for index in kept]
+    types = [*(set(EXTRA_TYPES).intersection(words)), *typedefs]  # the others would cost more than a short function
+    source = "\n".join([_FUNCTIONS + "".join(f"typedef int {name};" for name in types), *words])
     try:
         ast = CParser(lexer=Watching).parse(source, "tokens")
     except RecursionError:
         raise SyntaxProblem("expressions or statements are nested too deep to be read", None) from None
     except Exception as error:  # the parser may also stumble over its own assertions
         raise _problem(error, last, kept, place) from None
-    del ast.ext[: _PRELUDE_COUNT + len(typedefs)]
+    del ast.ext[: 2 + len(types)]
     known: dict[int, Place | None] = {}
     for node in nodes(ast):
         if node.coord is not None:

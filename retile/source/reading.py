@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import os
-import re
 from functools import cached_property
 from typing import Any
 
@@ -11,7 +10,7 @@ from pycparser import c_ast
 
 from ..model import Span
 from .align import Alignment, Origin, align
-from .compiler import CompilerCall, preprocess
+from .compiler import Preprocessing
 from .dialect import ParserText, for_parser
 from .lex import Token
 from .macros import Macro
@@ -19,8 +18,6 @@ from .match import shapes_of
 from .parse import FuncDef, Parsed, Place, parse_function, parse_unit
 from .preprocessed import Unit, read_preprocessed
 from .structure import External, Malformed, Shape, compound
-
-_LINE_DIRECTIVE = re.compile(r"^([ \t\f\v]*)#[ \t]*(?:line\b|[0-9]).*$", re.MULTILINE)
 
 
 class CompilerRefused(Exception):
@@ -33,9 +30,9 @@ class Reading:
     Raises CompilerRefused or SyntaxProblem when made; ``body`` may raise SyntaxProblem.
     """
 
-    def __init__(self, path: str, text: str, tokens: tuple[Token, ...], call: CompilerCall, stubs: bool, body: Any):
+    def __init__(self, path: str, tokens: tuple[Token, ...], preprocessing: Preprocessing, stubs: bool, body: Any):
         self.path, self.tokens, self.stubs = path, tokens, stubs
-        self.unit = _preprocessed_unit(path, text, call, stubs)
+        self.unit = _preprocessed_unit(preprocessing)
         self.macros = _predefined(self.unit)
         version = self.macros.get("__STDC_VERSION__", Macro("", " 0")).definition.strip().rstrip("L")
         self.c23 = version.isdigit() and int(version) > 201710
@@ -189,16 +186,11 @@ def _name_of(node: Any) -> tuple[Any, int]:
     return node, depth
 
 
-def _preprocessed_unit(path: str, text: str, call: CompilerCall, stubs: bool) -> Unit:
-    data = None
-    if _LINE_DIRECTIVE.search(text):
-        # Lines that claim another place would hide where tokens come from.
-        data = _LINE_DIRECTIVE.sub("", text).encode("utf-8", "surrogateescape")
-    answer = preprocess(call, path, stubs=stubs, text=data)
+def _preprocessed_unit(preprocessing: Preprocessing) -> Unit:
+    answer = preprocessing.answer()
     if answer.status != 0:
         raise CompilerRefused(answer.errors)
-    name = "<stdin>" if data is not None else answer.name
-    return read_preprocessed(answer.output, os.fsencode(name).decode("utf-8", "replace"))
+    return read_preprocessed(answer.output, os.fsencode(answer.name).decode("utf-8", "replace"))
 
 
 def _predefined(unit: Unit) -> dict[str, Macro]:

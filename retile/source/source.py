@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 import re
 from bisect import bisect_left, bisect_right
 from collections.abc import Sequence
@@ -12,53 +11,22 @@ from typing import Any
 from pycparser import c_ast
 
 from ..model import RetileError, Span
-from .compiler import CompilerCall, check_syntax
+from .compiler import CompilerCall, Preprocessing, check_syntax
 from .lex import SKIPPED, Lines, Token, spellings, tokenize
 from .messages import complaint
+from .opening import begin, decoded
 from .parse import FuncDef, SyntaxProblem
 from .reading import CompilerRefused, Reading
 from .structure import External
 from .types import Types
 
 
-def open_source(path: str, call: CompilerCall = CompilerCall()) -> Source:
-    """Read, preprocess and parse a C file.
-
-    Raises RetileError if the file cannot be read, the compiler cannot be started or refuses it, or the text is not C.
-    Bodies of functions are parsed on first use, so an error in one shows only there.
-    """
-    path = os.fspath(path)
-    text, encoding = _decoded(_bytes_of(path))
-    return Source(path, text, encoding, call)
-
-
-def _bytes_of(path: str) -> bytes:
-    try:
-        if os.path.exists(path) and not os.path.isfile(path):
-            kind = "a directory" if os.path.isdir(path) else "not a regular file"
-            raise RetileError(f"{path}: this is {kind}; name a C file")
-        with open(path, "rb") as file:
-            return file.read()
-    except FileNotFoundError:
-        raise RetileError(f"{path}: there is no such file") from None
-    except ValueError:
-        raise RetileError(f"{path!r}: this cannot be the name of a file") from None
-    except OSError as error:
-        raise RetileError(f"{path}: the file cannot be read: {error.strerror}") from None
-
-
-def _decoded(data: bytes) -> tuple[str, str]:
-    """The text and the encoding that gives the same bytes back: Latin-1 takes whatever is not UTF-8."""
-    try:
-        return data.decode("utf-8"), "utf-8"
-    except UnicodeDecodeError:
-        return data.decode("latin-1"), "latin-1"
-
-
 class Source:
     """A C file with its tokens, its syntax tree and the extents of its statements."""
 
-    def __init__(self, path: str, text: str, encoding: str, call: CompilerCall, *, stubs: bool = True) -> None:
+    def __init__(self, path: str, text: str, encoding: str, call: CompilerCall,
+                 preprocessing: Preprocessing | None = None, *, stubs: bool = True) -> None:
+        """``preprocessing``: a run over this file, with our own headers, if one has begun already."""
         self.path = path  # as the user typed it
         self.text = text  # line endings and byte order mark kept
         self.encoding = encoding
@@ -66,16 +34,17 @@ class Source:
         self.lines = Lines(text)
         self.tokens: tuple[Token, ...] = tokenize(text, self.lines)
         self._readings: list[Reading] = []
-        self._read(stubs)
+        self._read(stubs, preprocessing)
 
     # ---------------------------------------------------------------- reading
 
-    def _read(self, stubs: bool) -> Reading:
+    def _read(self, stubs: bool, preprocessing: Preprocessing | None = None) -> Reading:
         """Add a reading; without our own headers if it fails with them."""
         number = len(self._readings)
+        preprocessing = preprocessing or begin(self.path, self.text, self.call, stubs=stubs)
         try:
             reading = Reading(
-                self.path, self.text, self.tokens, self.call, stubs, lambda part, node: self._body(number, part, node)
+                self.path, self.tokens, preprocessing, stubs, lambda part, node: self._body(number, part, node)
             )
         except CompilerRefused as refused:
             if stubs:
@@ -207,10 +176,18 @@ class Source:
 
     def function_span(self, function: c_ast.FuncDef) -> Span | None:
         """From the first specifier of a function definition to its closing brace."""
-        for own, part in self._readings[0].own_functions:
-            if own is function:
-                return self._readings[0].piece(part.start, part.end)
-        return None
+        part = self._parts.get(id(function))
+        return None if part is None else self._readings[0].piece(part.start, part.end)
+
+    @cached_property
+    def _parts(self) -> dict[int, External]:
+        """Where each of ``functions`` stands in the parser's text, by ``id``."""
+        return {id(function): part for function, part in self._readings[0].own_functions}
+
+    def has_word(self, function: c_ast.FuncDef, word: str) -> bool:
+        """True if a word stands in a function after preprocessing; tells so without parsing it."""
+        part = self._parts.get(id(function))
+        return part is not None and word in self._readings[0].text.text[part.start : part.end + 1]
 
     def header_span(self, node: Any) -> Span | None:
         """From the keyword of a ``for``, ``if``, ``while`` or ``switch`` to the parenthesis that closes its header."""
@@ -332,6 +309,6 @@ def _line_of(path: str, line: int) -> str:
     """A line of another file; empty if it cannot be read."""
     try:
         with open(path, "rb") as file:
-            return Lines(_decoded(file.read())[0]).line(line)
+            return Lines(decoded(file.read())[0]).line(line)
     except (OSError, ValueError):
         return ""
