@@ -157,12 +157,12 @@ class Printer:
             array = Array(self._loops.name(("cells", key), name, family=True), shape, rows)
             self._arrays[key] = array
             type = self._declaration(key.storage if isinstance(key, Buffer) else key)
-            lines = self._declared(type, list(array.declarators()), indent)
+            lines = self._declarations_of(type, list(array.declarators()), indent)
             lines += self.nodes(node.body, place, indent)
         del self._arrays[key]
         return lines
 
-    def _declared(self, type: str, declarators: list[str], indent: str) -> list[str]:
+    def _declarations_of(self, type: str, declarators: list[str], indent: str) -> list[str]:
         lines = [f"{indent}{type} {declarators[0]}"]
         for one in declarators[1:]:
             if len(lines[-1]) + len(one) + 3 > WIDTH:
