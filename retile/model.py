@@ -319,6 +319,7 @@ class Plan:
     copied: tuple[str, ...] = ()  # statements that run again wherever their value is needed
     kept: tuple[str, ...] = ()  # private scalars whose values wait in a small array of the variant's own
     buffers: tuple[Buffer, ...] = ()  # outer ones first
+    inner: tuple[tuple[str, int], ...] = ()  # kept scalars with an array of their own in the loops before a term
     unrolled: tuple[str, ...] = ()  # loops whose full chunks are written out
 
     def places_of(self, statement: str) -> tuple[Place, ...]:

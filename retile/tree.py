@@ -91,6 +91,7 @@ class Kept:
     scalar: str  # name of the storage
     shape: tuple[int, ...]
     body: tuple[Node, ...]
+    heap: bool = False  # too large for a local array
 
 
 @dataclass(frozen=True)
@@ -101,6 +102,8 @@ class Copy:
     index: tuple[Affine, ...]  # of the cell, in symbols of the tree
     store: bool  # scalar to cell; else cell to scalar
     declares: bool = False  # the scalar is declared here: its own declaration stands in another piece
+    # Of the cell of the ``Kept`` further out, where the value moves between the two and not to or from the scalar.
+    around: tuple[Affine, ...] | None = None
 
 
 @dataclass(frozen=True)

@@ -118,6 +118,8 @@ LEGAL = [
     (BEAMS, "k:5 i k j; pack echoes at k:5"),
     (SUMS, "b:4 s:8 p b s"),
     (SUMS, "b:8 s:16 p:8 s:4 b:4 p s b; unroll b, pack echoes at p:8, pack weights at p:8"),
+    (SUMS, "b:8 s:16 p:8 s:4 b:4 p s b; unroll b, hold sum across p, pack weights at p:8"),
+    (SUMS, "b:96 s:96 p:8 s:3 b:2 p b s; hold sum across p, unroll s"),
     (GRAM, "j:8 i:4 k j i; hold c across k, unroll i"),
     (GRAM, "i:8 j:8 k:16 i:4 j:4 k i j; hold c across k, unroll i, pack a[i][k] at k:16"),
     (FLIP, "i:8 j:8 i j; pack to at j:8"),
@@ -138,7 +140,7 @@ def test_variants_are_identical_under_the_sanitizers(tmp_path, text, plan):
 
 @pytest.mark.parametrize("compiler", compilers())
 def test_blocks_compile_without_warnings(tmp_path, compiler):
-    for number, (text, plan) in enumerate([(BEAMS, BLOCKS), (SUMS, LEGAL[5][1]), (DOWN, LEGAL[10][1])]):
+    for number, (text, plan) in enumerate([(BEAMS, BLOCKS), (SUMS, LEGAL[6][1]), (SUMS, LEGAL[7][1]), (DOWN, LEGAL[12][1])]):
         file = tmp_path / f"variant{number}.c"
         file.write_text(nest_of(tmp_path, text).rewrite(plan).text)
         done = subprocess.run([compiler, *WARNINGS, "-O2", "-c", str(file), "-o", str(tmp_path / "out.o")],

@@ -25,7 +25,7 @@ from ..values import replace
 from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
 from .buffers import reads_and_writes, served
 from .grammar import form_text
-from .kept import Keeping, keeping
+from .kept import Keeping, kept_from, keeping
 from .schedule import AFTER, BEFORE, INSIDE, merged, placed, skewed_coordinate, standing
 from .units import Unit, statements_in, units
 
@@ -44,17 +44,39 @@ class _Builder:
         self._parameters = tuple(parameter.symbol for parameter in nest.parameters)
         kept = (keeping(nest, plan, nest.storage(name)) for name in plan.kept)
         self._kept = tuple(keep for keep in kept if keep is not None)
+        inner = (kept_from(nest, plan, nest.storage(name), level) for name, level in plan.inner if name in plan.kept)
+        self._inner = tuple(keep for keep in inner if keep is not None)
+        self._nearest: dict[str, Keeping] = {keep.scalar: keep for keep in self._kept}  # around what is under way
         self._constants = tuple(term.chunk for term in plan.terms if isinstance(term.chunk, str))
 
     def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
         """The nodes of these units from a term on; ``known``: what the loops around establish."""
         owned = [keep for keep in self._kept if keep.level == level and self._users(keep, members)]
+        for keep in self._inner:
+            around = self._nearest.get(keep.scalar)
+            if keep.level == level and around is not None and around.level < level and self._users(keep, members):
+                return self._nested(keep, around, members, level, known, outer)
         nodes = self._copying(self._parts(members, level, known, outer), level, members)
         for keep in owned:
-            nodes = (Kept(keep.scalar, keep.shape, nodes),)
+            nodes = (Kept(keep.scalar, keep.shape, nodes, keep.heap),)
         for buffer in reversed([buffer for buffer in self._plan.buffers if buffer.level == level]):
             nodes = self._buffered(nodes, buffer, members, known, outer)
         return nodes
+
+    def _nested(self, keep: Keeping, around: Keeping, members: tuple[Unit, ...], level: int, known: Region,
+                outer: tuple[Loop, ...]) -> tuple[Node, ...]:
+        """The nodes with a kept scalar in an array of their own, filled from the one around and emptied into it."""
+        self._nearest[keep.scalar] = keep
+        nodes = self.group(members, level, known, outer)
+        self._nearest[keep.scalar] = around
+        users = tuple(unit for unit in members if self._users(keep, (unit,)))
+        private = self._nest.storage(keep.scalar).private_to
+        terms = tuple(at for at, term in enumerate(self._plan.terms) if level <= at < keep.ready
+                      and term.chunk is None and term.loop in private)
+        fresh = any(self._starts_value(id, keep) for unit in users for id in statements_in(unit.nodes))
+        fill, empty = ((self._moving(Copy(keep.scalar, keep.index, store, around=around.index), users, known, outer, terms),)
+                       for store in (True, False))
+        return (Kept(keep.scalar, keep.shape, (*(() if fresh else fill), *nodes, *empty), keep.heap),)
 
     def _buffered(self, nodes: tuple[Node, ...], buffer: Buffer, members: tuple[Unit, ...], known: Region,
                   outer: tuple[Loop, ...]) -> tuple[Node, ...]:
@@ -76,7 +98,7 @@ class _Builder:
         idle = Region.union(self._visible(unit, outer) for unit in members) & around
         return Guard(condition, (held,)), *((Guard(negate(condition), nodes),) if not idle.within(needed) else ())
 
-    def _moving(self, move: Move, users: tuple[Unit, ...], known: Region, outer: tuple[Loop, ...],
+    def _moving(self, move: Move | Copy, users: tuple[Unit, ...], known: Region, outer: tuple[Loop, ...],
                 terms: tuple[int, ...]) -> Node:
         """The loops over the cells of a buffer."""
         if not terms:
@@ -96,9 +118,10 @@ class _Builder:
             if not users:
                 continue
             block = self._nest.storage(keep.scalar).scope == "block"
-            fetch = () if self._starts_value(users[0], keep) else (Copy(keep.scalar, keep.index, False, block),)
+            near = self._nearest[keep.scalar]
+            fetch = () if self._starts_value(users[0], keep) else (Copy(keep.scalar, near.index, False, block),)
             changed = any(a.write and a.storage == keep.scalar for id in users for a in self._nest.statement(id).accesses)
-            nodes = (*fetch, *nodes, *((Copy(keep.scalar, keep.index, True),) if changed else ()))
+            nodes = (*fetch, *nodes, *((Copy(keep.scalar, near.index, True),) if changed else ()))
         return nodes
 
     def _users(self, keep: Keeping, members: tuple[Unit, ...]) -> tuple[str, ...]:

@@ -24,8 +24,9 @@ from ..model import CType, Nest, Plan, ScalarClass, Storage, Term
 from ..values import dataclass
 from .schedule import last_bare, stays_whole
 
-# An array larger than this does not belong on the stack of a loop.
-_MOST_CELLS = 8192
+# Larger arrays are allocated, not put on the stack.
+_MOST_LOCAL_CELLS = 8192
+_MOST_CELLS = 1 << 24
 
 
 @dataclass(frozen=True)
@@ -37,6 +38,11 @@ class Keeping:
     ready: int  # from this term on, every loop that the scalar is private to has its single value
     shape: tuple[int, ...]  # cells per loop
     index: tuple[Affine, ...]  # of the cell, in symbols of the tree
+
+    @property
+    def heap(self) -> bool:
+        """True if the array is too large for the stack."""
+        return prod(self.shape) > _MOST_LOCAL_CELLS
 
 
 def keepable(nest: Nest, plan: Plan) -> tuple[str, ...]:
@@ -51,6 +57,11 @@ def keeping(nest: Nest, plan: Plan, storage: Storage) -> Keeping | None:
     if storage.live_after or not isinstance(storage.element, CType):
         return None
     level = next(at for at, term in enumerate(plan.terms) if any(x not in storage.private_to for x, _ in term.form))
+    return kept_from(nest, plan, storage, level)
+
+
+def kept_from(nest: Nest, plan: Plan, storage: Storage, level: int) -> Keeping | None:
+    """The array for a scalar in the loops of the terms before one; None if chunks there do not bound how many wait."""
     ready = last_bare(plan, storage.private_to) + 1
     varying = [term for term in plan.terms[level:ready] if term.chunk is None and term.loop in storage.private_to]
     cells = [_cells(nest, plan.terms[:level], term) for term in varying]

@@ -20,7 +20,7 @@ from __future__ import annotations
 import re
 
 from ..affine import Affine
-from ..model import Alignment, Nest, RetileError, Statement, StorageKind, Term
+from ..model import Alignment, Nest, RetileError, ScalarClass, Statement, StorageKind, Term
 from ..tree import Buffer
 from ..values import dataclass
 from .buffers import Unfit, buffer_of, references
@@ -57,6 +57,7 @@ class Options:
     aligned: tuple[Alignment, ...] = ()
     unrolled: tuple[str, ...] = ()
     buffers: tuple[Buffer, ...] = ()
+    inner: tuple[tuple[str, int], ...] = ()  # scalars to hold, with the term around which
 
 
 def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple[Term, ...]) -> Options:
@@ -68,6 +69,7 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
     aligned: list[Alignment] = []
     unrolled: list[str] = []
     buffers: list[Buffer] = []
+    inner: list[tuple[str, int]] = []
     for match in re.finditer(r"[^,]+", text):
         option = match.group().strip()
         begin = start + match.start() + len(match.group()) - len(match.group().lstrip())
@@ -79,7 +81,11 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
         elif word == "unroll" and value.strip():
             unrolled.append(_unrolled(plan, begin, option, value.strip(), terms))
         elif word in ("hold", "pack"):
-            buffers.append(_buffer(plan, begin, option, nest, terms, buffers))
+            made = _buffer(plan, begin, option, nest, terms, buffers)
+            if isinstance(made, Buffer):
+                buffers.append(made)
+            else:
+                inner.append(made)
         elif value.strip() not in OPTIONS.get(word, ()):
             raise plan.complaint(begin, begin + len(option), f"'{option}' is not an option", f"Options: {_KNOWN}.")
         elif word in dict(found):
@@ -89,7 +95,7 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
     if unrolled and ("remainder", "clamp") in found:
         raise plan.complaint(start, start + len(text), "only full chunks can be written out, and 'remainder clamp' has none",
                              "Leave 'remainder clamp' out.")
-    return Options(tuple(found), tuple(aligned), tuple(unrolled), tuple(buffers))
+    return Options(tuple(found), tuple(aligned), tuple(unrolled), tuple(buffers), tuple(inner))
 
 
 def _unrolled(plan: PlanText, begin: int, option: str, loop: str, terms: tuple[Term, ...]) -> str:
@@ -104,7 +110,7 @@ def _unrolled(plan: PlanText, begin: int, option: str, loop: str, terms: tuple[T
 
 
 def _buffer(plan: PlanText, begin: int, option: str, nest: Nest, terms: tuple[Term, ...], others: list[Buffer]) \
-        -> Buffer:
+        -> Buffer | tuple[str, int]:
     match = _BUFFER.fullmatch(option)
     if match is None or (match.group(1) == "hold") != (match.group(3) == "across"):
         raise plan.complaint(begin, begin + len(option), "this is not a buffer",
@@ -118,6 +124,8 @@ def _buffer(plan: PlanText, begin: int, option: str, nest: Nest, terms: tuple[Te
         known = [text for text in written if chunk == (":" in text)]
         raise plan.complaint(begin + match.start(4), begin + match.end(4), f"'{place}' is not such a term of the plan",
                              f"Terms here: {', '.join(known) or 'none'}.")
+    if word == "hold" and any(s.name == name and s.scalar is ScalarClass.PRIVATE for s in nest.storages):
+        return name, at
     storage, subscripts = _reference(plan, begin + match.start(2), name, nest)
     if any((other.storage, other.subscripts) == (storage, subscripts) for other in others):
         raise plan.complaint(begin, begin + len(option), f"{name} has a buffer already", "Leave one of the two out.")

@@ -23,7 +23,7 @@ from .afterwards import lost_iterators
 from .alignment import MOST_TRIALS, settled
 from .build import build_tree
 from .copies import copied, copied_scalars
-from .kept import keepable
+from .kept import keepable, kept_from
 from .schedule import INSIDE, merged, moments, placed, stays_whole
 from .units import Unit, moved_conditions, units
 
@@ -176,6 +176,10 @@ class _Court:
                 yield Refusal(loop.span.line, loop.span.column, "iterator-after",
                               f"'{loop.iterator}' is used after the nest, and a condition decides whether its loop runs; declare "
                               "it in the 'for', or set it after the nest yourself")
+        for name, level in self.plan.inner:
+            if name in self.plan.kept and kept_from(self._nest, self.plan, self._nest.storage(name), level) is None:
+                yield Refusal(self._nest.statements[0].line, 1, "buffer", f"how many values of '{name}' it has to hold is not "
+                              "known; put chunks of the loops that it is private to further out in the plan")
         for name in sorted(self._split):
             if self._nest.storage(name).scope != "block":
                 continue

@@ -7,6 +7,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from math import prod
 
 from ..affine import Affine
 from ..model import Access, CType, Nest, Statement
@@ -82,23 +83,23 @@ class Heap:
         self._nest = nest
         self._c11 = not any(flag in ("-ansi",) or flag.startswith("-std=") and
                             flag[-2:] in ("89", "90", "99", "9x") or flag.endswith(":199409") for flag in flags)
-        found = dict.fromkeys(buffer for buffer in _buffers(tree) if buffer.heap)
-        self.arrays = {buffer: Array(names.fresh(array_name(nest, buffer)), buffer.shape, ()) for buffer in found}
+        found = dict(_allocated(tree))
+        self.arrays = {key: Array(names.fresh(array_name(nest, key)), shape, ()) for key, shape in found.items()}
 
     def __bool__(self) -> bool:
         return bool(self.arrays)
 
     def declarations(self) -> list[str]:
         """Allocates each; the pointer is null where there is no memory."""
-        return [self._declaration(buffer, array) for buffer, array in self.arrays.items()]
+        return [self._declaration(key if isinstance(key, str) else key.storage, array) for key, array in self.arrays.items()]
 
-    def _declaration(self, buffer: Buffer, array: Array) -> str:
-        element = self._nest.storage(buffer.storage).element
+    def _declaration(self, storage: str, array: Array) -> str:
+        element = self._nest.storage(storage).element
         assert isinstance(element, CType)
-        inner = "".join(f"[{extent}]" for extent in buffer.shape[1:])
+        inner = "".join(f"[{extent}]" for extent in array.shape[1:])
         pointer = f"(*const {array.name}){inner}" if inner else f"*const {array.name}"
-        size = buffer.cells * element.bits // 8
-        amount = f"{buffer.shape[0]} * sizeof *{array.name}" if size % _ALIGNMENT == 0 or not self._c11 else \
+        size = prod(array.shape) * element.bits // 8
+        amount = f"{array.shape[0]} * sizeof *{array.name}" if size % _ALIGNMENT == 0 or not self._c11 else \
             str(-(-size // _ALIGNMENT) * _ALIGNMENT)
         call = f"aligned_alloc({_ALIGNMENT}, {amount})" if self._c11 else f"malloc({amount})"
         return f"{element.spelling} {pointer} = {call};"
@@ -112,18 +113,21 @@ class Heap:
         return [f"free({array.name});" for array in reversed(self.arrays.values())]
 
 
-def array_name(nest: Nest, buffer: Buffer) -> str:
-    """What a buffer is called: after the user's array."""
-    text = nest.storage(buffer.storage).name
+def array_name(nest: Nest, key: Buffer | str, inner: bool = False) -> str:
+    """What a buffer, or the array of a kept scalar, is called: after the user's name; ``inner``: the one within another."""
+    storage = nest.storage(key if isinstance(key, str) else key.storage)
+    text = storage.name if not isinstance(key, str) else storage.pointer_text.removeprefix("&") or key
     base = "_".join("".join(c if c.isalnum() or c == "_" else " " for c in text).split())
-    return f"{base}_{_WORDS[buffer.word]}"
+    return f"{base}_{_WORDS[key.word] if isinstance(key, Buffer) else 'held' if inner else 'kept'}"
 
 
-def _buffers(nodes: tuple[Node, ...]) -> Iterator[Buffer]:
+def _allocated(nodes: tuple[Node, ...]) -> Iterator[tuple[Buffer | str, tuple[int, ...]]]:
     for node in nodes:
-        if isinstance(node, Held):
-            yield node.buffer
-        yield from _buffers(children(node))
+        if isinstance(node, Held) and node.buffer.heap:
+            yield node.buffer, node.buffer.shape
+        if isinstance(node, Kept) and node.heap:
+            yield node.scalar, node.shape  # the outer one; none inside it is as large
+        yield from _allocated(children(node))
 
 
 Change = tuple[int, int, str]  # text[start:end] becomes

@@ -30,6 +30,7 @@ class Printer:
         self._nest = nest
         self._heap = heap
         self._arrays: dict[Buffer | str, Array] = {}  # those in use here, per buffer or kept scalar
+        self._around: dict[Array, Array] = {}  # for a kept scalar's array the one further out
         self._values: dict[str, str] = {}  # what stands for the user's iterators here
         self._again = False  # in a copy of text that stands further up already
         self._layout = layout
@@ -146,20 +147,24 @@ class Printer:
 
     def _with_storage(self, node: Kept | Held, place: Place, indent: str) -> list[str]:
         """The body of a node with the cells that it has of its own."""
+        before = self._arrays.get(node.scalar) if isinstance(node, Kept) else None
         key, index, shape = (node.buffer, node.buffer.index, node.buffer.shape) if isinstance(node, Held) else \
             (node.scalar, next((copy.index for copy in _copies(node.body, node.scalar)), ()), node.shape)
-        if isinstance(key, Buffer) and key.heap:
+        if before is None and key in self._heap.arrays:
             self._arrays[key] = self._heap.arrays[key]
             lines = self.nodes(node.body, place, indent)
         else:
-            name = array_name(self._nest, key) if isinstance(key, Buffer) else f"{self._variable(key)}_kept"
             rows = constant_dimensions(node.body, key, index, place.scope.meanings)
-            array = Array(self._loops.name(("cells", key), name, family=True), shape, rows)
+            array = Array(self._loops.name(("cells", key, before is None), array_name(self._nest, key, before is not None), family=True), shape, rows)
+            if before is not None:
+                self._around[array] = before
             self._arrays[key] = array
             type = self._declaration(key.storage if isinstance(key, Buffer) else key)
             lines = self._declarations_of(type, list(array.declarators()), indent)
             lines += self.nodes(node.body, place, indent)
         del self._arrays[key]
+        if before is not None:
+            self._arrays[key] = before
         return lines
 
     def _declarations_of(self, type: str, declarators: list[str], indent: str) -> list[str]:
@@ -307,7 +312,9 @@ class Printer:
 
     def _copy(self, copy: Copy, place: Place) -> str:
         """``sum_kept[i - i_from] = sum;`` or the other way round."""
-        cell, scalar = self._arrays[copy.scalar].cell(copy.index, place.scope), self._variable(copy.scalar)
+        array = self._arrays[copy.scalar]
+        cell = array.cell(copy.index, place.scope)
+        scalar = self._variable(copy.scalar) if copy.around is None else self._around[array].cell(copy.around, place.scope)
         if copy.store:
             return f"{cell} = {scalar};"
         return f"{self._declaration(copy.scalar)} {scalar} = {cell};" if copy.declares else f"{scalar} = {cell};"
