@@ -24,6 +24,7 @@ from .alignment import MOST_TRIALS, settled
 from .build import build_tree
 from .copies import copied, copied_scalars
 from .kept import keepable
+from .reading import hidden_texts, reads_ahead
 from .schedule import INSIDE, merged, moments, placed, stays_whole
 from .units import Unit, moved_conditions, units
 
@@ -172,6 +173,8 @@ class _Court:
         yield from self._never_run()
         yield from self._shared_iterators()
         if not self.is_identity():
+            yield from reads_ahead(self._nest, self.plan)
+        if not self.is_identity():
             for loop in lost_iterators(self._nest):
                 yield Refusal(loop.span.line, loop.span.column, "iterator-after",
                               f"'{loop.iterator}' is used after the nest, and a condition decides whether its loop runs; declare "
@@ -268,6 +271,10 @@ class _Court:
         if assumption.ranges_known:
             return "the code does not state a fact that the verdict needs", assumption.text + (f" ({given})" if names else "")
         unknown = [name for name in names if touched(self._nest, self._nest.storage(name)) is None]
+        if not unknown:
+            hidden = ", ".join(hidden_texts(self._nest))
+            return (f"a test ahead of the nest might read what the original does not: only where a condition on data holds does "
+                    f"it read {hidden}", f"{assumption.text} (copy {hidden} to a variable before the nest)")
         return (f"which cells of {' and '.join(unknown)} the nest touches is not known before it runs, so that no test can "
                 f"tell whether {' and '.join(names)} overlap",
                 f"{assumption.text} (declare the pointers restrict or, {given})")
