@@ -179,8 +179,11 @@ class _Order:
         kept = frozenset(loop.symbol for loop in _printed(self.tree)
                          if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
         printer = Printer(self.source, self.nest, layout, style, loops, kept, heap)
-        lines = printer.nodes(layout.tree, Place(scope), indent)
-        return lines, printer.homeless
+        if not printer.declarations(layout.tree, Place(scope)):
+            return printer.nodes(layout.tree, Place(scope), indent), printer.homeless
+        # what the nest declares stays in a block of its own
+        lines = printer.nodes(layout.tree, Place(scope), indent + style.braced_step)
+        return [f"{indent}{{", *lines, f"{indent}}}"], printer.homeless
 
     def _assumptions(self) -> tuple[Assumption, ...]:
         """What the verdict rests on, and what the loops' bounds were worked out under."""
