@@ -188,11 +188,12 @@ class _Court:
     def _split_declarations(self) -> Iterator[Refusal]:
         """Variables that are declared with a value in a list of statements that not all of their uses get into."""
         for storage in self._nest.storages:
-            if storage.scope != "block" or storage.name in (*self._copied, *self.plan.kept) or self._reverses_reuse(storage.name):
+            if storage.scope != "block" or storage.name in (*self._copied, *self.plan.kept):
                 continue
             users = [s for s in self._nest.statements if any(a.storage == storage.name for a in s.accesses)]
             declared = next((s for s in users if _DECLARATION.match(s.text)), None)
-            if declared is not None and not all(self._within_reach(declared, user) for user in users):
+            reversed_anyway = storage.name in self._split and self._reverses_reuse(storage.name)
+            if declared is not None and not reversed_anyway and not all(self._within_reach(declared, user) for user in users):
                 yield Refusal(declared.line, declared.span.column, "declaration-split",
                               f"'{storage.name}' is declared in a block that the plan takes apart; declare it before the nest")
 
