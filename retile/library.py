@@ -32,11 +32,11 @@ class OpenFile:
         """The file's name as it was given."""
         return self.source.path
 
-    def nests(self) -> tuple[Found, ...]:
-        """Every ``for`` of the file, in text order, ready or refused."""
+    def nests(self, *, inner: bool = True) -> tuple[Found, ...]:
+        """Every ``for`` of the file, in text order, ready or refused; without ``inner`` the outermost ones only."""
         from .nest import read_nests
 
-        return read_nests(self.source)
+        return read_nests(self.source, inner=inner)
 
     def nest(self, line: int, column: int | None = None, *, assume: Sequence[str] = (),
              distinct: Sequence[str] = ()) -> OpenNest:

@@ -9,7 +9,7 @@ from __future__ import annotations
 from enum import Enum
 from typing import Any
 
-from .affine import Affine, Bound, Formula
+from .affine import Affine, AllOf, Bound, Formula
 from .tree import Buffer, Loop
 from .values import dataclass
 
@@ -87,6 +87,9 @@ class Parameter:
     text: str  # the C expression that yields it inside the function: ``n``, ``g->n``, ``(n > 4 ? n : 4)``
     type: CType
     kind: str  # ``argument``, ``local``, ``global``, ``member``, ``outer iterator``, ``expression``
+    # Over other parameters: where it holds the nest surely evaluates the text, so that it may be evaluated ahead of the
+    # nest.  False (an empty ``AnyOf``) for what reads memory or may trap, and stands under a condition on data.
+    readable: Formula = AllOf()
 
 
 class StorageKind(Enum):
@@ -129,6 +132,7 @@ class Storage:
     # For a member of structures in an array (``t.x``) the array of whole structures that it lies in, with the first of
     # its subscripts: their distance in memory is that of the structures.
     whole: Storage | None = None
+    readable: Formula = AllOf()  # where the address may be computed ahead of the nest, as for a parameter
 
 
 class Syntax:
@@ -224,13 +228,15 @@ class Assumption:
     condition: Formula | None = None  # the fact over parameters, for all codes but no-overlap, unchanged and other
     storages: tuple[str, ...] = ()  # the two that must not overlap, for no-overlap and unchanged; the one whose rows must not
     given: bool = False  # the user vouches for it
-    ranges_known: bool = True  # for two storages: which of their cells the nest touches is known ahead of it
+    # False if the test would need what is not known ahead of the nest: which cells it touches of the two storages, or
+    # what it reads from memory under a condition on data.
+    ranges_known: bool = True
 
     @property
     def testable(self) -> bool:
         """True if the variant can test it when the function is called."""
-        return self.code is not AssumptionCode.OTHER and \
-            (self.condition is not None or len(self.storages) == 2 and self.ranges_known)
+        return self.code is not AssumptionCode.OTHER and self.ranges_known and \
+            (self.condition is not None or len(self.storages) == 2)
 
 
 @dataclass(frozen=True)

@@ -234,7 +234,7 @@ def _where(formulas: tuple[Formula, ...]) -> Region:
     return Region(isl.Set.read_from_str(_CONTEXT, text))
 
 
-@lru_cache(maxsize=4096)
+@lru_cache(maxsize=1 << 14)
 def _both(one: Region, other: Region) -> Region:
     return Region(one._set.intersect(other._set))
 

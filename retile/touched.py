@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from .affine import Affine, Formula, at_most, equal
+from .affine import Affine, AnyOf, Formula, at_most, equal, formula_names
 from .model import Access, Assumption, AssumptionCode, CType, Nest, Statement, Storage
 from .sets import Region
 from .values import dataclass, replace
@@ -27,17 +27,31 @@ WHOLE = Touched((), ())
 
 
 def with_known_ranges(nest: Nest) -> Nest:
-    """The nest with a mark on every assumption of two storages of which one's touched cells are not known."""
+    """The nest with a mark on every assumption whose test would need what is not known ahead of the nest.
+
+    That is: of two storages the touched cells of one; or a size that may only be read where data says so.
+    """
     pairs = [a for a in nest.assumptions if a.code in (AssumptionCode.NO_OVERLAP, AssumptionCode.UNCHANGED)
              and len(a.storages) == 2]
-    if not pairs:
+    hidden = {p.symbol for p in nest.parameters if p.readable == AnyOf()}
+    if not pairs and not hidden:
         return nest
     region = _defined(nest)
-    known = {name: touched(nest, nest.storage(name), region) is not None
+    known = {name: _is_known(nest, nest.storage(name), region, hidden)
              for name in dict.fromkeys(name for pair in pairs for name in pair.storages)}
-    assumptions = tuple(replace(a, ranges_known=all(known[name] for name in a.storages)) if a in pairs else a
+    assumptions = tuple(replace(a, ranges_known=all(known[name] for name in a.storages) if a in pairs
+                                else a.condition is None or not formula_names(a.condition) & hidden)
                         for a in nest.assumptions)
     return nest if assumptions == nest.assumptions else replace(nest, assumptions=assumptions)
+
+
+def _is_known(nest: Nest, storage: Storage, region: Region, hidden: set[str]) -> bool:
+    found = touched(nest, storage, region)
+    if found is None or storage.readable == AnyOf():
+        return False
+    texts = [p.text for p in nest.parameters if p.symbol in hidden]
+    strides = not any(text in stride for text in texts for stride in storage.strides)
+    return strides and not any(form.names() & hidden for form in (*found.lows, *found.highs))
 
 
 def touched(nest: Nest, storage: Storage, region: Region | None = None) -> Touched | None:

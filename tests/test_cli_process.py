@@ -342,21 +342,3 @@ def test_interrupting_ends_with_130(tmp_path):
     out, err = process.communicate(timeout=120)
     assert process.returncode == 130
     assert b"Traceback" not in err
-
-
-# ---------------------------------------------------------------- speed
-
-@pytest.mark.benchmark
-@pytest.mark.parametrize("arguments, limit", [
-    (["--help"], 0.2), (["check", "--help"], 0.2), (["nests", "samples_c/relax.c"], 0.3),
-    (["check", BEAMS, "k:64 j:256 i k j"], 0.3), (["check", EIGHT, "j i"], 0.3)])
-def test_answers_come_at_once(arguments, limit):
-    best = min(_seconds(arguments) for _ in range(5))
-    print(f"\nretile {' '.join(arguments)}: {best:.3f} s (limit {limit} s)")
-    assert best < limit
-
-
-def _seconds(arguments):
-    start = time.perf_counter()
-    retile(*arguments)
-    return time.perf_counter() - start

@@ -9,7 +9,7 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from rewriting import SANITIZERS, case_of, compile_and_run, compilers, together
+from rewriting import HEADERS, SANITIZERS, case_of, compile_and_run, compilers, renamed, together
 
 MEMBERS = """struct node { double w[6]; double v[4]; };
 void survey(int n, struct node *t, const double *from)
@@ -106,3 +106,148 @@ int main(void) {
     variant = case_of(tmp_path, SOLID).variant("i:4 j i k")
     assert "* m * p" in variant.nest_text
     compile_and_run(tmp_path, together(SOLID, [variant.text], main))
+
+
+# Nests that read a bound, a pointer or a quotient inside outer loops: with no round of those, nothing may be read.
+# What follows: plans, and calls with which the original reads nothing.  ``nothing`` is a page that must not be touched.
+READERS = {
+    "a member": ("""void survey(int n, struct grid *g, int *from)
+{
+    for (int r = 0; r < n; r++)
+        for (int c = 0; c < g->cols; c++)
+            g->depth[r * g->cols + c] += from[c];
+}
+""", ("c r", "c:8 r c", "r:4 c:3 r c"), ("CALL(0, NULL, NULL)", "CALL(-7, NULL, NULL)", "CALL(INT_MIN, nothing, nothing)")),
+    "a member that the outer loops are bounded by": ("""void survey(int n, struct grid *g, struct grid *h)
+{
+    for (int r = 0; r < g->rows; r++)
+        for (int c = 0; c < h->cols; c++)
+            h->depth[r * h->cols + c] += 1 + g->depth[r];
+}
+""", ("c r", "c:8 r c"), ("CALL(0, &empty, NULL)", "CALL(0, &empty, nothing)")),
+    "the end of an array": ("""void survey(int n, int *limits, int *restrict to)
+{
+    for (int r = 0; r < n; r++)
+        for (int k = limits[0]; k < limits[1]; k++)
+            to[k] = to[k] * 3 + r;
+}
+""", ("k r", "k:4 r k"), ("CALL(0, NULL, NULL)", "CALL(0, one_cell, nothing)", "CALL(-1, one_cell + 1, NULL)")),
+    "behind a condition on sizes": ("""void survey(int n, int *limits, int *to)
+{
+    for (int r = 0; r < n; r++)
+        if (r > 2)
+            for (int k = 0; k < limits[1]; k++)
+                to[k] = to[k] * 3 + r;
+}
+""", ("k r", "k:4 r k", "r:4 k:4 r k"), ("CALL(3, NULL, NULL)", "CALL(0, one_cell, NULL)", "CALL(3, one_cell, nothing)")),
+    "the second of two conditions": ("""void survey(int n, int *limits, int *restrict to)
+{
+    for (int r = 0; r < 3; r++)
+        for (int k = 0; k < n && k < limits[1]; k++)
+            to[k] = to[k] * 3 + r;
+}
+""", ("k r", "k:4 r k"), ("CALL(0, NULL, NULL)", "CALL(-5, one_cell, nothing)")),
+    "a pointer behind a pointer": ("""void survey(int n, struct grid *g, int *from)
+{
+    for (int r = 0; r < n; r++)
+        for (int c = 0; c < g->next->cols; c++)
+            g->next->depth[c] += from[r + c];
+}
+""", ("c r", "c:8 r c"), ("CALL(0, NULL, NULL)", "CALL(0, nothing, nothing)")),
+    "an array in a structure": ("""void survey(int n, struct grid *g, int *from)
+{
+    for (int r = 0; r < n; r++)
+        for (int c = 0; c < 6; c++)
+            g->row[c] += from[r + c];
+}
+""", ("c r", "c:4 r c"), ("CALL(0, NULL, NULL)", "CALL(0, nothing, nothing)")),
+    "a quotient": ("""void survey(int n, int *per, int *from)
+{
+    for (int r = 0; r < n; r++)
+        for (int c = 0; c < 24 / *per; c++)
+            from[c] = from[c] * 3 + r;
+}
+""", ("c r", "c:4 r c"), ("CALL(0, &zero, NULL)", "CALL(0, NULL, NULL)")),
+    "a sum that may overflow, under the loop over r": ("""void survey(int n, int *per, int *from)
+{
+    const int from_row = per[0], rows = per[1];
+    for (int r = 0; r < n; r++)
+        for (int c = (from_row > 3 ? from_row * 2 : from_row + 5); c < rows; c++)
+            from[c] = from[c] * 3 + r;
+}
+""", ("c r", "c:4 r c"), ("CALL(0, largest, NULL)",)),
+    "a row length": ("""void survey(int n, struct grid *g, int *from)
+{
+    for (int r = 0; r < n; r++)
+        for (int c = 0; c < 4; c++)
+            from[r * (g->cols + 1) + c] = from[r * (g->cols + 1) + c] * 3 + g->depth[c * g->cols + r];
+}
+""", ("c r", "c:3 r c"), ("CALL(0, NULL, NULL)", "CALL(0, nothing, nothing)")),
+    "two sweeps": ("""void survey(int n, int *limits, int *restrict to)
+{
+    for (int r = 0; r < n; r++) {
+        to[r] = r;
+        for (int k = 0; k < limits[1]; k++)
+            to[r] = to[r] * 3 + k;
+    }
+}
+""", ("k:4 r k", "k r", "r:3 k:4 r k"), ("CALL(0, NULL, NULL)", "CALL(0, one_cell, nothing)")),
+}
+
+READERS_HEAD = """#include <sys/mman.h>
+struct grid { int rows, cols, row[8]; int *depth; struct grid *next; };
+"""
+
+READERS_MAIN = """
+static int one[900], two[900];
+static void fill(int *of)
+{
+    for (int k = 0; k < 900; k++)
+        of[k] = k * 7 % 31;
+}
+int main(void) {
+    int zero = 0, largest[2] = { INT_MAX, INT_MAX }, *one_cell = malloc(sizeof(int));
+    struct grid empty = { 0, 3, { 0 }, NULL, NULL };
+    void *nothing = mmap(NULL, 4096, PROT_NONE, MAP_PRIVATE | MAP_ANONYMOUS, -1, 0);
+    *one_cell = 2;
+    CALLS
+    free(one_cell);
+    for (int n = -1; n < 14; n++)
+        for (int cols = -1; cols < 9; cols++) {
+            SAME
+        }
+    return 0;
+}
+"""
+
+# The same call of the original and a variant, on structures or plain numbers in memory of their own.
+SAME_GRIDS = """{
+            fill(one); fill(two);
+            struct grid other = { n, cols, { 9, 8, 7 }, one + 300, NULL }, its = { n, cols, { 9, 8, 7 }, one + 40, &other };
+            struct grid other2 = { n, cols, { 9, 8, 7 }, two + 300, NULL }, its2 = { n, cols, { 9, 8, 7 }, two + 40, &other2 };
+            ORIGINAL(n, (void *)&its, (void *)(THIRD_ONE)); VARIANT(n, (void *)&its2, (void *)(THIRD_TWO));
+            if (memcmp(one, two, sizeof one) || memcmp(its.row, its2.row, sizeof its.row)) { puts("VARIANT"); return 1; }
+            }"""
+SAME_LIMITS = """{
+            int limits[3] = { 1, cols < 1 ? 1 : cols, cols };
+            fill(one); fill(two);
+            ORIGINAL(n, limits, one); VARIANT(n, limits, two);
+            if (memcmp(one, two, sizeof one)) { puts("VARIANT"); return 1; }
+            }"""
+
+
+@pytest.mark.parametrize("compiler", compilers())
+def test_nothing_is_read_that_the_original_does_not_read(compiler: str, tmp_path: Path) -> None:
+    functions, calls, same = [], [], []
+    for number, (text, plans, without) in enumerate(READERS.values()):
+        case = case_of(tmp_path, READERS_HEAD + text)
+        names = [f"original{number}", *(f"variant{number}_{at}" for at in range(len(plans)))]
+        texts = [text, *(case.variant(plan).text for plan in plans)]
+        functions += [renamed(one[one.index("void survey"):], "survey", name) for one, name in zip(texts, names, strict=True)]
+        for name in names:
+            calls += [f'fputs("{name}\\n", stderr);', *(call.replace("CALL", name) + ";" for call in without)]
+        third = ("&its", "&its2") if "*h)" in text else ("one + 600", "two + 600")
+        pattern = SAME_GRIDS.replace("THIRD_ONE", third[0]).replace("THIRD_TWO", third[1]) if "grid" in text else SAME_LIMITS
+        same += [pattern.replace("ORIGINAL", names[0]).replace("VARIANT", name) for name in names[1:]]
+    main = READERS_MAIN.replace("CALLS", "\n    ".join(calls)).replace("SAME", "\n".join(same))
+    compile_and_run(tmp_path, READERS_HEAD + HEADERS + "\n".join(functions) + main, compiler=compiler, warnings=("-std=gnu11", "-w"))

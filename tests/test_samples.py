@@ -83,3 +83,8 @@ def test_a_refusal_points_at_its_place_in_the_text(name):
             assert said[0].startswith(f"{SAMPLES / name}:{refusal.line}:{refusal.column}: ")
             assert said[1].strip() == (SAMPLES / name).read_text().splitlines()[refusal.line - 1].strip()
             assert said[2].strip() == "^"
+
+
+@pytest.mark.parametrize("name", EXPECTED)
+def test_the_outermost_loops_alone_are_the_same_nests(name):
+    assert opened(name).nests(inner=False) == tuple(one for one in opened(name).nests() if one.outermost)

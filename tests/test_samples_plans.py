@@ -3,11 +3,9 @@
 import atexit
 import shutil
 import tempfile
-import time
 from functools import cache
 from pathlib import Path
 
-import command_line
 import oracle
 import pytest
 from command_line import SAMPLES
@@ -146,21 +144,3 @@ def test_many_legal_variants_compute_the_same(name):
 @pytest.mark.parametrize("name", NAMES)
 def test_many_witnesses_are_real(name):
     witnesses_are_real(name, 40)
-
-
-@pytest.mark.benchmark
-def test_a_check_of_any_sample_takes_less_than_half_a_second():
-    slow = []
-    for name, nest in ready().items():
-        for plan in plans(nest.nest, 6):
-            best = min(_seconds(nest, plan) for _ in range(3))
-            print(f"{best:6.3f} s  {name} {plan}")
-            if best >= 0.5:
-                slow.append((name, plan, round(best, 2)))
-    assert slow == []
-
-
-def _seconds(nest: OpenNest, plan: str) -> float:
-    start = time.perf_counter()
-    command_line.retile("check", str(nest.address), plan)
-    return time.perf_counter() - start

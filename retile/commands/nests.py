@@ -15,9 +15,10 @@ def run(files: tuple[str, ...], compiling: CompilerOptions, *, every: bool, as_j
     from ..library import OpenFile
     from ..source import open_source
 
-    found = [one for file in files for one in OpenFile(open_source(file, compiling.call_for(file))).nests()]
+    found = [one for file in files
+             for one in OpenFile(open_source(file, compiling.call_for(file))).nests(inner=every or as_json)]
     if as_json:
         print_document(of_nests(found))
     else:
-        print_lines(nests_lines([one for one in found if every or one.outermost], look_of(sys.stdout)))
+        print_lines(nests_lines(found, look_of(sys.stdout)))
     return 0

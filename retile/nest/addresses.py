@@ -114,10 +114,13 @@ class _File:
         return Found(address, loop.function.decl.name, loop.outermost, names, nest, refusals)
 
 
-def read_nests(source: Source) -> tuple[Found, ...]:
-    """Every ``for`` of the file, in text order, each as a nest of its own or refused; RetileError if C is malformed."""
+def read_nests(source: Source, *, inner: bool = True) -> tuple[Found, ...]:
+    """Every ``for`` of the file, in text order, each as a nest of its own or refused; RetileError if C is malformed.
+
+    Without ``inner`` only those that stand in no other ``for``.
+    """
     file = _File(source)
-    return tuple(file.read(loop) for loop in file.loops)
+    return tuple(file.read(loop) for loop in file.loops if inner or loop.outermost)
 
 
 def read_nest(source: Source, line: int, column: int | None = None) -> Found:

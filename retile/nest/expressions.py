@@ -271,7 +271,7 @@ class Expressions:
             return None
         if not self._setting.frozen_expression(node, context):
             return None
-        symbol = self._setting.expression_parameter(c_text(node), type_)
+        symbol = self._setting.expression_parameter(node, type_)
         for fact in self._division_facts(node, symbol, context):
             self._setting.add_fact(fact, context, node)
         return Value(Poly.of(symbol), type_, True)

@@ -193,7 +193,7 @@ class Loops:
             return first
         if not self._setting.means_the_same_ahead(node):
             return first
-        symbol = Affine.of(self._setting.expression_parameter(c_text(node), type_))
+        symbol = Affine.of(self._setting.expression_parameter(node, type_))
         self._setting.add_fact(AllOf((at_least_bound(symbol, first), at_most_bound(symbol, first))), context, node)
         return symbol
 

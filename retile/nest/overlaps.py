@@ -7,6 +7,7 @@ strict aliasing is not relied on, since many programs are built without it.
 
 from __future__ import annotations
 
+import re
 from typing import Any
 
 from pycparser import c_ast
@@ -147,7 +148,7 @@ class _Overlaps:
             None,
             (),
             True,
-            f"&{text}",
+            text[1:] if re.fullmatch(r"\*\w+", text) else f"&{text}",
         )
 
     def _hold(self, held: list[_Held]) -> None:

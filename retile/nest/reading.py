@@ -8,6 +8,7 @@ from ..affine import AnyOf, Formula
 from ..model import Access, Address, Assumption, AssumptionCode, LoopText, Nest, Refusal, Statement
 from ..source import Source
 from ..touched import with_known_ranges
+from .evaluated import with_readable
 from .expressions import Expressions
 from .headers import loop_text
 from .knowledge import Knowledge, Obligation
@@ -131,6 +132,7 @@ class NestReader:
         span = self._source.span(self._nest)
         assert span is not None
         statements = tuple(self._statement(number, walk, stored) for number in range(len(walk.statements)))
+        parameters, storages = with_readable(setting, walk.evaluated, setting.knowledge.parameters.values(), stored.storages)
         return with_known_ranges(Nest(
             self._address,
             self._function.decl.name,
@@ -138,8 +140,8 @@ class NestReader:
             walk.tree,  # type: ignore[arg-type]
             self._loops(setting, walk),
             statements,
-            tuple(setting.knowledge.parameters.values()),
-            tuple(stored.storages),
+            parameters,
+            storages,
             tuple(setting.knowledge.facts),
             assumptions,
             self._source.identifiers,

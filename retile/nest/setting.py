@@ -54,6 +54,7 @@ class Setting:
         self.obligations: dict[Obligation, None] = {}
         self.definitions: dict[Binding, Definition] = {}
         self.held: dict[str, Place] = {}  # cells in memory that must keep their values, by C text
+        self.opaque: dict[str, Any] = {}  # expressions that are parameters, by symbol
         self.held_variables: dict[Binding, None] = {}  # variables that must, and that a pointer might reach
         self.factors: dict[Symbol, Poly] = {}  # sums of parameters kept whole, such as the ``m + 1`` of a row
         # Products in fewer bits than an address has, with their types and where they stand.
@@ -190,8 +191,10 @@ class Setting:
             for one in descendants(node)
         )
 
-    def expression_parameter(self, text: str, type_: CType) -> str:
+    def expression_parameter(self, node: Any, type_: CType) -> str:
         """The parameter for an expression that keeps its value."""
+        text = c_text(node)
+        self.opaque[text] = node
         plain = text if text.replace("_", "a").isalnum() else f"({text})"
         return self.knowledge.add_parameter(Parameter(text, plain, type_, "expression"))
 

@@ -7,7 +7,7 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import Affine, Formula, negate
+from ..affine import Affine, AllOf, Formula, at_least_bound, at_most_bound, negate
 from ..model import Refusal, Span
 from ..source.kinds import ArrayOf, PointerTo
 from ..tree import Guard, Leaf, Loop, Node
@@ -16,6 +16,7 @@ from .bounds import Bounds
 from .conditions import Conditions
 from .context import Context
 from .effects import Effects, Touch
+from .evaluated import Evaluated
 from .headers import origin_of, spans_of
 from .hiding import hidden_names
 from .loops import Header, Loops
@@ -88,6 +89,7 @@ class Walk:
         self.loops: list[RawLoop] = []
         self.statements: list[RawStatement] = []
         self.refusals: list[Refusal] = []
+        self.evaluated: list[Evaluated] = []  # all expressions, in the order of the text
         self.block_declared: dict[Binding, tuple[str, ...]] = {}  # loops around the declaration
         self.ids = loop_ids(nest, setting)
         setting.loop_ids.update(self.ids.values())
@@ -178,6 +180,7 @@ class Walk:
             return ()
         if binding.kind == "local":
             self.block_declared[binding] = context.loops
+            self.evaluated.append(Evaluated(decl.init, context))
         type_ = setting.type_of_binding(binding)
         if isinstance(type_, ArrayOf) and setting.size_of(type_) is None:
             raise refused(
@@ -197,6 +200,7 @@ class Walk:
 
     def _expression(self, node: Any, context: Context) -> tuple[Node, ...]:
         setting = self.setting
+        self.evaluated.append(Evaluated(node, context))
         binding = None
         if isinstance(node, c_ast.Assignment) and node.op == "=" and isinstance(node.lvalue, c_ast.ID):
             binding = setting.names.of(node.lvalue)
@@ -244,6 +248,7 @@ class Walk:
         if span is None:
             raise refused(node, "macro", "the `if` comes out of a macro, so it has no text of its own; write it out.")
         condition = self._conditions.known(node.cond, context)
+        self.evaluated.append(Evaluated(node.cond, context))
         nodes: list[Node] = []
         if condition is None:
             touches = self._effects.of(node.cond, context)
@@ -284,6 +289,9 @@ class Walk:
             )
         origin = origin_of(header)
         self.loops.append(RawLoop(id, node, header, spans, context))
+        at = Affine.of(id)
+        start = context.inside(id, header.binding, AllOf((at_least_bound(at, header.first), at_most_bound(at, header.first))))
+        self.evaluated += [Evaluated(header.first_node, context), Evaluated(node.cond, context if header.before_first else start)]
         inside = context.inside(id, header.binding, header.constraint(id, origin))
         body = self._node(node.stmt, inside.block(node.stmt))
         lower, upper = (header.first, header.last) if header.step > 0 else (header.last, header.first)

@@ -50,16 +50,22 @@ def _distinct(plan: Plan, candidates: Iterable[tuple[Term, ...]], original: tupl
         text = " ".join(term_text(term) for term in terms)
         bare = [term.loop for term in terms if term.chunk is None]
         changed = len(bare) < len(terms) or bare != [id for id in original if id in bare]
-        if text in seen or not changed:
+        if text in seen or not changed or _chunk_inside(terms):
             continue
         seen.add(text)
         yield text, terms
 
 
+def _chunk_inside(terms: tuple[Term, ...]) -> bool:
+    """True if a chunk of a loop stands to the right of the loop's single iterations, which no plan may say."""
+    return any(term.chunk is not None and replace(term, chunk=None, start=0, end=0) in
+               [replace(before, start=0, end=0) for before in terms[:at]] for at, term in enumerate(terms))
+
+
 def _bounded(nest: Nest, plan: Plan) -> Iterator[tuple[Term, ...]]:
     """The terms with chunks in front that bound how many values of the interrupted scalars wait at a time."""
     loops = dict.fromkeys(loop for storage in nest.storages
-                          if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
+                          if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage, nest)
                           for loop in storage.private_to)
     own = {loop: next((term for term in plan.terms if term.chunk is not None and term.form == ((loop, 1),)),
                       Term(((loop, 1),), _WAITING, 0, 0)) for loop in loops}

@@ -21,7 +21,7 @@ from .schedule import stays_whole
 def copied(nest: Nest, plan: Plan) -> tuple[str, ...]:
     """Ids of the statements that the plan runs more than once, because it takes apart the iterations they belong to."""
     found = Counter(statement.id for storage in nest.storages
-                    if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
+                    if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage, nest)
                     for statement in (_only_writer(storage, nest),) if statement is not None)
     # Each scalar that it writes must be free to be written again.
     return tuple(id for id, count in found.items() if count == sum(a.write for a in nest.statement(id).accesses))

@@ -48,7 +48,7 @@ class Keeping:
 def keepable(nest: Nest, plan: Plan) -> tuple[str, ...]:
     """Names of the private scalars that the plan interrupts and a small array could keep."""
     return tuple(storage.name for storage in nest.storages
-                 if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage.private_to)
+                 if storage.scalar is ScalarClass.PRIVATE and not stays_whole(plan, storage, nest)
                  and keeping(nest, plan, storage) is not None)
 
 

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 
 from ..affine import Affine
-from ..model import LoopText, Nest, Place, Plan, Statement, Term
+from ..model import LoopText, Nest, Place, Plan, Statement, Storage, Term
 from ..order import Coordinate, Cut
 from ..values import replace
 
@@ -36,13 +36,18 @@ def last_bare(plan: Plan, loops: tuple[str, ...]) -> int:
     return max((at for at, term in enumerate(plan.terms) if term.chunk is None and term.loop in loops), default=-1)
 
 
-def stays_whole(plan: Plan, loops: tuple[str, ...]) -> bool:
-    """True if one iteration of these loops runs to its end before another one starts.
+def stays_whole(plan: Plan, storage: Storage, nest: Nest) -> bool:
+    """True if one iteration of the loops that a value is private to runs to its end before another one starts.
 
     It does if no other loop stands in the plan before the last bare term of these: for ``i`` and the plan
-    ``i:8 i k`` it stays whole, with ``i:8 k:8 i k`` it is cut by the chunks of ``k``.
+    ``i:8 i k`` it stays whole, with ``i:8 k:8 i k`` it is cut by the chunks of ``k``.  Loops that all users of the value
+    stand before, or all stand after, do not come between them.
     """
-    return all(loop in loops for term in plan.terms[:last_bare(plan, loops) + 1] for loop, _ in term.form)
+    terms = plan.terms[:last_bare(plan, storage.private_to) + 1]
+    others = [term for term in terms if any(loop not in storage.private_to for loop, _ in term.form)]
+    users = [s for s in nest.statements if any(a.storage == storage.name for a in s.accesses)] if others else []
+    sides = [{_place(term, user, nest, plan).position for user in users} for term in others]
+    return all(len(side) == 1 and INSIDE not in side for side in sides)
 
 
 def _place(term: Term, statement: Statement, nest: Nest, plan: Plan) -> Place:

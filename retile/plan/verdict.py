@@ -8,6 +8,7 @@ pair is a witness: it is shown at the smallest sizes at which it happens.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Iterator
 
 from ..affine import Affine, AllOf, at_most
@@ -24,11 +25,15 @@ from .alignment import MOST_TRIALS, settled
 from .build import build_tree
 from .copies import copied, copied_scalars
 from .kept import keepable, kept_from
+from .reading import hidden_texts, reads_ahead
 from .schedule import INSIDE, merged, moments, placed, stays_whole
 from .units import Unit, moved_conditions, units
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
 _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
+
+# The first words of a statement that declares something: two names, or two with stars between.
+_DECLARATION = re.compile(r"[A-Za-z_]\w*(\s+|\s*\*[\s*]*)[A-Za-z_]")
 
 
 def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
@@ -121,7 +126,7 @@ class _Court:
         self._copied = copied_scalars(nest, plan)
         # Private scalars whose iterations the plan takes apart: their storage is not theirs alone.
         self._split = {name for name in {edge.storage for edge in dependences.reuse} - self._copied - set(plan.kept)
-                       if not stays_whole(plan, nest.storage(name).private_to)}
+                       if not stays_whole(plan, nest.storage(name), nest)}
 
     def wrong(self, edges: Iterable[Edge]) -> tuple[Edge, ...]:
         """Those of the edges that the plan reverses."""
@@ -169,29 +174,47 @@ class _Court:
 
     def refusals(self) -> Iterator[Refusal]:
         """What the plan asks for that cannot be written down in C without changing the user's text."""
+        if self.is_identity():
+            return
         yield from self._never_run()
         yield from self._shared_iterators()
-        if not self.is_identity():
-            for loop in lost_iterators(self._nest):
-                yield Refusal(loop.span.line, loop.span.column, "iterator-after",
-                              f"'{loop.iterator}' is used after the nest, and a condition decides whether its loop runs; declare "
-                              "it in the 'for', or set it after the nest yourself")
+        yield from reads_ahead(self._nest, self.plan)
+        for loop in lost_iterators(self._nest):
+            yield Refusal(loop.span.line, loop.span.column, "iterator-after",
+                          f"'{loop.iterator}' is used after the nest, and a condition decides whether its loop runs; declare "
+                          "it in the 'for', or set it after the nest yourself")
+        yield from self._held_beyond_chunks()
+        yield from self._split_declarations()
+
+    def _held_beyond_chunks(self) -> Iterator[Refusal]:
+        """Scalars to hold of which nobody knows how many values wait."""
         for name, level in self.plan.inner:
             if name in self.plan.kept and kept_from(self._nest, self.plan, self._nest.storage(name), level) is None:
-                yield Refusal(self._nest.statements[0].line, 1, "buffer", f"how many values of '{name}' it has to hold is not "
+                first = self._nest.statements[0]
+                yield Refusal(first.line, first.span.column, "buffer", f"how many values of '{name}' it has to hold is not "
                               "known; put chunks of the loops that it is private to further out in the plan")
-        for name in sorted(self._split):
-            if self._nest.storage(name).scope != "block":
+
+    def _split_declarations(self) -> Iterator[Refusal]:
+        """Variables that are declared with a value in a list of statements that not all of their uses get into."""
+        for storage in self._nest.storages:
+            if storage.scope != "block" or storage.name in (*self._copied, *self.plan.kept):
                 continue
-            users = [s for s in self._nest.statements if any(a.storage == name for a in s.accesses)]
-            if len({self._split_of(s) for s in users}) > 1 and not self._reverses_reuse(name):
-                yield Refusal(users[0].line, users[0].span.column, "declaration-split",
-                              f"'{name}' is declared in a block that the plan takes apart; declare it before the nest")
+            users = [s for s in self._nest.statements if any(a.storage == storage.name for a in s.accesses)]
+            declared = next((s for s in users if _DECLARATION.match(s.text)), None)
+            reversed_anyway = storage.name in self._split and self._reverses_reuse(storage.name)
+            if declared is not None and not reversed_anyway and not all(self._within_reach(declared, user) for user in users):
+                yield Refusal(declared.line, declared.span.column, "declaration-split",
+                              f"'{storage.name}' is declared in a block that the plan takes apart; declare it before the nest")
+
+    def _within_reach(self, declared: Statement, user: Statement) -> bool:
+        """True if a statement gets into the list in which a declaration stands, or further in."""
+        one, other = (self._split_of(statement) for statement in (declared, user))
+        same = next((at for at, (a, b) in enumerate(zip(one, other, strict=True)) if a != b), len(one))
+        aligned = any(alignment.statement == declared.id for alignment in self.plan.aligned)
+        return declared is user or (INSIDE not in one[same:] and not aligned)
 
     def _never_run(self) -> Iterator[Refusal]:
         """Statements for which no bounds can be written: no sizes at which the nest is defined let them run."""
-        if self.is_identity():
-            return
         for place in occurrences(self._nest.tree):
             statement = self._nest.statement(place.leaf.statement)
             loops = Region.where(*(loop.constraints() for loop in place.loops))
@@ -272,6 +295,10 @@ class _Court:
         if assumption.ranges_known:
             return "the code does not state a fact that the verdict needs", assumption.text + (f" ({given})" if names else "")
         unknown = [name for name in names if touched(self._nest, self._nest.storage(name)) is None]
+        if not unknown:
+            hidden = ", ".join(hidden_texts(self._nest))
+            return (f"a test ahead of the nest might read what the original does not: only where a condition on data holds does "
+                    f"it read {hidden}", f"{assumption.text} (copy {hidden} to a variable before the nest)")
         return (f"which cells of {' and '.join(unknown)} the nest touches is not known before it runs, so that no test can "
                 f"tell whether {' and '.join(names)} overlap",
                 f"{assumption.text} (declare the pointers restrict or, {given})")

@@ -13,7 +13,7 @@ from __future__ import annotations
 
 import re
 
-from ..affine import Affine, AllOf, Constraint, Formula
+from ..affine import Affine, AllOf, Constraint, Formula, formula_names
 from ..model import (
     Assumption,
     AssumptionCode,
@@ -22,8 +22,10 @@ from ..model import (
     RetileError,
     Storage,
 )
+from ..sets import Region
 from ..touched import Touched, reached, touched
 from ..values import dataclass, replace
+from .ahead import Ahead, address_of, conjunction, parts_of, stands_in
 from .expression import UNARY, NoRoom, Scope, condition, written
 from .extents import ADDRESS, Arithmetic
 from .names import Names
@@ -39,13 +41,22 @@ class Tests:
 
     declarations: tuple[str, ...]
     conditions: tuple[str, ...]
+    ahead: tuple[Formula, ...] = ()  # those among the conditions that say where the original reads what the others need
+    fallback: bool = True  # False if the original has nothing to do where they fail
 
 
-def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, names: Names) -> Tests:
-    """The tests of some assumptions; RetileError if one cannot be tested."""
+def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, names: Names,
+             leading: tuple[Formula, ...] = ()) -> Tests:
+    """The tests of some assumptions, after the ``leading`` conditions; RetileError if one cannot be tested."""
     tested = [a for a in assumptions if a.testable or not a.given]
     known = [a.condition for a in tested if a.condition is not None and not _apart(a)]
     ranges = _Ranges(nest, scope, scope.knowing(*known) if known else scope, names)
+    read = [name for fact in known if not scope.implies(fact) for name in sorted(formula_names(fact))]
+    for assumption in filter(_apart, tested):
+        read += ranges.measure(assumption)
+    ahead = (*leading, *ranges.ahead.needed(read, scope.region & Region.where(*leading)))
+    first = parts_of(ahead, scope)
+    scope = scope.knowing(*ahead) if ahead else scope
     conditions: list[str] = []
     for assumption in tested:
         if _apart(assumption):
@@ -55,7 +66,9 @@ def tests_of(nest: Nest, assumptions: tuple[Assumption, ...], scope: Scope, name
                 if not scope.implies(part):
                     conditions.append(condition(part, scope).text)
                     scope = scope.knowing(part)
-    return Tests(tuple(ranges.declarations), (*ranges.signs, *dict.fromkeys(conditions)))
+    idle = all(ranges.ahead.idle_without(statement.id, ahead) for statement in nest.statements) and \
+        not any(loop.iterator_live_after for loop in nest.loops) if ahead and not ranges.signs and not conditions else False
+    return Tests(tuple(ranges.declarations), (*first, *ranges.signs, *dict.fromkeys(conditions)), ahead, not idle)
 
 
 def _apart(assumption: Assumption) -> bool:
@@ -68,6 +81,14 @@ def _parts(assumption: Assumption) -> tuple[Formula, ...]:
     return assumption.condition.parts if isinstance(assumption.condition, AllOf) else (assumption.condition,)
 
 
+def _name_for(text: str) -> str:
+    """``g_cols`` for ``g->cols``, ``per_value`` for ``*per``."""
+    words = re.findall(r"\w+", text.replace("(long long)", "").replace("(unsigned long long)", ""))
+    while words and words[0][0].isdigit():
+        words.pop(0)
+    return "_".join(words) if len(words) > 1 else f"{words[0]}_value" if words else "value"
+
+
 class _Ranges:
     def __init__(self, nest: Nest, scope: Scope, tested: Scope, names: Names) -> None:
         """``tested``: the scope where all other tests hold."""
@@ -75,7 +96,9 @@ class _Ranges:
         self._scope = scope
         self._tested = tested
         self._names = names
-        self._arithmetic = Arithmetic(scope)
+        self.ahead = Ahead(nest)
+        self._copied: dict[str, str] = {}  # what may not be read everywhere, by C text: the name of its copy
+        self._arithmetic = Arithmetic(scope, texts=self._copied)
         self._named: dict[str, tuple[str, str]] = {}
         self.declarations: list[str] = []
         self.signs: list[str] = []
@@ -83,22 +106,53 @@ class _Ranges:
     def apart(self, assumption: Assumption) -> str:
         """The condition that two storages' touched bytes lie apart."""
         one, other = assumption.storages
-        first, second = self._range(one, assumption), self._range(other, assumption)
+        first, second = self._named[one], self._named[other]
         return f"{first[1]} <= {second[0]} || {second[1]} <= {first[0]}"
 
-    def _range(self, name: str, assumption: Assumption) -> tuple[str, str]:
-        """The names of the addresses of a storage's first touched byte and of the one behind its last."""
-        if name not in self._named:
-            storage, low, high = self._extent(self._nest.storage(name), assumption)
-            word = "_".join(re.findall(r"\w+", name)) + ("_pointer" if name.startswith("&") else "")
-            begin, end = self._names.fresh(f"{word}_begin"), self._names.fresh(f"{word}_end")
-            base = f"(uintptr_t){written(storage.pointer_text or name, ADDRESS).at(UNARY)}"
-            size = self._size(storage)
-            start = base if low == "0" else f"{base} + {self._times(low, size)}"
-            self.declarations += [f"const uintptr_t {begin} = {start};",
-                                  f"const uintptr_t {end} = {begin if low == '0' else base} + {self._times(high, size)};"]
-            self._named[name] = (begin, end)
-        return self._named[name]
+    def measure(self, assumption: Assumption) -> list[str]:
+        """Declare the addresses of the first touched byte of two storages, and of the one behind the last."""
+        return [name for storage in assumption.storages if storage not in self._named
+                for name in self._declare(storage, assumption)]
+
+    def _declare(self, name: str, assumption: Assumption) -> list[str]:
+        """The declarations of one storage; gives the parameters and addresses that they read."""
+        own = self._nest.storage(name)
+        found = self._touched(own, assumption)
+        read = self._copy_of(own, found)
+        storage, low, high = self._extent(own, found)
+        word = "_".join(re.findall(r"\w+", name)) + ("_pointer" if name.startswith("&") else "")
+        begin, end = self._names.fresh(f"{word}_begin"), self._names.fresh(f"{word}_end")
+        base = f"(uintptr_t){written(storage.pointer_text or name, ADDRESS).at(UNARY)}"
+        size = self._size(storage)
+        asked = self.ahead.of_storage(name, self._scope.region) if storage is own else ()
+        if asked:  # a pointer in memory, or the address of what is in it
+            pointer = self._names.fresh(f"{word}_address") if low != "0" else begin
+            chosen = f"{conjunction(asked, self._scope)} ? {base} : 0"
+            base, start = pointer, pointer
+            if low != "0":
+                self.declarations.append(f"const uintptr_t {pointer} = {chosen};")
+        else:
+            chosen = start = base
+        start = chosen if low == "0" else f"{start} + {self._times(low, size)}"
+        self.declarations += [f"const uintptr_t {begin} = {start};",
+                              f"const uintptr_t {end} = {begin if low == '0' else base} + {self._times(high, size)};"]
+        self._named[name] = (begin, end)
+        return [*read, *([address_of(name)] if asked else [])]
+
+    def _copy_of(self, storage: Storage, found: Touched) -> list[str]:
+        """Declare copies of what a range needs and may not be read everywhere; gives the parameters that it needs."""
+        extents = [extent for extent in storage.shape if extent is not None]
+        symbols = {name for form in (*found.lows, *found.highs, *extents) for name in form.names()}
+        texts = [p.text for p in self._nest.parameters if p.symbol in symbols] + list(storage.strides)
+        read = [p for p in self._nest.parameters if any(stands_in(p.text, text) for text in texts)]
+        for parameter in sorted(read, key=lambda p: -len(p.text)):
+            asked = self.ahead.needed((parameter.symbol,), self._scope.region)
+            if asked and any(stands_in(parameter.text, self._arithmetic.replaced(text)) for text in texts):
+                name = self._names.fresh(_name_for(parameter.text))
+                value = f"{conjunction(asked, self._scope)} ? {parameter.text} : 0"
+                self.declarations.append(f"const {parameter.type.spelling} {name} = {value};")
+                self._copied[parameter.text] = name
+        return [parameter.symbol for parameter in read]
 
     @staticmethod
     def _times(count: str, size: str) -> str:
@@ -118,11 +172,14 @@ class _Ranges:
                 else f"sizeof *{written(text, ADDRESS).at(UNARY)}"
         return str(storage.element_bytes)
 
-    def _extent(self, storage: Storage, assumption: Assumption) -> tuple[Storage, str, str]:
-        """What the range is counted in, its first touched element, and the one behind the last."""
+    def _touched(self, storage: Storage, assumption: Assumption) -> Touched:
         found = touched(self._nest, storage, self._scope.region)
         if found is None:
             raise self._untestable(storage, assumption)
+        return found
+
+    def _extent(self, storage: Storage, found: Touched) -> tuple[Storage, str, str]:
+        """What the range is counted in, its first touched element, and the one behind the last."""
         if not found.lows:
             extents = [extent for extent in storage.shape if extent is not None]
             return storage, "0", " * ".join(map(self._arithmetic.whole, extents)) or "1"
@@ -158,7 +215,7 @@ class _Ranges:
             parameter = next((p for p in self._nest.parameters if p.text == text), None)
             if parameter is not None and parameter.type.signed and \
                     not self._tested.implies(Constraint(Affine.of(parameter.symbol))):
-                self._note(f"{text} >= 0")
+                self._note(f"{self._copied.get(text, text)} >= 0")
 
     def _note_wrap(self, storage: Storage, found: Touched, whole: Storage, lows: list[Affine], highs: list[Affine]) -> None:
         """A range that may be larger than what is touched must not wrap around."""

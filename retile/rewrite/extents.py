@@ -11,11 +11,12 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from types import MappingProxyType
 
 from ..affine import Affine, Floor
 from ..model import CType, Storage
-from .expression import UNARY, Expression, Scope, express, written
+from ..values import dataclass
+from .expression import UNARY, Scope, express, written
 
 ADDRESS = CType("uintptr_t", 64, False)
 _ATOM = re.compile(r"[\w.\[\]]+(?:->[\w.\[\]]+)*\Z")
@@ -27,7 +28,7 @@ class Arithmetic:
 
     scope: Scope
     type: str = ADDRESS.spelling
-    texts: Mapping[str, str] = field(default_factory=dict)
+    texts: Mapping[str, str] = MappingProxyType({})
 
     # ------------------------------------------------------------ strides
 
@@ -53,13 +54,13 @@ class Arithmetic:
     def _factor(self, text: str) -> str:
         text = text.strip()
         if _ATOM.match(text):
-            return self._replaced(text)
+            return self.replaced(text)
         inner = text[1:-1] if text.startswith("(") and _closes_last(text) else text
         if inner == text or re.match(r"\((?:unsigned )?long long\)", inner):
-            return f"({self.type})({self._replaced(inner)})"
+            return f"({self.type})({self.replaced(inner)})"
         terms = split(inner, "+-")
         if len(terms) == 1 and len(split(inner, "*")) == 1:
-            return f"({self.type})({self._replaced(inner)})"
+            return f"({self.type})({self.replaced(inner)})"
         return f"({self._terms(terms)})"
 
     def _terms(self, terms: Sequence[tuple[str, str]]) -> str:
@@ -74,7 +75,8 @@ class Arithmetic:
                 text += f" {sign} {cast}{product}"
         return text
 
-    def _replaced(self, text: str) -> str:
+    def replaced(self, text: str) -> str:
+        """The text with its parts as they are written here."""
         for old, new in self.texts.items():
             text = re.sub(rf"(?<![\w.>]){re.escape(old)}(?!\w)", new, text)
         return text
@@ -126,7 +128,7 @@ class Arithmetic:
     def operand(self, symbol: str) -> str:
         """A parameter's text."""
         known = self.scope.operands[symbol]
-        replaced = self._replaced(known.text)
+        replaced = self.replaced(known.text)
         return (known if replaced == known.text else written(replaced, known.type)).at(UNARY)
 
 
@@ -149,6 +151,3 @@ def _closes_last(text: str) -> bool:
         if depth == 0:
             return at == len(text) - 1
     return False
-
-
-__all__ = ["ADDRESS", "Arithmetic", "Expression", "split"]

@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, field
+from itertools import takewhile
 
 from ..affine import Affine
 from ..model import LoopText, Nest, RetileError
@@ -47,6 +48,15 @@ class Remarks:
     after: list[tuple[int, int]] = field(default_factory=list)  # behind the end of the loop
 
 
+@dataclass(frozen=True)
+class Loose:
+    """A declaration without a value that no piece takes along: it goes to the start of a list that holds all of its block."""
+
+    extent: tuple[int, int]
+    pieces: frozenset[tuple[int, int] | str]  # spans of the pieces of its block, and the loops whose iterator it declares
+    loop: str  # the loop whose body the block is; empty for none
+
+
 class NestText:
     """The user's text of a nest and its structure."""
 
@@ -73,7 +83,11 @@ class NestText:
         guards = {node.span[0] for node in _nodes(tree) if isinstance(node, Guard) and node.span is not None}
         self._guards = guards
         self._spans = {node.span for node in _nodes(tree) if isinstance(node, Verbatim)}
+        self._block_names = _block_names(nest)
+        # they are declared anew wherever a value is fetched
+        self._kept_names = {nest.storage(node.scalar).object for node in _nodes(tree) if isinstance(node, Kept)}
         self._pieces = {span: self._widened(span) for span in self._spans}
+        self.loose = tuple(self._loose(self._root))
 
     # ---------------------------------------------------------------- extents
 
@@ -137,16 +151,51 @@ class NestText:
             raise InternalError(f"{self._nest.address}: a piece of the nest is not made of whole statements")
         first, last = siblings.index(inside[0]), siblings.index(inside[-1])
         # statements that no piece names (declarations, empty ones) go with the piece behind them, or else before them
-        while first > 0 and not self._taken(siblings[first - 1]):
+        own = self._start(inside[0]), self._end(inside[-1])
+        while first > 0 and not self._taken(siblings[first - 1]) and self._goes_along(siblings[first - 1], siblings, own):
             first -= 1
         if not self._followed(siblings, last + 1):
-            last += self._free(siblings, last + 1)
+            free = siblings[last + 1:last + 1 + self._free(siblings, last + 1)]
+            last += len(list(takewhile(lambda shape: self._goes_along(shape, siblings, own), free)))
         start, end = self._start(siblings[first]), self._end(siblings[last])
         if opening is not None and closing is not None:
             before = self._end(siblings[first - 1]) if first else self._solid[opening].end
             after = self._start(siblings[last + 1]) if last + 1 < len(siblings) else self._solid[closing].start
             start, end = self._with_comments(start, end, before, after, last + 1 == len(siblings))
         return start, end
+
+    def _goes_along(self, shape: Shape, siblings: tuple[Shape, ...], piece: tuple[int, int]) -> bool:
+        """True if only a piece of the block uses what a statement declares."""
+        names = {token.text for token in self._solid[shape.start:shape.end + 1]} & self._block_names
+        uses = [token for other in siblings if other is not shape for token in self._solid[other.start:other.end + 1]
+                if token.text in names]
+        inside = {token.text for token in uses if piece[0] <= token.start < piece[1]}
+        return all(piece[0] <= token.start < piece[1] or token.text in self._kept_names & inside for token in uses)
+
+    def _loose(self, shape: Shape, loop: str = "") -> Iterator[Loose]:
+        """The declarations, of a statement that is taken apart, that no piece takes along."""
+        if shape.kind == "for":
+            loop = next(loop.id for loop in self._nest.loops if loop.span.start == self._start(shape))
+        if shape.kind == "compound":
+            pieces = frozenset(span for span in self._spans if self._covers(shape, span))
+            ends = [self._solid[shape.start].end, *map(self._end, shape.children)]
+            starts = [*map(self._start, shape.children), self._solid[shape.end].start]
+            for at, child in enumerate(shape.children):
+                if child.kind == "simple" and self._end(child) - self._start(child) > 1 and not self._is_covered(child):
+                    extent = self._with_comments(starts[at], ends[at + 1], ends[at], starts[at + 1], False)
+                    yield Loose(extent, pieces | self._run_with(child), loop)
+        for child in shape.children:
+            if self._holds_named(child):
+                yield from self._loose(child, loop)
+
+    def _run_with(self, declaration: Shape) -> frozenset[str]:
+        """The loops of the plan that count with a variable of a declaration."""
+        names = {token.text for token in self._solid[declaration.start:declaration.end + 1]}
+        return frozenset(loop.id for loop in self._nest.loops if loop.iterator in names and not loop.declared_in_for
+                         and loop.span.start in self._named)
+
+    def _is_covered(self, shape: Shape) -> bool:
+        return any(start <= self._start(shape) < end for start, end in self._pieces.values())
 
     def _taken(self, shape: Shape) -> bool:
         """True if a loop of the plan or a piece of text stands in a statement."""
@@ -288,7 +337,7 @@ class NestText:
         ``kept_headers``: ids of the loops whose headers are printed with the comments in them.
         """
         kept = [(loop.header.start, loop.header.end) for loop in self._nest.loops if loop.id in set(kept_headers)]
-        covered = [*self._pieces.values(), *kept]
+        covered = [*self._pieces.values(), *(loose.extent for loose in self.loose), *kept]
         found: dict[str, Remarks] = defaultdict(Remarks)
         for token in self._tokens:
             if token.kind in ("comment", "directive") and not any(a <= token.start < b for a, b in covered):
@@ -359,6 +408,12 @@ class NestText:
             if token.kind != "comment" or not all(line.startswith(old) for line in lines if line.strip()):
                 fixed.update(starts)
         return fixed
+
+
+def _block_names(nest: Nest) -> set[str]:
+    """Names of variables that may be declared inside the nest."""
+    stored = {storage.object for storage in nest.storages if storage.scope == "block"}
+    return stored | {loop.iterator for loop in nest.loops if not loop.declared_in_for}
 
 
 def replaced(text: str, start: int, changes: Iterable[tuple[int, int, str]]) -> str:

@@ -30,6 +30,7 @@ from ..affine import (
 from ..model import CType, LoopText, Nest
 from ..tree import Loop, Node, Role, loops_of
 from ..values import replace
+from .ahead import Ahead, conjunction
 from .bounds import (
     Limit,
     far_bound,
@@ -142,6 +143,7 @@ class Elements(ABC):
         self._nest = nest
         self._layout = layout
         self._names = names
+        self._ahead = Ahead(nest)
         self._chosen: dict[object, str] = {}
         self._ids = {loop.id for loop in nest.loops}
         self._source = {loop.of: loop for loop in loops_of(nest.tree)}
@@ -191,6 +193,11 @@ class Elements(ABC):
     def open(self, loop: Loop, place: Place) -> Opened:
         """A loop's header and the declarations around it; raises NoRoom."""
         place = self._reached(loop, place)
+        ahead = self._ahead.of_loop(loop, place.scope.region)
+        if ahead:
+            opened = self.open(loop, replace(place, scope=place.scope.knowing(*ahead)))
+            first = conjunction(ahead, place.scope)
+            return replace(opened, outside=place, condition=f"{first} && {opened.condition}" if opened.condition else first)
         if loop.role is Role.CHUNK:
             return self._chunk(loop, place)
         if loop.symbol in self._ids:

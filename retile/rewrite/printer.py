@@ -16,7 +16,7 @@ from ..values import replace
 from .buffered import Array, Change, Heap, array_name, constant_dimensions, served, with_values
 from .chunks import Loops
 from .expression import Expression, condition
-from .layout import InternalError, NestText, Remarks, instances, replaced
+from .layout import InternalError, Loose, NestText, Remarks, instances, replaced
 from .loops import Opened, Place
 from .style import WIDTH, Style
 
@@ -38,6 +38,7 @@ class Printer:
         self._loops = loops
         self._ids = {loop.id for loop in nest.loops}
         self._remarks = layout.remarks(kept)
+        self._declared: set[Loose] = set()  # in the blocks under way
 
     @property
     def homeless(self) -> list[str]:
@@ -45,8 +46,28 @@ class Printer:
         return [self._layout.text[start:end] for remarks in self._remarks.values()
                 for start, end in (*remarks.before, *remarks.behind, *remarks.after)]
 
+    def declarations(self, nodes: tuple[Node, ...], place: Place) -> tuple[Loose, ...]:
+        """The declarations that stand at the start of a list: further in, they would not reach all of their block."""
+        parts = [(node, frozenset(_uses((node,))), frozenset(_uses(children(node)))) for node in nodes]
+        found = []
+        for loose in self._layout.loose:
+            inside = [(node, within) for node, all_of_it, within in parts if all_of_it & loose.pieces]
+            further_in = loose.loop not in place.around and \
+                all(loose.pieces <= within and not isinstance(node, Verbatim) for node, within in inside)
+            if inside and not further_in and loose not in self._declared:
+                found.append(loose)
+        return tuple(found)
+
     def nodes(self, nodes: tuple[Node, ...], place: Place, indent: str) -> list[str]:
-        """The lines of some nodes that run one after the other."""
+        """The lines of some nodes that run one after the other, with the declarations that they need."""
+        declared = self.declarations(nodes, place)
+        lines = list(dict.fromkeys(indent + self._layout.moved(loose.extent, indent) for loose in declared))
+        self._declared.update(declared)
+        lines += self._nodes(nodes, place, indent)
+        self._declared.difference_update(declared)
+        return lines
+
+    def _nodes(self, nodes: tuple[Node, ...], place: Place, indent: str) -> list[str]:
         lines: list[str] = []
         at = 0
         while at < len(nodes):
@@ -259,7 +280,8 @@ class Printer:
         single = isinstance(only, Loop) and self._single(only)
         body += self._assigned(only, place, inner) if isinstance(only, Loop) and single else \
             self.nodes(loop.body, place, inner)
-        braced = self._surely_braced(loop, opened, bool(given)) or single or self._needs_braces(loop.body[0], body)
+        braced = self._surely_braced(loop, opened, bool(given)) or single or bool(self.declarations(loop.body, place)) or \
+            self._needs_braces(loop.body[0], body)
         return self._style.block(opened.header, body, indent, braced, behind)
 
     def _surely_braced(self, loop: Loop, opened: Opened, given: bool) -> bool:
@@ -352,6 +374,17 @@ class Printer:
             apart = replace(place, scope=place.scope.knowing(otherwise.condition))
             lines = self._style.otherwise(lines, self.nodes(otherwise.body, apart, inner), indent)
         return lines
+
+
+def _uses(nodes: tuple[Node, ...]) -> Iterator[tuple[int, int] | str]:
+    """The extents of the pieces of text in some nodes, and the symbols of their loops."""
+    for node in nodes:
+        if isinstance(node, Verbatim):
+            yield node.span
+        else:
+            if isinstance(node, Loop):
+                yield node.symbol
+            yield from _uses(children(node))
 
 
 def _leaves(nodes: tuple[Node, ...]) -> Iterator[Leaf]:

@@ -18,6 +18,7 @@ from ..sets import Region
 from ..tree import Loop, Node, Role, Verbatim, children, loops_of
 from ..values import dataclass, replace
 from .after import restored
+from .ahead import Ahead
 from .assumed import Tests, tests_of
 from .buffered import Heap
 from .chunks import Loops
@@ -155,15 +156,17 @@ class _Order:
         names = Names(self.nest.names_in_scope | {"uintptr_t", "size_t"})
         facts = tuple(a.condition for a in assumptions if a.condition is not None)
         indent = layout.indentation(self.nest.span.start)
-        tests = Tests((), ()) if self.trust else tests_of(self.nest, assumptions, before, names)
+        known = before.knowing(*facts) if facts else before
+        leading = Ahead(self.nest).leading(self.tree, known.region, _is_c90(self.source.call.flags))
+        tests = tests_of(self.nest, () if self.trust else assumptions, before, names, leading)
         heap = Heap(self.nest, self.tree, names, self.source.call.flags)
         guarded = bool(tests.conditions or heap)
         inner = indent + style.braced_step if guarded else indent
-        scope = before.knowing(*facts) if facts else before
+        scope = known.knowing(*tests.ahead) if tests.ahead else known
         lines, homeless = self._loops(layout, style, names, scope, inner, heap)
         kept = restored(self.nest, layout, style, scope, names, inner)
         lines = [*kept.ahead, *lines, *kept.behind]
-        remark = style.remark(self._remark(assumptions, bool(tests.conditions)), indent)
+        remark = style.remark(self._remark(assumptions, bool(tests.conditions) and not self.trust), indent)
         remark += [indent + text for text in homeless]
         if guarded:
             lines = self._guarded(tests, heap, lines, style, indent)
@@ -176,8 +179,11 @@ class _Order:
         kept = frozenset(loop.symbol for loop in _printed(self.tree)
                          if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
         printer = Printer(self.source, self.nest, layout, style, loops, kept, heap)
-        lines = printer.nodes(layout.tree, Place(scope), indent)
-        return lines, printer.homeless
+        if not printer.declarations(layout.tree, Place(scope)):
+            return printer.nodes(layout.tree, Place(scope), indent), printer.homeless
+        # what the nest declares stays in a block of its own
+        lines = printer.nodes(layout.tree, Place(scope), indent + style.braced_step)
+        return [f"{indent}{{", *lines, f"{indent}}}"], printer.homeless
 
     def _assumptions(self) -> tuple[Assumption, ...]:
         """What the verdict rests on, and what the loops' bounds were worked out under."""
@@ -189,14 +195,16 @@ class _Order:
     def _guarded(self, tests: Tests, heap: Heap, lines: list[str], style: Style, indent: str) -> list[str]:
         """The variant where the tests hold, else the original, which only moves to the right by whole lines."""
         inner = indent + style.braced_step
-        original = inner + self.layout.moved((self.nest.span.start, self.nest.span.end), inner)
         conditions = (*heap.conditions(), *tests.conditions)
         parts = [f"({part})" if " || " in part and len(conditions) > 1 else part for part in conditions]
         head = " && ".join(parts)
         if len(indent) + len(head) > WIDTH:
             head = f"{style.eol}{indent}{style.step}&& ".join(parts)
-        return [*(indent + line for line in (*tests.declarations, *heap.declarations())),
-                *style.otherwise(style.block(f"if ({head})", lines, indent), [original], indent),
+        block = style.block(f"if ({head})", lines, indent)
+        if tests.fallback or heap:
+            original = inner + self.layout.moved((self.nest.span.start, self.nest.span.end), inner)
+            block = style.otherwise(block, [original], indent)
+        return [*(indent + line for line in (*tests.declarations, *heap.declarations())), *block,
                 *(indent + line for line in heap.releases())]
 
     def _joined(self, remark: list[str], lines: list[str], style: Style, indent: str) -> str:
