@@ -326,6 +326,7 @@ class Plan:
     kept: tuple[str, ...] = ()  # private scalars whose values wait in a small array of the variant's own
     buffers: tuple[Buffer, ...] = ()  # outer ones first
     inner: tuple[tuple[str, int], ...] = ()  # kept scalars with an array of their own in the loops before a term
+    threaded: int | None = None  # the term whose loop's iterations threads share
     unrolled: tuple[str, ...] = ()  # loops whose full chunks are written out
 
     def places_of(self, statement: str) -> tuple[Place, ...]:

@@ -46,6 +46,9 @@ class _Runs:
         self.instance = tuple((name, form.substitute(self._own)) for name, form in occurrence.leaf.instance)
         self.region = (Region.where(*occurrence.conditions) & context).renamed(names)
         self.time: tuple[Coordinate, ...] = tuple(self._coordinate(moment) for moment in occurrence.time)
+        shared = {loop.symbol for loop in occurrence.loops if loop.unordered}
+        self.unordered = tuple(level for level, moment in enumerate(occurrence.time)
+                               if not isinstance(moment, int) and moment[0] in shared)
         # Per chunk loop of unknown size: its symbol in the tree, its value here, and the value here of what it cuts.
         standing = {name: form.substitute(self._own) for name, form in occurrence.leaf.aligned}
         self.cuts = {loop.symbol: (self._own[loop.symbol], loop.cut.substitute(standing | self._own))
@@ -157,6 +160,39 @@ def _disorder(edge: Edge, source: _Runs, target: _Runs) -> Iterator[Flaw]:
         shown = tuple(sorted((name, value) for name, value in point.items() if "~" not in name))
         yield Flaw(edge.source, f"its {edge.kind} dependence to {edge.target} on {edge.storage} is reversed", shown)
         return
+
+
+def free_of_races(tree: tuple[Node, ...], dependences: Dependences, private: Iterable[str] = ()) -> list[Flaw]:
+    """Question 2 for threads: dependences between iterations of one unordered loop; an empty list if there are none.
+
+    All edges count, also those on values whose order does not matter: two updates at once lose one.  ``private``: storages
+    of which every iteration has its own.
+    """
+    if not any(loop.unordered for loop in loops_of(tree)):
+        return []
+    runs = _runs(tree, dependences.context)
+    flaws: list[Flaw] = []
+    for edge in (edge for edge in dependences.edges if edge.storage not in set(private)):
+        for source in runs[edge.source]:
+            for target in runs[edge.target]:
+                flaws += _race(edge, source, target)
+    return flaws
+
+
+def _race(edge: Edge, source: _Runs, target: _Runs) -> Iterator[Flaw]:
+    levels = set(source.unordered) & set(target.unordered)
+    if not levels:
+        return
+    names = {name: name + "^" for name in target.symbols} if source is target else {}
+    pairs = edge.relation & source.as_instances() & target.as_instances("'").renamed(names)
+    marked = {name: Affine.of(other) for name, other in names.items()}
+    later = substituted(target.time, marked)
+    for level, found in (*first_differences(pairs, source.time, later), *first_differences(pairs, later, source.time)):
+        if level in levels:
+            point = found.sample() or {}
+            shown = tuple(sorted((name, value) for name, value in point.items() if "~" not in name))
+            yield Flaw(edge.source, f"threads race: its {edge.kind} dependence to {edge.target} on {edge.storage}", shown)
+            return
 
 
 def values_arrive(tree: tuple[Node, ...], nest: Nest, context: Region, copied: Iterable[str]) -> list[Flaw]:

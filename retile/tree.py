@@ -44,6 +44,7 @@ class Loop:
     named: str | None = None
     cut: Affine | None = None
     unrolled: bool = False  # one of the copies of a loop that is written out: it has a single value
+    unordered: bool = False  # its iterations run in any order, or at once: threads share them
 
     @property
     def length(self) -> Affine:

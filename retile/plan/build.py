@@ -27,6 +27,7 @@ from .buffers import reads_and_writes, served
 from .grammar import form_text
 from .kept import Keeping, kept_from, keeping
 from .schedule import AFTER, BEFORE, INSIDE, merged, placed, skewed_coordinate, standing
+from .threads import within_threads
 from .units import Unit, statements_in, units
 
 
@@ -58,7 +59,7 @@ class _Builder:
                 return self._nested(keep, around, members, level, known, outer)
         nodes = self._copying(self._parts(members, level, known, outer), level, members)
         for keep in owned:
-            nodes = (Kept(keep.scalar, keep.shape, nodes, keep.heap),)
+            nodes = (Kept(keep.scalar, keep.shape, nodes, keep.heap and not within_threads(self._plan, level)),)
         for buffer in reversed([buffer for buffer in self._plan.buffers if buffer.level == level]):
             nodes = self._buffered(nodes, buffer, members, known, outer)
         return nodes
@@ -76,7 +77,8 @@ class _Builder:
         fresh = any(self._starts_value(id, keep) for unit in users for id in statements_in(unit.nodes))
         fill, empty = ((self._moving(Copy(keep.scalar, keep.index, store, around=around.index), users, known, outer, terms),)
                        for store in (True, False))
-        return (Kept(keep.scalar, keep.shape, (*(() if fresh else fill), *nodes, *empty), keep.heap),)
+        return (Kept(keep.scalar, keep.shape, (*(() if fresh else fill), *nodes, *empty),
+                     keep.heap and not within_threads(self._plan, level)),)
 
     def _buffered(self, nodes: tuple[Node, ...], buffer: Buffer, members: tuple[Unit, ...], known: Region,
                   outer: tuple[Loop, ...]) -> tuple[Node, ...]:
@@ -254,7 +256,8 @@ class _Builder:
             values = Region.union(self._executed(unit, guarded=False).only(visible) for unit in own).coalesced()
         loop = self._bounded(term, symbol, values, known, outer)
         inner = known & Region.where(loop.constraints())
-        return replace(loop, body=self.group(members, level + 1, inner, (*outer, loop)))
+        return replace(loop, body=self.group(members, level + 1, inner, (*outer, loop)),
+                       unordered=level == self._plan.threaded)
 
     def _bounded(self, term: Term, symbol: str, values: Region, known: Region, outer: tuple[Loop, ...]) -> Loop:
         """A loop without a body that runs over the values, or over a few more where bounds cannot say it."""

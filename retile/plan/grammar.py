@@ -53,7 +53,7 @@ def parse_plan(text: str, nest: Nest) -> Plan:
     if options.words:
         written += "; " + ", ".join(f"{word} {value}" for word, value in options.words)
     return Plan(written, terms, options.words, aligned=options.aligned, unrolled=options.unrolled,
-                buffers=options.buffers, inner=options.inner)
+                buffers=options.buffers, inner=options.inner, threaded=options.threaded)
 
 
 def _loop_names(nest: Nest) -> str:

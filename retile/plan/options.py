@@ -4,6 +4,7 @@
            | "reassociate" ( "no" | "yes" )
            | "place" statement ( "at" | "with" ) loop "=" sum
            | "unroll" loop
+           | "threads" "at" loop [ ":" chunk ]
            | "hold" array "across" loop
            | "pack" array "at" loop ":" chunk
 
@@ -22,14 +23,14 @@ import re
 from ..affine import Affine
 from ..model import Alignment, Nest, RetileError, ScalarClass, Statement, StorageKind, Term
 from ..tree import Buffer
-from ..values import dataclass
+from ..values import dataclass, replace
 from .buffers import Unfit, buffer_of, references
 
 # The options with a fixed set of values.
 OPTIONS = {"remainder": ("clamp", "peel"), "reassociate": ("no", "yes")}
 
 _KNOWN = ", ".join([*(f"{word} {'|'.join(values)}" for word, values in OPTIONS.items()), "place LINE at LOOP = VALUE",
-                    "place LINE with LOOP = VALUE", "unroll LOOP", "hold ARRAY across LOOP", "pack ARRAY at LOOP:CHUNK"])
+                    "place LINE with LOOP = VALUE", "unroll LOOP", "hold ARRAY across LOOP", "pack ARRAY at LOOP:CHUNK", "threads at LOOP:CHUNK"])
 _BUFFER = re.compile(r"(hold|pack)\s+(\S+)\s+(across|at)\s+(\S+)")
 # Iterations of one loop that are written out at most.
 MOST_UNROLLED = 64
@@ -58,6 +59,7 @@ class Options:
     unrolled: tuple[str, ...] = ()
     buffers: tuple[Buffer, ...] = ()
     inner: tuple[tuple[str, int], ...] = ()  # scalars to hold, with the term around which
+    threaded: int | None = None
 
 
 def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple[Term, ...]) -> Options:
@@ -70,6 +72,7 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
     unrolled: list[str] = []
     buffers: list[Buffer] = []
     inner: list[tuple[str, int]] = []
+    threaded: int | None = None
     for match in re.finditer(r"[^,]+", text):
         option = match.group().strip()
         begin = start + match.start() + len(match.group()) - len(match.group().lstrip())
@@ -80,6 +83,8 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
             aligned.append(_alignment(plan, begin, option, nest, terms))
         elif word == "unroll" and value.strip():
             unrolled.append(_unrolled(plan, begin, option, value.strip(), terms))
+        elif word == "threads":
+            threaded = _threaded(plan, begin, option, terms)
         elif word in ("hold", "pack"):
             made = _buffer(plan, begin, option, nest, terms, buffers)
             if isinstance(made, Buffer):
@@ -91,11 +96,13 @@ def read_options(plan: PlanText, start: int, text: str, nest: Nest, terms: tuple
         elif word in dict(found):
             raise plan.complaint(begin, begin + len(option), f"option '{word}' stands twice", "Leave one of the two out.")
         found.append((word, " ".join(value.split())))
+    if threaded is not None:
+        buffers = [replace(buffer, heap=buffer.heap and buffer.level <= threaded) for buffer in buffers]
     buffers.sort(key=lambda buffer: buffer.level)
     if unrolled and ("remainder", "clamp") in found:
         raise plan.complaint(start, start + len(text), "only full chunks can be written out, and 'remainder clamp' has none",
                              "Leave 'remainder clamp' out.")
-    return Options(tuple(found), tuple(aligned), tuple(unrolled), tuple(buffers), tuple(inner))
+    return Options(tuple(found), tuple(aligned), tuple(unrolled), tuple(buffers), tuple(inner), threaded)
 
 
 def _unrolled(plan: PlanText, begin: int, option: str, loop: str, terms: tuple[Term, ...]) -> str:
@@ -107,6 +114,16 @@ def _unrolled(plan: PlanText, begin: int, option: str, loop: str, terms: tuple[T
         raise plan.complaint(begin, begin + len(option), f"{chunks[-2]} iterations of '{loop}' are too many to write out",
                              f"At most {MOST_UNROLLED}.")
     return loop
+
+
+def _threaded(plan: PlanText, begin: int, option: str, terms: tuple[Term, ...]) -> int:
+    written = {f"{term.loop}:{term.chunk}" if term.chunk is not None else term.loop: at for at, term in enumerate(terms)
+               if len(term.form) == 1}
+    match = re.fullmatch(r"threads\s+at\s+(\S+)", option)
+    if match is None or match.group(1) not in written:
+        raise plan.complaint(begin, begin + len(option), "this is no loop for threads",
+                             f"Write it like: threads at i:64. Terms here: {', '.join(written)}.")
+    return written[match.group(1)]
 
 
 def _buffer(plan: PlanText, begin: int, option: str, nest: Nest, terms: tuple[Term, ...], others: list[Buffer]) \

@@ -27,6 +27,7 @@ from .copies import copied, copied_scalars
 from .kept import keepable, kept_from
 from .reading import hidden_texts, reads_ahead
 from .schedule import INSIDE, merged, moments, placed, stays_whole
+from .threads import refusals as thread_refusals
 from .units import Unit, moved_conditions, units
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
@@ -44,8 +45,9 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
     if refusals:
         return Judgement(Verdict.REFUSED, plan, refusals=refusals)
     edges = court.binding_edges()
-    violations = tuple(court.violations(edges))
-    unproven = () if violations else tuple(court.unproven(edges))
+    raced = tuple(court.raced())
+    violations = (*court.violations(edges), *court.collisions(raced))
+    unproven = () if violations else (*court.unproven(edges), *court.undecided(raced))
     assumptions = tuple(court.needed_assumptions())
     verdict = Verdict.ILLEGAL if violations else Verdict.UNPROVEN if unproven else Verdict.LEGAL
     unfit = tuple(_unfit(nest, dependences, plan)) if verdict is Verdict.LEGAL and plan.buffers else ()
@@ -67,7 +69,8 @@ def _unfit(nest: Nest, dependences: Dependences, plan: Plan) -> Iterator[Refusal
 def is_legal(nest: Nest, dependences: Dependences, plan: Plan, trials: int = MOST_TRIALS) -> bool:
     """The verdict alone, without evidence; ``trials`` limits the search for other places, 0 for none."""
     court = _settled_court(nest, dependences, plan, trials)
-    return not any(court.refusals()) and not any(court.unsettled()) and not court.wrong(court.binding_edges())
+    return not any(court.refusals()) and not any(court.unsettled()) and \
+        not court.wrong(court.binding_edges()) and not any(court.raced())
 
 
 def binding_edges(nest: Nest, dependences: Dependences, plan: Plan) -> tuple[Edge, ...]:
@@ -184,6 +187,7 @@ class _Court:
                           f"'{loop.iterator}' is used after the nest, and a condition decides whether its loop runs; declare "
                           "it in the 'for', or set it after the nest yourself")
         yield from self._held_beyond_chunks()
+        yield from thread_refusals(self._nest, self.plan)
         yield from self._split_declarations()
 
     def _held_beyond_chunks(self) -> Iterator[Refusal]:
@@ -262,6 +266,38 @@ class _Court:
             if found is not None and self._separable(found.level):
                 yield self._witness(found)
 
+    def raced(self) -> Iterator[_Reversed]:
+        """The edges between iterations that threads share, in either direction, with their pairs."""
+        if self.plan.threaded is None:
+            return
+        level = 2 * self.plan.threaded + 1
+        for edge in self._dependences.edges:
+            if edge.storage in self._copied:
+                continue
+            for one in self._runs(self._nest.statement(edge.source)):
+                for other in self._runs(self._nest.statement(edge.target)):
+                    later = primed_vector(other.time, other.loops)
+                    found = [pairs for earlier, after in ((one.time, later), (later, one.time))
+                             for at, pairs in first_differences(edge.relation, earlier, after) if at == level]
+                    if found:
+                        yield _Reversed(edge, found[0], level)
+
+    def collisions(self, raced: tuple[_Reversed, ...]) -> Iterator[Violation]:
+        """One witness per edge between iterations that threads share."""
+        seen: set[int] = set()
+        for found in raced:
+            if found.edge.exact and id(found.edge) not in seen:
+                seen.add(id(found.edge))
+                yield self._witness(found)
+
+    def undecided(self, raced: tuple[_Reversed, ...]) -> Iterator[Unproven]:
+        """Pairs of iterations that threads share and that may touch one cell."""
+        for found in raced:
+            if not found.edge.exact:
+                yield Unproven(found.edge.source, found.edge.target, f"a subscript of {found.edge.storage} is not affine: two "
+                               "threads may touch one cell at once", f"that different iterations touch different cells of "
+                               f"{found.edge.storage}")
+
     def unproven(self, edges: tuple[Edge, ...]) -> Iterator[Unproven]:
         """Reversed pairs of accesses that may touch any cell, and assumptions that nobody can test."""
         for edge in edges:
@@ -323,7 +359,7 @@ class _Court:
         """True if the plan rests on an assumption; row lengths too, since the loops' bounds are built under them."""
         if assumption.code is AssumptionCode.NO_OVERLAP and len(assumption.storages) == 2:
             return self._could_reverse(*assumption.storages, reorders) or self._copy_reads(assumption.storages) or \
-                any(buffer.storage in assumption.storages for buffer in self.plan.buffers)
+                any(buffer.storage in assumption.storages for buffer in self.plan.buffers) or self.plan.threaded is not None
         return not self.is_identity()
 
     def _copy_reads(self, storages: tuple[str, ...]) -> bool:
@@ -332,7 +368,7 @@ class _Court:
 
     def is_identity(self) -> bool:
         """True if the plan is the original order, loop for loop, with no storage of its own."""
-        return not self.plan.buffers and all(term.chunk is None for term in self.plan.terms) and \
+        return not self.plan.buffers and self.plan.threaded is None and all(term.chunk is None for term in self.plan.terms) and \
             [term.loop for term in self.plan.terms] == \
             [loop.id for loop in self._nest.loops if loop.id in {term.loop for term in self.plan.terms}]
 

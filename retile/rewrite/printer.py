@@ -6,12 +6,13 @@ user's (``layout``, ``style``), headers come from ``loops``.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator
 
-from ..affine import Affine, equal, negate
-from ..model import LoopText, Nest, Statement
+from ..affine import Affine, bound_names, equal, negate
+from ..model import LoopText, Nest, RetileError, Statement, StorageKind
 from ..source import Source
-from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
+from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children, loops_of
 from ..values import replace
 from .buffered import Array, Change, Heap, array_name, constant_dimensions, served, with_values
 from .chunks import Loops
@@ -19,6 +20,10 @@ from .expression import Expression, condition
 from .layout import InternalError, Loose, NestText, Remarks, instances, replaced
 from .loops import Opened, Place
 from .style import WIDTH, Style
+
+# What OpenMP takes: OpenMP API 4.5, 2.6, "Canonical loop form".
+_CANONICAL = re.compile(r"\(\s*(?:[\w ]+\s)?(\w+)\s*=[^;]*;\s*\1\s*(?:<|>|<=|>=)[^;=]*;"
+                        r"\s*(?:\1\s*(?:\+\+|--|[-+]=\s*\d+)|(?:\+\+|--)\s*\1)\s*\)\s*$")
 
 
 class Printer:
@@ -282,7 +287,26 @@ class Printer:
             self.nodes(loop.body, place, inner)
         braced = self._surely_braced(loop, opened, bool(given)) or single or bool(self.declarations(loop.body, place)) or \
             self._needs_braces(loop.body[0], body)
-        return self._style.block(opened.header, body, indent, braced, behind)
+        shared = self._shared(loop, opened.header) if loop.unordered else []
+        return [*shared, *self._style.block(opened.header, body, indent, braced, behind)]
+
+    def _shared(self, loop: Loop, header: str) -> list[str]:
+        """The directive that lets threads share a loop, where the compiler takes such (OpenMP API 4.5, 2.7.1)."""
+        if not _CANONICAL.search(header):
+            raise RetileError(f"{self._nest.address}: threads cannot share the loop '{header}': OpenMP wants a loop that counts up or "
+                              "down by a constant to a bound that is compared. Put 'threads' at another loop.")
+        own = [name for name, form in ((inner.symbol, inner) for inner in loops_of(loop.body)) if name in self._ids]
+        iterators = [self._nest.loop(id).iterator for id in own if not self._nest.loop(id).declared_in_for]
+        written = {a.storage for leaf in _leaves(loop.body) for a in self._nest.statement(leaf.statement).accesses if a.write}
+        around = {word for loose in self._declared for word in re.findall(r"\w+", self._layout.text[slice(*loose.extent)])}
+        scalars = [self._variable(storage.name) for storage in self._nest.storages
+                   if storage.kind is StorageKind.SCALAR and storage.name in written
+                   and (storage.scope != "block" or self._variable(storage.name) in around)]
+        private = ", ".join(dict.fromkeys((*iterators, *scalars)))
+        uneven = any(loop.symbol in bound_names(bound) for inner in loops_of(loop.body) if inner.of != loop.of
+                     for bound in (inner.lower, inner.upper))
+        words = ["#pragma omp parallel for", *([f"private({private})"] if private else []), *(["schedule(dynamic)"] if uneven else [])]
+        return ["#ifdef _OPENMP", " ".join(words), "#endif"]
 
     def _surely_braced(self, loop: Loop, opened: Opened, given: bool) -> bool:
         """True if the body gets braces, as far as that shows before it is printed.

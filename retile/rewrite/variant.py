@@ -70,7 +70,7 @@ def diff(source: Source, variant: Variant) -> str:
 def is_original_order(nest: Nest, plan: Plan) -> bool:
     """True if the plan names loops in the order in which they stand, and cuts none."""
     names = [term.loop for term in plan.terms if len(term.form) == 1 and term.chunk is None and term.form[0][1] == 1]
-    if len(names) < len(plan.terms) or plan.buffers:
+    if len(names) < len(plan.terms) or plan.buffers or plan.threaded is not None:
         return False
     order = {loop.id: at for at, loop in enumerate(nest.loops)}
     return [order[name] for name in names] == sorted(order[name] for name in names)
@@ -91,8 +91,8 @@ def finished_tree(nest: Nest, dependences: Dependences, plan: Plan, remainder: s
 
 def check(tree: tuple[Node, ...], nest: Nest, dependences: Dependences, plan: Plan) -> None:
     """Ask the questions of a finished tree; InternalError, with the first flaw, if the answer to one is no."""
-    from ..plan import binding_edges, moved_conditions
-    from ..questions import order_kept, same_instances, values_arrive
+    from ..plan import binding_edges, copied_scalars, moved_conditions
+    from ..questions import free_of_races, order_kept, same_instances, values_arrive
     from ..reached import cells_reached
 
     context = dependences.context
@@ -100,7 +100,8 @@ def check(tree: tuple[Node, ...], nest: Nest, dependences: Dependences, plan: Pl
     flaws = [*same_instances(tree, nest, context, repeatable),
              *order_kept(tree, dependences, binding_edges(nest, dependences, plan)),
              *values_arrive(tree, nest, context, plan.copied),
-             *cells_reached(tree, nest, context)]
+             *cells_reached(tree, nest, context),
+             *free_of_races(tree, dependences, copied_scalars(nest, plan))]
     if flaws:
         raise InternalError(f"{nest.address}: the loops made for this plan are wrong, so nothing was written: {flaws[0]}.\n"
                             "This is a defect of retile; please report it with the nest and the plan.")
