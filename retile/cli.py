@@ -6,6 +6,7 @@ output; 130 interrupted.  An error of retile itself ends with 70 (``EX_SOFTWARE`
 
 from __future__ import annotations
 
+import gc
 import os
 import sys
 from collections.abc import Callable
@@ -18,6 +19,9 @@ from . import __version__
 if TYPE_CHECKING:
     from .commands.compiling import CompilerOptions
     from .commands.opening import Facts
+
+# What a call makes, it needs to its end: looking for garbage every few hundred objects would find none.
+gc.set_threshold(100_000)
 
 _BUG, _INTERRUPTED, _CLOSED_PIPE = 70, 130, 141
 _TRACEBACK = "RETILE_TRACEBACK"  # set to anything to see where an error of retile itself comes from

@@ -1,8 +1,8 @@
 """Brute force: what a nest does at given small sizes, and what a plan does to that order.
 
 ``verdict_at`` numbers the statement instances of a real execution by the plan's definition and looks at every pair that
-shares a cell; ``final_tags`` and ``compare`` judge a rewritten text against the original by what it computes.  No
-dependence theory, and nothing of the program under test.
+shares a cell: no dependence theory, and nothing of the program under test but the interpreter of its judge.
+``compare`` lets that judge compare a rewritten text with the original by what it computes.
 """
 
 from __future__ import annotations
@@ -15,10 +15,13 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 from oracle_run import Program
-from oracle_text import Undefined, Unsupported
-from oracle_values import Instance, LoopAt, TooLong, cell_name, tag_of
+from oracle_text import TooLong, Undefined, Unsupported, parallel_loops, parse
+from oracle_values import Instance, LoopAt, cell_name
+from retile.judge.judge import Judge, Setting
+from retile.judge.program import Program as Judged
+from retile.judge.tags import Book
 
-__all__ = ["Aligned", "Clash", "Log", "Outcome", "TooLong", "Undefined", "Unsupported", "compare", "final_tags",
+__all__ = ["Aligned", "Clash", "Log", "Outcome", "TooLong", "Undefined", "Unsupported", "compare", "judge_of",
            "observe", "parse_terms", "times_of", "verdict_at"]
 
 
@@ -253,42 +256,21 @@ def _stale_reads(instances: Log, times: list[tuple]) -> list[Clash]:
 # ---------------------------------------------------------------- tags
 
 
-@dataclass(frozen=True)
-class Tags:
-    """What a call leaves behind: a tag for every cell that it wrote, and the cells of the caller that it touched."""
-
-    values: dict[str, int]
-    touched: frozenset
-    result: int | None
+@functools.lru_cache(maxsize=16)
+def judge_of(original: str, function: str, directory: Path | None = None) -> Judge:
+    """The judge for variants of a text; the original runs once per sizes, whatever the number of variants."""
+    return Judge(Judged(parse(original, directory), Book()), function)
 
 
-def final_tags(text: str, function: str, sizes: dict[str, int], *, steps: int = 200_000,
-               directory: Path | None = None) -> Tags:
-    """Run a function; the tags of all cells that outlive it (see oracle_values)."""
-    machine = _program(text, None, directory).run(function, sizes, steps=steps)
-    values = {}
-    for obj in machine.objects:
-        for offset, value in obj.cells.items():
-            if (obj.name, offset) in machine.written:
-                values[f"{obj.name}+{offset}"] = tag_of(value)
-    result = None if machine.result is None else tag_of(machine.result)
-    return Tags(values, frozenset(machine.read | machine.written), result)
+@functools.lru_cache(maxsize=64)
+def _variant(judge: Judge, text: str, directory: Path | None) -> Judged:
+    return Judged(parse(text, directory), judge.book, parallel_loops(text))
 
 
 def compare(original: str, variant: str, function: str, sizes: dict[str, int], *, steps: int = 200_000,
-            directory: Path | None = None) -> list[str]:
+            directory: Path | None = None, reassociate: bool = False) -> list[str]:
     """What is wrong with the variant at these sizes; empty if nothing.  Raises Undefined if the original is."""
-    before = final_tags(original, function, sizes, steps=steps, directory=directory)
-    try:
-        after = final_tags(variant, function, sizes, steps=4 * steps, directory=directory)
-    except Undefined as problem:
-        return [f"the variant is undefined: {problem}"]
-    except TooLong:
-        return ["the variant does not end"]
-    wrong = [f"{cell} is written by only one of them" for cell in sorted(before.values.keys() ^ after.values.keys())]
-    wrong += [f"{cell} gets another value" for cell in sorted(before.values.keys() & after.values.keys())
-              if before.values[cell] != after.values[cell]]
-    wrong += [f"the variant touches {cell}" for cell in sorted(after.touched - before.touched)]
-    if before.result != after.result:
-        wrong.append("the function returns another value")
-    return wrong
+    judge = judge_of(original, function, directory)
+    judge.steps = steps
+    program = _variant(judge, variant, directory)
+    return judge.compare(program, Setting.of(sizes), judge.rules(program, reassociate))

@@ -1,6 +1,6 @@
-"""The oracle's way from C text to a syntax tree, and its own idea of C types (LP64).
+"""The oracle's way from C text to a syntax tree.
 
-Nothing here is shared with the program under test except pycparser.
+Nothing here is shared with the front end of the program under test except pycparser.
 """
 
 from __future__ import annotations
@@ -8,137 +8,15 @@ from __future__ import annotations
 import functools
 import re
 import subprocess
-from dataclasses import dataclass, field
 from pathlib import Path
 
 from pycparser import c_ast, c_parser
 
+from retile.judge.kinds import DOUBLE, INT, LONG, NAMED, UCHAR, UINT, ULONG, TooLong, Undefined, Unsupported, common
+from retile.judge.reading import parallel_loops
 
-class Unsupported(Exception):
-    """The oracle does not know this piece of C."""
-
-
-class Undefined(Exception):
-    """The execution is undefined in C: a subscript outside its extent, a signed overflow, a value never set."""
-
-
-# ---------------------------------------------------------------- types
-
-
-@dataclass(frozen=True)
-class Number:
-    """An arithmetic type."""
-
-    name: str
-    size: int  # bytes
-    signed: bool = True
-    floating: bool = False
-    rank: int = 0
-
-    @property
-    def low(self) -> int:
-        return -(1 << (8 * self.size - 1)) if self.signed else 0
-
-    @property
-    def high(self) -> int:
-        return (1 << (8 * self.size - (1 if self.signed else 0))) - 1
-
-
-@dataclass(frozen=True)
-class Void:
-    size: int = 1
-
-
-@dataclass(frozen=True)
-class Pointer:
-    to: object
-    extent: object = None  # declared extent of a parameter written as an array: an int or a Slot
-    size: int = 8
-
-
-@dataclass(frozen=True)
-class Slot:
-    """An array length that a frame keeps, computed when the declaration was executed."""
-
-    index: int
-
-
-@dataclass(frozen=True)
-class Array:
-    of: object
-    length: object  # int, Slot, or None where only the initialiser tells
-
-
-@dataclass
-class Struct:
-    name: str
-    members: dict = field(default_factory=dict)  # name -> (offset, type)
-    size: int = 0
-    complete: bool = False
-
-
-@dataclass(frozen=True)
-class Function:
-    returns: object
-
-
-CHAR = Number("char", 1, rank=1)
-SCHAR = Number("signed char", 1, rank=1)
-UCHAR = Number("unsigned char", 1, False, rank=1)
-BOOL = Number("_Bool", 1, False, rank=0)
-SHORT = Number("short", 2, rank=2)
-USHORT = Number("unsigned short", 2, False, rank=2)
-INT = Number("int", 4, rank=3)
-UINT = Number("unsigned int", 4, False, rank=3)
-LONG = Number("long", 8, rank=4)
-ULONG = Number("unsigned long", 8, False, rank=4)
-LLONG = Number("long long", 8, rank=5)
-ULLONG = Number("unsigned long long", 8, False, rank=5)
-FLOAT = Number("float", 4, floating=True, rank=10)
-DOUBLE = Number("double", 8, floating=True, rank=11)
-LDOUBLE = Number("long double", 16, floating=True, rank=12)
-
-NAMED: dict[str, object] = {
-    "size_t": ULONG, "ssize_t": LONG, "ptrdiff_t": LONG, "intptr_t": LONG, "uintptr_t": ULONG, "bool": BOOL,
-    "int8_t": SCHAR, "uint8_t": UCHAR, "int16_t": SHORT, "uint16_t": USHORT, "int32_t": INT, "uint32_t": UINT,
-    "int64_t": LONG, "uint64_t": ULONG, "intmax_t": LONG, "uintmax_t": ULONG,
-}
-
-
-def basic_type(words: list[str]) -> Number | Void:
-    """The type that the words of a declaration name, in any order."""
-    kinds = sorted(word for word in words if word not in ("int", "signed", "unsigned"))
-    unsigned = "unsigned" in words
-    table = {
-        (): (INT, UINT), ("char",): (SCHAR if "signed" in words else CHAR, UCHAR), ("short",): (SHORT, USHORT),
-        ("long",): (LONG, ULONG), ("long", "long"): (LLONG, ULLONG), ("float",): (FLOAT,) * 2,
-        ("double",): (DOUBLE,) * 2,
-        ("double", "long"): (LDOUBLE,) * 2, ("_Bool",): (BOOL,) * 2, ("void",): (Void(),) * 2,
-    }
-    if tuple(kinds) not in table:
-        raise Unsupported(f"type {' '.join(words)}")
-    return table[tuple(kinds)][1 if unsigned else 0]
-
-
-def promoted(kind: Number) -> Number:
-    """C11 6.3.1.1: what a small integer becomes in arithmetic."""
-    return INT if not kind.floating and kind.rank < INT.rank else kind
-
-
-def common(a: Number, b: Number) -> Number:
-    """C11 6.3.1.8, the usual arithmetic conversions."""
-    if a.floating or b.floating:
-        return max((k for k in (a, b) if k.floating), key=lambda k: k.rank)
-    a, b = promoted(a), promoted(b)
-    if a.signed == b.signed:
-        return a if a.rank >= b.rank else b
-    unsigned, signed = (a, b) if b.signed else (b, a)
-    if unsigned.rank >= signed.rank:
-        return unsigned
-    if signed.size > unsigned.size:
-        return signed
-    return {LONG: ULONG, LLONG: ULLONG, INT: UINT}[signed]
-
+__all__ = ["DOUBLE", "INT", "LONG", "NAMED", "UCHAR", "UINT", "ULONG", "TooLong", "Undefined", "Unsupported", "common",
+           "parallel_loops", "parse"]
 
 # ---------------------------------------------------------------- text
 
@@ -180,11 +58,83 @@ def _expanded(text: str, directory: Path | None) -> str:
     return done.stdout
 
 
+_DEFINE = re.compile(r"^[ \t]*#[ \t]*define[ \t]+(\w+)(\([\w, ]*\))?[ \t]*(.*)$")
+_WORD = re.compile(r"(?<![\w.])[A-Za-z_]\w*")
+
+
+def _simply_expanded(text: str) -> str | None:
+    """The text with its macros expanded, if they are plain ones of one line; None where that takes a preprocessor.
+
+    Starting one takes longer than all the rest.
+    """
+    macros: dict[str, tuple[list[str] | None, str]] = {}
+    lines = text.split("\n")
+    for number, row in enumerate(lines):
+        if "#" in row or row.endswith("\\"):
+            match = _DEFINE.match(row)
+            if match is None or "#" in match[3] or row.endswith("\\") or match[1] in macros:
+                return None
+            inner = None if match[2] is None else [name.strip() for name in match[2][1:-1].split(",")]
+            macros[match[1]] = (inner, match[3])
+            lines[number] = ""
+        elif macros:
+            expanded = _replaced(row, macros, frozenset())
+            if expanded is None:
+                return None
+            lines[number] = expanded
+    return "\n".join(lines)
+
+
+def _replaced(row: str, macros: dict[str, tuple[list[str] | None, str]], busy: frozenset[str]) -> str | None:
+    """A line with macros replaced, C11 6.10.3; None where an argument goes on in the next line."""
+    out, at = [], 0
+    for match in _WORD.finditer(row):
+        name = match.group()
+        if match.start() < at or name not in macros or name in busy:
+            continue
+        if '"' in row:
+            return None
+        names, body = macros[name]
+        end = match.end()
+        if names is not None:
+            arguments, end = _arguments(row, end)
+            if arguments is None or len(arguments) != len(names):
+                return None
+            values = [_replaced(argument.strip(), macros, busy) for argument in arguments]
+            if None in values:
+                return None
+            given = dict(zip(names, values, strict=True))
+            body = _WORD.sub(lambda word, given=given: given.get(word.group(), word.group()), body)
+        inner = _replaced(body, macros, busy | {name})
+        if inner is None:
+            return None
+        out += [row[at:match.start()], inner]
+        at = end
+    return "".join([*out, row[at:]])
+
+
+def _arguments(row: str, at: int) -> tuple[list[str] | None, int]:
+    """What stands in the parentheses that open at or after an offset, and the offset behind them."""
+    opening = re.compile(r"\s*\(").match(row, at)
+    if opening is None:
+        return None, at
+    depth, parts, start = 1, [], opening.end()
+    for place in range(start, len(row)):
+        depth += (row[place] == "(") - (row[place] == ")")
+        if depth == 0 or (depth == 1 and row[place] == ","):
+            parts.append(row[start:place])
+            start = place + 1
+        if depth == 0:
+            return parts, place + 1
+    return None, at
+
+
 @functools.lru_cache(maxsize=256)
 def parse(text: str, directory: Path | None = None) -> c_ast.FileAST:
     """The syntax tree of a C file; coordinates are lines of the text.  System headers are not read."""
     text = text.replace("\r\n", "\n")
     text = _PRAGMA.sub("", _SYSTEM_INCLUDE.sub("", _without_comments(text)))
     if "#" in text or _LIMIT_WORD.search(text):
-        text = _expanded(text, directory)
+        simple = _simply_expanded(text) if not _LIMIT_WORD.search(text) else None
+        text = _expanded(text, directory) if simple is None else simple
     return c_parser.CParser().parse(f"{_PRELUDE}\n#line 1 \"file.c\"\n{text}", "file.c")

@@ -318,3 +318,14 @@ def test_widths_follow_the_flags(tmp_path: Path) -> None:
     assert types["n"] == CType("long", 32, True)
     assert source.types.size_of(PointerTo(Void())) == 4
     assert source.types.of_expression(source.functions[0].body.block_items[0]) == CType("char", 8, False)
+
+
+def test_a_type_that_is_asked_for_before_the_structure_is_complete(tmp_path: Path) -> None:
+    source = opened(tmp_path, (
+        "extern struct sounding *last;\nenum { BYTES = sizeof last };\n"
+        "struct sounding { int depth; double at[2]; };\nint f(void) { return last->at[1] > BYTES; }\n"))
+    function, types = source.functions[0], source.types
+    compared = function.body.block_items[0].expr
+    assert types.constant(compared.right, types.scope(function, compared)) == 8
+    for _ in range(2):
+        assert types.of_expression(compared.left, types.scope(function, compared)) == CType("double", 64, True, True)

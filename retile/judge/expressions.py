@@ -484,10 +484,12 @@ class Expressions(Declarations, Writer):
         condition = self.condition(node.cond)
         if both:
             condition = self.atom(condition)
+            self.uncertain += 1
         with self.apart() as yes_lines:
             yes = self.value(node.iftrue)
         with self.apart() as no_lines:
             no = self.value(node.iffalse)
+        self.uncertain -= both
         kind = self._ternary_kind(yes, no)
         with self.apart() as yes_more:
             yes = self._as(yes, kind, no)
@@ -540,10 +542,8 @@ class Expressions(Declarations, Writer):
             yes, no = (Operand(x.kind, "data", self.data(x)) if x.held == "plain" else x for x in (yes, no))
         name = self.fresh()
         if both:
-            self.uncertain += 1
             self._chosen(f"if not {condition}:", yes_lines, yes, name)
             self._chosen("else:", no_lines, no, name)
-            self.uncertain -= 1
         self._chosen(f"if {condition}:", yes_lines, yes, name)
         self._chosen("else:", no_lines, no, name)
         if yes.held == "pointer":

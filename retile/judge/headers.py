@@ -91,13 +91,22 @@ def iterators_in(node: Any) -> frozenset[str]:
     return frozenset(found)
 
 
-def assigned_in(node: Any) -> set[str]:
-    """Names of variables that are set somewhere inside, or whose address is taken there."""
+def assigned_in(node: Any, known: dict[int, set[str]] | None = None) -> set[str]:
+    """Names of variables that are set somewhere inside, or whose address is taken there.
+
+    ``known`` keeps the answers about loops, for nodes that live as long as it does.
+    """
     found: set[str] = set()
     waiting = [node]
     while waiting:
         part = waiting.pop()
         if part is None:
+            continue
+        if known is not None and part is not node and isinstance(part, c_ast.For):
+            inner = known.get(id(part))
+            if inner is None:
+                inner = known[id(part)] = assigned_in(part, known)
+            found |= inner
             continue
         if isinstance(part, c_ast.Assignment) and isinstance(part.lvalue, c_ast.ID):
             found.add(part.lvalue.name)

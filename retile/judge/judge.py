@@ -132,6 +132,7 @@ class Judge:
         with _undisturbed():
             try:
                 result = program.run(self.function, machine)
+                machine.check_far()
             finally:
                 if program is self.original:
                     self.asked.update(machine.asked)

@@ -71,11 +71,12 @@ class Object(dict[int, Any]):
 class Own(Object):
     """Memory of the program's own: of known extent, without a value until one is written."""
 
-    __slots__ = ("extent", "cleared", "state")
+    __slots__ = ("extent", "cleared", "state", "whole")
 
     def __init__(self, machine: Machine, name: str, where: str, kind: Kind | None, extent: int,
                  declared: object = None) -> None:
-        super().__init__(machine, name, where, kind, declared)
+        super().__init__(machine, name, where, None if kind is None else element_of(kind), declared)
+        self.whole = kind  # the type of the whole variable
         self.writes = deque(maxlen=0)
         self.log = self.writes.append
         self.extent = extent
@@ -130,6 +131,7 @@ class Machine:
         self.book, self.sizes, self.steps, self.default = book, sizes, steps, default
         self.refused = refused  # numbers of the allocations that fail; None for all of them
         self.order = order  # of the iterations of parallel loops: "", "reversed" or "shuffled"
+        self.lenient = False  # also what would be undefined is run, where both branches of conditions are
         self.reached = False  # the nest that is watched was executed
         self.bases = 0
         self.objects: dict[str, Object] = {}  # those that outlive the function, by name
@@ -158,11 +160,11 @@ class Machine:
 
     def own(self, name: str, where: str, kind: Kind, extent: int, declared: object = None) -> Own:
         """Memory for a variable of the program."""
-        return Own(self, name, where, element_of(kind), extent, declared)
+        return Own(self, name, where, kind, extent, declared)
 
     def initial(self, obj: Object, offset: int) -> Any:
         """What a cell of the caller holds that nobody wrote: sizes by name, invented data elsewhere."""
-        if abs(offset) > FAR:
+        if abs(offset) > FAR and not self.lenient:
             raise Undefined(f"a subscript of {obj.name} is far outside any object of a test")
         kind, book = obj.leaf(offset), self.book
         if isinstance(kind, Pointer):
@@ -194,6 +196,12 @@ class Machine:
             raise Unsupported("cleared memory of this type")
         return self.book.reals[0.0] if kind.floating else self.book.integers[0]
 
+    def check_far(self) -> None:
+        """Undefined if something was written far outside any object of a test; reads say so themselves."""
+        for obj in self.objects.values():
+            if obj and (max(obj) > FAR or min(obj) < -FAR):
+                raise Undefined(f"a subscript of {obj.name} is far outside any object of a test")
+
     # ------------------------------------------------------------ counting
 
     def spend(self, steps: int) -> None:
@@ -216,6 +224,8 @@ class Machine:
             if self.steps < 0:
                 raise TooLong
             if not least <= found[-1] + step <= most:
+                if least == 0:
+                    raise TooLong  # it wraps around and goes on
                 raise Undefined(f"{found[-1] + step} overflows the iterator's type")
         return found
 

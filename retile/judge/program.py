@@ -37,7 +37,7 @@ class FunctionText(Statements):
         super().__init__(program.unit, program.book, program.namespace, facts)
         self.program, self.node, self.held = program, node, held
         self.iterators = iterators_in(node.body)
-        self.parallel, self.watched = program.parallel, program.watched
+        self.parallel, self.watched, self.assigned = program.parallel, program.watched, program.assigned
         self.parameters: list[tuple[str, Kind, str]] = []
 
     def generate(self, python: str) -> Compiled:
@@ -134,6 +134,7 @@ class Program:
         self.book, self.parallel = book, parallel  # lines of loops whose iterations may run in any order
         self.watched = watched  # line of a loop of which the machine notes that it was reached
         self.unit = Unit(tree)
+        self.assigned: dict[int, set[str]] = {}  # names that statements set, by the identity of the statement
         self.statics: dict[str, tuple[Variable, c_ast.Decl]] = {}
         self.namespace: dict[str, Any] = {
             "integers": book.integers, "reals": book.reals, "values": book.values, "real": book.real, "UNSET": UNSET,

@@ -28,6 +28,7 @@ class Statements(Calls):
     def __init__(self, *arguments: Any) -> None:
         super().__init__(*arguments)
         self._continue: list[Callable[[], None]] = []
+        self.assigned: dict[int, set[str]] = {}  # by the identity of a statement
 
     # ------------------------------------------------------------ hooks
 
@@ -265,7 +266,7 @@ class Statements(Calls):
     def _counting(self, node: c_ast.For) -> tuple[Counting, Any, bool] | None:
         """How the loop counts: with first value and whether the header declares the iterator; None if not surely."""
         form = counting(node, self.constant)
-        if form is None or form.bound is None or not form.step or form.name in assigned_in(node.stmt):
+        if form is None or form.bound is None or not form.step or form.name in self._assigned(node.stmt):
             return None
         init, declares = node.init, False
         if isinstance(init, c_ast.DeclList) and len(init.decls) == 1 and init.decls[0].name == form.name:
@@ -280,9 +281,15 @@ class Statements(Calls):
             return None
         declared = (form.name, str(init.decls[0].coord)) if declares else None
         plain = isinstance(kind, Number) and not kind.floating and ("object", declared) not in self.facts
-        if first is None or not plain or not steady(form.bound, assigned_in(node) | {form.name}, self._is_number):
+        if first is None or not plain or not steady(form.bound, self._assigned(node.stmt) | {form.name}, self._is_number):
             return None
         return form, first, declares
+
+    def _assigned(self, node: Any) -> set[str]:
+        found = self.assigned.get(id(node))
+        if found is None:
+            found = self.assigned[id(node)] = assigned_in(node, self.assigned)
+        return found
 
     def _is_number(self, name: str) -> bool:
         try:

@@ -42,7 +42,7 @@ class Unit:
 
 
 _MARKER = re.compile(r'#(?: |line )\s*(\d+) "((?:[^"\\]|\\.)*)"((?: \d)*)')
-_MACRO = re.compile(r"#\s*(define|undef) ((?:[^\W\d]|\$)(?:\w|\$)*)(.*)")
+_MACRO = re.compile(r"#\s*(define|undef) ((?:[^\W\d]|\$)[\w$]*)(.*)")
 _ESCAPE = re.compile(r"\\([0-7]{1,3}|.)")
 
 
@@ -78,7 +78,7 @@ class _Reader:
         return Unit(tuple(self.tokens), tuple(self.events), tuple(self.files), frozenset(self.system), self.packs)
 
     def _directive(self, row: str) -> None:
-        if marker := _MARKER.match(row):
+        if not row.startswith("#define") and (marker := _MARKER.match(row)):
             self._marker(int(marker[1]), _unescape(marker[2]), marker[3].split())
             return
         if macro := _MACRO.match(row):

@@ -37,6 +37,8 @@ class Types:
         self._layout = Layout(self)
         self._scopes: dict[int, dict[int, Scope]] = {}  # id of a FuncDef -> id of a node in it -> scope
         self._made: dict[int, Any] = {}  # keeps the FuncDefs of _scopes alive
+        # Ids of a declaration and of the scope that it is read in -> the two, which keeps them alive, and the type.
+        self._declared: dict[tuple[int, int], tuple[Any, Scope, Type]] = {}
         self._depth = 0
 
     # ---------------------------------------------------------------- scopes
@@ -185,6 +187,18 @@ class Types:
 
     def of_declared(self, declared: Declared, scope: Scope | None = None) -> Type:
         """The type of what a name stands for, parameters adjusted."""
+        scope = scope or self.file_scope
+        key = (id(declared.node), id(scope))
+        if key in self._declared:
+            return self._declared[key][2]
+        type = self._of_declared(declared, scope)
+        # Not where the limit on depth may have a say, nor before all names at file scope are known.
+        settled = self._depth == 0 and "file_scope" in self.__dict__
+        if settled and declared.node is not None and declared.kind != "constant":
+            self._declared[key] = (declared.node, scope, type)
+        return type
+
+    def _of_declared(self, declared: Declared, scope: Scope) -> Type:
         if declared.kind == "constant":
             return self.arithmetic.int
         if declared.where == "parameter":
