@@ -241,9 +241,9 @@ class Printer:
         """The loop's texts with values in place of iterators that are written out."""
         if not self._values:
             return opened
-        lines = {name: tuple(map(self._in_values, getattr(opened, name))) for name in ("before", "first")}
-        texts = {name: self._in_values(getattr(opened, name)) for name in ("header", "declared", "condition")}
-        return replace(opened, **lines, **texts)
+        return replace(opened, before=tuple(map(self._in_values, opened.before)), header=self._in_values(opened.header),
+                       first=tuple(map(self._in_values, opened.first)), declared=self._in_values(opened.declared),
+                       condition=self._in_values(opened.condition))
 
     def _in_values(self, text: str) -> str:
         return replaced(text, 0, with_values(text, 0, self._values, []))
@@ -303,7 +303,7 @@ class Printer:
                    if storage.kind is StorageKind.SCALAR and storage.name in written
                    and (storage.scope != "block" or self._variable(storage.name) in around)]
         private = ", ".join(dict.fromkeys((*iterators, *scalars)))
-        uneven = any(loop.symbol in bound_names(bound) for inner in loops_of(loop.body) if inner.of != loop.of
+        uneven = any({loop.symbol, loop.of} & bound_names(bound) for inner in loops_of(loop.body) if inner.of != loop.of
                      for bound in (inner.lower, inner.upper))
         words = ["#pragma omp parallel for", *([f"private({private})"] if private else []), *(["schedule(dynamic)"] if uneven else [])]
         return ["#ifdef _OPENMP", " ".join(words), "#endif"]
