@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast, c_generator
 
-from ..affine import Affine, Formula, Symbol
+from ..affine import Affine, Formula, Symbol, negate
 from ..model import AssumptionCode, CType, Parameter
 from ..source.kinds import ArrayOf
 from ..values import dataclass
@@ -348,6 +348,14 @@ class Setting:
     def needs_nothing_since(self, mark: tuple[int, ...]) -> bool:
         """True if nothing was gathered since a mark that must hold or keep its value; parameters may have been."""
         return self.mark()[:4] == mark[:4]
+
+    def failures_since(self, mark: tuple[int, ...]) -> tuple[Formula, ...]:
+        """Where what was required since a mark does not hold, one formula each; it is required no longer."""
+        taken_back = list(self.obligations)[mark[0] :]
+        for obligation in taken_back:
+            del self.obligations[obligation]
+        conditions = [self.knowledge.condition(obligation) for obligation in taken_back]
+        return tuple(dict.fromkeys(negate(condition) for condition in conditions if condition is not None))
 
     def rewind(self, mark: tuple[int, ...]) -> None:
         """Forget what was gathered since a mark, because what it was for came to nothing."""
