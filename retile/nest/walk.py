@@ -254,9 +254,29 @@ class Walk:
 
     def _leaf(self, node: Any, span: Span, touches: tuple[Touch, ...], context: Context) -> Leaf:
         id = self._statement_id(span.line)
+        touches = (*self._needed(context), *touches)
         text = " ".join(self._source.slice(span).split())
         self.statements.append(RawStatement(id, span, text, context, touches, node))
         return Leaf(id, tuple((loop, Affine.of(loop)) for loop in context.loops))
+
+    def _needed(self, context: Context) -> tuple[Touch, ...]:
+        """The reads of what a header or condition around names, for wherever a plan puts a copy of it."""
+        found = {self.setting.names.of(node): node for node in context.needs}
+        return tuple(
+            Touch(self.setting.places.variable(binding), False, context, node)
+            for binding, node in found.items()
+            if binding is not None
+        )
+
+    def _computed(self, *nodes: Any) -> tuple[Any, ...]:
+        """The names in these expressions of what the nest computes."""
+        return tuple(
+            one
+            for node in nodes
+            if node is not None
+            for one in descendants(node)
+            if isinstance(one, c_ast.ID) and self.setting.names.of(one) in self.setting.definitions
+        )
 
     def _statement_id(self, line: int) -> str:
         self._per_line[line] += 1
@@ -293,6 +313,7 @@ class Walk:
             nodes += self._guard(part, ends[0], narrowed.uncertain(), span, partly=part is not None)
             nodes += self._guard(None, ends[1], context.uncertain(), span)
         else:
+            context = context.needing(self._computed(node.cond))
             nodes += self._guard(condition, ends[0], context.where(condition), span)
             nodes += self._guard(negate(condition), ends[1], context.where(negate(condition)), span)
         self.branches.append((context, id(ends[0]), id(ends[1]), len(self.statements)))
@@ -322,6 +343,7 @@ class Walk:
         before = self._branch(node, context)
         skipped = self._skipped_where(node, context)
         left = None if skipped is None else negate(skipped)
+        context = context.needing(self._computed(node))
         body = _Rest((), rest)
         self._kept.append(body)
         assert span is not None  # the branch would have been refused
@@ -363,6 +385,7 @@ class Walk:
         start = context.inside(id, header.binding, AllOf((at_least_bound(at, header.first), at_most_bound(at, header.first))))
         self.evaluated += [Evaluated(header.first_node, context), Evaluated(node.cond, context if header.before_first else start)]
         inside = context.inside(id, header.binding, header.constraint(id, origin))
+        inside = inside.needing(self._computed(node.init, node.cond, node.next))
         body = self._node(node.stmt, inside.block(node.stmt))
         lower, upper = (header.first, header.last) if header.step > 0 else (header.last, header.first)
         return Loop(id, lower, upper, header.step, origin, body, id)
