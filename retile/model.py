@@ -78,6 +78,10 @@ class CType:
         """The largest value of an integer type."""
         return (1 << (self.bits - (1 if self.signed else 0))) - 1
 
+    def fits(self, other: CType) -> bool:
+        """True if the other integer type has all values of this one."""
+        return other.smallest <= self.smallest and self.largest <= other.largest
+
 
 @dataclass(frozen=True)
 class Parameter:

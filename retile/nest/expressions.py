@@ -109,7 +109,7 @@ class Expressions:
         constant = value.poly.constant
         if constant is not None:
             return Value(Poly.of(wrapped(constant, to)), to, True)
-        fits = to.smallest <= value.type.smallest and value.type.largest <= to.largest
+        fits = value.type.fits(to)
         if fits or (not to.signed and not value.exact and to.bits <= value.type.bits):
             if fits and to.bits > value.type.bits and not value.exact:
                 seen = self._widened(value, context, node)
@@ -276,10 +276,10 @@ class Expressions:
         for fact in self._division_facts(node, symbol, context):
             self._setting.add_fact(fact, context, node)
         if isinstance(node, c_ast.TernaryOp):
-            plain = _is_plain_choice(node)  # defined whether or not this place is reached: a fact without conditions
+            plain = is_plain_choice(node)  # defined whether or not this place is reached: a fact without conditions
             for fact in self._choice_facts(node, symbol, type_, Context() if plain else context):
                 if plain:
-                    self._setting.knowledge.add_fact(fact)
+                    self._setting.knowledge.add_choice(fact)
                 else:
                     self._setting.add_fact(fact, context, node)
         return Value(Poly.of(symbol), type_, True)
@@ -324,7 +324,9 @@ def wrapped(value: int, type_: CType) -> int:
     return value - (1 << type_.bits) if type_.signed and value > type_.largest else value
 
 
-def _is_plain_choice(node: Any) -> bool:
+def is_plain_choice(node: Any) -> bool:
     """True for ``a < b ? c : d`` of four names or constants."""
+    if not isinstance(node, c_ast.TernaryOp):
+        return False
     sides = (node.cond.left, node.cond.right) if isinstance(node.cond, c_ast.BinaryOp) else (node.cond,)
     return all(isinstance(one, (c_ast.ID, c_ast.Constant)) for one in (*sides, node.iftrue, node.iffalse))

@@ -377,7 +377,7 @@ class Setting:
             Obligation(AssumptionCode.OTHER, formula, context.formula, context.loops, node)
         )
         if condition is not None:
-            self.knowledge.add_fact(condition)
+            self.knowledge.add_choice(condition)
 
     def require(
         self, code: AssumptionCode, formula: Formula, context: Context, node: Any, storages: tuple[str, ...] = ()

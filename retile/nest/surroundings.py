@@ -113,7 +113,7 @@ def _outer(loop: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) ->
         return
     fact = _loop_fact(loop, binding, setting)
     if fact is not None:
-        knowledge.add_fact(fact)
+        knowledge.add_choice(fact)
 
 
 class _Provisional(Setting):
