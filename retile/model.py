@@ -170,6 +170,7 @@ class Access:
     update: str = ""
     exact_update: bool = False  # any order of such updates gives the same bits
     syntax: Syntax = Syntax()  # the expression in the syntax tree
+    where: Formula = AllOf()  # what holds where it happens beyond the statement's domain: the condition of a ``? :``
 
 
 @dataclass(frozen=True)

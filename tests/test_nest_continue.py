@@ -9,10 +9,11 @@ from dataclasses import replace
 
 import pytest
 from asked import ask
-from examination import examine
+from examination import Effort, examine
 from nest_execution import events_read, events_run, line_of_first_for, opened
 from oracle import compare
-from random_nests import Case, seeded_case
+from random_choices import Seeded
+from random_nests import RandomNest, seeded_nest
 from retile.nest import read_nest
 from retile.tree import Guard, Loop, children
 
@@ -29,6 +30,8 @@ FORMS = {
     "at the end": "depth[i][j] = 3;\n if (depth[i][j] > 1)\n continue;",
     "private": "double t = depth[i][j];\n if (t < 0)\n continue;\n double u = t * 2;\n echo[i][j] = u;",
 }
+
+LIGHT = Effort(plans=4, variants=2, tags=2, build="")
 
 
 def text_of(body: str) -> str:
@@ -53,7 +56,7 @@ def test_variants_skip_the_same(body, plan):
     if answer.verdict(plan) == "legal":
         assert compare(text, answer.variant(plan).text, "survey", {"n": 5}) == []
     else:
-        assert examine(Case(text, 2, plan, ("n",)), 0).problems == []
+        assert examine(RandomNest(text, 2, 2, ("n",)), Seeded(0), 0, LIGHT, [plan]).problems == []
 
 
 def test_most_of_these_can_be_reordered():
@@ -118,26 +121,32 @@ def test_what_is_skipped_is_marked():
     assert isinstance(ask(plain, 2).opened.nest.tree[0], Loop)
 
 
-def with_continue(case: Case) -> Case | None:
-    """The case with each guarded statement (without else) after a ``continue`` instead; None if it has none."""
-    lines = case.text.split("\n")
+def with_continue(nest: RandomNest) -> RandomNest | None:
+    """The nest with each guarded statement (without else) after a ``continue`` instead; None if it has none."""
+    lines = nest.text.split("\n")
     changed = 0
     for at in range(len(lines) - 2):
         if re.match(r"\s+if \(.*\) \{$", lines[at]) and lines[at + 2].strip() == "}":
             lines[at], lines[at + 1], lines[at + 2] = lines[at].removesuffix(" {"), "continue;", lines[at + 1]
             changed += 1
-    return replace(case, text="\n".join(lines)) if changed else None
+    return replace(nest, text="\n".join(lines)) if changed else None
+
+
+def examined(seed: int, effort: Effort) -> Counter:
+    """What comes out about the nest of a seed with a ``continue``; its problems fail the test."""
+    nest = with_continue(seeded_nest(seed))
+    if nest is None:
+        return Counter()
+    finding = examine(nest, Seeded(seed), seed, effort)
+    assert not finding.problems, f"seed {seed}\n{nest}\n{finding.problems[:2]}"
+    return finding.counts
 
 
 @pytest.mark.parametrize("group", range(2))
 def test_random_pairs(group):
     seen, end = Counter(), time.monotonic() + 8
     for seed in range(3_000_000 + 1000 * group, 3_000_150 + 1000 * group):
-        case = with_continue(seeded_case(seed))
-        if case is not None:
-            finding = examine(case, seed, thorough=False)
-            assert not finding.problems, f"seed {seed}\n{case}\n" + "\n".join(finding.problems)
-            seen[finding.verdict] += 1
+        seen += examined(seed, LIGHT)
         if time.monotonic() > end and seen["legal"] and seen["illegal"]:
             break
     assert seen["legal"] and seen["illegal"], seen
@@ -145,13 +154,9 @@ def test_random_pairs(group):
 
 @pytest.mark.long
 def test_many_random_pairs(pytestconfig):
-    first, pairs = pytestconfig.getoption("--seed") * 1_000_000, pytestconfig.getoption("--pairs")
-    seen, problems = Counter(), []
-    for seed in range(first, first + pairs):
-        case = with_continue(seeded_case(seed))
-        if case is not None:
-            finding = examine(case, seed, thorough=False)
-            seen[finding.verdict] += 1
-            problems += [f"seed {seed}\n{case}\n{problem}" for problem in finding.problems[:1]]
+    first, nests = pytestconfig.getoption("--seed") * 1_000_000, pytestconfig.getoption("--pairs")
+    seen = Counter()
+    for seed in range(first, first + nests):
+        seen += examined(seed, Effort())
     print(seen)
-    assert not problems, "\n\n".join(problems[:10])
+    assert seen["legal"] and seen["illegal"], seen
