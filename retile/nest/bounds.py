@@ -35,7 +35,8 @@ class Bounds:
             definition = None if binding is None else self._setting.definition(binding, context)
             if definition is not None and binding is not None:
                 own = self._setting.type_of_binding(binding)
-                return self.read(definition.expression, definition.context, own) if isinstance(own, CType) else None
+                with self._setting.at(definition):
+                    return self.read(definition.expression, definition.context, own) if isinstance(own, CType) else None
         shifted = self._shifted(node, context, type_)
         return shifted if shifted is not None else self._setting.expressions.affine(node, context, type_)
 

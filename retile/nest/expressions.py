@@ -163,7 +163,8 @@ class Expressions:
             return Value(Poly.of(iterator), type_, True)
         definition = setting.definition(binding, context)
         if definition is not None:
-            value = self.value(definition.expression, definition.context)
+            with setting.at(definition):
+                value = self.value(definition.expression, definition.context)
             return None if value is None else self.convert(value, type_, definition.context, node)
         if setting.is_frozen(binding) and not (setting.strict and setting.reachable(binding)):
             return Value(Poly.of(setting.parameter_of(binding, type_)), type_, True)

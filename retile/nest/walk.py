@@ -8,7 +8,7 @@ from typing import Any
 from pycparser import c_ast
 
 from ..affine import Affine, AllOf, AnyOf, Formula, at_least_bound, at_most_bound, negate
-from ..model import Refusal, Span
+from ..model import CType, Refusal, Span
 from ..source.kinds import ArrayOf, PointerTo
 from ..tree import Guard, Leaf, Loop, Node
 from ..values import dataclass, replace
@@ -21,7 +21,7 @@ from .headers import origin_of, spans_of
 from .hiding import hidden_names
 from .loops import Header, Loops
 from .refusals import Refused, refusal, refused
-from .scopes import Binding, descendants
+from .scopes import Binding, descendants, sole_assignment
 from .setting import Setting, c_text
 from .skipping import items_of, runs_on, skips, surely_skips
 
@@ -302,6 +302,7 @@ class Walk:
         condition = self._conditions.known(node.cond, context)
         self.evaluated.append(Evaluated(node.cond, context))
         nodes: list[Node] = []
+        before = dict(self.setting.definitions)
         if condition is None:
             touches = self._effects.of(node.cond, context)
             if any(touch.write for touch in touches):
@@ -316,8 +317,19 @@ class Walk:
             context = context.needing(self._computed(node.cond))
             nodes += self._guard(condition, ends[0], context.where(condition), span)
             nodes += self._guard(negate(condition), ends[1], context.where(negate(condition)), span)
+            self._choose(node, context, before)
         self.branches.append((context, id(ends[0]), id(ends[1]), len(self.statements)))
         return tuple(nodes)
+
+    def _choose(self, node: Any, context: Context, before: dict[Binding, Any]) -> None:
+        """``if (hi > n) hi = n;`` and ``if (c) hi = n; else hi = m;``: from here on the variable is one of two."""
+        yes, no = sole_assignment(node.iftrue), sole_assignment(node.iffalse)
+        binding = None if yes is None else self.setting.names.of(yes.lvalue)
+        if binding is None or (node.iffalse is not None and (no is None or self.setting.names.of(no.lvalue) is not binding)):
+            return
+        other = yes.lvalue if no is None else no.rvalue
+        if isinstance(self.setting.type_of_binding(binding), CType):
+            self.setting.define(binding, c_ast.TernaryOp(node.cond, yes.rvalue, other, node.coord), context, before)
 
     def _guard(
         self, condition: Formula | None, body: Any, context: Context, span: Span, partly: bool = False
