@@ -30,7 +30,9 @@ _F = TypeVar("_F", bound=Callable[..., Any])
 
 def main() -> None:
     """The program ``retile``."""
-    sys.exit(_run(sys.argv[1:]))
+    status = _run(sys.argv[1:])
+    gc.freeze()  # the interpreter would look through all that there is for garbage, and longer than some answers take
+    sys.exit(status)
 
 
 def _run(arguments: list[str]) -> int:

@@ -78,6 +78,10 @@ class CType:
         """The largest value of an integer type."""
         return (1 << (self.bits - (1 if self.signed else 0))) - 1
 
+    def fits(self, other: CType) -> bool:
+        """True if the other integer type has all values of this one."""
+        return other.smallest <= self.smallest and self.largest <= other.largest
+
 
 @dataclass(frozen=True)
 class Parameter:
@@ -166,6 +170,7 @@ class Access:
     update: str = ""
     exact_update: bool = False  # any order of such updates gives the same bits
     syntax: Syntax = Syntax()  # the expression in the syntax tree
+    where: Formula = AllOf()  # what holds where it happens beyond the statement's domain: the condition of a ``? :``
 
 
 @dataclass(frozen=True)

@@ -101,6 +101,11 @@ class Region:
         """True if no assignment of integers lies in the region."""
         return bool(self._set.is_empty())
 
+    @property
+    def size(self) -> int:
+        """How many convex pieces it is made of."""
+        return int(self._set.n_basic_set())
+
     def within(self, other: Region) -> bool:
         """True if every point of this region lies in the other."""
         return bool(self._set.is_subset(other._set))

@@ -66,6 +66,7 @@ class Guard:
     body: tuple[Node, ...]
     span: tuple[int, int] | None = None  # extent of the condition in the user's text, if it is the user's
     partly: bool = False  # the text tests data too, so that it must be tested even where ``condition`` surely holds
+    jump: bool = False  # a `continue` decides what it guards: the text of that stands in no branch of an ``if``
 
 
 @dataclass(frozen=True)

@@ -10,8 +10,9 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Iterator, Mapping
 
-from nest_execution import line_of_first_for, parameter_values
+from nest_execution import parameter_values
 from oracle_run import Program
+from oracle_values import Instance
 from retile.model import Access, Nest
 from retile.sets import Region
 
@@ -19,26 +20,41 @@ Where = tuple[int, tuple[tuple[str, int], ...]]  # line, values of the iterators
 Seen = tuple[Access, tuple[int, ...] | None]  # an access and its subscripts' values
 
 
-def missed(text: str, nest: Nest, sizes: Mapping[str, int]) -> list[str]:
-    """Pairs of instances that share a cell when the function runs, of which the nest knows nothing."""
-    line = line_of_first_for(text)
-    machine = Program(text, nest=line).run(nest.function, dict(sizes), may=True)
-    here: dict[tuple[str, object, int], dict[Where, bool]] = defaultdict(dict)
+def missed(text: str, nest: Nest, sizes: Mapping[str, int], run: str = "", granule: int = 1) -> list[str]:
+    """Pairs of instances that share a cell when a function runs, of which the nest knows nothing.
+
+    ``run``: a function that calls the nest's; ``granule``: bytes that count as one cell.
+    """
+    line = nest.address.line
+    machine = Program(text, nest=line).run(run or nest.function, dict(sizes), may=True, steps=5000)
+    runs: dict[tuple[int, tuple[tuple[str, int], ...]], list[Instance]] = defaultdict(list)
     for instance in machine.instances:
+        outer = tuple((loop.name, loop.value) for loop in instance.loops if loop.line < line)
+        runs[instance.run, outer].append(instance)
+    known = {frozenset(a.storages) for a in nest.assumptions if a.storages}
+    problems = []
+    for (_, outer), instances in runs.items():
+        read = _read(nest, {**sizes, **dict(outer)})
+        for cell, one, other in _meetings(instances, line, granule):
+            if not _meets(read[one], read[other], known):
+                problems.append(f"{cell}: {one} and {other}")
+    return problems
+
+
+def _meetings(instances: list[Instance], line: int, granule: int) -> Iterator[tuple[object, Where, Where]]:
+    """All pairs of instances of one run that share a cell, one of them writing."""
+    here: dict[tuple[str, object, int], dict[Where, bool]] = defaultdict(dict)
+    for instance in instances:
         where = (instance.line, tuple((loop.name, loop.value) for loop in instance.loops if loop.line >= line))
         for obj, offset, writes in instance.accesses:
             if not getattr(obj, "iterator", False):
-                cell = (obj.kind, obj.declared, offset)
+                cell = (obj.kind, obj.declared, offset // granule)
                 here[cell][where] = here[cell].get(where, False) or writes
-    read = _read(nest, sizes)
-    known = {frozenset(a.storages) for a in nest.assumptions if a.storages}
-    problems = []
     for cell, touching in here.items():
         for at, (one, writes) in enumerate(touching.items()):
             for other, also in list(touching.items())[at + 1:]:
-                if (writes or also) and not _meets(read[one], read[other], known):
-                    problems.append(f"{cell}: {one} and {other}")
-    return problems
+                if writes or also:
+                    yield cell, one, other
 
 
 def _read(nest: Nest, sizes: Mapping[str, int]) -> dict[Where, list[Seen]]:

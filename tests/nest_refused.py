@@ -22,7 +22,7 @@ void sweep(int pings,double *depth) {
 """, ((2, "break"),)),
     ("continue", """\
 void sweep(int pings,double *depth) {
-    for (int i= 0;i<pings; i++){ if (depth[i]>0) continue; depth[i]=1; } }
+    for (int i= 0;i<pings; i++){ if (depth[i]>0) continue; else continue; depth[i]=1; } }
 """, ((2, "continue"),)),
     ("goto", """\
 void sweep(int pings,double *depth) {

@@ -2,11 +2,18 @@
 
 from __future__ import annotations
 
+import time
+from collections import Counter
+from dataclasses import replace
+
 import pytest
+from asked import ask
 from nest_aliases import ALIASES, missed
 from nest_execution import opened
-from retile.model import Nest
-from retile.nest import read_nests
+from oracle import TooLong, Undefined, Unsupported, compare
+from random_aliases import AliasCase, alias_case
+from retile.model import Nest, RetileError
+from retile.nest import read_nest, read_nests
 
 
 def nest_of(text: str, directory) -> Nest:
@@ -21,11 +28,77 @@ def test_no_meeting_is_missed(text, tmp_path):
 
 
 def test_the_search_for_missed_meetings_finds_one(tmp_path):
-    from dataclasses import replace
-
     text = ALIASES["an offset set later"]
     nest = nest_of(text, tmp_path)
     assert missed(text, replace(nest, assumptions=()), {"n": 4})
+
+
+NO_GROUND = (Undefined, TooLong, Unsupported, AttributeError, TypeError)  # a pointer is read as a number, or the other way
+
+
+def hunted(seed: int, directory) -> Counter:
+    """Look for missed meetings in the nests of a seed's function, and for wrong variants; what was seen, by kind."""
+    case, seen = alias_case(seed), Counter()
+    source = opened(case.text, directory)
+    for line in case.lines[:-1]:
+        found = read_nest(source, line)
+        if found.nest is None:
+            seen[found.refusals[0].code] += 1
+            continue
+        for n in (3, 4):
+            try:
+                problems = missed(case.text, found.nest, {"n": n}, case.run, 8)
+                blind = missed(case.text, replace(found.nest, assumptions=()), {"n": n}, case.run, 8)
+            except NO_GROUND:
+                continue
+            assert not problems, f"seed {seed}, line {line}, n = {n}: {problems[:3]}\n{case.text}"
+            seen.update({"nests run": 1, "meetings under two names": bool(blind)})
+        if line == case.lines[-2]:
+            seen.update(variants(seed, case, line))
+    return seen
+
+
+def variants(seed: int, case: AliasCase, line: int) -> Counter:
+    """Legal variants, which test their assumptions: what they compute when arguments overlap."""
+    seen: Counter = Counter()
+    answer, plan = ask(case.text, line), ("j i", "i:2 j i", "j:2 i j", "i j:3 j")[seed % 4]
+    if answer.verdict(plan) != "legal":
+        return seen
+    try:
+        text = answer.variant(plan, trust=False).text
+    except RetileError as problem:
+        pytest.fail(f"seed {seed}: legal, but no variant: {problem}")
+    for n in (3, 4):
+        try:
+            wrong = compare(case.text, text, case.run, {"n": n}, steps=5000)
+        except NO_GROUND:
+            continue
+        assert not wrong, f"seed {seed}, plan {plan}, n = {n}: {wrong[:3]}\n{text}"
+        seen["variants run"] += 1
+    return seen
+
+
+@pytest.mark.parametrize("group", range(4))
+def test_no_meeting_of_a_random_function_is_missed(group, tmp_path):
+    seen, end = Counter(), time.monotonic() + 8
+    for seed in range(1000 * group, 1000 * group + 80):
+        seen += hunted(seed, tmp_path)
+        if time.monotonic() > end and min(seen[kind] for kind in ENOUGH) > 4:
+            break
+    assert min(seen[kind] for kind in ENOUGH) > 4, seen
+
+
+ENOUGH = ("nests run", "meetings under two names", "variants run")
+
+
+@pytest.mark.long
+def test_no_meeting_of_many_random_functions_is_missed(tmp_path, pytestconfig):
+    first, count = pytestconfig.getoption("--seed") * 1_000_000, pytestconfig.getoption("--pairs")
+    seen = Counter()
+    for seed in range(first, first + count):
+        seen += hunted(seed, tmp_path)
+    print(seen)
+    assert min(seen[kind] for kind in ENOUGH) > count / 20, seen
 
 
 ONE_NAME = {

@@ -13,7 +13,7 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Iterable, Iterator
 
-from ..affine import Affine, AnyOf, Formula, at_most, equal, less
+from ..affine import Affine, AnyOf, Formula, at_most, equal, less, map_formula
 from ..model import Access, LoopText, Nest, ScalarClass, Statement, Storage
 from ..order import Coordinate, first_differences, prime, primed, primed_vector
 from ..sets import Region
@@ -139,6 +139,7 @@ class _Analysis:
     def sharing(self, source: _End, target: _End, private: tuple[str, ...]) -> Region:
         """The pairs of instances whose accesses touch one cell, in any order."""
         equalities: list[Formula] = [equal(Affine.of(name), Affine.of(prime(name))) for name in private]
+        equalities += [source.access.where, map_formula(target.access.where, lambda form: primed(form, target.statement.loops))]
         if source.access.subscripts is not None and target.access.subscripts is not None:
             equalities += [equal(a, primed(b, target.statement.loops)) for a, b in
                            zip(source.access.subscripts, target.access.subscripts, strict=True)]

@@ -6,7 +6,7 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import Affine, AllOf, AnyOf, Bound, Extremum, at_most, equal, map_bound, negate
+from ..affine import Affine, Bound, Extremum, at_most, map_bound, negate
 from ..model import CType
 from .conditions import Conditions
 from .context import Context
@@ -27,7 +27,7 @@ class Bounds:
             found = self._extremum(node, context, type_)
             if found is None:
                 self._setting.rewind(mark)
-            return found if found is not None else self._either(node, context, type_)
+            return found if found is not None else self._setting.expressions.affine(node, context, type_)
         if isinstance(node, c_ast.Cast) and isinstance(node.expr, c_ast.TernaryOp):
             return self.read(node.expr, context, type_)
         if isinstance(node, c_ast.ID):
@@ -35,7 +35,8 @@ class Bounds:
             definition = None if binding is None else self._setting.definition(binding, context)
             if definition is not None and binding is not None:
                 own = self._setting.type_of_binding(binding)
-                return self.read(definition.expression, definition.context, own) if isinstance(own, CType) else None
+                with self._setting.at(definition):
+                    return self.read(definition.expression, definition.context, own) if isinstance(own, CType) else None
         shifted = self._shifted(node, context, type_)
         return shifted if shifted is not None else self._setting.expressions.affine(node, context, type_)
 
@@ -51,22 +52,6 @@ class Bounds:
         if left is None or right is None:
             return None
         return map_bound(left, lambda form: form + right if node.op == "+" else form - right)
-
-    def _either(self, node: Any, context: Context, type_: CType | None) -> Bound | None:
-        """A choice between two values that is no extremum, over sizes alone: a parameter of its own."""
-        form = self._setting.expressions.affine(node, context, type_)
-        own = self._setting.type_of(node)
-        condition = self._conditions.known(node.cond, context)
-        if form is None or condition is None or not isinstance(own, CType) or len(form.terms) != 1:
-            return form
-        facts = []
-        for holds, branch in ((condition, node.iftrue), (negate(condition), node.iffalse)):
-            value = self._setting.expressions.affine(branch, context.where(holds), own)
-            if value is None:
-                return form
-            facts.append(AllOf((holds, equal(form, value))))
-        self._setting.add_fact(AnyOf(tuple(facts)), context, node)
-        return form
 
     def _extremum(self, node: Any, context: Context, type_: CType | None) -> Bound | None:
         """``c ? x : y`` is min(x, y) where c implies x <= y and its opposite implies y <= x; likewise max.

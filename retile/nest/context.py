@@ -17,6 +17,7 @@ class Context:
     iterators: tuple[tuple[Binding, str], ...] = ()  # what stands for each of them
     constraints: tuple[Formula, ...] = ()  # bounds, strides and affine conditions
     certain: bool = True  # False under a condition on data
+    needs: tuple[Any, ...] = ()  # variables of the nest that headers and conditions around it read, where they are named
     path: tuple[int, ...] = ()  # the loop bodies and branches around it: what may run less often than the rest
 
     @property
@@ -44,6 +45,10 @@ class Context:
     def uncertain(self) -> Context:
         """Under a condition on data."""
         return replace(self, certain=False)
+
+    def needing(self, names: tuple[Any, ...]) -> Context:
+        """Where a header or condition around reads these variables."""
+        return replace(self, needs=(*self.needs, *names)) if names else self
 
     def block(self, node: Any) -> Context:
         """In a loop body or branch."""

@@ -16,9 +16,10 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, less
+from ..affine import Affine, AllOf, AnyOf, Constraint, Formula, at_most, equal, less, negate
 from ..model import AssumptionCode, CType
 from ..values import dataclass
+from .conditions import Conditions
 from .context import Context
 from .polynomial import Poly
 from .setting import Setting, c_text
@@ -108,7 +109,7 @@ class Expressions:
         constant = value.poly.constant
         if constant is not None:
             return Value(Poly.of(wrapped(constant, to)), to, True)
-        fits = to.smallest <= value.type.smallest and value.type.largest <= to.largest
+        fits = value.type.fits(to)
         if fits or (not to.signed and not value.exact and to.bits <= value.type.bits):
             if fits and to.bits > value.type.bits and not value.exact:
                 seen = self._widened(value, context, node)
@@ -162,7 +163,8 @@ class Expressions:
             return Value(Poly.of(iterator), type_, True)
         definition = setting.definition(binding, context)
         if definition is not None:
-            value = self.value(definition.expression, definition.context)
+            with setting.at(definition):
+                value = self.value(definition.expression, definition.context)
             return None if value is None else self.convert(value, type_, definition.context, node)
         if setting.is_frozen(binding) and not (setting.strict and setting.reachable(binding)):
             return Value(Poly.of(setting.parameter_of(binding, type_)), type_, True)
@@ -274,7 +276,29 @@ class Expressions:
         symbol = self._setting.expression_parameter(node, type_)
         for fact in self._division_facts(node, symbol, context):
             self._setting.add_fact(fact, context, node)
+        if isinstance(node, c_ast.TernaryOp):
+            plain = is_plain_choice(node)  # defined whether or not this place is reached: a fact without conditions
+            for fact in self._choice_facts(node, symbol, type_, Context() if plain else context):
+                if plain:
+                    self._setting.knowledge.add_choice(fact)
+                else:
+                    self._setting.add_fact(fact, context, node)
         return Value(Poly.of(symbol), type_, True)
+
+    def _choice_facts(self, node: Any, symbol: str, type_: CType, context: Context) -> list[Formula]:
+        """Which of two values ``c ? x : y`` is, wherever nothing in the three wraps."""
+        mark = self._setting.mark()
+        condition = Conditions(self._setting).known(node.cond, context)
+        facts: list[Formula] = []
+        if condition is not None:
+            for holds, branch in ((condition, node.iftrue), (negate(condition), node.iffalse)):
+                value = self.affine(branch, context.where(holds), type_)
+                if value is not None:
+                    facts.append(AllOf((holds, equal(Affine.of(symbol), value))))
+        if len(facts) < 2 or self._setting.mark()[1:4] != mark[1:4]:  # unknown, or more memory must keep its values
+            self._setting.rewind(mark)
+            return []
+        return [AnyOf((*facts, *self._setting.failures_since(mark)))]
 
     def _division_facts(self, node: Any, symbol: str, context: Context) -> list[Formula]:
         """What ``n / 2`` and ``n % 2`` are where the sign of ``n`` is not known: truncation towards zero (6.5.5 p6)."""
@@ -299,3 +323,11 @@ def wrapped(value: int, type_: CType) -> int:
     """An integer converted to a type; to a signed one as gcc and clang do, modulo 2^bits."""
     value %= 1 << type_.bits
     return value - (1 << type_.bits) if type_.signed and value > type_.largest else value
+
+
+def is_plain_choice(node: Any) -> bool:
+    """True for ``a < b ? c : d`` of four names or constants."""
+    if not isinstance(node, c_ast.TernaryOp):
+        return False
+    sides = (node.cond.left, node.cond.right) if isinstance(node.cond, c_ast.BinaryOp) else (node.cond,)
+    return all(isinstance(one, (c_ast.ID, c_ast.Constant)) for one in (*sides, node.iftrue, node.iffalse))

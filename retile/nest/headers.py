@@ -74,7 +74,7 @@ def _bound(source: Source, loop: Any, header: Header, texts: dict[str, str], set
     if header.relation == "-->":
         return ("0" if header.bound_node is None else c_text(header.bound_node)), "-->"
     if header.bound_node is None or _computed_inside(header.bound_node, setting):
-        return bound_text(header.last, texts), header.relation if header.relation != "!=" else _inclusive(header)
+        return bound_text(header.last, texts), _inclusive(header)
     parts = source.for_parts(loop)
     text = "" if parts is None else source.slice(parts[1])
     if "/*" in text or "//" in text or not isinstance(loop.cond, c_ast.BinaryOp):

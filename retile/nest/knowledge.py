@@ -15,6 +15,9 @@ from ..sets import Region
 from ..values import dataclass
 from .readable import formula_text
 
+# How many convex pieces the facts of several cases may have together.
+_MOST_PIECES = 24
+
 
 @dataclass(frozen=True)
 class Obligation:
@@ -45,6 +48,14 @@ class Knowledge:
         if not (isinstance(fact, AllOf) and not fact.parts):
             self.facts.setdefault(fact)
 
+    def add_choice(self, fact: Formula) -> None:
+        """Note a fact of several cases, unless the cases of all facts multiply to too many.
+
+        Every set that is made from the facts has that many pieces.  Without the fact less is known, nothing wrong.
+        """
+        if self.region(fact).size <= _MOST_PIECES:
+            self.add_fact(fact)
+
     def add_parameter(self, parameter: Parameter) -> str:
         """Note a parameter and the facts of its type; gives its symbol."""
         if parameter.symbol not in self.parameters:
@@ -70,6 +81,14 @@ class Knowledge:
     def region(self, *formulas: Formula, known: int | None = None) -> Region:
         """All that is known, or the first ``known`` facts, and these formulas."""
         both = AllOf((*tuple(self.facts)[:known], *formulas))
+        return Region.where(both, self.ranges(formula_names(both)))
+
+    def _few(self, *formulas: Formula) -> Region:
+        """As ``region``, without the facts of several cases where that would be many pieces."""
+        found = self.region(*formulas)
+        if found.size <= _MOST_PIECES:
+            return found
+        both = AllOf((*(fact for fact in self.facts if _is_one_case(fact)), *formulas))
         return Region.where(both, self.ranges(formula_names(both)))
 
     def proves(self, domain: Formula, formula: Formula) -> bool:
@@ -102,15 +121,27 @@ class Knowledge:
         self._conditions.clear()
 
     def exact_condition(self, obligation: Obligation) -> Formula | None:
-        """As ``condition``, but not a word more than is needed: for what is taken as a fact."""
+        """As ``condition``, but not a word more than is needed: for what is taken as a fact.
+
+        None too where the fact would have too many cases to be of use.
+        """
         names = formula_names(obligation.formula)
-        known = self.region(obligation.domain, self.ranges(names))
+        known = self._few(obligation.domain, self.ranges(names))
         bad = (known - Region.where(obligation.formula)).without(obligation.iterators)
         if bad.is_empty():
             return None
-        context = self.region(self.ranges(bad.names()))
+        context = self._few(self.ranges(bad.names()))
         good = (context - bad).relative_to(context)
-        return AnyOf() if (context - bad).is_empty() else good.formula()
+        if (context - bad).is_empty():
+            return AnyOf()
+        return good.formula() if good.size <= _MOST_PIECES else None
+
+
+def _is_one_case(formula: Formula) -> bool:
+    """True for a formula without a disjunction."""
+    if isinstance(formula, AnyOf):
+        return False
+    return isinstance(formula, Constraint) or all(_is_one_case(part) for part in formula.parts)
 
 
 def type_range(name: str, type_: CType) -> Formula:

@@ -33,6 +33,7 @@ from .bounds import Bounds, flat, negated, scaled
 from .conditions import Conditions
 from .context import Context
 from .endings import Endings
+from .expressions import is_plain_choice
 from .refusals import Refused, refused
 from .scopes import Binding
 from .setting import Setting, c_text
@@ -194,7 +195,12 @@ class Loops:
         if not self._setting.means_the_same_ahead(node):
             return first
         symbol = Affine.of(self._setting.expression_parameter(node, type_))
-        self._setting.add_fact(AllOf((at_least_bound(symbol, first), at_most_bound(symbol, first))), context, node)
+        fact = AllOf((at_least_bound(symbol, first), at_most_bound(symbol, first)))
+        own = self._setting.type_of(node)
+        if is_plain_choice(node) and isinstance(own, CType) and own.fits(type_):
+            self._setting.knowledge.add_choice(fact)  # defined and true whether or not this place is reached
+        else:
+            self._setting.add_fact(fact, context, node)
         return symbol
 
     def _step(self, node: Any, binding: Binding, context: Context) -> int:

@@ -337,7 +337,8 @@ class Places:
         self._check(node, type_, frozenset())
         definition = setting.definition(binding, context)
         if definition is not None:
-            return self.pointer(definition.expression, definition.context)
+            with setting.at(definition):
+                return self.pointer(definition.expression, definition.context)
         if not setting.is_frozen(binding):
             raise refused(
                 node,

@@ -70,6 +70,14 @@ def assigned_target(node: Any) -> Any:
     return None
 
 
+def sole_assignment(node: Any) -> Any:
+    """The assignment ``x = e;`` that a statement is, or a block of just one; None for any other."""
+    while isinstance(node, c_ast.Compound) and len(node.block_items or ()) == 1:
+        node = node.block_items[0]
+    plain = isinstance(node, c_ast.Assignment) and node.op == "=" and isinstance(node.lvalue, c_ast.ID)
+    return node if plain else None
+
+
 class FunctionNames:
     """Bindings, parents and uses of everything in one function definition."""
 

@@ -5,11 +5,13 @@ The one mutable object of the room.  It lives while one nest is read, and what i
 
 from __future__ import annotations
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
 from pycparser import c_ast, c_generator
 
-from ..affine import Affine, Formula, Symbol
+from ..affine import Affine, Formula, Symbol, negate
 from ..model import AssumptionCode, CType, Parameter
 from ..source.kinds import ArrayOf
 from ..values import dataclass
@@ -27,10 +29,11 @@ if TYPE_CHECKING:
 
 @dataclass(frozen=True)
 class Definition:
-    """The one expression that gives a local its value, and where it stands."""
+    """The expression that gives a local the value that it has from there on, and where it stands."""
 
-    expression: Any
+    expression: Any  # None: not known any more
     context: Context
+    before: dict[Binding, Definition]  # what held where it stands
 
 
 def c_text(node: Any) -> str:
@@ -131,12 +134,57 @@ class Setting:
             return self.unit.address_taken_in_file(binding)
         return self.names.address_taken(binding)
 
-    def define(self, binding: Binding, expression: Any, context: Context) -> None:
-        """Note that this is the only assignment to a local inside the nest."""
-        if len(self.assigned(binding)) != 1 or not binding.automatic or self.names.address_taken(binding):
+    def define(
+        self, binding: Binding, expression: Any, context: Context, before: dict[Binding, Definition] | None = None
+    ) -> None:
+        """Note what a local is from here on; ``before``: the definitions that hold where the expression is evaluated."""
+        if not self._may_define(binding):
             return
-        if all(self._known_before(one, context) for one in descendants(expression) if isinstance(one, c_ast.ID)):
-            self.definitions[binding] = Definition(expression, context)
+        now, self.definitions = self.definitions, self.definitions if before is None else before
+        known = all(self._known_before(one, context) for one in descendants(expression) if isinstance(one, c_ast.ID))
+        before, self.definitions = dict(self.definitions), now
+        if known:
+            self.definitions[binding] = Definition(expression, context, before)
+        elif binding in self.definitions:
+            self.definitions[binding] = Definition(None, context, before)
+
+    def _may_define(self, binding: Binding) -> bool:
+        """True if what the last assignment in the text gives is what every use behind it sees, wherever it is covered.
+
+        So no loop may lie around one assignment and not around another that it could follow: ``hi = n; for (k) { ...;
+        hi = k; }``.
+        """
+        nodes = self.assigned(binding)
+        if not binding.automatic or self.names.address_taken(binding):
+            return False
+        if len(nodes) == 1:
+            return True
+        around = {tuple(self._loops_around(node)) for node in nodes}
+        longer = any(one != other and one == other[: len(one)] for one in around for other in around)
+        return not longer and all(self._is_statement(node) for node in nodes)
+
+    def _loops_around(self, node: Any) -> list[int]:
+        """The loops of the piece around a node, outermost first."""
+        above = self.names.ancestors(node)
+        return [id(one) for one in above if isinstance(one, c_ast.For) and id(one) in self._inside][::-1]
+
+    def _is_statement(self, node: Any) -> bool:
+        """True for a declaration or a plain assignment that is a statement of its own."""
+        if isinstance(node, c_ast.Decl):
+            return isinstance(self.names.parent(node), c_ast.Compound)
+        above = self.names.parent(node)
+        plain = isinstance(node, c_ast.Assignment) and node.op == "="
+        body = isinstance(above, c_ast.For) and above.stmt is node or isinstance(above, (c_ast.Compound, c_ast.If))
+        return plain and body
+
+    @contextmanager
+    def at(self, definition: Definition) -> Iterator[None]:
+        """While this is open, names mean what they meant where the definition stands."""
+        now, self.definitions = self.definitions, definition.before
+        try:
+            yield
+        finally:
+            self.definitions = now
 
     def _known_before(self, node: Any, context: Context) -> bool:
         """True if a name in a definition is an iterator, never changes, or was defined before."""
@@ -154,7 +202,7 @@ class Setting:
     def definition(self, binding: Binding, context: Context) -> Definition | None:
         """The definition that every use here sees; None if there is no such."""
         found = self.definitions.get(binding)
-        return found if found is not None and found.context.covers(context) else None
+        return found if found is not None and found.expression is not None and found.context.covers(context) else None
 
     # ------------------------------------------------------------ parameters
 
@@ -349,6 +397,14 @@ class Setting:
         """True if nothing was gathered since a mark that must hold or keep its value; parameters may have been."""
         return self.mark()[:4] == mark[:4]
 
+    def failures_since(self, mark: tuple[int, ...]) -> tuple[Formula, ...]:
+        """Where what was required since a mark does not hold, one formula each; it is required no longer."""
+        taken_back = list(self.obligations)[mark[0] :]
+        for obligation in taken_back:
+            del self.obligations[obligation]
+        conditions = [self.knowledge.condition(obligation) for obligation in taken_back]
+        return tuple(dict.fromkeys(negate(condition) for condition in conditions if condition is not None))
+
     def rewind(self, mark: tuple[int, ...]) -> None:
         """Forget what was gathered since a mark, because what it was for came to nothing."""
         if len(self.knowledge.facts) > mark[-1]:
@@ -369,7 +425,7 @@ class Setting:
             Obligation(AssumptionCode.OTHER, formula, context.formula, context.loops, node)
         )
         if condition is not None:
-            self.knowledge.add_fact(condition)
+            self.knowledge.add_choice(condition)
 
     def require(
         self, code: AssumptionCode, formula: Formula, context: Context, node: Any, storages: tuple[str, ...] = ()

@@ -18,7 +18,7 @@ from .refusals import refusal
 from .scalars import Numbered, Web, webs
 from .setting import Setting, c_text
 from .shapes import Grid, Subscript, grid_of, needs_grid, stride_texts
-from .walk import Walk
+from .walk import RawStatement, Walk
 
 
 class Stored:
@@ -54,6 +54,9 @@ class _Builder:
 
     def _span(self, order: tuple[int, int]) -> Any:
         return self._walk.statements[order[0]].span
+
+    def _statement(self, order: tuple[int, int]) -> RawStatement:
+        return self._walk.statements[order[0]]
 
     # ------------------------------------------------------------ variables
 
@@ -98,7 +101,7 @@ class _Builder:
         self.stored.roots[name] = place.root
         self.stored.keys[name] = place.key
         for order, touch in web.touches:
-            self.stored.accesses[order] = _access(touch, name, (), self._span(order))
+            self.stored.accesses[order] = _access(touch, name, (), self._statement(order))
 
     def _element(self, type_: Any) -> CType | str:
         if isinstance(type_, CType):
@@ -181,7 +184,7 @@ class _Builder:
         for (order, touch), column in zip(touches, columns, strict=True):
             known = [part for part in column if part is not None]
             subscripts = tuple(form for part in known for form in part) if len(known) == len(column) else None
-            self.stored.accesses[order] = _access(touch, name, subscripts, self._span(order))
+            self.stored.accesses[order] = _access(touch, name, subscripts, self._statement(order))
 
     def _whole(self, name: str, place: Place, shape: tuple[Affine | None, ...], strides: tuple[str, ...]) -> Storage | None:
         """The array of structures that a member lies in; None for one structure, or where a length is not known."""
@@ -330,6 +333,10 @@ def _shown(key: str, places: list[Place]) -> str:
     return key
 
 
-def _access(touch: Touch, name: str, subscripts: tuple[Affine, ...] | None, span: Span) -> Access:
+def _access(touch: Touch, name: str, subscripts: tuple[Affine, ...] | None, statement: RawStatement) -> Access:
     family, exact = (touch.update.family, touch.update.exact) if touch.update else ("", False)
-    return Access(name, touch.write, subscripts, touch.context.certain, span, family, exact, Syntax(touch.node))
+    own, around = touch.context.constraints, statement.context.constraints
+    where = AllOf(own[len(around) :]) if own[: len(around)] == around else AllOf()
+    return Access(
+        name, touch.write, subscripts, touch.context.certain, statement.span, family, exact, Syntax(touch.node), where
+    )

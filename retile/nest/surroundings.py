@@ -11,14 +11,14 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import Affine, Formula, negate
-from ..model import CType
+from ..affine import Affine, AnyOf, Formula, negate
+from ..model import AssumptionCode, CType
 from .bounds import Bounds
 from .conditions import Conditions
 from .context import Context
 from .expressions import Expressions
 from .headers import origin_of
-from .knowledge import Knowledge
+from .knowledge import Knowledge, Obligation
 from .loops import Loops
 from .places import Places
 from .refusals import Refused
@@ -113,16 +113,35 @@ def _outer(loop: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) ->
         return
     fact = _loop_fact(loop, binding, setting)
     if fact is not None:
-        knowledge.add_fact(fact)
+        knowledge.add_choice(fact)
+
+
+class _Provisional(Setting):
+    """A strict setting that notes what it cannot prove.
+
+    Facts from inside the loop say nothing of the header, which is evaluated before, so none of them settles it.
+    """
+
+    def require(
+        self, code: AssumptionCode, formula: Formula, context: Context, node: Any, storages: tuple[str, ...] = ()
+    ) -> bool:
+        self.obligations.setdefault(Obligation(code, formula, context.formula, context.loops, node, storages, known=0))
+        return True
 
 
 def _loop_fact(loop: Any, binding: Binding, setting: Setting) -> Formula | None:
-    whole = Setting(setting.unit, setting.names, loop, setting.knowledge, strict=True)
-    whole.expressions, whole.places = Expressions(whole), Places(whole)
-    whole.loop_ids.add(binding.name)
-    conditions = Conditions(whole)
-    try:
-        header = Loops(whole, conditions, Bounds(whole, conditions)).header(loop, binding.name, Context())
-        return header.constraint(binding.name, origin_of(header) if isinstance(header.first, Affine) else None)
-    except Refused:
-        return None
+    """Which values the iterator takes, or else: wherever nothing in the header wraps; None if it is not read."""
+    for kind in (Setting, _Provisional):
+        whole = kind(setting.unit, setting.names, loop, setting.knowledge, strict=True)
+        whole.expressions, whole.places = Expressions(whole), Places(whole)
+        whole.loop_ids.add(binding.name)
+        conditions, mark = Conditions(whole), whole.mark()
+        try:
+            header = Loops(whole, conditions, Bounds(whole, conditions)).header(loop, binding.name, Context())
+            values = header.constraint(binding.name, origin_of(header) if isinstance(header.first, Affine) else None)
+        except Refused:
+            whole.rewind(mark)
+            continue
+        failures = whole.failures_since(mark)
+        return AnyOf((values, *failures)) if failures else values
+    return None

@@ -7,8 +7,8 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import Affine, AllOf, Formula, at_least_bound, at_most_bound, negate
-from ..model import Refusal, Span
+from ..affine import Affine, AllOf, AnyOf, Formula, at_least_bound, at_most_bound, negate
+from ..model import CType, Refusal, Span
 from ..source.kinds import ArrayOf, PointerTo
 from ..tree import Guard, Leaf, Loop, Node
 from ..values import dataclass, replace
@@ -21,8 +21,9 @@ from .headers import origin_of, spans_of
 from .hiding import hidden_names
 from .loops import Header, Loops
 from .refusals import Refused, refusal, refused
-from .scopes import Binding, descendants
+from .scopes import Binding, descendants, sole_assignment
 from .setting import Setting, c_text
+from .skipping import items_of, runs_on, skips, surely_skips
 
 _FORBIDDEN = {
     c_ast.While: ("while", "a `while` loop runs an unknown number of times; write it as a `for` with a bound."),
@@ -32,7 +33,6 @@ _FORBIDDEN = {
         "break",
         "`break` ends the loop early, so how often it runs depends on data; let the bound say where the loop ends.",
     ),
-    c_ast.Continue: ("continue", "`continue` skips the rest of the iteration; put the rest into an `if`."),
     c_ast.Goto: ("goto", "`goto` leaves the order of the loops; write it with loops and `if`."),
     c_ast.Label: ("label", "a label can be jumped to from elsewhere; write the nest without `goto`."),
     c_ast.Return: (
@@ -81,6 +81,14 @@ class RawStatement:
     node: Any
 
 
+@dataclass(frozen=True)
+class _Rest:
+    """A branch of an ``if`` with what else it guards."""
+
+    items: tuple[Any, ...]
+    rest: tuple[Any, ...]
+
+
 class Walk:
     """Reads one nest.  What it finds stands in its public fields afterwards."""
 
@@ -96,6 +104,7 @@ class Walk:
         self._source = setting.unit.source
         self.branches: list[tuple[Context, int, int, int]] = []  # around an if, both branches, statements up to its end
         self._per_line: Counter[int] = Counter()
+        self._kept: list[_Rest] = []  # alive as long as contexts tell them by their identity
         conditions = Conditions(setting)
         self._conditions = conditions
         self._headers = Loops(setting, conditions, Bounds(setting, conditions))
@@ -122,7 +131,7 @@ class Walk:
             if isinstance(node, kind):
                 raise refused(node, code, reason)
         match node:
-            case None | c_ast.EmptyStatement() | c_ast.Typedef() | c_ast.StaticAssert():
+            case None | c_ast.EmptyStatement() | c_ast.Typedef() | c_ast.StaticAssert() | c_ast.Continue():
                 return ()
             case c_ast.Compound():
                 return self._sequence(node.block_items or (), context)
@@ -138,10 +147,15 @@ class Walk:
             node, "unsupported", "retile does not read this statement; write it with assignments, `if` and `for`."
         )
 
-    def _sequence(self, items: Any, context: Context) -> tuple[Node, ...]:
+    def _sequence(self, items: Any, context: Context, rest: tuple[Any, ...] = ()) -> tuple[Node, ...]:
+        """The nodes of some statements; ``rest``: what else runs in the iteration, unless they skip it."""
         nodes: list[Node] = []
         group: list[Any] = []
-        for item in (*items, None):
+        for at, item in enumerate((*items, None)):
+            if item is not None and skips(item):
+                if group:
+                    nodes += self._guarded_declarations(group, context)
+                return (*nodes, *self._skipping(item, (*items[at + 1 :], *rest), context))
             if isinstance(item, c_ast.Decl) and (not group or self._together(group[0], item)):
                 group.append(item)
                 continue
@@ -152,7 +166,23 @@ class Walk:
                 group.append(item)
             elif item is not None:
                 nodes += self._node(item, context)
-        return tuple(nodes)
+        return (*nodes, *self._sequence(rest, context)) if rest else tuple(nodes)
+
+    def _skipping(self, node: Any, rest: tuple[Any, ...], context: Context) -> tuple[Node, ...]:
+        """The nodes of a statement that may skip the rest of the iteration, and of that rest."""
+        try:
+            if isinstance(node, c_ast.Compound):
+                return self._sequence(node.block_items, context, rest)
+            if surely_skips(node) and runs_on(rest):
+                raise refused(rest[0], "continue", "nothing that stands behind a `continue` can run; take it out.")
+            if not isinstance(node, c_ast.If):
+                return self._statement(node, context)
+            if not surely_skips(node.iftrue) and not surely_skips(node.iffalse) and runs_on(rest):
+                return self._perhaps_skipped(node, rest, context)
+            return self._branch(node, context, rest)
+        except Refused as problem:
+            self.refusals.append(problem.refusal)
+            return ()
 
     def _together(self, first: Any, second: Any) -> bool:
         """True for the declarators of one declaration."""
@@ -224,9 +254,29 @@ class Walk:
 
     def _leaf(self, node: Any, span: Span, touches: tuple[Touch, ...], context: Context) -> Leaf:
         id = self._statement_id(span.line)
+        touches = (*self._needed(context), *touches)
         text = " ".join(self._source.slice(span).split())
         self.statements.append(RawStatement(id, span, text, context, touches, node))
         return Leaf(id, tuple((loop, Affine.of(loop)) for loop in context.loops))
+
+    def _needed(self, context: Context) -> tuple[Touch, ...]:
+        """The reads of what a header or condition around names, for wherever a plan puts a copy of it."""
+        found = {self.setting.names.of(node): node for node in context.needs}
+        return tuple(
+            Touch(self.setting.places.variable(binding), False, context, node)
+            for binding, node in found.items()
+            if binding is not None
+        )
+
+    def _computed(self, *nodes: Any) -> tuple[Any, ...]:
+        """The names in these expressions of what the nest computes."""
+        return tuple(
+            one
+            for node in nodes
+            if node is not None
+            for one in descendants(node)
+            if isinstance(one, c_ast.ID) and self.setting.names.of(one) in self.setting.definitions
+        )
 
     def _statement_id(self, line: int) -> str:
         self._per_line[line] += 1
@@ -243,13 +293,16 @@ class Walk:
 
     # ------------------------------------------------------------ if
 
-    def _branch(self, node: Any, context: Context) -> tuple[Node, ...]:
+    def _branch(self, node: Any, context: Context, rest: tuple[Any, ...] = ()) -> tuple[Node, ...]:
+        """An ``if``; ``rest``: what follows in the iteration, if a branch may skip it."""
+        ends = (node.iftrue, node.iffalse) if not skips(node) else self._with_rest(node, rest)
         span = self._source.condition_span(node)
         if span is None:
             raise refused(node, "macro", "the `if` comes out of a macro, so it has no text of its own; write it out.")
         condition = self._conditions.known(node.cond, context)
         self.evaluated.append(Evaluated(node.cond, context))
         nodes: list[Node] = []
+        before = dict(self.setting.definitions)
         if condition is None:
             touches = self._effects.of(node.cond, context)
             if any(touch.write for touch in touches):
@@ -258,21 +311,72 @@ class Walk:
         if condition is None:
             part = self._conditions.known_part(node.cond, context)
             narrowed = context if part is None else context.where(part)
-            nodes += self._guard(part, node.iftrue, narrowed.uncertain(), span, partly=part is not None)
-            nodes += self._guard(None, node.iffalse, context.uncertain(), span)
+            nodes += self._guard(part, ends[0], narrowed.uncertain(), span, partly=part is not None)
+            nodes += self._guard(None, ends[1], context.uncertain(), span)
         else:
-            nodes += self._guard(condition, node.iftrue, context.where(condition), span)
-            nodes += self._guard(negate(condition), node.iffalse, context.where(negate(condition)), span)
-        self.branches.append((context, id(node.iftrue), id(node.iffalse), len(self.statements)))
+            context = context.needing(self._computed(node.cond))
+            nodes += self._guard(condition, ends[0], context.where(condition), span)
+            nodes += self._guard(negate(condition), ends[1], context.where(negate(condition)), span)
+            self._choose(node, context, before)
+        self.branches.append((context, id(ends[0]), id(ends[1]), len(self.statements)))
         return tuple(nodes)
+
+    def _choose(self, node: Any, context: Context, before: dict[Binding, Any]) -> None:
+        """``if (hi > n) hi = n;`` and ``if (c) hi = n; else hi = m;``: from here on the variable is one of two."""
+        yes, no = sole_assignment(node.iftrue), sole_assignment(node.iffalse)
+        binding = None if yes is None else self.setting.names.of(yes.lvalue)
+        if binding is None or (node.iffalse is not None and (no is None or self.setting.names.of(no.lvalue) is not binding)):
+            return
+        other = yes.lvalue if no is None else no.rvalue
+        if isinstance(self.setting.type_of_binding(binding), CType):
+            self.setting.define(binding, c_ast.TernaryOp(node.cond, yes.rvalue, other, node.coord), context, before)
 
     def _guard(
         self, condition: Formula | None, body: Any, context: Context, span: Span, partly: bool = False
     ) -> list[Node]:
         if body is None:
             return []
-        inner = self._node(body, context.block(body))
-        return [Guard(condition, inner, (span.start, span.end), partly)] if inner else []
+        inside = context.block(body)
+        jump = isinstance(body, _Rest)
+        inner = self._sequence(body.items, inside, body.rest) if isinstance(body, _Rest) else self._node(body, inside)
+        return [Guard(condition, inner, (span.start, span.end), partly, jump)] if inner else []
+
+    def _with_rest(self, node: Any, rest: tuple[Any, ...]) -> tuple[_Rest, _Rest]:
+        """Both branches of an ``if`` with a ``continue`` in it, and in the one that goes on the rest of the iteration."""
+        yes, no = (
+            _Rest(items_of(branch), () if surely_skips(branch) else rest) for branch in (node.iftrue, node.iffalse)
+        )
+        self._kept += (yes, no)
+        return yes, no
+
+    def _perhaps_skipped(self, node: Any, rest: tuple[Any, ...], context: Context) -> tuple[Node, ...]:
+        """An ``if`` whose branches both may go on, one of them not always: the rest has a guard of its own."""
+        span = self._source.condition_span(node)
+        before = self._branch(node, context)
+        skipped = self._skipped_where(node, context)
+        left = None if skipped is None else negate(skipped)
+        context = context.needing(self._computed(node))
+        body = _Rest((), rest)
+        self._kept.append(body)
+        assert span is not None  # the branch would have been refused
+        return (*before, *self._guard(left, body, context.uncertain() if left is None else context.where(left), span))
+
+    def _skipped_where(self, node: Any, context: Context) -> Formula | None:
+        """Where a statement skips what follows it; None if that depends on data."""
+        if not skips(node):
+            return AnyOf()
+        if isinstance(node, c_ast.Continue):
+            return AllOf()
+        if isinstance(node, c_ast.Compound):
+            parts = [self._skipped_where(item, context) for item in node.block_items]
+        else:
+            holds = self._conditions.known(node.cond, context) if isinstance(node, c_ast.If) else None
+            inner = [] if holds is None else [self._skipped_where(one, context) for one in (node.iftrue, node.iffalse)]
+            if holds is None or None in inner:
+                return None
+            parts = [AllOf((one, part)) for one, part in zip((holds, negate(holds)), inner, strict=True) if part is not None]
+        known = tuple(part for part in parts if part is not None)
+        return AnyOf(known) if len(known) == len(parts) else None
 
     # ------------------------------------------------------------ loops
 
@@ -293,6 +397,7 @@ class Walk:
         start = context.inside(id, header.binding, AllOf((at_least_bound(at, header.first), at_most_bound(at, header.first))))
         self.evaluated += [Evaluated(header.first_node, context), Evaluated(node.cond, context if header.before_first else start)]
         inside = context.inside(id, header.binding, header.constraint(id, origin))
+        inside = inside.needing(self._computed(node.init, node.cond, node.next))
         body = self._node(node.stmt, inside.block(node.stmt))
         lower, upper = (header.first, header.last) if header.step > 0 else (header.last, header.first)
         return Loop(id, lower, upper, header.step, origin, body, id)

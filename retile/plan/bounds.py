@@ -34,6 +34,15 @@ def bounds_on(values: Region, symbol: str) -> tuple[tuple[Bound, ...], tuple[Bou
     return tuple(lowers), tuple(uppers)
 
 
+def bounds_of_pieces(values: Region, symbol: str) -> tuple[tuple[Bound, ...], tuple[Bound, ...]]:
+    """As above for a region whose pieces have no bound in common: the smallest lower and the largest upper one of all."""
+    found = [bounds_on(Region.where(*piece), symbol) for piece in values.pieces()]
+    lowers = [tightest("max", lower) for lower, _ in found if lower]
+    uppers = [tightest("min", upper) for _, upper in found if upper]
+    return ((tightest("min", tuple(lowers)),) if len(lowers) == len(found) else (),
+            (tightest("max", tuple(uppers)),) if len(uppers) == len(found) else ())
+
+
 def on_grid(loop: Loop) -> Loop:
     """The same loop with a constant bound moved to the first value of the grid that it lets in."""
     step = abs(loop.step)

@@ -22,7 +22,7 @@ from ..model import Nest, Plan, Term
 from ..sets import Region
 from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Role, Verbatim, loops_of
 from ..values import replace
-from .bounds import bounds_on, on_grid, tightest, without_idle_bounds
+from .bounds import bounds_of_pieces, bounds_on, on_grid, tightest, without_idle_bounds
 from .buffers import reads_and_writes, served
 from .grammar import form_text
 from .kept import Keeping, kept_from, keeping
@@ -274,6 +274,9 @@ class _Builder:
         if not start and not (lower and upper):
             full_lower, full_upper = bounds_on(values.hull(), symbol)
             lower, upper = lower or full_lower, upper or full_upper
+            if not (lower and upper):
+                each_lower, each_upper = bounds_of_pieces(values, symbol)
+                lower, upper = lower or each_lower, upper or each_upper
         loop = on_grid(replace(frame, lower=tightest("max", ((frame.lower,) if start else ()) + lower),
                                 upper=tightest("min", ((frame.upper,) if start else ()) + upper)))
         # Where the values are none, the loops inside run nothing, whatever the bounds say.

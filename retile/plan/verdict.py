@@ -17,7 +17,7 @@ from ..model import (Assumption, AssumptionCode, Instance, Judgement, Nest, Plan
                      Unproven, Verdict, Violation)
 from ..order import Coordinate, first_differences, prime, primed_vector
 from ..sets import Region
-from ..tree import occurrences
+from ..tree import Guard, Leaf, Loop, Node, children, occurrences
 from ..touched import touched
 from ..values import dataclass, replace
 from .afterwards import lost_iterators
@@ -181,6 +181,7 @@ class _Court:
             return
         yield from self._never_run()
         yield from self._shared_iterators()
+        yield from self._skipped_loops(self._nest.tree)
         yield from reads_ahead(self._nest, self.plan)
         for loop in lost_iterators(self._nest):
             yield Refusal(loop.span.line, loop.span.column, "iterator-after",
@@ -240,6 +241,17 @@ class _Court:
                                   f"the plan runs this line inside the loops {other} and {term.loop}, which use one variable; "
                                   "give one of them a variable of its own")
                     return
+
+    def _skipped_loops(self, nodes: tuple[Node, ...], skipped: bool = False) -> Iterator[Refusal]:
+        """Loops of the plan that a `continue` skips: what it skips has no text of its own that could move."""
+        for node in nodes if not self.is_identity() else ():
+            if isinstance(node, Loop) and skipped and node.of in self.plan.moved:
+                span = self._nest.loop(node.of).span
+                yield Refusal(span.line, span.column, "continue",
+                              f"a `continue` before it decides whether the loop over {node.of} runs; put the loop into an `if` "
+                              "instead, or leave it out of the plan")
+            elif not isinstance(node, Leaf):
+                yield from self._skipped_loops(children(node), skipped or isinstance(node, Guard) and node.jump)
 
     def _split_of(self, statement: Statement) -> tuple[int, ...]:
         return tuple(place.position for place in self.plan.places_of(statement.id))

@@ -144,6 +144,19 @@ class NestText:
         inside = [shape for shape in siblings if start <= self._start(shape) < end]
         return len(inside) + (self._start(inside[0]) > start)
 
+    def skips(self, node: Verbatim) -> bool:
+        """True if a piece has a ``continue`` of a loop that stands around it."""
+        start, end = self.piece(node)
+        return any(start <= place < end and owner < start for place, owner in self._continues(self._root, -1))
+
+    def _continues(self, shape: Shape, owner: int) -> Iterator[tuple[int, int]]:
+        """Where each ``continue`` stands, and where the loop that it belongs to starts."""
+        if shape.kind == "simple" and self._solid[shape.start].text == "continue":
+            yield self._start(shape), owner
+        owner = self._start(shape) if shape.kind in ("for", "while", "do") else owner
+        for child in shape.children:
+            yield from self._continues(child, owner)
+
     def _widened(self, span: tuple[int, int]) -> tuple[int, int]:
         siblings, opening, closing = self._siblings(span)
         inside = [shape for shape in siblings if self._end(shape) > span[0] and self._start(shape) < span[1]]

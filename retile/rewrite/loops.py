@@ -341,6 +341,9 @@ class Elements(ABC):
         if len(forms) == 1:
             return forms[0]
         limit = Limit("", kind == "min", frozenset(forms))
+        for known in work.place.limits:  # declared for a loop before this one in the same block, or around it
+            if known.upward is limit.upward and known.ends == limit.ends:
+                return Affine.of(known.symbol)
         name = self._limit_name(loop, limit.ends, chunk, word)
         limit = replace(limit, symbol=f"= {name}")
         scope = limit.named_in(work.place.scope, name, type)

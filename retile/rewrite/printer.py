@@ -19,6 +19,7 @@ from .chunks import Loops
 from .expression import Expression, condition
 from .layout import InternalError, Loose, NestText, Remarks, instances, replaced
 from .loops import Opened, Place
+from .skipping import apart
 from .style import WIDTH, Style
 
 # What OpenMP takes: OpenMP API 4.5, 2.6, "Canonical loop form".
@@ -44,6 +45,7 @@ class Printer:
         self._ids = {loop.id for loop in nest.loops}
         self._remarks = layout.remarks(kept)
         self._declared: set[Loose] = set()  # in the blocks under way
+        self._apart = apart(layout)
 
     @property
     def homeless(self) -> list[str]:
@@ -104,9 +106,15 @@ class Printer:
     # ---------------------------------------------------------------- the user's text
 
     def _piece(self, node: Verbatim, place: Place, indent: str) -> list[str]:
-        """Statements of the user's, with their accesses sent to buffers and values in place of iterators."""
+        """Statements of the user's, with their accesses sent to buffers and values in place of iterators.
+
+        They stand in a loop that runs once where their ``continue`` would skip more than them.
+        """
         extent = self._layout.piece(node) if not self._again else self._layout.without_comments(self._layout.piece(node))
-        return [indent + self._moved(extent, indent, node.content, place)]
+        if id(node) not in self._apart:
+            return [indent + self._moved(extent, indent, node.content, place)]
+        inner = indent + self._style.step
+        return [f"{indent}do {{", inner + self._moved(extent, inner, node.content, place), f"{indent}}} while (0);"]
 
     def _moved(self, extent: tuple[int, int], indent: str, content: tuple[Node, ...], place: Place) -> str:
         changes = list(dict.fromkeys(change for leaf in _leaves(content)
