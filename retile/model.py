@@ -345,8 +345,8 @@ class Plan:
 
     @property
     def remainder(self) -> str:
-        """How partial chunks are done: as the options say; what is written out needs full chunks apart."""
-        return dict(self.options).get("remainder", "peel" if self.unrolled else "clamp")
+        """How partial chunks are done: as the options say; what is written out or buffered is fast in full chunks apart."""
+        return dict(self.options).get("remainder", "peel" if self.unrolled or self.buffers else "clamp")
 
     @property
     def order_text(self) -> str:

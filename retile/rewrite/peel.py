@@ -113,13 +113,23 @@ class _Full:
                     needs = [*(_least(high_ - high, box) for high_ in uppers if isinstance(high_, Affine)),
                              *(_least(low - low_, box) for low_ in lowers if isinstance(low_, Affine))]
                     if all(need is not None and (need.terms or need.constant >= 0) for need in needs):
-                        self.conditions += [at_most(0, need) for need in needs if need is not None and need.terms]
+                        self.conditions += [_undivided(need) for need in needs if need is not None and need.terms]
                         return replace(loop, lower=low, upper=high)
         return loop
 
 
     def _short(self, distance: Affine) -> bool:
         return self._most is None or distance.is_constant and abs(distance.constant) < self._most
+
+
+def _undivided(form: Affine) -> Constraint:
+    """``0 <= form`` without its quotient: ``0 <= a - floor(e / d)`` says ``e <= d*a + d - 1``."""
+    quotients = [(term, factor) for term, factor in form.terms if isinstance(term, Floor)]
+    if len(quotients) != 1 or abs(quotients[0][1]) != 1:
+        return at_most(0, form)
+    quotient, factor = quotients[0]
+    rest = (form - Affine.of(quotient) * factor) * quotient.divisor
+    return at_most(quotient.numerator, rest + quotient.divisor - 1) if factor < 0 else at_most(-rest, quotient.numerator)
 
 
 def _range_of(loop: Loop) -> _Range | None:

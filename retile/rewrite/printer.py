@@ -83,6 +83,9 @@ class Printer:
                 before = nodes[at - 1] if at else None
                 again = isinstance(before, Loop) and before.unrolled and before.symbol == node.symbol
                 lines += self._written_out(node, place, indent, again)
+            elif isinstance(node, Loop) and self._single(node):
+                body = self._assigned(node, place, indent + self._style.braced_step)
+                lines += [indent + "{", *body, indent + "}"]
             elif isinstance(node, Loop):
                 printed, place = self._loop(node, place, indent)
                 lines += printed

@@ -82,7 +82,7 @@ def finished_tree(nest: Nest, dependences: Dependences, plan: Plan, remainder: s
 
     tree = build_tree(nest, plan)
     if remainder == "peel":
-        long = "remainder" in dict(plan.options) or not plan.unrolled
+        long = "remainder" in dict(plan.options) or not (plan.unrolled or plan.buffers)
         tree = peeled(tree, dependences.context, None if long else MOST_UNROLLED)
     tree = unrolled(tree, plan.unrolled, MOST_UNROLLED)
     check(tree, nest, dependences, plan)
@@ -240,7 +240,7 @@ class _Order:
     def _line(self) -> str:
         """The variant's one line: the plan with all options that are not the default."""
         options = self.plan.options
-        if "remainder" not in dict(options):
+        if "remainder" not in dict(options) and self.remainder != self.plan.remainder:
             options = (("remainder", self.remainder), *options)
         named = [f"{word} {value}" for word, value in options if value not in ("clamp", "no")]
         return self.plan.order_text + (f"; {', '.join(named)}" if named else "")
@@ -300,12 +300,15 @@ def step_assumptions(nest: Nest, tree: tuple[Node, ...]) -> tuple[Assumption, ..
     chunks = [loop for loop in loops_of(tree) if loop.role is Role.CHUNK and loop.named is None]
     names = frozenset().union(*(bound_names(bound) for loop in chunks for bound in (loop.lower, loop.upper)))
     room = 2 * max((abs(loop.step) for loop in chunks), default=0)
+    weight = 1 + sum(abs(factor) for loop in chunks if loop.cut is not None and len(loop.cut.terms) > 1
+                     for _, factor in loop.cut.terms)  # of the largest sum of sizes that a skewed loop counts to
     found = []
     for parameter in nest.parameters:
         type = parameter.type
         if INT.bits <= type.bits < 64 and parameter.symbol in names:
-            high = type.largest - room
-            least = type.smallest + room if type.signed and any(loop.step < 0 for loop in chunks) else type.smallest
+            high = type.largest // weight - room
+            downward = type.signed and any(loop.step < 0 for loop in chunks)
+            least = type.smallest // weight + room if downward else type.smallest
             condition = AllOf(tuple(_in_range(parameter.symbol, least, high)))
             if not Region.where(*nest.facts).implies(condition):
                 found.append(Assumption(AssumptionCode.RELATION, f"{parameter.text} is at most {high}",
