@@ -151,13 +151,9 @@ class OpenNest:
         ``trust``: only at sizes at which what the variant assumes holds.  Takes a second or two; a Finding that says so
         where the judge does not interpret something.
         """
-        from .judge import Finding, Unsupported, task_of
+        from .judge import task_of
 
-        try:
-            examiner = self._examiner
-        except Unsupported as problem:
-            return Finding(None, f"the judge does not interpret {problem}")
-        return examiner.examine(task_of(self.nest, variant, self.source.call.flags, trust))
+        return self._examiner.examine(task_of(self.nest, variant, self.source.call.flags, trust))
 
     def verify(self, variant: Variant, settings: Settings | None = None) -> Verification:
         """Whether original and variant, built and run at awkward sizes, leave the same bytes.

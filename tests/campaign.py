@@ -1,6 +1,6 @@
 """Long runs over random nests: a tally of what was compared, and every failure as a file of its own.
 
-``python tests/campaign.py FIRST COUNT [FOLDER]`` examines the nests of COUNT seeds from FIRST on, each with 24 plans, and
+``python tests/campaign.py FIRST COUNT [FOLDER]`` examines the nests of COUNT seeds from FIRST on, each with 30 plans, and
 prints the tally; the same runs as a test with ``pytest -m long tests/test_random.py --pairs N --seed S``.
 """
 

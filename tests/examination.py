@@ -41,8 +41,8 @@ _CUTS = (1, 2, 3, 5)  # for chunks that have a name
 class Effort:
     """How much is done for each nest."""
 
-    plans: int = 24
-    variants: int = 6  # of legal plans, that are written, judged and built
+    plans: int = 30
+    variants: int = 5  # of legal plans, that are written, judged and built
     tags: int = 2  # sizes at which tags are compared
     build: str = "gcc"  # the compiler; empty: nothing is built
     flags: tuple[str, ...] = ("-O1",)

@@ -103,7 +103,7 @@ class Arrays:
         if shift:
             text += f" {'+' if shift > 0 else '-'} {abs(shift)}"
         if choose.chance(7):
-            text = choose.pick([f"({text}) / 2", f"({text}) % 3", f"(({text}) & 1)", f"({text}) >> 1"])
+            text = choose.pick([f"({text}) / 2", f"({text}) % 3", f"(({text}) & 1)", f"(({text}) >> 1)"])
         if choose.chance(5):
             text += f" + {choose.pick(SIZES)}"
         return text

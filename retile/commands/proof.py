@@ -45,7 +45,7 @@ class Proof:
 
 
 def prove(nest: OpenNest, variant: Variant, trust: bool) -> Proof:
-    """Judge a variant, build it and run it; what speaks against it, and what could not be done, goes to standard error."""
+    """Judge a variant, build it and run it; what speaks against it, or could not be done, goes to standard error."""
     from ..trial import Settings
 
     finding, reason = nest.judge(variant, trust=trust), ""

@@ -32,6 +32,8 @@ class Calls(Expressions):
         if special is not None:
             found: Operand = special([self.value(part) for part in parts])
             return found
+        if any(isinstance(part, c_ast.Constant) and part.type == "string" for part in parts):
+            raise Unsupported(f"a call of {name}, which may read or change anything")
         return self._outside(name, [self.value(part) for part in parts])
 
     def own_call(self, name: str, arguments: list[Operand]) -> Operand:
@@ -43,12 +45,8 @@ class Calls(Expressions):
         if not name or not arguments or any(not isinstance(a.kind, Number) for a in arguments):
             raise Unsupported(f"a call of {name or 'a function through a pointer'}, which may read or change anything")
         kind = self._result_of(name)
-        if not kind.floating:
-            kinds = [self.convert(a, LONG) if not a.kind.floating else a for a in arguments]  # type: ignore[attr-defined]
-        else:
-            kinds = [self.convert(a, kind) for a in arguments]
         table = self.table(known_function(name) or name, kind)
-        texts = ", ".join(self.data(value) for value in kinds)
+        texts = ", ".join(self.data(self.convert(value, kind)) for value in arguments)
         return Operand(kind, "data", f"{table}[{texts}]")
 
     def _result_of(self, name: str) -> Number:

@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import os
 import time
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
+from functools import cached_property
 from itertools import islice
 from typing import TYPE_CHECKING, Any
 
@@ -61,20 +63,23 @@ class Task:
 class Examiner:
     """Judges variants of the nest that begins at a line of a file.
 
-    The whole function is run where that can be interpreted and reaches the nest; else the nest alone, with all that it uses
-    as arguments.  The original is run once per setting for all variants.
+    The whole function is run where that can be interpreted and reaches the nest; else the nest alone, with all that
+    it uses as arguments.  The original is run once per setting for all variants.
     """
 
     def __init__(self, source: Source, line: int, column: int | None = None, seconds: float = SECONDS) -> None:
         self.source, self.seconds = source, seconds
         self.notes: list[str] = []
-        self._spot: Spot = spot_of(source.ast, line, column)
-        self._line = line
-        check_machine(source)
-        self._judge, self._alone, self._names = self._opened()
+        self._line, self._column = line, column
 
+    @cached_property
+    def _spot(self) -> Spot:
+        return spot_of(self.source.ast, self._line, self._column)
+
+    @cached_property
     def _opened(self) -> tuple[Judge, bool, tuple[str, ...]]:
-        """The original as a whole if that works, else the nest alone."""
+        """The original as a whole if that works, else the nest alone; the names of its sizes."""
+        check_machine(self.source)
         try:
             judge = self._judge_of(self.source.ast)
             names = integers_of(judge)
@@ -110,23 +115,27 @@ class Examiner:
         from ..model import RetileError
 
         try:
+            judge, alone, _ = self._opened
             with reread(self.source, task.text) as variant:
-                tree = piece_of(variant.ast, self._spot, self.source.ast) if self._alone else variant.ast
-                return self._examined(Program(tree, self._judge.book, parallel_loops(task.text)), task)
+                tree = piece_of(variant.ast, self._spot, self.source.ast) if alone else variant.ast
+                return self._examined(judge, Program(tree, judge.book, parallel_loops(task.text)), task)
         except Unsupported as problem:
             return Finding(None, f"the judge does not interpret {problem}", notes=tuple(self.notes))
         except RetileError as problem:
             return Finding(False, f"the variant cannot be read: {problem}", notes=tuple(self.notes))
+        except Exception as error:  # the judge is an extra: its own faults must not keep anybody from measuring
+            if os.environ.get("RETILE_TRACEBACK"):
+                raise
+            return Finding(None, f"an error of the judge itself ({type(error).__name__}: {error})")
 
-    def _examined(self, variant: Program, task: Task) -> Finding:
-        rules = self._judge.rules(variant, task.reassociate)
+    def _examined(self, judge: Judge, variant: Program, task: Task) -> Finding:
+        rules = judge.rules(variant, task.reassociate)
         end = time.perf_counter() + self.seconds
         tried: list[str] = []
         problem: Exception | None = None
         for setting in self._settings(task):
             try:
-                self._judge.at(setting)
-                found = self._judge.compare(variant, setting, rules)
+                found = judge.compare(variant, setting, rules)
             except (Undefined, TooLong) as caught:
                 problem = caught
                 if time.perf_counter() > end:
@@ -144,14 +153,15 @@ class Examiner:
 
     def _settings(self, task: Task) -> Iterator[Setting]:
         """Sizes that may be called; pointers into the same memory early among them."""
-        plain = (setting for setting in settings(self._names, task.chunks) if task.allowed(dict(setting.sizes)))
+        names = self._opened[2]
+        plain = (setting for setting in settings(names, task.chunks) if task.allowed(dict(setting.sizes)))
         for number, setting in enumerate(plain):
             yield setting
             if number < 2:
                 yield from self._overlapping(setting, task.overlaps)
 
     def _overlapping(self, setting: Setting, pairs: Iterable[tuple[str, str]]) -> Iterator[Setting]:
-        pointers = self._judge.pointers
+        pointers = self._opened[0].pointers
         for one, other in list(pairs)[:3]:
             if one in pointers and other in pointers and one != other:
                 for shift in _SHIFTS:

@@ -1,4 +1,4 @@
-"""Where it is worth to look for faults of a variant, from what its maker knows; what is found rests on the texts alone."""
+"""Where it is worth to look for faults of a variant, from what its maker knows; findings rest on the texts alone."""
 
 from __future__ import annotations
 

@@ -1,9 +1,9 @@
 """The judge: runs an original and its variants at small sizes and says where they part.
 
-It knows no loops and no dependences.  Both texts are read anew, their functions become Python functions (``program.py``)
-and are executed on memory of the judge's invention, every number with its history (``tags.py``).  Then every cell that
-outlives them must have the original's history, and the variant may touch no cell of the caller that the original does not
-touch (``verdict.py``).
+It knows no loops and no dependences.  Both texts are read anew, their functions become Python functions
+(``program.py``) and are executed on memory of the judge's invention, every number with its history (``tags.py``).  Then
+every cell that outlives them must have the original's history, and the variant may touch no cell of the caller that the
+original does not touch (``verdict.py``).
 """
 
 from __future__ import annotations
@@ -84,8 +84,8 @@ class Judge:
     def compare(self, variant: Program, setting: Setting, rules: Rules | None = None) -> list[str]:
         """What is wrong with a variant at a setting, in words; empty if nothing.
 
-        Allocations are also made to fail, and iterations of parallel loops run in other orders.  Raises Undefined, TooLong
-        or Unsupported where the original is no measure, Unsupported where the variant cannot be interpreted.
+        Allocations are also made to fail, and iterations of parallel loops run in other orders.  Raises Undefined,
+        TooLong or Unsupported where the original is no measure, Unsupported where the variant cannot be interpreted.
         """
         before = self.at(setting)
         rules = rules or self.rules(variant)

@@ -1,4 +1,4 @@
-"""Memory of one execution: objects whose cells are addressed by byte offset and hold tags (or, for pointers, targets)."""
+"""Memory of one execution: objects with cells at byte offsets, which hold tags or, for pointers, their targets."""
 
 from __future__ import annotations
 
@@ -19,7 +19,8 @@ class Object(dict[int, Any]):
     The keys tell which cells were touched, ``writes`` what was written where, in order.
     """
 
-    __slots__ = ("machine", "name", "where", "kind", "base", "writes", "log", "declared", "iterator", "shape", "single", "_fractions")
+    __slots__ = ("machine", "name", "where", "kind", "base", "writes", "log", "declared", "iterator", "shape", "single",
+                 "_fractions")
 
     def __init__(self, machine: Machine, name: str, where: str, kind: Kind | None, declared: object = None) -> None:
         super().__init__()
@@ -141,7 +142,7 @@ class Machine:
         self.null = Null(self, "a null pointer", "heap", None, 0)
         self.null.base = 0
         self.statics: dict[str, Own] = {}  # variables of functions that keep their values
-        self.together: dict[str, tuple[str, int]] = {}  # pointers into the object of another: (its name, bytes behind it)
+        self.together: dict[str, tuple[str, int]] = {}  # pointers into another's object: (its name, bytes)
 
     # ------------------------------------------------------------ objects
 

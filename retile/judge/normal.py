@@ -127,4 +127,5 @@ def _multiset(name: str, terms: Counter[Any]) -> frozenset[tuple[Any, int]]:
     if name != "+":
         return frozenset(kept.items())
     total = sum(term[1] * count for term, count in kept.items() if isinstance(term, tuple))
-    return frozenset([*((term, count) for term, count in kept.items() if not isinstance(term, tuple)), ("constants", total)])
+    others = ((term, count) for term, count in kept.items() if not isinstance(term, tuple))
+    return frozenset([*others, ("constants", total)])

@@ -9,10 +9,10 @@ from pycparser import c_ast
 
 from .arithmetic import outside, overflow, quotient, remainder, shifted_left, shifted_right
 from .declarations import Unit, Variable
-from .expressions import Again
 from .headers import iterators_in
 from .kinds import Array, Kind, Length, Number, Pointer, Struct, TooLong, Undefined, Unsupported, Void, constant_size
 from .memory import Machine, Object
+from .places import Again
 from .statements import Statements
 from .tags import UNSET, Book
 from .writer import Operand, Place
@@ -215,7 +215,8 @@ class Program:
         for variable in self.unit.globals.values():
             names[variable.python] = self._object(variable, machine)
         for key, (variable, _) in self.statics.items():
-            obj = machine.statics[key] = machine.own(variable.name, "static", variable.kind, constant_size(variable.kind), key)
+            obj = machine.own(variable.name, "static", variable.kind, constant_size(variable.kind), key)
+            machine.statics[key] = obj
             obj.cleared = True
             names[variable.python] = obj
         for variable, init in [*((v, self.unit.global_nodes[v.name].init) for v in self.unit.globals.values()),

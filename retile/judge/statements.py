@@ -11,7 +11,7 @@ from pycparser import c_ast
 from .calls import Calls
 from .declarations import Alias, Variable, completed, initial_parts
 from .headers import Counting, assigned_in, counting, iterators_in, steady
-from .kinds import Array, Function, Kind, Length, Number, Pointer, Struct, Unsupported, Void, common
+from .kinds import BOOL, Array, Function, Kind, Length, Number, Pointer, Struct, Unsupported, Void, common
 from .writer import Operand, Place
 
 
@@ -280,8 +280,10 @@ class Statements(Calls):
         else:
             return None
         declared = (form.name, str(init.decls[0].coord)) if declares else None
-        plain = isinstance(kind, Number) and not kind.floating and ("object", declared) not in self.facts
-        if first is None or not plain or not steady(form.bound, self._assigned(node.stmt) | {form.name}, self._is_number):
+        plain = isinstance(kind, Number) and not kind.floating and kind is not BOOL
+        if first is None or not plain or ("object", declared) in self.facts:
+            return None
+        if not steady(form.bound, self._assigned(node.stmt) | {form.name}, self._is_number):
             return None
         return form, first, declares
 

@@ -1,13 +1,13 @@
 """What a number is made of: every operation on every pair of operands gets one tag, wherever it is executed.
 
-A tag is the number of an entry in a ``Book``; an entry is an operation and the tags of its operands, a cell as it was at
-the start, or a constant.  The same operation on the same operands gives the same entry, so two executions that leave the
-same tag in a cell computed it by the same operations in the same tree of operands: equal bits whatever the data are.  This
-is value numbering (Cocke and Schwartz, "Programming Languages and Their Compilers", 1970), done while a program runs.
-Unlike a hash, an entry can be read: it is the history of a number.
+A tag is the number of an entry in a ``Book``; an entry is an operation and the tags of its operands, a cell as it was
+at the start, or a constant.  The same operation on the same operands gives the same entry, so two executions that leave
+the same tag in a cell computed it by the same operations in the same tree of operands: equal bits whatever the data
+are.  This is value numbering (Cocke and Schwartz, "Programming Languages and Their Compilers", 1970), done while a
+program runs.  Unlike a hash, an entry can be read: it is the history of a number.
 
-Integers have their value from the start, since subscripts and bounds need it, and those made of constants alone stand for
-themselves.  Floating-point values are worked out when a branch asks for one.
+Integers have their value from the start, since subscripts and bounds need it, and those made of constants alone stand
+for themselves.  Floating-point values are worked out when a branch asks for one.
 """
 
 from __future__ import annotations
@@ -139,7 +139,8 @@ class Book:
         self.values.append(value)
         return len(self.values) - 1
 
-    def operation(self, name: str, kind: Number, work: Callable[..., int] | None = None, reals: bool = False) -> Operation:
+    def operation(self, name: str, kind: Number, work: Callable[..., int] | None = None,
+                  reals: bool = False) -> Operation:
         """The table of an operation of C in a type, or of a function; ``work`` for those with an integer result."""
         found = self.operations.get((name, kind.name))
         if found is None:

@@ -86,3 +86,21 @@ class Writer:
     def insert(self, lines: list[str]) -> None:
         """Add lines that were written at the same depth."""
         self.lines += lines
+
+
+def as_integer(text: str) -> int | None:
+    """The number that a text is; None if it is no number."""
+    try:
+        return int(text)
+    except ValueError:
+        return None
+
+
+def sum_of(a: str, b: str) -> str:
+    """The text of a sum."""
+    if a == "0":
+        return b
+    if b == "0":
+        return a
+    left, right = as_integer(a), as_integer(b)
+    return str(left + right) if left is not None and right is not None else f"{a} + {b}"

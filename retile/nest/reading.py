@@ -12,6 +12,7 @@ from .evaluated import with_readable
 from .expressions import Expressions
 from .headers import loop_text
 from .knowledge import Knowledge, Obligation
+from .limits import too_deep, too_many
 from .liveness import live_after
 from .overlaps import overlap_assumptions
 from .places import Places
@@ -38,6 +39,9 @@ class NestReader:
 
     def read(self) -> Nest | None:
         """The nest; None if it is refused, with the reasons in ``refusals``."""
+        if deep := too_deep(self._nest, self._names):
+            self._refuse([deep])
+            return None
         knowledge = Knowledge()
         setting = Setting(self._unit, self._names, self._nest, knowledge, strict=False)
         setting.expressions, setting.places = Expressions(setting), Places(setting)
@@ -50,6 +54,9 @@ class NestReader:
             self._refuse(refusals)
             return None
         stored = store(setting, walk, self._nest)
+        if many := too_many(self._nest, stored.accesses.values()):
+            self._refuse([*refusals, many])
+            return None
         overlap_assumptions(setting, stored, self._stores(walk, stored))
         products, hopeless = product_obligations(setting)
         refusals += [

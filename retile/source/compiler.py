@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import resource
 import selectors
 import shlex
 import signal
@@ -11,11 +12,14 @@ import time
 from typing import IO
 
 from ..model import RetileError
+from ..processes import MIB, limited
 from ..values import dataclass
 
 HEADERS = os.path.join(os.path.dirname(os.path.abspath(__file__)), "headers")
-SECONDS = 30.0  # for one run of the preprocessor
-LARGEST_OUTPUT = 64 * 2**20  # bytes
+SECONDS = 20.0  # for one run of the preprocessor
+COMPUTING = 5.0  # seconds, of these
+LARGEST_OUTPUT = 64 * MIB
+MEMORY = 450 * MIB  # for the compiler, when it only reads
 
 
 @dataclass(frozen=True)

@@ -74,6 +74,7 @@ _NUMBER = re.compile(
     r"|(?:\d*\.\d+|\d+\.?)(?:[eE][+-]?\d+)?[fFlL]?"
     r"|0[xX](?:[\da-fA-F]*\.[\da-fA-F]+|[\da-fA-F]+\.?)[pP][+-]?\d+[fFlL]?"
 )
+_LONGEST = {"number": 1_000, "string": 20_000, "char": 1_000}  # characters
 _OTHER_SUFFIX = re.compile(r"(?<=[\d.])(?:[fF]\d+x?|[qQwW]|bf16|BF16)$")
 
 
@@ -103,7 +104,7 @@ class _Dialect:
             if text in special:
                 index = self._special(text, index)
             else:
-                add(self._number(text) if kind == "number" else text, index, index)
+                add(self._literal(kind, text), index, index)
                 index += 1
         return self.out
 
@@ -207,6 +208,12 @@ class _Dialect:
             if brace - stop < 6:
                 return brace
         return stop
+
+    def _literal(self, kind: str, text: str) -> str:
+        """A token as the parser can read it; it takes kilobytes for each character of a literal."""
+        if len(text) > _LONGEST.get(kind, len(text)):
+            return UNKNOWN_VALUE + "()"
+        return self._number(text) if kind == "number" else text
 
     def _number(self, text: str) -> str:
         if _NUMBER.fullmatch(text):
