@@ -114,7 +114,7 @@ class OpenNest:
             text = plan.text if isinstance(plan, Plan) else " ".join(plan.split())
             return Judgement(Verdict.REFUSED, Plan(text, ()), refusals=self.refusals)
         judgement = judge(self.nest, self.dependences, self._parsed(plan))
-        if judgement.verdict is not Verdict.ILLEGAL or judgement.instead is not None:
+        if judgement.verdict not in (Verdict.ILLEGAL, Verdict.UNPROVEN) or judgement.instead is not None:
             return judgement
         return replace(judgement, instead=nearest_legal(self.nest, self.dependences, judgement.plan))
 
