@@ -30,9 +30,27 @@ _F = TypeVar("_F", bound=Callable[..., Any])
 
 def main() -> None:
     """The program ``retile``."""
+    _open_streams()
     status = _run(sys.argv[1:])
     gc.freeze()  # the interpreter would look through all that there is for garbage, and longer than some answers take
     sys.exit(status)
+
+
+def _open_streams() -> None:
+    """Give streams that the caller closed something to lead to; else the next file that is opened would be one of them."""
+    while (handle := os.open(os.devnull, os.O_RDWR)) <= 2:
+        pass
+    os.close(handle)
+    sys.stdout = sys.stdout or open(1, "w", encoding="utf-8", closefd=False)
+    sys.stderr = sys.stderr or open(2, "w", encoding="utf-8", closefd=False)
+
+
+def _tell(message: str) -> None:
+    """A message to standard error, if that can be written."""
+    try:
+        print(message, file=sys.stderr, flush=True)
+    except OSError:
+        pass
 
 
 def _run(arguments: list[str]) -> int:
@@ -45,7 +63,7 @@ def _run(arguments: list[str]) -> int:
         error.show()
         return 2
     except (click.Abort, KeyboardInterrupt):
-        print("Interrupted.", file=sys.stderr)
+        _tell("Interrupted.")
         return _INTERRUPTED
     except Exception as error:
         return _failed(error)
@@ -58,19 +76,19 @@ def _failed(error: Exception) -> int:
     if isinstance(error, ClosedPipe):
         return _CLOSED_PIPE
     if isinstance(error, RetileError):
-        print(error, file=sys.stderr)
+        _tell(str(error))
         return 2
     if isinstance(error, OSError):
-        print(f"retile: {error.filename or 'system'}: {error.strerror or error}", file=sys.stderr)
+        _tell(f"retile: {error.filename or 'system'}: {error.strerror or error}")
         return 2
     if os.environ.get(_TRACEBACK):
         import traceback
 
         traceback.print_exception(error)
     what = "it ran out of memory" if isinstance(error, MemoryError) else f"{type(error).__name__}: {error}"
-    print(f"retile: this is an error in retile, not in your code ({what}).\n"
+    _tell(f"retile: this is an error in retile, not in your code ({what}).\n"
           f"No file was changed. Please report it with the command, the C file and what this prints:\n"
-          f"    {_TRACEBACK}=1 retile ...", file=sys.stderr)
+          f"    {_TRACEBACK}=1 retile ...")
     return _BUG
 
 
@@ -200,6 +218,21 @@ def check(address: str, plan: str, as_json: bool, **given: Any) -> int:
     return check.run(address, plan, _compiling(given), facts=_facts(given), defaults=_defaults(given), as_json=as_json)
 
 
+@retile.command(short_help="List legal plans worth a trial.")
+@_address
+@click.option("--set", "sizes", multiple=True, metavar="NAME=VALUE",
+              help="A size, such as n=1000, where it is known (repeatable).")
+@click.option("--most", type=click.IntRange(min=1), default=10, show_default=True, help="How many plans at most.")
+@_fact_options
+@_compiler_options
+@_json
+def suggest(address: str, sizes: tuple[str, ...], most: int, as_json: bool, **given: Any) -> int:
+    """List legal plans that are worth a trial on this machine, the most promising first, each with the reason."""
+    from .commands import suggest
+
+    return suggest.run(address, sizes, _compiling(given), facts=_facts(given), most=most, as_json=as_json)
+
+
 @retile.command(short_help="Write the loops of a plan.")
 @_address
 @_plan
@@ -245,7 +278,10 @@ def rewrite(address: str, plan: str, trust: bool, verify: bool, file: str | None
 @_json
 def measure(address: str, plans: tuple[str, ...], as_json: bool, sizes: tuple[str, ...], fills: tuple[str, ...],
             seconds: float, seed: int, flags: str | None, result: str | None, plot: str | None, trust: bool, **given: Any) -> int:
-    """Build the original and the variants of plans, verify that they compute the same, and time them on this host."""
+    """Build the original and the variants of plans, verify that they compute the same, and time them on this host.
+
+    Without plans it tries the suggested ones, then plans near the fastest of them, at most 25 in all.
+    """
     from .commands import measure
 
     measuring = measure.Measuring(sizes, fills, seconds, seed, flags, _defaults(given), _facts(given), trust, result, plot)

@@ -73,6 +73,8 @@ class Host:
     virtualised: Fact
     python: Fact
     system: Fact
+    vector_bytes: Fact = Fact.unknown()  # of one register for vectors
+    vector_registers: Fact = Fact.unknown()  # how many of them a program can name
 
     def cache(self, level: int) -> Cache | None:
         """The cache of a level that holds data; None if unknown."""
@@ -96,6 +98,7 @@ class Host:
 def describe() -> Host:
     """Find out about this machine; takes some tens of milliseconds, mostly for asking the compilers."""
     cpuinfo = _read(_CPUINFO) or ""
+    width, count = vectors_of(cpuinfo, platform.machine())
     return Host(
         cpu=_cpu(cpuinfo),
         logical_cpus=_logical_cpus(),
@@ -107,6 +110,8 @@ def describe() -> Host:
         virtualised=_virtualised(cpuinfo),
         python=Fact(f"{platform.python_implementation()} {platform.python_version()}", "the running interpreter"),
         system=Fact(f"{platform.system()} {platform.release()} {platform.machine()}", "uname"),
+        vector_bytes=width,
+        vector_registers=count,
     )
 
 
@@ -188,6 +193,24 @@ def _virtualised(cpuinfo: str) -> Fact:
     if flags is None:
         return Fact.unknown()
     return Fact("hypervisor" in flags.group(1).split(), f"flag in {_CPUINFO}")
+
+
+# Instruction sets for vectors by their flag in ``/proc/cpuinfo``, widest first: bytes of a register, and how many a
+# program can name (Intel, "Intel 64 and IA-32 Architectures Software Developer's Manual", vol. 1; Arm, "Arm
+# Architecture Reference Manual for A-profile architecture").  In 32-bit mode x86 names 8 of them.
+_VECTORS = (("avx512f", 64, 32), ("avx", 32, 16), ("sse2", 16, 16), ("asimd", 16, 32))
+
+
+def vectors_of(cpuinfo: str, machine: str) -> tuple[Fact, Fact]:
+    """Width in bytes and number of the vector registers; unknown where the width is no constant of the architecture."""
+    flags = re.search(r"^(?:flags|Features)\s*:\s*(.+)$", cpuinfo, re.MULTILINE)
+    said = set(flags.group(1).split()) if flags else set()
+    for flag, width, count in _VECTORS:
+        if flag in said:
+            few = re.fullmatch(r"i[3-6]86", machine) is not None
+            origin = f"flag {flag} in {_CPUINFO}"
+            return Fact(width, origin), Fact(8 if few else count, origin)
+    return Fact.unknown(), Fact.unknown()
 
 
 def _page_bytes() -> Fact:

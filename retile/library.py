@@ -15,8 +15,10 @@ from .values import dataclass, replace
 if TYPE_CHECKING:
     from .dependence import Dependences
     from .judge import Examiner, Finding
+    from .host import Host
     from .nest import Found
     from .source import Source
+    from .suggest import Advice
     from .trial import Campaign, Settings, Verification
     from .trial.records import Progress
 
@@ -114,9 +116,20 @@ class OpenNest:
             text = plan.text if isinstance(plan, Plan) else " ".join(plan.split())
             return Judgement(Verdict.REFUSED, Plan(text, ()), refusals=self.refusals)
         judgement = judge(self.nest, self.dependences, self._parsed(plan))
-        if judgement.verdict is not Verdict.ILLEGAL or judgement.instead is not None:
+        if judgement.verdict not in (Verdict.ILLEGAL, Verdict.UNPROVEN) or judgement.instead is not None:
             return judgement
         return replace(judgement, instead=nearest_legal(self.nest, self.dependences, judgement.plan))
+
+    def suggest(self, sizes: Mapping[str, int] | None = None, *, host: Host | None = None, most: int = 10) -> Advice:
+        """Legal plans worth a trial on this host, most promising first, each with the reason; or why to leave the nest.
+
+        ``sizes``: of the nest's parameters, by name, as far as they are known; they only rank.  ``host``: another
+        machine than this one.  RetileError if the nest is refused.
+        """
+        from .host import describe
+        from .suggest import suggest
+
+        return suggest(self.nest, self.dependences, host or describe(), sizes, most)
 
     def rewrite(self, plan: str | Plan, *, trust: bool = False) -> Variant:
         """The file with this nest in the order of the plan.
@@ -166,7 +179,7 @@ class OpenNest:
 
     def measure(self, plans: Sequence[str | Plan], sizes: Mapping[str, int], settings: Settings | None = None, *,
                 on_progress: Progress | None = None, command: str = "retile measure") -> Campaign:
-        """Judge and verify the variants of legal plans and time them against the original, round by round in one process.
+        """Judge, verify and time the variants of legal plans against the original, round by round in one process.
 
         ``sizes`` give the nest's parameters by name.  Interrupted, it returns what was measured until then.  Raises
         RetileError if a plan is not legal, a size is missing, or the nest cannot be run on its own.
@@ -177,6 +190,25 @@ class OpenNest:
         variants = [self.rewrite(plan, trust=settings.trust) for plan in plans]
         return measure(self.source, self.nest, variants, sizes, settings, on_progress, command,
                        lambda variant: self.judge(variant, trust=settings.trust))
+
+    def search(self, sizes: Mapping[str, int], settings: Settings | None = None, *, on_progress: Progress | None = None,
+               command: str = "retile measure", most: int = 25) -> Campaign | None:
+        """Measure suggested plans, then neighbours of the fastest, ``most`` trials in all; None if there are none.
+
+        What is said of ``measure`` holds.  Every trial's speedup is against the original in the same rounds.
+        """
+        from .suggest import neighbours
+        from .trial import Settings, in_rounds
+
+        settings = settings or Settings()
+        advice = self.suggest(sizes)
+
+        def further(fastest: str, tried: set[str], room: int) -> list[Plan]:
+            return [found.plan for found in neighbours(self.nest, self.dependences, self.plan(fastest), tried, room)]
+
+        plans = [suggestion.plan for suggestion in advice.suggestions][:most]
+        return in_rounds(plans, settings, most, further, lambda some, so: self.measure(
+            some, sizes, so, on_progress=on_progress, command=command)) if plans else None
 
     def _parsed(self, plan: str | Plan) -> Plan:
         return plan if isinstance(plan, Plan) else self.plan(plan)

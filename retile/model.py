@@ -382,6 +382,7 @@ class Violation:
     source: Instance  # first in the original order
     target: Instance
     cell: tuple[int, ...] | None = None  # the subscripts they share; None if any cell may be meant
+    note: str = ""  # why the order of two updates ``x = x op e`` counts
 
 
 @dataclass(frozen=True)

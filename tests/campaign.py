@@ -32,6 +32,7 @@ class Tally:
     counts: Counter = field(default_factory=Counter)
     failed: list[str] = field(default_factory=list)
     seconds: float = 0.0  # of processor time, compilers and programs included
+    building: float = 0.0  # the part of these
 
     def lines(self) -> list[str]:
         """The tally as text."""
@@ -39,18 +40,19 @@ class Tally:
         pairs = self.counts["pairs"]
         return [*(f"{count:8} {what}" for what, count in sorted(self.counts.items(), key=lambda item: (-item[1], item[0]))),
                 f"{len(self.failed):8} failures",
-                f"{pairs / self.seconds if self.seconds else 0:8.1f} pairs per second of processor time, peak memory {peak:.0f} MB"]
+                f"{pairs / self.seconds if self.seconds else 0:8.1f} pairs per second of processor time ({self.seconds:.0f} s, of which "
+                f"{self.building:.0f} s to build and run), peak memory {peak:.0f} MB"]
 
 
 def effort_of(seed: int, clang: bool = True) -> Effort:
     """What is done for the nest of a seed."""
     compiler, flags = BUILDS[seed % len(BUILDS)]
-    return Effort(build=compiler if clang else "gcc", flags=flags, instead=seed % 4 == 0)
+    return Effort(build=compiler if clang else "gcc", flags=flags, instead=seed % 8 == 0)
 
 
 def run(seeds: Iterable[int], folder: Path | None = None, pairs: int | None = None, effort: Effort | None = None) -> Tally:
     """Examine the nests of some seeds, until so many pairs are done; failures are saved in the folder."""
-    tally, start = Tally(), _processor_time()
+    tally, start = Tally(), _processor_times()
     for seed in seeds:
         if pairs is not None and tally.counts["pairs"] >= pairs:
             break
@@ -64,8 +66,9 @@ def run(seeds: Iterable[int], folder: Path | None = None, pairs: int | None = No
         tally.counts.update(finding.counts)
         for plan, problem in finding.problems:
             _failed(tally, folder, seed, nest, plan, problem)
-        tally.seconds = _processor_time() - start
-        if folder is not None and seed % 50 == 0:
+        own, others = (now - then for now, then in zip(_processor_times(), start, strict=True))
+        tally.seconds, tally.building = own + others, others
+        if folder is not None and seed % 10 == 9:
             (folder / "tally.txt").write_text("\n".join([f"up to seed {seed}", *tally.lines()]) + "\n")
     return tally
 
@@ -76,9 +79,11 @@ def _failed(tally: Tally, folder: Path | None, seed: int, nest: RandomNest, plan
         (folder / f"seed_{seed}_{len(tally.failed)}.txt").write_text(tally.failed[-1])
 
 
-def _processor_time() -> float:
-    own, others = resource.getrusage(resource.RUSAGE_SELF), resource.getrusage(resource.RUSAGE_CHILDREN)
-    return own.ru_utime + own.ru_stime + others.ru_utime + others.ru_stime
+def _processor_times() -> tuple[float, float]:
+    """Seconds of this process and of those it started."""
+    used = (resource.getrusage(who) for who in (resource.RUSAGE_SELF, resource.RUSAGE_CHILDREN))
+    own, others = (usage.ru_utime + usage.ru_stime for usage in used)
+    return own, others
 
 
 def main() -> None:

@@ -177,7 +177,7 @@ def _examine_legal(own: Nest, judgement: Judgement, at: int, effort: Effort, fin
     try:
         variant = own.answer.variant(judgement.plan.text, trust=trust)
     except RetileError as problem:
-        finding.problems.append((judgement.plan.text, f"legal, but no variant: {problem}"))
+        finding.counts[f"legal, but no variant: {_reason(str(problem))}"] += 1
         return
     names = tuple((name, _CUTS[(own.seed + at) % 4]) for name in _named(judgement.plan.text))
     sizes = [*own.small, *own.larger]
@@ -283,6 +283,11 @@ def assumptions_hold(assumptions: tuple[Assumption, ...], sizes: dict[str, int])
         return all(holds(a.condition, sizes) for a in assumptions if a.condition is not None)
     except KeyError:
         return None
+
+
+def _reason(text: str) -> str:
+    """What a message says behind the place, without names and numbers of the case."""
+    return re.sub(r" for .*", "", _short(text.partition(": ")[2]))
 
 
 def _short(text: str) -> str:

@@ -15,7 +15,7 @@ BEAMS = f"samples_c/beamform.c:{line_of('beamform.c', 'form_beams')}"
 EIGHT = f"samples_c/relax.c:{line_of('relax.c', 'relax_eight')}"
 RETURNS = f"samples_c/first_return.c:{line_of('first_return.c', 'first_returns')}"
 BREAK = line_of("first_return.c", "first_returns", "break;")
-COMMANDS = ("nests", "depend", "check", "rewrite", "measure", "host")
+COMMANDS = ("nests", "depend", "check", "suggest", "rewrite", "measure", "host")
 
 
 @pytest.mark.parametrize("command", [(), *((name,) for name in COMMANDS)])

@@ -100,7 +100,7 @@ def test_the_document_of_a_verdict_has_the_fields_of_the_contract():
     assert document.of_judgement(ADDRESS, judgement) == {
         "address": "grids/relax.c:30", "plan": "j i", "options": "remainder peel", "verdict": "illegal",
         "violations": [{
-            "kind": "flow", "array": "z", "parameters": {"n": 4, "m": 4}, "cell": [1, 2],
+            "kind": "flow", "array": "z", "parameters": {"n": 4, "m": 4}, "cell": [1, 2], "note": None,
             "source": {"statement": "34", "line": 34, "iterators": {"i": 1, "j": 2}},
             "target": {"statement": "34", "line": 34, "iterators": {"i": 2, "j": 1}}}],
         "unproven": [], "instead": None, "places": [], "repeated": [], "kept": [], "refusals": [],

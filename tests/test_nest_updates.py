@@ -35,6 +35,18 @@ HEAD = (
         ("worst[0] = worst[0] > j ? worst[0] : j;", "legal", "legal"),
         ("worst[0] = j > worst[0] ? j : worst[0];", "legal", "legal"),
         ("worst[0] = worst[0] > j ? j : i;", "illegal", "illegal"),
+        ("code[0] += code[i];", "illegal", "illegal"),  # not only updates touch the cells
+        ("code[0] += (unsigned char)i;", "legal", "legal"),  # no sum of two bytes overflows an int
+        ("code[0] = (unsigned char)j + code[0];", "legal", "legal"),
+        ("code[0] *= (unsigned short)(i + j);", "legal", "legal"),  # 8 + 16 bits
+        ("if (j > worst[0]) worst[0] = j;", "legal", "legal"),
+        ("if (worst[0] >= i) { worst[0] = i; }", "legal", "legal"),
+        ("if (echo[i][j] < low[0]) low[0] = echo[i][j];", "illegal", "legal"),
+        ("if (j > worst[0]) worst[0] = i;", "illegal", "illegal"),
+        ("if (j > worst[0]) worst[0] = j; else worst[0] = 0;", "illegal", "illegal"),
+        ("if (j > worst[0]) { worst[0] = j; sum[0] = i; }", "illegal", "illegal"),
+        ("if ((long)i * j > worst[0]) worst[0] = (long)i * j;", "illegal", "illegal"),  # cut when it is stored
+        ("if (echo[i][j] > 0.5) hits[0]++;", "legal", "legal"),
         ("worst[0] = hits[0] > 3u ? worst[0] : j;", "illegal", "illegal"),
     ],
 )
@@ -74,3 +86,24 @@ def test_updates_between_commas_are_updates(tmp_path: Path) -> None:
     file = tmp_path / "updates.c"
     file.write_text(HEAD + "hits[0]++, hits[1] += (unsigned)i;\n}\n")
     assert retile.open_file(file).nest(3).check("j i").verdict.value == "legal"
+
+
+@pytest.mark.parametrize(
+    "statement, told",
+    [
+        ("sum[0] += echo[i][j];", "may round differently"),
+        ("worst[0] += i;", "may overflow at an intermediate value"),
+        ("low[0] = low[0] < echo[i][j] ? low[0] : echo[i][j];", "NaN"),
+    ],
+)
+def test_an_order_that_only_updates_need_is_named(tmp_path: Path, statement: str, told: str) -> None:
+    file = tmp_path / "updates.c"
+    file.write_text(HEAD + statement + "\n}\n")
+    violations = retile.open_file(file).nest(3).check("j i").violations
+    assert violations and all(told in v.note and "reassociate yes" in v.note for v in violations)
+
+
+def test_an_order_that_values_need_has_no_such_note(tmp_path: Path) -> None:
+    file = tmp_path / "updates.c"
+    file.write_text(HEAD + "worst[i + 1] = worst[i + j] + 1;\n}\n")
+    assert not any(v.note for v in retile.open_file(file).nest(3).check("j i").violations)

@@ -85,9 +85,18 @@ POINTERS = HEAD + """    for (int i = 0; i < n; i++) {
     }
 }
 """
+LEVELS = HEAD + """    for (int i = 0; i < n - 1; i++) {
+        int now = i % 2, next = 1 - now;
+        for (int j = 1; j < m - 1; j++)
+            a[next][j] = 0.5 * (a[now][j - 1] + a[now][j + 1]);
+    }
+    (void)b;
+}
+"""
 CASES = {
     "one scalar": (SQUARES, ["i:4 i j", "j i", "j:4 i j", "i:3 j:2 j i", "(i+j):3 i j"]),
     "several": (ROWS, ["i:4 i j k", "j:4 i j k", "i:4 j:3 i j", "i k:4 j k", "i:4 k:3 i j k", "j i", "i:4 j:2 k:3 i j k"]),
+    "values computed again": (LEVELS, ["(i+j):3 i j", "i:4 (i+j):3 i j"]),
     "an array": (PAIR, ["i:4 i j", "i j:3 j"]),
     "pointers": (POINTERS, ["i:4 i j", "i:4 j:3 i j", "j i"]),
 }

@@ -47,14 +47,17 @@ class Measuring:
 
 def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measuring: Measuring, *,
         as_json: bool) -> int:
-    """Verify and time the variants of plans; 1 if a plan is not legal or a variant is not verified."""
-    if not plans:
-        raise RetileError("measure needs at least one PLAN, for example 'i j' for the original order of two loops.")
+    """Verify and time the variants of plans; 1 if a plan is not legal or a variant is not verified.
+
+    Without plans it takes the suggested ones, and in a second round neighbours of the fastest.
+    """
     if measuring.plot is not None:
         check_plot_name(measuring.plot)
     sizes = named_sizes(measuring.sizes)
     settings = _settings(measuring, compiling)
     nest = open_nest(address, compiling, measuring.facts)
+    if not plans and not nest.refusals:
+        return _search(nest, address, sizes, settings, measuring, as_json)
     parsed = [plan if nest.refusals else nest.plan(plan, **measuring.defaults) for plan in plans]
     refused = [judgement for judgement in map(nest.check, parsed) if judgement.verdict is not Verdict.LEGAL]
     if refused:
@@ -62,6 +65,23 @@ def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measur
     with _progress() as on_progress:
         campaign = nest.measure(parsed, sizes, settings, on_progress=on_progress, command=_command(address, plans))
     return _report(campaign, measuring, as_json)
+
+
+def _search(nest: OpenNest, address: str, sizes: dict[str, int], settings: Settings, measuring: Measuring,
+            as_json: bool) -> int:
+    """Find a plan: suggested ones, then neighbours of the fastest."""
+    with _progress() as on_progress:
+        campaign = nest.search(sizes, settings, on_progress=on_progress, command=_command(address, ()))
+    if campaign is not None:
+        return _report(campaign, measuring, as_json)
+    from ..report.suggestions import suggestion_lines
+
+    advice = nest.suggest(sizes)
+    if as_json:
+        print_document({**of_measure_refused(nest.address, sizes, (), ()), "leave": advice.leave})
+    else:
+        print_lines(suggestion_lines(nest.address, nest.nest, sizes, advice, look_of(sys.stdout)))
+    return 0
 
 
 def _settings(measuring: Measuring, compiling: CompilerOptions) -> Settings:

@@ -16,7 +16,7 @@ from .context import Context
 from .places import Member, Place
 from .refusals import refused
 from .setting import Setting, c_text
-from .updates import Update, accumulation, family, update
+from .updates import Update, accumulation, family, kept_extreme, update
 
 
 @dataclass(frozen=True)
@@ -38,6 +38,7 @@ class Effects:
         self._conditions = conditions
         self._found: list[Touch] = []
         self._unused: frozenset[int] = frozenset()  # expressions of the statement whose values nobody looks at
+        self._extremes: dict[int, Update] = {}  # by id() of an assignment under a condition that is one with it
 
     def of(self, node: Any, context: Context) -> tuple[Touch, ...]:
         """The touches of an expression statement, or of a condition."""
@@ -45,6 +46,20 @@ class Effects:
         self._unused = frozenset(map(id, _unused_values(node)))
         self._visit(node, context)
         return tuple(self._found)
+
+    def of_condition(self, node: Any, context: Context) -> tuple[Touch, ...]:
+        """The touches of the condition of an ``if``; that of ``if (e > x) x = e;`` is part of one update of ``x``."""
+        touches = self.of(node.cond, context)
+        kind, assignment = kept_extreme(node)
+        own = self._own_reads(0, assignment.lvalue) if kind else []
+        if len(own) != 1:
+            return touches
+        whole = update(kind, self._type(assignment.lvalue), self._work(assignment.lvalue, assignment.rvalue))
+        target = self._type(assignment.lvalue)
+        if whole is None or target is None or not (whole.exact or target.floating):
+            return touches  # a value that is cut when it is stored is no smallest or largest one
+        self._extremes[id(assignment)] = whole
+        return tuple(replace(touch, update=whole) if at in own else touch for at, touch in enumerate(touches))
 
     def of_declaration(self, decl: Any, context: Context) -> tuple[Touch, ...]:
         """The touches of a declaration with an initialiser."""
@@ -279,10 +294,12 @@ class Effects:
         if node.op != "=":
             self._visit(node.rvalue, context)
             kind = family(node.op[:-1]) if id(node) in self._unused else ""
-            self._update(target, context, update(kind, self._type(target), self._work(target, node.rvalue)))
+            work = self._work(target, node.rvalue)
+            self._update(target, context, update(kind, self._type(target), work, self._type(node.rvalue)))
             return
         kind, reads = accumulation(node) if id(node) in self._unused else ("", 0)
-        whole = update(kind, self._type(target), self._type(node.rvalue))
+        whole = self._extremes.get(id(node)) or \
+            update(kind, self._type(target), self._type(node.rvalue), self._operand(node.rvalue, target))
         before = len(self._found)
         self._visit(node.rvalue, context)
         own = self._own_reads(before, target)
@@ -293,6 +310,12 @@ class Effects:
             whole = None
         self._beneath(target, context)
         self._write(target, context, whole)
+
+    def _operand(self, value: Any, target: Any) -> CType | None:
+        """The type of ``e`` in ``x + e`` or ``e + x``."""
+        if not isinstance(value, c_ast.BinaryOp):
+            return None
+        return self._type(value.right if c_text(value.left) == c_text(target) else value.left)
 
     def _work(self, left: Any, right: Any) -> CType | None:
         """The type in which an operator on both computes."""

@@ -25,17 +25,28 @@ class Update:
     exact: bool  # any order gives the same bits
 
 
-def update(family: str, target: CType | None, work: CType | None) -> Update | None:
-    """The update of a cell of type ``target`` computed in type ``work``; None if it is of no family."""
-    return Update(family, _is_exact(family, target, work)) if family else None
+def update(family: str, target: CType | None, work: CType | None, operand: CType | None = None) -> Update | None:
+    """The update of a cell of type ``target`` computed in type ``work``; None if it is of no family.
+
+    ``operand``: the type of what is added or multiplied, if known.
+    """
+    return Update(family, _is_exact(family, target, work, operand)) if family else None
 
 
-def _is_exact(family: str, target: CType | None, work: CType | None) -> bool:
+def _is_exact(family: str, target: CType | None, work: CType | None, operand: CType | None) -> bool:
     if target is None or work is None or target.floating or work.floating or target.spelling == "_Bool":
         return False
     if family in ("+", "*"):
-        return not target.signed and not work.signed and target.bits <= work.bits
+        return not target.signed and (not work.signed or _has_room(family, target, work, operand)) and target.bits <= work.bits
     return family in ("&", "|", "^") or target == work
+
+
+def _has_room(family: str, target: CType, work: CType, operand: CType | None) -> bool:
+    """True if a signed type holds every result before it is converted: ``unsigned char`` values are added as ``int``."""
+    if operand is None or operand.floating:
+        return False
+    needed = target.bits + operand.bits if family == "*" else max(target.bits, operand.bits) + 1
+    return needed < work.bits
 
 
 def family(op: str) -> str:
@@ -61,12 +72,30 @@ def accumulation(node: Any) -> tuple[str, int]:
     return "", 0
 
 
+def kept_extreme(node: Any) -> tuple[str, Any]:
+    """``min`` or ``max``, and the assignment, for ``if (e > x) x = e;``; empty and None for any other ``if``.
+
+    It is the same as ``x = e > x ? e : x``, but for a store of what is there already.
+    """
+    inside = node.iftrue
+    while isinstance(inside, c_ast.Compound) and inside.block_items and len(inside.block_items) == 1:
+        inside = inside.block_items[0]
+    if node.iffalse is not None or not isinstance(inside, c_ast.Assignment) or inside.op != "=":
+        return "", None
+    target = c_text(inside.lvalue)
+    found = _extreme(node.cond, c_text(inside.rvalue), target, target)
+    return found, inside if found else None
+
+
 def _choice(value: Any, target: str) -> str:
     """``min`` or ``max`` for ``a < b ? a : b`` with ``x`` on one side of both; empty for any other choice."""
-    if not isinstance(value.cond, c_ast.BinaryOp) or value.cond.op not in ("<", "<=", ">", ">="):
+    return _extreme(value.cond, c_text(value.iftrue), c_text(value.iffalse), target)
+
+
+def _extreme(cond: Any, chosen: str, other: str, target: str) -> str:
+    if not isinstance(cond, c_ast.BinaryOp) or cond.op not in ("<", "<=", ">", ">="):
         return ""
-    left, right = c_text(value.cond.left), c_text(value.cond.right)
-    chosen, other = c_text(value.iftrue), c_text(value.iffalse)
+    left, right = c_text(cond.left), c_text(cond.right)
     if {left, right} != {chosen, other} or left == right or target not in (left, right):
         return ""
-    return "max" if (value.cond.op[0] == ">") == (chosen == left) else "min"
+    return "max" if (cond.op[0] == ">") == (chosen == left) else "min"

@@ -304,7 +304,7 @@ class Walk:
         nodes: list[Node] = []
         before = dict(self.setting.definitions)
         if condition is None:
-            touches = self._effects.of(node.cond, context)
+            touches = self._effects.of_condition(node, context)
             if any(touch.write for touch in touches):
                 raise refused(node.cond, "condition", "the condition of an `if` changes something; do that before it.")
             nodes.append(self._leaf(node, span, touches, context))

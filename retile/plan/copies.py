@@ -41,8 +41,10 @@ def _only_writer(storage: Storage, nest: Nest) -> Statement | None:
     if len(writers) != 1:
         return None
     writer = writers[0]
-    written = {a.storage for s in nest.statements for a in s.accesses if a.write}
-    pure = all(a.certain and (_is_its_own(nest.storage(a.storage), storage) if a.write else a.storage not in written)
+    # ``int now = t % 2, next = 1 - now;`` reads what it has just written
+    written = {a.storage for s in nest.statements if s != writer for a in s.accesses if a.write}
+    own = {a.storage for a in writer.accesses if a.write}
+    pure = all(a.certain and (_is_its_own(nest.storage(a.storage), storage) if a.storage in own else a.storage not in written)
                for a in writer.accesses)
     surrounds = writer.loops == storage.private_to and all(
         s.span.start > writer.span.start and s.loops[:len(writer.loops)] == writer.loops for s in users if s != writer)

@@ -68,15 +68,18 @@ def _term(plan: PlanText, start: int, text: str, nest: Nest) -> Term:
     head, colon, size = text.rpartition(":")
     if not colon or head.count("(") != head.count(")"):
         head, size = text, ""
-    chunk = _chunk(plan, end - len(size), size, ids) if colon and head != text else None
+    variables = {parameter.symbol for parameter in nest.parameters}
+    chunk = _chunk(plan, end - len(size), size, ids, variables) if colon and head != text else None
     if head.startswith("(") and head.endswith(")"):
         return Term(_sum(plan, start + 1, head[1:-1], ids, nest), chunk, start, end)
     return Term(((_loop(plan, start, head, ids, nest), 1),), chunk, start, end)
 
 
-def _chunk(plan: PlanText, start: int, size: str, ids: set[str]) -> int | str:
+def _chunk(plan: PlanText, start: int, size: str, ids: set[str], variables: set[str]) -> int | str:
     remedy = "A chunk is a whole number of at least 1, as in i:64, or the name of a constant, as in i:I_CHUNK."
     if size.isidentifier() and size.isascii() and size not in ids:
+        if size in variables:
+            raise plan.complaint(start, start + len(size), f"'{size}' is a variable, not a constant", remedy)
         return size
     if not size.isdecimal():
         raise plan.complaint(start, start + len(size), f"'{size}' is not a chunk", remedy)

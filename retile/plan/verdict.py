@@ -26,6 +26,7 @@ from .build import build_tree
 from .copies import copied, copied_scalars
 from .kept import keepable, kept_from
 from .reading import hidden_texts, reads_ahead
+from .remarks import order_of_updates, same_cells
 from .schedule import INSIDE, merged, moments, placed, stays_whole
 from .threads import refusals as thread_refusals
 from .units import Unit, moved_conditions, units
@@ -47,7 +48,7 @@ def judge(nest: Nest, dependences: Dependences, plan: Plan) -> Judgement:
     edges = court.binding_edges()
     raced = tuple(court.raced())
     violations = (*court.violations(edges), *court.collisions(raced))
-    unproven = () if violations else (*court.unproven(edges), *court.undecided(raced))
+    unproven = () if violations else tuple(dict.fromkeys((*court.unproven(edges), *court.undecided(raced))))
     assumptions = tuple(court.needed_assumptions())
     verdict = Verdict.ILLEGAL if violations else Verdict.UNPROVEN if unproven else Verdict.LEGAL
     unfit = tuple(_unfit(nest, dependences, plan)) if verdict is Verdict.LEGAL and plan.buffers else ()
@@ -322,8 +323,7 @@ class _Court:
             elif not edge.exact:
                 yield Unproven(edge.source, edge.target,
                                f"a subscript of {edge.storage} is not affine: the access may touch any cell",
-                               f"that the cells of {edge.storage} which line {self._line(edge.source)} and line "
-                               f"{self._line(edge.target)} touch are different ones")
+                               same_cells(edge, self._line(edge.source), self._line(edge.target)))
         for assumption in self.unsettled():
             first = self._nest.statements[0].id
             yield Unproven(first, first, *self._lacking(assumption))
@@ -386,8 +386,9 @@ class _Court:
 
     def _could_reverse(self, one: str, other: str, known: dict[tuple[str, str], bool]) -> bool:
         """True if some accesses to the two, one of them writing, could change order if they met at any cell."""
-        for source in self._nest.statements:
-            for target in self._nest.statements:
+        near = [s for s in self._nest.statements if any(a.storage in (one, other) for a in s.accesses)]
+        for source in near:
+            for target in near:
                 touched = _touch(source, target, one, other)
                 if not touched:
                     continue
@@ -441,7 +442,8 @@ class _Court:
         sizes += tuple(self._chunk_sizes(found.level, point).items())
         return Violation(found.edge.kind, found.edge.storage, sizes,
                          _instance(source, outer, point, prime_names=False),
-                         _instance(target, outer, point, prime_names=True), cell)
+                         _instance(target, outer, point, prime_names=True), cell,
+                         order_of_updates(found.edge.update, self._nest.storage(found.edge.storage)))
 
 
 def _touch(source: Statement, target: Statement, one: str, other: str) -> bool:

@@ -117,6 +117,7 @@ def of_violation(violation: Violation) -> Document:
         "kind": violation.kind, "array": violation.array, "parameters": dict(violation.parameters),
         "source": of_instance(violation.source), "target": of_instance(violation.target),
         "cell": None if violation.cell is None else list(violation.cell),
+        "note": violation.note or None,
     }
 
 

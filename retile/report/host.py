@@ -15,7 +15,8 @@ def host_lines(host: Host, look: Look) -> list[str]:
     rows = [("processor", *_fact(host.cpu)), ("logical processors", *_fact(host.logical_cpus)),
             ("physical cores", *_fact(host.physical_cores))]
     rows += [(f"level {cache.level} {cache.kind} cache", _cache(cache), cache.origin) for cache in host.caches]
-    rows += [("page", *_fact(host.page_bytes, " bytes")),
+    rows += [("vector register", *_fact(host.vector_bytes, " bytes")), ("vector registers", *_fact(host.vector_registers)),
+             ("page", *_fact(host.page_bytes, " bytes")),
              *((f"compiler {c.command}", c.version or c.path, c.origin) for c in host.compilers),
              ("clock step", *_fact(_nanoseconds(host.timer_seconds), " ns")),
              ("virtual machine", *_fact(host.virtualised)),

@@ -35,6 +35,10 @@ def verdict_lines(address: Address, judgement: Judgement, place: Place, look: Lo
     if len(judgement.violations) > _SHOWN:
         more = len(judgement.violations) - _SHOWN
         lines += ["", f"{more} more of the dependences {'is' if more == 1 else 'are'} reversed; --json shows all."]
+    notes = {violation.note for violation in judgement.violations}
+    if "" not in notes:
+        for note in sorted(notes):
+            lines += _separated(lines, paragraph(note, look))
     for unproven in judgement.unproven:
         lines += _separated(lines, unproven_lines(unproven, look))
     for refusal in judgement.refusals:

@@ -21,6 +21,7 @@ from ..affine import (
     Bound,
     Formula,
     at_least_bound,
+    at_most,
     at_most_bound,
     bound_names,
     less,
@@ -44,6 +45,7 @@ from .bounds import (
     with_extremum,
     without_alignment,
 )
+from .constants import Constants
 from .expression import (
     CHOICE,
     INT,
@@ -137,13 +139,15 @@ def step_of(loop: Loop) -> Affine:
 class Elements(ABC):
     """Writes the headers of one variant, but for chunk loops."""
 
-    def __init__(self, nest: Nest, layout: NestText, names: Names, tree: tuple[Node, ...], apart: bool = False) -> None:
+    def __init__(self, nest: Nest, layout: NestText, names: Names, tree: tuple[Node, ...], constants: Constants,
+                 apart: bool = False) -> None:
         """``apart``: whether the user's dialect wants declarations outside of headers."""
         self._apart = apart
         self._nest = nest
         self._layout = layout
         self._names = names
         self._ahead = Ahead(nest)
+        self._constants = constants
         self._chosen: dict[object, str] = {}
         self._ids = {loop.id for loop in nest.loops}
         self._source = {loop.of: loop for loop in loops_of(nest.tree)}
@@ -207,7 +211,8 @@ class Elements(ABC):
                 inside = self._entered(loop, place, Expression(source.iterator, source.type))
                 text = self._layout.text[source.header.start:source.header.end]
                 return Opened((), text, (), place, inside, kept=True, condition=asked)
-            return replace(self._element(loop, source, place), condition=asked)
+            opened = self._element(loop, source, place)
+            return replace(opened, condition=" && ".join(filter(None, (asked, opened.condition))))
         return self._sum(loop, place)
 
     def unchanged(self, loop: Loop) -> bool:
@@ -360,6 +365,8 @@ class Elements(ABC):
     def _declared(self, name: str, forms: tuple[Affine, ...], kind: str, scope: Scope, type: CType,
                   aliases: Mapping[Affine, Expression]) -> list[str]:
         """The declaration of the min or max of two or more forms."""
+        if len(forms) > 2:
+            forms = self._fitting_first(forms, kind, scope, type)
         text = self._chosen_of(forms[0], forms[1], kind, scope, type, aliases)
         if len(forms) == 2:
             return [f"const {type.spelling} {name} = {text.text};"]
@@ -372,6 +379,16 @@ class Elements(ABC):
             lines += [f"if ({better.text})", f"\x01{name} = {self._branch(form, scope, type, aliases).text};"]
             scope = with_extremum(outer, f"= {name}", variable, kind, forms[:forms.index(form) + 1])
         return lines
+
+    @staticmethod
+    def _fitting_first(forms: tuple[Affine, ...], kind: str, scope: Scope, type: CType) -> tuple[Affine, ...]:
+        """The forms with two ahead whose min or max fits the type, as all that is chosen after them does then too."""
+        chosen = Affine.of("= ")
+        for at, one in enumerate(forms):
+            for other in forms[at + 1:]:
+                if with_extremum(scope, "= ", Expression("", type), kind, (one, other)).fits(chosen, type):
+                    return (one, other, *(form for form in forms if form not in (one, other)))
+        raise NoRoom(str(forms[0]))
 
     def _chosen_of(self, a: Affine, b: Affine, kind: str, scope: Scope, type: CType,
                    aliases: Mapping[Affine, Expression]) -> Expression:
@@ -401,13 +418,31 @@ class Elements(ABC):
         header = self._layout.header(source)
         near = self._near(loop, work, source.type)
         end = self._end(loop, source, work, upward, shift)
+        outside = work.place
+        idle = self._keep_out(near, end, work, source.type, upward, shift)
         start = self._start_text(loop, source, near, work, shift)
         test = self._test(source, end, loop, work.place, upward)
         inside = self._entered(loop, work.place, Expression(source.iterator, source.type))
         advance = header.advance if abs(loop.step) == abs(source.step) else \
             f"{source.iterator} {'+' if upward else '-'}= {abs(loop.step)}"
         text = f"{header.opening}{header.variable} = {start.text}; {test}; {advance}{header.closing}"
-        return Opened(tuple(work.lines), text, (), work.place, inside)
+        return Opened(tuple(work.lines), text, (), outside if idle else work.place, inside, condition=idle)
+
+    @staticmethod
+    def _keep_out(near: tuple[Affine, ...], end: Affine, work: Locals, type: CType, upward: bool, shift: int) -> str:
+        """What keeps a loop that makes no round from starting at a value that its variable cannot hold; empty if all can."""
+        scope, tests = work.place.scope, []
+        forms = [form + shift for form in near]
+        if all(scope.fits(form, type) for form in forms):
+            return ""
+        least, most = Affine((), type.smallest), Affine((), type.largest)
+        reached = any(scope.implies(at_most(least, form) if upward else at_most(form, most)) for form in forms)
+        for form in forms:
+            if not (reached and scope.implies(at_most(form, most) if upward else at_most(least, form))):
+                tests.append(comparison(form, "<" if upward else ">", end, scope).text)
+                scope = scope.knowing(less(form, end) if upward else less(end, form))
+        work.place = replace(work.place, scope=scope)
+        return " && ".join(tests)
 
     def _near(self, loop: Loop, work: Locals, type: CType) -> tuple[Affine, ...]:
         kind = "max" if loop.step > 0 else "min"
@@ -494,13 +529,11 @@ class Elements(ABC):
             return replace(opened, header=opening + opened.header, declared=declared)
         return replace(opened, header=f"{opening}{type} {opened.header}")
 
-    @staticmethod
-    def _step(name: str, loop: Loop) -> str:
+    def _step(self, name: str, loop: Loop) -> str:
         if loop.length == Affine((), 1):
             return f"{name}{'++' if loop.step > 0 else '--'}"
-        length = str(abs(loop.step)) if loop.named is None else loop.named
-        if loop.named is not None and abs(loop.step) != 1:
-            length = f"{abs(loop.step)} * {loop.named}"
+        steps = abs(loop.step)
+        length = str(steps) if loop.named is None else self._constants.length(loop.named, steps)
         return f"{name} {'+' if loop.step > 0 else '-'}= {length}"
 
     def _wide_enough(self, loop: Loop, scope: Scope, type: CType, starts: tuple[Affine, ...], shift: int) -> CType:

@@ -22,6 +22,7 @@ from .ahead import Ahead
 from .assumed import Tests, tests_of
 from .buffered import Heap
 from .chunks import Loops
+from .constants import Constants, is_old
 from .expression import INT, Expression, NoRoom, Scope, written
 from .includes import insertion, missing
 from .layout import InternalError, NestText
@@ -176,15 +177,18 @@ class _Order:
 
     def _loops(self, layout: NestText, style: Style, names: Names, scope: Scope, indent: str, heap: Heap) \
             -> tuple[list[str], list[str]]:
-        loops = Loops(self.nest, layout, names, self.tree, _is_c90(self.source.call.flags))
+        constants = Constants(self.tree, names, is_old(self.source.call.flags))
+        scope = constants.written(scope)
+        loops = Loops(self.nest, layout, names, self.tree, constants, _is_c90(self.source.call.flags))
         kept = frozenset(loop.symbol for loop in _printed(self.tree)
                          if loop.symbol in {one.id for one in self.nest.loops} and loops.unchanged(loop))
         printer = Printer(self.source, self.nest, layout, style, loops, kept, heap)
+        declared = [indent + line for line in constants.declarations()]
         if not printer.declarations(layout.tree, Place(scope)):
-            return printer.nodes(layout.tree, Place(scope), indent), printer.homeless
+            return [*declared, *printer.nodes(layout.tree, Place(scope), indent)], printer.homeless
         # what the nest declares stays in a block of its own
         lines = printer.nodes(layout.tree, Place(scope), indent + style.braced_step)
-        return [f"{indent}{{", *lines, f"{indent}}}"], printer.homeless
+        return [*declared, f"{indent}{{", *lines, f"{indent}}}"], printer.homeless
 
     def _assumptions(self) -> tuple[Assumption, ...]:
         """What the verdict rests on, and what the loops' bounds were worked out under."""

@@ -13,6 +13,7 @@ from .records import (
     read_result,
     write_result,
 )
+from .search import in_rounds
 from .statistics import Estimate
 
 __all__ = [
@@ -25,6 +26,7 @@ __all__ = [
     "Trial",
     "Verification",
     "as_text",
+    "in_rounds",
     "measure",
     "read_result",
     "verify",
