@@ -24,10 +24,12 @@ from many_variants import SANITIZED, Printed, Setting, problems
 from oracle import Log, TooLong, Undefined, Unsupported, compare, observe
 from random_choices import Choices
 from random_nests import RandomNest
-from random_order import Aligned, Execution
+from random_order import Aligned, Execution, threaded
 from random_plans import NAMED, LoopShape, Shape, plan
 from retile.affine import Affine
-from retile.model import Assumption, Instance, Judgement, RetileError, Verdict, Violation
+from retile.model import Assumption, Instance, Judgement, RetileError, StorageKind, Verdict, Violation
+from retile.plan.buffers import references
+from retile.plan.options import shown
 from walk import holds
 
 STEPS = 6000
@@ -70,7 +72,10 @@ class Nest:
         """What plans can speak of."""
         read = self.answer.opened.nest
         return Shape(tuple(LoopShape(loop.id, loop.outer) for loop in read.loops),
-                     tuple((s.id, s.loops) for s in read.statements))
+                     tuple((s.id, s.loops) for s in read.statements),
+                     tuple(shown(s.name, subscripts) if len(references(read, s.name)) > 1 else s.name
+                           for s in read.storages if s.kind is not StorageKind.SCALAR
+                           for subscripts in references(read, s.name)))
 
     @functools.cached_property
     def small(self) -> list[dict[str, int]]:
@@ -195,7 +200,8 @@ def _clashes(own: Nest, judgement: Judgement, finding: Finding) -> Iterator[str]
             continue
         for cuts in _cuts(judgement.plan.text):
             try:
-                wrong = execution.reversed(judgement.plan.text, aligned_of(judgement, sizes), cuts)
+                around = judgement.plan.text, aligned_of(judgement, sizes), cuts
+                wrong = [*execution.reversed(*around), *execution.raced(*around)]
             except KeyError:  # a place told in terms of an expression of the text: the tags decide alone
                 finding.counts["place not decided"] += 1
                 return
@@ -311,7 +317,8 @@ def _reversed_somewhere(own: Nest, judgement: Judgement) -> bool | None:
     for sizes, execution in own.executions(own.small):
         for cuts in _cuts(judgement.plan.text):
             try:
-                if len(execution.reversed(judgement.plan.text, aligned_of(judgement, sizes), cuts)):
+                around = judgement.plan.text, aligned_of(judgement, sizes), cuts
+                if len(execution.reversed(*around)) or len(execution.raced(*around)):
                     return True
             except KeyError:
                 return None
@@ -364,7 +371,10 @@ def _replayed(execution: Execution, judgement: Judgement, violation: Violation, 
         return [f"at {sizes} the witness shares no cell as {violation.kind}: {violation}"]
     for cuts in [*_cuts(judgement.plan.text), *([dict.fromkeys(_named(judgement.plan.text), 1000)] if ":" in judgement.plan.text else [])]:
         times = execution.times(judgement.plan.text, aligned_of(judgement, sizes), cuts)
-        if any(tuple(times[b]) < tuple(times[a]) for a, b in sharing):
+        level = threaded(judgement.plan.text)
+        if any(tuple(times[b]) < tuple(times[a]) or
+               level is not None and tuple(times[a][:level]) == tuple(times[b][:level]) and times[a][level] != times[b][level]
+               for a, b in sharing):
             return []
     return [f"at {sizes} the plan keeps the order of the witness: {violation}"]
 

@@ -45,6 +45,12 @@ def terms_of(plan: str) -> tuple[Term, ...]:
     return tuple(found)
 
 
+def threaded(plan: str) -> int | None:
+    """Which term's iterations threads share, by the options of a plan's text."""
+    match = re.search(r"threads at (\S+?)(?:,|$)", plan)
+    return None if match is None else plan.split(";")[0].split().index(match[1])
+
+
 def _form(text: str) -> tuple[tuple[str, int], ...]:
     parts = re.finditer(rf"([+-]?)(?:(\d+)\*)?({_LOOP})", text)
     return tuple((m[3], (-1 if m[1] == "-" else 1) * int(m[2] or 1)) for m in parts)
@@ -68,6 +74,15 @@ class Execution:
         """The numbers of those pairs that the plan puts the other way round."""
         times = self.times(plan, aligned, cuts)
         return np.flatnonzero(earlier(times[self.pairs[:, 1]], times[self.pairs[:, 0]]))
+
+    def raced(self, plan: str, aligned: Aligned = [], cuts: Mapping[str, int] = {}) -> np.ndarray:  # noqa: B006
+        """The numbers of those pairs that lie in different iterations of the loop that threads share."""
+        level = threaded(plan)
+        if level is None:
+            return np.array([], dtype=np.int64)
+        times = self.times(plan, aligned, cuts)
+        one, other = times[self.pairs[:, 0]], times[self.pairs[:, 1]]
+        return np.flatnonzero((one[:, :level] == other[:, :level]).all(axis=1) & (one[:, level] != other[:, level]))
 
     def told(self, pair: int) -> str:
         """A conflicting pair in words."""

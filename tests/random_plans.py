@@ -25,6 +25,7 @@ class Shape:
 
     loops: tuple[LoopShape, ...]
     statements: tuple[tuple[str, tuple[str, ...]], ...] = ()
+    arrays: tuple[str, ...] = ()  # as options name them
 
 
 def plan(choose: Choices, shape: Shape) -> str:
@@ -44,7 +45,7 @@ def plan(choose: Choices, shape: Shape) -> str:
     if chains and choose.chance(20):
         inner = choose.pick(chains)
         _skew(choose, terms, choose.pick(inner.outer), inner.id)
-    options = _options(choose, shape, named)
+    options = [*_options(choose, shape, named), *_storage_options(choose, shape, terms)]
     return " ".join(terms) + ("; " + ", ".join(options) if options else "")
 
 
@@ -90,4 +91,21 @@ def _options(choose: Choices, shape: Shape, named: list[str]) -> list[str]:
         value = choose.pick([*own, *own, "0", "1", "n"])
         shift = choose.pick(["", "", " + 1", " - 1"]) if value in own else ""
         options.append(f"place {id} {choose.pick(['at', 'at', 'with'])} {loop} = {value}{shift}")
+    return options
+
+
+def _storage_options(choose: Choices, shape: Shape, terms: list[str]) -> list[str]:
+    """What is written out, held, packed and shared among threads; not every wish fits its plan."""
+    options = []
+    bare = [term for term in terms if ":" not in term and "(" not in term]
+    chunks = [term for term in terms if ":" in term and "(" not in term and term.rpartition(":")[2].isdecimal()]
+    short = [loop for loop in bare if any(f"{loop}:{size}" in chunks for size in (2, 3, 4, 5))]
+    if short and choose.chance(25):
+        options.append(f"unroll {choose.pick(short)}")
+    if shape.arrays and bare and chunks and choose.chance(30):
+        options.append(f"hold {choose.pick(shape.arrays)} across {choose.pick(bare)}")
+    if shape.arrays and chunks and choose.chance(20):
+        options.append(f"pack {choose.pick(shape.arrays)} at {choose.pick(chunks)}")
+    if bare and choose.chance(6):
+        options.append(f"threads at {choose.pick([*bare, *chunks])}")
     return options
