@@ -9,7 +9,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
-from pycparser import c_ast, c_generator
+from pycparser import c_ast
 
 from ..affine import Affine, Formula, Symbol, negate
 from ..model import AssumptionCode, CType, Parameter
@@ -21,6 +21,7 @@ from .knowledge import Knowledge, Obligation
 from .polynomial import Monomial, Poly, symbol_names
 from .scopes import Binding, FunctionNames, assigned_target, descendants
 from .unit import Unit
+from .written import c_text
 
 if TYPE_CHECKING:
     from .expressions import Expressions
@@ -34,11 +35,6 @@ class Definition:
     expression: Any  # None: not known any more
     context: Context
     before: dict[Binding, Definition]  # what held where it stands
-
-
-def c_text(node: Any) -> str:
-    """An expression as C text, macros expanded."""
-    return str(c_generator.CGenerator().visit(node))
 
 
 class Setting:
