@@ -78,6 +78,21 @@ class Setting:
         """The value of a constant expression; None if it is none."""
         return self.types.constant(node, self.types.scope(self.names.function, node))
 
+    def constant_of(self, binding: Binding) -> int | None:
+        """The value of a variable that has one constant value wherever it can be named; None for any other.
+
+        ``const int rows = 4;``, and locals that get such a value and never another.
+        """
+        decl = binding.decl
+        if not isinstance(decl, c_ast.Decl) or decl.init is None or not binding.is_object or self.is_inner(binding):
+            return None
+        quals = self.qualifiers(binding)
+        once = self.names.assignments.get(binding) == [decl] and binding.automatic and not self.names.address_taken(binding)
+        if "volatile" in quals or not ("const" in quals or once) or (binding.automatic and self.names.may_skip_declarations):
+            return None
+        scope = self.types.file_scope if binding.kind == "global" else self.types.scope(self.names.function, decl)
+        return None if isinstance(decl.init, c_ast.InitList) else self.types.constant(decl.init, scope)
+
     def written_type(self, node: Any) -> Any:
         """The type that a type name in the function stands for."""
         return self.types.of(node, self.types.scope(self.names.function, node))
@@ -215,7 +230,7 @@ class Setting:
         if self.strict:
             return None
         place = self.places.attempt(node, context)
-        if place is None or not place.is_fixed(self.loop_ids):
+        if place is None or place.union is not None or not place.is_fixed(self.loop_ids):
             return None
         text = self.places.text_of(place, node)
         self.held[text] = place
@@ -286,7 +301,7 @@ class Setting:
         if self.strict or not isinstance(self.type_of(node), CType):
             return False
         place = self.places.attempt(node, context)
-        if place is None or not place.is_fixed(self.loop_ids):
+        if place is None or place.union is not None or not place.is_fixed(self.loop_ids):
             return False
         self.held[self.places.text_of(place, node)] = place
         return True
