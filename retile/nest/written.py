@@ -7,7 +7,7 @@ from typing import Any
 from pycparser import c_ast, c_generator
 
 
-class _Writer(c_generator.CGenerator):  # type: ignore[misc]
+class _Writer(c_generator.CGenerator):
     def __init__(self) -> None:
         super().__init__(reduce_parentheses=True)
 
