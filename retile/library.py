@@ -189,7 +189,7 @@ class OpenNest:
         settings = settings or Settings()
         variants = [self.rewrite(plan, trust=settings.trust) for plan in plans]
         return measure(self.source, self.nest, variants, sizes, settings, on_progress, command,
-                       lambda variant: self.judge(variant, trust=settings.trust))
+                       (lambda variant: self.judge(variant, trust=settings.trust)) if settings.verify else None)
 
     def search(self, sizes: Mapping[str, int], settings: Settings | None = None, *, on_progress: Progress | None = None,
                command: str = "retile measure", most: int = 25) -> Campaign | None:

@@ -177,6 +177,8 @@ class Region:
             point = ordered.lexmin().sample_point()
         except isl.Error:  # the library gives up on some sets with many divisions: go from name to name
             return _first_by_name(ordered, order)
+        if point.is_void():  # or it finds none where there are some
+            return _first_by_name(ordered, order)
         return {name: _value(point, at) for at, name in enumerate(order)}
 
     def sample(self, names: Iterable[str] = ()) -> dict[str, int] | None:

@@ -68,4 +68,105 @@ void survey(int n, double *restrict depth, double *restrict echo) {
     }
 }
 """, {"n": 6}, ("i:3 i", "i:2 k:2 i k", "l:2 i l", "k l i")),
+    ("a step that is a constant of the function", """\
+static const int depth_step = 2;
+void survey(int n, double *restrict depth, double *restrict echo) {
+    const int across = 3;
+    int width = 5;
+    for (int i = 0; i < n; i += depth_step)
+        for (int j = 0; j < n; j += across)
+            depth[i * width + j] += echo[j];
+}
+""", {"n": 7}, ("j i", "i:2 j:2 j i", "j:2 i j")),
+    ("structures copied whole", """\
+struct sounding { double x, y; int quality; };
+void survey(int n, struct sounding (*restrict to)[9], struct sounding (*restrict from)[9]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            struct sounding one = from[j][i];
+            one.x += 1;
+            to[i][j] = one;
+            to[i][j].y = from[i][j].quality;
+        }
+}
+""", {"n": 5}, ("j i", "i:2 j:2 i j", "j:3 i j")),
+    ("structures with a list of values", """\
+struct sounding { double x, y; int quality; };
+void survey(int n, double (*restrict depth)[9], struct sounding (*restrict to)[9]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            struct sounding one = { depth[i][j], 2 * depth[j][i], 1 };
+            to[i][j] = one;
+        }
+}
+""", {"n": 5}, ("j i", "i:2 j:2 i j")),
+    ("rows of structures moved", """\
+struct sounding { double x, y; };
+void survey(int n, struct sounding (*track)[9]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 1; j < n; j++)
+            track[i][j] = track[i + 1][j - 1];
+}
+""", {"n": 5}, ("j i", "i:2 i j", "i j:3 j")),
+)  # fmt: skip
+
+# Forms that the interpreter of the tests does not know: built, run, and compared with the original, sanitizers on.
+COMPILED: tuple[tuple[str, str, dict[str, int], tuple[str, ...]], ...] = (
+    ("an anonymous structure in one", """\
+struct sounding { struct { double x, y; }; int n; };
+void survey(int n, struct sounding (*restrict to)[64], struct sounding (*restrict from)[64]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            to[i][j] = from[j][i];
+            to[i][j].x += 1;
+        }
+}
+""", {"n": 4}, ("j i", "j:3 i j")),
+    ("arrays in structures copied whole", """\
+struct sounding { double x[3]; struct { int a, b[2]; } quality; };
+void survey(int n, struct sounding (*restrict to)[64], struct sounding (*restrict from)[64]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            struct sounding one = from[j][i];
+            one.x[j % 3] += 1;
+            to[i][j] = one;
+            to[i][j].quality = from[i][j].quality;
+        }
+}
+""", {"n": 4}, ("j i", "j:3 i j")),
+    ("a type of the function's own", """\
+typedef struct { double x; } place;
+typedef float real;
+void survey(int n, place *place, double *restrict echo) {
+    typedef double real;
+    struct pair { real u; real w; };
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            struct pair one = { echo[i], place[i * n + j].x };
+            place[i * n + j].x = one.u * one.w + sizeof one;
+        }
+}
+""", {"n": 4}, ("j i", "j:3 i j")),
+    ("bits of a number seen as an integer", """\
+union word { float f; unsigned u; };
+void survey(int n, union word (*restrict depth)[64], float (*restrict echo)[64]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            union word one = depth[j][i];
+            one.u &= 0x7fffffffu;
+            echo[i][j] = one.f;
+            depth[i][j + 1].u ^= 0x80000000u;
+        }
+}
+""", {"n": 6}, ("i:2 i j", "i j:3 j")),
+    ("a union in a structure", """\
+struct sounding { int kind; union { float depth; int code; }; };
+void survey(int n, struct sounding (*restrict track)[64]) {
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++) {
+            track[i][j].code = track[i][j].kind + j;
+            track[i][j].kind = i;
+        }
+}
+""", {"n": 6}, ("j i", "j:2 i:2 i j")),
 )  # fmt: skip

@@ -111,9 +111,9 @@ void sweep(int pings,struct cell *depth,int *place) {
     for (int i= 0;i<pings; i++) { double *to = &depth[i].v[0]; to[place[i]]=1; } }
 """, ((3, "pointer"),)),
     ("union", """\
-union cell{int i; float sweep;};
+union cell{int i; float f[2];};
 void sweep(int pings,union cell *depth) {
-    for (int i= 0;i<pings; i++) depth[i].f=1; }
+    for (int i= 0;i<pings; i++) depth[i].f[1]=1; }
 """, ((3, "union"),)),
     ("anon union", """\
 struct cell{union{int i; float sweep;};};
@@ -201,7 +201,7 @@ void sweep(int pings,double *depth,int *done) {
     for (int i= 0;i<pings && !*done; i++) depth[i]=1; }
 """, ((2, "bound"),)),
     ("struct asg", """\
-struct stride{double x;};
+struct stride{double *x;};
 void sweep(int pings,struct stride *depth,struct stride *echo) {
     for (int i= 0;i<pings; i++) depth[i]=echo[i]; }
 """, ((3, "struct-assignment"),)),

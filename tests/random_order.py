@@ -95,7 +95,7 @@ class Execution:
         return np.stack([self._moment(term, aligned, cuts) for term in terms], axis=1)
 
     def _moment(self, term: Term, aligned: Aligned, cuts: Mapping[str, int]) -> np.ndarray:
-        chunk = None if term.chunk is None else cuts.get(term.chunk) or int(term.chunk)
+        chunk = None if term.chunk is None else cuts[term.chunk] if term.chunk in cuts else int(term.chunk)
         total, place = np.zeros(len(self.log), dtype=np.int64), np.zeros(len(self.log), dtype=np.int64)
         unit = chunk
         for name, factor in term.loops:
@@ -109,7 +109,7 @@ class Execution:
             before = (self.lines[:, 0] < known.line) | ((self.lines[:, 0] == known.line) & (self.lines[:, 1] < known.column))
             place = np.where(missing, np.where(before, -1, 1), place)
             unit = unit and (chunk * abs(known.step) if dependent else chunk)
-        total = total if unit is None else total // unit
+        total = total // unit if unit else total
         return np.where(place == 0, total, place * FAR)
 
     def _loop(self, name: str) -> tuple[LoopAt, np.ndarray, np.ndarray, np.ndarray]:

@@ -329,3 +329,25 @@ def test_a_type_that_is_asked_for_before_the_structure_is_complete(tmp_path: Pat
     assert types.constant(compared.right, types.scope(function, compared)) == 8
     for _ in range(2):
         assert types.of_expression(compared.left, types.scope(function, compared)) == CType("double", 64, True, True)
+
+
+LOCAL_STRUCTURES = """
+typedef float real; enum { WIDE = 9 };
+typedef struct { int a; } cell;
+void f(cell *cell) {
+  enum { WIDE = 2 }; typedef double real; struct pair { real u[WIDE]; char c; };
+  struct pair one; one.u[0]; one.c; cell->a;
+}
+"""
+
+
+def test_a_structure_of_a_function_means_the_names_of_its_place(tmp_path: Path) -> None:
+    """ISO/IEC 9899:2018, 6.2.1 p4 and p7: an inner scope hides the outer one; a name's own declarator does not."""
+    source = opened(tmp_path, LOCAL_STRUCTURES)
+    function = source.functions[0]
+    one = function.body.block_items[3]
+    kind = source.types.of_declared(source.types.scope(function, one).lookup("one"), source.types.scope(function, one))
+    assert [(m.name, m.offset) for m in source.types.members(kind)] == [("u", 0), ("c", 16)]
+    assert source.types.size_of(kind) == 24
+    member = function.body.block_items[-1]
+    assert source.types.of_expression(member, source.types.scope(function, member)).spelling == "int"

@@ -57,9 +57,11 @@ def _refuse(nest: OpenNest, judgement: Judgement, target: Target) -> int:
 
 
 def _deliver(nest: OpenNest, text: str, target: Target) -> None:
-    from ..source import replace_file
+    from ..source import check_unchanged, replace_file
 
     data = nest.source.encode(text)
+    if target.in_place or target.file is not None:
+        check_unchanged(nest.source.path, nest.source.encode(nest.source.text))
     if target.in_place:
         replace_file(nest.source.path, data)
     elif target.file is not None and target.file != "-":

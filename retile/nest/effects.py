@@ -68,6 +68,9 @@ class Effects:
         place = self._setting.places.declared(decl)
         if isinstance(decl.init, c_ast.InitList):
             self._initialise(decl, place, context)
+        elif isinstance(place.type, StructType):
+            self._visit(decl.init, context)
+            self._whole_declared(decl, place, context)
         else:
             self._visit(decl.init, context)
             self._found.append(Touch(place, True, context, name))
@@ -81,14 +84,30 @@ class Effects:
         return tuple(self._found)
 
     def _initialise(self, decl: Any, place: Place, context: Context) -> None:
-        if not isinstance(place.type, ArrayOf):
+        if not isinstance(place.type, (ArrayOf, StructType)):
             raise refused(
                 decl, "unsupported", f"`{decl.name}` is initialised with a list; assign its parts one by one."
             )
-        for part in decl.init.exprs:
-            self._visit(part.expr if isinstance(part, c_ast.NamedInitializer) else part, context)
+        self._listed(decl.init, context)
+        if isinstance(place.type, StructType):
+            self._whole_declared(decl, place, context)
+            return
         for cell in self._setting.places.cells(place, decl):
             self._found.append(Touch(cell, True, context, decl))
+
+    def _listed(self, values: Any, context: Context) -> None:
+        """The reads of a list of initial values, lists inside it included."""
+        for part in values.exprs:
+            value = part.expr if isinstance(part, c_ast.NamedInitializer) else part
+            if isinstance(value, c_ast.InitList):
+                self._listed(value, context)
+            else:
+                self._visit(value, context)
+
+    def _whole_declared(self, decl: Any, place: Place, context: Context) -> None:
+        """The writes of a structure that is declared with a value."""
+        for part in self._setting.places.parts(place, c_ast.ID(decl.name, decl.coord)):
+            self._found.append(Touch(part, True, context, decl))
 
     def _visit(self, node: Any, context: Context) -> None:
         match node:
@@ -115,6 +134,8 @@ class Effects:
                     self._visit(part, context)
             case c_ast.FuncCall():
                 self._call(node, context)
+            case c_ast.CompoundLiteral() if isinstance(self._setting.type_of(node), (CType, StructType)):
+                self._listed(node.init, context)
             case _:
                 raise refused(
                     node, "unsupported", f"retile does not read `{c_text(node)}`; write it with plain operators."
@@ -184,11 +205,23 @@ class Effects:
             if self._is_plain_size(binding):
                 return
         self._beneath(node, context)
+        if isinstance(self._setting.type_of(node), StructType):
+            self._whole(node, False, context)
+            return
         place = self._scalar_place(node, context)
         self._found.append(Touch(place, False, context, node))
 
+    def _whole(self, node: Any, write: bool, context: Context) -> None:
+        """The parts of a structure that is copied; none of them has a text of its own."""
+        places = self._setting.places
+        nowhere = c_ast.ExprList([node], node.coord)
+        for part in places.parts(places.place(node, context), node):
+            self._found.append(Touch(part, write, context, nowhere))
+
     def _is_plain_size(self, binding: Any) -> bool:
         """True for an integer that nothing can change while the nest runs: it is a parameter, not memory."""
+        if binding is not None and self._setting.constant_of(binding) is not None:
+            return True
         if binding is None or not self._setting.is_frozen(binding) or self._setting.reachable(binding):
             return False
         type_ = self._setting.type_of_binding(binding)
@@ -269,6 +302,9 @@ class Effects:
             self._found.append(Touch(cell, False, context, node))
 
     def _write(self, node: Any, context: Context, update: Update | None = None) -> None:
+        if isinstance(self._setting.type_of(node), StructType):
+            self._whole(node, True, context)
+            return
         place = self._scalar_place(node, context)
         if any(isinstance(step, Member) and step.bits is not None for step in place.steps):
             raise refused(

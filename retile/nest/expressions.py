@@ -166,6 +166,9 @@ class Expressions:
             with setting.at(definition):
                 value = self.value(definition.expression, definition.context)
             return None if value is None else self.convert(value, type_, definition.context, node)
+        constant = setting.constant_of(binding)
+        if constant is not None:
+            return Value(Poly.of(wrapped(constant, type_)), type_, True)
         if setting.is_frozen(binding) and not (setting.strict and setting.reachable(binding)):
             return Value(Poly.of(setting.parameter_of(binding, type_)), type_, True)
         return None

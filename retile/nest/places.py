@@ -70,6 +70,7 @@ class Place:
     type: Any
     quals: frozenset[str] = frozenset()
     step_type: Any = None  # what the last subscript counts
+    union: Any = None  # the union that the cell is part of: all of its members are this one cell
     holder: Any = None  # the structure of the first member
 
     @property
@@ -208,35 +209,64 @@ class Places:
         whole = self.pointer(node.name, context) if node.type == "->" else self.place(node.name, context)
         if not isinstance(whole.type, StructType):
             raise refused(node, "unsupported", f"retile cannot read the type of `{c_text(node.name)}`.")
-        if whole.type.kind == "union" or self._in_union(whole.type, node.field.name):
-            raise refused(
-                node,
-                "union",
-                f"`{c_text(node)}` is a member of a union, whose members share memory; "
-                "use a plain variable in the nest.",
-            )
         member = self._setting.types.member(whole.type, node.field.name)
         if member is None:
             raise refused(node, "unsupported", f"the structure with the member `{node.field.name}` is not known here.")
         self._check(node, member.type, member.quals)
-        return Place(
-            whole.root,
-            (*whole.steps, Member(node.field.name, member.bits)),
-            member.type,
-            member.quals | whole.quals,
-            whole.step_type,
-            whole.holder or whole.type,
-        )
+        steps, union = self._steps(whole, node.field.name, member)
+        if union is not None and not isinstance(member.type, CType):
+            raise refused(
+                node,
+                "union",
+                f"`{c_text(node)}` is an array, structure or pointer in a union, whose members share memory; "
+                "use a plain variable in the nest.",
+            )
+        return Place(whole.root, steps, member.type, member.quals | whole.quals, whole.step_type, union)
 
-    def _in_union(self, type_: StructType, name: str) -> bool:
-        for member in self._setting.types.members(type_) or ():
-            if (
-                member.name is None
-                and isinstance(member.type, StructType)
-                and self._setting.types.member(member.type, name) is not None
-            ):
-                return member.type.kind == "union" or self._in_union(member.type, name)
-        return False
+    def _steps(self, whole: Place, name: str, member: Any) -> tuple[tuple[Index | Member, ...], Any]:
+        """The steps to a member, and the union that it is part of; all members of a union take the steps of one."""
+        if whole.type.kind == "union":
+            return whole.steps, whole.type
+        for one in self._setting.types.members(whole.type) or ():
+            inner = one.type
+            if one.name is None and isinstance(inner, StructType) and self._setting.types.member(inner, name) is not None:
+                if inner.kind == "union":
+                    first = next((part.name for part in self._setting.types.members(inner) or () if part.name), name)
+                    return (*whole.steps, Member(first)), inner
+                return self._steps(replace(whole, type=inner), name, member)
+        return (*whole.steps, Member(name, member.bits)), None
+
+    def parts(self, place: Place, node: Any) -> list[Place]:
+        """All cells of a structure; Refused where they cannot be told one by one."""
+        if isinstance(place.type, ArrayOf):
+            return [part for cell in self.cells(place, node) for part in self.parts(cell, node)]
+        if not isinstance(place.type, StructType):
+            if isinstance(place.type, CType):
+                return [place]
+            raise refused(
+                node,
+                "struct-assignment",
+                f"the whole structure `{c_text(node)}` is copied with a pointer in it; copy its members one by one.",
+            )
+        if place.type.kind == "union":
+            return [replace(place, union=place.type)]
+        found: list[Place] = []
+        for one in self._setting.types.members(place.type) or ():
+            if one.name is None and isinstance(one.type, StructType):
+                first = next((part.name for part in self._setting.types.members(one.type) or () if part.name), None)
+                inner = one.type.kind == "union" and first is not None
+                steps = (*place.steps, Member(first)) if inner and first is not None else place.steps
+                found += self.parts(replace(place, type=one.type, steps=steps), node)
+            elif one.bits is not None:
+                what = f"the whole structure `{c_text(node)}` is copied with a bit-field in it; copy its members one by one."
+                raise refused(node, "struct-assignment", what)
+            elif one.name is not None:
+                steps = (*place.steps, Member(one.name))
+                found += self.parts(replace(place, type=one.type, quals=one.quals | place.quals, steps=steps), node)
+        if not found or len(found) > 64:
+            what = f"the whole structure `{c_text(node)}` is copied, and has no parts or more than 64; copy what is needed."
+            raise refused(node, "struct-assignment", what)
+        return found
 
     def _check(self, node: Any, type_: Any, quals: frozenset[str]) -> None:
         if isinstance(type_, UnknownType):
@@ -314,7 +344,7 @@ class Places:
         if by is not None and by.constant == 0:
             return place
         last = place.steps[-1] if place.steps else None
-        if not isinstance(last, Index):
+        if not isinstance(last, Index) or (place.union is not None and place.type is not place.union):
             raise refused(node, "pointer", f"`{c_text(node)}` moves a pointer to a single object; name an array.")
         poly = None if by is None or last.poly is None else last.poly + by
         moved = Index(poly, last.extent, last.loose or len(place.indices) > 1)

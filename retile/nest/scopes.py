@@ -164,6 +164,11 @@ class FunctionNames:
         return any(isinstance(node, (c_ast.Goto, c_ast.Label)) for node in self.nodes)
 
     @cached_property
+    def may_skip_declarations(self) -> bool:
+        """True if control may jump over a declaration, so that its variable has no value."""
+        return self.has_jumps or any(isinstance(node, c_ast.Switch) for node in self.nodes)
+
+    @cached_property
     def assignments(self) -> dict[Binding, list[Any]]:
         """Per binding: the nodes that give it a value: Decl with initialiser, Assignment, ++ and --."""
         found: dict[Binding, list[Any]] = defaultdict(list)

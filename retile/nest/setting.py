@@ -9,7 +9,7 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
 
-from pycparser import c_ast, c_generator
+from pycparser import c_ast
 
 from ..affine import Affine, Formula, Symbol, negate
 from ..model import AssumptionCode, CType, Parameter
@@ -21,6 +21,7 @@ from .knowledge import Knowledge, Obligation
 from .polynomial import Monomial, Poly, symbol_names
 from .scopes import Binding, FunctionNames, assigned_target, descendants
 from .unit import Unit
+from .written import c_text
 
 if TYPE_CHECKING:
     from .expressions import Expressions
@@ -34,11 +35,6 @@ class Definition:
     expression: Any  # None: not known any more
     context: Context
     before: dict[Binding, Definition]  # what held where it stands
-
-
-def c_text(node: Any) -> str:
-    """An expression as C text, macros expanded."""
-    return str(c_generator.CGenerator().visit(node))
 
 
 class Setting:
@@ -81,6 +77,21 @@ class Setting:
     def constant(self, node: Any) -> int | None:
         """The value of a constant expression; None if it is none."""
         return self.types.constant(node, self.types.scope(self.names.function, node))
+
+    def constant_of(self, binding: Binding) -> int | None:
+        """The value of a variable that has one constant value wherever it can be named; None for any other.
+
+        ``const int rows = 4;``, and locals that get such a value and never another.
+        """
+        decl = binding.decl
+        if not isinstance(decl, c_ast.Decl) or decl.init is None or not binding.is_object or self.is_inner(binding):
+            return None
+        quals = self.qualifiers(binding)
+        once = self.names.assignments.get(binding) == [decl] and binding.automatic and not self.names.address_taken(binding)
+        if "volatile" in quals or not ("const" in quals or once) or (binding.automatic and self.names.may_skip_declarations):
+            return None
+        scope = self.types.file_scope if binding.kind == "global" else self.types.scope(self.names.function, decl)
+        return None if isinstance(decl.init, c_ast.InitList) else self.types.constant(decl.init, scope)
 
     def written_type(self, node: Any) -> Any:
         """The type that a type name in the function stands for."""
@@ -219,7 +230,7 @@ class Setting:
         if self.strict:
             return None
         place = self.places.attempt(node, context)
-        if place is None or not place.is_fixed(self.loop_ids):
+        if place is None or place.union is not None or not place.is_fixed(self.loop_ids):
             return None
         text = self.places.text_of(place, node)
         self.held[text] = place
@@ -290,7 +301,7 @@ class Setting:
         if self.strict or not isinstance(self.type_of(node), CType):
             return False
         place = self.places.attempt(node, context)
-        if place is None or not place.is_fixed(self.loop_ids):
+        if place is None or place.union is not None or not place.is_fixed(self.loop_ids):
             return False
         self.held[self.places.text_of(place, node)] = place
         return True

@@ -119,7 +119,7 @@ class _Builder:
         return f"{type_.kind} {tag}" if tag else type(type_).__name__.lower()
 
     def _bytes(self, place: Place) -> int | None:
-        counted = place.step_type if place.step_type is not None else place.type
+        counted = place.step_type or place.union or place.type
         return self._setting.size_of(counted)
 
     # ------------------------------------------------------------ arrays
@@ -165,7 +165,7 @@ class _Builder:
                 name,
                 root.key,
                 root.kind,
-                self._element(place.type),
+                self._element(place.type if place.union is None else place.union),
                 self._bytes(place),
                 tuple(shape),
                 strides,

@@ -16,6 +16,7 @@ _COLUMNS = (Column("plan"), Column("time per call", right=True, whole=True), Col
             Column("times faster", right=True, whole=True), Column("95 % interval", right=True, whole=True),
             Column("verified", whole=True), Column("identical", whole=True), Column(""))
 _INTERVALS = (2, 4)  # the columns that are left out where there is none
+_NAMED = 4  # plans that a remark names; of more it says how many
 _UNITS = ((1.0, "s"), (1e-3, "ms"), (1e-6, "us"), (1e-9, "ns"))
 
 
@@ -100,15 +101,22 @@ _RATIO = Scale(1.0, "", 2)
 
 def _remarks(campaign: Campaign, look: Look) -> list[str]:
     """What went wrong with variants, or differs; the same of several is said once, with the first place of it."""
-    plans: dict[str, list[str]] = {}
+    plans: dict[str, list[Trial]] = {}
     places: dict[str, str] = {}
     for trial in campaign.trials:
         for text in _faults(trial):
             what, mark, place = text.partition("; first at ")
             places.setdefault(what, mark + place)
-            plans.setdefault(what, []).append(f'"{trial.plan}"' + _amount(trial))
-    plans = {what + places[what]: names for what, names in plans.items()}
-    return [line for text, names in plans.items() for line in paragraph(f"{', '.join(names)}: {text}", look, "", "  ")]
+            plans.setdefault(what, []).append(trial)
+    return [line for what, trials in plans.items()
+            for line in paragraph(f"{_named(trials)}: {what}{places[what]}", look, "", "  ")]
+
+
+def _named(trials: list[Trial]) -> str:
+    """The plans that a remark is about."""
+    if len(trials) <= _NAMED:
+        return ", ".join(f'"{trial.plan}"' + _amount(trial) for trial in trials)
+    return f"{len(trials)} variants" + _amount(max(trials, key=lambda trial: trial.largest_difference or 0.0))
 
 
 def _faults(trial: Trial) -> list[str]:

@@ -13,7 +13,7 @@ from .opening import open_source
 
 if TYPE_CHECKING:
     from .commands import flags_from_compile_commands
-    from .edit import replace_file, splice
+    from .edit import check_unchanged, replace_file, splice
     from .kinds import ArrayOf, Declared, FunctionType, Member, PointerTo, Scope, StructType, Type, UnknownType, Void
     from .lex import Token
     from .messages import complaint
@@ -22,11 +22,12 @@ if TYPE_CHECKING:
 
 __all__ = [
     "ArrayOf", "CompilerCall", "Declared", "FunctionType", "Member", "PointerTo", "Scope", "Source", "StructType",
-    "Token", "Type", "Types", "UnknownType", "Void", "complaint", "flags_from_compile_commands", "open_source",
-    "replace_file", "splice",
+    "Token", "Type", "Types", "UnknownType", "Void", "check_unchanged", "complaint", "flags_from_compile_commands",
+    "open_source", "replace_file", "splice",
 ]  # fmt: skip
 
-_MODULES = {"flags_from_compile_commands": "commands", "replace_file": "edit", "splice": "edit", "Token": "lex",
+_MODULES = {"flags_from_compile_commands": "commands", "replace_file": "edit", "check_unchanged": "edit",
+            "splice": "edit", "Token": "lex",
             "complaint": "messages", "Source": "source", "Types": "types"}
 
 

@@ -1,4 +1,4 @@
-"""The user's compiler as a preprocessor: one process, no shell, with limits on time and output."""
+"""The user's compiler as a preprocessor: one process, no shell, with limits on time, memory and output."""
 
 from __future__ import annotations
 
@@ -112,6 +112,7 @@ class Run:
     def __init__(self, command: list[str], call: CompilerCall, text: bytes | None) -> None:
         self._program, self._text = command[0], text
         self._deadline = time.monotonic() + SECONDS
+        self._computed = _computed()
         try:
             self._process = subprocess.Popen(
                 command,
@@ -121,6 +122,7 @@ class Run:
                 cwd=call.directory,
                 env={**os.environ, "LC_ALL": "C"},
                 start_new_session=True,
+                preexec_fn=limited(seconds=COMPUTING, memory=MEMORY, files=0),
             )
         except (OSError, ValueError) as error:
             raise RetileError(_cannot_start(command[0], call, error)) from None
@@ -128,7 +130,12 @@ class Run:
     def results(self) -> tuple[bytes, bytes, int]:
         """Standard output, standard error and exit status; RetileError beyond the limits on time and output."""
         try:
-            return _communicate(self._process, self._text, self._program, self._deadline)
+            answer = _communicate(self._process, self._text, self._program, self._deadline)
+            if answer[2] and _computed() - self._computed > COMPUTING - 1:
+                raise RetileError(f"{self._program} computed for {COMPUTING:.0f} seconds and was not ready")
+            return answer
+        except subprocess.TimeoutExpired:
+            raise RetileError(f"{self._program} did not end within {SECONDS:.0f} seconds") from None
         finally:
             self.stop()
 
@@ -139,6 +146,11 @@ class Run:
         for stream in (self._process.stdin, self._process.stdout, self._process.stderr):
             if stream:
                 stream.close()
+
+
+def _computed() -> float:
+    """Seconds that the programs which this process started and that have ended computed."""
+    return resource.getrusage(resource.RUSAGE_CHILDREN).ru_utime
 
 
 def _cannot_start(program: str, call: CompilerCall, error: Exception) -> str:

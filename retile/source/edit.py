@@ -24,11 +24,24 @@ def splice(text: str, edits: Iterable[tuple[int, int, str]]) -> str:
     return "".join(pieces)
 
 
+def check_unchanged(path: str, read: bytes) -> None:
+    """RetileError if the file at ``path`` no longer holds what was read from it."""
+    try:
+        with open(path, "rb") as file:
+            same = file.read() == read
+    except OSError:
+        same = False
+    if not same:
+        raise RetileError(f"{path}: the file was changed since it was read; nothing was written, run the command again")
+
+
 def replace_file(path: str, data: bytes) -> None:
     """Put ``data`` into the file at ``path``: afterwards it holds all of it, or what it held before.
 
     The new text is written beside the file and takes its place in one step (rename, IEEE 1003.1).  The mode is kept and
     a symbolic link is followed.  A file that does not exist is made.  RetileError says why it is not possible.
+
+    Killed on the way, it leaves at most a file ``.retile-…`` without the suffix of a source, made new by every call.
     """
     target = os.path.realpath(path)
     try:

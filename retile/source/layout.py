@@ -97,17 +97,17 @@ class Layout:
         char = self._types.arithmetic.char_bits
         members: list[Member] = []
         bits: int | None = 0 if self._types.layout_is_plain(type.node) else None  # where the next member may start
-        size, largest = 0, 1
+        size, largest, scope = 0, 1, self._types.structure_scope(type.node)
         for node in type.node.decls or ():
             if not isinstance(node, c_ast.Decl):
                 continue
-            kind = self._types.of(node)
-            width = None if node.bitsize is None else self._types.constant(node.bitsize)
+            kind = self._types.of(node, scope)
+            width = None if node.bitsize is None else self._types.constant(node.bitsize, scope)
             start = 0 if type.kind == "union" and bits is not None else bits
-            start, after, alignment = self._place(kind, node, width, start)
+            start, after, alignment = self._place(kind, node, width, start, scope)
             known = start is not None and node.bitsize is None
             members.append(
-                Member(node.name, kind, self._types.qualifiers(node), width, start // char if known else None)  # type: ignore[operator]
+                Member(node.name, kind, self._types.qualifiers(node, scope), width, start // char if known else None)  # type: ignore[operator]
             )
             bits = after
             if bits is not None:
@@ -116,12 +116,14 @@ class Layout:
             return tuple(members), None, None
         return tuple(members), -(-size // (largest * char)) * largest, largest
 
-    def _place(self, type: Type, node: Any, width: int | None, start: int | None) -> tuple[int | None, int | None, int]:
+    def _place(
+        self, type: Type, node: Any, width: int | None, start: int | None, scope: Scope
+    ) -> tuple[int | None, int | None, int]:
         """First bit, bit after, and alignment of a member that may start at bit ``start``."""
         char = self._types.arithmetic.char_bits
         alignment = self.alignment(type)
         flexible = isinstance(type, ArrayOf) and type.extent is None
-        size = 0 if flexible else self.size(type, self._types.file_scope)
+        size = 0 if flexible else self.size(type, scope)
         if start is None or alignment is None or size is None or (node.bitsize is not None and width is None):
             return None, None, 1
         if node.bitsize is None:

@@ -35,8 +35,8 @@ def open_source(path: str, call: CompilerCall = CompilerCall()) -> Source:
 def begin(path: str, text: str, call: CompilerCall, *, stubs: bool) -> Preprocessing:
     """Start the preprocessor on a file whose text is known, with or without our own headers."""
     data = None
-    if _LINE_DIRECTIVE.search(text):
-        # Lines that claim another place would hide where tokens come from.
+    if _LINE_DIRECTIVE.search(text) or "\n" in path:
+        # Lines that claim another place, and names of several lines, would hide where tokens come from.
         data = _LINE_DIRECTIVE.sub("", text).encode("utf-8", "surrogateescape")
     return preprocess(call, path, stubs=stubs, text=data)
 

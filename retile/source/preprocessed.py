@@ -10,6 +10,7 @@ import re
 from typing import NamedTuple
 
 from ..values import dataclass
+from ..model import RetileError
 from .lex import spellings
 
 
@@ -40,6 +41,8 @@ class Unit:
     system: frozenset[int]  # those that the compiler calls system headers
     packs: bool  # a ``#pragma pack`` stands somewhere
 
+
+MOST_TOKENS = 700_000  # of a unit: some ten megabytes of C
 
 _MARKER = re.compile(r'#(?: |line )\s*(\d+) "((?:[^"\\]|\\.)*)"((?: \d)*)')
 _MACRO = re.compile(r"#\s*(define|undef) ((?:[^\W\d]|\$)[\w$]*)(.*)")
@@ -73,6 +76,9 @@ class _Reader:
                 file = self.file if self.depth == 0 or self.file != 0 else 1
                 for kind, text in spellings(row):
                     self.tokens.append(PToken(kind, text, self.line, file))
+                if len(self.tokens) > MOST_TOKENS:
+                    raise RetileError(f"{next(iter(self.files))}: after preprocessing these are more than "
+                                      f"{MOST_TOKENS} tokens, more than retile reads")
                 self.line += 1
         self._settle(self.line)
         return Unit(tuple(self.tokens), tuple(self.events), tuple(self.files), frozenset(self.system), self.packs)

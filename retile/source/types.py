@@ -36,6 +36,7 @@ class Types:
         self._expressions = Expressions(self)
         self._layout = Layout(self)
         self._scopes: dict[int, dict[int, Scope]] = {}  # id of a FuncDef -> id of a node in it -> scope
+        self._structure_scopes: dict[int, Scope] = {}  # id of a structure -> scope of its definition
         self._made: dict[int, Any] = {}  # keeps the FuncDefs of _scopes alive
         # Ids of a declaration and of the scope that it is read in -> the two, which keeps them alive, and the type.
         self._declared: dict[tuple[int, int], tuple[Any, Scope, Type]] = {}
@@ -68,6 +69,10 @@ class Types:
         table = self._scopes[id(function)]
         return table.get(id(function.body if node is None else node), table[id(function.body)])
 
+    def structure_scope(self, node: Any) -> Scope:
+        """The names that hold where a structure is defined."""
+        return self._structure_scopes.get(id(node), self.file_scope)
+
     def declaration(self, name: str, scope: Scope | None = None) -> Declared | None:
         """What a name stands for; None if it is not declared."""
         return (scope or self.file_scope).lookup(name)
@@ -79,6 +84,7 @@ class Types:
             if node is not None:
                 for key, entry in self._tags(node, scope, "parameter", function):
                     scope = scope.with_name(key, entry)
+                table[id(node)] = scope  # its type says nothing of its own name: ``T *T``
             scope = scope.with_name(name, Declared(name, "object", "parameter", node, function))
         self._walk(function.body, scope, function.body, table)
         return table
@@ -133,6 +139,7 @@ class Types:
             part = stack.pop()
             if isinstance(part, (c_ast.Struct, c_ast.Union)):
                 if part.decls is not None:
+                    self._structure_scopes[id(part)] = scope
                     if part.name:
                         yield f"{_kind(part)} {part.name}", part
                     stack.extend(reversed(part.decls))
