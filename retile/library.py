@@ -116,6 +116,11 @@ class OpenNest:
             text = plan.text if isinstance(plan, Plan) else " ".join(plan.split())
             return Judgement(Verdict.REFUSED, Plan(text, ()), refusals=self.refusals)
         judgement = judge(self.nest, self.dependences, self._parsed(plan))
+        if judgement.verdict is Verdict.LEGAL and judgement.plan.buffers:
+            from .rewrite.buffered import not_written_down
+
+            refusals = tuple(not_written_down(self.source, self.nest, judgement.plan))
+            return replace(judgement, verdict=Verdict.REFUSED, refusals=refusals) if refusals else judgement
         if judgement.verdict not in (Verdict.ILLEGAL, Verdict.UNPROVEN) or judgement.instead is not None:
             return judgement
         return replace(judgement, instead=nearest_legal(self.nest, self.dependences, judgement.plan))

@@ -99,6 +99,26 @@ void smooth(int n, double z[n][n])
             z[i][j] += z[i - 1][j];
 }
 """
+ROWS = """\
+void rows(int n, const double *restrict a, double *restrict c)
+{
+    for (int i = 0; i < n; i++) {
+        double *row = c + i * n;
+        for (int j = 0; j < n; j++)
+            for (int k = 0; k < n; k++)
+                row[j] += a[i * n + k];
+    }
+}
+"""
+TWICE = """\
+#define TWICE(x) ((x) + (x))
+void twice(int n, const double *restrict a, double *restrict c)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < n; j++)
+            c[i * n + j] = TWICE(a[j * n + i]);
+}
+"""
 BLOCKS = "j:16 k:8 i:8 j:4 i:2 k j i; pack echoes at k:8, pack weights at i:8, hold beams across k, unroll i"
 
 
@@ -169,6 +189,8 @@ def test_a_blocked_product_is_that_of_numpy(tmp_path):
     (CHOSEN, "i:8 j:8 i j; pack in at j:8", "might not touch"),
     (CHOSEN, "i:8 j:8 i j; pack out at j:8", "might not write"),
     (SHIFTED, "i:4 j:4 i j; pack z[i-1][j] at j:4", "does not see another access"),
+    (ROWS, "j:4 i:4 i k j; hold c across k", "a variable that the nest changes"),
+    (TWICE, "i:4 j:4 i j; pack a at j:4", "comes out of a macro"),
 ])
 def test_buffers_that_would_not_serve_are_refused(tmp_path, text, plan, reason):
     judgement = nest_of(tmp_path, text).check(plan)

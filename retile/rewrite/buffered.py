@@ -8,14 +8,18 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from math import prod
+from typing import TYPE_CHECKING
 
 from ..affine import Affine
-from ..model import Access, CType, Nest, Statement
+from ..model import Access, CType, Nest, Plan, Refusal, Span, Statement, StorageKind
 from ..source.lex import tokenize
 from ..tree import Buffer, Copy, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
 from ..values import dataclass
 from .expression import Scope, express
 from .names import Names
+
+if TYPE_CHECKING:
+    from ..source import Source
 
 _WORDS = {"hold": "held", "pack": "packed"}
 _ALIGNMENT = 64  # bytes: a cache line, and as much as the widest vectors that are common
@@ -151,3 +155,48 @@ def with_values(text: str, start: int, values: Mapping[str, str], taken: list[Ch
         found.append((begin, end, value if alone or plain else f"({value})"))
     return found
 
+
+
+def reference_of(source: Source, nest: Nest, buffer: Buffer) -> Span | None:
+    """An access, as the user wrote it, whose text means the same cell wherever its iterators have their values.
+
+    It names no variable that the nest changes, and no iterator that its subscripts do without.
+    """
+    used = frozenset().union(*(subscript.names() for subscript in buffer.subscripts))
+    apart = {loop.iterator for loop in nest.loops if loop.id not in used} - \
+        {loop.iterator for loop in nest.loops if loop.id in used}
+    written = {a.storage for statement in nest.statements for a in statement.accesses if a.write}
+    changing = apart | {storage.pointer_text.removeprefix("&") or storage.name for storage in nest.storages
+                        if storage.kind is StorageKind.SCALAR and storage.name in written}
+    for statement in nest.statements:
+        for access in served(buffer, statement):
+            span = source.reference_span(access.syntax.node)
+            if span is not None and not changing & _words(source, span):
+                return span
+    return None
+
+
+def _words(source: Source, span: Span) -> set[str]:
+    """The words of a piece of the user's text and of the macros in it."""
+    words: set[str] = set()
+    todo = [token.spelling for token in source.tokens_in(span.start, span.end) if token.kind == "word"]
+    while todo:
+        word = todo.pop()
+        if word not in words:
+            words.add(word)
+            todo += source.macro_words.get(word, ())
+    return words
+
+
+def not_written_down(source: Source, nest: Nest, plan: Plan) -> Iterator[Refusal]:
+    """The buffers of a plan whose accesses have no text of their own that could be changed or moved."""
+    for buffer in plan.buffers:
+        users = [(statement, access) for statement in nest.statements for access in served(buffer, statement)]
+        hidden = [statement for statement, access in users if source.reference_span(access.syntax.node) is None]
+        place = (hidden[0] if hidden else users[0][0]).span
+        if hidden:
+            yield Refusal(place.line, place.column, "buffer", f"an access to {buffer.storage} comes out of a macro that gives more "
+                          "than the access, or is no plain array element; write it out")
+        elif reference_of(source, nest, buffer) is None:
+            yield Refusal(place.line, place.column, "buffer", f"the subscripts of {buffer.storage} use a variable that the nest "
+                          "changes; write them with the iterators alone")

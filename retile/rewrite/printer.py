@@ -14,7 +14,7 @@ from ..model import LoopText, Nest, RetileError, Statement, StorageKind
 from ..source import Source
 from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children, loops_of
 from ..values import replace
-from .buffered import Array, Change, Heap, array_name, constant_dimensions, served, with_values
+from .buffered import Array, Change, Heap, array_name, constant_dimensions, reference_of, served, with_values
 from .chunks import Loops
 from .expression import Expression, condition
 from .layout import InternalError, Loose, NestText, Remarks, instances, replaced
@@ -217,8 +217,7 @@ class Printer:
     def _move(self, move: Move, place: Place) -> str:
         """``beams_held[j - j_from] = beams[i][j];`` or the other way round."""
         buffer = move.buffer
-        span = next((span for statement in self._nest.statements for access in served(buffer, statement)
-                     if (span := self._source.reference_span(access.syntax.node)) is not None), None)
+        span = reference_of(self._source, self._nest, buffer)
         if span is None:
             raise InternalError(f"{self._nest.address}: no access to {buffer.storage} has a text of its own")
         changes = with_values(self._layout.text[span.start:span.end], span.start, self._values, [])
