@@ -46,7 +46,7 @@ class Statements(Calls):
 
     def statement(self, node: Any) -> None:
         """The lines of a statement."""
-        if node is None or isinstance(node, (c_ast.EmptyStatement, c_ast.Pragma)):
+        if node is None or isinstance(node, (c_ast.EmptyStatement, c_ast.Pragma, c_ast.StaticAssert)):
             return
         method = getattr(self, f"_run_{type(node).__name__}", None)
         if method is not None:
