@@ -141,6 +141,10 @@ class Examiner:
                 if time.perf_counter() > end:
                     break
                 continue
+            except Unsupported:
+                if setting.together:
+                    continue  # the pointers have different types
+                raise
             tried.append(str(setting))
             if found:
                 return Finding(False, f"at {setting}: {found[0]}", tuple(found), tuple(tried), notes=tuple(self.notes))
