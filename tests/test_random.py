@@ -87,6 +87,7 @@ def test_regressions(path, request):
     for seed in range(2):
         finding = examine(nest, Seeded(seed), seed, Effort(build="gcc" if seed else "", flags=SANITIZED), plans)
         assert not finding.problems, f"{nest}\n{finding.problems}"
+        assert not [what for what in finding.counts if "not compared" in what], finding.counts
 
 
 @pytest.mark.long
