@@ -220,6 +220,9 @@ def _compare_tags(own: Nest, variant: Printed, effort: Effort, finding: Finding)
             wrong = allowed and compare(own.nest.text, head + variant.text, own.nest.function, sizes, steps=STEPS)
         except (Undefined, TooLong):
             continue
+        except Unsupported as reason:
+            finding.counts[f"tags not compared: {_short(str(reason))}"] += 1
+            continue
         finding.counts["tags compared"] += bool(allowed)
         if wrong:
             finding.problems.append((variant.label, f"tags differ at {sizes}: {wrong[:3]}\n{variant.text}"))

@@ -136,14 +136,13 @@ void survey(int n, struct sounding (*restrict to)[64], struct sounding (*restric
 """, {"n": 4}, ("j i", "j:3 i j")),
     ("a type of the function's own", """\
 typedef struct { double x; } place;
-typedef float real;
-void survey(int n, place *place, double *restrict echo) {
+void survey(int n, place *restrict spot, double *restrict echo) {
     typedef double real;
     struct pair { real u; real w; };
     for (int i = 0; i < n; i++)
         for (int j = 0; j < n; j++) {
-            struct pair one = { echo[i], place[i * n + j].x };
-            place[i * n + j].x = one.u * one.w + sizeof one;
+            struct pair one = { echo[i], spot[i * n + j].x };
+            spot[i * n + j].x = one.u * one.w + sizeof one;
         }
 }
 """, {"n": 4}, ("j i", "j:3 i j")),

@@ -45,13 +45,14 @@ class Arrays:
 
     # ------------------------------------------------------------ declarations
 
-    def declare(self) -> None:
-        choose = self.choose
+    def declare(self, cubes: bool) -> None:
+        """Choose the arrays; ``cubes``: also those with three subscripts made flat."""
+        choose, forms = self.choose, [form for form in _FORMS if cubes or form != "cube"]
         loose = "" if choose.chance(15) else " + 3"  # without room for shifts some sizes are undefined
         floating = choose.chance(85)
         for name in NAMES[:choose.between(1, 3)]:
             element = choose.pick(FLOATING if floating or choose.chance(30) else INTEGER)
-            self._array(Array(name, choose.pick(_FORMS), element), loose)
+            self._array(Array(name, choose.pick(forms), element), loose)
         if choose.chance(8):
             self.map = True
             self.parameters.append("const int *restrict map")

@@ -138,7 +138,7 @@ class Writer:
     def bounds(self, size: str, outer: str | None) -> tuple[str, str]:
         choose = self.choose
         if outer is None:
-            lows = ["0", "0", "0", "0", "0", "1", "2", "(n < 3 ? n : 3)", "n % 2", "MIN(m, 2)"]
+            lows = ["0", "0", "0", "0", "0", "0", "0", "1", "1", "2", "(n < 3 ? n : 3)", "n % 2", "MIN(m, 2)"]
             highs = [size, size, size, size, f"{size} - 1", "4", f"{size} / 2 + 1", f"({size} < 5 ? {size} : 5)",
                      f"({size} + 2) / 3", f"{size} % 4 + 1", f"MIN({size}, m)"]
             return choose.pick(lows), choose.pick(highs)
@@ -225,8 +225,9 @@ _HEAD = ["#include <math.h>", "#include <stddef.h>", "#define MIN(a, b) ((a) < (
 def nest(choose: Choices) -> RandomNest:
     """A random nest."""
     writer = Writer(choose, Arrays(choose))
-    writer.kind = choose.pick(SIGNED) if choose.chance(78) else choose.pick(UNSIGNED)
-    writer.arrays.declare()
+    writer.kind = choose.pick(SIGNED) if choose.chance(82) else choose.pick(UNSIGNED)
+    # Products of three unsigned sizes may wrap in so many ways that such nests take seconds each.
+    writer.arrays.declare(cubes=writer.kind not in UNSIGNED or choose.chance(10))
     size_type = "int" if choose.chance(70) else writer.kind
     result = choose.chance(12)
     sizes = ", ".join(f"{size_type} {name}" for name in ("n", "m", "w"))

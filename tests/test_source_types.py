@@ -336,7 +336,10 @@ typedef float real; enum { WIDE = 9 };
 typedef struct { int a; } cell;
 void f(cell *cell) {
   enum { WIDE = 2 }; typedef double real; struct pair { real u[WIDE]; char c; };
-  struct pair one; one.u[0]; one.c; cell->a;
+  struct pair one; real x = 1;
+  { typedef short real; x; }
+  typedef real other; { typedef short real; other y = 1; y; }
+  cell->a;
 }
 """
 
@@ -345,7 +348,12 @@ def test_a_structure_of_a_function_means_the_names_of_its_place(tmp_path: Path) 
     """ISO/IEC 9899:2018, 6.2.1 p4 and p7: an inner scope hides the outer one; a name's own declarator does not."""
     source = opened(tmp_path, LOCAL_STRUCTURES)
     function = source.functions[0]
-    one = function.body.block_items[3]
+    one, block = function.body.block_items[3], function.body.block_items[5]
+    for inner in (block.block_items[1], function.body.block_items[7].block_items[2]):
+        assert source.types.of_expression(inner, source.types.scope(function, inner)).bits == 64
+    inner = block.block_items[1]
+    assert source.types.of_expression(inner, source.types.scope(function, inner)).spelling == "real"
+    assert source.types.of_expression(inner, source.types.scope(function, inner)).bits == 64
     kind = source.types.of_declared(source.types.scope(function, one).lookup("one"), source.types.scope(function, one))
     assert [(m.name, m.offset) for m in source.types.members(kind)] == [("u", 0), ("c", 16)]
     assert source.types.size_of(kind) == 24

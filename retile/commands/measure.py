@@ -57,14 +57,21 @@ def run(address: str, plans: tuple[str, ...], compiling: CompilerOptions, measur
     settings = _settings(measuring, compiling)
     nest = open_nest(address, compiling, measuring.facts)
     if not plans and not nest.refusals:
+        _announce(nest)
         return _search(nest, address, sizes, settings, measuring, as_json)
     parsed = [plan if nest.refusals else nest.plan(plan, **measuring.defaults) for plan in plans]
     refused = [judgement for judgement in map(nest.check, parsed) if judgement.verdict is not Verdict.LEGAL]
     if refused:
         return _refuse(nest, refused, parsed, sizes, as_json)
+    _announce(nest)
     with _progress() as on_progress:
         campaign = nest.measure(parsed, sizes, settings, on_progress=on_progress, command=_command(address, plans))
     return _report(campaign, measuring, as_json)
+
+
+def _announce(nest: OpenNest) -> None:
+    """Of all commands only this one, and ``rewrite --verify``, run what they are given."""
+    say(f"Building and running the loops of {nest.address} and of its variants.")
 
 
 def _search(nest: OpenNest, address: str, sizes: dict[str, int], settings: Settings, measuring: Measuring,

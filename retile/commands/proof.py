@@ -45,18 +45,29 @@ class Proof:
 
 
 def prove(nest: OpenNest, variant: Variant, trust: bool) -> Proof:
-    """Judge a variant, build it and run it; what speaks against it, or could not be done, goes to standard error."""
-    from ..trial import Settings
+    """Judge a variant, build it and run it unless the judge finds it wrong.
 
-    finding, reason = nest.judge(variant, trust=trust), ""
-    try:
-        verification = nest.verify(variant, Settings(trust=trust))
-    except RetileError as problem:
-        verification, reason = None, str(problem)
-    proof = Proof(finding, verification, reason)
+    What speaks against it, or could not be done, goes to standard error.
+    """
+    finding = nest.judge(variant, trust=trust)
+    if finding.judged is False:
+        proof = Proof(finding, None, "the judge found it wrong")
+    else:
+        proof = Proof(finding, *_run(nest, variant, trust))
     for line in _objections(proof):
         say(f"{nest.address}: {line}")
     return proof
+
+
+def _run(nest: OpenNest, variant: Variant, trust: bool) -> tuple[Verification | None, str]:
+    """What building and running a variant says; or why that cannot be done."""
+    from ..trial import Settings
+
+    say(f"Building and running the loops of {nest.address} and of its variant.")
+    try:
+        return nest.verify(variant, Settings(trust=trust)), ""
+    except RetileError as problem:
+        return None, str(problem)
 
 
 def _objections(proof: Proof) -> list[str]:

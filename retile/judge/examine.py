@@ -141,14 +141,17 @@ class Examiner:
                 if time.perf_counter() > end:
                     break
                 continue
+            except Unsupported:
+                if setting.together:
+                    continue  # the pointers have different types
+                raise
             tried.append(str(setting))
             if found:
                 return Finding(False, f"at {setting}: {found[0]}", tuple(found), tuple(tried), notes=tuple(self.notes))
             if len(tried) == _ENOUGH or time.perf_counter() > end:
                 break
         if not tried:
-            why = "takes too many steps" if isinstance(problem, TooLong) else f"is undefined ({problem})"
-            return Finding(None, f"the original {why} at the sizes that were tried", notes=tuple(self.notes))
+            return Finding(None, _why_none(problem), notes=tuple(self.notes))
         return Finding(True, "", (), tuple(tried), len(rules.excepted), tuple(self.notes))
 
     def _settings(self, task: Task) -> Iterator[Setting]:
@@ -166,3 +169,11 @@ class Examiner:
             if one in pointers and other in pointers and one != other:
                 for shift in _SHIFTS:
                     yield Setting(setting.sizes, ((one, other, shift),))
+
+
+def _why_none(problem: Exception | None) -> str:
+    """Why no size was a measure."""
+    if problem is None:
+        return "none of the small sizes that were tried surely fulfils what the variant assumes"
+    why = "takes too many steps" if isinstance(problem, TooLong) else f"is undefined ({problem})"
+    return f"the original {why} at the sizes that were tried"

@@ -4,9 +4,13 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping, Sequence
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
+from pycparser import c_ast
+
+from .arithmetic import COMPARE, exact
 from .examine import Allowed, Task
+from .kinds import LONG, Undefined
 
 if TYPE_CHECKING:
     from ..model import Assumption, Nest, Variant
@@ -55,9 +59,37 @@ def _holding(nest: Nest, assumptions: Sequence[Assumption]) -> Allowed:
     texts = {p.symbol: p.text for p in nest.parameters if p.symbol in needed}
 
     def holds(sizes: Mapping[str, int]) -> bool:
-        values = {symbol: sizes[text] for symbol, text in texts.items() if text in sizes}
-        if len(values) < len(needed):
-            return not conditions
+        try:
+            values = {symbol: _computed(text, sizes) for symbol, text in texts.items()}
+        except (KeyError, Undefined):
+            return False
         return not Region.where(*conditions).at(values).is_empty()
 
-    return holds
+    return holds if conditions else lambda sizes: True
+
+
+def _computed(text: str, sizes: Mapping[str, int]) -> int:
+    """The value of a C expression of sizes, in long integers; KeyError if it has anything else in it."""
+    if text in sizes:
+        return sizes[text]
+    from ..source.lex import spellings
+    from ..source.parse import parse_expression
+
+    return _value(parse_expression([spelling for kind, spelling in spellings(text) if kind != "blank"], []), sizes)
+
+
+def _value(node: Any, sizes: Mapping[str, int]) -> int:
+    match node:
+        case c_ast.ID():
+            return sizes[node.name]
+        case c_ast.Constant(type="int" | "long int" | "unsigned int" | "unsigned long int"):
+            return int(node.value.rstrip("uUlL"), 0)
+        case c_ast.UnaryOp(op="-" | "+"):
+            return _value(node.expr, sizes) * (-1 if node.op == "-" else 1)
+        case c_ast.TernaryOp():
+            return _value(node.iftrue if _value(node.cond, sizes) else node.iffalse, sizes)
+        case c_ast.BinaryOp(op="<" | ">" | "<=" | ">=" | "==" | "!="):
+            return int(COMPARE[node.op](_value(node.left, sizes), _value(node.right, sizes)))
+        case c_ast.BinaryOp(op="+" | "-" | "*" | "/" | "%"):
+            return exact(node.op, _value(node.left, sizes), _value(node.right, sizes), LONG)
+    raise KeyError(node)

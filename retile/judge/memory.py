@@ -179,6 +179,7 @@ class Machine:
         if offset == 0 or isinstance(obj.kind, Struct):
             value = self.size(cell_name(obj, offset), obj.single or isinstance(obj.kind, Struct))
             if value is not None:
+                fitting(cell_name(obj, offset), value, kind)
                 return book.integers[value]
         return book.initial_integers[place]
 
@@ -325,6 +326,12 @@ def cell_name(obj: Object, offset: int) -> str:
     return f"{obj.name}+{offset}" if offset else obj.name
 
 
+def fitting(name: str, value: int, kind: Kind) -> None:
+    """Undefined if no caller can give this value to an integer of the type."""
+    if isinstance(kind, Number) and not kind.low <= value <= kind.high:
+        raise Undefined(f"{name} = {value} does not fit its type")
+
+
 def _subscripts(obj: Object, element: int) -> str:
     text = ""
     for length in reversed(obj.shape):
@@ -335,4 +342,4 @@ def _subscripts(obj: Object, element: int) -> str:
     return f"[{element}]{text}"
 
 
-__all__ = ["FAR", "UNSET", "Array", "Machine", "Null", "Object", "Own", "cell_name"]
+__all__ = ["FAR", "UNSET", "Array", "Machine", "Null", "Object", "Own", "cell_name", "fitting"]

@@ -11,7 +11,7 @@ from .arithmetic import outside, overflow, quotient, remainder, shifted_left, sh
 from .declarations import Unit, Variable
 from .headers import iterators_in
 from .kinds import Array, Kind, Length, Number, Pointer, Struct, TooLong, Undefined, Unsupported, Void, constant_size
-from .memory import Machine, Object
+from .memory import Machine, Object, fitting
 from .places import Again
 from .statements import Statements
 from .tags import UNSET, Book
@@ -254,6 +254,7 @@ class Program:
                 value = machine.size(name, True)
                 if value is None:
                     raise Unsupported(f"no value for {name}")
+                fitting(name, value, kind)
                 given.append(self.book.integers[value] if held == "data" else value)
         return given
 

@@ -75,8 +75,10 @@ def _touched(first: Object | None, second: Object) -> Iterator[str]:
 
 
 def _beside(first: Object | None, second: Object, offset: int) -> bool:
-    """True for a member of a structure of which the original reads another: it is there, whoever looks at it."""
+    """True for what is there whoever looks at it: a variable of the file, a member of a structure that is read anyway."""
     kind = second.kind
+    if second.single:
+        return True
     if first is None or not isinstance(kind, Struct) or not kind.size:
         return False
     return any(at // kind.size == offset // kind.size for at in first)

@@ -37,6 +37,8 @@ class Types:
         self._layout = Layout(self)
         self._scopes: dict[int, dict[int, Scope]] = {}  # id of a FuncDef -> id of a node in it -> scope
         self._structure_scopes: dict[int, Scope] = {}  # id of a structure -> scope of its definition
+        # Id of a declaration in a function -> scope of its type, which its own name is no part of: ``T *T``.
+        self._declaration_scopes: dict[int, Scope] = {}
         self._made: dict[int, Any] = {}  # keeps the FuncDefs of _scopes alive
         # Ids of a declaration and of the scope that it is read in -> the two, which keeps them alive, and the type.
         self._declared: dict[tuple[int, int], tuple[Any, Scope, Type]] = {}
@@ -84,7 +86,7 @@ class Types:
             if node is not None:
                 for key, entry in self._tags(node, scope, "parameter", function):
                     scope = scope.with_name(key, entry)
-                table[id(node)] = scope  # its type says nothing of its own name: ``T *T``
+                self._declaration_scopes[id(node)] = scope
             scope = scope.with_name(name, Declared(name, "object", "parameter", node, function))
         self._walk(function.body, scope, function.body, table)
         return table
@@ -115,6 +117,7 @@ class Types:
                 for item in _in_order(node):
                     if isinstance(item, (c_ast.Decl, c_ast.Typedef)):
                         for key, entry in self._entries(item, inner, "block", node):
+                            self._declaration_scopes[id(item)] = inner  # at last, tags inside it known, not its name
                             inner = inner.with_name(key, entry)
                     if isinstance(item, _TRANSPARENT):
                         table[id(item)] = inner
@@ -193,8 +196,8 @@ class Types:
         return PointerTo(type) if isinstance(type, FunctionType) else type
 
     def of_declared(self, declared: Declared, scope: Scope | None = None) -> Type:
-        """The type of what a name stands for, parameters adjusted."""
-        scope = scope or self.file_scope
+        """The type of what a name stands for, parameters adjusted; ``scope`` for what is declared without a place."""
+        scope = self._scope_of(declared, scope or self.file_scope)
         key = (id(declared.node), id(scope))
         if key in self._declared:
             return self._declared[key][2]
@@ -204,6 +207,11 @@ class Types:
         if settled and declared.node is not None and declared.kind != "constant":
             self._declared[key] = (declared.node, scope, type)
         return type
+
+    def _scope_of(self, declared: Declared, scope: Scope) -> Scope:
+        """The scope in which a declaration is read: its own, not that of a use of its name."""
+        own = self.file_scope if declared.where == "file" and "file_scope" in self.__dict__ else scope
+        return self._declaration_scopes.get(id(declared.node), own)
 
     def _of_declared(self, declared: Declared, scope: Scope) -> Type:
         if declared.kind == "constant":
@@ -309,7 +317,7 @@ class Types:
         if len(names) == 1:
             declared = scope.lookup(names[0])
             if declared is not None and declared.kind == "typedef":
-                type, quals = self._qualified(declared.node, scope)
+                type, quals = self._qualified(declared.node, self._scope_of(declared, scope))
                 return replace(type, spelling=names[0]) if isinstance(type, CType) else type, quals
             if names[0] in self._reading.text.typeof:
                 return self._typeof(names[0], scope)

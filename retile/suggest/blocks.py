@@ -16,12 +16,11 @@ from itertools import permutations
 from ..affine import Affine
 from ..model import ScalarClass, Storage
 from ..values import dataclass
-from ..plan import MOST_UNROLLED
 from .idea import Idea, amount, listed, order_text
 from .view import Reference, View
 
 _DEPTHS = (256, 128, 384)  # of the sum, in one go: what neighbours in the search vary too
-_WAITING = 8192  # sums that may wait in a small array
+_WAITING = 1024  # columns of scalars that wait in an array, each row for itself
 _WIDE = 4096  # elements of a packed row at most
 
 
@@ -36,12 +35,12 @@ class Contraction:
     depth: str  # the loop of the sum
     by_row: Reference  # the operand that depends on the rows, not on the columns
     by_column: Reference
-    target: Reference | None  # the array that is summed into; None for a scalar
+    target: Reference  # what is summed into: an array, or a scalar without subscripts
 
     @property
     def waiting(self) -> bool:
-        """True if a scalar is summed into, whose values wait in a small array."""
-        return self.target is None
+        """True if a scalar is summed into, whose values wait in an array."""
+        return not self.target.subscripts
 
 
 @dataclass(frozen=True)
@@ -101,8 +100,8 @@ def contraction(view: View) -> Contraction | None:
     return Contraction(outer, inside, best.rows, best.columns, depth, best.by_row, best.by_column, target)
 
 
-def _summed(view: View) -> tuple[list[str], Reference | None] | None:
-    """The loops that the sum does not run over, and the array that is summed into."""
+def _summed(view: View) -> tuple[list[str], Reference] | None:
+    """The loops that the sum does not run over, and what is summed into."""
     updates = [a for a in view.main.accesses if a.write and a.update]
     if len(updates) != 1 or len(view.body) != 1:
         return None
@@ -113,10 +112,11 @@ def _summed(view: View) -> tuple[list[str], Reference | None] | None:
     return _private(view, storage)
 
 
-def _private(view: View, storage: Storage) -> tuple[list[str], None] | None:
+def _private(view: View, storage: Storage) -> tuple[list[str], Reference] | None:
     if storage.scalar is not ScalarClass.PRIVATE or storage.live_after:
         return None
-    return [loop for loop in view.loops if loop in storage.private_to], None
+    target = next(reference for reference in view.sums if reference.storage == storage.name)
+    return [loop for loop in view.loops if loop in storage.private_to], target
 
 
 def _constant(view: View, loop: str) -> bool:
@@ -135,7 +135,7 @@ class _Pair:
     value: float  # how well they serve
 
 
-def _pair(view: View, pair: tuple[str, str], operands: list[Reference], target: Reference | None,
+def _pair(view: View, pair: tuple[str, str], operands: list[Reference], target: Reference,
           depth: str) -> _Pair | None:
     """A pair of loops for rows and columns with the operands that go with each; None if they do not serve."""
     rows, columns = pair
@@ -144,7 +144,7 @@ def _pair(view: View, pair: tuple[str, str], operands: list[Reference], target: 
     shared = [r for r in operands if r.stride(columns) and r.stride(rows)]
     if not by_row or not by_column or shared or min(view.trips[loop] for loop in pair) < 8:
         return None
-    along = target or _written_after(view, pair)
+    along = target if target.subscripts else _written_after(view, pair)
     unit = along is not None and 0 < along.stride(columns) <= along.element
     vector = 0 < by_column[0].stride(columns) <= by_column[0].element
     value = 4.0 * unit + 2.0 * vector + min(view.trips[columns], 64) / 64 - by_row[0].stride(rows).bit_length() / 64
@@ -172,9 +172,6 @@ def blocks(view: View) -> Iterator[Idea]:
         return
     element = max(found.by_row.element, found.by_column.element)
     several = shapes(view.machine.vector, view.machine.registers, element)
-    if found.waiting:  # scalars are kept apart from each other only where all are written out
-        several = [shape for shape in several if shape.rows * shape.columns <= MOST_UNROLLED] or \
-            [Shape(4, max(2, view.machine.vector // element), 1)]
     for number, shape in enumerate(several[:4]):
         for later, depth in enumerate(_DEPTHS if number == 0 else _DEPTHS[:1]):
             yield _packed(view, found, shape, depth, 30 - number - 0.6 * later)
@@ -203,8 +200,7 @@ def _sizes(view: View, found: Contraction, shape: Shape, depth: int) -> _Sizes:
         wide = min(wide, _up(view.trips[found.columns], shape.columns))
         tall = min(tall, _up(view.trips[found.rows], shape.rows))
     if found.waiting:
-        tall = min(tall, 96 // shape.rows * shape.rows)
-        wide = min(wide, _WAITING // tall // shape.columns * shape.columns)
+        wide = min(wide, _up(_WAITING, shape.columns))
     return _Sizes(depth, wide, tall)
 
 
@@ -213,38 +209,33 @@ def _packed(view: View, found: Contraction, shape: Shape, depth: int, worth: flo
     volume = sizes.depth * found.by_column.element
     rows, columns, sums = f"{found.rows}:{sizes.tall}", f"{found.columns}:{sizes.wide}", f"{found.depth}:{sizes.depth}"
     whole = [f"{loop}:{view.trips[loop]}" for loop in found.inner]
-    terms = [*found.outer, *([rows, columns, sums] if found.waiting else [columns, sums]), *whole,
-             *([] if found.waiting else [rows]), f"{found.columns}:{shape.columns}", f"{found.rows}:{shape.rows}",
-             found.depth, *found.inner, found.columns, found.rows]
+    # what bounds how many sums wait stands outside the chunks of the sum
+    bound = [f"{found.rows}:{max(2 * sizes.tall, _up(view.trips[found.rows], sizes.tall))}"] if found.waiting else []
+    terms = [*found.outer, *bound, columns, sums, *whole, rows, f"{found.columns}:{shape.columns}",
+             f"{found.rows}:{shape.rows}", found.depth, *found.inner, found.columns, found.rows]
     last = (whole or [sums])[-1]
-    where = last if found.waiting else rows
     packs = [f"pack {_named(view, found.by_column)} at {last}" if _packable(found, found.by_column) else "",
-             f"pack {_named(view, found.by_row)} at {where}" if _packable(found, found.by_row) else ""]
+             f"pack {_named(view, found.by_row)} at {rows}" if _packable(found, found.by_row) else ""]
     count, names = shape.rows * shape.vectors, listed((found.by_row.storage, found.by_column.storage))
     why = (f"{shape.rows} rows of {shape.columns} sums stay in {count} of {view.machine.registers} vector registers "
            f"while {found.depth} runs; packed parts of {names} are read in the order of use: "
            f"{amount(volume * shape.columns)} again and again from the nearest cache, {amount(volume * sizes.tall)} "
            "from the second")
-    return Idea("register block", order_text(terms, *packs, _held(view, found), *_unrolled(found)), why, worth)
-
-
-def _unrolled(found: Contraction) -> list[str]:
-    """What is written out: the rows, and where scalars wait the columns too."""
-    return [f"unroll {found.rows}", *([f"unroll {found.columns}"] if found.waiting else [])]
+    return Idea("register block", order_text(terms, *packs, _held(view, found), f"unroll {found.rows}"), why, worth)
 
 
 def _packable(found: Contraction, reference: Reference) -> bool:
     """True if a part is as large as the chunks say, each subscript depending on one loop, and nobody writes to it."""
-    alone = found.target is None or found.target.storage != reference.storage
-    return alone and all(len([name for name in subscript.names() if name in reference.loops]) <= 1
-                         for subscript in reference.subscripts)
+    return found.target.storage != reference.storage and all(len(subscript.names() & reference.loops) <= 1
+                                                             for subscript in reference.subscripts)
 
 
 def _held(view: View, found: Contraction) -> str:
     """What keeps the sums in locals; nothing where the operands are read from the same array."""
-    if found.target is None or found.target.storage in (found.by_row.storage, found.by_column.storage):
+    if found.target.storage in (found.by_row.storage, found.by_column.storage):
         return ""
-    return f"hold {_named(view, found.target)} across {found.depth}"
+    name = found.target.storage if found.waiting else _named(view, found.target)
+    return f"hold {name} across {found.depth}"
 
 
 def _plain(view: View, found: Contraction, shape: Shape) -> Iterator[Idea]:
@@ -257,7 +248,8 @@ def _plain(view: View, found: Contraction, shape: Shape) -> Iterator[Idea]:
              *found.inner, found.columns, found.rows]
     why = (f"{shape.rows} rows of {shape.columns} sums stay in vector registers while {found.depth} runs; nothing is "
            "copied")
-    yield Idea("register block", order_text(terms, _held(view, found), *_unrolled(found)), why, 12.0, "block alone")
+    yield Idea("register block", order_text(terms, _held(view, found), f"unroll {found.rows}"), why, 12.0,
+               "block alone")
 
 
 def _named(view: View, reference: Reference) -> str:

@@ -5,10 +5,8 @@ from __future__ import annotations
 import atexit
 import os
 import re
-import shutil
 import subprocess
-import tempfile
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cache
@@ -17,6 +15,8 @@ from typing import TYPE_CHECKING
 
 from ..host import ask
 from ..model import RetileError
+from ..processes import MIB, limited
+from ..scratch import Scratch
 from ..templating import environment
 from .tolerance import STEPS, WIDTHS
 
@@ -31,6 +31,10 @@ _RELAXES = re.compile(
     r"-ffp-contract=\w+|-ffinite-math-only|-fno-signed-zeros|-flto\S*|-fsanitize\S*"
 )
 _SECONDS = 120  # for one call of the compiler
+_MEMORY = 4096 * MIB  # for the compiler
+_OUTPUT = 256 * MIB  # of one file that a compiler or a kernel writes
+# What kernels see of the user's environment: where libraries are, and how threads are to run.
+_KEPT = re.compile(r"PATH|HOME|TMPDIR|LD_LIBRARY_PATH|DYLD_LIBRARY_PATH|(?:OMP|GOMP|KMP)_\w+")
 
 
 @dataclass(frozen=True)
@@ -102,6 +106,7 @@ def run(command: Sequence[str], directory: str | None = None) -> str | None:
             stdin=subprocess.DEVNULL,
             env={**os.environ, "LC_ALL": "C"},
             cwd=directory,
+            preexec_fn=limited(seconds=_SECONDS, memory=_MEMORY, files=_OUTPUT),
         )
     except FileNotFoundError:
         raise RetileError(f"the compiler {command[0]} is not there; name another with --cc") from None
@@ -119,7 +124,7 @@ def run(command: Sequence[str], directory: str | None = None) -> str | None:
 def harness(command: tuple[str, ...], sanitize: bool, prefix: str) -> Path:
     """The program that runs kernels, built once per process; RetileError if it cannot be built."""
     folder = _shared_folder()
-    stem = f"harness{len(list(folder.glob('*.c')))}"
+    stem = f"harness{len(list(folder.glob('*.c')))}{'-sanitized' if sanitize else ''}"
     source, target = folder / f"{stem}.c", folder / stem
     text = environment().get_template("trial_harness.c.j2").render(p=prefix, widths=WIDTHS, steps=STEPS)
     source.write_text(text, encoding="utf-8")
@@ -142,6 +147,8 @@ def can_sanitize(command: tuple[str, ...]) -> bool:
             timeout=20,
             stdin=subprocess.DEVNULL,
             env=sanitizer_environment(),
+            cwd=program.parent,
+            preexec_fn=limits(20),
         )
     except (RetileError, OSError, subprocess.SubprocessError):
         return False
@@ -149,13 +156,27 @@ def can_sanitize(command: tuple[str, ...]) -> bool:
 
 
 def sanitizer_environment() -> dict[str, str]:
-    """The environment in which kernels run: what the sanitizers find ends the program."""
+    """The environment in which kernels run: what the sanitizers find ends the program, and so does too much memory."""
     return {
-        **os.environ,
+        **{name: value for name, value in os.environ.items() if _KEPT.fullmatch(name)},
         "LC_ALL": "C",
-        "ASAN_OPTIONS": "detect_leaks=0:halt_on_error=1:allocator_may_return_null=1:color=never",
+        "ASAN_OPTIONS": "detect_leaks=0:halt_on_error=1:allocator_may_return_null=1:color=never:"
+                        f"hard_rss_limit_mb={_physical() // MIB}",
         "UBSAN_OPTIONS": "halt_on_error=1:print_stacktrace=0:color=never",
     }
+
+
+def limits(seconds: float, sanitized: bool = True) -> Callable[[], None]:
+    """What a program with kernels may use: time, files, and as much memory as there is.
+
+    The sanitizers reserve terabytes of private memory and so look after themselves.
+    """
+    return limited(seconds=seconds, memory=None if sanitized else _physical(), files=_OUTPUT)
+
+
+def _physical() -> int:
+    """Bytes of memory of this machine."""
+    return os.sysconf("SC_PAGE_SIZE") * os.sysconf("SC_PHYS_PAGES")
 
 
 @cache
@@ -167,6 +188,6 @@ def compiler_version(command: tuple[str, ...]) -> str | None:
 
 @cache
 def _shared_folder() -> Path:
-    folder = Path(tempfile.mkdtemp(prefix="retile-harness-"))
-    atexit.register(shutil.rmtree, folder, ignore_errors=True)
-    return folder
+    scratch = Scratch("harness")
+    atexit.register(scratch.remove)
+    return scratch.folder

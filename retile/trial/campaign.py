@@ -6,7 +6,6 @@ import hashlib
 import os
 import shutil
 import signal
-import tempfile
 import threading
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
@@ -17,6 +16,7 @@ from typing import TYPE_CHECKING, Any
 
 from .. import host
 from ..model import Nest, RetileError, Variant
+from ..scratch import Scratch
 from .build import Workshop, compiler_version, harness
 from .kernel import kernel_of
 from .layout import Bench, Layout, job, unknown_fills
@@ -60,14 +60,14 @@ def stoppable() -> Iterator[None]:
 @contextmanager
 def workshop(source: Source, settings: Settings) -> Iterator[Workshop]:
     """A scratch folder with a compiler; the folder is gone afterwards, whatever happens."""
-    folder = Path(tempfile.mkdtemp(prefix="retile-trial-"))
+    scratch = Scratch("trial")
     try:
         call = replace(source.call, cc=settings.cc or source.call.cc)
         if shutil.which(call.command[0]) is None:
             raise RetileError(f"the compiler {call.cc} is not there; name another with --cc")
-        yield Workshop(folder, call, os.path.dirname(os.path.abspath(source.path)))
+        yield Workshop(scratch.folder, call, os.path.dirname(os.path.abspath(source.path)))
     finally:
-        shutil.rmtree(folder, ignore_errors=True)
+        scratch.remove()
 
 
 def verify(source: Source, nest: Nest, variant: Variant, settings: Settings = Settings()) -> Verification:
@@ -213,15 +213,15 @@ class _State:
     def _verify(self, original: bytes, texts: list[bytes]) -> None:
         steps = iter(range(1_000_000))
         verifier = Verifier(self.bench, self.shop, self.settings)
+        open_ones = [number for number, trial in enumerate(self.trials) if trial.failure is None]  # not judged wrong
         results = verifier.verify(
-            list(zip(self.variants, texts)),
+            [(self.variants[number], texts[number]) for number in open_ones],
             original,
-            lambda text: self.tell("verify", next(steps), len(texts) + 1, text),
+            lambda text: self.tell("verify", next(steps), len(open_ones) + 1, text),
         )
-        self.trials = [
-            replace(trial, verification=result, failure=trial.failure or result.failure or _differs(result.difference))
-            for trial, result in zip(self.trials, results)
-        ]
+        for number, result in zip(open_ones, results):
+            failure = result.failure or _differs(result.difference)
+            self.trials[number] = replace(self.trials[number], verification=result, failure=failure)
 
     def _time(self, original: bytes, texts: list[bytes]) -> None:
         good = [number for number, trial in enumerate(self.trials) if trial.failure is None]
