@@ -72,6 +72,8 @@ def variants(seed: int, case: AliasCase, line: int) -> Counter:
     for n in (3, 4):
         try:
             wrong = compare(case.text, text, case.run, {"n": n}, steps=5000)
+            if wrong and compare(case.text, case.text, case.run, {"n": n}, steps=5000):
+                continue  # a pointer that is read as a number is another one in every run
         except NO_GROUND:
             continue
         assert not wrong, f"seed {seed}, plan {plan}, n = {n}: {wrong[:3]}\n{text}"
