@@ -36,7 +36,9 @@ class Obligation:
 class Knowledge:
     """Parameters and facts, as they become known during the reading."""
 
-    def __init__(self) -> None:
+    def __init__(self, nest: Any = None) -> None:
+        """``nest``: the syntax node ahead of which the parameters are evaluated."""
+        self.nest = nest
         self.parameters: dict[str, Parameter] = {}
         self.iterator_types: dict[str, CType] = {}
         self.facts: dict[Formula, None] = {}

@@ -42,7 +42,7 @@ class NestReader:
         if deep := too_deep(self._nest, self._names):
             self._refuse([deep])
             return None
-        knowledge = Knowledge()
+        knowledge = Knowledge(self._nest)
         setting = Setting(self._unit, self._names, self._nest, knowledge, strict=False)
         setting.expressions, setting.places = Expressions(setting), Places(setting)
         setting.outer_iterators = outer_loops(self._nest, self._names)

@@ -135,6 +135,11 @@ class FunctionNames:
         """The binding of an ID node or a Decl; None for an undeclared name."""
         return self._binding_of.get(id(node))
 
+    def means(self, name: str, node: Any) -> Binding | None:
+        """What a name stands for at a node; None if nothing that the function declares or uses."""
+        declared = self._types.declaration(name, self._types.scope(self.function, node))
+        return None if declared is None else self._bindings.get((name, id(declared.node)))
+
     @property
     def bindings(self) -> tuple[Binding, ...]:
         """All bindings that the function declares or uses."""

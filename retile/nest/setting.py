@@ -122,7 +122,15 @@ class Setting:
             and not self.assigned(binding)
             and not self.is_inner(binding)
             and not self.qualifiers(binding) & {"volatile", "_Atomic"}
+            and self.is_visible(binding)
         )
+
+    def is_visible(self, binding: Binding) -> bool:
+        """True if the object's name means it ahead of the nest: an inner declaration may hide it there."""
+        start = self.knowledge.nest
+        if start is None or not binding.automatic:
+            return start is None or self.names.means(binding.name, start) in (binding, None)
+        return self.names.means(binding.name, start) is binding
 
     def is_inner(self, binding: Binding) -> bool:
         """True if the object is declared inside the piece: its name means nothing ahead of it."""

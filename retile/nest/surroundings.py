@@ -111,6 +111,8 @@ def _outer(loop: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) ->
     type_ = setting.type_of_binding(binding)
     if not isinstance(type_, CType) or type_.floating or setting.assigned(binding) or setting.reachable(binding):
         return
+    if not setting.is_visible(binding):
+        return
     fact = _loop_fact(loop, binding, setting)
     if fact is not None:
         knowledge.add_choice(fact)
