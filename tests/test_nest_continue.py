@@ -11,7 +11,7 @@ import pytest
 from asked import ask
 from examination import Effort, examine
 from nest_execution import events_read, events_run, line_of_first_for, opened
-from oracle import compare
+from oracle import Unsupported, compare
 from random_choices import Seeded
 from random_nests import RandomNest, seeded_nest
 from retile.nest import read_nest
@@ -137,7 +137,10 @@ def examined(seed: int, effort: Effort) -> Counter:
     nest = with_continue(seeded_nest(seed))
     if nest is None:
         return Counter()
-    finding = examine(nest, Seeded(seed), seed, effort)
+    try:
+        finding = examine(nest, Seeded(seed), seed, effort)
+    except Unsupported:  # the interpreter of the tests does not know a form of this nest
+        return Counter()
     assert not finding.problems, f"seed {seed}\n{nest}\n{finding.problems[:2]}"
     return finding.counts
 
