@@ -231,7 +231,7 @@ VARIABLES = {
     "largest": (
         "void sweep(int n, double *a, double *out) {\n double p = 1;\n for (int i = 0; i < n; i++)\n"
         "  if (a[i] > p)\n   p = a[i];\n *out = p; }",
-        ["p carried () live"],
+        ["p accumulator () live"],
     ),
     "a subscript of its own": (
         "void sweep(int n, int m, double *a) {\n int at;\n for (int i = 0; i < n; i++)\n"
