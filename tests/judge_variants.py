@@ -1,6 +1,6 @@
 """Variants by hand of a few functions, right ones and wrong ones, for the judge to tell apart.
 
-Each group has an original; a variant is a text in its place.  A wrong one names a piece of what has to be said about it.
+Each group has an original; a variant is a text in its place.  A wrong one names a piece of what has to be said of it.
 """
 
 from __future__ import annotations
@@ -134,21 +134,24 @@ _STATIC = """static _Thread_local double column[64];
 _MEMALIGN = _PACKED.replace("double *restrict strip = malloc((size_t)n * 4 * sizeof *strip);\n    if (strip != NULL) {",
                             "double *strip;\n    if (posix_memalign((void **)&strip, 64, (size_t)n * 32 + 64) == 0) {")
 
+_SUM = "weights[i][k] * echoes[k][j]"
+_DEEP, _ROW = "\n                    ", "\n            "  # line ends inside the loops above
+
+
 PRODUCT = Group(
     BEAMS, _PLAIN,
     right={
         "the same": _PLAIN, "chunks": _CHUNKED, "a held sum": _HELD, "register blocks": _BLOCK, "packed": _PACKED,
-        "a copied row": _COPIED, "threads": _PARALLEL, "packed and written back": _BACK, "a buffer of the thread": _STATIC,
+        "a copied row": _COPIED, "threads": _PARALLEL, "packed and written back": _BACK,
+        "a buffer of the thread": _STATIC,
         "memory by posix_memalign": _MEMALIGN,
     },
     wrong={
         "additions backwards": (_PLAIN.replace("int k = 0; k < n; k++", "int k = n - 1; k >= 0; k--"), "another value"),
-        "operands of the sum swapped": (_PLAIN.replace("beams[i][j] += weights[i][k] * echoes[k][j]",
-                                                       "beams[i][j] = weights[i][k] * echoes[k][j] + beams[i][j]"),
-                                        "another value"),
+        "operands of the sum swapped": (_PLAIN.replace(f"+= {_SUM}", f"= {_SUM} + beams[i][j]"), "another value"),
         "two partial sums": (_HELD.replace("double sum = beams[i][j];", "double sum = 0;")
                              .replace("beams[i][j] = sum;", "beams[i][j] += sum;"), "another value"),
-        "fused by hand": (_PLAIN.replace("+= weights[i][k] * echoes[k][j]", "= fma(weights[i][k], echoes[k][j], beams[i][j])"),
+        "fused by hand": (_PLAIN.replace(f"+= {_SUM}", "= fma(weights[i][k], echoes[k][j], beams[i][j])"),
                           "another value"),
         "held in a narrow type": (_HELD.replace("double sum", "float sum"), "another value"),
         "no remainder": (_CHUNKED.replace("k0 < n;", "k0 + 4 <= n;"), "never written"),
@@ -156,32 +159,30 @@ PRODUCT = Group(
         "a chunk done twice": (_CHUNKED.replace("k0 += 4", "k0 += 3"), "another value"),
         "chunks from one": (_CHUNKED.replace("int k0 = 0", "int k0 = 1"), ""),
         "the chunk outermost, wrongly": (_CHUNKED.replace("k0 += 4)", "k0 += 4)\n        if (k0 < 8)"), ""),
-        "a block cell never loaded": (_BLOCK.replace("c < 4; c++)\n                    held[r][c] = beams",
-                                                     "c < 3; c++)\n                    held[r][c] = beams"), "before it has a value"),
-        "a block cell never stored": (_BLOCK.replace("c < 4; c++)\n                    beams", "c < 3; c++)\n                    beams"),
-                                      ""),
+        "a block cell never loaded": (_BLOCK.replace(f"c < 4; c++){_DEEP}held[r][c] = beams",
+                                                     f"c < 3; c++){_DEEP}held[r][c] = beams"), "before it has a value"),
+        "a block cell never stored": (_BLOCK.replace(f"c < 4; c++){_DEEP}beams", f"c < 3; c++){_DEEP}beams"), ""),
         "rows of a block mixed up": (_BLOCK.replace("held[r][c] += weights[i + r]", "held[r][c] += weights[i + 1 - r]"),
                                      "another value"),
         "a block too many": (_BLOCK.replace("j + 4 <= n", "j + 3 <= n"), "outside"),
-        "reads beyond the row": (_PACKED.replace("c < wide; c++)\n                    strip", "c < 4; c++)\n                    strip"),
-                                 "outside"),
-        "padding never set": (_PACKED.replace("for (int c = wide; c < 4; c++)\n                    strip[k * 4 + c] = 0.0;", ";"),
+        "reads beyond the row": (_PACKED.replace(f"c < wide; c++){_DEEP}strip", f"c < 4; c++){_DEEP}strip"), "outside"),
+        "padding never set": (_PACKED.replace(f"for (int c = wide; c < 4; c++){_DEEP}strip[k * 4 + c] = 0.0;", ";"),
                               "before it has a value"),
-        "padding written back": (_PACKED.replace("c < wide; c++)\n                    beams", "c < 4; c++)\n                    beams"),
-                                 "outside"),
+        "padding written back": (_PACKED.replace(f"c < wide; c++){_DEEP}beams", f"c < 4; c++){_DEEP}beams"), "outside"),
         "not written back": (_BACK.replace("beams[i][j] = line[i * n + j];\n", ";\n"), "never written"),
         "a leak": (_PACKED.replace("free(strip);", ""), "never freed"),
-        "freed too early": (_PACKED.replace("free(strip);\n", "").replace("for (int i = 0; i < n; i++) {\n                double",
-                                                                        "free(strip);\n            for (int i = 0; i < n; i++) {\n"
-                                                                        "                double"), "after it was freed"),
+        "freed too early": (_PACKED.replace("free(strip);\n", "")
+                            .replace(f"{_ROW}for (int i = 0; i < n; i++) {{\n                double",
+                                     f"{_ROW}free(strip);{_ROW}for (int i = 0; i < n; i++) {{\n                double"),
+                            "after it was freed"),
         "freed twice": (_PACKED.replace("free(strip);", "free(strip);\n        free(strip);"), "freed twice"),
         "no memory, no care": (_PACKED.replace("if (strip != NULL)", "if (1)"), "where no memory can be allocated"),
-        "the fallback has a fault": (_PACKED.replace("} else {\n        for (int i = 0;", "} else {\n        for (int i = 1;"),
-                                     "where no memory can be allocated"),
+        "the fallback has a fault": (_PACKED.replace("} else {\n        for (int i = 0;",
+                                                     "} else {\n        for (int i = 1;"), "where no memory can be allocated"),
         "a buffer too small": (_PACKED.replace("(size_t)n * 4 *", "(size_t)n * 3 *"), "outside its"),
         "half a row copied": (_COPIED.replace("(size_t)n * sizeof", "(size_t)n / 2 * sizeof"), "before it has a value"),
-        "a thread's column of another": (_STATIC.replace("int k = 0; k < n; k++)\n            column", "int k = 1; k < n; k++)\n"
-                                                         "            column"), ""),
+        "a thread's column of another": (_STATIC.replace(f"int k = 0; k < n; k++){_ROW}column",
+                                                         f"int k = 1; k < n; k++){_ROW}column"), ""),
         "a narrow iterator": (_PLAIN.replace("int k = 0", "_Bool k = 0"), ""),
         "rows past the end": (_PLAIN.replace("int i = 0; i < n", "int i = 0; i <= n"), "does not touch"),
     })  # fmt: skip
@@ -271,10 +272,16 @@ WRITES = Group(
 PREFIX = Group(
     "void prefix(int n, double *sum)",
     "for (int i = 1; i < n; i++)\n        sum[i] += sum[i - 1];",
-    right={"held": "double last = n > 0 ? 0.0 : 1.0;\n    if (n > 1) last = sum[0];\n    for (int i = 1; i < n; i++) {\n"
-                   "        last = sum[i] + last;\n        sum[i] = last;\n    }"},
-    wrong={"threads on a recurrence": ("#pragma omp parallel for\n    for (int i = 1; i < n; i++)\n        sum[i] += sum[i - 1];",
-                                       "reversed")})
+    right={"held": """double last = n > 0 ? 0.0 : 1.0;
+    if (n > 1)
+        last = sum[0];
+    for (int i = 1; i < n; i++) {
+        last = sum[i] + last;
+        sum[i] = last;
+    }"""},
+    wrong={"threads on a recurrence": ("""#pragma omp parallel for
+    for (int i = 1; i < n; i++)
+        sum[i] += sum[i - 1];""", "reversed")})
 
 STRUCTS = Group(
     "void fill(const struct grid *g)",

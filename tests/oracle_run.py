@@ -174,7 +174,7 @@ class _Logged(FunctionText):
 
 
 def _names_of_start(node: c_ast.For) -> set[str]:
-    inits = [d.init for d in node.init.decls if d.init is not None] if isinstance(node.init, c_ast.DeclList) else [node.init]
+    inits = [decl.init for decl in node.init.decls] if isinstance(node.init, c_ast.DeclList) else [node.init]
     found: set[str] = set()
     waiting = [part for part in inits if part is not None]
     while waiting:

@@ -9,11 +9,7 @@ import pytest
 
 from oracle import compare, judge_of, observe, parse_terms, times_of, verdict_at
 from oracle_run import Program
-
-try:
-    from random_nests import seeded_nest
-except ImportError:  # as it was called before
-    from random_nests import seeded_case as seeded_nest
+from random_nests import seeded_nest
 from oracle_text import INT, LONG, UCHAR, UINT, ULONG, TooLong, Undefined, common, parse
 from retile.judge.judge import Setting
 from retile.judge.memory import Machine
@@ -203,7 +199,7 @@ def run(text, sizes, steps=20_000):
     return program, machine, result
 
 
-@pytest.mark.parametrize("seed", range(900_000, 900_024))
+@pytest.mark.parametrize("seed", range(900_000, 900_040))
 def test_random_nests_compute_as_compiled(seed, tmp_path):
     """The judge's numbers, not only its tags, are the machine's: random nests with arrays of double or int."""
     case = seeded_nest(seed)
