@@ -15,11 +15,12 @@ from .blocks import blocks
 from .grids import skewed, wavefronts
 from .idea import Advice, Idea, Suggestion
 from .machine import Machine
-from .orders import chunked, jammed, orders, transposed
+from .orders import chunked, jammed, orders
+from .transposed import transposed
 from .view import View, view_of
 
 MOST = 10
-_PER_FAMILY = {"register block": 5, "transposition": 3, "unroll and jam": 3, "order": 2, "chunks": 3}
+_PER_FAMILY = {"register block": 5, "transposition": 2, "few rows": 4, "unroll and jam": 3, "order": 2, "chunks": 3}
 _FEW = 2
 _MISSED = 2  # plans with options of a family without a legal one, after which its others are not asked
 _ASKED = 30  # ideas whose legality is asked at most

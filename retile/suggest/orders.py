@@ -168,35 +168,3 @@ def _cut(view: View, order: tuple[str, ...], outer: str, inside: tuple[str, ...]
 def _power(number: int) -> int:
     """The largest power of two up to a number, 0 for none."""
     return 1 << number.bit_length() - 1 if number > 0 else 0
-
-
-# ---------------------------------------------------------------- transposition
-
-def transposed(view: View) -> Iterator[Idea]:
-    """Square chunks where one array runs along one loop and another along the other: whole cache lines of both."""
-    ones = {r.storage: (r, along) for r in ways(view) if len(r.loops) > 1
-            for along in r.loops if 0 < r.stride(along) <= r.element}
-    pairs = [(a, b) for (a, x), (b, y) in combinations(ones.values(), 2)
-             if x != y and {x, y} <= a.loops & b.loops and a.stride(y) >= view.machine.line <= b.stride(x)]
-    if not pairs:
-        return
-    first, second = pairs[0]
-    one, other = ones[first.storage][1], ones[second.storage][1]
-    if min(view.trips[one], view.trips[other]) < 16:
-        return
-    written = next((r for r in (first, second) if r.write), first)
-    along = ones[written.storage][1]
-    across = one if along == other else other
-    outer = [loop for loop in view.loops if loop not in (one, other)]
-    names = listed((first.storage, second.storage))
-    lines = max(8, view.machine.line // written.element)
-    for chunk, worth in ((4 * lines, 4.0), (2 * lines, 3.5), (8 * lines, 3.4), (lines, 3.3)):
-        why = f"in a square of {chunk} by {chunk} every cache line of {names} that is fetched is used as a whole"
-        terms = [*outer, f"{across}:{chunk}", f"{along}:{chunk}", across, along]
-        yield Idea("transposition", order_text(terms), why, worth)
-    for chunk, worth in ((2 * lines, 3.6), (4 * lines, 3.2)):
-        why = (f"squares of {chunk} by {chunk} are turned in a small array of their own, so that rows whose distance "
-               "is a power of two do not push each other out of the cache")
-        terms = [*outer, f"{across}:{chunk}", f"{along}:{chunk}", along, across]
-        yield Idea("transposition", order_text(terms, f"pack {written.storage} at {along}:{chunk}"), why, worth,
-                   "turned apart")
