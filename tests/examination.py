@@ -75,7 +75,8 @@ class Nest:
         read = self.answer.opened.nest
         return Shape(tuple(LoopShape(loop.id, loop.outer) for loop in read.loops),
                      tuple((s.id, s.loops) for s in read.statements),
-                     tuple(shown(s.name, subscripts) if len(references(read, s.name)) > 1 else s.name
+                     tuple((shown(s.name, subscripts) if len(references(read, s.name)) > 1 else s.name,
+                            tuple(loop.id for loop in read.loops if any(loop.id in form.names() for form in subscripts)))
                            for s in read.storages if s.kind is not StorageKind.SCALAR
                            for subscripts in references(read, s.name)))
 

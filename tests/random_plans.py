@@ -25,7 +25,7 @@ class Shape:
 
     loops: tuple[LoopShape, ...]
     statements: tuple[tuple[str, tuple[str, ...]], ...] = ()
-    arrays: tuple[str, ...] = ()  # as options name them
+    arrays: tuple[tuple[str, tuple[str, ...]], ...] = ()  # as options name them, with the loops that their subscripts use
 
 
 def plan(choose: Choices, shape: Shape) -> str:
@@ -95,17 +95,33 @@ def _options(choose: Choices, shape: Shape, named: list[str]) -> list[str]:
 
 
 def _storage_options(choose: Choices, shape: Shape, terms: list[str]) -> list[str]:
-    """What is written out, held, packed and shared among threads; not every wish fits its plan."""
+    """What is written out, held, packed and shared among threads."""
     options = []
     bare = [term for term in terms if ":" not in term and "(" not in term]
     chunks = [term for term in terms if ":" in term and "(" not in term and term.rpartition(":")[2].isdecimal()]
     short = [loop for loop in bare if any(f"{loop}:{size}" in chunks for size in (2, 3, 4, 5))]
-    if short and choose.chance(25):
+    if short and choose.chance(30):
         options.append(f"unroll {choose.pick(short)}")
-    if shape.arrays and bare and chunks and choose.chance(30):
-        options.append(f"hold {choose.pick(shape.arrays)} across {choose.pick(bare)}")
-    if shape.arrays and chunks and choose.chance(20):
-        options.append(f"pack {choose.pick(shape.arrays)} at {choose.pick(chunks)}")
+    for word, where, odds in (("hold", bare, 60), ("pack", chunks, 40)):
+        fitting = [(name, term) for name, loops in shape.arrays for term in where
+                   if _covered(terms, terms.index(term) + (word == "pack"), loops)]
+        free = [(name, term) for name, term in fitting if not any(f" {name} " in option for option in options)]
+        if free and choose.chance(odds):
+            options.append("{} {} {} {}".format(word, *_between(choose.pick(free), "across" if word == "hold" else "at")))
     if bare and choose.chance(6):
         options.append(f"threads at {choose.pick([*bare, *chunks])}")
     return options
+
+
+def _between(pair: tuple[str, str], word: str) -> tuple[str, str, str]:
+    return pair[0], word, pair[1]
+
+
+def _covered(terms: list[str], level: int, loops: tuple[str, ...]) -> bool:
+    """True if chunks outside a place bound how many iterations of these loops there are inside."""
+    for loop in loops:
+        inside = any(term.partition(":")[0] == loop for term in terms[level:])
+        outside = any(term.partition(":")[0] == loop and ":" in term for term in terms[:level])
+        if loop not in terms or inside and not outside:
+            return False
+    return True
