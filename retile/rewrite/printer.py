@@ -177,7 +177,7 @@ class Printer:
 
     def _declares(self, nodes: tuple[Node, ...]) -> bool:
         """True if statements of some nodes declare names, which copies of them would declare again."""
-        return any(isinstance(node, Copy) and node.declares for node in nodes) or any(access.write and self._nest.storage(access.storage).scope == "block" for leaf in _leaves(nodes)
+        return any(isinstance(node, Held | Kept) or isinstance(node, Copy) and node.declares for node in nodes) or any(access.write and self._nest.storage(access.storage).scope == "block" for leaf in _leaves(nodes)
                    for access in self._nest.statement(leaf.statement).accesses)
 
     # ---------------------------------------------------------------- storage
