@@ -140,6 +140,13 @@ READERS = {
                 to[k] = to[k] * 3 + r;
 }
 """, ("k r", "k:4 r k", "r:4 k:4 r k"), ("CALL(3, NULL, NULL)", "CALL(0, one_cell, NULL)", "CALL(3, one_cell, nothing)")),
+    "a bit-field": ("""void survey(int n, struct bits *t, int *to)
+{
+    for (int r = 0; r < n; r++)
+        for (int k = 0; k < t[1].cols; k++)
+            to[k] = to[k] * 3 + r;
+}
+""", ("k r", "k:4 r k"), ("CALL(0, NULL, NULL)", "CALL(0, one_cell, nothing)")),
     "the second of two conditions": ("""void survey(int n, int *limits, int *restrict to)
 {
     for (int r = 0; r < 3; r++)
@@ -195,6 +202,7 @@ READERS = {
 }
 
 READERS_HEAD = """#include <sys/mman.h>
+struct bits { unsigned mark : 3; int cols : 5; };
 struct grid { int rows, cols, row[8]; int *depth; struct grid *next; };
 """
 

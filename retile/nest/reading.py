@@ -140,7 +140,8 @@ class NestReader:
         span = self._source.span(self._nest)
         assert span is not None
         statements = tuple(self._statement(number, walk, stored) for number in range(len(walk.statements)))
-        parameters, storages = with_readable(setting, walk.evaluated, setting.knowledge.parameters.values(), stored.storages)
+        parameters, storages = with_readable(setting, walk.evaluated, setting.knowledge.parameters.values(), stored.storages,
+                                             stored.held_in)
         return with_known_ranges(Nest(
             self._address,
             self._function.decl.name,

@@ -32,6 +32,7 @@ class Stored:
         self.refusals: list[Refusal] = []
         self.obligations: list[Obligation] = []
         self.assumptions: list[Assumption] = []
+        self.held_in: dict[str, str] = {}  # by C text of an address, that of a bit-field held there
 
 
 def store(setting: Setting, walk: Walk, nest: Any) -> Stored:
