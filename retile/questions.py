@@ -16,10 +16,10 @@ from collections.abc import Iterable, Iterator, Mapping
 
 from .affine import Affine, AnyOf, Formula, at_most, equal, less
 from .dependence import Dependences, Edge
-from .model import Nest
+from .model import Nest, Statement
 from .order import Coordinate, first_differences, same_cut, substituted
 from .sets import Region
-from .tree import Node, Occurrence, loops_of, occurrences
+from .tree import Node, Occurrence, asked, loops_of, occurrences
 from .values import dataclass
 
 
@@ -130,13 +130,17 @@ def _never_both(one: _Runs, other: _Runs) -> bool:
     return bool(cuts) and (one.as_instances() & other.as_instances() & Region.where(*cuts)).is_empty()
 
 
-def order_kept(tree: tuple[Node, ...], dependences: Dependences, edges: Iterable[Edge] | None = None) \
-        -> list[Flaw]:
+def order_kept(tree: tuple[Node, ...], dependences: Dependences, edges: Iterable[Edge] | None = None,
+               conditions: Iterable[Statement] = ()) -> list[Flaw]:
     """Question 2: the dependences whose source does not run strictly first; an empty list if all are kept.
 
-    ``edges``: those that the tree must keep; all value-carrying ones of ``dependences`` if left out.
+    ``edges``: those that the tree must keep; all value-carrying ones of ``dependences`` if left out.  ``conditions``: those
+    that the tree asks anew at each of its guards, perhaps more often than the original does.
     """
     runs = _runs(tree, dependences.context)
+    moved = {(one.span.start, one.span.end): (one.id, one.loops) for one in conditions}
+    for number, occurrence in enumerate(asked(tree, moved)):
+        runs[occurrence.leaf.statement].append(_Runs(occurrence, dependences.context, -1 - number))
     flaws: list[Flaw] = []
     for edge in dependences.edges if edges is None else edges:
         for source in runs[edge.source]:

@@ -6,7 +6,7 @@ printed are values of this one kind, so that every variant can be judged by the 
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from enum import Enum
 from math import prod
 
@@ -203,6 +203,36 @@ def _walk(nodes: tuple[Node, ...], loops: tuple[Loop, ...], conditions: tuple[Fo
             yield from _walk(node.body, loops, (*conditions, *known), (*here, ("", 0)))
         else:
             yield from _walk(children(node), loops, conditions, (*here, ("", 0)))
+
+
+def asked(tree: tuple[Node, ...], conditions: Mapping[tuple[int, int], tuple[str, tuple[str, ...]]]) -> Iterator[Occurrence]:
+    """Where a tree asks conditions of the user's that it moves: just before what they guard, for each instance of that.
+
+    ``conditions``: by extent in the user's text, the statement and the ids of its loops.
+    """
+    yield from _asked(tree, conditions, (), (), ())
+
+
+def _asked(nodes: tuple[Node, ...], wanted: Mapping[tuple[int, int], tuple[str, tuple[str, ...]]], loops: tuple[Loop, ...],
+           conditions: tuple[Formula, ...], time: tuple[Moment, ...]) -> Iterator[Occurrence]:
+    for position, node in enumerate(nodes):
+        here = (*time, position)
+        if isinstance(node, Loop):
+            yield from _asked(node.body, wanted, (*loops, node), (*conditions, node.constraints()),
+                              (*here, (node.symbol, 1 if node.step > 0 else -1)))
+        elif isinstance(node, Guard):
+            if node.span is not None and node.span in wanted:
+                statement, own = wanted[node.span]
+                instances = {tuple((name, form) for name, form in place.leaf.instance if name in own)
+                             for place in occurrences(node.body)}
+                for instance in sorted(instances, key=repr):
+                    inner = tuple(loop for loop in loops_of(node.body) if any(loop.symbol in form.names() for _, form in instance))
+                    around = (*conditions, *(loop.constraints() for loop in inner))
+                    yield Occurrence(Leaf(statement, instance), (*loops, *inner), around, (*here, -1))
+            known = (node.condition,) if node.condition is not None else ()
+            yield from _asked(node.body, wanted, loops, (*conditions, *known), (*here, ("", 0)))
+        elif not isinstance(node, Verbatim):
+            yield from _asked(children(node), wanted, loops, conditions, (*here, ("", 0)))
 
 
 def loops_of(nodes: tuple[Node, ...]) -> Iterator[Loop]:

@@ -140,6 +140,13 @@ READERS = {
                 to[k] = to[k] * 3 + r;
 }
 """, ("k r", "k:4 r k", "r:4 k:4 r k"), ("CALL(3, NULL, NULL)", "CALL(0, one_cell, NULL)", "CALL(3, one_cell, nothing)")),
+    "a bit-field": ("""void survey(int n, struct bits *t, int *to)
+{
+    for (int r = 0; r < n; r++)
+        for (int k = 0; k < t[1].cols; k++)
+            to[k] = to[k] * 3 + r;
+}
+""", ("k r", "k:4 r k"), ("CALL(0, NULL, NULL)", "CALL(0, one_cell, nothing)")),
     "the second of two conditions": ("""void survey(int n, int *limits, int *restrict to)
 {
     for (int r = 0; r < 3; r++)
@@ -195,6 +202,7 @@ READERS = {
 }
 
 READERS_HEAD = """#include <sys/mman.h>
+struct bits { unsigned mark : 3; int cols : 5; };
 struct grid { int rows, cols, row[8]; int *depth; struct grid *next; };
 """
 
@@ -251,3 +259,172 @@ def test_nothing_is_read_that_the_original_does_not_read(compiler: str, tmp_path
         same += [pattern.replace("ORIGINAL", names[0]).replace("VARIANT", name) for name in names[1:]]
     main = READERS_MAIN.replace("CALLS", "\n    ".join(calls)).replace("SAME", "\n".join(same))
     compile_and_run(tmp_path, READERS_HEAD + HEADERS + "\n".join(functions) + main, compiler=compiler, warnings=("-std=gnu11", "-w"))
+
+
+# Nests of two pointers, called with windows of one buffer at every distance in bytes, and with rows that are too short.
+OVERLAPPING = {
+    "transposed": ("""void survey(int n, int m, int ld, double *to, const double *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[i * ld + j] = from[j * ld + i] + 1;
+}
+""", ("j i", "i:2 j:2 j i")),
+    "backwards": ("""void survey(int n, int m, int ld, double *to, const double *from)
+{
+    for (int i = n; i-- > 0; )
+        for (int j = 0; j < m; j++)
+            to[i * ld + (m - 1 - j)] = from[i * ld + j] + 1;
+}
+""", ("j i", "j:2 i j")),
+    "different elements": ("""void survey(int n, int m, int ld, float *to, const short *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[j * ld + i] += from[j * 3 - i];
+}
+""", ("j i", "j:3 i j")),
+    "bytes": ("""void survey(int n, int m, int ld, unsigned char *to, const long *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[i * ld + j] = (unsigned char)((from[i] & 255) * 3 + j);
+}
+""", ("j i", "j:3 i j")),
+    "one sum": ("""void survey(int n, int m, int ld, int *to, const int *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[0] += from[i + j * ld] & 255;
+}
+""", ("j i; reassociate yes", "i:2 j i; reassociate yes")),
+    "a bound that stores may change": ("""void survey(int n, int m, int ld, int *to, const int *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < from[1] && j < m; j++)
+            to[i * ld + j] = 1 + (j & 1);
+}
+""", ("j i", "j:3 i j")),
+    "a band": ("""void survey(int n, int m, int ld, double *to, const double *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = (i > 2 ? i - 2 : 0); j < (m < i + 3 ? m : i + 3); j++)
+            to[i * ld + j] = from[j * ld + i] + 1;
+}
+""", ("j i", "j:3 i j")),
+    "unsigned rows that may wrap": ("""void survey(unsigned n, unsigned m, unsigned ld, double *to, const double *from)
+{
+    for (unsigned i = 0; i < n; i++)
+        for (unsigned j = 0; j < m; j++)
+            to[i * ld + j] = from[j] + i;
+}
+""", ("j i", "j:3 i j")),
+    "long rows": ("""void survey(long n, long m, long ld, double *to, const double *from)
+{
+    for (long i = 0; i < n; i++)
+        for (long j = 0; j <= m; j++)
+            to[i * (ld + 1) + j] += from[j] + i;
+}
+""", ("j i", "j:3 i j")),
+    "members": ("""void survey(int n, int m, int ld, struct echo *to, const int *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            to[i].late[j & 1] = (to[i].late[j & 1] & 1023) * 3 + (from[j + ld] & 1023);
+}
+""", ("i:2 j i", "i:2 i j")),
+    "columns that a mask chooses": ("""void survey(int n, int m, int ld, int *to, const int *from)
+{
+    for (int i = 0; i < n; i++)
+        for (int j = 0; j < m; j++)
+            if (from[j] & 1)
+                to[j * ld + i] = (from[j] & 1023) + i;
+}
+""", ("j i", "j:2 i j")),
+}
+OVERLAPPING_HEAD = "struct echo { short mark; int early, late[2]; };\n"
+
+# The caller's values may break every assumption, but the original must stay inside the buffer.
+OVERLAPPING_MAIN = """
+enum { SIZE = 1400, MIDDLE = 600 };
+static unsigned char one[SIZE], two[SIZE], three[SIZE];
+int main(void) {
+    static const int sizes[] = { -2, 0, 1, 2, 3, 5 };
+    for (int k = 0; k < SIZE; k++)
+        three[k] = k * 37 % 11;
+    long calls = 0;
+    for (int s = 0; s < 36; s++)
+        for (int ld = -1; ld < 7; ld += 1 + (ld > 2))
+            for (int shift = -230; shift <= 230; shift += 1 + (shift < -40 || shift > 40)) {
+                const int n = sizes[s / 6], m = sizes[s % 6];
+                CALLS
+            }
+    return calls > 100000 ? 0 : 3;
+}
+"""
+OVERLAPPING_CALL = """
+                memcpy(one, three, SIZE);
+                ORIGINAL(n, m, ld, (void *)(one + MIDDLE), (const void *)(one + MIDDLE + shift));
+                VARIANTS"""
+OVERLAPPING_COMPARED = """
+                memcpy(two, three, SIZE); calls++;
+                NAME(n, m, ld, (void *)(two + MIDDLE), (const void *)(two + MIDDLE + shift));
+                if (memcmp(one, two, SIZE)) { printf("differ: NAME %d %d %d %d\\n", n, m, ld, shift); return 1; }"""
+
+
+@pytest.mark.parametrize("compiler", compilers())
+def test_overlaps_at_every_distance_give_what_the_original_gives(compiler: str, tmp_path: Path) -> None:
+    functions, calls = [], []
+    for number, (text, plans) in enumerate(OVERLAPPING.values()):
+        case = case_of(tmp_path, OVERLAPPING_HEAD + text)
+        names = [f"original{number}", *(f"variant{number}_{at}" for at in range(len(plans)))]
+        texts = [text, *(case.variant(plan).text for plan in plans)]
+        functions += [renamed(one[one.index("void survey"):], "survey", name) for one, name in zip(texts, names, strict=True)]
+        compared = "".join(OVERLAPPING_COMPARED.replace("NAME", name) for name in names[1:])
+        inside = "n >= 0 && m >= 0 && ld >= 0" if "unsigned n" in text else "1"
+        calls.append(f"if ({inside}) {{{OVERLAPPING_CALL.replace('ORIGINAL', names[0]).replace('VARIANTS', compared)}\n}}")
+    main = OVERLAPPING_MAIN.replace("CALLS", "".join(calls))
+    # windows that start inside an element are read all the same
+    compile_and_run(tmp_path, OVERLAPPING_HEAD + HEADERS + "\n".join(functions) + main, compiler=compiler,
+                    warnings=("-std=gnu11", "-w"), flags=(*SANITIZERS, "-fno-sanitize=alignment", "-fno-strict-aliasing"))
+
+
+EXTREME_MAIN = """
+enum { SIZE = 1400, MIDDLE = 600 };
+static unsigned char one[SIZE], two[SIZE], three[SIZE];
+int main(void) {
+    static const int small[] = { INT_MIN + 1, -1, 0, 1 };
+    static const long long rows[] = { INT_MIN, INT_MIN + 1, -65536, -2, -1, 0, 1, 2, 46341, 65536, INT_MAX / 2, INT_MAX - 1,
+                                      INT_MAX, UINT_MAX / 2 + 1, UINT_MAX - 1, UINT_MAX };
+    for (int k = 0; k < SIZE; k++)
+        three[k] = k * 37 % 11;
+    long calls = 0;
+    for (int s = 0; s < 16; s++)
+        for (int at = 0; at < 16; at++)
+            for (int shift = -32; shift <= 32; shift += 4) {
+                const int n = small[s / 4], m = small[s % 4];
+                const long long ld = rows[at];
+                CALLS
+            }
+    return calls > 10000 ? 0 : 3;
+}
+"""
+
+
+@pytest.mark.parametrize("compiler", compilers())
+def test_rows_of_any_length_that_nothing_reaches_compute_nothing_undefined(compiler: str, tmp_path: Path) -> None:
+    functions, calls = [], []
+    for number, (text, plans) in enumerate(OVERLAPPING.values()):
+        if "j + ld" in text:
+            continue  # a subscript, not the length of a row
+        case = case_of(tmp_path, OVERLAPPING_HEAD + text)
+        names = [f"original{number}", *(f"variant{number}_{at}" for at in range(len(plans)))]
+        texts = [text, *(case.variant(plan).text for plan in plans)]
+        functions += [renamed(one[one.index("void survey"):], "survey", name) for one, name in zip(texts, names, strict=True)]
+        compared = "".join(OVERLAPPING_COMPARED.replace("NAME", name).replace("%d %d\\n", "%lld %d\\n") for name in names[1:])
+        inside = "n >= 0 && m >= 0 && ld >= 0" if "unsigned n" in text else "ld <= INT_MAX || n <= 0 && m <= 0"
+        inside = inside if "unsigned n" in text or "long ld" in text else "ld <= INT_MAX"
+        calls.append(f"if ({inside}) {{{OVERLAPPING_CALL.replace('ORIGINAL', names[0]).replace('VARIANTS', compared)}\n}}")
+    main = EXTREME_MAIN.replace("CALLS", "".join(calls))
+    compile_and_run(tmp_path, OVERLAPPING_HEAD + HEADERS + "\n".join(functions) + main, compiler=compiler,
+                    warnings=("-std=gnu11", "-w"), flags=(*SANITIZERS, "-fno-sanitize=alignment", "-fno-strict-aliasing"))

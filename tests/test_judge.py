@@ -159,3 +159,12 @@ def test_many_variants_of_one_original_run_it_once(monkeypatch):
     for body in PRODUCT.right.values():
         judge.compare(Program(parse(PRODUCT.text(body)), judge.book), Setting.of({"n": 3}))
     assert len(runs) == 1
+
+
+def test_names_and_depth_that_python_does_not_take():
+    """C compilers take dollar signs in names and any word of Python; Python nests no more than 20 loops."""
+    strange = sums("double deep$ = a[0], class = 1; for (int $i = 0; $i < n; $i++) s[$i] = deep$ + class;")
+    assert compare(strange, strange, "f", {"n": 3}) == []
+    deep = sums("".join(f"for (int i{k} = 0; i{k} < 1; i{k}++) " for k in range(25)) + "s[0] = 1;")
+    with pytest.raises(Unsupported, match="nested too deep"):
+        judge_of(deep, "f").at(Setting.of({"n": 2}))

@@ -5,6 +5,8 @@ from __future__ import annotations
 import pytest
 from asked import ask
 from oracle import compare
+from retile.plan import build_tree, moved_conditions
+from retile.questions import order_kept
 from retile.sets import Region
 
 HEAD = "void settle(int n, double s[restrict n], const double t[restrict n], const double a[restrict n][n])\n{\n"
@@ -54,3 +56,52 @@ def test_a_part_that_needs_memory_to_stay_is_data():
 }
 """
     assert {p.symbol for p in ask(text, 3).opened.nest.parameters} == {"n"}
+
+
+OWN_DATA = """void settle(int n, int m, double s[n + 1], double a[n + 1][m + 1])
+{{
+    for (int i = 0; i < n; i++) {{
+{body}
+    }}
+}}
+"""
+ROW = "for (int j = 0; j < m; j++)\n                {};"
+CHANGES = {
+    "its branch": ("        if (s[i] > 0.25)\n            " + ROW.format("s[i] -= a[i][j]"), "legal"),
+    "its branch, beside others": (
+        "        s[i] += 1;\n        if (s[i] > 0.25) {\n            a[i][m] = 1;\n            " + ROW.format("s[i] -= a[i][j]") +
+        "\n            s[i] *= 2;\n        }\n        s[i + 1] = s[i];", "legal"),
+    "one of two, nested": (
+        "        if (s[i] > 0.25)\n        if (i < n - 1 && a[i + 1][m] < 3)\n            " + ROW.format("a[i + 1][m] += s[i]"), "legal"),
+    "an affine one outside": ("        if (i > 1)\n        if (s[i - 2] > 0.25)\n            " + ROW.format("s[i - 2] += a[i][j]"),
+                              "legal"),
+    "the other branch asks again": (
+        "        if (s[i] > 0.25)\n            " + ROW.format("s[i] -= a[i][j]") + "\n        else\n            s[i] = 7;", "illegal"),
+}
+
+
+@pytest.mark.parametrize("change", CHANGES)
+@pytest.mark.parametrize("plan", ["i:4 i j", "i:2 i j:3 j", "i j:2 j"])
+def test_a_condition_that_its_own_branch_changes_is_asked_once(change, plan):
+    """Chunks that leave the order as it is leave the condition ahead of the loops that it guards."""
+    body, verdict = CHANGES[change]
+    text = OWN_DATA.format(body=body)
+    answer = ask(text, 3)
+    assert answer.verdict(plan) == verdict
+    for remainder in ("clamp", "peel") if verdict == "legal" else ():
+        for sizes in ((0, 2), (1, 1), (3, 4), (5, 3), (7, 7)):
+            variant = answer.variant(f"{plan}; remainder {remainder}").text
+            assert compare(text, variant, "settle", dict(zip("nm", sizes, strict=True))) == []
+
+
+def test_a_condition_that_is_asked_too_late_is_found_in_the_tree():
+    """With the rows cut outermost the condition is asked for each chunk, and its branch has changed what it reads."""
+    answer = ask(OWN_DATA.format(body=CHANGES["its branch"][0]), 3)
+    plan = "j:2 i j"
+    judgement, nest, dependences = answer.check(plan), answer.opened.nest, answer.opened.dependences
+    assert judgement.verdict.value == "illegal"
+    tree = build_tree(nest, judgement.plan)
+    moved = [nest.statement(id) for id in moved_conditions(nest, judgement.plan)]
+    assert [s.line for s in moved] == [4]
+    edges = [edge for edge in dependences.edges if edge.source != edge.target]
+    assert order_kept(tree, dependences, edges, moved) and not order_kept(tree, dependences, edges)

@@ -367,6 +367,11 @@ def test_measure_without_plans_tries_suggested_ones_and_neighbours(tmp_path):
     assert all(trial["verified"] for trial in document["trials"]) and document["best"]["plan"] in plans
 
 
+def test_options_of_plans_need_plans():
+    done = retile("measure", BEAMS, "--set", "n=10", "--remainder", "peel")
+    assert (done.status, done.out) == (2, "") and "name at least one PLAN" in done.err
+
+
 def test_measure_without_plans_says_when_to_leave_a_nest(tmp_path):
     address = f"samples_c/depth_smooth.c:{line_of('depth_smooth.c', 'smooth_rows')}"
     names = [f"--set={parameter.text}=100" for parameter in open_file(str(SAMPLES / "depth_smooth.c")).nest(

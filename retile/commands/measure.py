@@ -77,6 +77,8 @@ def _announce(nest: OpenNest) -> None:
 def _search(nest: OpenNest, address: str, sizes: dict[str, int], settings: Settings, measuring: Measuring,
             as_json: bool) -> int:
     """Find a plan: suggested ones, then neighbours of the fastest."""
+    if any(measuring.defaults.values()):
+        raise RetileError("--remainder and --reassociate say how given plans are meant: name at least one PLAN.")
     with _progress() as on_progress:
         campaign = nest.search(sizes, settings, on_progress=on_progress, command=_command(address, ()))
     if campaign is not None:

@@ -46,13 +46,14 @@ def defined(nest: Nest) -> Region:
 
 def _outside_extents(nest: Nest) -> Iterator[Region]:
     """Per access that surely happens: the parameters' values at which it leaves a declared extent."""
-    seen: set[tuple[Formula, Formula]] = set()
+    seen: set[tuple[Formula, Formula, Formula]] = set()
     for statement in nest.statements:
         for access in statement.accesses:
             outside = _leaves_extents(access, nest.storage(access.storage))
-            if outside.parts and access.certain and (statement.domain, outside) not in seen:
-                seen.add((statement.domain, outside))
-                yield Region.where(statement.domain, outside).without(statement.loops)
+            happens = statement.domain, access.where, outside
+            if outside.parts and access.certain and happens not in seen:
+                seen.add(happens)
+                yield Region.where(*happens).without(statement.loops)
 
 
 def _leaves_extents(access: Access, storage: Storage) -> AnyOf:

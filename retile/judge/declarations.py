@@ -15,6 +15,7 @@ from pycparser import c_ast
 from .arithmetic import exact
 from .kinds import (DOUBLE, FLOAT, INT, LDOUBLE, LLONG, LONG, NAMED, UINT, ULLONG, ULONG, VOID, Array, Function, Kind,
                     Length, Number, Pointer, Struct, Unsupported, basic_type, cells_of, constant_size)
+from .writer import identifier
 
 
 @dataclass(eq=False)
@@ -109,7 +110,8 @@ class Declarations:
             return Alias(NAMED[name] if name in NAMED else self.type(node.type))
         kind = completed(self.type(node.type), node.init)
         self.unit.global_nodes[name] = node
-        found = self.unit.globals[name] = Variable(name, f"g_{name}", kind, "object", "global", declared=name)
+        found = Variable(name, f"g_{identifier(name)}", kind, "object", "global", declared=name)
+        self.unit.globals[name] = found
         return found
 
     # ------------------------------------------------------------ types

@@ -15,7 +15,7 @@ from .memory import Machine, Object, fitting
 from .places import Again
 from .statements import Statements
 from .tags import UNSET, Book
-from .writer import Operand, Place
+from .writer import Operand, Place, identifier
 
 
 @dataclass(frozen=True)
@@ -119,7 +119,7 @@ class FunctionText(Statements):
     def static(self, node: c_ast.Decl, kind: Kind) -> None:
         """A variable of the function that keeps its value: an object of the file."""
         key = f"{self.node.decl.name}.{node.name}"
-        variable = Variable(node.name, f"s_{self.node.decl.name}_{node.name}", kind, "object", "static", declared=key)
+        variable = Variable(node.name, f"s_{identifier(key)}", kind, "object", "static", declared=key)
         self.program.statics[key] = (variable, node)
         self.scopes[-1][node.name] = variable
 
@@ -171,17 +171,21 @@ class Program:
         self._compiled[key] = None
         try:
             found = self._generated(name, held)
+            code = compile(found.text, f"<{name}>", "exec")
+        except (RecursionError, SyntaxError, MemoryError):
+            del self._compiled[key]
+            raise Unsupported("loops or expressions that are nested too deep") from None
         except BaseException:
             del self._compiled[key]
             raise
-        exec(compile(found.text, f"<{name}>", "exec"), self.namespace)
+        exec(code, self.namespace)
         self._compiled[key] = found
         return found
 
     def _generated(self, name: str, held: tuple[str, ...] | None) -> Compiled:
         """Generate a function, again while facts about its variables come to light."""
         facts: set[tuple[str, int]] = set()
-        python = f"f_{name}_{len(self._compiled)}"
+        python = f"f_{identifier(name)}_{len(self._compiled)}"
         while True:
             known = len(facts)
             try:

@@ -96,8 +96,8 @@ class Statements(Calls):
                 condition = self.atom(condition)
         if both:
             self.uncertain += 1
-            self.statement(node.iftrue)
-            self.statement(node.iffalse)
+            self._possible(node.iftrue)
+            self._possible(node.iffalse)
             self.uncertain -= 1
             return
         with self.block(f"if {condition}:"):
@@ -105,6 +105,14 @@ class Statements(Calls):
         if node.iffalse is not None:
             with self.block("else:"):
                 self.statement(node.iffalse)
+
+    def _possible(self, node: Any) -> None:
+        """A branch that runs beside the other one: a ``continue`` in it ends the branch, not what comes behind the ``if``."""
+        if not _continues(node):
+            self.statement(node)
+            return
+        with self.block("for _ in (0,):"):
+            self._body(node, lambda: None)
 
     # ------------------------------------------------------------ declarations
 
@@ -347,3 +355,10 @@ def _enumerations(node: Any) -> Iterator[c_ast.Enum]:
 
 
 __all__ = ["Operand", "Statements", "iterators_in"]
+
+
+def _continues(node: Any) -> bool:
+    """True if a ``continue`` of a loop around stands in a statement."""
+    if node is None or isinstance(node, (c_ast.For, c_ast.While, c_ast.DoWhile)):
+        return False
+    return isinstance(node, c_ast.Continue) or any(_continues(child) for _, child in node.children())

@@ -75,7 +75,7 @@ def _touched(first: Object | None, second: Object) -> Iterator[str]:
 
 
 def _beside(first: Object | None, second: Object, offset: int) -> bool:
-    """True for what is there whoever looks at it: a variable of the file, a member of a structure that is read anyway."""
+    """True for what is there whoever looks: a variable of the file, a member of a structure that is read anyway."""
     kind = second.kind
     if second.single:
         return True

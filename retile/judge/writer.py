@@ -10,6 +10,12 @@ from dataclasses import dataclass
 from .kinds import Kind
 
 _ATOM = re.compile(r"-?\w+")
+_STRANGE = re.compile(r"[^A-Za-z0-9_]")
+
+
+def identifier(name: str) -> str:
+    """A C name as one of Python, whatever letters C compilers let it have; different ones stay different."""
+    return _STRANGE.sub(lambda match: f"_{ord(match[0])}_", name)
 
 
 @dataclass(frozen=True)
@@ -54,7 +60,7 @@ class Writer:
     def fresh(self, stem: str = "t") -> str:
         """A name that nothing else has."""
         self._names += 1
-        return f"{stem}{self._names}"
+        return f"{identifier(stem)}{self._names}"
 
     def atom(self, text: str) -> str:
         """The text if it is a name or a number, else a variable that holds it."""

@@ -121,7 +121,7 @@ class Effects:
                 self._unary(node, context)
             case c_ast.BinaryOp(op="&&") | c_ast.BinaryOp(op="||"):
                 self._visit(node.left, context)
-                self._visit(node.right, context.uncertain().block(node.right))
+                self._visit(node.right, self._under(node.left, node.op == "&&", context).block(node.right))
             case c_ast.BinaryOp():
                 self._visit(node.left, context)
                 self._visit(node.right, context)
@@ -143,14 +143,15 @@ class Effects:
 
     def _ternary(self, node: Any, context: Context) -> None:
         self._visit(node.cond, context)
-        condition = self._conditions.known(node.cond, context)
-        yes, no = (
-            (context, context)
-            if condition is None
-            else (context.where(condition), context.where(self._conditions.opposite(condition)))
-        )
-        self._visit(node.iftrue, yes.uncertain().block(node.iftrue))
-        self._visit(node.iffalse, no.uncertain().block(node.iffalse))
+        self._visit(node.iftrue, self._under(node.cond, True, context).block(node.iftrue))
+        self._visit(node.iffalse, self._under(node.cond, False, context).block(node.iffalse))
+
+    def _under(self, node: Any, holds: bool, context: Context) -> Context:
+        """What is only evaluated where a condition holds, or does not."""
+        condition = self._conditions.known(node, context)
+        if condition is None:
+            return context.uncertain()
+        return context.where(condition if holds else self._conditions.opposite(condition))
 
     def _call(self, node: Any, context: Context) -> None:
         if not is_pure_call(node, self._setting):

@@ -12,7 +12,7 @@ evaluated.  A structure is one object: where one of its members is read, all of 
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Mapping
 from typing import Any
 
 from pycparser import c_ast
@@ -42,8 +42,11 @@ class Evaluated:
 
 
 def with_readable(setting: Setting, evaluated: Iterable[Evaluated], parameters: Iterable[Parameter],
-                  storages: Iterable[Storage]) -> tuple[tuple[Parameter, ...], tuple[Storage, ...]]:
-    """The parameters and storages, each with the condition under which its text may be evaluated ahead of the nest."""
+                  storages: Iterable[Storage], held_in: Mapping[str, str]) -> tuple[tuple[Parameter, ...], tuple[Storage, ...]]:
+    """The parameters and storages, each with the condition under which its text may be evaluated ahead of the nest.
+
+    ``held_in``: addresses that may be computed where something else may be read.
+    """
     known, stored = tuple(parameters), tuple(storages)
     finder = _Finder(setting, {s.pointer_text: s.object for s in stored if s.kind is StorageKind.POINTER
                                and "->" in s.pointer_text and s.pointer_text != s.object and s.whole is None})
@@ -54,6 +57,7 @@ def with_readable(setting: Setting, evaluated: Iterable[Evaluated], parameters: 
     for each in evaluated:
         finder.visit(each.node, each.context)
     found = finder.conditions()
+    found |= {address: found[text] for address, text in held_in.items() if text in found}
     return (tuple(replace(p, readable=_all(found, p.text)) for p in known),
             tuple(replace(s, readable=_all(found, s.pointer_text)) for s in stored))
 

@@ -16,7 +16,7 @@ from ..model import Assumption, AssumptionCode, ScalarClass, Storage, StorageKin
 from ..source.kinds import ArrayOf, PointerTo
 from ..values import dataclass
 from .calls import called_name
-from .places import Place, Root
+from .places import Member, Place, Root
 from .polynomial import Poly
 from .refusals import refusal
 from .scopes import Binding
@@ -133,6 +133,9 @@ class _Overlaps:
                 True,
                 root.text,
             )
+        last = place.steps[-1] if place.steps else None
+        if isinstance(last, Member) and last.bits is not None:
+            return self._around_bits(text, place, scope)
         pointer = isinstance(place.type, PointerTo)  # the text alone names what it leads to
         element = "void *" if pointer else place.type
         return Storage(
@@ -149,6 +152,30 @@ class _Overlaps:
             (),
             True,
             text[1:] if re.fullmatch(r"\*\w+", text) else f"&{text}",
+        )
+
+    def _around_bits(self, text: str, place: Place, scope: str) -> Storage:
+        """The structure that a bit-field lies in, which has no address of its own (6.5.3.2 p1)."""
+        types, struct = self._setting.types, place.holder
+        for name in place.members[:-1]:
+            member = types.member(struct, name)
+            struct = struct if member is None else member.type
+            while isinstance(struct, ArrayOf):
+                struct = struct.element
+        inner = re.sub(r"(?:\.|->)\w+\Z", "", text)
+        address = inner if text[len(inner):].startswith("->") else f"&{inner}"
+        self._stored.held_in[address] = text
+        return Storage(
+            f"*{inner}" if address == inner else inner,
+            place.root.key,
+            StorageKind.POINTER,
+            f"{struct.kind} {struct.tag or ''}".strip(),
+            types.size_of(struct),
+            (),
+            (),
+            place.root.restrict,
+            scope,
+            pointer_text=address,
         )
 
     def _hold(self, held: list[_Held]) -> None:

@@ -221,7 +221,8 @@ class Places:
                 f"`{c_text(node)}` is an array, structure or pointer in a union, whose members share memory; "
                 "use a plain variable in the nest.",
             )
-        return Place(whole.root, steps, member.type, member.quals | whole.quals, whole.step_type, union)
+        holder = whole.holder or (whole.type if len(steps) > len(whole.steps) else None)
+        return Place(whole.root, steps, member.type, member.quals | whole.quals, whole.step_type, union, holder)
 
     def _steps(self, whole: Place, name: str, member: Any) -> tuple[tuple[Index | Member, ...], Any]:
         """The steps to a member, and the union that it is part of; all members of a union take the steps of one."""

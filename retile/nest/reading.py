@@ -22,7 +22,7 @@ from .refusals import refusal
 from .scopes import FunctionNames
 from .setting import Setting
 from .storages import Stored, store
-from .surroundings import facts_around, outer_loops
+from .surroundings import facts_around, facts_from_memory, outer_loops
 from .unit import Unit
 from .walk import Walk
 
@@ -53,6 +53,7 @@ class NestReader:
         if not walk.tree:
             self._refuse(refusals)
             return None
+        facts_from_memory(self._nest, setting)
         stored = store(setting, walk, self._nest)
         if many := too_many(self._nest, stored.accesses.values()):
             self._refuse([*refusals, many])
@@ -139,7 +140,8 @@ class NestReader:
         span = self._source.span(self._nest)
         assert span is not None
         statements = tuple(self._statement(number, walk, stored) for number in range(len(walk.statements)))
-        parameters, storages = with_readable(setting, walk.evaluated, setting.knowledge.parameters.values(), stored.storages)
+        parameters, storages = with_readable(setting, walk.evaluated, setting.knowledge.parameters.values(), stored.storages,
+                                             stored.held_in)
         return with_known_ranges(Nest(
             self._address,
             self._function.decl.name,

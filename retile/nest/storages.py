@@ -32,6 +32,7 @@ class Stored:
         self.refusals: list[Refusal] = []
         self.obligations: list[Obligation] = []
         self.assumptions: list[Assumption] = []
+        self.held_in: dict[str, str] = {}  # by C text of an address, that of a bit-field held there
 
 
 def store(setting: Setting, walk: Walk, nest: Any) -> Stored:
@@ -336,7 +337,8 @@ def _shown(key: str, places: list[Place]) -> str:
 def _access(touch: Touch, name: str, subscripts: tuple[Affine, ...] | None, statement: RawStatement) -> Access:
     family, exact = (touch.update.family, touch.update.exact) if touch.update else ("", False)
     own, around = touch.context.constraints, statement.context.constraints
-    where = AllOf(own[len(around) :]) if own[: len(around)] == around else AllOf()
+    inside = own[: len(around)] == around
+    where = AllOf(own[len(around) :]) if inside else AllOf()
     return Access(
-        name, touch.write, subscripts, touch.context.certain, statement.span, family, exact, Syntax(touch.node), where
+        name, touch.write, subscripts, touch.context.certain and inside, statement.span, family, exact, Syntax(touch.node), where
     )

@@ -11,20 +11,24 @@ from typing import Any
 
 from pycparser import c_ast
 
-from ..affine import Affine, AnyOf, Formula, negate
+from ..affine import Affine, AnyOf, Formula, at_least_bound, at_most_bound, bound_names, negate
 from ..model import AssumptionCode, CType
 from .bounds import Bounds
+from .calls import is_pure_call
 from .conditions import Conditions
 from .context import Context
 from .expressions import Expressions
 from .headers import origin_of
 from .knowledge import Knowledge, Obligation
 from .loops import Loops
-from .places import Places
+from .places import Place, Places
 from .refusals import Refused
-from .scopes import Binding, FunctionNames
+from .scopes import Binding, FunctionNames, assigned_target, descendants
 from .setting import Setting
 from .unit import Unit
+
+
+_LOOPS = (c_ast.For, c_ast.While, c_ast.DoWhile)
 
 
 def outer_loops(nest: Any, names: FunctionNames) -> dict[Binding, Any]:
@@ -56,8 +60,9 @@ def facts_around(nest: Any, unit: Unit, names: FunctionNames, knowledge: Knowled
             _outer(parent, unit, names, knowledge)
         elif isinstance(parent, c_ast.Compound):
             for sibling in _before(parent, node):
-                if isinstance(sibling, c_ast.If) and sibling.iffalse is None and _leaves(sibling.iftrue):
-                    _condition(sibling.cond, names.function.body, False, unit, names, knowledge)
+                within = _left(sibling, names) if isinstance(sibling, c_ast.If) and sibling.iffalse is None else None
+                if within is not None:
+                    _condition(sibling.cond, within, False, unit, names, knowledge)
         node = parent
 
 
@@ -68,11 +73,18 @@ def _before(block: Any, node: Any) -> Iterator[Any]:
         yield item
 
 
-def _leaves(node: Any) -> bool:
-    """True for a ``return``, alone or as the end of a block."""
+def _left(sibling: Any, names: FunctionNames) -> Any:
+    """The piece in which the condition of an ``if`` that ends with a jump keeps what it said; None if it does not jump.
+
+    The nest comes later in the same iteration of the innermost loop around the ``if``.
+    """
+    node = sibling.iftrue
     if isinstance(node, c_ast.Compound) and node.block_items:
         node = node.block_items[-1]
-    return isinstance(node, c_ast.Return)
+    around = next((one.stmt for one in names.ancestors(sibling) if isinstance(one, _LOOPS)), None)
+    if isinstance(node, c_ast.Return):
+        return names.function.body if around is None else around
+    return around if isinstance(node, (c_ast.Continue, c_ast.Break)) else None
 
 
 def _setting(within: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) -> Setting:
@@ -116,6 +128,71 @@ def _outer(loop: Any, unit: Unit, names: FunctionNames, knowledge: Knowledge) ->
     fact = _loop_fact(loop, binding, setting)
     if fact is not None:
         knowledge.add_choice(fact)
+
+
+def facts_from_memory(nest: Any, nest_setting: Setting) -> None:
+    """Add the bounds of loops around the nest that are read from memory, as far as they are parameters of the nest.
+
+    A bound is read ahead of every iteration; nothing may store to memory from there to the nest.
+    """
+    names, node = nest_setting.names, nest
+    between: list[Any] = []  # what may run from the header of the loop to the nest
+    for parent in names.ancestors(nest):
+        if isinstance(parent, c_ast.For) and node is parent.stmt and not names.has_jumps:
+            if not all(_leaves_memory(one, nest_setting) for part in between for one in descendants(part)):
+                return
+            _bound_from_memory(parent, nest_setting)
+        if isinstance(parent, c_ast.Compound):
+            between += _before(parent, node)
+        elif isinstance(parent, (c_ast.If, c_ast.Switch)):
+            between.append(parent.cond)
+        elif isinstance(parent, _LOOPS):
+            between.append(parent)  # its earlier iterations, the nest in them
+        node = parent
+
+
+def _leaves_memory(node: Any, setting: Setting) -> bool:
+    """True if a node stores nothing but to a local variable that no pointer leads to, and calls nothing unknown."""
+    target = assigned_target(node)
+    binding = setting.names.of(target) if isinstance(target, c_ast.ID) else None
+    own = binding is not None and binding.automatic and not setting.names.address_taken(binding)
+    return (target is None or own) and (not isinstance(node, c_ast.FuncCall) or is_pure_call(node, setting))
+
+
+class _Memory(Setting):
+    """A strict setting to which integers in memory are known that the nest has as parameters."""
+
+    known: dict[str, Place]
+
+    def frozen_load(self, node: Any, type_: CType, context: Context) -> str | None:
+        place = self.places.attempt(node, context)
+        if place is None or place.union is not None or not place.is_fixed(self.loop_ids):
+            return None
+        return next((text for text, one in self.known.items() if one.same_cell(place) and text in self.knowledge.parameters
+                     and one.root.binding is place.root.binding), None)
+
+
+def _bound_from_memory(loop: Any, nest_setting: Setting) -> None:
+    names, knowledge = nest_setting.names, nest_setting.knowledge
+    binding = _iterator(loop, names)
+    if binding is None or binding.name not in knowledge.parameters or not nest_setting.is_visible(binding):
+        return
+    body = _setting(loop.stmt, nest_setting.unit, names, knowledge)
+    if binding not in nest_setting.outer_iterators or names.address_taken(binding) or body.assigned(binding):
+        return
+    whole = _Memory(nest_setting.unit, names, loop, knowledge, strict=True)
+    whole.known = nest_setting.held
+    whole.expressions, whole.places = Expressions(whole), Places(whole)
+    whole.loop_ids.add(binding.name)
+    conditions, mark = Conditions(whole), whole.mark()
+    try:
+        header = Loops(whole, conditions, Bounds(whole, conditions)).header(loop, binding.name, Context())
+    except Refused:
+        whole.rewind(mark)
+        return
+    if bound_names(header.last) & set(whole.known) and not whole.held_variables:
+        value = Affine.of(binding.name)
+        knowledge.add_choice(at_most_bound(value, header.last) if header.step > 0 else at_least_bound(value, header.last))
 
 
 class _Provisional(Setting):

@@ -15,6 +15,7 @@ The result is not trusted: ``questions.py`` judges it like any other tree.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
+from itertools import groupby
 
 from ..affine import Affine, AllOf, Bound, Formula, at_most, bound_names, equal, less, negate
 from ..dependence import defined
@@ -28,7 +29,7 @@ from .grammar import form_text
 from .kept import Keeping, kept_from, keeping
 from .schedule import AFTER, BEFORE, INSIDE, merged, placed, skewed_coordinate, standing
 from .threads import within_threads
-from .units import Unit, statements_in, units
+from .units import Unit, asked_ahead, statements_in, units
 
 
 def build_tree(nest: Nest, plan: Plan) -> tuple[Node, ...]:
@@ -52,6 +53,9 @@ class _Builder:
 
     def group(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
         """The nodes of these units from a term on; ``known``: what the loops around establish."""
+        if any(self._condition(unit, level) for unit in members):
+            runs = groupby(members, lambda unit: id(self._condition(unit, level)))
+            return tuple(node for _, run in runs for node in self._under(tuple(run), level, known, outer))
         owned = [keep for keep in self._kept if keep.level == level and self._users(keep, members)]
         for keep in self._inner:
             around = self._nearest.get(keep.scalar)
@@ -62,6 +66,24 @@ class _Builder:
             nodes = (Kept(keep.scalar, keep.shape, nodes, keep.heap and not within_threads(self._plan, level)),)
         for buffer in reversed([buffer for buffer in self._plan.buffers if buffer.level == level]):
             nodes = self._buffered(nodes, buffer, members, known, outer)
+        return nodes
+
+    def _condition(self, unit: Unit, level: int) -> Guard | None:
+        """The next condition of a unit that is asked here, ahead of all that it guards."""
+        return next((guard if wanted == level else None for guard, wanted in zip(unit.guards, asked_ahead(self._plan, unit))
+                     if guard.span is not None), None)
+
+    def _under(self, members: tuple[Unit, ...], level: int, known: Region, outer: tuple[Loop, ...]) -> tuple[Node, ...]:
+        """The nodes of neighbours that have the next condition in common, or none."""
+        guard = self._condition(members[0], level)
+        if guard is None:
+            return self.group(members, level, known, outer)
+        condition = AllOf(()) if guard.condition is None else guard.condition
+        settled = Guard(condition, ())
+        inside = tuple(replace(unit, guards=tuple(settled if one is guard else one for one in unit.guards)) for unit in members)
+        nodes = self.group(inside, level, known & Region.where(condition), outer)
+        if guard.condition is None or guard.partly or not (known & self._context).implies(condition):
+            return (replace(guard, body=nodes),)
         return nodes
 
     def _nested(self, keep: Keeping, around: Keeping, members: tuple[Unit, ...], level: int, known: Region,

@@ -29,7 +29,7 @@ from .reading import hidden_texts, reads_ahead
 from .remarks import order_of_updates, same_cells
 from .schedule import INSIDE, merged, moments, placed, stays_whole
 from .threads import refusals as thread_refusals
-from .units import Unit, moved_conditions, units
+from .units import Unit, asked_ahead, moved_conditions, units
 
 # Witnesses are looked for with all sizes and iterators below these bounds, in turn, so that the smallest one is shown.
 _WITNESS_BOUNDS = (4, 8, 16, 64, 256, 1024, 1 << 16, 1 << 24, 1 << 40)
@@ -112,6 +112,11 @@ class _Run:
     loops: tuple[str, ...]  # whose iterators the time is in
     domain: Region | None  # of their values; None for the statement's own
     time: tuple[Coordinate, ...]
+    terms: int  # how many of the plan's terms the time starts with; the text's order decides behind them
+
+    def from_term(self, level: int) -> tuple[Coordinate, ...]:
+        """The time without the terms from one on."""
+        return self.time[:2 * level] + self.time[2 * self.terms:] if level < self.terms else self.time
 
 
 class _Court:
@@ -144,9 +149,10 @@ class _Court:
                 both = pairs
                 for run, names in ((one, {}), (other, {loop: prime(loop) for loop in other.loops})):
                     both = both if run.domain is None else both & run.domain.renamed(names)
-                later = primed_vector(other.time, other.loops)
-                strict = min(len(later), len(one.time))
-                for level, found in first_differences(both, later, one.time):
+                terms = min(one.terms, other.terms)
+                earlier, later = one.from_term(terms), primed_vector(other.from_term(terms), other.loops)
+                strict = min(len(later), len(earlier))
+                for level, found in first_differences(both, later, earlier):
                     if level < strict:
                         return level, found.without(extra) if extra else found
         return None
@@ -154,19 +160,25 @@ class _Court:
     def _runs(self, statement: Statement) -> tuple[_Run, ...]:
         """When the plan runs a statement: once, or a condition between its loops just before all that it guards."""
         if statement.id not in self._run:
-            own = () if statement.id in self._moved else (_Run(statement.loops, None, self._times[statement.id]),)
+            own = () if statement.id in self._moved else \
+                (_Run(statement.loops, None, self._times[statement.id], len(self.plan.terms)),)
             span = statement.span.start, statement.span.end
-            self._run[statement.id] = (*own, *(self._asked_for(unit) for unit in self._units
-                                               if any(guard.span == span for guard in unit.guards)))
+            self._run[statement.id] = (*own, *(self._asked_for(unit, at) for unit in self._units
+                                               for at, guard in enumerate(unit.guards) if guard.span == span))
         return self._run[statement.id]
 
-    def _asked_for(self, unit: Unit) -> _Run:
-        """When the conditions around a piece are asked for it."""
+    def _asked_for(self, unit: Unit, number: int) -> _Run:
+        """When a condition around a piece is asked for it."""
+        moment, original = moments(self.plan, unit.statement), self._dependences.times[unit.statement]
+        ahead = asked_ahead(self.plan, unit)
+        if number < len(ahead):
+            loops, terms = unit.loops[:unit.depths[number]], ahead[number]
+            time = (*original[:2 * (len(loops) + number) + 1], -1)  # before all that stands under the condition
+            return _Run(loops, None, (*moment[:2 * terms], *time), terms)
         parameters = [parameter.symbol for parameter in self._nest.parameters]
         domain = self._dependences.domains[unit.statement].only([*parameters, *unit.loops])
         start = 2 * (len(unit.loops) + len(unit.guards)) + 1  # the piece's place in its list; it starts with the condition
-        time = (*moments(self.plan, unit.statement), *self._dependences.times[unit.statement][:start])
-        return _Run(unit.loops, domain, time)
+        return _Run(unit.loops, domain, (*moment, *original[:start]), len(self.plan.terms))
 
     def binding_edges(self) -> tuple[Edge, ...]:
         """The edges that the plan must keep: reuse of private storage only where iterations do not stay whole, and the

@@ -97,9 +97,10 @@ def check(tree: tuple[Node, ...], nest: Nest, dependences: Dependences, plan: Pl
     from ..reached import cells_reached
 
     context = dependences.context
-    repeatable = moved_conditions(nest, plan) | set(plan.copied)
+    moved = moved_conditions(nest, plan)
+    repeatable = moved | set(plan.copied)
     flaws = [*same_instances(tree, nest, context, repeatable),
-             *order_kept(tree, dependences, binding_edges(nest, dependences, plan)),
+             *order_kept(tree, dependences, binding_edges(nest, dependences, plan), map(nest.statement, moved)),
              *values_arrive(tree, nest, context, plan.copied),
              *cells_reached(tree, nest, context),
              *free_of_races(tree, dependences, copied_scalars(nest, plan))]
