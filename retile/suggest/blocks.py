@@ -172,10 +172,19 @@ def blocks(view: View) -> Iterator[Idea]:
         return
     element = max(found.by_row.element, found.by_column.element)
     several = shapes(view.machine.vector, view.machine.registers, element)
+    several.sort(key=lambda shape: round(4 * _partial(view, found, shape)))
     for number, shape in enumerate(several[:4]):
         for later, depth in enumerate(_DEPTHS if number == 0 else _DEPTHS[:1]):
             yield _packed(view, found, shape, depth, 30 - number - 0.6 * later)
     yield from _plain(view, found, several[0])
+
+
+def _partial(view: View, found: Contraction, shape: Shape) -> float:
+    """The part of the result that no full block covers, at sizes that are given."""
+    if view.assumed is not None:
+        return 0.0
+    rows, columns = view.trips[found.rows], view.trips[found.columns]
+    return 1 - (rows - rows % shape.rows) * (columns - columns % shape.columns) / (rows * columns)
 
 
 @dataclass(frozen=True)

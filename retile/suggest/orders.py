@@ -121,6 +121,8 @@ def _jam(view: View, order: tuple[str, ...], loop: str, kept: list[Reference],
         gain = _gain(mine, cost(view, order)[0]) * (1.25 + 0.1 * min(steps, 3) - 0.02 * number - 0.05 * len(moved))
         if inner in view.serial and loop not in view.serial:
             gain *= 1.5  # the sums of several iterations run side by side
+        if any(statement.loops != view.loops for statement in view.nest.statements) and not view.sums:
+            gain *= 0.4  # statements between the loops have to find a place among the copies
         why = f"{count} iterations of {loop} at a time: " + (
             f"each step of {inner} uses {listed(r.storage for r in kept)} {count} times once it is loaded" if kept else
             f"they do not wait for each other, as steps of {inner} do")
