@@ -478,22 +478,34 @@ class Elements(ABC):
 
     def _test(self, source: LoopText, end: Affine, loop: Loop, place: Place, upward: bool) -> str:
         """The comparison that lets the loop go on."""
-        scope = self._entered(loop, place, Expression(source.iterator, source.type)).scope
         variable = Expression(source.iterator, source.type)
         aliases = self._aliases(source, place)
         inclusive = end - 1 if upward else end + 1
         if source.relation in ("<=", ">=") and (inclusive in aliases or end.constant and not inclusive.constant):
             right = aliases.get(inclusive) or self._in_type_or_wider(inclusive, source.type, place.scope)
-            return f"{source.iterator} {source.relation} {self._matching(right, variable, inclusive, scope).at(SUM)}"
+            if not self._turns(right, variable, inclusive, place.scope):
+                return f"{source.iterator} {source.relation} {self._matching(right, variable).at(SUM)}"
         right = aliases.get(end) or self._in_type_or_wider(end, source.type, place.scope)
         sign = "<" if upward else ">"
         left = f"{source.iterator}--" if source.relation == "-->" else source.iterator
-        return f"{left} {sign} {self._matching(right, variable, end, scope).at(SUM)}"
+        matching = self._matching(right, variable)
+        if upward and self._turns(right, variable, end, place.scope):
+            # a bound below zero, where the original does not get here, must not turn into a large one
+            asked = comparison(Affine(), "<", end, place.scope, aliases)
+            matching = Expression(f"({asked.text} ? {matching.at(CHOICE + 1)} : 0)", variable.type)
+        return f"{left} {sign} {matching.at(SUM)}"
 
     def _in_type_or_wider(self, form: Affine, type: CType, scope: Scope) -> Expression:
         return self.in_type(form, type, scope) if scope.fits(form, type) else express(form, scope)
 
-    def _matching(self, side: Expression, variable: Expression, form: Affine, scope: Scope) -> Expression:
+    def _turns(self, side: Expression, variable: Expression, form: Affine, scope: Scope) -> bool:
+        """True if a side of a comparison may be negative and would be converted to an unsigned type."""
+        if self._matching(side, variable) is side or not side.type.signed:
+            return False
+        low = scope.range(form)[0]
+        return low is None or low < 0
+
+    def _matching(self, side: Expression, variable: Expression) -> Expression:
         """A side of a comparison with the variable, converted where signs would clash."""
         a, b = promoted(side.type), promoted(variable.type)
         if a.signed == b.signed or common(a, b).signed or side.text.isdigit():
