@@ -304,7 +304,8 @@ def _reason(text: str) -> str:
 
 
 def _short(text: str) -> str:
-    return re.sub(r"'[^']*'|\d+", "_", text.splitlines()[0])[:90]
+    text = re.sub(r"(cannot \w+) \S+:|^(wrong plan:) \S+ has", r"\1\2 _:", text.splitlines()[0])
+    return re.sub(r"'[^']*'|\d+|(?<=iterations of )\S+|(?<=the loop )\S+|(?<=subscript of )\S+|(?<=cells of )\S+", "_", text)[:70]
 
 
 # ---------------------------------------------------------------- illegal and unproven

@@ -167,8 +167,10 @@ def _conflicts(log: Log) -> Iterator[tuple[int, int]]:
 
 
 def is_private(obj: object) -> bool:
-    """True for a scalar of the function or the nest: it may get storage of its own, and is judged by what is computed."""
-    return obj.kind in ("local", "block") and getattr(obj.type, "of", None) is None and hasattr(obj.type, "floating")
+    """True for a number or pointer of the function or the nest: it may get storage of its own, and is judged by what is
+    computed."""
+    return obj.kind in ("local", "block") and getattr(obj.type, "of", None) is None and \
+        (hasattr(obj.type, "floating") or hasattr(obj.type, "to"))
 
 
 __all__ = ["Aligned", "Execution", "Instance", "earlier", "is_private", "terms_of"]

@@ -157,8 +157,8 @@ class Loops:
         raise refused(
             loop,
             "loop-form",
-            "the loop's header starts with more or other than one assignment to an iterator; "
-            "move the rest before the loop.",
+            "the loop's header starts with more or other than one assignment to an iterator; let one variable count, "
+            "and compute what runs along with it in the body, as in `int j = n - 1 - i;`.",
         )
 
     def _iterator_type(self, binding: Binding, loop: Any) -> CType:
