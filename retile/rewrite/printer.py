@@ -38,6 +38,7 @@ class Printer:
         self._arrays: dict[Buffer | str, Array] = {}  # those in use here, per buffer or kept scalar
         self._around: dict[Array, Array] = {}  # for a kept scalar's array the one further out
         self._values: dict[str, str] = {}  # what stands for the user's iterators here
+        self._ahead: set[str] = set()  # indentations at which loops have declarations ahead of them
         self._again = False  # in a copy of text that stands further up already
         self._layout = layout
         self._style = style
@@ -149,8 +150,9 @@ class Printer:
         self._again = self._again or again
         if not self._hides(source.iterator, loop.body):
             self._values = {**self._values, source.iterator: value.text}
+            self._ahead.discard(indent)
             lines = self.nodes(loop.body, inside, indent)
-            if self._declares(loop.body):
+            if self._declares(loop.body) or indent in self._ahead:
                 lines = [indent + "{", *(self._style.step + line for line in lines), indent + "}"]
         else:
             declared = f"const {source.type.spelling} " if source.declared_in_for else ""
@@ -232,6 +234,8 @@ class Printer:
         remarks = self._take(loop)
         lines = [indent + self._layout.moved(extent, indent) for extent in remarks.before]
         lines += self._indented(opened.before, indent)
+        if opened.before:
+            self._ahead.add(indent)
         behind = "".join(" " + self._layout.moved(extent, indent) for extent in remarks.behind)
         inner = indent + self._style.braced_step
         if opened.condition:
