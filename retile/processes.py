@@ -1,38 +1,36 @@
 """Limits for the programs that retile starts: compilers, and kernels on trial.
 
 Every program is started as a list of words, without a shell, with nothing on standard input that is not meant for it.
-What it may use is limited by the system (``setrlimit``, IEEE 1003.1), so that a text which makes a compiler run wild,
-or a nest that never ends, gives a message.
+What it may use is limited by the system, so that a text which makes a compiler run wild, or a nest that never ends,
+gives a message.  The limits are set from outside right after the start (``prlimit`` of Linux; elsewhere there are only
+those on elapsed time): code between fork and exec would be run with other threads' locks held.
 """
 
 from __future__ import annotations
 
 import resource
-from collections.abc import Callable
+import subprocess
+from typing import Any
 
 MIB = 2**20
 
 
-def limited(*, seconds: float | None = None, memory: int | None = None, files: int | None = None) -> Callable[[], None]:
-    """What a child process does before its program starts (``preexec_fn``): take limits on for itself and its children.
+def limit(process: subprocess.Popen[Any], *, seconds: float, memory: int | None = None, files: int) -> None:
+    """Limit a process that has just been started, and with it what it starts.
 
     ``seconds`` of computing, bytes of ``memory`` (private data, so that address space which is only reserved does not
     count: the sanitizers reserve terabytes) and bytes of each of the ``files`` that it writes.  No core is left behind.
     A limit that is lower already stays.
     """
-    wanted = [(resource.RLIMIT_CORE, 0)]
-    if seconds is not None:
-        wanted.append((resource.RLIMIT_CPU, max(1, int(seconds))))
+    wanted = [(resource.RLIMIT_CORE, 0), (resource.RLIMIT_CPU, max(1, int(seconds))), (resource.RLIMIT_FSIZE, files)]
     if memory is not None:
         wanted.append((resource.RLIMIT_DATA, memory))
-    if files is not None:
-        wanted.append((resource.RLIMIT_FSIZE, files))
-
-    def take() -> None:
-        for what, limit in wanted:
-            _, most = resource.getrlimit(what)
-            lower = limit if most == resource.RLIM_INFINITY else min(limit, most)
-            # A second between the two: the signal of the first can be told from the kill of the second.
-            resource.setrlimit(what, (lower, lower + 1 if what == resource.RLIMIT_CPU and most < 0 else lower))
-
-    return take
+    if not hasattr(resource, "prlimit"):
+        return
+    for what, most in wanted:
+        try:
+            _, hard = resource.prlimit(process.pid, what)
+            lower = most if hard == resource.RLIM_INFINITY else min(most, hard)
+            resource.prlimit(process.pid, what, (lower, lower))
+        except (OSError, ValueError):  # it has ended, or may not be limited
+            return

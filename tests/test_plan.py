@@ -218,6 +218,8 @@ def test_witness_names_a_chunk_that_shows_it() -> None:
     (DRIFT, "t:4 i:8 t i", "t:4 (t+i):8 t i"),
     (BACKWARD, "i:8 j:8 i j", "i:8 (i+j):8 i j"),
     (BACKWARD, "j i", None),
+    (DRIFT, "i:8 t i; unroll i", None),  # skewed, no chunk of i would be left to write out
+    (DRIFT, "(t+i):2 i t:2 t", "(t+i):2 t i"),  # not t t:2 i, whose chunks stand inside single iterations
 ])
 def test_nearest_legal_plan(nest: Nest, text: str, instead: str | None) -> None:
     dependences = analyse(nest)

@@ -27,5 +27,5 @@ class CompilerOptions:
 
         if self.database is None:
             return CompilerCall(self.cc or "cc", self.flags)
-        call = flags_from_compile_commands(self.database, file)
-        return replace(call, cc=self.cc or call.cc, flags=(*call.flags, *self.flags))
+        call = flags_from_compile_commands(self.database, file, self.cc)
+        return replace(call, flags=(*call.flags, *self.flags))

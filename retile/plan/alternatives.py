@@ -6,9 +6,9 @@ from collections.abc import Iterable, Iterator
 from itertools import combinations, islice, permutations, product
 
 from ..dependence import Dependences
-from ..model import Nest, Plan, ScalarClass, Term
+from ..model import Nest, Plan, RetileError, ScalarClass, Term
 from ..values import replace
-from .grammar import term_text
+from .grammar import parse_plan, term_text
 from .schedule import stays_whole
 from .verdict import is_legal
 
@@ -36,30 +36,34 @@ def nearest_legal(nest: Nest, dependences: Dependences, plan: Plan) -> str | Non
     candidates = tuple(_distinct(plan, (*_bounded(nest, plan), *_candidates(plan.terms, original)), original))
     most = max(_SEARCHED, _MOST_EDGES // max(1, len(dependences.edges)))
     for trials, some in ((0, candidates[:most]), (_TRIALS, candidates[:_SEARCHED])):
-        for text, terms in some:
-            if is_legal(nest, dependences, replace(plan, terms=terms, places=(), aligned=(), kept=(), copied=()), trials):
-                return text + plan.text[len(plan.order_text):]
+        for text in some:
+            proposal = _parsed(text + plan.text[len(plan.order_text):], nest)
+            if proposal is not None and is_legal(nest, dependences, proposal, trials):
+                return proposal.text
     return None
 
 
+def _parsed(text: str, nest: Nest) -> Plan | None:
+    """The plan of a text; None if it is none, such as one with chunks inside single iterations, or without a chunk that an
+    option speaks of."""
+    try:
+        return parse_plan(text, nest)
+    except RetileError:
+        return None
+
+
 def _distinct(plan: Plan, candidates: Iterable[tuple[Term, ...]], original: tuple[str, ...]) \
-        -> Iterator[tuple[str, tuple[Term, ...]]]:
-    """The candidates with their texts, each once, without the plan itself and the original order."""
+        -> Iterator[str]:
+    """The texts of the candidates, each once, without the plan itself and the original order."""
     seen = {plan.order_text}
     for terms in candidates:
         text = " ".join(term_text(term) for term in terms)
         bare = [term.loop for term in terms if term.chunk is None]
         changed = len(bare) < len(terms) or bare != [id for id in original if id in bare]
-        if text in seen or not changed or _chunk_inside(terms):
+        if text in seen or not changed:
             continue
         seen.add(text)
-        yield text, terms
-
-
-def _chunk_inside(terms: tuple[Term, ...]) -> bool:
-    """True if a chunk of a loop stands to the right of the loop's single iterations, which no plan may say."""
-    return any(term.chunk is not None and replace(term, chunk=None, start=0, end=0) in
-               [replace(before, start=0, end=0) for before in terms[:at]] for at, term in enumerate(terms))
+        yield text
 
 
 def _bounded(nest: Nest, plan: Plan) -> Iterator[tuple[Term, ...]]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import re
 import shlex
 from typing import Any
 
@@ -13,22 +14,35 @@ from .compiler import CompilerCall
 _WITH_VALUE = ("-D", "-U", "-I", "-include", "-isystem", "-iquote", "-idirafter", "-imacros", "--sysroot", "-isysroot",
                "-iprefix", "-iwithprefix", "-target", "--target", "-arch")  # fmt: skip
 _PATHS = frozenset({"-I", "-isystem", "-iquote", "-idirafter", "--sysroot", "-isysroot"})
-_STARTS = ("-std=", "-m", "-f", "--std=", "-O", "-ansi", "-pthread", "-nostdinc", "-target=", "--target=", "--sysroot=")
+# Every other flag is left out: what loads plugins, names programs, reads response files, or writes files.
+_WHOLE = re.compile(
+    r"--?std=[\w+:]+ | -ansi | -pthread | -nostdinc | -O(?:[0-3sgz]|fast)? | -m(?!llvm)[\w=.,+-]+ | --?target=[\w.-]+"
+    r"| --sysroot=.* | -f(?:no-)?(?:(?:un)?signed-(?:char|bitfields) | short-(?:enums|wchar) | pack-struct(?:=\d+)?"
+    r"| wrapv | trapv | strict-(?:aliasing|overflow) | openmp(?:=\w+|-simd)? | ms-extensions | gnu89-inline | builtin"
+    r"| freestanding | hosted | fast-math | math-errno | finite-math-only | associative-math | reciprocal-math"
+    r"| signed-zeros | trapping-math | rounding-math | unsafe-math-optimizations | fp-contract=\w+ | fp-model=\w+"
+    r"| excess-precision=\w+ | unroll-(?:all-)?loops | (?:tree-)?vectorize | omit-frame-pointer | inline(?:-functions)?"
+    r"| common | PIC | PIE | pic | pie)",
+    re.VERBOSE,
+)
 _WRAPPERS = frozenset({"ccache", "sccache", "distcc", "icecc"})
+_COMPILER = re.compile(r"(?:[\w.+]+-)*(?:cc|gcc|clang|c89|c99|c17|c23|icc|icx|tcc|pcc)(?:-?\d+(?:\.\d+)*)?(?:\.exe)?")
 
 
-def flags_from_compile_commands(directory: str, file: str) -> CompilerCall:
+def flags_from_compile_commands(directory: str, file: str, cc: str | None = None) -> CompilerCall:
     """How ``file`` is compiled according to ``directory/compile_commands.json``.
 
-    Takes the compiler and the flags that say how the text reads (-D, -I, -std and the like); paths become absolute.
-    Raises RetileError if there is no such file, it cannot be read, or it has no entry for the file.
+    Takes the compiler, unless ``cc`` names one, and the flags that say how the text reads (-D, -I, -std and the like);
+    paths become absolute.  A database may come from anywhere: flags that are not known to be harmless are left out.
+    Raises RetileError if there is no such file, it cannot be read, it has no entry for the file, or its compiler is not
+    named like one or by a path relative to the project.
     """
     path = os.path.join(directory, "compile_commands.json")
     entries = _entries(path)
     for entry in entries:
         place = os.path.join(directory, entry["directory"])
         if _same(os.path.join(place, entry["file"]), file):
-            return _call(path, entry, place)
+            return _call(path, entry, place, cc)
     known = ", ".join(sorted({entry["file"] for entry in entries})[:5]) or "none"
     raise RetileError(
         f"{path}: there is no entry for {file} (it has {known}{', ...' if len(entries) > 5 else ''}); "
@@ -66,10 +80,13 @@ def _is_entry(entry: Any) -> bool:
 
 
 def _same(one: str, other: str) -> bool:
-    return os.path.realpath(one) == os.path.realpath(other)
+    try:
+        return os.path.realpath(one) == os.path.realpath(other)
+    except ValueError:  # a zero byte
+        return False
 
 
-def _call(path: str, entry: dict[str, Any], place: str) -> CompilerCall:
+def _call(path: str, entry: dict[str, Any], place: str, cc: str | None) -> CompilerCall:
     words = entry.get("arguments")
     if not isinstance(words, list):
         try:
@@ -80,9 +97,12 @@ def _call(path: str, entry: dict[str, Any], place: str) -> CompilerCall:
         raise RetileError(f"{path}: the command for {entry['file']} is empty")
     compilers = 2 if os.path.basename(words[0]) in _WRAPPERS and len(words) > 1 else 1
     compiler = words[compilers - 1]
-    if os.path.sep in compiler:
-        compiler = os.path.abspath(os.path.join(place, compiler))
-    return CompilerCall(shlex.quote(compiler), tuple(_reading_flags(words[compilers:], place)))
+    relative = os.path.sep in compiler and not os.path.isabs(compiler)
+    if cc is None and (relative or not _COMPILER.fullmatch(os.path.basename(compiler))):
+        raise RetileError(f"{path}: {compiler!r} is not run, because it is "
+                          f"{'a program of the project' if relative else 'not named like a C compiler'}; "
+                          "name the compiler with --cc")
+    return CompilerCall(cc or shlex.quote(compiler), tuple(_reading_flags(words[compilers:], place)))
 
 
 def _reading_flags(words: list[str], place: str) -> list[str]:
@@ -101,7 +121,7 @@ def _reading_flags(words: list[str], place: str) -> list[str]:
         )
         if attached is not None:
             flags.append(attached + _absolute(attached, word[len(attached) :], place))
-        elif word.startswith(_STARTS) and not word.startswith(("-fsyntax-only", "-fplugin", "-MF")):
+        elif _WHOLE.fullmatch(word):
             flags.append(word)
         index += 1
     return flags

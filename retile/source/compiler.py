@@ -12,7 +12,7 @@ import time
 from typing import IO
 
 from ..model import RetileError
-from ..processes import MIB, limited
+from ..processes import MIB, limit
 from ..values import dataclass
 
 HEADERS = os.path.join(os.path.dirname(os.path.abspath(__file__)), "headers")
@@ -122,10 +122,10 @@ class Run:
                 cwd=call.directory,
                 env={**os.environ, "LC_ALL": "C"},
                 start_new_session=True,
-                preexec_fn=limited(seconds=COMPUTING, memory=MEMORY, files=0),
             )
         except (OSError, ValueError) as error:
             raise RetileError(_cannot_start(command[0], call, error)) from None
+        limit(self._process, seconds=COMPUTING, memory=MEMORY, files=LARGEST_OUTPUT)
 
     def results(self) -> tuple[bytes, bytes, int]:
         """Standard output, standard error and exit status; RetileError beyond the limits on time and output."""

@@ -37,7 +37,7 @@ def _variations(plan: Plan) -> Iterator[tuple[str, str]]:
         for at in reversed(chunked):
             term = plan.terms[at]
             assert isinstance(term.chunk, int)
-            size = int(term.chunk * factor)
+            size = _whole(plan.terms, at, int(term.chunk * factor))
             limit = _MOST_ROWS if term.loop in plan.unrolled and _is_last(plan, at) else _MOST
             if _FEWEST <= size <= limit and size != term.chunk:
                 terms = _evened(plan.terms, at, size)
@@ -49,6 +49,13 @@ def _variations(plan: Plan) -> Iterator[tuple[str, str]]:
             terms = _evened(plan.terms, at, size) if _FEWEST <= size <= _MOST_ROWS else None
             if terms is not None:
                 yield _text(plan, terms), f"{term_text(plan.terms[at])} became {term_text(terms[at])}"
+
+
+def _whole(terms: tuple[Term, ...], at: int, size: int) -> int:
+    """A size near another one that the next smaller chunk of the loop cuts evenly."""
+    within = [term.chunk for term in terms[at + 1:] if term.form == terms[at].form]
+    inside = next((chunk for chunk in within if isinstance(chunk, int)), 1)
+    return max(1, round(size / inside)) * inside
 
 
 def _is_last(plan: Plan, at: int) -> bool:

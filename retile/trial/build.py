@@ -6,16 +6,16 @@ import atexit
 import os
 import re
 import subprocess
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from ..host import ask
 from ..model import RetileError
-from ..processes import MIB, limited
+from ..processes import MIB, limit
 from ..scratch import Scratch
 from ..templating import environment
 from .tolerance import STEPS, WIDTHS
@@ -75,6 +75,7 @@ class Workshop:
                 "-lm",
             ],
             self.call.directory,
+            self.folder,
         )
         return Built(target) if said is None else Built(None, said)
 
@@ -94,30 +95,38 @@ def strict_flags(flags: Sequence[str], sanitize: bool) -> list[str]:
     return [*kept, "-O1", *(_SANITIZE if sanitize else ()), "-ffp-contract=off"]
 
 
-def run(command: Sequence[str], directory: str | None = None) -> str | None:
+def run(command: Sequence[str], directory: str | None = None, scratch: Path | None = None) -> str | None:
     """Run a compiler in a directory; None if all went well, else what it said (its first lines)."""
     try:
-        done = subprocess.run(
+        process = subprocess.Popen(
             list(command),
-            capture_output=True,
+            stdin=subprocess.DEVNULL,
+            stdout=subprocess.PIPE,
+            stderr=subprocess.PIPE,
             text=True,
             errors="replace",
-            timeout=_SECONDS,
-            stdin=subprocess.DEVNULL,
-            env={**os.environ, "LC_ALL": "C"},
+            # A compiler that is killed leaves its own temporary files behind.
+            env={**os.environ, "LC_ALL": "C", **({"TMPDIR": str(scratch)} if scratch else {})},
             cwd=directory,
-            preexec_fn=limited(seconds=_SECONDS, memory=_MEMORY, files=_OUTPUT),
         )
     except FileNotFoundError:
         raise RetileError(f"the compiler {command[0]} is not there; name another with --cc") from None
-    except subprocess.TimeoutExpired:
-        return f"the compiler took longer than {_SECONDS} s"
     except OSError as problem:
         raise RetileError(f"the compiler {command[0]} cannot be run: {problem.strerror}") from None
-    if done.returncode == 0:
+    limit(process, seconds=_SECONDS, memory=_MEMORY, files=_OUTPUT)
+    with process:
+        try:
+            said, complaint = process.communicate(timeout=_SECONDS)
+        except subprocess.TimeoutExpired:
+            process.kill()
+            return f"the compiler took longer than {_SECONDS} s"
+        except BaseException:
+            process.kill()
+            raise
+    if process.returncode == 0:
         return None
-    lines = [line for line in (done.stderr or done.stdout).splitlines() if line.strip()]
-    return "\n".join(lines[:12]) or f"the compiler ended with status {done.returncode}"
+    lines = [line for line in (complaint or said).splitlines() if line.strip()]
+    return "\n".join(lines[:12]) or f"the compiler ended with status {process.returncode}"
 
 
 @cache
@@ -129,7 +138,7 @@ def harness(command: tuple[str, ...], sanitize: bool, prefix: str) -> Path:
     text = environment().get_template("trial_harness.c.j2").render(p=prefix, widths=WIDTHS, steps=STEPS)
     source.write_text(text, encoding="utf-8")
     flags = ("-fsanitize=address,undefined", "-O1") if sanitize else ("-O2",)
-    said = run([*command, "-std=c11", "-w", *flags, "-o", str(target), str(source), "-ldl", "-lm"])
+    said = run([*command, "-std=c11", "-w", *flags, "-o", str(target), str(source), "-ldl", "-lm"], None, folder)
     if said is not None:
         raise RetileError(f"{command[0]} cannot build the program that runs the trials:\n{said}")
     return target
@@ -140,19 +149,14 @@ def can_sanitize(command: tuple[str, ...]) -> bool:
     """True if programs built with the address and undefined-behaviour sanitizers run here."""
     try:
         program = harness(command, True, "trial")
-        done = subprocess.run(
-            [str(program)],
-            capture_output=True,
-            text=True,
-            timeout=20,
-            stdin=subprocess.DEVNULL,
-            env=sanitizer_environment(),
-            cwd=program.parent,
-            preexec_fn=limits(20),
-        )
+        process = subprocess.Popen([str(program)], stdin=subprocess.DEVNULL, stdout=subprocess.PIPE,
+                                   stderr=subprocess.DEVNULL, text=True, env=sanitizer_environment(), cwd=program.parent)
+        limit_kernels(process, 20)
+        with process:
+            said, _ = process.communicate(timeout=20)
     except (RetileError, OSError, subprocess.SubprocessError):
         return False
-    return done.stdout == "failed call\n"
+    return said == "failed call\n"
 
 
 def sanitizer_environment() -> dict[str, str]:
@@ -166,12 +170,12 @@ def sanitizer_environment() -> dict[str, str]:
     }
 
 
-def limits(seconds: float, sanitized: bool = True) -> Callable[[], None]:
-    """What a program with kernels may use: time, files, and as much memory as there is.
+def limit_kernels(process: subprocess.Popen[Any], seconds: float, sanitized: bool = True) -> None:
+    """Limit a program with kernels: computing, files, and as much memory as there is.
 
     The sanitizers reserve terabytes of private memory and so look after themselves.
     """
-    return limited(seconds=seconds, memory=None if sanitized else _physical(), files=_OUTPUT)
+    limit(process, seconds=seconds, memory=None if sanitized else _physical(), files=_OUTPUT)
 
 
 def _physical() -> int:

@@ -11,7 +11,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from .build import limits, sanitizer_environment
+from .build import limit_kernels, sanitizer_environment
 
 
 @dataclass
@@ -76,8 +76,8 @@ def run(
             env=sanitizer_environment(),
             start_new_session=True,
             cwd=kernels[0].parent,
-            preexec_fn=limits((os.cpu_count() or 1) * (seconds + 5), "sanitized" in program.name),
         )
+        limit_kernels(process, (os.cpu_count() or 1) * (seconds + 5), "sanitized" in program.name)
         timer = threading.Timer(seconds, _end, (process, found))
         timer.start()
         try:
