@@ -192,4 +192,4 @@ def test_damaged_c_long(hammer, tmp_path, request):
 
 def test_the_last_function_is_read_though_another_is_too_deep(tmp_path):
     (tmp_path / "nest.c").write_text(NESTED["many parentheses"] + NUMBERS["a bound"].replace("level", "other").replace("9" * 5_000, "n"))
-    assert retile("check", "nest.c:5", "i", cwd=tmp_path).status == 0
+    assert retile("check", "nest.c:6", "i", cwd=tmp_path).status == 0
