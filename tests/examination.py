@@ -204,7 +204,8 @@ def _clashes(own: Nest, judgement: Judgement, finding: Finding) -> Iterator[str]
         for cuts in _cuts(judgement.plan.text):
             try:
                 around = judgement.plan.text, aligned_of(judgement, sizes), cuts
-                wrong = [*execution.reversed(*around), *execution.raced(*around)]
+                wrong = [pair for pair in (*execution.reversed(*around), *execution.raced(*around))
+                         if not _commute(own.nest.text, *(execution.log[at].line for at in execution.pairs[pair]))]
             except KeyError:  # a place told in terms of an expression of the text: the tags decide alone
                 finding.counts["place not decided"] += 1
                 return
@@ -212,6 +213,18 @@ def _clashes(own: Nest, judgement: Judgement, finding: Finding) -> Iterator[str]
             if len(wrong):
                 yield f"at {sizes} {cuts}: {execution.told(wrong[0])}"
     finding.counts["legal, order compared"] += compared
+
+
+def _commute(text: str, first: int, second: int) -> bool:
+    """True if two lines only add to an array of integers that wrap around: any order gives the same bits."""
+    found = set()
+    for line in (text.split("\n")[number - 1] for number in (first, second)):
+        match = re.fullmatch(r" *(\w+)\[.*\] ([-+^|])= (.*);", line)
+        if match is None or re.search(rf"\b{match[1]}\b", match[3]) or \
+                not re.search(rf"\b(unsigned|unsigned char|short) (\*(restrict )?)?{match[1]}\b", text):
+            return False
+        found.add((match[1], match[2].replace("-", "+")))
+    return len(found) == 1
 
 
 def _compare_tags(own: Nest, variant: Printed, effort: Effort, finding: Finding) -> None:
