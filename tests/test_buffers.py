@@ -145,6 +145,7 @@ LEGAL = [
     (FLIP, "i:8 j:8 i j; pack to at j:8"),
     (FLIP, "i:8 j:8 j i; pack to at j:8, pack from at j:8, unroll j"),
     (DOWN, "i:4 j:4 k i j; hold c across k, unroll i"),
+    (DOWN, "i:4 j:4 k i j; hold c across k, unroll j"),
     (BEAMS, "i:4 j:4 i j k; hold beams across k, unroll j"),
     (GRID, "j:8 i:4 k j i; hold g->depth across k, unroll i"),
     (GRID, "j:8 i:4 k:4 k j i; pack h->depth[k][j] at k:4"),

@@ -20,8 +20,8 @@ import z3
 from asked import ask
 from examination import assumptions_hold
 from plan_grid import plans
-from random_nests import Case, seeded_case
 from test_textbook import EXAMPLES, LINE
+from z3_cases import Case, seeded_case
 from z3_hand import NESTS
 from z3_nest import Aligned, ZNest, reversed_pair
 

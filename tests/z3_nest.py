@@ -396,5 +396,7 @@ def _loop_parts(node: c_ast.For) -> tuple[str, c_ast.Node, int, bool]:
         return name, first, -1, True
     if isinstance(after, c_ast.UnaryOp):
         return name, first, 1 if "+" in after.op else -1, False
+    if not isinstance(after.rvalue, c_ast.Constant):
+        raise Unsupported("a step that is computed")
     step = int(after.rvalue.value)
     return name, first, step if after.op == "+=" else -step, False

@@ -147,9 +147,11 @@ class Effects:
         self._visit(node.iffalse, self._under(node.cond, False, context).block(node.iffalse))
 
     def _under(self, node: Any, holds: bool, context: Context) -> Context:
-        """What is only evaluated where a condition holds, or does not."""
+        """What is only evaluated where a condition holds, or does not; data, if it would need memory to keep its value."""
+        mark = self._setting.mark()
         condition = self._conditions.known(node, context)
-        if condition is None:
+        if condition is None or not self._setting.needs_nothing_since(mark):
+            self._setting.rewind(mark)
             return context.uncertain()
         return context.where(condition if holds else self._conditions.opposite(condition))
 

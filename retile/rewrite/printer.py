@@ -145,7 +145,8 @@ class Printer:
         source = self._loops.source(loop.symbol)
         assert isinstance(loop.lower, Affine)
         value = self._loops.in_type(loop.lower, source.type, place.scope)
-        inside = Place(place.scope.meaning(loop.symbol, loop.lower), place.limits, place.around | {loop.symbol})
+        known = loop.lower.substitute(place.scope.meanings)
+        inside = Place(place.scope.meaning(loop.symbol, known), place.limits, place.around | {loop.symbol})
         before = self._values, self._again
         self._again = self._again or again
         if not self._hides(source.iterator, loop.body):
