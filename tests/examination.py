@@ -382,6 +382,10 @@ def witness_problems(own: Nest, judgement: Judgement, violation: Violation, coun
         if not problem:
             counts["witness replayed"] += 1
             return []
+    if set(told) - set(own.nest.sizes) - set(_named(judgement.plan.text)):
+        # an expression of the sizes that is no linear form stands for itself, so that its value may not be theirs
+        counts["witness of an expression that stands for itself, not replayed"] += 1
+        return []
     return problem
 
 
