@@ -23,7 +23,7 @@ from .tags import Book
 from .verdict import Outcome, Rules, differences
 
 STEPS = 200_000  # iterations of loops that one execution may take
-_MORE = 4  # times as many for a variant
+_MORE = 40  # steps of a variant for one of the limit: copies of short chunks outnumber what they serve
 _TOLD = 5  # differences that are told
 _FAILURES = 4  # allocations that are made to fail, one after the other
 
