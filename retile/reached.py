@@ -61,13 +61,10 @@ class _Scope:
         self._cells = tuple(f"cell {at}" for at in range(len(self._buffer.subscripts)))
         self._numbers = tuple(f"number {at}" for at in range(len(self._buffer.shape)))
         own = [one for one in moves(held.body) if one.move.buffer == self._buffer]
-        self._filled = self._union(self._moved(one.conditions) for one in own if not one.move.store)
-        self._emptied = self._union(self._moved(one.conditions) for one in own if one.move.store)
+        self._filled = Region.union(self._moved(one.conditions) for one in own if not one.move.store)
+        self._emptied = Region.union(self._moved(one.conditions) for one in own if one.move.store)
         self._uses = tuple(self._accesses(held))
         self._others = tuple(self._strangers(held))
-
-    def _union(self, regions: Iterable[Region]) -> Region:
-        return Region.union(regions)
 
     def _moved(self, conditions: tuple[Formula, ...]) -> Region:
         ties = [equal(Affine.of(cell), form) for cell, form in zip(self._cells, self._buffer.subscripts, strict=True)]
@@ -82,7 +79,7 @@ class _Scope:
         for place in occurrences(held.body):
             instance = dict(place.leaf.instance)
             for access in self._nest.statement(place.leaf.statement).accesses:
-                if access.storage == self._buffer.storage and access.subscripts == self._buffer.subscripts:
+                if self._buffer.serves(access.storage, access.subscripts):
                     ties = [equal(Affine.of(cell), form.substitute(instance))
                             for cell, form in zip(self._cells, self._buffer.subscripts, strict=True)]
                     yield _Use(self._seen(place.conditions, ties, self._buffer.index), access)
@@ -92,7 +89,7 @@ class _Scope:
         for place in occurrences(held.body):
             instance = dict(place.leaf.instance)
             for access in self._nest.statement(place.leaf.statement).accesses:
-                if access.storage == self._buffer.storage and access.subscripts != self._buffer.subscripts:
+                if access.storage == self._buffer.storage and not self._buffer.serves(access.storage, access.subscripts):
                     ties = [] if access.subscripts is None else \
                         [equal(Affine.of(cell), form.substitute(instance))
                          for cell, form in zip(self._cells, access.subscripts, strict=True)]
@@ -101,11 +98,11 @@ class _Scope:
 
     def flaws(self) -> Iterator[Flaw]:
         """What is wrong here."""
-        used = self._union(use.region for use in self._uses)
-        reads = self._union(use.region for use in self._uses if use.access is not None and not use.access.write)
-        writes = self._union(use.region for use in self._uses if use.access is not None and use.access.write)
-        sure = self._union(use.region for use in self._uses if use.access is not None and use.access.certain)
-        sure_writes = self._union(use.region for use in self._uses
+        used = Region.union(use.region for use in self._uses)
+        reads = Region.union(use.region for use in self._uses if use.access is not None and not use.access.write)
+        writes = Region.union(use.region for use in self._uses if use.access is not None and use.access.write)
+        sure = Region.union(use.region for use in self._uses if use.access is not None and use.access.certain)
+        sure_writes = Region.union(use.region for use in self._uses
                                   if use.access is not None and use.access.certain and use.access.write)
         asked = (
             (reads - self._filled, "reads a cell that was not fetched"),
@@ -138,5 +135,5 @@ class _Scope:
     def _disturbed(self, used: Region, writes: Region) -> Region:
         """Cells of the buffer that somebody else touches in the same round, one of the two writing."""
         cells, written = (region.only((*self._names, *self._cells)) for region in (used, writes))
-        return self._union((cells if other.access is not None and other.access.write else written) & other.region
+        return Region.union((cells if other.access is not None and other.access.write else written) & other.region
                            for other in self._others)

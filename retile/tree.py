@@ -126,6 +126,10 @@ class Buffer:
         """How many cells it has."""
         return prod(self.shape)
 
+    def serves(self, storage: str, subscripts: tuple[Affine, ...] | None) -> bool:
+        """True if an access with these subscripts goes to the buffer while its part of the tree runs."""
+        return storage == self.storage and subscripts == self.subscripts
+
 
 @dataclass(frozen=True)
 class Held:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from typing import Any
 
 from pycparser import c_ast
@@ -36,9 +37,9 @@ class Calls(Expressions):
             raise Unsupported(f"a call of {name}, which may read or change anything")
         return self._outside(name, [self.value(part) for part in parts])
 
+    @abstractmethod
     def own_call(self, name: str, arguments: list[Operand]) -> Operand:
         """A call of a function of the file."""
-        raise NotImplementedError
 
     def _outside(self, name: str, arguments: list[Operand]) -> Operand:
         """A function that the file does not define: something that depends on its arguments alone."""

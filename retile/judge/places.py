@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import ABC, abstractmethod
 from typing import Any
 
 from pycparser import c_ast
@@ -16,12 +17,12 @@ class Again(Exception):
     """The function has to be generated anew: a fact about one of its variables came to light."""
 
 
-class Places(Conversions):
+class Places(Conversions, ABC):
     """Generates code that finds, reads and writes cells; ``Arithmetic`` builds on it."""
 
+    @abstractmethod
     def value(self, node: Any) -> Operand:
         """The value of an expression."""
-        raise NotImplementedError
 
     # ------------------------------------------------------------ places
 

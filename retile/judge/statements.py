@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from abc import abstractmethod
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from typing import Any
@@ -159,9 +160,9 @@ class Statements(Calls):
         with self.instance(node, "statement"):
             self._initialised(node, kind)
 
+    @abstractmethod
     def static(self, node: c_ast.Decl, kind: Kind) -> None:
         """A variable that keeps its value from call to call."""
-        raise NotImplementedError
 
     def _made(self, variable: Variable) -> None:
         """A variable without a value."""

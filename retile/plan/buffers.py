@@ -16,8 +16,6 @@ the finished tree (``reached.py``).
 
 from __future__ import annotations
 
-from collections.abc import Iterable
-
 from ..affine import Affine
 from ..model import Access, CType, Nest, Statement, Storage, Term
 from ..tree import Buffer
@@ -90,14 +88,9 @@ def _dimension(nest: Nest, terms: tuple[Term, ...], level: int, place: int) -> t
     return outer // inner, (ahead if loop.step > 0 else -ahead).floor_div(inner * abs(loop.step))
 
 
-def serves(buffer: Buffer, access: Access) -> bool:
-    """True if an access goes to the buffer while its part of the tree runs."""
-    return access.storage == buffer.storage and access.subscripts == buffer.subscripts
-
-
 def served(buffer: Buffer, statement: Statement) -> tuple[Access, ...]:
     """The accesses of a statement that a buffer serves."""
-    return tuple(access for access in statement.accesses if serves(buffer, access))
+    return tuple(access for access in statement.accesses if buffer.serves(access.storage, access.subscripts))
 
 
 def reads_and_writes(nest: Nest, buffer: Buffer) -> tuple[bool, bool]:
@@ -110,8 +103,3 @@ def references(nest: Nest, storage: str) -> tuple[tuple[Affine, ...], ...]:
     """The different subscripts with which the nest reaches a storage, in text order; without those not known."""
     return tuple(dict.fromkeys(access.subscripts for statement in nest.statements for access in statement.accesses
                                if access.storage == storage and access.subscripts is not None))
-
-
-def names_of(statements: Iterable[Statement]) -> tuple[str, ...]:
-    """The storages that statements touch, in text order."""
-    return tuple(dict.fromkeys(access.storage for statement in statements for access in statement.accesses))

@@ -11,7 +11,8 @@ from math import prod
 from typing import TYPE_CHECKING
 
 from ..affine import Affine
-from ..model import Access, CType, Nest, Plan, Refusal, Span, Statement, StorageKind
+from ..model import CType, Nest, Plan, Refusal, Span, StorageKind
+from ..plan.buffers import served
 from ..source.lex import tokenize
 from ..tree import Buffer, Copy, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children
 from ..values import dataclass
@@ -23,12 +24,6 @@ if TYPE_CHECKING:
 
 _WORDS = {"hold": "held", "pack": "packed"}
 _ALIGNMENT = 64  # bytes: a cache line, and as much as the widest vectors that are common
-
-
-def served(buffer: Buffer, statement: Statement) -> tuple[Access, ...]:
-    """The accesses of a statement that a buffer serves."""
-    return tuple(access for access in statement.accesses
-                 if access.storage == buffer.storage and access.subscripts == buffer.subscripts)
 
 
 @dataclass(frozen=True)

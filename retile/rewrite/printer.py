@@ -11,10 +11,11 @@ from collections.abc import Iterator
 
 from ..affine import Affine, bound_names, equal, negate
 from ..model import LoopText, Nest, RetileError, Statement, StorageKind
+from ..plan.buffers import served
 from ..source import Source
 from ..tree import Buffer, Copy, Guard, Held, Kept, Leaf, Loop, Move, Node, Verbatim, children, loops_of
 from ..values import replace
-from .buffered import Array, Change, Heap, array_name, constant_dimensions, reference_of, served, with_values
+from .buffered import Array, Change, Heap, array_name, constant_dimensions, reference_of, with_values
 from .chunks import Loops
 from .expression import Expression, condition
 from .layout import InternalError, Loose, NestText, Remarks, instances, replaced
