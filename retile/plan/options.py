@@ -164,7 +164,9 @@ def _reference(plan: PlanText, begin: int, name: str, nest: Nest) -> tuple[str, 
     if name in texts:
         return texts[name]
     one_of = [text for text, (storage, _) in texts.items() if storage == name]
-    what = f"'{name}' is reached in several ways" if one_of else f"the nest has no array '{name}'"
+    hidden = name.partition("[")[0] in known and not one_of and not known[name.partition("[")[0]]
+    what = f"'{name}' is reached in several ways" if one_of else f"the cells that '{name}' means are not known by subscripts" \
+        if hidden else f"the nest has no array '{name}'"
     raise plan.complaint(begin, begin + len(name), what, f"Name one of: {', '.join(one_of or texts)}.")
 
 

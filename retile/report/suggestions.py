@@ -27,7 +27,8 @@ def suggestion_lines(address: Address, nest: Nest, sizes: Mapping[str, int], adv
         lines += paragraph("All of these are legal. Which is fastest, only a measurement tells.", look)
     lines += [line for text in advice.assumed for line in paragraph(f"Assumed: {text}.", look)]
     if advice.suggestions:
-        given = [f"--set {shlex.quote(f'{p.text}={sizes.get(p.text, 1000)}')}" for p in nest.parameters]
+        given = [f"--set {shlex.quote(f'{p.text}={sizes.get(p.text, 1000)}')}" for p in nest.parameters
+                 if p.kind != "expression"]  # these follow from the others
         lines += ["", " ".join(["Next: retile measure", shlex.quote(str(address)), *given])]
     return lines
 
